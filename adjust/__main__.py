@@ -1,0 +1,5 @@
+"""`python -m adjust` is `brasscap`."""
+
+from adjust.cli import run
+
+run()

@@ -1,0 +1,28 @@
+"""The collector of faults: reading goes on after a fault so that all of them come at once."""
+
+from __future__ import annotations
+
+from adjust.errors import Fault, InputError
+
+MOST = 200
+"""Faults printed; a table in the wrong unit would otherwise print one a row."""
+
+
+class Faults:
+    """Faults found so far, in the order in which the files are read."""
+
+    def __init__(self) -> None:
+        self.all: list[Fault] = []
+
+    def add(self, file: str, line: int, column: str, found: object, hint: str) -> None:
+        """Note one fault; ``found`` is shown as it was written."""
+        self.all.append(Fault(file, line, column, str(found), hint))
+
+    def stop(self) -> None:
+        """Raise InputError if anything was found."""
+        if self.all:
+            kept = self.all[:MOST]
+            if len(self.all) > MOST:
+                last = self.all[MOST]
+                kept.append(Fault(last.file, last.line, "", "...", f"{len(self.all) - MOST} more faults; mend these first"))
+            raise InputError(kept)

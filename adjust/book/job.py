@@ -1,0 +1,58 @@
+"""A job as read: settings, network, inputs with their hashes, and what is set aside with its reason."""
+
+from __future__ import annotations
+
+import hashlib
+from dataclasses import dataclass
+from pathlib import Path
+
+from adjust.book.csv_rows import read_rows
+from adjust.book.faults import Faults
+from adjust.book.settings import Settings, Table
+from adjust.errors import InputError
+from adjust.kinds import TABLES
+from adjust.network import Network
+
+
+@dataclass(frozen=True)
+class Aside:
+    """A row that takes no part: left out with its reason, or planned."""
+
+    observation: str
+    file: str
+    line: int
+    kind: str
+    reason: str
+
+
+@dataclass(frozen=True)
+class Job:
+    """Everything that was read from a job folder; nothing of it is ever written back."""
+
+    folder: Path
+    settings: Settings
+    network: Network
+    tables: tuple[Table, ...]
+    inputs: tuple[tuple[str, str], ...]
+    """(file, sha256) of job.toml and every table."""
+    left_out: tuple[Aside, ...] = ()
+    planned: tuple[Aside, ...] = ()
+    warnings: tuple[str, ...] = ()
+
+    def booked(self, file: str) -> dict[int, tuple[str, ...]]:
+        """The value cells of a table of observations by line, read again from the file.
+
+        Raises InputError if the file is no longer the one that was read.
+        """
+        table = next(t for t in self.tables if t.file == file)
+        data = (self.folder / file).read_bytes()
+        faults = Faults()
+        if hashlib.sha256(data).hexdigest() != dict(self.inputs)[file]:
+            faults.add(file, 0, "", file, "the table was changed while the job ran; run it again")
+        rows = read_rows(data, file, faults)
+        faults.stop()
+        if rows is None:
+            raise InputError([])
+        names = TABLES[table.kind].value if table.kind in TABLES else ("east", "north", "height")
+        columns = [rows.column(name) for name in names]
+        return {line: tuple(column[i] for column in columns) for i, line in enumerate(rows.lines)}

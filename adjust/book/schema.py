@@ -1,0 +1,133 @@
+"""The one table of keys and columns: job.toml, the tables that are no observations, and what every table may have.
+
+Kinds bring their own columns and instrument keys (adjust.kinds); everything else that a job may say stands here.
+"""
+
+from __future__ import annotations
+
+from adjust.fields import Field
+from adjust.kinds import KINDS, TABLES
+from adjust.units import JOB_ANGLES, JOB_LENGTHS
+
+JOB = (
+    Field("title", "text", "title of the job, printed on every page"),
+    Field("client", "text", "for whom the work is done"),
+    Field("surveyed", "date", "day of the fieldwork, written 2026-05-14 or as text"),
+)
+UNITS = (
+    Field("length", "choice", "unit of lengths: metre, international foot (0.3048 m), US survey foot (1200/3937 m)",
+          required=True, choices=JOB_LENGTHS),
+    Field("angle", "choice", "notation of angles; packed is ddd.mmss; mil has 6400 to the circle",
+          required=True, choices=JOB_ANGLES),
+    Field("decimal", "choice", "decimal mark in the tables", default=".", choices=(".", ",")),
+    Field("axis_order", "choice", "order in which coordinates are printed",
+          default="east, north", choices=("east, north", "north, east")),
+    Field("bearings", "choice", "how directions are printed", default="azimuth", choices=("azimuth", "quadrant")),
+)  # fmt: skip
+DATUM = (
+    Field("kind", "choice", "control: the marks of control.csv carry the datum; free: no mark is held. "
+          "Left out: control where there is any, else free", choices=("control", "free")),
+    Field("stations", "list", "free: the stations that carry the datum; left out: all that have starting values"),
+)  # fmt: skip
+TESTS = (
+    Field("confidence", "number", "confidence of ellipses and intervals", default=0.95, above=0.0),
+    Field("significance", "number", "of the overall test, and the whole job's share of false suspects",
+          default=0.05, above=0.0),
+    Field("outlier", "number", "significance of one reading's test", default=0.001, above=0.0),
+    Field("power", "number", "power of one reading's test: sets the smallest blunder it can find",
+          default=0.80, above=0.0),
+    Field("variance_factor", "choice", "given: the stated standard deviations are trusted; from-residuals: only their "
+          "ratios are, and the residuals set the scale", default="given", choices=("given", "from-residuals")),
+)  # fmt: skip
+BOOK_UNITS = tuple(
+    Field(f.name, f.type, f.meaning + " (in this table)", choices=f.choices) for f in UNITS[:3]
+)
+BOOK = (
+    Field("file", "text", "name of the table; left out: KIND.csv"),
+    Field("kind", "choice", "kind of the table; left out: the file's name without its ending"),
+    Field("instrument", "text", "the instrument that took the readings; may be left out where only one fits"),
+    Field("sd_factor", "number", "factor on every standard deviation of the table", default=1.0, above=0.0),
+    Field("units", "table", "units of this table where they differ from the job's: length, angle, decimal"),
+)
+
+
+def instrument_keys() -> tuple[Field, ...]:
+    """The keys of [instruments.NAME]: the error models that the kinds ask for."""
+    return tuple({k.instrument.name: k.instrument for k in KINDS.values() if k.instrument}.values())
+
+
+SECTIONS: dict[str, tuple[Field, ...]] = {
+    "": JOB,
+    "units": UNITS,
+    "datum": DATUM,
+    "instruments.*": instrument_keys(),
+    "book": BOOK,
+    "tests": TESTS,
+}
+"""Sections of job.toml; '' is the top, 'instruments.*' every instrument, 'book' every [[book]] block."""
+
+OBSERVATION = (
+    Field("sd", "sd", "final standard deviation of this reading: length unit of the table, seconds for dms, deg, packed "
+          "and mil, milligon for gon; nothing is added to it"),
+    Field("count", "number", "readings meaned in this value: the instrument's figure is divided by its root",
+          default=1.0, above=0.0),
+    Field("use", "choice", "no: left out, with a reason; planned: not measured yet, no value", default="yes",
+          choices=("yes", "no", "planned")),
+    Field("reason", "text", "why the reading is left out; required with use = no"),
+    Field("id", "text", "identification, unique in the job; left out: FILE:LINE"),
+    Field("instrument", "text", "the instrument of this row"),
+    Field("day", "text", "day of the reading"),
+    Field("crew", "text", "who read"),
+    Field("note", "text", "anything"),
+    Field("page", "text", "page of the field book"),
+)  # fmt: skip
+"""Columns that every table of observations may have beside its own."""
+
+ROLES = ("held", "weighted", "check")
+OTHER_TABLES: dict[str, tuple[Field, ...]] = {
+    "control": (
+        Field("station", "station", "the mark", required=True),
+        Field("east", "length", "known east; blank: unknown"),
+        Field("north", "length", "known north; blank: unknown"),
+        Field("height", "length", "known height; blank: unknown"),
+        Field("sd_east", "sd", "standard deviation, for role weighted (and check, if known)"),
+        Field("sd_north", "sd", "standard deviation, for role weighted (and check, if known)"),
+        Field("sd_height", "sd", "standard deviation, for role weighted (and check, if known)"),
+        Field("role", "choice", "held: without error; weighted: with its standard deviations; check: not used, "
+              "compared afterwards", default="held", choices=ROLES),
+        Field("role_height", "choice", "role of the height where it differs", choices=ROLES),
+        Field("note", "text", "anything"),
+    ),
+    "stations": (
+        Field("station", "station", "the station", required=True),
+        Field("east", "length", "starting east"),
+        Field("north", "length", "starting north"),
+        Field("height", "length", "starting height"),
+        Field("note", "text", "anything"),
+    ),
+    "booked_names": (
+        Field("booked", "text", "the name as it stands in the book", required=True),
+        Field("station", "station", "the station that is meant", required=True),
+        Field("note", "text", "anything"),
+    ),
+    "pairs": (
+        Field("from", "station", "one end", required=True),
+        Field("to", "station", "other end", required=True),
+        Field("note", "text", "anything"),
+    ),
+}  # fmt: skip
+"""Tables that are no observations."""
+
+
+def table_names() -> tuple[str, ...]:
+    """Every kind a table can be of, in the order of docs."""
+    return (*list(OTHER_TABLES)[:2], *TABLES, *list(OTHER_TABLES)[2:])
+
+
+def columns_of(table: str) -> tuple[Field, ...]:
+    """The columns that a table of this kind may have."""
+    if table in OTHER_TABLES:
+        return OTHER_TABLES[table]
+    kind = TABLES[table]
+    ends = tuple(Field(name, "station", f"the station `{name}`", required=True) for name in kind.stations)
+    return (*ends, *kind.columns, *OBSERVATION)

@@ -1,0 +1,222 @@
+"""job.toml read into frozen settings; every key is held against the schema."""
+
+from __future__ import annotations
+
+import datetime
+import tomllib
+from dataclasses import dataclass
+from typing import Any
+
+from adjust.book import schema
+from adjust.book.faults import Faults
+from adjust.book.toml_lines import key_lines, line_of
+from adjust.errors import nearest
+from adjust.fields import Field
+from adjust.sigmas import Precision, parse_precision
+from adjust.units import BadValue
+
+
+@dataclass(frozen=True)
+class Units:
+    """Units and notations of the job or of one table."""
+
+    length: str
+    angle: str
+    decimal: str = "."
+    axis_order: str = "east, north"
+    bearings: str = "azimuth"
+
+
+@dataclass(frozen=True)
+class Tests:
+    """Levels of the tests."""
+
+    confidence: float = 0.95
+    significance: float = 0.05
+    outlier: float = 0.001
+    power: float = 0.80
+    variance_factor: str = "given"
+
+
+@dataclass(frozen=True)
+class Table:
+    """One [[book]] block: which file, of which kind, in which units, by which instrument."""
+
+    file: str
+    kind: str
+    units: Units
+    instrument: str = ""
+    sd_factor: float = 1.0
+    line: int = 0
+
+
+@dataclass(frozen=True)
+class Settings:
+    """What job.toml says."""
+
+    title: str
+    client: str
+    surveyed: str
+    units: Units
+    datum_kind: str
+    """control, free, or '': control for every part that has some, else free."""
+    datum_stations: tuple[str, ...]
+    tests: Tests
+    instruments: dict[str, dict[str, Precision]]
+    books: tuple[Table, ...] | None
+    """None: no [[book]] block, every KIND.csv of the folder is read."""
+    known_units: bool
+    """False: the units are missing, so values are not read (the fault is already noted)."""
+
+
+class _Reader:
+    def __init__(self, text: str, faults: Faults) -> None:
+        self.faults = faults
+        self.lines = key_lines(text)
+
+    def fault(self, path: str, found: object, hint: str) -> None:
+        self.faults.add("job.toml", line_of(self.lines, path), path, found, hint)
+
+    def section(self, path: str, given: object, fields: tuple[Field, ...], ignore: tuple[str, ...] = ()) -> dict[str, Any]:
+        """Values of a section by key, defaults where absent or wrong."""
+        values = {f.name: f.default for f in fields}
+        if not isinstance(given, dict):
+            self.fault(path, given, f"must be a table: [{path}]")
+            return values
+        known = {f.name: f for f in fields}
+        for key, value in given.items():
+            where = f"{path}.{key}" if path else key
+            if key in known:
+                values[key] = self.value(where, value, known[key])
+            elif key not in ignore:
+                self.fault(where, key, f"an unknown key; {nearest(key, [*known, *ignore])}")
+        for f in fields:
+            if f.required and f.name not in given:
+                choices = " | ".join(f'"{c}"' for c in f.choices)
+                self.fault(f"{path}.{f.name}", "", f"missing; write {f.name} = {choices} under [{path}]")
+        return values
+
+    def value(self, path: str, value: object, field: Field) -> Any:
+        if field.type == "number":
+            return self.number(path, value, field)
+        if field.type == "date" and isinstance(value, datetime.date):
+            return value.isoformat()
+        if field.type == "list":
+            if isinstance(value, list) and all(isinstance(v, str) for v in value):
+                return value
+            self.fault(path, value, 'must be a list of station names: ["M1", "M2"]')
+            return field.default
+        if field.type == "table":
+            return value
+        if field.type == "precision":
+            return self.precision(path, value, field)
+        if not isinstance(value, str):
+            self.fault(path, value, "must be a text in quotes")
+            return field.default
+        if field.choices and value not in field.choices:
+            self.fault(path, value, "use one of " + ", ".join(f'"{c}"' for c in field.choices))
+            return field.default
+        return value
+
+    def number(self, path: str, value: object, field: Field) -> Any:
+        if isinstance(value, bool) or not isinstance(value, int | float):
+            self.fault(path, value, "must be a number")
+        elif field.above is not None and not value > field.above:
+            self.fault(path, value, f"must be above {field.above:g}")
+        elif path.startswith("tests.") and not value < 1:
+            self.fault(path, value, "a probability; write it between 0 and 1, as in 0.05")
+        elif not value < 1e300:
+            self.fault(path, value, "must be a finite number")
+        else:
+            return float(value)
+        return field.default
+
+    def precision(self, path: str, value: object, field: Field) -> Precision | None:
+        try:
+            return parse_precision(value, field.dimension)
+        except BadValue as bad:
+            self.fault(path, value, str(bad))
+            return None
+
+
+def read_settings(text: str, faults: Faults) -> Settings | None:
+    """Settings from the text of job.toml; None where it is no TOML (the fault is noted)."""
+    try:
+        job = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        message = str(error)
+        line = int(message.rpartition("line ")[2].partition(",")[0]) if "line " in message else max(1, text.count("\n"))
+        shown = text.split("\n")[line - 1].strip() if line <= text.count("\n") + 1 else ""
+        faults.add("job.toml", line, "", shown, f"not TOML: {message.partition(' (at')[0].lower()}")
+        return None
+    r = _Reader(text, faults)
+    top = r.section("", job, schema.JOB, ignore=("units", "datum", "instruments", "book", "tests"))
+    units = r.section("units", job.get("units", {}), schema.UNITS)
+    datum = r.section("datum", job.get("datum", {}), schema.DATUM)
+    tests = r.section("tests", job.get("tests", {}), schema.TESTS)
+    if datum["stations"] and datum["kind"] != "free":
+        r.fault("datum.stations", datum["stations"], 'stations carry the datum of a free network only; set kind = "free"')
+    job_units = Units(**{**units, "length": units["length"] or "m", "angle": units["angle"] or "dms"})
+    return Settings(
+        title=top["title"] or "",
+        client=top["client"] or "",
+        surveyed=top["surveyed"] or "",
+        units=job_units,
+        datum_kind=datum["kind"] or "",
+        datum_stations=tuple(datum["stations"] or ()),
+        tests=Tests(**tests),
+        instruments=_instruments(r, job.get("instruments", {})),
+        books=_books(r, job.get("book"), job_units),
+        known_units=bool(units["length"] and units["angle"]),
+    )
+
+
+def _instruments(r: _Reader, given: object) -> dict[str, dict[str, Precision]]:
+    if not isinstance(given, dict):
+        r.fault("instruments", given, "must hold one table an instrument: [instruments.station-1]")
+        return {}
+    return {
+        name: {k: v for k, v in r.section(f"instruments.{name}", keys, schema.instrument_keys()).items() if v}
+        for name, keys in given.items()
+    }
+
+
+def _books(r: _Reader, given: object, units: Units) -> tuple[Table, ...] | None:
+    if given is None:
+        return None
+    if not isinstance(given, list) or not all(isinstance(b, dict) for b in given):
+        r.fault("book", given, "write one [[book]] block a table")
+        return ()
+    tables = [_book(r, f"book.{i}", block, units) for i, block in enumerate(given)]
+    seen: dict[str, str] = {}
+    for i, table in enumerate(tables):
+        if table and seen.setdefault(table.file, f"book.{i}") != f"book.{i}":
+            r.fault(f"book.{i}.file", table.file, "the table is already named by another [[book]] block; name it once")
+    return tuple(t for t in tables if t)
+
+
+def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table | None:
+    kinds = schema.table_names()
+    values = r.section(path, block, schema.BOOK)
+    own = r.section(f"{path}.units", values["units"], schema.BOOK_UNITS) if values["units"] is not None else {}
+    file, kind = values["file"], values["kind"]
+    if not file and not kind:
+        r.fault(path, "", "name a file or a kind")
+        return None
+    if kind and kind not in kinds:
+        r.fault(f"{path}.kind", kind, f"an unknown kind of table; {nearest(kind, kinds)}")
+        return None
+    if not kind:
+        kind = file.replace("\\", "/").rpartition("/")[2].rpartition(".")[0]
+        if kind not in kinds:
+            r.fault(f"{path}.file", file, f"the file's name does not tell its kind; add kind = ...; {nearest(kind, kinds)}")
+            return None
+    used = {k: v for k, v in own.items() if v}
+    return Table(
+        file=file or f"{kind}.csv",
+        kind=kind,
+        units=Units(**{**units.__dict__, **used}),
+        instrument=values["instrument"] or "",
+        sd_factor=values["sd_factor"],
+        line=line_of(r.lines, path),
+    )

@@ -1,0 +1,164 @@
+"""The command line: parses, calls, prints; nothing is computed here.
+
+Exit codes: 0 done; 1 done, but a test failed or a suspect stands; 2 could not be done; 70 internal error;
+130 interrupted.
+"""
+
+from __future__ import annotations
+
+import argparse
+import sys
+from collections.abc import Sequence
+from typing import Any
+
+from adjust import __version__
+from adjust.caution import CAUTION_SHORT
+
+DONE, FAILED, REFUSED, INTERNAL, INTERRUPTED = 0, 1, 2, 70, 130
+
+
+def parser() -> argparse.ArgumentParser:
+    """The commands and their options."""
+    top = argparse.ArgumentParser(
+        prog="brasscap",
+        description="Adjust, test and diagnose a survey network from a folder of plain tables.",
+        epilog=CAUTION_SHORT + " Exit: 0 done, 1 a test failed, 2 could not be done.",
+    )
+    top.add_argument("--version", action="version", version=f"brasscap {__version__}")
+    commands = top.add_subparsers(dest="command", metavar="COMMAND", required=True)
+    start = commands.add_parser("start", help="write a small commented job to begin from")
+    start.add_argument("dir", metavar="DIR", help="a new folder")
+    check = commands.add_parser("check", help="read everything and say what hangs together; writes nothing")
+    adjust = commands.add_parser("adjust", help="adjust, test and write the record")
+    for command in (check, adjust):
+        command.add_argument("job", metavar="JOB", help="the job's folder or its job.toml")
+        command.add_argument("--quiet", action="store_true", help="print nothing but faults")
+        command.add_argument("--verbose", action="store_true", help="also print the time of each phase")
+    adjust.add_argument("--json", action="store_true", help="print the record and write nothing unless --out is given")
+    adjust.add_argument("--out", metavar="DIR", help="folder of the record (default JOB/record)")
+    return top
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run one command; returns the exit code."""
+    try:
+        given = parser().parse_args(arguments)
+    except SystemExit as stop:
+        return int(stop.code or 0)
+    try:
+        return _COMMANDS[given.command](given)
+    except KeyboardInterrupt:
+        print("interrupted; nothing was written", file=sys.stderr)
+        return INTERRUPTED
+    except BrokenPipeError:
+        sys.stderr.close()
+        return DONE
+    except Exception as error:
+        return _explain(error)
+
+
+def _explain(error: Exception) -> int:
+    from adjust.errors import BrasscapError
+
+    if isinstance(error, BrasscapError):
+        for sentence in error.sentences:
+            print(sentence, file=sys.stderr)
+        return error.exit_code
+    import tempfile
+    import traceback
+
+    with tempfile.NamedTemporaryFile("w", prefix="brasscap-", suffix=".txt", delete=False, encoding="utf-8") as trace:
+        traceback.print_exception(error, file=trace)
+    print(f"internal error ({type(error).__name__}); the trace lies in {trace.name}", file=sys.stderr)
+    return INTERNAL
+
+
+class _Clock:
+    """Times of the phases, printed to standard error with --verbose."""
+
+    def __init__(self, wanted: bool) -> None:
+        import time
+
+        self.now, self.wanted = time.perf_counter, wanted
+        self.last = self.now()
+
+    def phase(self, name: str) -> None:
+        """End a phase."""
+        if self.wanted:
+            print(f"{name:<8} {self.now() - self.last:8.3f} s", file=sys.stderr)
+        self.last = self.now()
+
+
+def _start(given: argparse.Namespace) -> int:
+    from adjust.record.starter import write_starter
+
+    files = write_starter(given.dir)
+    print(f"wrote {', '.join(files)} to {given.dir}")
+    print(f"next: brasscap adjust {given.dir}")
+    print(CAUTION_SHORT)
+    return DONE
+
+
+def _check(given: argparse.Namespace) -> int:
+    clock = _Clock(given.verbose)
+    from adjust import check, read
+
+    job = read(given.job)
+    clock.phase("read")
+    lines = check(job)
+    clock.phase("check")
+    if not given.quiet:
+        print("\n".join([*lines, CAUTION_SHORT]))
+    return DONE
+
+
+def _adjust(given: argparse.Namespace) -> int:
+    clock = _Clock(given.verbose)
+    from pathlib import Path
+
+    from adjust import assess, read, solve
+
+    job = read(given.job)
+    out = Path(given.out) if given.out else None if given.json else job.folder / "record"
+    if out:
+        from adjust.record.folder import check_out
+
+        check_out(out)
+    clock.phase("read")
+    solution = solve(job)
+    clock.phase("adjust")
+    judgement = assess(solution)
+    clock.phase("test")
+    _deliver(given, judgement, out)
+    clock.phase("write")
+    return FAILED if judgement.failed else DONE
+
+
+def _deliver(given: argparse.Namespace, judgement: Any, out: Any) -> None:
+    """Write and print what was asked for."""
+    from adjust.record.build import build, trimmed
+
+    if out:
+        from adjust.record.write import write
+
+        write(judgement, out)
+    if given.json:
+        from adjust.record.json_text import json_bytes
+
+        sys.stdout.write(json_bytes(trimmed(build(judgement))).decode())
+    elif not given.quiet:
+        from adjust.record.summary import summary_lines
+
+        print("\n".join(summary_lines(build(judgement))))
+        print(f"The record is in {out}")
+
+
+_COMMANDS = {"start": _start, "check": _check, "adjust": _adjust}
+
+
+def run() -> None:
+    """Entry point of the command: run and exit."""
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(encoding="utf-8", errors="replace")
+    sys.exit(main())

@@ -1,0 +1,1 @@
+"""What hangs together: uncoupled parts and closed-form starting values."""

@@ -1,0 +1,1 @@
+"""How good the result is: precision, reliability, tests and the words for them."""

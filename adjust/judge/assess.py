@@ -1,0 +1,153 @@
+"""The judgement of a solution: overall tests, one-reading tests, precision, lines, control marks, and the verdict."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from adjust.book.settings import Tests
+from adjust.judge import critical
+from adjust.judge.control import Mark, compare_control
+from adjust.judge.lines import Lines, find_lines
+from adjust.judge.reliability import Reliability, largest_effect, reliability
+from adjust.network import Array, Bools, Ints
+from adjust.solver.solution import PartResult, Solution
+from adjust.solver.threads import one_thread
+
+MET, NOT_MET, UNTESTED = "met", "not met", "cannot be tested"
+
+
+@dataclass(frozen=True)
+class OverallTest:
+    """The two-sided chi-square test of v'Pv."""
+
+    interval: tuple[float, float] | None
+    verdict: str
+    better_than_stated: bool
+
+
+@dataclass(frozen=True)
+class Judgement:
+    """Everything that is said about a solution."""
+
+    solution: Solution
+    tests: Tests
+    reliability: Reliability
+    scale: float
+    """Variance factor by which covariances are multiplied: 1 when the stated standard deviations are trusted."""
+    degrees: int | None
+    """Degrees of freedom behind ``scale``; None when it is given."""
+    critical: float | None
+    critical_job: float | None
+    shift: float | None
+    """Smallest detectable blunder in standard deviations of the estimated blunder."""
+    effect_station: Ints
+    effect_part: Ints
+    effect: Array
+    """Movement of the coordinate moved most by the smallest detectable blunder (R,), metres."""
+    lines: Lines
+    control: tuple[Mark, ...]
+
+    @cached_property
+    def statistic(self) -> Array:
+        """Test statistic (R,): w when the scale is given, tau when it is from residuals; NaN where none."""
+        if self.scale <= 0 or self.critical is None:
+            return np.full(len(self.reliability.m), np.nan)
+        return self.reliability.statistic / np.sqrt(self.scale)
+
+    @cached_property
+    def smallest_detectable(self) -> Array:
+        """Smallest blunder (R,) that the one-reading test finds with its power, metres or radians."""
+        shift = np.nan if self.shift is None else self.shift
+        return self.reliability.root * shift * np.sqrt(self.scale)
+
+    @cached_property
+    def suspect(self) -> Bools:
+        """Rows (R,) that fail the plain one-reading test."""
+        return self._above(self.critical)
+
+    @cached_property
+    def suspect_of_job(self) -> Bools:
+        """Rows (R,) that fail at the level of the whole job."""
+        return self._above(self.critical_job)
+
+    def _above(self, limit: float | None) -> Bools:
+        if limit is None:
+            return np.zeros(len(self.statistic), dtype=bool)
+        return np.asarray(np.abs(np.nan_to_num(self.statistic)) > limit)
+
+    @property
+    def blame(self) -> Ints:
+        """Suspects of either level in order of blame, the largest statistic first."""
+        found = np.flatnonzero(self.suspect | self.suspect_of_job)
+        return found[np.argsort(-np.abs(self.statistic[found]), kind="stable")]
+
+    @property
+    def expected_by_chance(self) -> float:
+        """Readings of a clean job that the plain test is expected to flag."""
+        return float(self.tests.outlier * np.isfinite(self.statistic).sum())
+
+    @cached_property
+    def overall(self) -> tuple[OverallTest, ...]:
+        """Overall test of every part, then of all together."""
+        return tuple(self._overall(p) for p in (*self.solution.parts, self.solution.total))
+
+    def _overall(self, part: PartResult) -> OverallTest:
+        interval = critical.variance_factor_interval(self.tests.significance, part.degrees_of_freedom)
+        if interval is None or self.degrees is not None or part.variance_factor is None:
+            return OverallTest(interval, UNTESTED, False)
+        verdict = NOT_MET if part.variance_factor > interval[1] else MET
+        return OverallTest(interval, verdict, part.variance_factor < interval[0])
+
+    @cached_property
+    def covariance(self) -> Array:
+        """(n, 3, 3) covariance of each station with the variance factor applied; NaN where not determined."""
+        return self.solution.covariance * self.scale
+
+    @property
+    def failed(self) -> bool:
+        """Whether a test failed, so that the program ends with exit code 1."""
+        return (
+            any(test.verdict == NOT_MET for test in self.overall)
+            or bool(self.suspect_of_job.any())
+            or any(mark.verdict == "disagrees" for mark in self.control)
+        )
+
+    def __repr__(self) -> str:
+        return f"<Judgement: overall test {self.overall[-1].verdict}, {len(self.blame)} suspects>"
+
+
+def assess(solution: Solution) -> Judgement:
+    """Assess a solution by the [tests] of its job."""
+    with one_thread():
+        tests = solution.job.settings.tests
+        figures = reliability(solution)
+        r = solution.total.degrees_of_freedom
+        given = tests.variance_factor == "given"
+        degrees = None if given else r
+        scale = 1.0 if given else (solution.total.variance_factor or np.nan)
+        n = int(figures.tested.sum())
+        job = critical.job_level(tests.significance, n)
+        station, part, size = largest_effect(solution)
+        shift = (
+            critical.noncentrality(tests.outlier, tests.power) if given
+            else critical.noncentrality_tau(tests.outlier, tests.power, r)
+        )  # fmt: skip
+        smallest = figures.root * (np.nan if shift is None else shift) * np.sqrt(scale)
+        return Judgement(
+            solution=solution,
+            tests=tests,
+            reliability=figures,
+            scale=scale,
+            degrees=degrees,
+            critical=critical.normal_critical(tests.outlier) if given else critical.tau_critical(tests.outlier, r),
+            critical_job=critical.normal_critical(job) if given else critical.tau_critical(job, r),
+            shift=shift,
+            effect_station=station,
+            effect_part=part,
+            effect=size * smallest,
+            lines=find_lines(solution, scale),
+            control=compare_control(solution, figures, scale, degrees, tests),
+        )

@@ -1,0 +1,136 @@
+"""What the field book said, as arrays: stations, blocks of observations by table, groups of rows, clusters.
+
+Everything is frozen and in metres and radians. One row is one observation of ``p`` parts (1 for a distance, 3 for a
+weighted position); a part that was not given is NaN. A *scalar row* is one given part; scalar rows are numbered
+through all blocks in the order of the book.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+Ints = NDArray[np.int64]
+Bools = NDArray[np.bool_]
+
+PARTS = ("east", "north", "height")
+NEW, HELD, WEIGHTED, CHECK = 0, 1, 2, 3
+ROLES = ("new", "held", "weighted", "check")
+
+
+@dataclass(frozen=True)
+class Stations:
+    """The stations: names, known coordinates and their roles, and starting values.
+
+    ``known``, ``known_sd`` and ``start`` are (n, 3) east, north, height with NaN where not given; ``role`` is (n, 3)
+    of NEW, HELD, WEIGHTED, CHECK.
+    """
+
+    names: tuple[str, ...]
+    known: Array
+    known_sd: Array
+    role: Ints
+    start: Array
+
+    def __len__(self) -> int:
+        return len(self.names)
+
+    @cached_property
+    def index(self) -> dict[str, int]:
+        """Number of each station by its name."""
+        return {name: i for i, name in enumerate(self.names)}
+
+
+@dataclass(frozen=True)
+class Group:
+    """An unknown shared by some rows: a set's orientation, the turn of a set of azimuths."""
+
+    what: str
+    of: str
+    shared: bool
+    """False: local, eliminated within its element. True: one bordered unknown of the whole network."""
+    set: str = ""
+    """The set's name as booked."""
+
+
+@dataclass(frozen=True)
+class Block:
+    """The used rows of one table of one kind; m rows of p parts."""
+
+    kind: str
+    file: str
+    stations: Ints
+    """(m, c) station numbers in the order of the kind's station columns."""
+    values: Array
+    """(m, p) as reduced from the book; NaN where a part was not given or is not measured."""
+    sd: Array
+    """(m, p) standard deviations before adjustment."""
+    group: Ints
+    """(m,) number of the row's group unknown, -1 for none."""
+    held: Bools
+    """(m,) rows that are conditions without error."""
+    line: Ints
+    """(m,) physical line of the file where the row begins."""
+    ids: tuple[str, ...] = ()
+    """Given identifications, '' where none; empty when no row has one."""
+    precision: tuple[str, ...] = ()
+    """(m) label of the source of each row's standard deviation: an instrument's name or 'sd'."""
+
+    def __len__(self) -> int:
+        return len(self.line)
+
+    def name(self, i: int) -> str:
+        """Identification of row ``i``: the given one, else FILE:LINE."""
+        return (self.ids[i] if self.ids else "") or f"{self.file}:{self.line[i]}"
+
+
+@dataclass(frozen=True)
+class Cluster:
+    """Scalar rows with a common full covariance: ``rows`` (k,) and ``covariance`` (k, k) in squared SI units."""
+
+    rows: Ints
+    covariance: Array
+
+
+@dataclass(frozen=True)
+class Network:
+    """All of what was said, ready to be solved."""
+
+    stations: Stations
+    blocks: tuple[Block, ...]
+    groups: tuple[Group, ...] = ()
+    clusters: tuple[Cluster, ...] = ()
+    pairs: Ints = field(default_factory=lambda: np.empty((0, 2), dtype=np.int64))
+    """(k, 2) station pairs whose relative precision is wanted beside the observed lines."""
+
+    @cached_property
+    def rows(self) -> Rows:
+        """The numbering of the scalar rows."""
+        return Rows.of(self.blocks)
+
+
+@dataclass(frozen=True)
+class Rows:
+    """Scalar rows: block, row in the block and part of each, all (R,)."""
+
+    block: Ints
+    row: Ints
+    part: Ints
+
+    @classmethod
+    def of(cls, blocks: tuple[Block, ...]) -> Rows:
+        """Number every given part of every row, in the order of the book."""
+        block, row, part = [np.empty(0, np.int64)], [np.empty(0, np.int64)], [np.empty(0, np.int64)]
+        for b, one in enumerate(blocks):
+            i, p = np.nonzero(~np.isnan(one.sd))
+            block.append(np.full(len(i), b))
+            row.append(i)
+            part.append(p)
+        return cls(np.concatenate(block), np.concatenate(row), np.concatenate(part))
+
+    def __len__(self) -> int:
+        return len(self.block)

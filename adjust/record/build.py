@@ -1,0 +1,169 @@
+"""The record as one dictionary, every key of it always present (see adjust.record.keys for the list)."""
+
+from __future__ import annotations
+
+import platform
+from typing import Any
+
+import numpy as np
+import scipy
+
+import adjust
+from adjust.caution import CAUTION
+from adjust.judge.assess import Judgement, OverallTest
+from adjust.network import ROLES
+from adjust.record.numbers import number
+from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
+from adjust.record.places import line_entries, mark_entries, parameter_entries, station_entries
+from adjust.solver.solution import PartResult, Solution
+
+FORMAT = 1
+ROWS_MOST = 20_000
+"""Above this many scalar rows the JSON holds suspects, worst and unchecked readings only; the CSV files hold all."""
+WORST = 200
+
+
+def build(judgement: Judgement) -> dict[str, Any]:
+    """The complete record of a judged solution."""
+    solution = judgement.solution
+    return {
+        "format": FORMAT,
+        "brasscap": adjust.__version__,
+        "versions": {"python": platform.python_version(), "numpy": np.__version__, "scipy": scipy.__version__},
+        "caution": CAUTION,
+        "complete": True,
+        "job": _job(solution),
+        "settings": _settings(solution),
+        "units": _units(solution),
+        "frame": _frame(solution),
+        "solution": _block(judgement, solution.total, judgement.overall[-1], with_parts=True),
+        "free": None,
+        "stations": station_entries(judgement),
+        "side_shots": [],
+        "lines": line_entries(judgement),
+        "observations": observation_entries(judgement),
+        "parameters": parameter_entries(judgement),
+        "closures": [],
+        "suspects": suspect_entries(judgement),
+        "expected_by_chance": number(judgement.expected_by_chance),
+        "unchecked": unchecked_entries(judgement),
+        "control": mark_entries(judgement),
+        "variance_components": [],
+        "ledger": [],
+        "reductions": [],
+        "left_out": [left_out(aside, with_reason=True) for aside in solution.job.left_out],
+        "not_measured": [left_out(aside, with_reason=False) for aside in solution.job.planned],
+        "warnings": _warnings(judgement),
+    }
+
+
+def trimmed(record: dict[str, Any]) -> dict[str, Any]:
+    """The record for JSON: above ROWS_MOST rows only suspects, unchecked and the worst observations and lines."""
+    if len(record["observations"]) <= ROWS_MOST:
+        return record
+    named = {s["observation"] for s in record["suspects"]} | {u["observation"] for u in record["unchecked"]}
+    by_statistic = sorted(record["observations"], key=lambda o: -abs(o["statistic"] or 0.0))
+    named |= {o["id"] for o in by_statistic[:WORST]}
+    by_size = sorted(record["lines"], key=lambda ln: -(ln["ellipse"] or {}).get("semi_major", ln["sd_height_difference"] or 0.0))
+    worst = {(ln["from"], ln["to"]) for ln in by_size[:WORST]}
+    return {
+        **record,
+        "complete": False,
+        "observations": [o for o in record["observations"] if o["id"] in named],
+        "lines": [ln for ln in record["lines"] if (ln["from"], ln["to"]) in worst],
+    }
+
+
+def _job(solution: Solution) -> dict[str, Any]:
+    settings = solution.job.settings
+    return {
+        "title": settings.title,
+        "client": settings.client,
+        "surveyed": settings.surveyed,
+        "inputs": [{"file": file, "sha256": digest} for file, digest in solution.job.inputs],
+    }
+
+
+def _settings(solution: Solution) -> dict[str, Any]:
+    settings = solution.job.settings
+    return {
+        **settings.tests.__dict__,
+        "datum": {"kind": settings.datum_kind or None, "stations": list(settings.datum_stations)},
+        "instruments": {name: {key: model.text for key, model in keys.items()} for name, keys in settings.instruments.items()},
+        "books": [
+            {"file": t.file, "kind": t.kind, "instrument": t.instrument or None, "sd_factor": number(t.sd_factor),
+             "units": {"length": t.units.length, "angle": t.units.angle, "decimal": t.units.decimal}}
+            for t in solution.job.tables
+        ],
+    }  # fmt: skip
+
+
+def _units(solution: Solution) -> dict[str, Any]:
+    return dict(solution.job.settings.units.__dict__)
+
+
+def _frame(solution: Solution) -> dict[str, Any]:
+    assumed = ", ".join(solution.assumed)
+    origin = f"no coordinates were given: {assumed} was placed at 0, 0 and its first sight pointed north" if assumed else None
+    return {"kind": solution.design.frame.name, "origin": origin}
+
+
+def _block(judgement: Judgement, part: PartResult, test: OverallTest, with_parts: bool) -> dict[str, Any]:
+    solution = judgement.solution
+    block: dict[str, Any] = {
+        "stage": "free" if all(p.datum and p.datum.free for p in _parts_of(solution, part)) else "held",
+        "converged": True,
+        "iterations": solution.iterations,
+        "observations": part.observations,
+        "unknowns": part.unknowns,
+        "conditions": part.conditions,
+        "datum_missing": part.datum_missing,
+        "degrees_of_freedom": part.degrees_of_freedom,
+        "weighted_square_sum": number(part.square_sum),
+        "variance_factor": number(part.variance_factor),
+        "overall_test": {
+            "interval": [number(x) for x in test.interval] if test.interval else None,
+            "verdict": test.verdict,
+            "better_than_stated": test.better_than_stated,
+        },
+        "datum": "; ".join(dict.fromkeys(_datum_words(solution, p) for p in _parts_of(solution, part))),
+    }
+    if with_parts:
+        pairs = zip(solution.parts, judgement.overall, strict=False)
+        block["parts"] = [{"what": p.what, **_block(judgement, p, t, with_parts=False)} for p, t in pairs]
+    return block
+
+
+def _parts_of(solution: Solution, part: PartResult) -> tuple[PartResult, ...]:
+    return (part,) if part.datum else solution.parts
+
+
+def _datum_words(solution: Solution, part: PartResult) -> str:
+    """'held control', 'weighted control', 'held and weighted control' or 'free over ...'."""
+    assert part.datum is not None
+    one = part.datum
+    if one.free:
+        names = [solution.names[i] for i in one.stations]
+        shown = ", ".join(names[:6]) + (f" and {len(names) - 6} more" if len(names) > 6 else "")
+        return f"free over {shown}" if one.null.shape[1] else "free, with nothing missing"
+    nodes = one.part.nodes[:, [0, 0, 1]]
+    roles = {ROLES[code] for code in np.unique(solution.network.stations.role[nodes])} & {"held", "weighted"}
+    return " and ".join(sorted(roles)) + " control"
+
+
+def _warnings(judgement: Judgement) -> list[str]:
+    solution = judgement.solution
+    out = list(solution.job.warnings)
+    for part, test in zip(solution.parts, judgement.overall, strict=False):
+        if test.better_than_stated:
+            out.append(f"{part.what}: the readings agree better than their stated standard deviations; are these too large, "
+                       "or the readings not independent?")  # fmt: skip
+        if part.degrees_of_freedom == 0:
+            out.append(f"{part.what}: no reading to spare: nothing is checked and no test can be made.")
+        if part.datum and part.datum.free:
+            out.append(f"{part.what}: free network ({_datum_words(solution, part)}): coordinates are relative to its own datum.")
+    gap = float(np.nansum(judgement.reliability.redundancy)) - solution.total.degrees_of_freedom
+    if abs(gap) > 1e-6 * max(1, solution.total.degrees_of_freedom):
+        out.append(f"the redundancy numbers miss their sum by {gap:.2g}: some station may be barely fixed; treat the result with care.")
+    return out
+

@@ -1,0 +1,200 @@
+"""A network of heights only, as a schematic: heights upwards, stations side by side as the level lines run.
+
+Sideways nothing is to scale. Confidence bars have their own stated magnification over the height axis:
+
+    bar half length in mm = multiplier · sd · (mm of paper per metre of height) · magnification
+"""
+
+from __future__ import annotations
+
+import itertools
+import math
+from collections import deque
+from dataclasses import dataclass, field
+from statistics import NormalDist
+
+import numpy as np
+
+from adjust.record.plan_view import LOOKS, Names, pointed_lines, suspect_readings, unchecked_stations
+from adjust.record.sheet import (
+    BLUE,
+    GREY,
+    PALE,
+    VERMILLION,
+    Box,
+    Labels,
+    Point,
+    Sheet,
+    draw_badge,
+    draw_symbol,
+    mark_id,
+    nearest_step,
+    round_step,
+)
+from adjust.record.shown import Entry, Shown, plain
+from adjust.units import LENGTHS
+
+MOST_LABELS = 60
+BADGES = 9
+
+
+@dataclass
+class LevelView:
+    """What was drawn, for the legend and the scales of the panel."""
+
+    mm_per_metre: float
+    magnification: float | None = None
+    symbols: list[str] = field(default_factory=list)
+    looks: list[str] = field(default_factory=list)
+    hidden: int = 0
+    """Stations without a height, not drawn."""
+
+
+def walk(record: Entry) -> list[str]:
+    """Stations breadth first along the level lines from the first control; every other piece after it likewise."""
+    neighbours: dict[str, list[str]] = {one["station"]: [] for one in record["stations"] if one["height"] is not None}
+    for one in record["observations"]:
+        for a, b in pointed_lines(one):
+            if a in neighbours and b in neighbours:
+                neighbours[a].append(b)
+                neighbours[b].append(a)
+    control = [one["station"] for one in record["stations"] if one["role_height"] in ("held", "weighted")]
+    order: dict[str, None] = {}
+    for start in [*(name for name in control if name in neighbours), *neighbours]:
+        waiting = deque([start])
+        while waiting:
+            name = waiting.popleft()
+            if name not in order:
+                order[name] = None
+                waiting.extend(neighbours[name])
+    return list(order)
+
+
+def multiplier(record: Entry) -> float:
+    """Half width of the confidence interval over the standard deviation: normal, or Student from residuals."""
+    settings = record["settings"]
+    share = 0.5 + settings["confidence"] / 2
+    if settings["variance_factor"] == "given":
+        return NormalDist().inv_cdf(share)
+    from scipy.special import stdtrit
+
+    parts = [part for part in record["solution"]["parts"] if str(part["what"]).startswith("heights")]
+    freedom = (parts[0] if parts else record["solution"])["degrees_of_freedom"]
+    return float(stdtrit(freedom, share)) if freedom > 0 else NormalDist().inv_cdf(share)
+
+
+class _Schematic:
+    def __init__(self, sheet: Sheet, record: Entry, frame: Box) -> None:
+        self.sheet, self.record, self.frame, self.shown = sheet, record, frame, Shown.of(record)
+        entries = {one["station"]: one for one in record["stations"]}
+        self.stations = [entries[name] for name in walk(record)]
+        heights = np.array([one["height"] for one in self.stations])
+        self.low, span = float(heights.min()), max(float(np.ptp(heights)), 0.01)
+        left, bottom, right, top = frame
+        self.mm_per_metre = (top - bottom - 56) / span
+        xs = np.linspace(left + 30, right - 20, len(self.stations)) if len(self.stations) > 1 else [(left + right) / 2]
+        ys = bottom + 28 + (heights - self.low) * self.mm_per_metre
+        self.at = {one["station"]: (float(x), float(y)) for one, x, y in zip(self.stations, xs, ys, strict=True)}
+        self.place = {name: i for i, name in enumerate(self.at)}
+        self.size = 1.0 if len(self.stations) <= 40 else 0.6
+        self.unchecked = unchecked_stations(record)
+
+    def axis(self) -> None:
+        """The height axis with round figures and thin level lines."""
+        left, bottom, right, top = self.frame
+        unit = LENGTHS[self.shown.length]
+        step = round_step((top - bottom) / 6 / self.mm_per_metre / unit)
+        first = math.ceil((self.low - 22 / self.mm_per_metre) / unit / step)
+        last = math.floor((self.low + (top - bottom - 36) / self.mm_per_metre) / unit / step)
+        places = max(0, -math.floor(math.log10(step)))
+        for k in range(first, last + 1):
+            y = bottom + 28 + (k * step * unit - self.low) * self.mm_per_metre
+            self.sheet.line([(left + 18, y), (right, y)], 0.4, color=PALE, zorder=0)
+            self.sheet.text((left + 16.5, y), self.shown.mark(f"{k * step:.{places}f}"), 6.5, ha="right",
+                            va="center_baseline", color=GREY)  # fmt: skip
+        self.sheet.text((left + 4.5, (bottom + top) / 2), f"Height, {self.shown.length}", 7, rotation=90, va="center",
+                        ha="center", color=GREY)  # fmt: skip
+        note = "Stations in the order of the level lines; nothing is to scale sideways."
+        self.sheet.text((left + 18, bottom + 3), note, 6, color=GREY)
+
+    def lines(self, labels: Labels) -> None:
+        """The levelled lines: straight between neighbours of the row, bent around those between otherwise."""
+        blamed = {tuple(sorted(line)): i for i, one in reversed(list(enumerate(suspect_readings(self.record))))
+                  for line in pointed_lines(one)}  # fmt: skip
+        done: dict[Names, int] = {}
+        for one in self.record["observations"]:
+            for a, b in pointed_lines(one):
+                key = (a, b) if self.place.get(a, -1) < self.place.get(b, -1) else (b, a)
+                if a in self.at and b in self.at:
+                    repeat = done[key] = done.get(key, -1) + 1
+                    if repeat < 3:  # a line levelled again is drawn beside itself; more would be one blot
+                        self._line(key, repeat, blamed.get(tuple(sorted(key))), labels)
+
+    def _line(self, ends: Names, repeat: int, suspect: int | None, labels: Labels) -> None:
+        (x1, y1), (x2, y2) = one, other = self.at[ends[0]], self.at[ends[1]]
+        apart = self.place[ends[1]] - self.place[ends[0]]
+        side = 1 if (self.place[ends[0]] + repeat) % 2 else -1
+        away = side * ((0.0 if apart == 1 else 7.0 * math.sqrt(apart)) + 6.0 * repeat)
+        bend = ((x1 + x2) / 2, (y1 + y2) / 2 + away)
+        look = {"edgecolor": GREY, "zorder": 1} if suspect is None else {"edgecolor": VERMILLION, "zorder": 2}
+        self.sheet.curve(one, bend, other, 0.9 if suspect is None else 2.0, **look)
+        middle = ((x1 + 2 * bend[0] + x2) / 4, (y1 + 2 * bend[1] + y2) / 4)
+        labels.segments += _chords(one, bend, other)
+        if suspect is not None and suspect < BADGES and repeat == 0:
+            draw_badge(self.sheet, suspect + 1, middle)
+            labels.keep_off(middle, 2.2)
+
+    def bars(self, labels: Labels) -> float | None:
+        """The confidence bars; their magnification over the height axis."""
+        half = {one["station"]: multiplier(self.record) * one["sd_height"] * self.mm_per_metre
+                for one in self.stations if one["sd_height"]}  # fmt: skip
+        if not half:
+            return None
+        m = nearest_step(6.0 / float(np.median(list(half.values()))))
+        while max(half.values()) * m > 22:
+            m = nearest_step(m / 2)
+        for name, length in half.items():
+            x, y = self.at[name]
+            draw_bar(self.sheet, (x, y), length * m, 1.1 * self.size, mark_id("bar", name))
+            labels.soft.append((x - 1, y - length * m, x + 1, y + length * m))
+        return m
+
+    def symbol(self, one: Entry) -> str:
+        """The symbol of a station, by its role in height."""
+        unchecked = one["station"] in self.unchecked and one["role_height"] == "new"
+        return "unchecked" if unchecked else str(one["role_height"])
+
+
+def _chords(one: Point, bend: Point, other: Point) -> list[list[Point]]:
+    """The curve as eight chords: (1 - t)² one + 2 t (1 - t) bend + t² other."""
+    ts = [k / 8 for k in range(9)]
+    points = [((1 - t) ** 2 * one[0] + 2 * t * (1 - t) * bend[0] + t * t * other[0],
+               (1 - t) ** 2 * one[1] + 2 * t * (1 - t) * bend[1] + t * t * other[1]) for t in ts]  # fmt: skip
+    return [[a, b] for a, b in itertools.pairwise(points)]
+
+
+def draw_bar(sheet: Sheet, at: Point, half: float, reach: float, gid: str | None = None) -> None:
+    """An upright bar of 2 · ``half`` mm with end strokes."""
+    x, y = at
+    sheet.line([(x, y - half), (x, y + half)], 1.3, gid=gid, color=BLUE, zorder=3)
+    for end in (y - half, y + half):
+        sheet.line([(x - reach, end), (x + reach, end)], 1.3, color=BLUE, zorder=3)
+
+
+def draw_levels(sheet: Sheet, record: Entry, frame: Box) -> LevelView:
+    """Draw the schematic into the frame (mm) and say what it shows; at least one station has a height."""
+    s = _Schematic(sheet, record, frame)
+    labels = Labels(sheet, (frame[0] + 18, frame[1] + 7, frame[2] - 1, frame[3] - 1), 7.5 if s.size == 1 else 5.5)
+    s.axis()
+    s.lines(labels)
+    view = LevelView(s.mm_per_metre, s.bars(labels), looks=[next(iter(LOOKS))])
+    view.hidden = len(record["stations"]) - len(s.stations)
+    for one in s.stations:
+        draw_symbol(sheet, s.symbol(one), s.at[one["station"]], s.size, mark_id("station", one["station"]))
+        labels.keep_off(s.at[one["station"]], 1.8 * s.size)
+    seen = {s.symbol(one) for one in s.stations}
+    view.symbols = [symbol for symbol in ("held", "weighted", "check", "new", "unchecked") if symbol in seen]
+    every = math.ceil(len(s.stations) / MOST_LABELS)
+    named = [one for i, one in enumerate(s.stations) if i % every == 0 or one["role_height"] != "new"]
+    labels.place([(s.at[one["station"]], plain(one["station"], 14)) for one in named])
+    return view

@@ -1,0 +1,125 @@
+"""Entries of the record about readings: observations, suspects, unchecked, left out."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from adjust.book.job import Aside
+from adjust.judge.assess import Judgement
+from adjust.kinds import KINDS
+from adjust.network import PARTS
+from adjust.record.numbers import angle, coordinate, number
+
+STATION_KEYS = ("at", "from", "to", "first", "second")
+
+
+def row_id(judgement: Judgement, r: int) -> str:
+    """Identification of the observation of scalar row ``r``."""
+    rows, blocks = judgement.solution.network.rows, judgement.solution.network.blocks
+    return blocks[rows.block[r]].name(int(rows.row[r]))
+
+
+def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
+    """One entry a scalar row, in the order of job.toml, then of rows."""
+    solution, rel = judgement.solution, judgement.reliability
+    network = solution.network
+    booked = [solution.job.booked(block.file) for block in network.blocks]
+    statistic, smallest, suspect = judgement.statistic, judgement.smallest_detectable, judgement.suspect
+    sd_adjusted = rel.sd_adjusted * np.sqrt(judgement.scale)
+    entries = []
+    for r in range(len(network.rows)):
+        b, i, p = int(network.rows.block[r]), int(network.rows.row[r]), int(network.rows.part[r])
+        block = network.blocks[b]
+        kind = KINDS[block.kind]
+        value = angle if kind.dimension == "angle" else coordinate
+        adjusted = solution.adjusted[r] % (2 * np.pi) if kind.wraps else solution.adjusted[r]
+        held = bool(solution.design.held[r])
+        texts = booked[b][int(block.line[i])]
+        named = dict(zip(kind.stations, block.stations[i].tolist(), strict=True))
+        named.setdefault("at", named.pop("station", -1))
+        entries.append(
+            {
+                "id": block.name(i),
+                "file": block.file,
+                "line": int(block.line[i]),
+                "kind": block.kind,
+                "part": kind.parts[p] or None,
+            }
+            | {key: _name(judgement, named.get(key, -1)) for key in STATION_KEYS}
+            | {
+                "set": (network.groups[block.group[i]].set if block.group[i] >= 0 else "") or None,
+                "booked": texts[p] if len(kind.parts) > 1 else next(t for t in texts if t),
+                "corrections": [],
+                "group": "held" if held else block.precision[i],
+                "observed": value(solution.design.observed[r]),
+                "adjusted": value(adjusted),
+                "residual": number(solution.residuals[r]),
+                "sd": None if held else number(solution.design.sd[r]),
+                "sd_adjusted": number(sd_adjusted[r]),
+                "redundancy": _share(rel.redundancy[r]),
+                "checked_share": _share(rel.checked_share[r]),
+                "statistic": number(statistic[r]),
+                "critical": None if held else number(judgement.critical),
+                "smallest_detectable": number(smallest[r]),
+                "external_effect": _effect(judgement, r),
+                "suspect": bool(suspect[r]),
+            }
+        )
+    return entries
+
+
+def _share(x: float) -> float | None:
+    """A redundancy number; what rounding leaves of zero is zero."""
+    return number(0.0 if abs(x) < 1e-9 else x)
+
+
+def _name(judgement: Judgement, station: int) -> str | None:
+    return judgement.solution.names[station] if station >= 0 else None
+
+
+def _effect(judgement: Judgement, r: int) -> dict[str, Any] | None:
+    """Coordinate moved most by the smallest detectable blunder."""
+    station = int(judgement.effect_station[r])
+    if station < 0 or not np.isfinite(judgement.effect[r]):
+        return None
+    return {"station": judgement.solution.names[station], "part": PARTS[judgement.effect_part[r]],
+            "value": number(judgement.effect[r])}  # fmt: skip
+
+
+def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
+    """Suspects in order of blame."""
+    rel = judgement.reliability
+    root = rel.root * np.sqrt(judgement.scale)
+    return [
+        {
+            "observation": row_id(judgement, r),
+            "estimated_blunder": number(rel.blunder[r]),
+            "sd": number(root[r]),
+            "statistic": number(judgement.statistic[r]),
+            "at_job_level": bool(judgement.suspect_of_job[r]),
+            "likely_causes": [],
+            "cannot_be_told_from": [],
+        }
+        for r in judgement.blame.tolist()
+    ]
+
+
+def unchecked_entries(judgement: Judgement) -> list[dict[str, Any]]:
+    """Readings whose errors no test here can see, with the station that they carry alone."""
+    rows = judgement.solution.network.rows
+    out = []
+    for r in np.flatnonzero(~judgement.reliability.tested & ~judgement.solution.design.held).tolist():
+        kind = judgement.solution.network.blocks[rows.block[r]].kind.replace("_", " ")
+        station = int(judgement.effect_station[r])
+        into = f"straight into {judgement.solution.names[station]}" if station >= 0 else "straight into the orientation of its set"
+        why = f"nothing else here checks this {kind}: an error in it would go unseen, {into}"
+        out.append({"observation": row_id(judgement, r), "why": why})
+    return out
+
+
+def left_out(aside: Aside, with_reason: bool) -> dict[str, Any]:
+    """A row set aside."""
+    entry = {"observation": aside.observation, "file": aside.file, "line": aside.line, "kind": aside.kind}
+    return entry | ({"reason": aside.reason} if with_reason else {})

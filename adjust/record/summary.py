@@ -1,0 +1,248 @@
+"""One screen in plain words: what was adjusted, whether to believe it, what to look at, and the stations.
+
+At most about forty lines of at most a hundred columns. Lists show their worst few and say where the rest stands; the
+table of stations gives way first.
+"""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterable, Sequence
+
+from adjust.caution import CAUTION
+from adjust.record.shown import Entry, Shown, count, plain, reading_in_words
+
+WIDTH = 100
+MOST_LINES = 40
+WORST = 3
+TABLE_ALL, TABLE_WORST, TABLE_LEAST = 12, 8, 4
+
+
+def summary_lines(record: Entry) -> list[str]:
+    """The summary of a record as lines without colour, the caution last."""
+    shown = Shown.of(record)
+    above = [*_head(record), *_overall(record, shown), *_suspects(record, shown), *_unchecked(record)]
+    above += [*_control(record), *_precision(record, shown), *_left_out(record), *_warnings(record)]
+    caution = textwrap.wrap(CAUTION, WIDTH)
+    room = MOST_LINES - len(above) - len(caution) - 4  # the table's header and pointer, and two blank lines
+    table = _table(record, shown, max(room, TABLE_LEAST))
+    return [*above, *(["", *table] if table else []), "", *caution]
+
+
+def _wrapped(text: str, most: int = 2, indent: str = "  ") -> list[str]:
+    return textwrap.wrap(text, WIDTH, subsequent_indent=indent, max_lines=most, placeholder=" ...")
+
+
+def _some(items: Sequence[str], most: int = WORST) -> str:
+    rest = len(items) - most
+    return ", ".join(items[:most]) + (f" and {rest} more" if rest > 0 else "")
+
+
+def _degrees(n: int) -> str:
+    return count(n, "degree of freedom", "degrees of freedom")
+
+
+def _head(record: Entry) -> list[str]:
+    job, solution = record["job"], record["solution"]
+    who = [
+        text for text in (plain(job["client"], 60), f"surveyed {job['surveyed']}" if job["surveyed"] else "") if text
+    ]
+    lines = _wrapped(plain(job["title"] or "Untitled job", 190))
+    lines += [", ".join(who)] if who else []
+    lines += _wrapped(
+        f"Adjusted {count(len(record['stations']), 'station')} from {count(solution['observations'], 'reading')}: "
+        f"{count(solution['unknowns'], 'unknown')}, {_degrees(solution['degrees_of_freedom'])}. "
+        f"Datum: {plain(solution['datum'], 80)}."
+    )
+    if not solution["converged"]:
+        lines.append(f"NOT SETTLED after {count(solution['iterations'], 'iteration')}: do not use these figures.")
+    if record["settings"]["variance_factor"] == "from-residuals":
+        lines.append("Standard deviations are scaled by what the residuals show (variance factor from residuals).")
+    return lines
+
+
+_VERDICTS = {
+    "met": "met, the readings scatter as their standard deviations say",
+    "not met": "NOT MET, the readings scatter more than their standard deviations allow",
+    "better than stated": "better than stated, the readings scatter less than their standard deviations say",
+    "cannot be tested": "cannot be tested, no reading is to spare",
+}
+
+
+def _overall(record: Entry, shown: Shown) -> list[str]:
+    parts = record["solution"]["parts"] or [record["solution"]]
+    lines = ["", *[line for part in parts[:WORST] for line in _overall_part(part, record["settings"], shown)]]
+    return [*lines, f"  and {count(len(parts) - WORST, 'more part')}: see the record"] if len(parts) > WORST else lines
+
+
+def _overall_part(part: Entry, settings: Entry, shown: Shown) -> list[str]:
+    test, factor = part["overall_test"], part["variance_factor"]
+    what = plain(part.get("what") or "the whole", 50)
+    words = _VERDICTS.get(test["verdict"], str(test["verdict"]))
+    if settings["variance_factor"] == "from-residuals" and test["verdict"] == "cannot be tested":
+        words = "cannot be tested"
+    text = f"Overall test, {what}: {words}."
+    if factor is not None:
+        text += f" Variance factor {shown.mark(f'{factor:.2f}')}"
+        if test["interval"]:
+            least, most = (shown.mark(f"{bound:.2f}") for bound in test["interval"])
+            text += f" (should lie between {least} and {most})"
+        text += "."
+    return _wrapped(text)
+
+
+def _suspects(record: Entry, shown: Shown) -> list[str]:
+    expected = record["expected_by_chance"]
+    chance = "" if expected is None else f"expected by chance: {shown.mark(f'{expected:.2g}')}"
+    suspects = record["suspects"]
+    if not suspects:
+        return ["", "No suspect readings" + (f" ({chance})." if chance else ".")]
+    at_level = sum(bool(one["at_job_level"]) for one in suspects)
+    grave = f", {at_level} beyond what chance explains in the whole job" if at_level else ""
+    by_id = {one["id"]: one for one in record["observations"]}
+    lines = ["", f"SUSPECT: {count(len(suspects), 'reading')}{grave}" + (f" ({chance})." if chance else ".")]
+    for one in suspects[:WORST]:
+        lines += _suspect(one, by_id.get(one["observation"]), shown)
+    return lines + _more(len(suspects) - WORST, "suspect")
+
+
+def _more(rest: int, what: str) -> list[str]:
+    return [f"  and {count(rest, 'more ' + what)}: see the record"] if rest > 0 else []
+
+
+def _suspect(suspect: Entry, observation: Entry | None, shown: Shown) -> list[str]:
+    kind = observation["kind"] if observation else "distance"
+    what = f" {reading_in_words(observation)}," if observation else ""
+    text = f"  {plain(suspect['observation'], 40)}:{what} " + shown.too_much(
+        suspect["estimated_blunder"], suspect["sd"], kind
+    )
+    if suspect["statistic"] is not None:
+        critical = observation["critical"] if observation else None
+        text += f"; statistic {shown.mark(format(abs(suspect['statistic']), '.1f'))}"
+        text += f" (limit {shown.mark(f'{critical:.2f}')})" if critical else ""
+    if suspect["cannot_be_told_from"]:
+        text += f"; cannot be told from {_some([plain(name) for name in suspect['cannot_be_told_from']])}"
+    lines = _wrapped(text, 2, "      ")
+    causes = suspect["likely_causes"]
+    return lines + (_wrapped(f"      {plain(causes[0]['sentence'], 180)}", 1) if causes else [])
+
+
+def _unchecked(record: Entry) -> list[str]:
+    unchecked = record["unchecked"]
+    if not unchecked:
+        return []
+    few = _some([plain(one["observation"], 40) for one in unchecked])
+    return _wrapped(f"Unchecked: {count(len(unchecked), 'reading')} nothing else would contradict: {few}.")
+
+
+def _control(record: Entry) -> list[str]:
+    entries = record["control"]
+    if not entries:
+        return []
+    verdicts = [one["verdict"] for one in entries]
+    said = [
+        f"{verdicts.count(word)} {word}" for word in ("disagrees", "agrees", "cannot be judged") if word in verdicts
+    ]
+    bad = [one for one in entries if one["verdict"] == "disagrees"]
+    lines = [f"Control compared ({count(len(entries), 'coordinate')}): {', '.join(said)}."]
+    for one in bad[:2]:
+        lines += _wrapped(f"  {plain(one['sentence'], 180)}", 2, "    ")
+    return lines + _more(len(bad) - 2, "mark that disagrees")
+
+
+def _confidence(record: Entry) -> str:
+    return f"{100 * record['settings']['confidence']:g} %"
+
+
+def _precision(record: Entry, shown: Shown) -> list[str]:
+    lines = []
+    plane = [one for one in record["stations"] if one["ellipse_confidence"] and one["ellipse_confidence"]["semi_major"]]
+    if plane:
+        worst = max(plane, key=lambda one: float(one["ellipse_confidence"]["semi_major"]))
+        e = worst["ellipse_confidence"]
+        lines.append(
+            f"Least certain position: {plain(worst['station'])}, {_confidence(record)} ellipse "
+            f"{shown.small_sd(e['semi_major'])} by {shown.small_sd(e['semi_minor'])} {shown.small} (half axes), "
+            f"long axis {shown.rough_bearing(e['azimuth'])}."
+        )
+    high = [one for one in record["stations"] if one["sd_height"]]
+    if high:
+        worst = max(high, key=lambda one: float(one["sd_height"]))
+        sd = shown.small_sd(worst["sd_height"])
+        lines.append(f"Least certain height: {plain(worst['station'])}, standard deviation {sd} {shown.small}.")
+    return ["", *lines] if lines else []
+
+
+def _left_out(record: Entry) -> list[str]:
+    lines = []
+    out, none = record["left_out"], record["not_measured"]
+    if out:
+        few = _some([f"{plain(one['observation'], 30)} ({plain(one['reason'], 40)})" for one in out])
+        lines += _wrapped(f"Left out: {count(len(out), 'reading')}: {few}.")
+    if none:
+        lines.append(f"Planned and not measured: {count(len(none), 'reading')}.")
+    return lines
+
+
+def _warnings(record: Entry) -> list[str]:
+    warnings = record["warnings"]
+    lines = [line for one in warnings[:WORST] for line in _wrapped(f"Warning: {plain(one, 190)}")]
+    return lines + _more(len(warnings) - WORST, "warning")
+
+
+def _uncertainty(station: Entry) -> float:
+    ellipse = station["ellipse_confidence"]
+    return max(float(ellipse["semi_major"] or 0) if ellipse else 0.0, float(station["sd_height"] or 0))
+
+
+def _table(record: Entry, shown: Shown, room: int) -> list[str]:
+    """The compact table of stations: all where they fit, else the least certain in the order of the record."""
+    stations = record["stations"]
+    most = TABLE_ALL if len(stations) <= TABLE_ALL else TABLE_WORST
+    most = min(most, max(room, TABLE_LEAST))
+    worst = sorted(range(len(stations)), key=lambda i: (-_uncertainty(stations[i]), i))[:most]
+    rows = [stations[i] for i in sorted(worst)]
+    if not rows:
+        return []
+    columns = [column for column in _columns(rows, record, shown) if any(column[1:])]
+    while sum(max(map(len, column)) + 2 for column in columns) - 2 > WIDTH:
+        columns.pop()  # the last columns say least: they all stand in stations.csv
+    widths = [max(map(len, column)) for column in columns]
+    lines = ["  ".join(_placed(c[i], w, n) for n, (c, w) in enumerate(zip(columns, widths, strict=True))).rstrip()
+             for i in range(len(rows) + 1)]  # fmt: skip
+    hidden = len(stations) - len(rows)
+    which = f"The {len(rows)} least certain of {len(stations)} stations (all: stations.csv)" if hidden else "Stations"
+    return [f"{which}, coordinates in {shown.length}, sd and {_confidence(record)} half axis in {shown.small}:", *lines]
+
+
+def _placed(cell: str, width: int, column: int) -> str:
+    return cell.ljust(width) if column < 2 else cell.rjust(width)
+
+
+def _columns(rows: Iterable[Entry], record: Entry, shown: Shown) -> list[list[str]]:
+    """Columns with their header first; figures are padded so that decimal marks stand below each other."""
+    rows = list(rows)
+    axes = (*shown.axes, "height")
+    columns = [["Station", *(plain(one["station"], 14) for one in rows)], ["Role", *(_role(one) for one in rows)]]
+    for axis in axes:
+        cells = ["" if r[axis] is None else shown.coordinate(r[axis], r[f"sd_{axis}"]) for r in rows]
+        columns.append([axis.title(), *_aligned(cells, shown.decimal)])
+    for axis in axes:
+        cells = [shown.small_sd(one[f"sd_{axis}"] or None) for one in rows]
+        columns.append([f"sd {axis[0].upper()}", *_aligned(cells, shown.decimal)])
+    major = [shown.small_sd((one["ellipse_confidence"] or {}).get("semi_major") or None) for one in rows]
+    return [*columns, [_confidence(record), *_aligned(major, shown.decimal)]]
+
+
+def _role(station: Entry) -> str:
+    """The role, or both where the height's differs: 'held, new'."""
+    plane, height = station["role"], station["role_height"]
+    if station["height"] is None or plane == height:
+        return str(plane)
+    return str(height) if station["east"] is None else f"{plane}, {height}"
+
+
+def _aligned(cells: list[str], decimal: str) -> list[str]:
+    tails = [len(cell) - cell.find(decimal) if decimal in cell else 0 for cell in cells]
+    most = max(tails, default=0)
+    return [cell + " " * (most - tail) if cell else "" for cell, tail in zip(cells, tails, strict=True)]

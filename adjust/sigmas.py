@@ -1,0 +1,95 @@
+"""Error models of instruments: "1.5 mm + 2 ppm" (linear sum), ["1.5 mm", "2 ppm"] (root of the sum of squares).
+
+A term is NUMBER UNIT with, for levelling, *sqrt(km), *sqrt(mi) or *sqrt(setup). The linear sum is how makers of
+distance meters state their figures (common practice); the root-sum-square is the propagation of independent parts.
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from adjust.units import ANGLES, LENGTHS, BadValue, parse_number
+
+Array = NDArray[np.float64]
+
+_TERM = re.compile(r"([-+]?[\d.,]+(?:[eE][-+]?\d+)?)\s*([A-Za-z-]+)\s*(?:[*·x]\s*sqrt\(\s*([A-Za-z-]+)\s*\))?")
+
+
+@dataclass(frozen=True)
+class Term:
+    """A size in metres or radians, times nothing (''), the distance ('ppm'), or a root ('length', 'setup')."""
+
+    size: float
+    per: str = ""
+
+
+@dataclass(frozen=True)
+class Precision:
+    """An error model: its terms and whether they add linearly or by the root of the sum of squares."""
+
+    terms: tuple[Term, ...]
+    linear: bool
+    text: str
+
+    @property
+    def needs(self) -> set[str]:
+        """What a reading must tell for this model: a subset of {'ppm', 'length', 'setup'}."""
+        return {term.per for term in self.terms if term.per}
+
+    def sd(self, m: int, **given: Array) -> Array:
+        """Standard deviations (m,) in metres or radians; ``given`` holds distance, length (metres), setup (count)."""
+        total = np.zeros(m)
+        for term in self.terms:
+            factor: Array | float = 1.0
+            if term.per == "ppm":
+                factor = np.abs(given["distance"])
+            elif term.per:
+                factor = np.sqrt(given[term.per])
+            part = term.size * factor
+            total = total + (part if self.linear else part * part)
+        return total if self.linear else np.sqrt(total)
+
+
+def parse_precision(value: object, dimension: str, decimal: str = ".") -> Precision:
+    """Read an error model of a ``dimension``: length, angle, or rise (a length per root distance or set-up).
+
+    Raises BadValue saying which part is wrong.
+    """
+    if isinstance(value, str):
+        texts, linear = re.split(r"\s\+\s|(?<=[A-Za-z)])\s*\+\s*", value), True
+    elif isinstance(value, list) and value and all(isinstance(v, str) for v in value):
+        texts, linear = list(value), False
+    else:
+        raise BadValue('write it like "1.5 mm + 2 ppm" (sum) or ["1.5 mm", "2 ppm"] (root of the sum of squares)')
+    terms = tuple(_term(text.strip(), dimension, decimal) for text in texts)
+    if not any(term.size for term in terms):
+        raise BadValue("an error model of zero; give the instrument's standard deviation")
+    return Precision(terms, linear, value if isinstance(value, str) else " (+) ".join(texts))
+
+
+def _term(text: str, dimension: str, decimal: str) -> Term:
+    match = _TERM.fullmatch(text)
+    if not match:
+        raise BadValue(f'"{text}" is no number with a unit; write it like "2 sec", "1.5 mm" or "1.2 mm*sqrt(km)"')
+    size, unit, root = parse_number(match[1], decimal), match[2], match[3]
+    if size < 0:
+        raise BadValue(f'"{text}" is below zero')
+    if unit == "ppm" and dimension == "length" and not root:
+        return Term(size * 1e-6, "ppm")
+    table = ANGLES if dimension == "angle" else LENGTHS
+    if unit not in table:
+        raise BadValue(f"{unit} is no unit of {'angle' if dimension == 'angle' else 'length'}; use one of {', '.join(table)}")
+    size *= table[unit]
+    if not root:
+        return Term(size)
+    if dimension != "rise":
+        raise BadValue(f'"{text}": a root belongs to levelling only')
+    if root == "setup":
+        return Term(size, "setup")
+    if root not in LENGTHS:
+        raise BadValue(f"sqrt({root}): use sqrt(km), sqrt(mi) or sqrt(setup)")
+    return Term(size / LENGTHS[root] ** 0.5, "length")

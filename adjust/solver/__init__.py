@@ -1,0 +1,1 @@
+"""Least squares: design, elements, engine, datum, Gauss-Newton, and the Solution."""

@@ -1,0 +1,187 @@
+"""The linearised observation equations v = A dx - l, row by row, with the pattern made once and the numbers refilled.
+
+A scalar row has up to ``e`` slots: the coordinates of its stations and at most one shared unknown; ``columns`` (R, e)
+holds the unknown of each slot (-1: known or empty) and ``coefficients`` (R, e) its partial. The partial by the row's
+local unknown (an orientation) is kept apart, because it is eliminated inside the row's element.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from functools import cached_property
+
+import numpy as np
+
+from adjust.frames import LocalPlane
+from adjust.graph.parts import HEIGHT, PLANE, Part, row_groups
+from adjust.kinds import KINDS
+from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Ints, Network
+from adjust.units import TURN
+
+_NODE = np.array([PLANE, PLANE, HEIGHT])
+
+
+@dataclass(frozen=True)
+class Unknowns:
+    """Numbers of the unknowns: coordinates (n, 3) and shared group unknowns (g,), -1 where known or local."""
+
+    coordinate: Ints
+    shared: Ints
+    count: int
+
+    @classmethod
+    def of(cls, network: Network, parts: list[Part], free: Bools) -> Unknowns:
+        """Every touched coordinate that is not held; ``free`` (n, 3) marks where control is not to be held."""
+        touched = np.zeros((len(network.stations), 2), dtype=bool)
+        for part in parts:
+            touched |= part.nodes
+        wanted = touched[:, _NODE] & ((network.stations.role != HELD) | free)
+        coordinate = np.full(wanted.shape, -1, dtype=np.int64)
+        coordinate[wanted] = np.arange(wanted.sum())
+        is_shared = np.array([group.shared for group in network.groups], dtype=bool)
+        shared = np.full(len(is_shared), -1, dtype=np.int64)
+        shared[is_shared] = wanted.sum() + np.arange(is_shared.sum())
+        return cls(coordinate, shared, int(wanted.sum() + is_shared.sum()))
+
+
+@dataclass(frozen=True)
+class State:
+    """Where an iteration stands: positions (n, 3) and group unknowns (g,)."""
+
+    positions: Array
+    groups: Array
+
+
+@dataclass(frozen=True)
+class Linearised:
+    """Numbers of one linearisation: coefficients (R, e), by_local (R,), misclosure (R,) = observed - computed."""
+
+    coefficients: Array
+    by_local: Array
+    misclosure: Array
+    computed: Array
+    local: Ints
+    """(R,) local group of each row, -1 for none."""
+
+
+@dataclass(frozen=True)
+class Design:
+    """The pattern of the observation equations of a network in a frame."""
+
+    network: Network
+    frame: LocalPlane
+    unknowns: Unknowns
+
+    @cached_property
+    def observed(self) -> Array:
+        """Observed values (R,)."""
+        return self._scalar([b.values for b in self.network.blocks])
+
+    @cached_property
+    def sd(self) -> Array:
+        """Standard deviations (R,) before adjustment; 0 for rows held without error."""
+        return self._scalar([b.sd for b in self.network.blocks])
+
+    @cached_property
+    def held(self) -> Bools:
+        """Rows (R,) that are conditions."""
+        return self.sd == 0.0
+
+    @cached_property
+    def wraps(self) -> Bools:
+        """Rows (R,) whose values lie on a circle."""
+        return np.array([KINDS[b.kind].wraps for b in self.network.blocks], dtype=bool)[self.network.rows.block]
+
+    @cached_property
+    def group(self) -> Ints:
+        """Group of each row (R,), -1 for none."""
+        return row_groups(self.network)
+
+    @cached_property
+    def local(self) -> Ints:
+        """Local group of each row (R,), -1 for none."""
+        is_local = np.append([not g.shared for g in self.network.groups], False)
+        return np.where(is_local[self.group], self.group, -1)
+
+    def _scalar(self, parts: list[Array]) -> Array:
+        rows = self.network.rows
+        out = np.empty(len(rows))
+        for b, values in enumerate(parts):
+            here = rows.block == b
+            out[here] = values[rows.row[here], rows.part[here]]
+        return out
+
+    @cached_property
+    def columns(self) -> Ints:
+        """Unknown of every slot (R, e), -1 where there is none."""
+        rows, found = self.network.rows, []
+        for b, block in enumerate(self.network.blocks):
+            per_row = self._block_columns(block)
+            here = rows.block == b
+            found.append(per_row[rows.row[here]])
+        width = max((f.shape[1] for f in found), default=0) + 1
+        out = np.full((len(rows), width), -1, dtype=np.int64)
+        for b, columns in enumerate(found):
+            out[rows.block == b, : columns.shape[1]] = columns
+        grouped = self.group >= 0
+        out[grouped, -1] = self.unknowns.shared[self.group[grouped]]
+        return out
+
+    def _block_columns(self, block: Block) -> Ints:
+        """(m, slots) unknowns in the order of sights, ends, components."""
+        kind = KINDS[block.kind]
+        columns = []
+        for ends in kind.sights:
+            for end in ends:
+                if end < 0:
+                    columns.append(np.full((len(block), 3), -1))
+                else:
+                    columns.append(self.unknowns.coordinate[block.stations[:, end]])
+        return np.concatenate(columns, axis=1)
+
+    def linearise(self, state: State) -> Linearised:
+        """Values, partials and misclosures at a state."""
+        rows = self.network.rows
+        coefficients = np.zeros(self.columns.shape)
+        by_group = np.zeros(len(rows))
+        computed = np.empty(len(rows))
+        positions = np.nan_to_num(state.positions)
+        for b, block in enumerate(self.network.blocks):
+            here = rows.block == b
+            i, p = rows.row[here], rows.part[here]
+            values, by_position, by_unknown = self._block(block, positions, state.groups)
+            computed[here] = values[i, p]
+            coefficients[here, : by_position.shape[2]] = by_position[i, p]
+            by_group[here] = by_unknown[i, p]
+        coefficients[:, -1] = by_group
+        coefficients[self.columns < 0] = 0.0
+        l = self.observed - computed
+        l[self.wraps] -= TURN * np.round(l[self.wraps] / TURN)
+        return Linearised(coefficients, np.where(self.local >= 0, by_group, 0.0), l, computed, self.local)
+
+    def _block(self, block: Block, positions: Array, groups: Array) -> tuple[Array, Array, Array]:
+        kind = KINDS[block.kind]
+        ends = [(block.stations[:, i] if i >= 0 else np.full(len(block), -1), block.stations[:, j]) for i, j in kind.sights]
+        sights = np.stack([self.frame.sights(positions, i, j) for i, j in ends], axis=1)
+        values, by_sight, by_group = kind.geometry(sights, _group_values(block, groups))
+        carried = np.stack([self.frame.carry(by_sight[:, :, s]) for s in range(len(ends))], axis=2)
+        return values, carried.reshape(*values.shape, -1), by_group
+
+
+def _group_values(block: Block, groups: Array) -> Array:
+    return np.where(block.group >= 0, np.append(groups, 0.0)[block.group], 0.0)
+
+
+def control_as_new(network: Network, free: Bools) -> Network:
+    """The network without the weighted control rows of stations whose datum is free (n, 3)."""
+    if not free.any() or not (network.stations.role == WEIGHTED).any():
+        return network
+    blocks = []
+    for block in network.blocks:
+        if not KINDS[block.kind].from_control:
+            blocks.append(block)
+            continue
+        sd = np.where(free[block.stations[:, 0]], np.nan, block.sd)
+        if not np.isnan(sd).all():
+            blocks.append(replace(block, sd=sd))
+    return replace(network, blocks=tuple(blocks))

@@ -1,0 +1,132 @@
+"""The engine behind one small interface: analyse a pattern, factor, solve for many right-hand sides, cofactors.
+
+    pattern = Pattern.of(columns, count)      once: where every product of two columns goes in the normal matrix
+    factor  = pattern.factor(whitened)        N = sum A*'A*, scaled to a unit diagonal, sparse LDL' by SuperLU
+    factor.solve(rhs)                         (u, r) -> (u, r)
+    factor.entries(i, j)                      exact entries of N^-1
+
+SuperLU is run in its symmetric mode without pivoting, which for a positive definite matrix is a Cholesky
+factorisation in all but name; the pivots of the scaled matrix are the shares of each unknown that the unknowns after
+it do not explain (1 - R^2), so a pivot near zero is an unknown that nothing fixes.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from scipy.sparse import csc_array
+from scipy.sparse.linalg import splu
+
+from adjust.network import Array, Ints
+from adjust.solver.elements import Whitened
+
+PIVOT_LEAST = 1e-11
+"""Smallest scaled pivot taken for a fixed unknown. Rounding leaves about n * 1e-16 in place of zero (largest seen in
+500 free networks of up to 60 stations without datum: 4e-14); the smallest of a solvable net seen there was 2e-7."""
+CHUNK = 512
+"""Columns of the inverse solved for at once."""
+
+
+class SingularPattern(Exception):
+    """The normal matrix has no inverse; ``unknowns`` are those whose pivots vanished (may be empty)."""
+
+    def __init__(self, unknowns: Ints) -> None:
+        super().__init__("no inverse")
+        self.unknowns = unknowns
+
+
+@dataclass(frozen=True)
+class Pattern:
+    """Where the products of elements go in the normal matrix; ``columns`` are their unknowns (b, c), -1 for none."""
+
+    columns: list[Ints]
+    count: int
+    indices: Ints
+    indptr: Ints
+    target: Ints
+    """Place in the matrix's data of every product of two columns, one extra place for products without one."""
+
+    @classmethod
+    def of(cls, columns: list[Ints], count: int) -> Pattern:
+        """Analyse the elements once."""
+        keys = [np.arange(count, dtype=np.int64) * (count + 1)]
+        for one in columns:
+            i, j = one[:, :, None], one[:, None, :]
+            keys.append(np.where((i >= 0) & (j >= 0), j * count + i, -1).ravel())
+        flat = np.concatenate(keys)
+        unique, inverse = np.unique(flat, return_inverse=True)
+        skip = int(len(unique) > 0 and unique[0] < 0)
+        stored = unique[skip:]
+        target = np.where(flat < 0, len(stored), inverse - skip)[count:]
+        indptr = np.searchsorted(stored, np.arange(count + 1) * count)
+        return cls(columns, count, (stored % max(count, 1)).astype(np.int32), indptr.astype(np.int32), target)
+
+    def normal(self, whitened: list[Whitened]) -> csc_array:
+        """N (u, u) = sum of A*' A*."""
+        products = [np.empty(0)]
+        products += [(w.reduced.transpose(0, 2, 1) @ w.reduced).ravel() for w in whitened]
+        data = np.bincount(self.target, np.concatenate(products), minlength=len(self.indices) + 1)[:-1]
+        return csc_array((data, self.indices, self.indptr), shape=(self.count, self.count))
+
+    def right_side(self, whitened: list[Whitened]) -> Array:
+        """A*' l (u,)."""
+        out = np.zeros(self.count + 1)
+        for w, columns in zip(whitened, self.columns, strict=True):
+            np.add.at(out, columns, (w.reduced.transpose(0, 2, 1) @ w.l[:, :, None])[:, :, 0])
+        return out[:-1]
+
+    def factor(self, whitened: list[Whitened]) -> Factor:
+        """Factor N; raises SingularPattern naming the unknowns without a pivot."""
+        return Factor.of(self.normal(whitened))
+
+
+@dataclass(frozen=True)
+class Factor:
+    """A factored normal matrix with its scaling."""
+
+    lu: Any
+    scale: Array
+    pivot_least: float
+
+    @classmethod
+    def of(cls, normal: csc_array) -> Factor:
+        """Scale to a unit diagonal and factor."""
+        diagonal = normal.diagonal()
+        if not np.all(diagonal > 0):
+            raise SingularPattern(np.flatnonzero(~(diagonal > 0)))
+        scale = 1.0 / np.sqrt(diagonal)
+        scaled = normal.copy()
+        columns = np.repeat(np.arange(normal.shape[1]), np.diff(normal.indptr))
+        scaled.data = normal.data * scale[normal.indices] * scale[columns]
+        try:
+            lu = splu(scaled, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0,
+                      options={"SymmetricMode": True, "Equil": False})  # fmt: skip
+        except RuntimeError:
+            raise SingularPattern(np.empty(0, np.int64)) from None
+        pivots = lu.U.diagonal()
+        if not np.all(pivots > PIVOT_LEAST):
+            unknown_at = np.argsort(lu.perm_c)
+            raise SingularPattern(unknown_at[np.flatnonzero(~(pivots > PIVOT_LEAST))])
+        return cls(lu, scale, float(pivots.min()))
+
+    def solve(self, rhs: Array) -> Array:
+        """N^-1 rhs for (u,) or (u, r)."""
+        scale = self.scale if rhs.ndim == 1 else self.scale[:, None]
+        solution: Array = self.lu.solve(np.asfortranarray(rhs * scale)) * scale
+        return solution
+
+    def entries(self, i: Ints, j: Ints) -> Array:
+        """Entries of N^-1 at (i, j), arrays of one shape; exact, by solving for the columns needed."""
+        out = np.empty(i.shape)
+        wanted, place = np.unique(j, return_inverse=True)
+        place = place.reshape(j.shape)
+        for start in range(0, len(wanted), CHUNK):
+            columns = wanted[start : start + CHUNK]
+            rhs = np.zeros((len(self.scale), len(columns)))
+            rhs[columns, np.arange(len(columns))] = 1.0
+            inverse = self.solve(rhs)
+            here = (place >= start) & (place < start + CHUNK)
+            out[here] = inverse[i[here], place[here] - start]
+        return out

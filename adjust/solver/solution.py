@@ -1,0 +1,118 @@
+"""What came out of an adjustment, as arrays. Tests and precision are formed from it in adjust.judge."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+
+from adjust.book.job import Job
+from adjust.caution import CAUTION_SHORT
+from adjust.network import Array, Bools, Network
+from adjust.solver.cofactors import Cofactors
+from adjust.solver.datum import PartDatum
+from adjust.solver.design import Design
+from adjust.solver.elements import Whitened
+
+
+@dataclass(frozen=True)
+class PartResult:
+    """The figures of one uncoupled part (or of all parts together, with ``datum`` None)."""
+
+    what: str
+    rows: Bools
+    """(R,) its scalar rows, conditions included."""
+    observations: int
+    unknowns: int
+    conditions: int
+    datum_missing: int
+    square_sum: float
+    """v'Pv."""
+    datum: PartDatum | None = None
+
+    @property
+    def degrees_of_freedom(self) -> int:
+        """Observations + conditions - unknowns + missing datum."""
+        return self.observations + self.conditions - self.unknowns + self.datum_missing
+
+    @property
+    def variance_factor(self) -> float | None:
+        """v'Pv over the degrees of freedom; None without any."""
+        return self.square_sum / self.degrees_of_freedom if self.degrees_of_freedom > 0 else None
+
+
+@dataclass(frozen=True)
+class Solution:
+    """An adjusted network."""
+
+    job: Job
+    network: Network
+    """The network as adjusted (without control that a free datum sets aside)."""
+    design: Design
+    positions: Array
+    """(n, 3) adjusted east, north, height, metres; NaN where nothing was observed."""
+    groups: Array
+    """(g,) group unknowns, radians."""
+    whitened: list[Whitened]
+    cofactors: Cofactors
+    residuals: Array
+    """(R,) adjusted minus observed, metres and radians."""
+    adjusted: Array
+    """(R,) adjusted readings."""
+    parts: tuple[PartResult, ...]
+    total: PartResult
+    iterations: int
+    assumed: tuple[str, ...]
+    """Stations placed at an origin of the program's choice."""
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """Station names in the order of ``positions``."""
+        return self.network.stations.names
+
+    @cached_property
+    def covariance(self) -> Array:
+        """(n, 3, 3) covariance of each station, before any scaling by the variance factor; NaN where not determined."""
+        numbers = self.design.unknowns.coordinate
+        out = self.cofactors.blocks(numbers)
+        missing = np.isnan(self.positions)
+        out[missing[:, :, None] | missing[:, None, :]] = np.nan
+        return out
+
+    @property
+    def sd(self) -> Array:
+        """(n, 3) standard deviations of the coordinates, metres."""
+        return np.sqrt(np.maximum(np.einsum("nii->ni", self.covariance), 0.0))
+
+    def frame(self) -> Any:
+        """Stations as a pandas data frame in metres; needs pandas."""
+        import pandas as pd
+
+        columns = {"station": self.names}
+        for i, part in enumerate(("east", "north", "height")):
+            columns[f"{part}_m"] = self.positions[:, i]
+        for i, part in enumerate(("east", "north", "height")):
+            columns[f"sd_{part}_m"] = self.sd[:, i]
+        return pd.DataFrame(columns).set_index("station")
+
+    def __repr__(self) -> str:
+        t = self.total
+        return (f"<Solution of {self.job.settings.title!r}: {t.observations} readings, {t.unknowns} unknowns, "
+                f"{t.degrees_of_freedom} degrees of freedom, variance factor {t.variance_factor}>")  # fmt: skip
+
+    def _repr_html_(self) -> str:
+        from html import escape
+
+        rows = "".join(
+            "<tr><th scope=row>" + escape(name) + "</th>" + "".join(f"<td>{_cell(x)}</td>" for x in (*xyz, *sd)) + "</tr>"
+            for name, xyz, sd in zip(self.names, self.positions, self.sd, strict=True)
+        )
+        head = "".join(f"<th>{h}</th>" for h in ("station", "east m", "north m", "height m", "sd east", "sd north", "sd height"))
+        return (f"<p>{escape(repr(self))}</p><table><thead><tr>{head}</tr></thead><tbody>{rows}</tbody></table>"
+                f"<p>{escape(CAUTION_SHORT)}</p>")  # fmt: skip
+
+
+def _cell(x: float) -> str:
+    return "" if np.isnan(x) else f"{x:.4f}"

@@ -1,0 +1,233 @@
+"""Units at the border: metres and radians inside, the job's own notation outside.
+
+Lengths: the international foot is 0.3048 m exactly (1959); the US survey foot is 1200/3937 m exactly (Mendenhall
+order, 1893; retired 2022-12-31 but found in the coordinates of many jobs). Angles: 400 gon, 6400 mil, 360 degrees.
+"""
+
+from __future__ import annotations
+
+import math
+import re
+from fractions import Fraction
+
+TURN = 2.0 * math.pi
+RHO_SEC = 180.0 * 3600.0 / math.pi
+"""Seconds of arc in one radian."""
+
+US_FOOT = 1200.0 / 3937.0
+LENGTHS = {
+    "m": 1.0, "km": 1000.0, "dm": 0.1, "cm": 0.01, "mm": 0.001, "um": 1e-6,
+    "ft": 0.3048, "us-ft": US_FOOT, "in": 0.0254, "mi": 1609.344, "us-mi": 5280.0 * US_FOOT,
+}  # fmt: skip
+ANGLES = {
+    "rad": 1.0, "deg": math.pi / 180, "min": math.pi / 10800, "sec": math.pi / 648000,
+    "gon": math.pi / 200, "mgon": math.pi / 200000, "mil": math.pi / 3200,
+}  # fmt: skip
+JOB_LENGTHS = ("m", "ft", "us-ft")
+JOB_ANGLES = ("dms", "deg", "gon", "mil", "packed")
+
+SMALL_LENGTH = {"m": ("mm", 1000.0), "ft": ("ft", 1 / 0.3048), "us-ft": ("us-ft", 1 / US_FOOT)}
+"""Unit in which small lengths (residuals, standard deviations) are shown, and its number per metre."""
+
+
+class BadValue(ValueError):
+    """A cell cannot be read; the text says what to do."""
+
+
+_NUMBER = re.compile(r"[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?")
+_LATIN = str.maketrans({"−": "-", "–": "-", "\u00a0": " ", "\u202f": " ", "′": "'", "’": "'", "″": '"', "”": '"', "º": "°"})
+
+
+def tidy(text: str) -> str:
+    """The cell with typographic minus signs, primes and spaces brought to the keyboard's ones."""
+    return text.translate(_LATIN).strip()
+
+
+def parse_number(text: str, decimal: str = ".") -> float:
+    """A plain number; the decimal mark must be the declared one.
+
+    Raises BadValue with the cure for a decimal comma, a thousands separator, or text.
+    """
+    raw = tidy(text)
+    if decimal == ",":
+        if "." in raw and "," not in raw:
+            raise BadValue(f'a decimal point; write {raw.replace(".", ",")} or set [units] decimal = "."')
+        if "." in raw:
+            raise BadValue("a separator of thousands; write the number without it")
+        raw = raw.replace(",", ".")
+    elif "," in raw:
+        if "." in raw or raw.count(",") > 1:
+            raise BadValue("a separator of thousands; write the number without it")
+        raise BadValue(f'a decimal comma; write {raw.replace(",", ".")} or set [units] decimal = ","')
+    if not _NUMBER.fullmatch(raw):
+        raise BadValue("not a number; write digits with at most one decimal mark")
+    value = float(raw)
+    if not math.isfinite(value):
+        raise BadValue("too large for a number")
+    return value
+
+
+def _split_unit(text: str) -> tuple[str, str]:
+    """Split '1.2 km' into '1.2' and 'km'; the unit is empty where none is written."""
+    match = re.fullmatch(r"(.*?[\d.,])\s*([A-Za-z][A-Za-z-]*)", tidy(text))
+    return (match[1], match[2]) if match else (text, "")
+
+
+def parse_length(text: str, unit: str, decimal: str = ".") -> float:
+    """A length in metres; ``unit`` is that of the table, a unit written in the cell wins."""
+    number, own = _split_unit(text)
+    if own and own not in LENGTHS:
+        raise BadValue(f"{own} is no unit of length; use one of {', '.join(LENGTHS)}")
+    return parse_number(number, decimal) * LENGTHS[own or unit]
+
+
+def small_angle_unit(notation: str) -> str:
+    """The unit in which standard deviations of angles are written: seconds, or milligon where angles are gon."""
+    return "mgon" if notation == "gon" else "sec"
+
+
+def parse_sd(text: str, dimension: str, unit: str, decimal: str = ".") -> float:
+    """A standard deviation in metres or radians; must be above zero."""
+    number, own = _split_unit(text)
+    table = LENGTHS if dimension == "length" else ANGLES
+    if own and own not in table:
+        raise BadValue(f"{own} is no unit of {dimension}; use one of {', '.join(table)}")
+    base = unit if dimension == "length" else small_angle_unit(unit)
+    value = parse_number(number, decimal) * table[own or base]
+    if not value > 0:
+        raise BadValue("a standard deviation must be above zero; leave the cell empty to use the instrument's")
+    return value
+
+
+_DMS = re.compile(
+    r"""([+-]?)\s*(\d+)\s*(?:[°:\s-]\s*(\d+)\s*(?:[':\s-]\s*(\d+(?:\.\d*)?|\.\d+)\s*(?:"|'')?|'?)|°?)""", re.VERBOSE
+)
+
+
+def _sexagesimal(sign: str, degrees: str, minutes: str, seconds: str) -> float:
+    if int(minutes) >= 60:
+        raise BadValue(f"{minutes} minutes: minutes stop at 59")
+    if float(seconds) >= 60:
+        raise BadValue(f"{seconds} seconds: seconds stop below 60")
+    value = Fraction(int(degrees)) + Fraction(int(minutes), 60) + Fraction(seconds) / 3600
+    return (-1 if sign == "-" else 1) * float(value) * (math.pi / 180)
+
+
+def _parse_dms(text: str, decimal: str) -> float:
+    raw = tidy(text).replace(",", ".") if decimal == "," else tidy(text)
+    if "," in raw:
+        raise BadValue('a decimal comma; write a point or set [units] decimal = ","')
+    match = _DMS.fullmatch(raw)
+    if match:
+        return _sexagesimal(match[1], match[2], match[3] or "0", match[4] or "0")
+    if _NUMBER.fullmatch(raw):
+        raise BadValue(f'a lone decimal: {_two_readings(raw)}? Write three parts or set [units] angle = "deg" or "packed"')
+    raise BadValue("not degrees, minutes and seconds; write it like 123 45 56.7")
+
+
+def _two_readings(raw: str) -> str:
+    """The two angles a lone decimal could stand for, as in 45° 18' 05.4" or 45° 30' 15"."""
+    as_degrees = format_angle(float(raw) * ANGLES["deg"], "dms", 1)
+    try:
+        return f"{_marked(as_degrees)} or {_marked(format_angle(_parse_packed(raw), 'dms', 1))}"
+    except BadValue:
+        return _marked(as_degrees)
+
+
+def _marked(dms: str) -> str:
+    d, m, s = dms.split()
+    return f"{d}° {m}' {s.removesuffix('.0')}\""
+
+
+def _parse_packed(text: str, decimal: str = ".") -> float:
+    raw = tidy(text).replace(",", ".") if decimal == "," else tidy(text)
+    match = re.fullmatch(r"([+-]?)(\d+)(?:\.(\d*))?", raw)
+    if not match:
+        raise BadValue("not a packed angle; write ddd.mmss, as in 123.45567 for 123 45 56.7")
+    digits = (match[3] or "").ljust(4, "0")
+    return _sexagesimal(match[1], match[2], digits[:2], digits[2:4] + "." + digits[4:])
+
+
+def parse_angle(text: str, notation: str, decimal: str = ".") -> float:
+    """An angle in radians from the job's notation: dms, deg, gon, mil or packed; its own unit in the cell wins."""
+    number, own = _split_unit(text)
+    if own:
+        if own not in ANGLES:
+            raise BadValue(f"{own} is no unit of angle; use one of {', '.join(ANGLES)}")
+        return parse_number(number, decimal) * ANGLES[own]
+    if notation == "dms":
+        return _parse_dms(text, decimal)
+    if notation == "packed":
+        return _parse_packed(text, decimal)
+    raw = tidy(text)
+    if _DMS.fullmatch(raw) and not _NUMBER.fullmatch(raw):
+        raise BadValue(f'degrees, minutes and seconds, but the angles here are {notation}; set [units] angle = "dms"')
+    return parse_number(text, decimal) * ANGLES[notation]
+
+
+def parse_circle(text: str, notation: str, decimal: str = ".") -> float:
+    """An angle from zero to below a full circle, in radians."""
+    value = parse_angle(text, notation, decimal)
+    if value < 0:
+        raise BadValue("below zero; write it from 0 up to a full circle")
+    if value >= TURN * (1 - 1e-15):
+        raise BadValue("a full circle or more; write it below a full circle")
+    return value
+
+
+_QUADRANT = re.compile(r"([NS])\s*(\d.*?)\s*([EW])", re.IGNORECASE)
+_CARDINAL = {"N": 0.0, "E": 90.0, "S": 180.0, "W": 270.0,
+             "NORTH": 0.0, "EAST": 90.0, "SOUTH": 180.0, "WEST": 270.0}  # fmt: skip
+
+
+def parse_bearing(text: str, notation: str, decimal: str = ".") -> float:
+    """A quadrant bearing such as N 45 30 15 E, or due N, as an azimuth in radians clockwise from north."""
+    raw = tidy(text)
+    due = re.fullmatch(r"(?:due\s+)?([A-Za-z]+)", raw, re.IGNORECASE)
+    if due and due[1].upper() in _CARDINAL:
+        return _CARDINAL[due[1].upper()] * ANGLES["deg"]
+    match = _QUADRANT.fullmatch(raw)
+    if not match:
+        raise BadValue("not a quadrant bearing; write it like N 45 30 15 E or due N")
+    value = parse_angle(match[2], notation, decimal)
+    if not 0 <= value <= TURN / 4 * (1 + 1e-15):
+        raise BadValue("a quadrant bearing runs from 0 to 90 degrees, counted from north or south")
+    north, east = match[1].upper() == "N", match[3].upper() == "E"
+    return ((value if east else -value) if north else TURN / 2 + (-value if east else value)) % TURN
+
+
+def _carry(value: float, step: int, places: int) -> tuple[int, int, float]:
+    """Degrees, minutes, seconds of a non-negative number of degrees, rounded without ever printing 60."""
+    scale = 10**places
+    units = round(value * 3600 * scale)
+    seconds = (units % (60 * scale)) / scale
+    minutes = units // (60 * scale) % 60
+    return units // (3600 * scale) % (step or 10**9), minutes, seconds
+
+
+def format_angle(radians: float, notation: str, places: int = 1) -> str:
+    """The angle in the job's notation; ``places`` are decimals of a second (or of 0.1 mgon, 0.001 mil)."""
+    sign = "-" if radians < 0 else ""
+    size = abs(radians)
+    if notation in ("dms", "packed"):
+        d, m, s = _carry(size / ANGLES["deg"], 360, places)
+        width = places + 3 if places else 2
+        if notation == "dms":
+            return f"{sign}{d} {m:02d} {s:0{width}.{places}f}"
+        return f"{sign}{d}.{m:02d}{f'{s:0{width}.{places}f}'.replace('.', '')}"
+    extra = {"deg": 4, "gon": 4, "mil": 3}[notation]
+    return f"{sign}{size / ANGLES[notation]:.{places + extra}f}"
+
+
+def format_bearing(radians: float, notation: str, places: int = 1) -> str:
+    """The azimuth as a quadrant bearing in the job's notation: N 45 30 15.0 E."""
+    quarter, rest = divmod(radians % TURN, TURN / 4)
+    ns = "N" if quarter in (0, 3, 4) else "S"
+    ew = "E" if quarter in (0, 1, 4) else "W"
+    inside = rest if quarter in (0, 2, 4) else TURN / 4 - rest
+    return f"{ns} {format_angle(inside, notation, places)} {ew}"
+
+
+def wrap(radians: float) -> float:
+    """The angle brought to (-pi, pi]."""
+    return -((math.pi - radians) % TURN - math.pi)
