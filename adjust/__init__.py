@@ -19,8 +19,8 @@ _HOME = {
 if TYPE_CHECKING:
     from adjust.book.job import Job
     from adjust.book.read import read
-    from adjust.judge.check import check
     from adjust.judge.assess import Judgement, assess
+    from adjust.judge.check import check
     from adjust.network import Network
     from adjust.record.write import write
     from adjust.solver.solution import Solution

@@ -67,7 +67,10 @@ def one_line(text: str) -> str:
 
 
 def nearest(name: str, known: Iterable[str]) -> str:
-    """'did you mean X?' for the known name nearest to ``name``, else the list of known names."""
+    """'did you mean X?' for the known name nearest to ``name`` (capitals aside), else the list of known names."""
     names = list(known)
-    close = difflib.get_close_matches(name, names, n=1, cutoff=0.6)
-    return f"did you mean {close[0]}?" if close else "known here: " + ", ".join(names)
+    folded = {n.casefold(): n for n in reversed(names)}
+    close = difflib.get_close_matches(name.casefold(), list(folded), n=1, cutoff=0.6)
+    if close:
+        return f"did you mean {folded[close[0]]}?"
+    return "known here: " + ", ".join(names) if names else "none is known here"

@@ -82,7 +82,9 @@ def _term(text: str, dimension: str, decimal: str) -> Term:
         return Term(size * 1e-6, "ppm")
     table = ANGLES if dimension == "angle" else LENGTHS
     if unit not in table:
-        raise BadValue(f"{unit} is no unit of {'angle' if dimension == 'angle' else 'length'}; use one of {', '.join(table)}")
+        raise BadValue(
+            f"{unit} is no unit of {'angle' if dimension == 'angle' else 'length'}; use one of {', '.join(table)}"
+        )
     size *= table[unit]
     if not root:
         return Term(size)

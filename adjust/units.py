@@ -35,7 +35,9 @@ class BadValue(ValueError):
 
 
 _NUMBER = re.compile(r"[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?")
-_LATIN = str.maketrans({"−": "-", "–": "-", "\u00a0": " ", "\u202f": " ", "′": "'", "’": "'", "″": '"', "”": '"', "º": "°"})
+_LATIN = str.maketrans(
+    {"−": "-", "–": "-", "\u00a0": " ", "\u202f": " ", "′": "'", "’": "'", "″": '"', "”": '"', "º": "°"}
+)
 
 
 def tidy(text: str) -> str:
@@ -105,6 +107,8 @@ _DMS = re.compile(
 
 
 def _sexagesimal(sign: str, degrees: str, minutes: str, seconds: str) -> float:
+    if len(degrees + minutes + seconds) > 40:
+        raise BadValue("too many digits for an angle")
     if int(minutes) >= 60:
         raise BadValue(f"{minutes} minutes: minutes stop at 59")
     if float(seconds) >= 60:
@@ -121,7 +125,9 @@ def _parse_dms(text: str, decimal: str) -> float:
     if match:
         return _sexagesimal(match[1], match[2], match[3] or "0", match[4] or "0")
     if _NUMBER.fullmatch(raw):
-        raise BadValue(f'a lone decimal: {_two_readings(raw)}? Write three parts or set [units] angle = "deg" or "packed"')
+        raise BadValue(
+            f'a lone decimal: {_two_readings(raw)}? Write three parts or set [units] angle = "deg" or "packed"'
+        )
     raise BadValue("not degrees, minutes and seconds; write it like 123 45 56.7")
 
 

@@ -86,7 +86,7 @@ class Cells:
             if not texts[i]:
                 self.fault(i, name, "", "a station's name is missing")
             elif not all(c.isprintable() for c in texts[i]):
-                self.fault(i, name, texts[i], "a control character in a name; remove it")
+                self.fault(i, name, texts[i], "a control or invisible character in the name; write it anew without")
         return [booked.get(t, t) for t in texts] if booked else texts
 
     def values(self, name: str, use: Sequence[int]) -> Array:

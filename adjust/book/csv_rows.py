@@ -32,6 +32,15 @@ class Rows:
         return [row[i] for row in self.cells]
 
 
+_OPEN = 'a cell opens a quote (") and does not close it; close it, or remove it where seconds are meant'
+_CSV_HINTS = {
+    "unexpected": _OPEN,
+    "field": _OPEN,  # a cell beyond all limits has swallowed the rest of the file
+    "','": 'text follows a closing quote; write quotes inside a quoted cell twice ("")',
+}
+"""What to do about the complaints of the standard CSV reader, by their first word."""
+
+
 class _Lines:
     """Physical lines for csv.reader: counts them, and drops comments and blanks, but only between records."""
 
@@ -73,9 +82,9 @@ def read_rows(data: bytes, file: str, faults: Faults) -> Rows | None:
             records.append([cell.strip() for cell in record])
             starts.append(lines.record_start)
     except csv.Error as error:
-        hint = "a quote is opened and not closed" if "end of data" in str(error) else str(error)
+        hint = _CSV_HINTS.get(str(error).partition(" ")[0], f"not CSV: {error}")
         shown = text.split("\n")[lines.record_start - 1].strip()
-        faults.add(file, lines.record_start, "", shown, f"not CSV: {hint}")
+        faults.add(file, lines.record_start, "", shown, hint)
         return None
     if not records:
         faults.add(file, 1, "", "", "an empty table; it needs a header row")
@@ -100,7 +109,10 @@ def _shape(file: str, records: list[list[str]], starts: list[int], faults: Fault
         if not any(record):
             continue
         if any(record[width:]):
-            hint = f"the row has {len(record)} cells, the header {width}; quote a cell that holds the delimiter"
+            hint = (
+                f"the row has {len(record)} cells, the header {width}; a decimal comma, or text with the delimiter "
+                "in it? Put such a cell in quotes, or delimit with semicolons"
+            )
             faults.add(file, line, "", ",".join(record), hint)
         cells.append(record[:width] + [""] * (width - len(record)))
         lines.append(line)

@@ -21,8 +21,16 @@ class Faults:
     def stop(self) -> None:
         """Raise InputError if anything was found."""
         if self.all:
+            self._sort()
             kept = self.all[:MOST]
             if len(self.all) > MOST:
                 last = self.all[MOST]
-                kept.append(Fault(last.file, last.line, "", "...", f"{len(self.all) - MOST} more faults; mend these first"))
+                kept.append(
+                    Fault(last.file, last.line, "", "...", f"{len(self.all) - MOST} more faults; mend these first")
+                )
             raise InputError(kept)
+
+    def _sort(self) -> None:
+        """job.toml first, then the files in the order in which they were met, each by line: the order of mending."""
+        files = list(dict.fromkeys(["job.toml", *(fault.file for fault in self.all)]))
+        self.all.sort(key=lambda fault: (files.index(fault.file), fault.line))

@@ -68,12 +68,17 @@ class Marks:
     def _control(self, cells: Cells, i: int, n: int, xyz: Array, sds: Array, roles: tuple[str, str]) -> None:
         given = [part for part in PARTS if cells.has(part) and cells.text(part)[i]]
         if not given:
-            cells.fault(i, "station", self.names[n], "a mark without coordinates; give east and north, height, or all three")
+            cells.fault(
+                i, "station", self.names[n], "a mark without coordinates; give east and north, height, or all three"
+            )
         for part, role, x, sd in zip(range(3), (roles[0], roles[0], roles[1]), xyz, sds, strict=True):
             if np.isnan(x):
                 continue
-            if role == "weighted" and np.isnan(sd):
-                cells.fault(i, f"sd_{PARTS[part]}", "", "a weighted coordinate needs its standard deviation")
+            column = f"sd_{PARTS[part]}"
+            if role == "weighted" and not cells.text(column)[i]:
+                cells.fault(
+                    i, column, "", "a weighted coordinate needs its standard deviation; fill it or use role held"
+                )
             self.known[n][part] = float(x)
             self.known_sd[n][part] = float(sd)
             self.role[n][part] = _CODE[role]
@@ -119,5 +124,3 @@ class Marks:
                 )
             )
         return blocks
-
-

@@ -9,6 +9,7 @@ from adjust.book.faults import Faults
 from adjust.book.job import Aside
 from adjust.book.marks import Marks
 from adjust.book.settings import Settings
+from adjust.book.toml_lines import line_of
 from adjust.errors import nearest
 from adjust.kinds import TABLES
 from adjust.kinds.base import Kind
@@ -61,7 +62,9 @@ class Observations:
 
     def _numbers(self, names: list[list[str]], use: list[int]) -> Ints:
         index = self.marks.index
-        return np.array([[index[column[i]] for column in names] for i in use], dtype=np.int64).reshape(len(use), len(names))
+        return np.array([[index[column[i]] for column in names] for i in use], dtype=np.int64).reshape(
+            len(use), len(names)
+        )
 
     def _use(self, kind: Kind, cells: Cells) -> list[int]:
         """Rows that are used; the others are set aside. Identifications are checked for all."""
@@ -78,7 +81,9 @@ class Observations:
             if use[i] == "no" and not reasons[i]:
                 cells.fault(i, "reason", "", "a reading left out needs its reason")
             if use[i] == "planned" and any(cells.text(column)[i] for column in kind.value):
-                cells.fault(i, "use", "planned", "a planned reading has no value yet; remove the value or the word planned")
+                cells.fault(
+                    i, "use", "planned", "a planned reading has no value yet; remove the value or the word planned"
+                )
             (self.left_out if use[i] == "no" else self.planned).append(aside)
         return [i for i in everything if use[i] == "yes"]
 
@@ -117,12 +122,12 @@ class Observations:
             return np.zeros(len(cells), dtype=bool)
         return np.array([role == "held" for role in cells.choices("role", use)], dtype=bool)
 
-    def _sds(
-        self, cells: Cells, kind: Kind, values: Array, held: Bools, use: list[int]
-    ) -> tuple[Array, list[str]]:
+    def _sds(self, cells: Cells, kind: Kind, values: Array, held: Bools, use: list[int]) -> tuple[Array, list[str]]:
         """Standard deviations (n,) from the column sd or the instrument, and the label of their source."""
         sd = cells.sds("sd", kind.dimension, use)
         labels = ["sd"] * len(cells)
+        # read for every row, also where a row's own sd makes them needless: what cannot be meant is a fault anyway
+        sizes = {c: cells.values(c, use) for c in (kind.length_column, kind.setup_column, "count") if c}
         blank = cells.text("sd")
         lacking = [i for i in use if not blank[i] and not held[i]]
         by_model: dict[str, list[int]] = {}
@@ -133,7 +138,7 @@ class Observations:
             found = self._model(cells, kind, name, rows)
             if found:
                 label, model = found
-                sd[rows] = self._model_sd(cells, kind, model, values, rows)
+                sd[rows] = self._model_sd(cells, kind, model, values, sizes, rows)
                 for i in rows:
                     labels[i] = label
         sd *= cells.table.sd_factor
@@ -146,31 +151,46 @@ class Observations:
         instruments = self.settings.instruments
         fitting = {n: keys[key] for n, keys in instruments.items() if key in keys}
         if name and name not in instruments:
-            cells.fault(rows[0], "instrument", name, f"no such instrument in job.toml; {nearest(name, instruments)}")
+            self._unknown_instrument(cells, name, rows[0])
         elif name and name not in fitting:
-            cells.fault(rows[0], "sd", "", f"no standard deviation: add [instruments.{name}] {key} = ... or a column sd")
+            cells.fault(
+                rows[0], "sd", "", f"no standard deviation: add [instruments.{name}] {key} = ... or a column sd"
+            )
         elif name:
             return name, fitting[name]
         elif len(fitting) == 1:
             return next(iter(fitting.items()))
         elif fitting:
-            hint = f"which instrument? {', '.join(fitting)} all have {key}; name one in [[book]] or in a column instrument"
+            hint = (
+                f"which instrument? {', '.join(fitting)} all have {key}; name one in [[book]] or in a column instrument"
+            )
             cells.fault(rows[0], "instrument", "", hint)
         else:
             cells.fault(rows[0], "sd", "", f"no standard deviation: add [instruments.NAME] {key} = ... or a column sd")
         return None
 
-    def _model_sd(self, cells: Cells, kind: Kind, model: Precision, values: Array, rows: list[int]) -> Array:
+    def _unknown_instrument(self, cells: Cells, name: str, i: int) -> None:
+        """The name stands in the row, or else in the table's [[book]] block."""
+        hint = f"no such instrument; add [instruments.{name}]; {nearest(name, self.settings.instruments)}"
+        if cells.text("instrument")[i]:
+            cells.fault(i, "instrument", name, hint)
+        else:
+            line = line_of(self.settings.lines, f"{cells.table.path}.instrument")
+            self.faults.add("job.toml", line, "book.instrument", name, hint)
+
+    def _model_sd(
+        self, cells: Cells, kind: Kind, model: Precision, values: Array, sizes: dict[str, Array], rows: list[int]
+    ) -> Array:
         given: dict[str, Array] = {"distance": values[rows]}
         for need, column in (("length", kind.length_column), ("setup", kind.setup_column)):
             if column and need in model.needs:
-                given[need] = cells.values(column, rows)[rows]
+                given[need] = sizes[column][rows]
                 blank = cells.text(column)
                 for i in rows:
                     if not blank[i]:
                         hint = f'the instrument\'s "{model.text}" needs the {column} of the line; fill it or give sd'
                         cells.fault(i, column, "", hint)
-        count = cells.values("count", rows)[rows]
+        count = sizes["count"][rows]
         count = np.where(np.isnan(count), 1.0, count)
         return model.sd(len(rows), **given) * np.sqrt(kind.pointings / count)
 
@@ -198,5 +218,7 @@ class Observations:
         named = dict(zip(kind.group.by, key, strict=True))
         stations = " ".join(named[c] for c in kind.group.by if c in kind.stations)
         name = named.get("set", "")
-        of = " ".join(x for x in (stations, f"set {name}" if name else "", "" if stations else f"of {cells.rows.file}") if x)
+        of = " ".join(
+            x for x in (stations, f"set {name}" if name else "", "" if stations else f"of {cells.rows.file}") if x
+        )
         return Group(kind.group.what, of, kind.group.shared, name)

@@ -16,7 +16,8 @@ from adjust.book.marks import Marks
 from adjust.book.names import near_duplicates
 from adjust.book.observations import Observations
 from adjust.book.settings import Settings, Table, read_settings
-from adjust.errors import InputError
+from adjust.book.toml_lines import line_of
+from adjust.errors import InputError, nearest
 from adjust.kinds import TABLES
 from adjust.network import Network
 
@@ -48,7 +49,13 @@ def _folder(path: Path) -> Path:
     elif not path.is_dir():
         faults.add(str(path), 0, "", path.name, "not a job; name a job folder or its job.toml")
     elif not (path / "job.toml").is_file():
-        faults.add(str(path / "job.toml"), 0, "", "", "no job.toml in the folder; 'brasscap start DIR' writes one to begin from")
+        faults.add(
+            str(path / "job.toml"),
+            0,
+            "",
+            "",
+            "no job.toml in the folder; 'brasscap start DIR' writes one to begin from",
+        )
     faults.stop()
     return path
 
@@ -58,7 +65,11 @@ def _bytes(path: Path, file: str, line: int, faults: Faults) -> bytes | None:
         return path.read_bytes()
     except OSError as error:
         where = ("job.toml", line) if line else (file, 0)
-        hint = "no such table in the job folder" if isinstance(error, FileNotFoundError) else f"cannot be read: {error.strerror}"
+        hint = (
+            "no such table in the job folder"
+            if isinstance(error, FileNotFoundError)
+            else f"cannot be read: {error.strerror}"
+        )
         faults.add(*where, "book.file" if line else "", file, hint)
         return None
 
@@ -75,17 +86,35 @@ def _text(data: bytes, faults: Faults) -> str:
 def _tables(folder: Path, settings: Settings, faults: Faults) -> list[Table]:
     """The tables to read: those of the [[book]] blocks, or every KIND.csv in the folder."""
     if settings.books is None:
-        return [
-            Table(f"{kind}.csv", kind, settings.units) for kind in schema.table_names() if (folder / f"{kind}.csv").is_file()
-        ]
-    inside = []
-    root = folder.resolve()
-    for table in settings.books:
-        if (folder / table.file).resolve().is_relative_to(root):
-            inside.append(table)
+        files = {kind: f"{kind}.csv" for kind in schema.table_names() if (folder / f"{kind}.csv").is_file()}
+        tables = [Table(file, kind, settings.units) for kind, file in files.items()]
+    else:
+        tables = list(settings.books)
+    kept: dict[Path, Table] = {}
+    for table in tables:
+        real, hint = _inside(folder, table.file)
+        if not hint and real in kept:
+            hint = f"the same table as {kept[real].file} of another [[book]] block; name it once"
+        if hint:
+            where = ("job.toml", table.line, "book.file") if settings.books is not None else (table.file, 0, "")
+            faults.add(*where, table.file, hint)
         else:
-            faults.add("job.toml", table.line, "book.file", table.file, "lies outside the job folder; copy the table into it")
-    return inside
+            kept[real] = table
+    return list(kept.values())
+
+
+def _inside(folder: Path, file: str) -> tuple[Path, str]:
+    """Where a table really lies, and what is wrong with that ('' if it lies in the folder)."""
+    if not file.isprintable():
+        return folder, "a control character in the name of a file; remove it"
+    if Path(file).is_absolute():
+        return folder, "an absolute path; copy the table into the job folder and write its name only"
+    try:
+        real = (folder / file).resolve()
+    except (OSError, RuntimeError):  # a link that leads to itself, a name too long
+        return folder, "cannot be found; copy the table into the job folder"
+    outside = not real.is_relative_to(folder.resolve())
+    return real, "lies outside the job folder; copy the table into it" if outside else ""
 
 
 class _JobReader:
@@ -112,7 +141,9 @@ class _JobReader:
         self._check_datum(marks)
         self._warn(tables, marks)
         if not self.faults.all and not any(len(b) for b in observations.blocks):
-            self.faults.add("job.toml", 0, "", "", "the job has no readings; add a table such as distances.csv or levelled.csv")
+            self.faults.add(
+                "job.toml", 0, "", "", "the job has no readings; add a table such as distances.csv or levelled.csv"
+            )
         self.faults.stop()
         return self._job(tables, marks, observations, pairs)
 
@@ -121,7 +152,10 @@ class _JobReader:
         order = {t.file: i for i, t in enumerate(tables)}
         blocks.sort(key=lambda b: order[b.file])
         network = Network(
-            marks.stations(), tuple(blocks), tuple(observations.groups), pairs=np.array(pairs, dtype=np.int64).reshape(-1, 2)
+            marks.stations(),
+            tuple(blocks),
+            tuple(observations.groups),
+            pairs=np.array(pairs, dtype=np.int64).reshape(-1, 2),
         )
         return Job(
             self.folder, self.settings, network, tuple(tables), tuple(self.inputs),
@@ -145,7 +179,9 @@ class _JobReader:
                 if not booked:
                     cells.fault(i, "booked", "", "the name as booked is missing")
                 elif out.setdefault(booked, names[i]) != names[i]:
-                    cells.fault(i, "booked", booked, f"already stands for {out[booked]}; one booked name means one station")
+                    cells.fault(
+                        i, "booked", booked, f"already stands for {out[booked]}; one booked name means one station"
+                    )
         return out
 
     def _pairs(self, cells: Cells, marks: Marks, booked: dict[str, str]) -> list[tuple[int, int]]:
@@ -155,8 +191,8 @@ class _JobReader:
         for i, ends_of in enumerate(zip(starts, ends, strict=True)):
             for column, name in zip(("from", "to"), ends_of, strict=True):
                 if name and name not in marks.index:
-                    cells.fault(i, column, name, "no such station in the job")
-            if ends_of[0] == ends_of[1]:
+                    cells.fault(i, column, name, f"no such station in the job; {nearest(name, marks.names)}")
+            if ends_of[0] and ends_of[0] == ends_of[1]:
                 cells.fault(i, "to", ends_of[1], "both ends are the same station")
             elif all(name in marks.index for name in ends_of):
                 found.append((marks.index[ends_of[0]], marks.index[ends_of[1]]))
@@ -165,16 +201,19 @@ class _JobReader:
     def _check_datum(self, marks: Marks) -> None:
         for name in self.settings.datum_stations:
             if name not in marks.index:
-                self.faults.add("job.toml", 0, "datum.stations", name, "no such station in the job")
+                line = line_of(self.settings.lines, "datum.stations")
+                hint = f"no such station in the job; {nearest(name, marks.names)}"
+                self.faults.add("job.toml", line, "datum.stations", name, hint)
         if self.settings.datum_kind == "control" and not marks.has_datum():
             hint = 'no mark has role held or weighted in the control table; add control or set kind = "free"'
-            self.faults.add("job.toml", 0, "datum.kind", "control", hint)
+            self.faults.add("job.toml", line_of(self.settings.lines, "datum.kind"), "datum.kind", "control", hint)
 
     def _warn(self, tables: list[Table], marks: Marks) -> None:
         for group in near_duplicates(marks.names):
-            self.warnings.append(f"{' and '.join(group)} look alike: one station under two names? booked_names.csv can join them.")
+            self.warnings.append(
+                f"{' and '.join(group)} look alike: one station under two names? booked_names.csv can join them."
+            )
         named = {t.file for t in tables}
         for kind in schema.table_names():
             if f"{kind}.csv" not in named and (self.folder / f"{kind}.csv").is_file():
                 self.warnings.append(f"{kind}.csv lies in the folder, but no [[book]] block names it: it was not read.")
-

@@ -39,9 +39,7 @@ TESTS = (
     Field("variance_factor", "choice", "given: the stated standard deviations are trusted; from-residuals: only their "
           "ratios are, and the residuals set the scale", default="given", choices=("given", "from-residuals")),
 )  # fmt: skip
-BOOK_UNITS = tuple(
-    Field(f.name, f.type, f.meaning + " (in this table)", choices=f.choices) for f in UNITS[:3]
-)
+BOOK_UNITS = tuple(Field(f.name, f.type, f.meaning + " (in this table)", choices=f.choices) for f in UNITS[:3])
 BOOK = (
     Field("file", "text", "name of the table; left out: KIND.csv"),
     Field("kind", "choice", "kind of the table; left out: the file's name without its ending"),
@@ -67,8 +65,8 @@ SECTIONS: dict[str, tuple[Field, ...]] = {
 """Sections of job.toml; '' is the top, 'instruments.*' every instrument, 'book' every [[book]] block."""
 
 OBSERVATION = (
-    Field("sd", "sd", "final standard deviation of this reading: length unit of the table, seconds for dms, deg, packed "
-          "and mil, milligon for gon; nothing is added to it"),
+    Field("sd", "sd", "final standard deviation of this reading: length unit of the table, seconds for dms, deg, "
+          "packed and mil, milligon for gon; nothing is added to it"),
     Field("count", "number", "readings meaned in this value: the instrument's figure is divided by its root",
           default=1.0, above=0.0),
     Field("use", "choice", "no: left out, with a reason; planned: not measured yet, no value", default="yes",

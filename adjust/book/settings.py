@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import datetime
+import json
+import re
 import tomllib
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 from adjust.book import schema
@@ -48,6 +50,8 @@ class Table:
     instrument: str = ""
     sd_factor: float = 1.0
     line: int = 0
+    path: str = ""
+    """The block's path among the lines of job.toml: book.0."""
 
 
 @dataclass(frozen=True)
@@ -67,6 +71,8 @@ class Settings:
     """None: no [[book]] block, every KIND.csv of the folder is read."""
     known_units: bool
     """False: the units are missing, so values are not read (the fault is already noted)."""
+    lines: dict[str, int] = field(default_factory=dict)
+    """Line of every key of job.toml by its dotted path."""
 
 
 class _Reader:
@@ -75,13 +81,17 @@ class _Reader:
         self.lines = key_lines(text)
 
     def fault(self, path: str, found: object, hint: str) -> None:
-        self.faults.add("job.toml", line_of(self.lines, path), path, found, hint)
+        shown = re.sub(r"^book\.\d+", "book", path)  # the line tells which block
+        self.faults.add("job.toml", line_of(self.lines, path), shown, _shown(found), hint)
 
-    def section(self, path: str, given: object, fields: tuple[Field, ...], ignore: tuple[str, ...] = ()) -> dict[str, Any]:
+    def section(
+        self, path: str, given: object, fields: tuple[Field, ...], ignore: tuple[str, ...] = ()
+    ) -> dict[str, Any]:
         """Values of a section by key, defaults where absent or wrong."""
         values = {f.name: f.default for f in fields}
         if not isinstance(given, dict):
-            self.fault(path, given, f"must be a table: [{path}]")
+            form = 'units = { length = "ft" }' if path.startswith("book.") else f"[{path}]"
+            self.fault(path, given, f"must be a table: {form}")
             return values
         known = {f.name: f for f in fields}
         for key, value in given.items():
@@ -111,7 +121,8 @@ class _Reader:
         if field.type == "precision":
             return self.precision(path, value, field)
         if not isinstance(value, str):
-            self.fault(path, value, "must be a text in quotes")
+            date = field.type == "date"
+            self.fault(path, value, "write a day like 2026-05-14" if date else "must be a text in quotes")
             return field.default
         if field.choices and value not in field.choices:
             self.fault(path, value, "use one of " + ", ".join(f'"{c}"' for c in field.choices))
@@ -124,7 +135,7 @@ class _Reader:
         elif field.above is not None and not value > field.above:
             self.fault(path, value, f"must be above {field.above:g}")
         elif path.startswith("tests.") and not value < 1:
-            self.fault(path, value, "a probability; write it between 0 and 1, as in 0.05")
+            self.fault(path, value, "a probability; write it between 0 and 1, as in 0.05 for 5 per cent")
         elif not value < 1e300:
             self.fault(path, value, "must be a finite number")
         else:
@@ -155,7 +166,9 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
     datum = r.section("datum", job.get("datum", {}), schema.DATUM)
     tests = r.section("tests", job.get("tests", {}), schema.TESTS)
     if datum["stations"] and datum["kind"] != "free":
-        r.fault("datum.stations", datum["stations"], 'stations carry the datum of a free network only; set kind = "free"')
+        r.fault(
+            "datum.stations", datum["stations"], 'stations carry the datum of a free network only; set kind = "free"'
+        )
     job_units = Units(**{**units, "length": units["length"] or "m", "angle": units["angle"] or "dms"})
     return Settings(
         title=top["title"] or "",
@@ -168,7 +181,13 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         instruments=_instruments(r, job.get("instruments", {})),
         books=_books(r, job.get("book"), job_units),
         known_units=bool(units["length"] and units["angle"]),
+        lines=r.lines,
     )
+
+
+def _shown(value: object) -> str:
+    """A value as it is written in TOML, near enough to be found again."""
+    return value if isinstance(value, str) else json.dumps(value, default=str, ensure_ascii=False)
 
 
 def _instruments(r: _Reader, given: object) -> dict[str, dict[str, Precision]]:
@@ -188,10 +207,6 @@ def _books(r: _Reader, given: object, units: Units) -> tuple[Table, ...] | None:
         r.fault("book", given, "write one [[book]] block a table")
         return ()
     tables = [_book(r, f"book.{i}", block, units) for i, block in enumerate(given)]
-    seen: dict[str, str] = {}
-    for i, table in enumerate(tables):
-        if table and seen.setdefault(table.file, f"book.{i}") != f"book.{i}":
-            r.fault(f"book.{i}.file", table.file, "the table is already named by another [[book]] block; name it once")
     return tuple(t for t in tables if t)
 
 
@@ -209,7 +224,9 @@ def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table |
     if not kind:
         kind = file.replace("\\", "/").rpartition("/")[2].rpartition(".")[0]
         if kind not in kinds:
-            r.fault(f"{path}.file", file, f"the file's name does not tell its kind; add kind = ...; {nearest(kind, kinds)}")
+            r.fault(
+                f"{path}.file", file, f"the file's name does not tell its kind; add kind = ...; {nearest(kind, kinds)}"
+            )
             return None
     used = {k: v for k, v in own.items() if v}
     return Table(
@@ -218,5 +235,6 @@ def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table |
         units=Units(**{**units.__dict__, **used}),
         instrument=values["instrument"] or "",
         sd_factor=values["sd_factor"],
-        line=line_of(r.lines, path),
+        line=line_of(r.lines, f"{path}.file"),
+        path=path,
     )

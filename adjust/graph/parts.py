@@ -81,7 +81,10 @@ def find_parts(network: Network) -> list[Part]:
 
 def _named(network: Network, found: list[tuple[Bools, Bools, Bools]]) -> list[Part]:
     """Name the parts in trade words, with stations where several are of one sort."""
-    sorts = [" and ".join(w for w, c in (("plane", PLANE), ("heights", HEIGHT)) if nodes[:, c].any()) for nodes, _, _ in found]
+    sorts = [
+        " and ".join(w for w, c in (("plane", PLANE), ("heights", HEIGHT)) if nodes[:, c].any())
+        for nodes, _, _ in found
+    ]
     parts = []
     for sort, (nodes, rows, groups) in zip(sorts, found, strict=True):
         what = sort if sorts.count(sort) == 1 else f"{sort} of {listed(network, np.flatnonzero(nodes.any(axis=1)))}"

@@ -49,7 +49,9 @@ class _Pointings:
 
     def _pointings(self, block: Block) -> None:
         sights = KINDS[block.kind].sights
-        for stations, value, group in zip(block.stations.tolist(), block.values[:, 0].tolist(), block.group.tolist(), strict=True):
+        for stations, value, group in zip(
+            block.stations.tolist(), block.values[:, 0].tolist(), block.group.tolist(), strict=True
+        ):
             if group < 0:
                 group = len(self.orientation)
                 self.orientation.append(0.0 if len(sights) == 1 else math.nan)
@@ -91,9 +93,23 @@ class _Plane:
     def _orient(self, k: int) -> None:
         p = self.p
         at, to, one = p.at[k], p.to[k], p.set[k]
-        if not math.isnan(p.orientation[one]) or at not in self.xy or to not in self.xy:
+        if not math.isnan(p.orientation[one]):
             return
-        self.orient(one, self._azimuth(at, to) - p.reading[k])
+        if at in self.xy and to in self.xy:
+            self.orient(one, self._azimuth(at, to) - p.reading[k])
+            return
+        azimuth = self._azimuth_of_line(at, to)
+        if azimuth is not None:
+            self.orient(one, azimuth - p.reading[k])
+
+    def _azimuth_of_line(self, at: int, to: int) -> float | None:
+        """Azimuth of a line that an oriented set points along, from either end."""
+        p = self.p
+        for k in self.of_station[at]:
+            orientation = p.orientation[p.set[k]]
+            if not math.isnan(orientation) and {p.at[k], p.to[k]} == {at, to}:
+                return orientation + p.reading[k] + (0.0 if p.at[k] == at else math.pi)
+        return None
 
     def orient(self, one: int, value: float) -> None:
         """Give a set its orientation and use it."""
@@ -168,7 +184,7 @@ def find_start(network: Network) -> Start:
         missing = np.array([i for i in stations if i not in plane.xy], dtype=np.int64)
         if len(missing):
             failures.append(
-                f"{listed(network, missing, 8)}: no chain of oriented pointings with distances leads there from a known station; "
+                f"{listed(network, missing, 8)}: no chain of oriented pointings with distances leads there; "
                 "give starting coordinates in stations.csv"
             )
     for i, (east, north) in plane.xy.items():

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -55,13 +56,13 @@ class Judgement:
         """Test statistic (R,): w when the scale is given, tau when it is from residuals; NaN where none."""
         if self.scale <= 0 or self.critical is None:
             return np.full(len(self.reliability.m), np.nan)
-        return self.reliability.statistic / np.sqrt(self.scale)
+        return self.reliability.statistic / math.sqrt(self.scale)
 
     @cached_property
     def smallest_detectable(self) -> Array:
         """Smallest blunder (R,) that the one-reading test finds with its power, metres or radians."""
         shift = np.nan if self.shift is None else self.shift
-        return self.reliability.root * shift * np.sqrt(self.scale)
+        return self.reliability.root * shift * math.sqrt(self.scale)
 
     @cached_property
     def suspect(self) -> Bools:

@@ -45,7 +45,10 @@ def _contents(job: Job) -> list[str]:
     lines = [f"{len(job.network.stations)} stations, {marks} of them control; readings: {kinds}."]
     for aside, word in ((job.left_out, "left out"), (job.planned, "planned, not measured")):
         if aside:
-            lines.append(f"{len(aside)} {word}: " + "; ".join(f"{a.observation}{f' ({a.reason})' if a.reason else ''}" for a in aside[:5]))
+            lines.append(
+                f"{len(aside)} {word}: "
+                + "; ".join(f"{a.observation}{f' ({a.reason})' if a.reason else ''}" for a in aside[:5])
+            )
     return lines
 
 
@@ -68,6 +71,8 @@ def _unchecked(solution: Solution) -> list[str]:
     bad = np.flatnonzero(~figures.tested & ~solution.design.held).tolist()
     if not bad:
         return ["Every reading is checked by others."]
-    names = [f"{blocks[rows.block[r]].name(int(rows.row[r]))} ({blocks[rows.block[r]].kind.replace('_', ' ')})" for r in bad]
+    names = [
+        f"{blocks[rows.block[r]].name(int(rows.row[r]))} ({blocks[rows.block[r]].kind.replace('_', ' ')})" for r in bad
+    ]
     more = f" and {len(names) - 12} more" if len(names) > 12 else ""
     return [f"{len(names)} readings are checked by no other: {', '.join(names[:12])}{more}."]

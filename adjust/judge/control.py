@@ -77,8 +77,12 @@ def _mark(station: str, part: str, misfit: float, sd: float | None, limit: float
     """Verdict and sentence; without a limit or a standard deviation the mark cannot be judged."""
     mm = misfit * 1000
     if limit is None or not sd or math.isnan(sd):
-        return Mark(station, part, misfit, sd, UNJUDGED, f"{station} {part}: nothing here can judge it (differs by {mm:.1f} mm)")
+        return Mark(
+            station, part, misfit, sd, UNJUDGED, f"{station} {part}: nothing here can judge it (differs by {mm:.1f} mm)"
+        )
     times = abs(misfit) / sd
     verdict = DISAGREES if times > limit else AGREES
-    sentence = f"{station} {part}: {verdict}, adjusted minus known {mm:+.1f} mm, {times:.1f} times its standard deviation"
+    sentence = (
+        f"{station} {part}: {verdict}, adjusted minus known {mm:+.1f} mm, {times:.1f} times its standard deviation"
+    )
     return Mark(station, part, misfit, sd, verdict, sentence)

@@ -116,4 +116,5 @@ def circle_radius(a: Array, b: Array, confidence: float, r: int | None) -> Array
         tail = np.exp(-c2 / (2 * w)) if r is None else (1 + c2 / (r * w)) ** (-r / 2)
         below = 1 - (tail * _WEIGHTS).sum(axis=1) / 2 < confidence
         low, high = np.where(below, middle, low), np.where(below, high, middle)
-    return a * (low + high) / 2
+    radius: Array = a * (low + high) / 2
+    return radius

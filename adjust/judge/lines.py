@@ -53,7 +53,8 @@ def find_lines(solution: Solution, scale: float) -> Lines:
 
 def _pairs(solution: Solution) -> tuple[Ints, Ints]:
     """Ends of the lines, each pair once."""
-    network, seen = solution.network, {}
+    network = solution.network
+    seen: dict[tuple[int, int], tuple[int, int]] = {}
     for block in network.blocks:
         for i, j in KINDS[block.kind].sights:
             if i >= 0:
@@ -61,7 +62,7 @@ def _pairs(solution: Solution) -> tuple[Ints, Ints]:
                     seen.setdefault((min(a, b), max(a, b)), (a, b))
     for a, b in network.pairs.tolist():
         seen.setdefault((min(a, b), max(a, b)), (a, b))
-    known = (solution.design.unknowns.coordinate < 0).all(axis=1)
+    known = np.all(solution.design.unknowns.coordinate < 0, axis=1).tolist()
     kept = [ab for ab in seen.values() if not (known[ab[0]] and known[ab[1]]) and _together(solution, *ab)]
     pairs = np.array(kept, dtype=np.int64).reshape(-1, 2)
     return pairs[:, 0], pairs[:, 1]

@@ -29,8 +29,9 @@ KIND = Kind(
     geometry=geometry,
     columns=(Field("angle", "circle", "angle turned clockwise from first to second"),),
     value=("angle",),
-    instrument=Field("direction", "precision", "standard deviation of one pointing, both faces meaned",
-                     dimension="angle"),  # fmt: skip
+    instrument=Field(
+        "direction", "precision", "standard deviation of one pointing, both faces meaned", dimension="angle"
+    ),
     pointings=2.0,
     wraps=True,
     meaning="angles clockwise from `first` to `second`",

@@ -33,9 +33,14 @@ KIND = Kind(
         Field("azimuth", "circle", "azimuth of the line, clockwise from north"),
         Field("bearing", "bearing", "the same as a quadrant bearing: N 45 30 15 E, due N"),
         Field("set", "text", "rows of one set share an unknown turn; blank: no turn"),
-        Field("role", "choice", "held: a basis bearing, kept without error", default="observed",
-              choices=("observed", "held")),
-    ),  # fmt: skip
+        Field(
+            "role",
+            "choice",
+            "held: a basis bearing, kept without error",
+            default="observed",
+            choices=("observed", "held"),
+        ),
+    ),
     value=("azimuth", "bearing"),
     instrument=Field("azimuth", "precision", "standard deviation of one azimuth", dimension="angle"),
     group=GroupUnknown("turn", by=("set",), shared=True, optional="set"),

@@ -31,8 +31,9 @@ KIND = Kind(
         Field("set", "text", "name of the set; each file, station and set has one unknown orientation"),
     ),
     value=("direction",),
-    instrument=Field("direction", "precision", "standard deviation of one pointing, both faces meaned",
-                     dimension="angle"),  # fmt: skip
+    instrument=Field(
+        "direction", "precision", "standard deviation of one pointing, both faces meaned", dimension="angle"
+    ),
     group=GroupUnknown("orientation", by=("at", "set"), shared=False),
     wraps=True,
     meaning="circle readings; each (file, at, set) has one unknown orientation",

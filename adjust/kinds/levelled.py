@@ -34,8 +34,12 @@ KIND = Kind(
         Field("setups", "number", "number of set-ups of the line, for models per root set-up", above=0.0),
     ),
     value=("rise",),
-    instrument=Field("levelling", "precision", "standard deviation of a single running, per root distance or set-up",
-                     dimension="rise"),  # fmt: skip
+    instrument=Field(
+        "levelling",
+        "precision",
+        "standard deviation of a single running, per root distance or set-up",
+        dimension="rise",
+    ),
     length_column="length",
     setup_column="setups",
     meaning="levelled height differences, `to` minus `from`",

@@ -64,7 +64,9 @@ def trimmed(record: dict[str, Any]) -> dict[str, Any]:
     named = {s["observation"] for s in record["suspects"]} | {u["observation"] for u in record["unchecked"]}
     by_statistic = sorted(record["observations"], key=lambda o: -abs(o["statistic"] or 0.0))
     named |= {o["id"] for o in by_statistic[:WORST]}
-    by_size = sorted(record["lines"], key=lambda ln: -(ln["ellipse"] or {}).get("semi_major", ln["sd_height_difference"] or 0.0))
+    by_size = sorted(
+        record["lines"], key=lambda ln: -(ln["ellipse"] or {}).get("semi_major", ln["sd_height_difference"] or 0.0)
+    )
     worst = {(ln["from"], ln["to"]) for ln in by_size[:WORST]}
     return {
         **record,
@@ -89,7 +91,9 @@ def _settings(solution: Solution) -> dict[str, Any]:
     return {
         **settings.tests.__dict__,
         "datum": {"kind": settings.datum_kind or None, "stations": list(settings.datum_stations)},
-        "instruments": {name: {key: model.text for key, model in keys.items()} for name, keys in settings.instruments.items()},
+        "instruments": {
+            name: {key: model.text for key, model in keys.items()} for name, keys in settings.instruments.items()
+        },
         "books": [
             {"file": t.file, "kind": t.kind, "instrument": t.instrument or None, "sd_factor": number(t.sd_factor),
              "units": {"length": t.units.length, "angle": t.units.angle, "decimal": t.units.decimal}}
@@ -104,7 +108,11 @@ def _units(solution: Solution) -> dict[str, Any]:
 
 def _frame(solution: Solution) -> dict[str, Any]:
     assumed = ", ".join(solution.assumed)
-    origin = f"no coordinates were given: {assumed} was placed at 0, 0 and its first sight pointed north" if assumed else None
+    origin = (
+        f"no coordinates were given: {assumed} was placed at 0, 0 and its first sight pointed north"
+        if assumed
+        else None
+    )
     return {"kind": solution.design.frame.name, "origin": origin}
 
 
@@ -156,14 +164,13 @@ def _warnings(judgement: Judgement) -> list[str]:
     out = list(solution.job.warnings)
     for part, test in zip(solution.parts, judgement.overall, strict=False):
         if test.better_than_stated:
-            out.append(f"{part.what}: the readings agree better than their stated standard deviations; are these too large, "
-                       "or the readings not independent?")  # fmt: skip
+            out.append(f"{part.what}: the readings agree better than their stated standard deviations; are these too "
+                       "large, or the readings not independent?")  # fmt: skip
         if part.degrees_of_freedom == 0:
             out.append(f"{part.what}: no reading to spare: nothing is checked and no test can be made.")
         if part.datum and part.datum.free:
-            out.append(f"{part.what}: free network ({_datum_words(solution, part)}): coordinates are relative to its own datum.")
+            out.append(f"{part.what}: free network ({_datum_words(solution, part)}): relative to its own datum.")
     gap = float(np.nansum(judgement.reliability.redundancy)) - solution.total.degrees_of_freedom
     if abs(gap) > 1e-6 * max(1, solution.total.degrees_of_freedom):
-        out.append(f"the redundancy numbers miss their sum by {gap:.2g}: some station may be barely fixed; treat the result with care.")
+        out.append(f"the redundancy numbers miss their sum by {gap:.2g}: some station may be barely fixed.")
     return out
-

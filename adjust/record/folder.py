@@ -81,7 +81,8 @@ def _parents(parent: Path) -> Iterator[None]:
     """Make the missing parents; take those made away again when the record does not come to stand in them."""
     missing = [folder for folder in (parent, *parent.parents) if not folder.exists()]
     try:
-        parent.mkdir(parents=True, exist_ok=True)
+        if missing:
+            parent.mkdir(parents=True, exist_ok=True)
         yield
     except BaseException:
         for folder in missing:

@@ -141,7 +141,7 @@ class _Schematic:
         middle = ((x1 + 2 * bend[0] + x2) / 4, (y1 + 2 * bend[1] + y2) / 4)
         labels.segments += _chords(one, bend, other)
         if suspect is not None and suspect < BADGES and repeat == 0:
-            draw_badge(self.sheet, suspect + 1, middle)
+            draw_badge(self.sheet, suspect + 1, middle, gid=f"suspect-{suspect + 1}")
             labels.keep_off(middle, 2.2)
 
     def bars(self, labels: Labels) -> float | None:
@@ -196,5 +196,6 @@ def draw_levels(sheet: Sheet, record: Entry, frame: Box) -> LevelView:
     view.symbols = [symbol for symbol in ("held", "weighted", "check", "new", "unchecked") if symbol in seen]
     every = math.ceil(len(s.stations) / MOST_LABELS)
     named = [one for i, one in enumerate(s.stations) if i % every == 0 or one["role_height"] != "new"]
-    labels.place([(s.at[one["station"]], plain(one["station"], 14)) for one in named])
+    names = [one["station"] for one in named]
+    labels.place([(s.at[name], plain(name, 14), mark_id("label", name)) for name in names])
     return view

@@ -18,7 +18,7 @@ STATION_KEYS = ("at", "from", "to", "first", "second")
 def row_id(judgement: Judgement, r: int) -> str:
     """Identification of the observation of scalar row ``r``."""
     rows, blocks = judgement.solution.network.rows, judgement.solution.network.blocks
-    return blocks[rows.block[r]].name(int(rows.row[r]))
+    return str(blocks[rows.block[r]].name(int(rows.row[r])))
 
 
 def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
@@ -113,7 +113,11 @@ def unchecked_entries(judgement: Judgement) -> list[dict[str, Any]]:
     for r in np.flatnonzero(~judgement.reliability.tested & ~judgement.solution.design.held).tolist():
         kind = judgement.solution.network.blocks[rows.block[r]].kind.replace("_", " ")
         station = int(judgement.effect_station[r])
-        into = f"straight into {judgement.solution.names[station]}" if station >= 0 else "straight into the orientation of its set"
+        into = (
+            f"straight into {judgement.solution.names[station]}"
+            if station >= 0
+            else "straight into the orientation of its set"
+        )
         why = f"nothing else here checks this {kind}: an error in it would go unseen, {into}"
         out.append({"observation": row_id(judgement, r), "why": why})
     return out

@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
+import math
 from typing import Any
 
 import numpy as np
 
 from adjust.graph.parts import HEIGHT, PLANE
 from adjust.judge import critical
-from adjust.judge.ellipses import ellipses
 from adjust.judge.assess import Judgement
+from adjust.judge.ellipses import ellipses
 from adjust.network import ROLES, Array, Bools
 from adjust.record.numbers import angle, coordinate, number
 from adjust.solver.solution import Solution
@@ -41,8 +42,8 @@ class _Shapes:
     """Standard and confidence ellipses of covariances (n, 2, 2)."""
 
     def __init__(self, judgement: Judgement, cov: Array) -> None:
-        self.known = ~np.isnan(cov).any(axis=(1, 2))
-        filled = np.where(self.known[:, None, None], cov, 0.0)
+        self.known = [not bool(np.isnan(one).any()) for one in cov]
+        filled = np.nan_to_num(cov)
         self.a, self.b, self.azimuth = ellipses(filled)
         self.confidence = judgement.tests.confidence
         self.multiplier = critical.ellipse_multiplier(self.confidence, judgement.degrees)
@@ -55,7 +56,10 @@ class _Shapes:
         standard = self._ellipse(i, 1.0)
         if self.multiplier is None:
             return {"ellipse": standard, "ellipse_confidence": None}
-        return {"ellipse": standard, "ellipse_confidence": self._ellipse(i, self.multiplier) | {"confidence": self.confidence}}
+        return {
+            "ellipse": standard,
+            "ellipse_confidence": self._ellipse(i, self.multiplier) | {"confidence": self.confidence},
+        }
 
     def _ellipse(self, i: int, factor: float) -> dict[str, Any]:
         return {"semi_major": number(self.a[i] * factor), "semi_minor": number(self.b[i] * factor),
@@ -133,4 +137,4 @@ def _group_sd(judgement: Judgement) -> Array:
             half = np.linalg.solve(w.r, inner)
             cov = np.linalg.solve(w.r, half.transpose(0, 2, 1))
             out[w.batch.locals] = np.sqrt(np.einsum("bii->bi", cov))
-    return out * np.sqrt(judgement.scale)
+    return out * math.sqrt(judgement.scale)

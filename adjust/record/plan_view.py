@@ -242,7 +242,7 @@ class _Plan:
             if ends:
                 at = self._suspect(one, [(self.at[a], self.at[b]) for a, b in ends], taken)
                 taken.append(at)
-                draw_badge(self.sheet, i + 1, at)
+                draw_badge(self.sheet, i + 1, at, gid=f"suspect-{i + 1}")
                 labels.keep_off(at, 2.2)
 
     def _suspect(self, one: Entry, ends: list[tuple[Point, Point]], taken: list[Point]) -> Point:
@@ -316,5 +316,9 @@ def draw_plan(sheet: Sheet, record: Entry, frame: Box) -> PlanView:
     seen = {plan.symbol(one) for one in plan.stations}
     view.symbols = [symbol for symbol in ("held", "weighted", "check", "new", "unchecked") if symbol in seen]
     plan.badges(labels)
-    labels.place([(plan.at[one["station"]], plain(one["station"], 18)) for one in plan.labelled()])
+    items = []
+    for one in plan.labelled():
+        name = one["station"]
+        items.append((plan.at[name], plain(name, 18), mark_id("label", name)))
+    labels.place(items)
     return view

@@ -177,14 +177,12 @@ def draw_symbol(sheet: Sheet, symbol: str, at: Point, size: float = 1.0, gid: st
                 sheet.line([(x - d, y - slope * d), (x + d, y + slope * d)], 0.9, zorder=4.1)
 
 
-def draw_badge(sheet: Sheet, count: int, at: Point, size: float = 1.0) -> None:
+def draw_badge(sheet: Sheet, number: int, at: Point, size: float = 1.0, gid: str | None = None) -> None:
     """The numbered mark of a suspect reading."""
     r = 2.0 * size
-    sheet.ellipse(
-        at, (r, r), 0.0, gid=f"suspect-{count}", facecolor="white", edgecolor=VERMILLION, linewidth=1.3, zorder=5
-    )
-    sheet.text((at[0], at[1] - 0.15), str(count), 6.5 * size, bold=True, ha="center", va="center_baseline",
-               color=VERMILLION)  # fmt: skip
+    sheet.ellipse(at, (r, r), 0.0, gid=gid, facecolor="white", edgecolor=VERMILLION, linewidth=1.3, zorder=5)
+    place = (at[0], at[1] - 0.15)
+    sheet.text(place, str(number), 6.5 * size, bold=True, ha="center", va="center_baseline", color=VERMILLION)
 
 
 class Labels:
@@ -200,16 +198,16 @@ class Labels:
         """Labels stay off this symbol."""
         self.boxes.append((at[0] - radius, at[1] - radius, at[0] + radius, at[1] + radius))
 
-    def place(self, items: Sequence[tuple[Point, str]]) -> None:
-        """Place the labels of these points in their order."""
+    def place(self, items: Sequence[tuple[Point, str, str]]) -> None:
+        """Place labels in their order: each a point, the text, and the label's id."""
         boxes, soft = np.array(self.boxes).reshape(-1, 4), np.array(self.soft).reshape(-1, 4)
         segments = np.array([[*one, *other] for one, other in self.segments]).reshape(-1, 4)
-        for at, text in items:
+        for at, text, gid in items:
             options = _around(at, self.sheet.width(text, self.size), self.size * 0.26)
             costs = [self._cost(option, boxes, soft, segments) + 0.02 * i for i, option in enumerate(options)]
             best = options[int(np.argmin(costs))]
             boxes = np.vstack([boxes, best])
-            self.sheet.text((best[0], best[1]), text, self.size, path_effects=self.sheet.halo())
+            self.sheet.text((best[0], best[1]), text, self.size, path_effects=self.sheet.halo(), gid=gid)
 
     def _cost(
         self, box: Box, boxes: NDArray[np.float64], soft: NDArray[np.float64], segments: NDArray[np.float64]

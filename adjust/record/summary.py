@@ -26,7 +26,8 @@ def summary_lines(record: Entry) -> list[str]:
     caution = textwrap.wrap(CAUTION, WIDTH)
     room = MOST_LINES - len(above) - len(caution) - 4  # the table's header and pointer, and two blank lines
     table = _table(record, shown, max(room, TABLE_LEAST))
-    return [*above, *(["", *table] if table else []), "", *caution]
+    lines = [*above, *(["", *table] if table else []), "", *caution]
+    return lines if len(lines) <= MOST_LINES else [line for line in lines if line]
 
 
 def _wrapped(text: str, most: int = 2, indent: str = "  ") -> list[str]:
@@ -62,9 +63,9 @@ def _head(record: Entry) -> list[str]:
 
 
 _VERDICTS = {
-    "met": "met, the readings scatter as their standard deviations say",
-    "not met": "NOT MET, the readings scatter more than their standard deviations allow",
-    "better than stated": "better than stated, the readings scatter less than their standard deviations say",
+    "met": "met, readings scatter as stated",
+    "not met": "NOT MET, readings scatter more than stated",
+    "better than stated": "better than stated, readings scatter less than expected",
     "cannot be tested": "cannot be tested, no reading is to spare",
 }
 
@@ -81,14 +82,14 @@ def _overall_part(part: Entry, settings: Entry, shown: Shown) -> list[str]:
     words = _VERDICTS.get(test["verdict"], str(test["verdict"]))
     if settings["variance_factor"] == "from-residuals" and test["verdict"] == "cannot be tested":
         words = "cannot be tested"
-    text = f"Overall test, {what}: {words}."
+    text = f"Overall test, {what}: {words}"
     if factor is not None:
-        text += f" Variance factor {shown.mark(f'{factor:.2f}')}"
+        text += f" (variance factor {shown.mark(f'{factor:.2f}')}"
         if test["interval"]:
             least, most = (shown.mark(f"{bound:.2f}") for bound in test["interval"])
-            text += f" (should lie between {least} and {most})"
-        text += "."
-    return _wrapped(text)
+            text += f", limits {least} to {most}"
+        text += ")"
+    return _wrapped(text + ".")
 
 
 def _suspects(record: Entry, shown: Shown) -> list[str]:
@@ -135,6 +136,9 @@ def _unchecked(record: Entry) -> list[str]:
     return _wrapped(f"Unchecked: {count(len(unchecked), 'reading')} nothing else would contradict: {few}.")
 
 
+_CONTROL = {"disagrees": "disagree", "agrees": "agree", "cannot be judged": "cannot be judged"}
+
+
 def _control(record: Entry) -> list[str]:
     entries = record["control"]
     if not entries:
@@ -147,7 +151,7 @@ def _control(record: Entry) -> list[str]:
     lines = [f"Control compared ({count(len(entries), 'coordinate')}): {', '.join(said)}."]
     for one in bad[:2]:
         lines += _wrapped(f"  {plain(one['sentence'], 180)}", 2, "    ")
-    return lines + _more(len(bad) - 2, "mark that disagrees")
+    return lines + _more(len(bad) - 2, "disagreement")
 
 
 def _confidence(record: Entry) -> str:
@@ -186,7 +190,11 @@ def _left_out(record: Entry) -> list[str]:
 
 def _warnings(record: Entry) -> list[str]:
     warnings = record["warnings"]
-    lines = [line for one in warnings[:WORST] for line in _wrapped(f"Warning: {plain(one, 190)}")]
+    lines = [
+        line
+        for one in warnings[:WORST]
+        for line in _wrapped(f"Warning: {plain(one, 190)}", 2 if len(warnings) < WORST else 1)
+    ]
     return lines + _more(len(warnings) - WORST, "warning")
 
 
@@ -211,8 +219,8 @@ def _table(record: Entry, shown: Shown, room: int) -> list[str]:
     lines = ["  ".join(_placed(c[i], w, n) for n, (c, w) in enumerate(zip(columns, widths, strict=True))).rstrip()
              for i in range(len(rows) + 1)]  # fmt: skip
     hidden = len(stations) - len(rows)
-    which = f"The {len(rows)} least certain of {len(stations)} stations (all: stations.csv)" if hidden else "Stations"
-    return [f"{which}, coordinates in {shown.length}, sd and {_confidence(record)} half axis in {shown.small}:", *lines]
+    which = f"The {len(rows)} least certain of {len(stations)} stations (all in stations.csv)" if hidden else "Stations"
+    return [f"{which} in {shown.length}; sd, {_confidence(record)} half axis in {shown.small}:", *lines]
 
 
 def _placed(cell: str, width: int, column: int) -> str:

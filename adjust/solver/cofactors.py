@@ -37,7 +37,7 @@ class Cofactors:
         base = cls(factor, reduced, np.zeros((len(reduced), 0)), np.zeros((0, 0)))
         if len(conditions):
             u = base.times(conditions.T)
-            base = cls(factor, reduced, u, -np.linalg.inv(conditions @ u))
+            base = cls(factor, reduced, u, -np.asarray(np.linalg.inv(conditions @ u), dtype=np.float64))
         if null.shape[1]:
             v = base.times(constraint)
             h = np.linalg.inv(constraint.T @ null)

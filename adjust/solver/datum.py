@@ -86,7 +86,9 @@ def movements(part: Part, positions: Array) -> Array:
     return out
 
 
-def find_datum(network: Network, parts: list[Part], kind: str, chosen: tuple[str, ...], start: Array) -> list[PartDatum]:
+def find_datum(
+    network: Network, parts: list[Part], kind: str, chosen: tuple[str, ...], start: Array
+) -> list[PartDatum]:
     """The datum of every part; ``kind`` control, free or '' (control where a part has some).
 
     Raises Unsolvable with a sentence for every freedom that nothing fixes where the part is not free.
@@ -108,7 +110,7 @@ def find_datum(network: Network, parts: list[Part], kind: str, chosen: tuple[str
 def _control(network: Network, part: Part) -> Bools:
     """Coordinates (n, 3) of the part that are held or weighted."""
     role = network.stations.role
-    return ((role == HELD) | (role == WEIGHTED)) & part.nodes[:, [PLANE, PLANE, HEIGHT]]
+    return np.asarray(((role == HELD) | (role == WEIGHTED)) & part.nodes[:, [PLANE, PLANE, HEIGHT]])
 
 
 def _null(network: Network, part: Part, positions: Array, control: Bools) -> Array:
@@ -147,7 +149,9 @@ def _datum_stations(network: Network, part: Part, chosen: tuple[str, ...]) -> In
         wanted = {network.stations.index[name] for name in chosen}
         return np.array([i for i in inside if i in wanted], dtype=np.int64)
     given = ~np.isnan(network.stations.start[inside])
-    started = inside[(given[:, :2].all(axis=1) & part.nodes[inside, PLANE]) | (given[:, 2] & part.nodes[inside, HEIGHT])]
+    started = inside[
+        (given[:, :2].all(axis=1) & part.nodes[inside, PLANE]) | (given[:, 2] & part.nodes[inside, HEIGHT])
+    ]
     return started if len(started) else inside
 
 
@@ -163,7 +167,10 @@ def _missing_words(network: Network, part: Part, missing: tuple[str, ...], contr
         words.append(f"nothing fixes the position of {who}: no mark with known east and north; {cure}")
     elif "turn" in missing or "scale" in missing:
         about = f" about {listed(network, held)}" if len(held) else ""
-        for name, need in (("turn", "a second known mark or an azimuth"), ("scale", "a second known mark or a distance")):
+        for name, need in (
+            ("turn", "a second known mark or an azimuth"),
+            ("scale", "a second known mark or a distance"),
+        ):
             if name in missing:
                 words.append(f"nothing fixes the {name} of {who}{about}: it needs {need}")
     elif "shift east" in missing or "shift north" in missing:
@@ -188,7 +195,9 @@ def assemble_datum(
         constraint[at, column : column + d] = vectors[at, column : column + d]
         fixed.append(_pick(network, one, at, constraint[at, column : column + d]))
         column += d
-    return Datum(parts, constraint, state_vector(unknowns, positions, groups), np.concatenate([np.empty(0, np.int64), *fixed]))
+    return Datum(
+        parts, constraint, state_vector(unknowns, positions, groups), np.concatenate([np.empty(0, np.int64), *fixed])
+    )
 
 
 def _pick(network: Network, one: PartDatum, at: Ints, rows: Array) -> Ints:
@@ -199,7 +208,9 @@ def _pick(network: Network, one: PartDatum, at: Ints, rows: Array) -> Ints:
         if abs(r[d - 1, d - 1]) > RANK_LEAST * abs(r[0, 0]):
             return at[order[:d]]
     who = listed(network, one.stations)
-    raise Unsolvable([f"the datum stations {who} cannot carry the datum of {one.part.what}: name more stations, apart from one another"])
+    raise Unsolvable(
+        [f"the datum stations {who} cannot carry the datum of {one.part.what}: name more stations, farther apart"]
+    )
 
 
 def null_space(network: Network, parts: list[PartDatum], unknowns: Unknowns, positions: Array) -> Array:

@@ -28,7 +28,7 @@ def words(network: Network, unknowns: Unknowns, kept: Ints, normal: csc_array, p
     null = _null(normal)
     moving = np.abs(null).max(axis=1) > MOVES
     projection = np.abs(null @ null.T) > MOVES**2
-    _, label = connected_components(csc_array(projection), directed=False)
+    _, label = connected_components(csc_array(projection.astype(float)), directed=False)
     sentences = []
     for one in dict.fromkeys(label[moving].tolist()):
         here = (label == one) & moving & (owner[:, 0] >= 0)
@@ -66,7 +66,8 @@ def _one(network: Network, stations: Ints, movement: str | None) -> str:
     along = f" {movement}" if movement else ""
     if len(stations) == 1:
         readings = _readings(network, int(stations[0]))
-        return f"station {who} is held by {_count(readings)} only: nothing fixes it{along}; measure to it once more or give it as control"
+        held = f"station {who} is held by {_count(readings)} only: nothing fixes it{along}"
+        return f"{held}; measure to it once more or give it as control"
     return f"nothing fixes {who}{along}: the readings let them move together; tie them to the rest by another reading"
 
 

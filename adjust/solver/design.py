@@ -85,7 +85,7 @@ class Design:
     @cached_property
     def held(self) -> Bools:
         """Rows (R,) that are conditions."""
-        return self.sd == 0.0
+        return np.asarray(self.sd == 0.0)
 
     @cached_property
     def wraps(self) -> Bools:
@@ -161,7 +161,9 @@ class Design:
 
     def _block(self, block: Block, positions: Array, groups: Array) -> tuple[Array, Array, Array]:
         kind = KINDS[block.kind]
-        ends = [(block.stations[:, i] if i >= 0 else np.full(len(block), -1), block.stations[:, j]) for i, j in kind.sights]
+        ends = [
+            (block.stations[:, i] if i >= 0 else np.full(len(block), -1), block.stations[:, j]) for i, j in kind.sights
+        ]
         sights = np.stack([self.frame.sights(positions, i, j) for i, j in ends], axis=1)
         values, by_sight, by_group = kind.geometry(sights, _group_values(block, groups))
         carried = np.stack([self.frame.carry(by_sight[:, :, s]) for s in range(len(ends))], axis=2)

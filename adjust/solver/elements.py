@@ -62,7 +62,7 @@ class Whitened:
         """Steps (b, g) of the local unknowns for a step (u,) of the others."""
         rest = self.l - (self.a @ gather(dx, self.batch.columns)[:, :, None])[:, :, 0]
         rhs = self.q.transpose(0, 2, 1) @ rest[:, :, None]
-        return np.linalg.solve(self.r, rhs)[:, :, 0] if self.q.shape[2] else rhs[:, :, 0]
+        return solved(self.r, rhs)[:, :, 0] if self.q.shape[2] else rhs[:, :, 0]
 
 
 def gather(x: Array, columns: Ints) -> Array:
@@ -70,6 +70,11 @@ def gather(x: Array, columns: Ints) -> Array:
     taken = x[columns]
     taken[columns < 0] = 0.0
     return taken
+
+
+def solved(matrix: Array, rhs: Array) -> Array:
+    """matrix^-1 rhs for stacks (b, k, k) and (b, k, r)."""
+    return np.asarray(np.linalg.solve(matrix, rhs), dtype=np.float64)
 
 
 def make_batches(design: Design, sd: Array) -> list[Batch]:
@@ -123,8 +128,10 @@ def _slots(design: Design, rows: Ints, used: Ints) -> Ints:
     if rows.shape[1] == 1 and c == design.columns.shape[1]:
         place = np.broadcast_to(np.arange(c), design.columns[rows].shape).copy()
     else:
-        place = (design.columns[rows][..., None] == used[:, None, None, :]).argmax(axis=3) if c else np.zeros(
-            design.columns[rows].shape, dtype=np.int64
+        place = (
+            (design.columns[rows][..., None] == used[:, None, None, :]).argmax(axis=3)
+            if c
+            else np.zeros(design.columns[rows].shape, dtype=np.int64)
         )
     place[design.columns[rows] < 0] = c
     return place
@@ -155,7 +162,7 @@ class _Covariances:
                     c, d = self.cluster[rows[e, i]], self.cluster[rows[e, j]]
                     if c >= 0 and c == d:
                         full[e, i, j] = self.matrices[c][self.place[rows[e, i]], self.place[rows[e, j]]]
-        return np.linalg.cholesky(full)
+        return np.asarray(np.linalg.cholesky(full), dtype=np.float64)
 
 
 def whiten(batch: Batch, numbers: Linearised) -> Whitened:
@@ -173,9 +180,8 @@ def whiten(batch: Batch, numbers: Linearised) -> Whitened:
     if k == 1:
         wa, wb, wl = a[:, :, :c] / batch.factor, by_local / batch.factor, l / batch.factor[:, :, 0]
     else:
-        wa = np.linalg.solve(batch.factor, a[:, :, :c])
-        wb = np.linalg.solve(batch.factor, by_local)
-        wl = np.linalg.solve(batch.factor, l[:, :, None])[:, :, 0]
+        wa = solved(batch.factor, a[:, :, :c])
+        wb = solved(batch.factor, by_local)
+        wl = solved(batch.factor, l[:, :, None])[:, :, 0]
     q, r = np.linalg.qr(wb) if g else (wb, np.zeros((b, 0, 0)))
     return Whitened(batch, wa, wl, q, r, wa - q @ (q.transpose(0, 2, 1) @ wa))
-

@@ -139,5 +139,4 @@ class GaussNewton:
         rows = self.design.network.rows
         names = [self.design.network.blocks[rows.block[r]].name(int(rows.row[r])) for r in worst]
         return ["the adjustment does not settle from these starting values; the readings that fit worst are "
-                + ", ".join(names) + ": look there for a gross error, or give better starting coordinates in stations.csv"]  # fmt: skip
-
+                + ", ".join(names) + ": look there for a gross error, or give better starts"]  # fmt: skip

@@ -84,13 +84,13 @@ class Solution:
     @property
     def sd(self) -> Array:
         """(n, 3) standard deviations of the coordinates, metres."""
-        return np.sqrt(np.maximum(np.einsum("nii->ni", self.covariance), 0.0))
+        return np.asarray(np.sqrt(np.maximum(np.einsum("nii->ni", self.covariance), 0.0)))
 
     def frame(self) -> Any:
         """Stations as a pandas data frame in metres; needs pandas."""
         import pandas as pd
 
-        columns = {"station": self.names}
+        columns: dict[str, Any] = {"station": self.names}
         for i, part in enumerate(("east", "north", "height")):
             columns[f"{part}_m"] = self.positions[:, i]
         for i, part in enumerate(("east", "north", "height")):
@@ -106,10 +106,16 @@ class Solution:
         from html import escape
 
         rows = "".join(
-            "<tr><th scope=row>" + escape(name) + "</th>" + "".join(f"<td>{_cell(x)}</td>" for x in (*xyz, *sd)) + "</tr>"
+            "<tr><th scope=row>"
+            + escape(name)
+            + "</th>"
+            + "".join(f"<td>{_cell(x)}</td>" for x in (*xyz, *sd))
+            + "</tr>"
             for name, xyz, sd in zip(self.names, self.positions, self.sd, strict=True)
         )
-        head = "".join(f"<th>{h}</th>" for h in ("station", "east m", "north m", "height m", "sd east", "sd north", "sd height"))
+        head = "".join(
+            f"<th>{h}</th>" for h in ("station", "east m", "north m", "height m", "sd east", "sd north", "sd height")
+        )
         return (f"<p>{escape(repr(self))}</p><table><thead><tr>{head}</tr></thead><tbody>{rows}</tbody></table>"
                 f"<p>{escape(CAUTION_SHORT)}</p>")  # fmt: skip
 

@@ -104,9 +104,12 @@ def solution_at(job: Job, ready: Setting, last: Linear, cofactors: Cofactors, it
     squares[design.held] = 0.0
     parts = tuple(_part(ready, one, squares) for one in ready.parts)
     total = PartResult(
-        "all",
-        np.ones(len(residuals), dtype=bool),
-        *(sum(getattr(p, name) for p in parts) for name in ("observations", "unknowns", "conditions", "datum_missing")),
+        what="all",
+        rows=np.ones(len(residuals), dtype=bool),
+        observations=sum(p.observations for p in parts),
+        unknowns=sum(p.unknowns for p in parts),
+        conditions=sum(p.conditions for p in parts),
+        datum_missing=sum(p.datum_missing for p in parts),
         square_sum=float(squares.sum()),
     )
     return Solution(

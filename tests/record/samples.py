@@ -187,7 +187,7 @@ def hostile_record() -> Record:
     for one in made["observations"]:
         for key in ("at", "from", "to", "first", "second"):
             one[key] = new.get(one[key], one[key])
-    made["job"]["title"] = "$\\frac{1}{2}$ <b>& " + "title " * 60
+    made["job"]["title"] = "$\\frac{1}{$ <b>& " + "title " * 60
     made["job"]["client"] = "& sons <i>"
     return made
 

@@ -41,7 +41,11 @@ def test_ellipse_cells_are_those_of_the_record() -> None:
     record = plane_record()
     for row, one in zip(rows_of(stations_csv(record)), record["stations"], strict=True):
         if row["ellipse_semi_major_mm"] != "0.00":
-            close(float(row["ellipse_confidence_semi_major_mm"]), 1000 * one["ellipse_confidence"]["semi_major"], atol=0.006)
+            close(
+                float(row["ellipse_confidence_semi_major_mm"]),
+                1000 * one["ellipse_confidence"]["semi_major"],
+                atol=0.006,
+            )
             close(parse_angle(row["ellipse_azimuth_dms"], "dms") + 1, one["ellipse"]["azimuth"] + 1, atol=0.51 * SEC)
 
 
@@ -93,7 +97,9 @@ def test_an_adjusted_direction_just_below_zero_is_printed_on_the_circle() -> Non
     assert row["adjusted_dms"] == "0 00 00.00"
 
 
-@pytest.mark.parametrize("text", ["=1+1", "+A1", "-A1", "@SUM(A1)", "\tx", "\r=1", "\n=1", "-1-cmd|' /C calc'!A0", "+1*2"])
+@pytest.mark.parametrize(
+    "text", ["=1+1", "+A1", "-A1", "@SUM(A1)", "\tx", "\r=1", "\n=1", "-1-cmd|' /C calc'!A0", "+1*2"]
+)
 def test_text_a_spreadsheet_would_execute_gets_an_apostrophe(text: str) -> None:
     assert safe_text(text) == "'" + text
 
@@ -142,4 +148,9 @@ def test_untested_readings_have_empty_cells() -> None:
 
 def test_heights_only() -> None:
     row = rows_of(stations_csv(level_record()))[1]
-    assert (row["east_m"], row["height_m"], row["sd_height_mm"], row["ellipse_semi_major_mm"]) == ("", "214.0172", "1.40", "")
+    assert (row["east_m"], row["height_m"], row["sd_height_mm"], row["ellipse_semi_major_mm"]) == (
+        "",
+        "214.0172",
+        "1.40",
+        "",
+    )

@@ -50,16 +50,15 @@ def full_record() -> dict[str, Any]:
 
 def test_a_job_with_everything_wrong_still_fits_about_a_screen() -> None:
     lines = summary_lines(full_record())
-    assert len(lines) <= MOST_LINES + 8
+    assert len(lines) <= MOST_LINES + 5
     assert max(map(len, lines)) <= WIDTH
     assert "and 5 more suspects: see the record" in " ".join(lines)
     assert "and 6 more warnings: see the record" in " ".join(lines)
 
 
 def test_counts_and_datum_in_words() -> None:
-    assert (
-        "Adjusted 8 stations from 26 readings: 12 unknowns, 14 degrees of freedom. Datum: held control."
-        in text_of(plane_record())
+    assert "Adjusted 8 stations from 26 readings: 12 unknowns, 14 degrees of freedom. Datum: held control." in text_of(
+        plane_record()
     )
 
 
@@ -71,15 +70,15 @@ def test_one_is_singular() -> None:
     ("verdict", "words"),
     [
         ("met", "Overall test, plane: met"),
-        ("not met", "Overall test, plane: NOT MET, the readings scatter more"),
-        ("better than stated", "better than stated, the readings scatter less"),
+        ("not met", "Overall test, plane: NOT MET, readings scatter more than stated"),
+        ("better than stated", "better than stated, readings scatter less"),
     ],
 )
 def test_overall_test_in_words(verdict: str, words: str) -> None:
     record = plane_record()
     record["solution"]["parts"][0]["overall_test"] = {"interval": [0.47, 1.73], "verdict": verdict}
     assert words in text_of(record)
-    assert "Variance factor 1.06 (should lie between 0.47 and 1.73)" in text_of(record)
+    assert "(variance factor 1.06, limits 0.47 to 1.73)" in text_of(record)
 
 
 def test_a_job_without_readings_to_spare_says_so() -> None:
@@ -139,20 +138,24 @@ def test_large_blunders_are_in_metres_and_degrees() -> None:
 def test_unchecked_control_left_out_and_warnings() -> None:
     text = text_of(plane_record())
     assert "Unchecked: 1 reading nothing else would contradict: distances.csv:7." in text
-    assert "Control compared (2 coordinates): 1 disagrees, 1 agrees. C9 stands 13.1 mm north of its known place." in text
+    assert (
+        "Control compared (2 coordinates): 1 disagrees, 1 agrees. C9 stands 13.1 mm north of its known place." in text
+    )
     assert "Left out: 1 reading: distances.csv:12 (tripod was knocked)." in text
     assert "Warning: TP1 and TP01" in text
 
 
 def test_least_certain_position_and_height() -> None:
-    assert "Least certain position: P7, 95 % ellipse 12 by 4.4 mm (half axes), long axis 20 deg." in text_of(plane_record())
+    assert "Least certain position: P7, 95 % ellipse 12 by 4.4 mm (half axes), long axis 20 deg." in text_of(
+        plane_record()
+    )
     assert "Least certain height: TP5, standard deviation 2.6 mm." in text_of(level_record())
 
 
 def test_the_table_of_many_stations_shows_the_least_certain() -> None:
     record = grid_record(8)
     lines = summary_lines(record)
-    assert any(line.startswith("The 8 least certain of 64 stations (all: stations.csv)") for line in lines)
+    assert any(line.startswith("The 8 least certain of 64 stations (all in stations.csv)") for line in lines)
     worst = max(record["stations"], key=lambda one: one["ellipse_confidence"]["semi_major"])["station"]
     assert any(line.startswith(worst + " ") for line in lines)
 
@@ -192,13 +195,16 @@ def test_control_signs_and_direction_marks_are_shown_as_escapes() -> None:
 
 
 @pytest.mark.parametrize(
-    ("sd", "places"), [(0.0023, 4), (0.012, 3), (0.0996, 2), (0.099, 3), (0.85, 2), (2.3, 1), (12.0, 0), (130.0, 0), (None, 4)]
+    ("sd", "places"),
+    [(0.0023, 4), (0.012, 3), (0.0996, 2), (0.099, 3), (0.85, 2), (2.3, 1), (12.0, 0), (130.0, 0), (None, 4)],
 )
 def test_two_significant_figures_decide_the_places(sd: float | None, places: int) -> None:
     assert places_for(sd) == places
 
 
-@pytest.mark.parametrize(("sd", "text"), [(0.851, "0.85"), (2.34, "2.3"), (11.6, "12"), (130.4, "130"), (0.0996, "0.10")])
+@pytest.mark.parametrize(
+    ("sd", "text"), [(0.851, "0.85"), (2.34, "2.3"), (11.6, "12"), (130.4, "130"), (0.0996, "0.10")]
+)
 def test_two_figures(sd: float, text: str) -> None:
     assert two_figures(sd) == text
 
