@@ -5,7 +5,7 @@ The public names are loaded when they are first used, so that importing the pack
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Any
+TYPE_CHECKING = False  # typing itself would take longer to load than --help runs; checkers know the name
 
 __version__ = "0.1.0"
 __all__ = ["Job", "Judgement", "Network", "Solution", "__version__", "assess", "check", "read", "solve", "write"]
@@ -17,6 +17,8 @@ _HOME = {
 }  # fmt: skip
 
 if TYPE_CHECKING:
+    from typing import Any
+
     from adjust.book.job import Job
     from adjust.book.read import read
     from adjust.judge.assess import Judgement, assess

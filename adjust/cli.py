@@ -8,11 +8,14 @@ from __future__ import annotations
 
 import argparse
 import sys
-from collections.abc import Sequence
-from typing import Any
 
 from adjust import __version__
 from adjust.caution import CAUTION_SHORT
+
+TYPE_CHECKING = False  # typing itself would take longer to load than --help runs; checkers know the name
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+    from typing import Any
 
 DONE, FAILED, REFUSED, INTERNAL, INTERRUPTED = 0, 1, 2, 70, 130
 
@@ -138,18 +141,20 @@ def _deliver(given: argparse.Namespace, judgement: Any, out: Any) -> None:
     """Write and print what was asked for."""
     from adjust.record.build import build, trimmed
 
+    record = build(judgement)
     if out:
-        from adjust.record.write import write
+        from adjust.record.folder import write_record
+        from adjust.record.write import record_files
 
-        write(judgement, out)
+        write_record(record_files(record), out)
     if given.json:
         from adjust.record.json_text import json_bytes
 
-        sys.stdout.write(json_bytes(trimmed(build(judgement))).decode())
+        sys.stdout.write(json_bytes(trimmed(record)).decode())
     elif not given.quiet:
         from adjust.record.summary import summary_lines
 
-        print("\n".join(summary_lines(build(judgement))))
+        print("\n".join(summary_lines(record)))
         print(f"The record is in {out}")
 
 

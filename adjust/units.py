@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import math
 import re
-from fractions import Fraction
 
 TURN = 2.0 * math.pi
 RHO_SEC = 180.0 * 3600.0 / math.pi
@@ -113,8 +112,9 @@ def _sexagesimal(sign: str, degrees: str, minutes: str, seconds: str) -> float:
         raise BadValue(f"{minutes} minutes: minutes stop at 59")
     if float(seconds) >= 60:
         raise BadValue(f"{seconds} seconds: seconds stop below 60")
-    value = Fraction(int(degrees)) + Fraction(int(minutes), 60) + Fraction(seconds) / 3600
-    return (-1 if sign == "-" else 1) * float(value) * (math.pi / 180)
+    # whole seconds are exact; one rounding in the sum, one in the scaling
+    total = (int(degrees) * 3600 + int(minutes) * 60 + float(seconds)) * ANGLES["sec"]
+    return -total if sign == "-" else total
 
 
 def _parse_dms(text: str, decimal: str) -> float:

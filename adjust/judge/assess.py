@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 
@@ -14,6 +15,7 @@ from adjust.judge.control import Mark, compare_control
 from adjust.judge.lines import Lines, find_lines
 from adjust.judge.reliability import Reliability, largest_effect, reliability
 from adjust.network import Array, Bools, Ints
+from adjust.notebook import cell, html_table
 from adjust.solver.solution import PartResult, Solution
 from adjust.solver.threads import one_thread
 
@@ -115,6 +117,44 @@ class Judgement:
             or bool(self.suspect_of_job.any())
             or any(mark.verdict == "disagrees" for mark in self.control)
         )
+
+    @property
+    def ids(self) -> list[str]:
+        """Identification of the observation of each scalar row (R,)."""
+        rows, blocks = self.solution.network.rows, self.solution.network.blocks
+        return [blocks[b].name(i) for b, i in zip(rows.block.tolist(), rows.row.tolist(), strict=True)]
+
+    def frame(self) -> Any:
+        """Readings as a pandas data frame, metres and radians; needs pandas."""
+        import pandas as pd
+
+        rows, blocks = self.solution.network.rows, self.solution.network.blocks
+        columns = {
+            "id": self.ids,
+            "kind": [blocks[b].kind for b in rows.block.tolist()],
+            "observed": self.solution.design.observed,
+            "residual": self.solution.residuals,
+            "sd": self.solution.design.sd,
+            "redundancy": self.reliability.redundancy,
+            "statistic": self.statistic,
+            "smallest_detectable": self.smallest_detectable,
+            "suspect": self.suspect,
+        }
+        return pd.DataFrame(columns).set_index("id")
+
+    def _repr_html_(self) -> str:
+        worst = np.argsort(-np.abs(np.nan_to_num(self.statistic)), kind="stable")[:20].tolist()
+        ids, head = self.ids, ("reading", "statistic", "redundancy", "suspect")
+        rows = [
+            (
+                ids[r],
+                cell(self.statistic[r], 2),
+                cell(self.reliability.redundancy[r], 2),
+                "yes" if self.suspect[r] else "",
+            )
+            for r in worst
+        ]
+        return html_table(f"{self!r}, largest statistics first", head, rows)
 
     def __repr__(self) -> str:
         return f"<Judgement: overall test {self.overall[-1].verdict}, {len(self.blame)} suspects>"

@@ -41,7 +41,7 @@ def draw(record: Entry) -> dict[str, bytes]:
 
     with mpl.rc_context(), warnings.catch_warnings():
         mpl.rcdefaults()
-        mpl.rcParams.update({"svg.hashsalt": "brasscap", "svg.fonttype": "path", "text.parse_math": False})
+        mpl.rcParams.update({"svg.hashsalt": "brasscap", "svg.fonttype": "path"})
         # a name in a script the bundled font lacks shows as boxes: no reason to stop or to write to the terminal
         warnings.filterwarnings("ignore", message=r"Glyph .* missing from font")
         sheet = Sheet()

@@ -35,6 +35,8 @@ from adjust.record.shown import Entry, Shown, plain
 from adjust.units import LENGTHS
 
 MOST_LABELS = 60
+MOST_BENT = 120
+"""Stations above which lines stay straight: there is no room to bend them, and the search would take seconds."""
 BADGES = 9
 
 
@@ -98,6 +100,7 @@ class _Schematic:
         self.place = {name: i for i, name in enumerate(self.at)}
         self.size = 1.0 if len(self.stations) <= 40 else 0.6
         self.unchecked = unchecked_stations(record)
+        self.middles: list[Point] = []
 
     def axis(self) -> None:
         """The height axis with round figures and thin level lines."""
@@ -118,7 +121,7 @@ class _Schematic:
         self.sheet.text((left + 18, bottom + 3), note, 6, color=GREY)
 
     def lines(self, labels: Labels) -> None:
-        """The levelled lines: straight between neighbours of the row, bent around those between otherwise."""
+        """The levelled lines: straight where nothing is in the way, bent around it otherwise."""
         blamed = {tuple(sorted(line)): i for i, one in reversed(list(enumerate(suspect_readings(self.record))))
                   for line in pointed_lines(one)}  # fmt: skip
         done: dict[Names, int] = {}
@@ -128,21 +131,40 @@ class _Schematic:
                 if a in self.at and b in self.at:
                     repeat = done[key] = done.get(key, -1) + 1
                     if repeat < 3:  # a line levelled again is drawn beside itself; more would be one blot
-                        self._line(key, repeat, blamed.get(tuple(sorted(key))), labels)
+                        self._line(key, blamed.get(tuple(sorted(key))), repeat == 0, labels)
 
-    def _line(self, ends: Names, repeat: int, suspect: int | None, labels: Labels) -> None:
-        (x1, y1), (x2, y2) = one, other = self.at[ends[0]], self.at[ends[1]]
-        apart = self.place[ends[1]] - self.place[ends[0]]
-        side = 1 if (self.place[ends[0]] + repeat) % 2 else -1
-        away = side * ((0.0 if apart == 1 else 7.0 * math.sqrt(apart)) + 6.0 * repeat)
-        bend = ((x1 + x2) / 2, (y1 + y2) / 2 + away)
+    def _line(self, ends: Names, suspect: int | None, badge: bool, labels: Labels) -> None:
+        one, other = self.at[ends[0]], self.at[ends[1]]
+        bend = self._bend(ends)
         look = {"edgecolor": GREY, "zorder": 1} if suspect is None else {"edgecolor": VERMILLION, "zorder": 2}
-        self.sheet.curve(one, bend, other, 0.9 if suspect is None else 2.0, **look)
-        middle = ((x1 + 2 * bend[0] + x2) / 4, (y1 + 2 * bend[1] + y2) / 4)
-        labels.segments += _chords(one, bend, other)
-        if suspect is not None and suspect < BADGES and repeat == 0:
+        gid = f"line-{len(self.middles) + 1}"
+        self.sheet.curve(one, bend, other, 0.9 if suspect is None else 2.0, gid=gid, **look)
+        chords = _chords(one, bend, other)
+        labels.segments += chords if len(self.at) <= MOST_BENT else [[one, other]]
+        middle = chords[8][0]
+        self.middles.append(middle)
+        if suspect is not None and suspect < BADGES and badge:
             draw_badge(self.sheet, suspect + 1, middle, gid=f"suspect-{suspect + 1}")
             labels.keep_off(middle, 2.2)
+
+    def _bend(self, ends: Names) -> Point:
+        """Where to draw the line towards: straight, or bent least so that it keeps off other stations and lines."""
+        (x1, y1), (x2, y2) = one, other = self.at[ends[0]], self.at[ends[1]]
+        if len(self.at) > MOST_BENT:
+            return (x1 + x2) / 2, (y1 + y2) / 2
+        length = math.hypot(x2 - x1, y2 - y1) or 1.0
+        across = (-(y2 - y1) / length, (x2 - x1) / length)
+        strangers = [at for name, at in self.at.items() if name not in ends and x1 - 6 < at[0] < x2 + 6]
+        best, least = one, math.inf
+        for away in (0.0, 6.0, -6.0, 12.0, -12.0, 20.0, -20.0, 30.0, -30.0, 42.0, -42.0):
+            bend = ((x1 + x2) / 2 + away * across[0], (y1 + y2) / 2 + away * across[1])
+            points = [chord[0] for chord in _chords(one, bend, other)[1:]]
+            near = sum(max(0.0, 7.0 - min(math.dist(p, at) for p in points)) for at in strangers)
+            near += sum(max(0.0, 3.0 - math.dist(points[7], middle)) for middle in self.middles)
+            outside = sum(max(0.0, self.frame[1] + 8 - y) + max(0.0, y - self.frame[3] + 4) for _, y in points)
+            if (cost := near + outside + 0.04 * abs(away)) < least:
+                best, least = bend, cost
+        return best
 
     def bars(self, labels: Labels) -> float | None:
         """The confidence bars; their magnification over the height axis."""
@@ -166,8 +188,8 @@ class _Schematic:
 
 
 def _chords(one: Point, bend: Point, other: Point) -> list[list[Point]]:
-    """The curve as eight chords: (1 - t)² one + 2 t (1 - t) bend + t² other."""
-    ts = [k / 8 for k in range(9)]
+    """The curve as sixteen chords: (1 - t)² one + 2 t (1 - t) bend + t² other."""
+    ts = [k / 16 for k in range(17)]
     points = [((1 - t) ** 2 * one[0] + 2 * t * (1 - t) * bend[0] + t * t * other[0],
                (1 - t) ** 2 * one[1] + 2 * t * (1 - t) * bend[1] + t * t * other[1]) for t in ts]  # fmt: skip
     return [[a, b] for a, b in itertools.pairwise(points)]

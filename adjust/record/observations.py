@@ -15,12 +15,6 @@ from adjust.record.numbers import angle, coordinate, number
 STATION_KEYS = ("at", "from", "to", "first", "second")
 
 
-def row_id(judgement: Judgement, r: int) -> str:
-    """Identification of the observation of scalar row ``r``."""
-    rows, blocks = judgement.solution.network.rows, judgement.solution.network.blocks
-    return str(blocks[rows.block[r]].name(int(rows.row[r])))
-
-
 def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """One entry a scalar row, in the order of job.toml, then of rows."""
     solution, rel = judgement.solution, judgement.reliability
@@ -91,10 +85,10 @@ def _effect(judgement: Judgement, r: int) -> dict[str, Any] | None:
 def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """Suspects in order of blame."""
     rel = judgement.reliability
-    root = rel.root * np.sqrt(judgement.scale)
+    root, ids = rel.root * np.sqrt(judgement.scale), judgement.ids
     return [
         {
-            "observation": row_id(judgement, r),
+            "observation": ids[r],
             "estimated_blunder": number(rel.blunder[r]),
             "sd": number(root[r]),
             "statistic": number(judgement.statistic[r]),
@@ -108,7 +102,7 @@ def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
 
 def unchecked_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """Readings whose errors no test here can see, with the station that they carry alone."""
-    rows = judgement.solution.network.rows
+    rows, ids = judgement.solution.network.rows, judgement.ids
     out = []
     for r in np.flatnonzero(~judgement.reliability.tested & ~judgement.solution.design.held).tolist():
         kind = judgement.solution.network.blocks[rows.block[r]].kind.replace("_", " ")
@@ -119,7 +113,7 @@ def unchecked_entries(judgement: Judgement) -> list[dict[str, Any]]:
             else "straight into the orientation of its set"
         )
         why = f"nothing else here checks this {kind}: an error in it would go unseen, {into}"
-        out.append({"observation": row_id(judgement, r), "why": why})
+        out.append({"observation": ids[r], "why": why})
     return out
 
 

@@ -144,9 +144,7 @@ def _control(record: Entry) -> list[str]:
     if not entries:
         return []
     verdicts = [one["verdict"] for one in entries]
-    said = [
-        f"{verdicts.count(word)} {word}" for word in ("disagrees", "agrees", "cannot be judged") if word in verdicts
-    ]
+    said = [count(verdicts.count(word), word, many) for word, many in _CONTROL.items() if word in verdicts]
     bad = [one for one in entries if one["verdict"] == "disagrees"]
     lines = [f"Control compared ({count(len(entries), 'coordinate')}): {', '.join(said)}."]
     for one in bad[:2]:

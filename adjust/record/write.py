@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import Any
 
 from adjust.judge.assess import Judgement
 from adjust.record.build import build, trimmed
@@ -19,13 +20,12 @@ def write(judgement: Judgement, out: str | Path) -> Path:
     """
     folder = Path(out)
     check_out(folder)
-    write_record(record_files(judgement), folder)
+    write_record(record_files(build(judgement)), folder)
     return folder
 
 
-def record_files(judgement: Judgement) -> dict[str, bytes]:
-    """The files of the record by name."""
-    record = build(judgement)
+def record_files(record: dict[str, Any]) -> dict[str, bytes]:
+    """The files of a complete record by name."""
     return {
         "record.json": json_bytes(trimmed(record)),
         "stations.csv": stations_csv(record).encode(),

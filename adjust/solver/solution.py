@@ -9,8 +9,8 @@ from typing import Any
 import numpy as np
 
 from adjust.book.job import Job
-from adjust.caution import CAUTION_SHORT
 from adjust.network import Array, Bools, Network
+from adjust.notebook import cell, html_table
 from adjust.solver.cofactors import Cofactors
 from adjust.solver.datum import PartDatum
 from adjust.solver.design import Design
@@ -103,22 +103,9 @@ class Solution:
                 f"{t.degrees_of_freedom} degrees of freedom, variance factor {t.variance_factor}>")  # fmt: skip
 
     def _repr_html_(self) -> str:
-        from html import escape
-
-        rows = "".join(
-            "<tr><th scope=row>"
-            + escape(name)
-            + "</th>"
-            + "".join(f"<td>{_cell(x)}</td>" for x in (*xyz, *sd))
-            + "</tr>"
+        head = ("station", "east m", "north m", "height m", "sd east m", "sd north m", "sd height m")
+        rows = [
+            (name, *(cell(x) for x in (*xyz, *sd)))
             for name, xyz, sd in zip(self.names, self.positions, self.sd, strict=True)
-        )
-        head = "".join(
-            f"<th>{h}</th>" for h in ("station", "east m", "north m", "height m", "sd east", "sd north", "sd height")
-        )
-        return (f"<p>{escape(repr(self))}</p><table><thead><tr>{head}</tr></thead><tbody>{rows}</tbody></table>"
-                f"<p>{escape(CAUTION_SHORT)}</p>")  # fmt: skip
-
-
-def _cell(x: float) -> str:
-    return "" if np.isnan(x) else f"{x:.4f}"
+        ]
+        return html_table(repr(self), head, rows)

@@ -230,3 +230,9 @@ def test_rough_bearing_of_a_long_axis(angle: str, bearings: str, azimuth: float,
     record = plane_record()
     record["units"].update(angle=angle, bearings=bearings)
     assert Shown.of(record).rough_bearing(math.radians(azimuth)) == text
+
+
+def test_control_verdicts_agree_in_number() -> None:
+    record = plane_record()
+    record["control"] = [{**record["control"][0], "part": part} for part in ("east", "north")]
+    assert "Control compared (2 coordinates): 2 agree." in text_of(record)
