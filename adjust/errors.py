@@ -66,6 +66,10 @@ def one_line(text: str) -> str:
     return "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in text)
 
 
+MOST_NAMES = 20
+"""Names listed where none is near: every column of a table, but not every station of a network."""
+
+
 def nearest(name: str, known: Iterable[str]) -> str:
     """'did you mean X?' for the known name nearest to ``name`` (capitals aside), else the list of known names."""
     names = list(known)
@@ -73,4 +77,7 @@ def nearest(name: str, known: Iterable[str]) -> str:
     close = difflib.get_close_matches(name.casefold(), list(folded), n=1, cutoff=0.6)
     if close:
         return f"did you mean {folded[close[0]]}?"
-    return "known here: " + ", ".join(names) if names else "none is known here"
+    if not names:
+        return "none is known here"
+    more = f" and {len(names) - MOST_NAMES} more" if len(names) > MOST_NAMES else ""
+    return "known here: " + ", ".join(names[:MOST_NAMES]) + more

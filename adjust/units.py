@@ -79,7 +79,10 @@ def parse_length(text: str, unit: str, decimal: str = ".") -> float:
     number, own = _split_unit(text)
     if own and own not in LENGTHS:
         raise BadValue(f"{own} is no unit of length; use one of {', '.join(LENGTHS)}")
-    return parse_number(number, decimal) * LENGTHS[own or unit]
+    value = parse_number(number, decimal) * LENGTHS[own or unit]
+    if not math.isfinite(value):
+        raise BadValue("too large for a length")
+    return value
 
 
 def small_angle_unit(notation: str) -> str:
@@ -111,7 +114,7 @@ def _sexagesimal(sign: str, degrees: str, minutes: str, seconds: str) -> float:
     if int(minutes) >= 60:
         raise BadValue(f"{minutes} minutes: minutes stop at 59")
     if float(seconds) >= 60:
-        raise BadValue(f"{seconds} seconds: seconds stop below 60")
+        raise BadValue(f"{seconds.rstrip('.')} seconds: seconds stop below 60")
     # whole seconds are exact; one rounding in the sum, one in the scaling
     total = (int(degrees) * 3600 + int(minutes) * 60 + float(seconds)) * ANGLES["sec"]
     return -total if sign == "-" else total
@@ -173,6 +176,10 @@ def parse_angle(text: str, notation: str, decimal: str = ".") -> float:
 
 def parse_circle(text: str, notation: str, decimal: str = ".") -> float:
     """An angle from zero to below a full circle, in radians."""
+    if _QUADRANT.fullmatch(tidy(text)):
+        raise BadValue(
+            "a quadrant bearing; write one angle from 0 to a full circle, or use the column bearing of azimuths"
+        )
     value = parse_angle(text, notation, decimal)
     if value < 0:
         raise BadValue("below zero; write it from 0 up to a full circle")
@@ -193,6 +200,8 @@ def parse_bearing(text: str, notation: str, decimal: str = ".") -> float:
     if due and due[1].upper() in _CARDINAL:
         return _CARDINAL[due[1].upper()] * ANGLES["deg"]
     match = _QUADRANT.fullmatch(raw)
+    if not match and raw[:1].isdigit() and raw[-1:].isdigit():
+        raise BadValue("no quadrant letters; write it like N 45 30 15 E, or as an azimuth in the column azimuth")
     if not match:
         raise BadValue("not a quadrant bearing; write it like N 45 30 15 E or due N")
     value = parse_angle(match[2], notation, decimal)

@@ -101,14 +101,16 @@ def random_job(
     unit: str = "deg",
     spur: bool = False,
     settings: str = "",
+    origin: tuple[float, float] = (1000.0, 2000.0),
 ) -> Made:
     """Write a random job of ``kinds`` into ``folder`` (made if absent) and return it with its truth and readings.
 
     ``control`` is held, weighted or free; ``spur`` adds a last station that each kind of table reaches only just;
-    ``settings`` is more text for job.toml. Angles are written in ``unit``, deg or gon.
+    ``settings`` is more text for job.toml. Angles are written in ``unit``, deg or gon. ``origin`` is the east and north
+    of the south-west corner: large coordinates are rounded, which near zero they are less.
     """
     assert set(kinds) <= set(KINDS), f"kinds are {KINDS}"
-    maker = _Maker(rng, n_stations, kinds, spur)
+    maker = _Maker(rng, n_stations, kinds, spur, origin)
     maker.control(control)
     for kind in kinds:
         maker.observe(kind)
@@ -120,9 +122,10 @@ def random_job(
 class _Maker:
     """A job in the making: stations, lines of sight, and rows with their truth."""
 
-    def __init__(self, rng: np.random.Generator, n: int, kinds: Sequence[str], spur: bool) -> None:
+    def __init__(self, rng: np.random.Generator, n: int, kinds: Sequence[str], spur: bool,
+                 origin: tuple[float, float]) -> None:  # fmt: skip
         self.rng, self.kinds, self.spur = rng, kinds, spur
-        self.truth = _stations(rng, n)
+        self.truth = _stations(rng, n) + [*origin, 0.0]
         self.names = _names(rng, n)
         self.lines = [
             (i, j) for i in range(n) for j in range(i + 1, n) if math.dist(self.truth[i, :2], self.truth[j, :2]) < REACH
@@ -310,7 +313,7 @@ class _Maker:
 def _stations(rng: np.random.Generator, n: int) -> Array:
     side = math.ceil(math.sqrt(n))
     cells = np.array([(i % side, i // side) for i in range(n)], dtype=float)
-    plane = cells * SPACING + rng.uniform(-JITTER, JITTER, (n, 2)) + [1000.0, 2000.0]
+    plane = cells * SPACING + rng.uniform(-JITTER, JITTER, (n, 2))
     return np.column_stack([plane, rng.uniform(40.0, 60.0, n)])
 
 

@@ -40,7 +40,8 @@ class Observations:
         group = self._groups(cells, kind, names, use)
         for column in names:
             for i in use:
-                self.marks.number(column[i])
+                if column[i]:
+                    self.marks.number(column[i])
         if self.faults.all:
             return
         chosen = np.array(use, dtype=np.int64)
@@ -92,8 +93,12 @@ class Observations:
         kept = []
         for i in use:
             here = [column[i] for column in names]
-            if all(here) and len(set(here)) < len(here):
-                cells.fault(i, kind.stations[-1], here[-1], f"{' and '.join(kind.stations)} must be different stations")
+            again = next((k for k in range(1, len(here)) if here[k] in here[:k]), None)
+            if all(here) and again is not None:
+                *first, last = kind.stations
+                number = {2: "", 3: "three "}.get(len(here), "")
+                hint = f"{', '.join(first)} and {last} must be {number}different stations"
+                cells.fault(i, kind.stations[again], here[again], hint)
             else:
                 kept.append(i)
         return kept

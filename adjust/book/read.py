@@ -78,7 +78,9 @@ def _text(data: bytes, faults: Faults) -> str:
     try:
         return data.decode("utf-8-sig").replace("\r\n", "\n")
     except UnicodeDecodeError as error:
-        faults.add("job.toml", data[: error.start].count(b"\n") + 1, "", "", "not UTF-8; save it as UTF-8")
+        line = data[: error.start].count(b"\n") + 1
+        shown = data.split(b"\n")[line - 1].decode("latin-1").strip()
+        faults.add("job.toml", line, "", shown, "not UTF-8; save it as UTF-8")
         faults.stop()
         raise
 

@@ -30,11 +30,15 @@ def key_lines(text: str) -> dict[str, int]:
         header = _HEADER.match(statement)
         if header:
             name = _plain(header[1])
+            top, _, rest = name.partition(".")
             if statement.lstrip().startswith("[["):
                 counts[name] = counts.get(name, -1) + 1
                 name = f"{name}.{counts[name]}"
+            elif rest and top in counts:  # [book.units] belongs to the last [[book]]
+                name = f"{top}.{counts[top]}.{rest}"
             prefix = name + "."
             found.setdefault(name, start + 1)
+            found.setdefault(top, start + 1)
             continue
         key = _KEY.match(statement)
         if key:

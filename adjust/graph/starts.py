@@ -15,7 +15,7 @@ import numpy as np
 
 from adjust.graph.parts import HEIGHT, PLANE, find_parts, listed
 from adjust.kinds import KINDS
-from adjust.network import Array, Block, Network
+from adjust.network import HELD, Array, Block, Network
 
 
 @dataclass(frozen=True)
@@ -188,7 +188,7 @@ def find_start(network: Network) -> Start:
                 "give starting coordinates in stations.csv"
             )
     for i, (east, north) in plane.xy.items():
-        positions[i, :2] = east, north
+        positions[i, :2] = np.where(network.stations.role[i, :2] == HELD, positions[i, :2], (east, north))
     _heights(network, positions, asked[:, HEIGHT])
     positions[~asked[:, PLANE], :2] = np.nan
     positions[~asked[:, HEIGHT], 2] = np.nan

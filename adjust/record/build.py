@@ -162,6 +162,10 @@ def _datum_words(solution: Solution, part: PartResult) -> str:
 def _warnings(judgement: Judgement) -> list[str]:
     solution = judgement.solution
     out = list(solution.job.warnings)
+    idle = [name for name, xyz in zip(solution.names, solution.positions, strict=True) if np.isnan(xyz).all()]
+    if idle:
+        shown = ", ".join(idle[:8]) + (f" and {len(idle) - 8} more" if len(idle) > 8 else "")
+        out.append(f"no reading touches {shown}: not in this record.")
     for part, test in zip(solution.parts, judgement.overall, strict=False):
         if test.better_than_stated:
             out.append(f"{part.what}: the readings agree better than their stated standard deviations; are these too "

@@ -61,7 +61,8 @@ class Cofactors:
     def entries(self, i: Ints, j: Ints) -> Array:
         """Entries of Q at (i, j), arrays of one shape; zero where i or j is -1."""
         known = (i >= 0) & (j >= 0)
-        ri, rj = np.where(known, self.reduced[i], -1), np.where(known, self.reduced[j], -1)
+        reduced = np.append(self.reduced, -1)
+        ri, rj = reduced[i], reduced[j]
         out = np.zeros(i.shape)
         here = (ri >= 0) & (rj >= 0)
         if self.factor is not None and here.any():

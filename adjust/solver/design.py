@@ -149,7 +149,8 @@ class Design:
         for b, block in enumerate(self.network.blocks):
             here = rows.block == b
             i, p = rows.row[here], rows.part[here]
-            values, by_position, by_unknown = self._block(block, positions, state.groups)
+            with np.errstate(divide="ignore", invalid="ignore"):  # a sight of no length is reported by name later
+                values, by_position, by_unknown = self._block(block, positions, state.groups)
             computed[here] = values[i, p]
             coefficients[here, : by_position.shape[2]] = by_position[i, p]
             by_group[here] = by_unknown[i, p]

@@ -66,10 +66,8 @@ class Whitened:
 
 
 def gather(x: Array, columns: Ints) -> Array:
-    """Entries of x (u, ...) at columns, zero where -1."""
-    taken = x[columns]
-    taken[columns < 0] = 0.0
-    return taken
+    """Entries of x (u,) at columns, zero where -1."""
+    return np.append(x, 0.0)[columns]
 
 
 def solved(matrix: Array, rhs: Array) -> Array:

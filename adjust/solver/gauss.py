@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from adjust.errors import NotConverged
+from adjust.errors import NotConverged, Unsolvable
 from adjust.network import Array
 from adjust.solver.cofactors import Cofactors
 from adjust.solver.datum import Datum, null_space, state_vector
@@ -56,14 +56,29 @@ class GaussNewton:
         kept = np.setdiff1d(np.arange(count), datum.fixed)
         self.reduced[kept] = np.arange(len(kept))
         self.kept = kept
-        self.pattern = Pattern.of([np.where(b.columns >= 0, self.reduced[b.columns], -1) for b in batches], len(kept))
+        reduced = np.append(self.reduced, -1)  # so that -1, no unknown, stays -1
+        self.pattern = Pattern.of([reduced[b.columns] for b in batches], len(kept))
         self.held = np.flatnonzero(design.held)
 
     def at(self, state: State) -> Linear:
         """Linearise at a state."""
         numbers = self.design.linearise(state)
+        self._check_sights(numbers)
         whitened = [whiten(b, numbers) for b in self.batches]
         return Linear(state, numbers, whitened, float(sum((w.reduced_l**2).sum() for w in whitened)))
+
+    def _check_sights(self, numbers: Linearised) -> None:
+        """A sight of no length has no direction: the two stations are at one place."""
+        bad = np.flatnonzero(~np.isfinite(numbers.coefficients).all(axis=1) | ~np.isfinite(numbers.misclosure))
+        if not len(bad):
+            return
+        rows, network = self.design.network.rows, self.design.network
+        block = network.blocks[rows.block[bad[0]]]
+        i = int(rows.row[bad[0]])
+        ends = " and ".join(network.stations.names[s] for s in block.stations[i])
+        kind = block.kind.replace("_", " ")
+        raise Unsolvable([f"{block.name(i)}: {ends} stand at one place, so the {kind} between them has no meaning; "
+                          "correct the coordinates or the names"])  # fmt: skip
 
     def conditions(self, here: Linear) -> Array:
         """Rows K (h, u) of the readings held without error."""

@@ -17,8 +17,8 @@ CIRCLE = Case("circular_95_percent_radius")
 # exact algebra, not outside evidence
 EXACT = ("exact_ellipse_from_two_directions", "exact_circle_from_three_distances")
 RATIOS = (0.0, 1e-4, 3e-4, 1e-3, 3e-3, 0.01, 0.03, 0.1, 0.25, 0.5, 0.75, 1.0)
-LARGEST_ERROR = {None: 1e-9, 1: 1e-4, 2: 1e-4, 5: 1e-4, 20: 1e-4}
-"""Allowed error of the radius over itself for each number of degrees of freedom (None: scale given)."""
+LARGEST_ERROR = 1e-8
+"""Allowed error of the radius over itself; largest measured 4.3e-9, one degree of freedom at an axis ratio of 1e-4."""
 
 
 def radius(ratio: float, confidence: float = 0.95, r: int | None = None) -> float:
@@ -77,13 +77,15 @@ def inside(c: float, ratio: float, r: int | None) -> float:
     # x = c sin u takes the root at the rim out of the integrand; a flat ellipse falls off within a few of its ratios
     rim = math.pi / 2 - min(0.7, 4 * ratio)
     pieces = [
-        integrate.quad(lambda u: density(c * math.sin(u)) * c * math.cos(u), *ends, epsabs=1e-13, epsrel=1e-12, limit=500)
+        integrate.quad(
+            lambda u: density(c * math.sin(u)) * c * math.cos(u), *ends, epsabs=1e-13, epsrel=1e-12, limit=500
+        )
         for ends in ((0, rim), (rim, math.pi / 2))
     ]
     return 2 * float(sum(found for found, _ in pieces))
 
 
-@pytest.mark.parametrize("r", LARGEST_ERROR, ids=lambda r: "given" if r is None else f"r={r}")
+@pytest.mark.parametrize("r", [None, 1, 2, 5, 20], ids=lambda r: "given" if r is None else f"r={r}")
 @pytest.mark.parametrize("confidence", [0.68, 0.95, 0.99])
 def test_the_largest_error_of_the_circle_against_adaptive_quadrature(r: int | None, confidence: float) -> None:
     """Axis ratios 0 to 1, scale given and from residuals. Cross-check, not outside evidence."""
@@ -93,7 +95,7 @@ def test_the_largest_error_of_the_circle_against_adaptive_quadrature(r: int | No
         wanted = optimize.brentq(lambda c, b=ratio: inside(c, b, r) - confidence, 0.5 * got, 2 * got, xtol=1e-13 * got)
         errors.append(abs(got / wanted - 1))
     print(f"r {r}, confidence {confidence}: largest error {max(errors):.2g} at ratio {RATIOS[int(np.argmax(errors))]}")
-    assert max(errors) < LARGEST_ERROR[r]
+    assert max(errors) < LARGEST_ERROR
 
 
 def test_the_circle_is_not_the_one_of_a_given_scale_when_the_scale_is_from_residuals() -> None:

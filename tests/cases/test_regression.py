@@ -41,12 +41,30 @@ class Digits:
     """None: the fit is exact and the standard deviations are zero."""
 
 
+# Measured digits behind each line; asked for is up to one less, since the last bits differ between machines.
 # fmt: off
 ORTHOGONAL = {
-    "longley": Digits(0, 0),
+    "longley": Digits(10, 11.5),   # 10.9, 12.3
+    "filip": Digits(7, 6.5),       #  8.1,  7.3
+    "wampler1": Digits(8.2),       #  9.2
+    "wampler2": Digits(12.5),      # 13.7
+    "wampler3": Digits(8.2, 12.5), #  9.2, 13.5
+    "wampler4": Digits(7, 12.5),   #  7.8, 13.6
 }
-ENGINE_FIRST = {}
-ENGINE = {}
+ENGINE_FIRST = {
+    "longley": Digits(6.2, 7.5),   #  7.2,  8.3
+    "wampler1": Digits(5),         #  5.9
+    "wampler2": Digits(8.4),       #  9.3
+    "wampler3": Digits(5, 9.5),    #  5.9, 10.4
+    "wampler4": Digits(5, 9.5),    #  5.9, 10.4
+}
+ENGINE = {
+    "longley": Digits(10, 7.5),    # 11.0,  8.3
+    "wampler1": Digits(9.2),       # 10.3
+    "wampler2": Digits(12.5),      # 13.1
+    "wampler3": Digits(9.2, 9.5),  # 11.0, 10.4
+    "wampler4": Digits(7, 9.5),    #  8.1, 10.4
+}
 # fmt: on
 
 
@@ -83,14 +101,14 @@ def orthogonal(name: str) -> Fit:
         q, r = np.linalg.qr(a * scale)
         x = solve_triangular(r, q.T @ l) * scale
         inverse = solve_triangular(r, np.eye(len(r)))
-    return fit(a, l, x, np.sqrt((inverse**2).sum(axis=1)) * scale)
+        v = q @ (q.T @ l) - l
+    return fit(x, v, np.sqrt((inverse**2).sum(axis=1)) * scale)
 
 
-def fit(a: Array, l: Array, x: Array, roots: Array) -> Fit:
-    """A fit from coefficients and the roots of their cofactors."""
-    v = a @ x - l
+def fit(x: Array, v: Array, roots: Array) -> Fit:
+    """A fit from coefficients, residuals and the roots of the cofactors."""
     square_sum = float(v @ v)
-    return Fit(x, roots * np.sqrt(square_sum / (len(l) - len(x))), square_sum)
+    return Fit(x, roots * np.sqrt(square_sum / (len(v) - len(x))), square_sum)
 
 
 def elements(a: Array, misclosure: Array) -> list[Whitened]:
@@ -114,7 +132,7 @@ def engine(name: str, steps: int) -> Fit:
         for _ in range(steps):
             x = x + factor.solve(pattern.right_side(elements(a, l - a @ x)))
         diagonal = np.arange(len(x))
-        return fit(a, l, x, np.sqrt(factor.entries(diagonal, diagonal)))
+        return fit(x, a @ x - l, np.sqrt(factor.entries(diagonal, diagonal)))
 
 
 def digits(got: Array, wanted: Array) -> float:
@@ -145,7 +163,8 @@ def test_one_step_of_the_engine_reaches_its_digits(name: str) -> None:
 
 @pytest.mark.parametrize("name", SOLVABLE)
 def test_three_steps_of_the_engine_reach_the_digits_of_orthogonal_factorisation(name: str) -> None:
-    """Gauss-Newton of the program never stops before its second step."""
+    """Coefficients only: standard deviations come from the normal equations and keep their digits."""
+    assert ENGINE[name].coefficients >= ORTHOGONAL[name].coefficients
     reaches(engine(name, 3), name, ENGINE[name])
 
 
@@ -161,12 +180,11 @@ def test_the_engine_refuses_filip_in_place_of_a_poor_answer() -> None:
     assert np.linalg.cond(scaled) ** -2 < PIVOT_LEAST
 
 
-@pytest.mark.parametrize("solver", ["orthogonal", "engine"])
-@pytest.mark.parametrize("name", NAMES)
+@pytest.mark.parametrize(
+    ("name", "solver"), [(name, "orthogonal") for name in NAMES] + [(name, "engine") for name in SOLVABLE]
+)
 def test_residuals_have_the_certified_size(name: str, solver: str) -> None:
     """Residual sum of squares; Longley: the residual standard deviation, from memory."""
-    if (name, solver) == ("filip", "engine"):
-        pytest.skip("the engine refuses Filip, see above")
     found = orthogonal(name) if solver == "orthogonal" else engine(name, 3)
     data = Case(f"nist_{name}").data
     if name in EXACT_FIT:

@@ -60,7 +60,7 @@ class Linear:
 def linear(seed: int, kinds: tuple[str, ...], control: str, correlated: bool, folder: Path) -> Linear:
     rng = np.random.default_rng([7, seed])
     print(f"seed [7, {seed}]")
-    made = random_job(rng, folder, 6, kinds, control, correlated, spur=True)
+    made = random_job(rng, folder, 6, kinds, control, correlated, spur=True, origin=(0.0, 0.0))
     solution = solved(made)
     dense, xyz = Dense.of(made), positions(made, solution)
     groups = np.array([solution.groups[g] for g in group_order(made, adjust.solve(adjust.read(folder)))])
@@ -82,9 +82,9 @@ CASES = [
 ]
 
 
-def matches(got: Array, wanted: Array) -> None:
-    """Nine digits of the larger of the number and the root mean square of its neighbours."""
-    size = np.maximum(np.abs(wanted), np.sqrt(np.mean(wanted**2)))
+def matches(got: Array, wanted: Array, size: Array) -> None:
+    """Nine digits of the larger of the number and its ``size``."""
+    size = np.maximum(np.abs(wanted), size)
     close(got / size, wanted / size, atol=1e-9)
 
 
@@ -95,11 +95,11 @@ def test_a_reading_left_out_gives_statistic_and_blunder(
     p = linear(seed, kinds, control, correlated, tmp_path)
     figures, tested = p.judgement.reliability, p.judgement.reliability.tested
     error, sd = (by_shift if correlated else by_refit)(p, np.flatnonzero(tested))
-    matches(figures.blunder[tested], error)
-    matches(figures.root[tested], sd)
-    matches(p.judgement.statistic[tested], -error / sd)
+    matches(figures.blunder[tested], error, sd)
+    matches(figures.root[tested], sd, sd)
+    matches(p.judgement.statistic[tested], -error / sd, np.ones(len(sd)))
     shift = norm.isf(0.001 / 2) + norm.ppf(0.80)
-    matches(p.judgement.smallest_detectable[tested], shift * sd)
+    matches(p.judgement.smallest_detectable[tested], shift * sd, shift * sd)
 
 
 def by_refit(p: Linear, rows: Array) -> tuple[Array, Array]:
@@ -139,8 +139,8 @@ def test_external_effect_is_the_largest_movement_of_a_coordinate(
         step = p.fit(p.J, l, p.C, p.D)[0] - still
         moved[k] = step[p.dense.coordinate[number[j.effect_station[i]], j.effect_part[i]]]
         largest[k] = np.abs(step[: p.dense.first_group]).max()
-    matches(j.effect[rows], moved)
-    matches(np.abs(j.effect[rows]), largest)
+    matches(j.effect[rows], moved, largest)
+    matches(np.abs(j.effect[rows]), largest, largest)
 
 
 @pytest.mark.parametrize(("seed", "kinds", "control", "correlated"), CASES)
