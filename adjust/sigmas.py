@@ -19,7 +19,7 @@ Array = NDArray[np.float64]
 _TERM = re.compile(r"([-+]?[\d.,]+(?:[eE][-+]?\d+)?)\s*([A-Za-z-]+)\s*(?:[*·x]\s*sqrt\(\s*([A-Za-z-]+)\s*\))?")
 
 
-_EXAMPLES = {
+EXAMPLES = {
     "length": '"1.5 mm + 2 ppm" (sum) or ["1.5 mm", "2 ppm"] (root of the sum of squares)',
     "angle": '"2 sec"',
     "rise": '"1.2 mm*sqrt(km)" or "0.4 mm*sqrt(setup)"',
@@ -72,7 +72,7 @@ def parse_precision(value: object, dimension: str, decimal: str = ".") -> Precis
     elif isinstance(value, list) and value and all(isinstance(v, str) for v in value):
         texts, linear = list(value), False
     else:
-        raise BadValue(f"not an error model; write it like {_EXAMPLES[dimension]}")
+        raise BadValue(f"not an error model; write it like {EXAMPLES[dimension]}")
     terms = tuple(_term(text.strip(), dimension, decimal) for text in texts)
     if not any(term.size for term in terms):
         raise BadValue("an error model of zero; give the instrument's standard deviation")
@@ -82,7 +82,7 @@ def parse_precision(value: object, dimension: str, decimal: str = ".") -> Precis
 def _term(text: str, dimension: str, decimal: str) -> Term:
     match = _TERM.fullmatch(text)
     if not match:
-        raise BadValue(f'"{text}" is no number with a unit; write it like {_EXAMPLES[dimension]}')
+        raise BadValue(f'"{text}" is no number with a unit; write it like {EXAMPLES[dimension]}')
     if "," in match[1]:  # the decimal mark of [units] is that of the tables
         raise BadValue(f'"{text}": a comma; job.toml has decimal points, as in "{text.replace(",", ".")}"')
     size, unit, root = parse_number(match[1], decimal), match[2], match[3]

@@ -60,6 +60,8 @@ def parse_number(text: str, decimal: str = ".") -> float:
         if "." in raw or raw.count(",") > 1:
             raise BadValue("a separator of thousands; write the number without it")
         raise BadValue(f'a decimal comma; write {raw.replace(",", ".")} or set [units] decimal = ","')
+    if re.search(r"\d[ '_]\d{3}", raw):
+        raise BadValue("a separator of thousands; write the number without it")
     if not _NUMBER.fullmatch(raw):
         raise BadValue("not a number; write digits with at most one decimal mark")
     value = float(raw)
@@ -99,7 +101,7 @@ def parse_sd(text: str, dimension: str, unit: str, decimal: str = ".") -> float:
     base = unit if dimension == "length" else small_angle_unit(unit)
     value = parse_number(number, decimal) * table[own or base]
     if not value > 0:
-        raise BadValue("a standard deviation must be above zero; leave the cell empty to use the instrument's")
+        raise BadValue("a standard deviation must be above zero; leave the cell empty if it is not known")
     return value
 
 

@@ -14,7 +14,7 @@ from adjust.errors import nearest
 from adjust.kinds import TABLES
 from adjust.kinds.base import Kind
 from adjust.network import Array, Block, Bools, Group, Ints
-from adjust.sigmas import Precision
+from adjust.sigmas import EXAMPLES, Precision
 
 
 class Observations:
@@ -106,7 +106,7 @@ class Observations:
     def _values(self, cells: Cells, kind: Kind, use: list[int]) -> Array:
         """The value of each row from the one of the kind's value columns that is filled."""
         if not any(cells.has(column) for column in kind.value):
-            cells.header_fault(kind.value[0], "", f"a missing column: {' or '.join(kind.value)}")
+            cells.header_fault(kind.value[0], "", f"a missing column: {' or '.join(kind.value)} holds the reading")
             return np.full(len(cells), np.nan)
         texts = [cells.text(column) for column in kind.value]
         for i in use:
@@ -158,9 +158,7 @@ class Observations:
         if name and name not in instruments:
             self._unknown_instrument(cells, name, rows[0])
         elif name and name not in fitting:
-            cells.fault(
-                rows[0], "sd", "", f"no standard deviation: add [instruments.{name}] {key} = ... or a column sd"
-            )
+            self._no_figure(cells, kind, name, rows[0])
         elif name:
             return name, fitting[name]
         elif len(fitting) == 1:
@@ -171,8 +169,16 @@ class Observations:
             )
             cells.fault(rows[0], "instrument", "", hint)
         else:
-            cells.fault(rows[0], "sd", "", f"no standard deviation: add [instruments.NAME] {key} = ... or a column sd")
+            self._no_figure(cells, kind, "NAME", rows[0])
         return None
+
+    def _no_figure(self, cells: Cells, kind: Kind, name: str, i: int) -> None:
+        """Neither the row nor an instrument tells the standard deviation."""
+        hint = "no standard deviation: add a column sd"
+        if kind.instrument:
+            figure = EXAMPLES[kind.instrument.dimension].partition(" or ")[0].removesuffix(" (sum)")
+            hint += f", or for example {kind.instrument.name} = {figure} under [instruments.{name}] in job.toml"
+        cells.fault(i, "sd", "", hint)
 
     def _unknown_instrument(self, cells: Cells, name: str, i: int) -> None:
         """The name stands in the row, or else in the table's [[book]] block."""

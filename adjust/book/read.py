@@ -65,11 +65,13 @@ def _bytes(path: Path, file: str, line: int, faults: Faults) -> bytes | None:
         return path.read_bytes()
     except OSError as error:
         where = ("job.toml", line) if line else (file, 0)
-        hint = (
-            "no such table in the job folder"
-            if isinstance(error, FileNotFoundError)
-            else f"cannot be read: {error.strerror}"
-        )
+        if isinstance(error, FileNotFoundError):
+            tables = sorted(other.name for other in path.parent.glob("*.csv"))
+            hint = f"no such table in the job folder; {nearest(path.name, tables)}"
+        elif isinstance(error, IsADirectoryError):
+            hint = "a folder; name the table itself"
+        else:
+            hint = f"cannot be read: {error.strerror}"
         faults.add(*where, "book.file" if line else "", file, hint)
         return None
 

@@ -150,6 +150,20 @@ class _Reader:
             return None
 
 
+_TOML_HINTS = {
+    "invalid value": 'no value; write texts in quotes, as in length = "m"',
+    "cannot overwrite a value": "the key stands twice; keep one",
+    "cannot declare": "the section stands twice; join the two",
+    "unterminated string": "a text is opened with a quote and not closed; close it",
+    "invalid date": "no day of the calendar; write it like 2026-05-14",
+}
+"""What to do about the complaints of the standard TOML reader, by their first words."""
+
+
+def _toml_hint(message: str) -> str:
+    return next((hint for words, hint in _TOML_HINTS.items() if message.startswith(words)), message)
+
+
 def read_settings(text: str, faults: Faults) -> Settings | None:
     """Settings from the text of job.toml; None where it is no TOML (the fault is noted)."""
     try:
@@ -158,7 +172,7 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         message = str(error)
         line = int(message.rpartition("line ")[2].partition(",")[0]) if "line " in message else max(1, text.count("\n"))
         shown = text.split("\n")[line - 1].strip() if line <= text.count("\n") + 1 else ""
-        faults.add("job.toml", line, "", shown, f"not TOML: {message.partition(' (at')[0].lower()}")
+        faults.add("job.toml", line, "", shown, f"not TOML: {_toml_hint(message.partition(' (at')[0].lower())}")
         return None
     r = _Reader(text, faults)
     top = r.section("", job, schema.JOB, ignore=("units", "datum", "instruments", "book", "tests"))
@@ -204,7 +218,7 @@ def _books(r: _Reader, given: object, units: Units) -> tuple[Table, ...] | None:
     if given is None:
         return None
     if not isinstance(given, list) or not all(isinstance(b, dict) for b in given):
-        r.fault("book", given, "write one [[book]] block a table")
+        r.fault("book", "[book]" if isinstance(given, dict) else given, "write one [[book]] block a table")
         return ()
     tables = [_book(r, f"book.{i}", block, units) for i, block in enumerate(given)]
     return tuple(t for t in tables if t)

@@ -170,7 +170,8 @@ def assess(solution: Solution) -> Judgement:
         degrees = None if given else r
         scale = 1.0 if given else (solution.total.variance_factor or np.nan)
         n = int(figures.tested.sum())
-        job = critical.job_level(tests.significance, n)
+        level = critical.job_level(tests.significance, n)
+        job = critical.normal_critical(level) if given else critical.tau_critical(level, r)
         station, part, size = largest_effect(solution)
         shift = (
             critical.noncentrality(tests.outlier, tests.power) if given
@@ -184,11 +185,11 @@ def assess(solution: Solution) -> Judgement:
             scale=scale,
             degrees=degrees,
             critical=critical.normal_critical(tests.outlier) if given else critical.tau_critical(tests.outlier, r),
-            critical_job=critical.normal_critical(job) if given else critical.tau_critical(job, r),
+            critical_job=job,
             shift=shift,
             effect_station=station,
             effect_part=part,
             effect=size * smallest,
             lines=find_lines(solution, scale),
-            control=compare_control(solution, figures, scale, degrees, tests),
+            control=compare_control(solution, figures, scale, degrees, tests, job),
         )

@@ -35,10 +35,10 @@ class Mark:
 
 
 def compare_control(
-    solution: Solution, figures: Reliability, scale: float, degrees: int | None, tests: Tests
+    solution: Solution, figures: Reliability, scale: float, degrees: int | None, tests: Tests, limit: float | None
 ) -> tuple[Mark, ...]:
-    """Verdicts on check marks, then on weighted marks."""
-    return (*_check_marks(solution, scale, degrees, tests), *_weighted_marks(solution, figures, scale, tests))
+    """Verdicts on check marks, then on weighted marks; ``limit`` is the critical value of one reading for the job."""
+    return (*_check_marks(solution, scale, degrees, tests), *_weighted_marks(solution, figures, scale, limit))
 
 
 def _check_marks(solution: Solution, scale: float, degrees: int | None, tests: Tests) -> list[Mark]:
@@ -57,7 +57,7 @@ def _check_marks(solution: Solution, scale: float, degrees: int | None, tests: T
     return marks
 
 
-def _weighted_marks(solution: Solution, figures: Reliability, scale: float, tests: Tests) -> list[Mark]:
+def _weighted_marks(solution: Solution, figures: Reliability, scale: float, limit: float | None) -> list[Mark]:
     rows, network = solution.network.rows, solution.network
     marks = []
     for r in range(len(rows)):
@@ -65,15 +65,17 @@ def _weighted_marks(solution: Solution, figures: Reliability, scale: float, test
         if not KINDS[block.kind].from_control:
             continue
         station, part = network.stations.names[block.stations[rows.row[r], 0]], PARTS[rows.part[r]]
-        limit = critical.normal_critical(tests.outlier)
         if not figures.tested[r]:
             marks.append(_mark(station, part, float(solution.residuals[r]), None, None))
             continue
-        marks.append(_mark(station, part, float(-figures.blunder[r]), float(figures.root[r] * math.sqrt(scale)), limit))
+        misfit, sd = float(-figures.blunder[r]), float(figures.root[r] * math.sqrt(scale))
+        marks.append(_mark(station, part, misfit, sd, limit, "estimate of all others"))
     return marks
 
 
-def _mark(station: str, part: str, misfit: float, sd: float | None, limit: float | None) -> Mark:
+def _mark(
+    station: str, part: str, misfit: float, sd: float | None, limit: float | None, what: str = "adjusted"
+) -> Mark:
     """Verdict and sentence; without a limit or a standard deviation the mark cannot be judged."""
     mm = misfit * 1000
     if limit is None or not sd or math.isnan(sd):
@@ -82,7 +84,5 @@ def _mark(station: str, part: str, misfit: float, sd: float | None, limit: float
         )
     times = abs(misfit) / sd
     verdict = DISAGREES if times > limit else AGREES
-    sentence = (
-        f"{station} {part}: {verdict}, adjusted minus known {mm:+.1f} mm, {times:.1f} times its standard deviation"
-    )
+    sentence = f"{station} {part}: {verdict}, {what} minus known {mm:+.1f} mm, {times:.1f} times its standard deviation"
     return Mark(station, part, misfit, sd, verdict, sentence)

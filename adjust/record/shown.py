@@ -112,8 +112,9 @@ class Shown:
         return radians / ANGLES[self.small_angle]
 
     def coordinate(self, metres: float, sd: float | None) -> str:
-        """A coordinate in the job's unit with the places its standard deviation (metres) allows."""
-        return self.mark(fixed(self.in_length(metres), places_for(None if sd is None else self.in_length(sd))))
+        """A coordinate in the job's unit with the places its standard deviation (metres) allows, four at the most."""
+        places = min(4, places_for(None if sd is None else self.in_length(sd)))
+        return self.mark(fixed(self.in_length(metres), places))
 
     def small_sd(self, metres: float | None) -> str:
         """A standard deviation in mm or feet with two significant figures; '' for none."""

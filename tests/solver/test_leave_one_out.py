@@ -139,8 +139,9 @@ def test_external_effect_is_the_largest_movement_of_a_coordinate(
         step = p.fit(p.J, l, p.C, p.D)[0] - still
         moved[k] = step[p.dense.coordinate[number[j.effect_station[i]], j.effect_part[i]]]
         largest[k] = np.abs(step[: p.dense.first_group]).max()
-    matches(j.effect[rows], moved, largest)
-    matches(np.abs(j.effect[rows]), largest, largest)
+    size = np.full(len(rows), np.median(largest))  # a line between held marks moves nothing
+    matches(j.effect[rows], moved, size)
+    matches(np.abs(j.effect[rows]), largest, size)
 
 
 @pytest.mark.parametrize(("seed", "kinds", "control", "correlated"), CASES)
