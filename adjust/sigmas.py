@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from adjust.units import ANGLES, LENGTHS, BadValue, parse_number
+from adjust.units import ANGLES, LENGTHS, SMALLEST_SD, BadValue, parse_number
 
 Array = NDArray[np.float64]
 
@@ -74,7 +74,7 @@ def parse_precision(value: object, dimension: str, decimal: str = ".") -> Precis
     else:
         raise BadValue(f"not an error model; write it like {EXAMPLES[dimension]}")
     terms = tuple(_term(text.strip(), dimension, decimal) for text in texts)
-    if not any(term.size for term in terms):
+    if not any(term.size >= SMALLEST_SD for term in terms):
         raise BadValue("an error model of zero; give the instrument's standard deviation")
     return Precision(terms, linear, value if isinstance(value, str) else " (+) ".join(texts))
 

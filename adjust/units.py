@@ -29,6 +29,12 @@ SMALL_LENGTH = {"m": ("mm", 1000.0), "ft": ("ft", 1 / 0.3048), "us-ft": ("us-ft"
 """Unit in which small lengths (residuals, standard deviations) are shown, and its number per metre."""
 
 
+LONGEST_M = 1e9
+"""No length or coordinate of a survey on the Earth reaches a million kilometres; beyond it stands a slip."""
+SMALLEST_SD = 1e-12
+"""In metres or radians: a picometre, far below any instrument; less would be no reading but a condition."""
+
+
 class BadValue(ValueError):
     """A cell cannot be read; the text says what to do."""
 
@@ -82,7 +88,7 @@ def parse_length(text: str, unit: str, decimal: str = ".") -> float:
     if own and own not in LENGTHS:
         raise BadValue(f"{own} is no unit of length; use one of {', '.join(LENGTHS)}")
     value = parse_number(number, decimal) * LENGTHS[own or unit]
-    if not math.isfinite(value):
+    if not abs(value) < LONGEST_M:
         raise BadValue("too large for a length")
     return value
 
@@ -102,6 +108,8 @@ def parse_sd(text: str, dimension: str, unit: str, decimal: str = ".") -> float:
     value = parse_number(number, decimal) * table[own or base]
     if not value > 0:
         raise BadValue("a standard deviation must be above zero; leave the cell empty if it is not known")
+    if not SMALLEST_SD <= value < LONGEST_M:
+        raise BadValue("too small or too large for a standard deviation")
     return value
 
 
@@ -130,6 +138,8 @@ def _parse_dms(text: str, decimal: str) -> float:
     if match:
         return _sexagesimal(match[1], match[2], match[3] or "0", match[4] or "0")
     if _NUMBER.fullmatch(raw):
+        if not abs(float(raw)) < 360:
+            raise BadValue("a full circle or more; write it like 123 45 56.7, below a full circle")
         raise BadValue(
             f'a lone decimal: {_two_readings(raw)}? Write three parts or set [units] angle = "deg" or "packed"'
         )

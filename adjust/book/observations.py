@@ -15,6 +15,7 @@ from adjust.kinds import TABLES
 from adjust.kinds.base import Kind
 from adjust.network import Array, Block, Bools, Group, Ints
 from adjust.sigmas import EXAMPLES, Precision
+from adjust.units import LONGEST_M, SMALLEST_SD
 
 
 class Observations:
@@ -147,6 +148,12 @@ class Observations:
                 for i in rows:
                     labels[i] = label
         sd *= cells.table.sd_factor
+        for i in use:
+            if not held[i] and (sd[i] < SMALLEST_SD or sd[i] >= LONGEST_M):
+                hint = (
+                    f"the standard deviation comes to {sd[i]:g} m or rad; look at the instrument, count and sd_factor"
+                )
+                cells.fault(i, "sd", blank[i], hint)
         sd[held] = 0.0
         return sd, labels
 
