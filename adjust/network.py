@@ -79,6 +79,12 @@ class Block:
     """Given identifications, '' where none; empty when no row has one."""
     precision: tuple[str, ...] = ()
     """(m) label of the source of each row's standard deviation: an instrument's name or 'sd'."""
+    surface: str = ""
+    """Where lengths are reduced to: '' the plane itself, ground, ground-from, slope."""
+    above: Array | None = None
+    """(m, 2) heights of instrument and target above their marks, metres; None: all zero."""
+    constant: Array | None = None
+    """(m,) value of the group unknown for rows without one (a fixed refraction coefficient); None: zero."""
 
     def __len__(self) -> int:
         return len(self.line)

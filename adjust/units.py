@@ -234,16 +234,21 @@ def _carry(value: float, step: int, places: int) -> tuple[int, int, float]:
 
 def format_angle(radians: float, notation: str, places: int = 1) -> str:
     """The angle in the job's notation; ``places`` are decimals of a second (or of 0.1 mgon, 0.001 mil)."""
-    sign = "-" if radians < 0 else ""
-    size = abs(radians)
+    text = _unsigned(abs(radians), notation, places)
+    return f"-{text}" if radians < 0 and text.strip("0 .") else text
+
+
+def _unsigned(size: float, notation: str, places: int) -> str:
+    """The angle without its sign; what rounds to a full circle is printed as zero."""
     if notation in ("dms", "packed"):
         d, m, s = _carry(size / ANGLES["deg"], 360, places)
         width = places + 3 if places else 2
         if notation == "dms":
-            return f"{sign}{d} {m:02d} {s:0{width}.{places}f}"
-        return f"{sign}{d}.{m:02d}{f'{s:0{width}.{places}f}'.replace('.', '')}"
-    extra = {"deg": 4, "gon": 4, "mil": 3}[notation]
-    return f"{sign}{size / ANGLES[notation]:.{places + extra}f}"
+            return f"{d} {m:02d} {s:0{width}.{places}f}"
+        return f"{d}.{m:02d}{f'{s:0{width}.{places}f}'.replace('.', '')}"
+    digits = places + {"deg": 4, "gon": 4, "mil": 3}[notation]
+    value = round(size / ANGLES[notation], digits)
+    return f"{value % round(TURN / ANGLES[notation]):.{digits}f}"
 
 
 def format_bearing(radians: float, notation: str, places: int = 1) -> str:

@@ -27,7 +27,9 @@ from adjust.solver.solution import Solution
 
 UNCHECKED_BELOW = 1e-6
 """Checked share below which a reading is unchecked: a blunder of 4000 standard deviations would be needed to see it.
-Rounding leaves up to about 1e-9 in place of zero."""
+In place of zero rounding leaves up to 2.1e-14 in 498 random networks of 4 to 60 stations, where the next larger share of
+161,076 readings was 3.9e-3; in open traverses of 60, 300 and 1,000 stations 1.7e-12, 1.4e-10 and 3.2e-9
+(tests/solver/pivot_study.py)."""
 EFFECT_CHUNK = 256
 
 
