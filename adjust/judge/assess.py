@@ -134,7 +134,7 @@ class Judgement:
             "kind": [blocks[b].kind for b in rows.block.tolist()],
             "observed": self.solution.design.observed,
             "residual": self.solution.residuals,
-            "sd": self.solution.design.sd,
+            "sd": self.solution.sd_readings,
             "redundancy": self.reliability.redundancy,
             "statistic": self.statistic,
             "smallest_detectable": self.smallest_detectable,

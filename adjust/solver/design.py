@@ -16,6 +16,7 @@ from adjust.frames import LocalPlane
 from adjust.graph.parts import HEIGHT, PLANE, Part, row_groups
 from adjust.kinds import KINDS
 from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Ints, Network
+from adjust.solver.centring import Vectors
 from adjust.units import TURN
 
 _NODE = np.array([PLANE, PLANE, HEIGHT])
@@ -62,6 +63,8 @@ class Linearised:
     computed: Array
     local: Ints
     """(R,) local group of each row, -1 for none."""
+    by_vector: Array
+    """(R, v, 3) partials by the centring vectors; v = 0 where the network has none."""
 
 
 @dataclass(frozen=True)
@@ -112,6 +115,11 @@ class Design:
         return out
 
     @cached_property
+    def vectors(self) -> Vectors:
+        """Centring vectors of the rows."""
+        return Vectors.of(self.network)
+
+    @cached_property
     def columns(self) -> Ints:
         """Unknown of every slot (R, e), -1 where there is none."""
         rows, found = self.network.rows, []
@@ -145,6 +153,7 @@ class Design:
         coefficients = np.zeros(self.columns.shape)
         by_group = np.zeros(len(rows))
         computed = np.empty(len(rows))
+        by_vector = np.zeros((*self.vectors.of_row.shape, 3) if self.vectors.any else (len(rows), 0, 3))
         positions = np.nan_to_num(state.positions)
         for b, block in enumerate(self.network.blocks):
             here = rows.block == b
@@ -154,11 +163,15 @@ class Design:
             computed[here] = values[i, p]
             coefficients[here, : by_position.shape[2]] = by_position[i, p]
             by_group[here] = by_unknown[i, p]
+            if self.vectors.any:
+                ends = by_position[i, p].reshape(len(i), -1, 2, 3)  # (rows, sights, ends, components)
+                by_vector[here, 0] = ends[:, :, 0].sum(axis=1)
+                by_vector[here, 1 : 1 + ends.shape[1]] = ends[:, :, 1]
         coefficients[:, -1] = by_group
         coefficients[self.columns < 0] = 0.0
         l = self.observed - computed
         l[self.wraps] -= TURN * np.round(l[self.wraps] / TURN)
-        return Linearised(coefficients, np.where(self.local >= 0, by_group, 0.0), l, computed, self.local)
+        return Linearised(coefficients, np.where(self.local >= 0, by_group, 0.0), l, computed, self.local, by_vector)
 
     def _block(self, block: Block, positions: Array, groups: Array) -> tuple[Array, Array, Array]:
         kind = KINDS[block.kind]

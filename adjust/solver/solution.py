@@ -81,6 +81,15 @@ class Solution:
         out[missing[:, :, None] | missing[:, None, :]] = np.nan
         return out
 
+    @cached_property
+    def sd_readings(self) -> Array:
+        """(R,) stated standard deviations of the readings with their share of centring; 0 for conditions."""
+        out = np.zeros(len(self.residuals))
+        for w in self.whitened:
+            out[w.batch.rows] = np.sqrt((w.factor**2).sum(axis=2))
+        out[self.design.held] = 0.0
+        return out
+
     @property
     def sd(self) -> Array:
         """(n, 3) standard deviations of the coordinates, metres."""
