@@ -399,6 +399,7 @@ def angle_text(radians: float, notation: str) -> str:
 
 def renamed(made: Made, new: dict[str, str]) -> list[Table]:
     """The tables of a job with other station names."""
+
     def change(row: Row) -> Row:
         return {k: new[str(v)] if k in STATION_COLUMNS else v for k, v in row.items()}
 
