@@ -319,7 +319,6 @@ def test_the_command_and_the_module_are_the_same(blunder: Path) -> None:
     assert command.returncode == 2
 
 
-@pytest.mark.xfail(strict=True, reason="what is buffered is left to the end of the process: exit code 120")
 @pytest.mark.parametrize("command", [["adjust", "--json"], ["adjust"], ["check"]], ids=" ".join)
 def test_a_reader_that_closes_its_end_is_no_error(command: list[str], job: Path) -> None:
     """As in: brasscap adjust --json JOB | head -1. The output is buffered, as it is for everybody by default."""

@@ -119,7 +119,7 @@ def study_thinned(count: int, folder: Path) -> None:
             least_or_refused(ready.iteration.pattern, here)
         )
     print(
-        f"{len(fixed)} thinned networks that hold (smallest singular value above 1e-6): smallest pivot at least {min(fixed):.1e}"
+        f"{len(fixed)} thinned networks that hold (least singular value above 1e-6): smallest pivot at least {min(fixed):.1e}"
     )
     print(f"{len(loose)} that do not hold (below 1e-12): smallest pivot of each at most {max(loose):.1e}, "
           f"{sum(p > PIVOT_LEAST for p in loose)} of them above PIVOT_LEAST; between: {between}")  # fmt: skip
@@ -142,7 +142,7 @@ def traverse(folder: Path, n: int) -> Path:
     name = [f"{i} x" for i in range(n)]
     legs = [{"from": name[i], "to": name[i + 1], "distance": 100.0} for i in range(n - 1)]
     rays = [
-        {"at": name[i], "to": name[j], "direction": math.atan2(east[j] - east[i], north[j] - north[i]) % math.tau, "set": ""}
+        {"at": name[i], "to": name[j], "direction": math.atan2(east[j] - east[i], north[j] - north[i]) % math.tau}
         for i in range(n) for j in (i - 1, i + 1) if 0 <= j < n
     ]  # fmt: skip
     places = [{"station": name[i], "east": float(east[i]), "north": float(north[i])} for i in range(n)]
@@ -159,7 +159,8 @@ def study_traverses(folder: Path) -> None:
         here = linearised(ready)
         line = f"open traverse of {n:5d} stations: smallest pivot {pivots(ready.iteration.pattern, here).min():.1e}"
         if n <= 1000:
-            line += f", largest redundancy number left by rounding {np.abs(reliability(adjust.solve(job)).redundancy).max():.1e}"
+            left = np.abs(reliability(adjust.solve(job)).redundancy).max()
+            line += f", largest redundancy number left by rounding {left:.1e}"
         print(line)
 
 
@@ -174,9 +175,7 @@ def study_unchecked(count: int, folder: Path) -> None:
             shares.append(np.abs(figures.redundancy))
     every = np.sort(np.concatenate(shares))
     gap = int(np.argmax(np.diff(np.log(np.maximum(every, 1e-17)))))
-    print(
-        f"{len(unchecked)} networks with a station reached just once: share of its readings at most {max(unchecked):.1e}"
-    )
+    print(f"{len(unchecked)} networks with a station reached once: share of its readings at most {max(unchecked):.1e}")
     print(f"all {len(every)} readings: widest gap between shares {every[gap]:.1e} and {every[gap + 1]:.1e}")
 
 
@@ -190,7 +189,7 @@ def study_movements(count: int, folder: Path) -> None:
         is_spur = np.isin(iteration.kept, own[own >= 0])
         still.append(null[~is_spur].max())
         moving.append(null[is_spur].max())
-    print(f"{count} networks with a spur: share of a unit movement of stations that stand still at most {max(still):.1e}; "
+    print(f"{count} networks with a spur: share of a unit movement of standing stations at most {max(still):.1e}; "
           f"of the spur at least {min(moving):.1e}")  # fmt: skip
 
 

@@ -61,9 +61,15 @@ def figures(folder: Path, names: list[str], ids: list[str]) -> Figures:
     row = rows_by_id(solution)
     order = [r for i in ids for r in row[i]]
     assert sorted(order) == list(range(len(solution.residuals)))
-    r = judgement.reliability
-    return Figures(np.hypot(d[..., 0], d[..., 1]), d[..., 2], sd, solution.residuals[order] / solution.design.sd[order],
-                   r.redundancy[order], np.nan_to_num(judgement.statistic[order]), solution.total.square_sum)  # fmt: skip
+    return Figures(
+        distances=np.hypot(d[..., 0], d[..., 1]),
+        rises=d[..., 2],
+        sd=sd,
+        residuals=solution.residuals[order] / solution.design.sd[order],
+        redundancy=judgement.reliability.redundancy[order],
+        statistic=np.nan_to_num(judgement.statistic[order]),
+        square_sum=solution.total.square_sum,
+    )
 
 
 def rows_by_id(solution: adjust.Solution) -> dict[str, list[int]]:
