@@ -13,6 +13,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -125,7 +126,7 @@ class _Maker:
     def __init__(self, rng: np.random.Generator, n: int, kinds: Sequence[str], spur: bool,
                  origin: tuple[float, float]) -> None:  # fmt: skip
         self.rng, self.kinds, self.spur = rng, kinds, spur
-        self.truth = _stations(rng, n) + [*origin, 0.0]
+        self.truth = _stations(rng, n) + np.array([*origin, 0.0])
         self.names = _names(rng, n)
         self.lines = [
             (i, j) for i in range(n) for j in range(i + 1, n) if math.dist(self.truth[i, :2], self.truth[j, :2]) < REACH
@@ -248,7 +249,7 @@ class _Maker:
         alone = "directions" not in self.kinds
         for i in range(len(self.truth) - self.spur):
             targets = self.rng.permutation(self._neighbours(i)).tolist()
-            for j, k in list(zip(targets, targets[1:], strict=False))[: None if alone else 2]:
+            for j, k in list(pairwise(targets))[: None if alone else 2]:
                 self._angle(rows, i, j, k)
         if self.spur and alone:
             self._angle(rows, 0, self._neighbours(0)[0], len(self.truth) - 1)
@@ -374,7 +375,7 @@ def _table_text(table: Table, units: dict[str, str]) -> str:
 
 
 def cell(name: str, value: object, units: dict[str, str], angular: bool = False) -> str:
-    """A cell as text with all its digits; ``sd`` of an angular table is in seconds, or milligon where angles are gon."""
+    """A cell as text with all its digits; ``sd`` of an angular table in seconds, or milligon where angles are gon."""
     if not isinstance(value, float):
         return str(value)
     if name == "sd" and angular:
@@ -399,6 +400,7 @@ def angle_text(radians: float, notation: str) -> str:
 
 def renamed(made: Made, new: dict[str, str]) -> list[Table]:
     """The tables of a job with other station names."""
+
     def change(row: Row) -> Row:
         return {k: new[str(v)] if k in STATION_COLUMNS else v for k, v in row.items()}
 

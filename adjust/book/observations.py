@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import re
+
 import numpy as np
 
 from adjust.book.cells import Cells
@@ -77,6 +79,8 @@ class Observations:
             place = f"{cells.rows.file}:{cells.rows.lines[i]}"
             if ids[i] and self._ids.setdefault(ids[i], place) != place:
                 cells.fault(i, "id", ids[i], f"already the id of {self._ids[ids[i]]}; ids are unique in the job")
+            if re.fullmatch(r".+\.\w+:\d+", ids[i]):
+                cells.fault(i, "id", ids[i], "looks like FILE:LINE, the name of rows without an id; give another")
             if use[i] == "yes":
                 continue
             aside = Aside(ids[i] or place, cells.rows.file, cells.rows.lines[i], kind.name, reasons[i])

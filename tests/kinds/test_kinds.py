@@ -1,4 +1,4 @@
-"""Every kind of the registry in every frame: partials against central differences, values against tables worked by hand.
+"""Every kind in every frame: partials against central differences, values against tables worked by hand.
 
 Step theory. With step h the central difference errs by h^2/6 |f'''| and by the rounding of f and of its argument,
 eps (|f| + |x| |f'|) / h. The third derivative is itself measured, by the five-point difference with a long step, so the
