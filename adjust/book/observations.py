@@ -6,6 +6,7 @@ import re
 
 import numpy as np
 
+from adjust.book import schema
 from adjust.book.cells import Cells
 from adjust.book.faults import Faults
 from adjust.book.job import Aside
@@ -30,6 +31,7 @@ class Observations:
         self.left_out: list[Aside] = []
         self.planned: list[Aside] = []
         self._ids: dict[str, str] = {}
+        self._setup_numbers: dict[tuple[str, str, str], int] = {}
 
     def add(self, cells: Cells) -> None:
         """Take over one table."""
@@ -41,6 +43,7 @@ class Observations:
         held = self._held(cells, use)
         sd, precision = self._sds(cells, kind, values, held, use)
         group = self._groups(cells, kind, names, use)
+        setup = self._setups(cells, names[0])
         for column in names:
             for i in use:
                 if column[i]:
@@ -61,6 +64,8 @@ class Observations:
                 line=np.array(cells.rows.lines, dtype=np.int64)[chosen],
                 ids=tuple(ids[i] for i in use) if any(ids) else (),
                 precision=tuple(precision[i] for i in use),
+                setup=np.array([setup[i] for i in use], dtype=np.int64),
+                eccentric=self._eccentric(kind, [precision[i] for i in use]),
             )
         )
 
@@ -215,6 +220,23 @@ class Observations:
         count = sizes["count"][rows]
         count = np.where(np.isnan(count), 1.0, count)
         return model.sd(len(rows), **given) * np.sqrt(kind.pointings / count)
+
+    def _setups(self, cells: Cells, standing: list[str]) -> list[int]:
+        """Number of each row's set-up: by station and name through the job, else one a station and table."""
+        named = cells.text("setup")
+        keys = [(at, name, "" if name else cells.rows.file) for at, name in zip(standing, named, strict=True)]
+        return [self._setup_numbers.setdefault(key, len(self._setup_numbers)) for key in keys]
+
+    def _eccentric(self, kind: Kind, labels: list[str]) -> Array | None:
+        """Standard deviations (m, 3) of centring, target and heights; a row with its own sd has its share in it."""
+        if not kind.occupies:
+            return None
+        sizes = {"sd": (0.0, 0.0, 0.0)}
+        for name, keys in self.settings.instruments.items():
+            models = [keys.get(field.name) for field in schema.CENTRING]
+            sizes[name] = tuple(float(model.sd(1)[0]) if model else 0.0 for model in models)  # type: ignore[assignment] # three fields, three sizes
+        out = np.array([sizes[label] for label in labels], dtype=float).reshape(len(labels), 3)
+        return out if out.any() else None
 
     def _groups(self, cells: Cells, kind: Kind, names: list[list[str]], use: list[int]) -> Ints:
         """Number of each row's group unknown; groups are told apart by file and the kind's columns."""
