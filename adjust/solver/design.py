@@ -55,7 +55,10 @@ class State:
 
 @dataclass(frozen=True)
 class Linearised:
-    """Numbers of one linearisation: coefficients (R, e), by_local (R,), misclosure (R,) = observed - computed."""
+    """Numbers of one linearisation: coefficients (R, e), by_local (R,), misclosure (R,) = observed - computed.
+
+    Coefficients stand for known coordinates too; ``Design.columns`` says which slots are unknowns.
+    """
 
     coefficients: Array
     by_local: Array
@@ -135,6 +138,21 @@ class Design:
         out[grouped, -1] = self.unknowns.shared[self.group[grouped]]
         return out
 
+    @cached_property
+    def places(self) -> Ints:
+        """Coordinate of every slot (R, e) as 3 station + component, known or not; -1 for slots without one."""
+        rows = self.network.rows
+        out = np.full(self.columns.shape, -1, dtype=np.int64)
+        for b, block in enumerate(self.network.blocks):
+            ends = [end for sight in KINDS[block.kind].sights for end in sight]
+            per_row = np.concatenate(
+                [3 * block.stations[:, [end]] + np.arange(3) if end >= 0 else np.full((len(block), 3), -1) for end in ends],
+                axis=1,
+            )
+            here = rows.block == b
+            out[here, : per_row.shape[1]] = per_row[rows.row[here]]
+        return out
+
     def _block_columns(self, block: Block) -> Ints:
         """(m, slots) unknowns in the order of sights, ends, components."""
         kind = KINDS[block.kind]
@@ -168,7 +186,6 @@ class Design:
                 by_vector[here, 0] = ends[:, :, 0].sum(axis=1)
                 by_vector[here, 1 : 1 + ends.shape[1]] = ends[:, :, 1]
         coefficients[:, -1] = by_group
-        coefficients[self.columns < 0] = 0.0
         l = self.observed - computed
         l[self.wraps] -= TURN * np.round(l[self.wraps] / TURN)
         return Linearised(coefficients, np.where(self.local >= 0, by_group, 0.0), l, computed, self.local, by_vector)

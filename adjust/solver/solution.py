@@ -66,6 +66,8 @@ class Solution:
     iterations: int
     assumed: tuple[str, ...]
     """Stations placed at an origin of the program's choice."""
+    free: Solution | None = None
+    """The free stage before this one: the readings alone, fitted to the control; None where it adds nothing."""
 
     @property
     def names(self) -> tuple[str, ...]:
