@@ -5,7 +5,8 @@ extra unknown has (the leave-one-out of a parameter, exact at the linearisation)
 
     M = A_k*'(I - A* Q A*') A_k*        b = M^-1 A_k*' l*,  cov(b) = M^-1
 
-because A*'l* = 0 at the solution. b is where the readings and the other marks put the mark, less its known place. M is
+because A*'l* = 0 at the solution (with conditions K: A*'l* = K'lambda and Q K' = 0). A mark that a condition itself
+touches is not judged. b is where the readings and the other marks put the mark, less its known place. M is
 not invertible where the others do not determine the mark: then nothing judges it.
 """
 
@@ -26,7 +27,7 @@ JUDGED_ABOVE = 1e-9
 
 @dataclass(frozen=True)
 class HeldMarks:
-    """Held coordinates that readings touch: station and part (h,), shift and its standard deviation (h,), NaN unjudged."""
+    """Held coordinates that readings touch: station and part (h,), shift and its sd (h,), NaN where not judged."""
 
     station: Ints
     part: Ints
@@ -34,7 +35,7 @@ class HeldMarks:
     sd: Array
 
 
-def test_held_marks(solution: Solution) -> HeldMarks:
+def judge_held_marks(solution: Solution) -> HeldMarks:
     """Shift of every held mark as the readings and all other marks see it."""
     role = solution.network.stations.role
     places = np.flatnonzero((role == HELD).ravel() & (solution.design.unknowns.coordinate < 0).ravel())
@@ -51,8 +52,9 @@ def test_held_marks(solution: Solution) -> HeldMarks:
         np.add.at(load, w.batch.columns, products)
     load = load[:-1]
     own = (a_k.T @ a_k).toarray()
+    in_condition = np.isin(places, solution.design.places[solution.design.held])
     m = own - load.T @ solution.cofactors.times(load)
-    return _by_mark(places, m, np.diagonal(own), a_k.T @ misclosure)
+    return _by_mark(places, m, np.where(in_condition, 0.0, np.diagonal(own)), a_k.T @ misclosure)
 
 
 def _by_mark(places: Ints, m: Array, own: Array, g: Array) -> HeldMarks:

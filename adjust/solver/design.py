@@ -15,7 +15,7 @@ import numpy as np
 from adjust.frames import LocalPlane
 from adjust.graph.parts import HEIGHT, PLANE, Part, row_groups
 from adjust.kinds import KINDS
-from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Ints, Network
+from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Cluster, Ints, Network
 from adjust.solver.centring import Vectors
 from adjust.units import TURN
 
@@ -146,7 +146,10 @@ class Design:
         for b, block in enumerate(self.network.blocks):
             ends = [end for sight in KINDS[block.kind].sights for end in sight]
             per_row = np.concatenate(
-                [3 * block.stations[:, [end]] + np.arange(3) if end >= 0 else np.full((len(block), 3), -1) for end in ends],
+                [
+                    3 * block.stations[:, [end]] + np.arange(3) if end >= 0 else np.full((len(block), 3), -1)
+                    for end in ends
+                ],
                 axis=1,
             )
             here = rows.block == b
@@ -209,12 +212,25 @@ def control_as_new(network: Network, free: Bools) -> Network:
     """The network without the weighted control rows of stations whose datum is free (n, 3)."""
     if not free.any() or not (network.stations.role == WEIGHTED).any():
         return network
-    blocks = []
-    for block in network.blocks:
+    blocks, kept = [], np.ones(len(network.rows), dtype=bool)
+    for b, block in enumerate(network.blocks):
         if not KINDS[block.kind].from_control:
             blocks.append(block)
             continue
         sd = np.where(free[block.stations[:, 0]], np.nan, block.sd)
+        here = network.rows.block == b
+        kept[here] = ~np.isnan(sd[network.rows.row[here], network.rows.part[here]])
         if not np.isnan(sd).all():
             blocks.append(replace(block, sd=sd))
-    return replace(network, blocks=tuple(blocks))
+    return replace(network, blocks=tuple(blocks), clusters=_renumbered(network.clusters, kept))
+
+
+def _renumbered(clusters: tuple[Cluster, ...], kept: Bools) -> tuple[Cluster, ...]:
+    """Clusters on the numbers that the kept scalar rows have once the others are gone."""
+    number = np.cumsum(kept) - 1
+    out = []
+    for cluster in clusters:
+        here = kept[cluster.rows]
+        if here.any():
+            out.append(Cluster(number[cluster.rows[here]], cluster.covariance[np.ix_(here, here)]))
+    return tuple(out)

@@ -57,6 +57,8 @@ class Solution:
     """(g,) group unknowns, radians."""
     whitened: list[Whitened]
     cofactors: Cofactors
+    coefficients: Array
+    """(R, e) partials by every slot of ``design.places`` at the answer, known coordinates included."""
     residuals: Array
     """(R,) adjusted minus observed, metres and radians."""
     adjusted: Array

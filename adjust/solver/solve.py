@@ -65,7 +65,9 @@ def _free_stage(job: Job, ready: Setting) -> Solution | None:
     if not any(one.spare > 0 for one in ready.parts):
         return None
     role = job.network.stations.role
-    marks = tuple(job.network.stations.names[i] for i in np.flatnonzero(((role == HELD) | (role == WEIGHTED)).any(axis=1)))
+    marks = tuple(
+        job.network.stations.names[i] for i in np.flatnonzero(((role == HELD) | (role == WEIGHTED)).any(axis=1))
+    )
     alone = replace(job, settings=replace(job.settings, datum_kind="free", datum_stations=marks))
     try:
         return _iterated(alone, prepare(alone, ready.start))
@@ -135,7 +137,8 @@ def solution_at(job: Job, ready: Setting, last: Linear, cofactors: Cofactors, it
     )
     return Solution(
         job, ready.network, design, last.state.positions, last.state.groups, last.whitened, cofactors,
-        residuals, design.observed + residuals, parts, total, iterations, ready.start.assumed,
+        last.numbers.coefficients, residuals, design.observed + residuals, parts, total, iterations,
+        ready.start.assumed,
     )  # fmt: skip
 
 
