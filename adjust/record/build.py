@@ -17,6 +17,7 @@ from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
 from adjust.record.places import line_entries, mark_entries, parameter_entries, station_entries
 from adjust.solver.solution import PartResult, Solution
+from adjust.solver.threads import one_thread
 
 FORMAT = 1
 ROWS_MOST = 20_000
@@ -26,6 +27,11 @@ WORST = 200
 
 def build(judgement: Judgement) -> dict[str, Any]:
     """The complete record of a judged solution."""
+    with one_thread():
+        return _record(judgement)
+
+
+def _record(judgement: Judgement) -> dict[str, Any]:
     solution = judgement.solution
     return {
         "format": FORMAT,
