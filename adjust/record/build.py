@@ -12,7 +12,7 @@ import adjust
 from adjust.caution import CAUTION
 from adjust.judge.assess import Judgement, OverallTest
 from adjust.network import ROLES
-from adjust.record.numbers import number
+from adjust.record.numbers import coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
 from adjust.record.places import line_entries, mark_entries, parameter_entries, station_entries
 from adjust.solver.solution import PartResult, Solution
@@ -90,12 +90,14 @@ def _settings(solution: Solution) -> dict[str, Any]:
     settings = solution.job.settings
     return {
         **settings.tests.__dict__,
+        "frame": {"plane_height": number(settings.frame.plane_height), "refraction": settings.frame.refraction.text},
         "datum": {"kind": settings.datum_kind or None, "stations": list(settings.datum_stations)},
         "instruments": {
             name: {key: model.text for key, model in keys.items()} for name, keys in settings.instruments.items()
         },
         "books": [
             {"file": t.file, "kind": t.kind, "instrument": t.instrument or None, "sd_factor": number(t.sd_factor),
+             "surface": t.surface or None,
              "units": {"length": t.units.length, "angle": t.units.angle, "decimal": t.units.decimal}}
             for t in solution.job.tables
         ],
@@ -113,7 +115,9 @@ def _frame(solution: Solution) -> dict[str, Any]:
         if assumed
         else None
     )
-    return {"kind": solution.design.frame.name, "origin": origin}
+    frame = solution.design.frame
+    return {"kind": frame.name, "origin": origin, "plane_height": coordinate(frame.plane_height),
+            "radius": coordinate(frame.radius)}  # fmt: skip
 
 
 def _block(judgement: Judgement, part: PartResult, test: OverallTest, with_parts: bool) -> dict[str, Any]:

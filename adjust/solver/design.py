@@ -19,6 +19,7 @@ from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Ints, Network
 from adjust.units import TURN
 
 _NODE = np.array([PLANE, PLANE, HEIGHT])
+HEIGHT_PART = 2
 
 
 @dataclass(frozen=True)
@@ -130,14 +131,30 @@ class Design:
     def _block_columns(self, block: Block) -> Ints:
         """(m, slots) unknowns in the order of sights, ends, components."""
         kind = KINDS[block.kind]
-        columns = []
+        columns = [np.empty((len(block), 0), dtype=np.int64)]
         for ends in kind.sights:
             for end in ends:
                 if end < 0:
                     columns.append(np.full((len(block), 3), -1))
                 else:
-                    columns.append(self.unknowns.coordinate[block.stations[:, end]])
+                    columns.append(self._coordinates(block, end))
         return np.concatenate(columns, axis=1)
+
+    def _coordinates(self, block: Block, end: int) -> Ints:
+        """(m, 3) unknowns of one end. A length at ground level takes heights as they stand: they scale it by 1.6e-7
+        a metre, which is no reading of a height."""
+        found = self.unknowns.coordinate[block.stations[:, end]]
+        if block.surface and "both" not in KINDS[block.kind].touched(block.surface):
+            found[:, HEIGHT_PART] = -1
+        return found
+
+    @cached_property
+    def unasked(self) -> Array:
+        """(n, 3) coordinates that stand in where nothing is asked of a component: known heights, else the plane's."""
+        out = np.zeros((len(self.network.stations), 3))
+        known = self.network.stations.start[:, HEIGHT_PART]
+        out[:, HEIGHT_PART] = np.where(np.isnan(known), self.frame.plane_height, known)
+        return out
 
     def linearise(self, state: State) -> Linearised:
         """Values, partials and misclosures at a state."""
@@ -145,7 +162,7 @@ class Design:
         coefficients = np.zeros(self.columns.shape)
         by_group = np.zeros(len(rows))
         computed = np.empty(len(rows))
-        positions = np.nan_to_num(state.positions)
+        positions = np.where(np.isnan(state.positions), self.unasked, state.positions)
         for b, block in enumerate(self.network.blocks):
             here = rows.block == b
             i, p = rows.row[here], rows.part[here]
@@ -165,14 +182,22 @@ class Design:
         ends = [
             (block.stations[:, i] if i >= 0 else np.full(len(block), -1), block.stations[:, j]) for i, j in kind.sights
         ]
-        sights = np.stack([self.frame.sights(positions, i, j) for i, j in ends], axis=1)
-        values, by_sight, by_group = kind.geometry(sights, _group_values(block, groups))
-        carried = np.stack([self.frame.carry(by_sight[:, :, s]) for s in range(len(ends))], axis=2)
-        return values, carried.reshape(*values.shape, -1), by_group
+        on = (block.surface, block.above)
+        sights = [np.empty((len(block), 0, 4))]
+        sights += [self.frame.sights(positions, i, j, *on)[:, None] for i, j in ends]
+        values, by_sight, by_group = kind.on(block.surface)(
+            np.concatenate(sights, axis=1), _group_values(block, groups)
+        )
+        carried = [np.empty((*values.shape, 0))]
+        for s, (i, j) in enumerate(ends):
+            by_ends = self.frame.carry(by_sight[:, :, s], self.frame.jacobian(positions, i, j, *on))
+            carried.append(by_ends.reshape(*values.shape, -1))
+        return values, np.concatenate(carried, axis=2), by_group
 
 
 def _group_values(block: Block, groups: Array) -> Array:
-    return np.where(block.group >= 0, np.append(groups, 0.0)[block.group], 0.0)
+    constant = 0.0 if block.constant is None else block.constant
+    return np.where(block.group >= 0, np.append(groups, 0.0)[block.group], constant)
 
 
 def control_as_new(network: Network, free: Bools) -> Network:
