@@ -164,13 +164,14 @@ class _Maker:
         return plane | ({"height": float(xyz[2])} if self.heights else {})
 
     def _mark(self, i: int, kind: str) -> Row:
-        xyz, row = self.truth[i].copy(), {"station": self.names[i], "role": kind}
+        xyz = self.truth[i].copy()
+        row: Row = {"station": self.names[i], "role": kind}
         if kind == "weighted":
             sd = self.rng.uniform(0.002, 0.005, 3)
             xyz = xyz + self.rng.normal(0.0, sd)
             for p, name in enumerate(("east", "north", "height")):
                 if (self.plane, self.plane, self.heights)[p]:
-                    row[f"sd_{name}"] = float(sd[p])  # type: ignore[assignment]  # a cell may be a number
+                    row[f"sd_{name}"] = float(sd[p])
                     self.found.append(("control", (i,), float(xyz[p]), float(sd[p]), -1, p))
         self.start[i] = xyz
         self.role[i] = kind
@@ -198,10 +199,11 @@ class _Maker:
         """Draw one reading; ``sd`` is the instrument's before an own figure replaces it."""
         angular = column in _ANGLE_COLUMNS
         sd = self._sd(row, sd, SEC if angular else 1.0)
-        value = true + self.rng.normal(0.0, sd)
-        row[column] = float(value % (2 * math.pi) if angular else value)
+        value = float(true + self.rng.normal(0.0, sd))
+        value = value % (2 * math.pi) if angular else value
+        row[column] = value
         table.append(row)
-        self.found.append((kind, ends, float(row[column]), sd, group, 0))  # type: ignore[arg-type]  # it is a float
+        self.found.append((kind, ends, value, sd, group, 0))
 
     def _distances(self) -> None:
         rows: list[Row] = []

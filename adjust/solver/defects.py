@@ -19,15 +19,28 @@ MOVES = 1e-5
 4.7e-15 at the most to those that stand still, and the loose one moved by 0.65 at the least (pivot_study.py)."""
 
 
-def words(network: Network, unknowns: Unknowns, kept: Ints, normal: csc_array, pivots: Ints) -> list[str]:
-    """A sentence for every independent free movement; ``kept`` are the unknowns of the normal matrix."""
+BASES_MOST = 300
+"""Lines tried as the base that stands still; each costs one product of the movements."""
+RANK_LEAST = 1e-8
+"""Share of the largest singular value below which a base does not fix a movement of the whole: one station, no turn."""
+
+
+def words(network: Network, unknowns: Unknowns, kept: Ints, normal: csc_array, pivots: Ints, whole: Array) -> list[str]:
+    """A sentence for every independent free movement; ``kept`` are the unknowns of the normal matrix.
+
+    ``whole`` (u, d) are the movements of the network as a whole that a free datum takes away.
+    """
     owner = np.full((unknowns.count, 2), -1, dtype=np.int64)
     numbered = np.argwhere(unknowns.coordinate >= 0)
     owner[unknowns.coordinate[unknowns.coordinate >= 0]] = numbered
-    owner = owner[kept]
     if len(kept) > DENSE_MOST:
-        return [_one(network, np.unique(owner[pivots, 0][owner[pivots, 0] >= 0]), None)]
-    null = _null(normal)
+        of_pivots = owner[kept[pivots], 0]
+        return [_one(network, np.unique(of_pivots[of_pivots >= 0]), None)]
+    inner = _null(normal)
+    null = np.zeros((unknowns.count, inner.shape[1]))
+    null[kept] = inner
+    if whole.shape[1]:
+        null = _stilled(null, whole, _bases(network, unknowns))
     moving = np.abs(null).max(axis=1) > MOVES
     projection = np.abs(null @ null.T) > MOVES**2
     _, label = connected_components(csc_array(projection.astype(float)), directed=False)
@@ -38,6 +51,32 @@ def words(network: Network, unknowns: Unknowns, kept: Ints, normal: csc_array, p
         if len(stations):
             sentences.append(_one(network, stations, _movement(null, owner, here)))
     return sentences or [_one(network, np.unique(owner[owner[:, 0] >= 0, 0]), None)]
+
+
+def _bases(network: Network, unknowns: Unknowns) -> list[Ints]:
+    """Unknown coordinates of pairs of stations that a reading joins, BASES_MOST pairs at the most."""
+    ends = [np.sort(b.stations[:, :2], axis=1) for b in network.blocks if b.stations.shape[1] > 1]
+    pairs = np.unique(np.concatenate(ends), axis=0)
+    columns = unknowns.coordinate[pairs[:: 1 + len(pairs) // BASES_MOST]].reshape(-1, 6)
+    return [at[at >= 0] for at in columns]
+
+
+def _stilled(null: Array, whole: Array, bases: list[Ints]) -> Array:
+    """The movements less those of the whole that keep a base still, for the bases that leave the fewest others moving.
+
+    Minimal constraints may sit on the very station that is loose; then everything else seems to move about it.
+    """
+    best = _moving(null)
+    for at in bases:
+        other = null - whole @ np.linalg.lstsq(whole[at], null[at], rcond=RANK_LEAST)[0]
+        if _moving(other) < best:
+            null, best = other, _moving(other)
+    return np.linalg.qr(null)[0]  # orthonormal again, so that movements of different stations come apart
+
+
+def _moving(null: Array) -> int:
+    """Number of unknowns that take part in some movement."""
+    return int((np.abs(null).max(axis=1) > MOVES).sum())
 
 
 def _null(normal: csc_array) -> Array:

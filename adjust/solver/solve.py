@@ -14,7 +14,7 @@ from adjust.graph.starts import Start, find_start
 from adjust.network import Array, Bools, Network
 from adjust.solver import defects
 from adjust.solver.cofactors import Cofactors
-from adjust.solver.datum import PartDatum, assemble_datum, find_datum
+from adjust.solver.datum import PartDatum, assemble_datum, find_datum, null_space
 from adjust.solver.design import Design, State, Unknowns, control_as_new
 from adjust.solver.elements import make_batches
 from adjust.solver.engine import SingularPattern
@@ -91,7 +91,9 @@ def free_movements(ready: Setting, singular: SingularPattern) -> list[str]:
     iteration = ready.iteration
     here = iteration.at(State(ready.start.positions, ready.start.groups))
     normal = iteration.pattern.normal(here.whitened)
-    return defects.words(ready.network, ready.design.unknowns, iteration.kept, normal, singular.unknowns)
+    unknowns = ready.design.unknowns
+    whole = null_space(ready.network, ready.parts, unknowns, ready.start.positions)
+    return defects.words(ready.network, unknowns, iteration.kept, normal, singular.unknowns, whole)
 
 
 def solution_at(job: Job, ready: Setting, last: Linear, cofactors: Cofactors, iterations: int) -> Solution:

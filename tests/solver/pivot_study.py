@@ -36,7 +36,7 @@ from adjust.solver.engine import PIVOT_LEAST, Pattern
 from adjust.solver.gauss import Linear
 from adjust.solver.solve import Setting, prepare
 from adjust.solver.threads import one_thread
-from tests.networks import Array, Made, Table, random_job, write_job
+from tests.networks import Array, Made, Row, Table, random_job, write_job
 
 KINDS = (("distances", "directions"), ("distances", "angles"), ("distances",), ("directions",), ("levelled_lengths",))
 SEED = 2027
@@ -118,9 +118,7 @@ def study_thinned(count: int, folder: Path) -> None:
         (fixed if value > 1e-6 else loose if value < 1e-12 else between).append(
             least_or_refused(ready.iteration.pattern, here)
         )
-    print(
-        f"{len(fixed)} thinned networks that hold (least singular value above 1e-6): smallest pivot at least {min(fixed):.1e}"
-    )
+    print(f"{len(fixed)} thinned networks that hold (least singular value above 1e-6): least pivot {min(fixed):.1e}")
     print(f"{len(loose)} that do not hold (below 1e-12): smallest pivot of each at most {max(loose):.1e}, "
           f"{sum(p > PIVOT_LEAST for p in loose)} of them above PIVOT_LEAST; between: {between}")  # fmt: skip
 
@@ -140,14 +138,17 @@ def traverse(folder: Path, n: int) -> Path:
     east = np.concatenate([[0.0], np.cumsum(100 * np.sin(azimuths))])
     north = np.concatenate([[0.0], np.cumsum(100 * np.cos(azimuths))])
     name = [f"{i} x" for i in range(n)]
-    legs = [{"from": name[i], "to": name[i + 1], "distance": 100.0} for i in range(n - 1)]
-    rays = [
+    legs: list[Row] = [{"from": name[i], "to": name[i + 1], "distance": 100.0} for i in range(n - 1)]
+    rays: list[Row] = [
         {"at": name[i], "to": name[j], "direction": math.atan2(east[j] - east[i], north[j] - north[i]) % math.tau}
         for i in range(n) for j in (i - 1, i + 1) if 0 <= j < n
     ]  # fmt: skip
-    places = [{"station": name[i], "east": float(east[i]), "north": float(north[i])} for i in range(n)]
-    tables = [Table("stations.csv", "stations", places), Table("distances.csv", "distances", legs, "station"),
-              Table("directions.csv", "directions", rays, "station")]  # type: ignore[arg-type]  # fmt: skip  # lists of plain rows
+    places: list[Row] = [{"station": name[i], "east": float(east[i]), "north": float(north[i])} for i in range(n)]
+    tables = [
+        Table("stations.csv", "stations", places),
+        Table("distances.csv", "distances", legs, "station"),
+        Table("directions.csv", "directions", rays, "station"),
+    ]
     return write_job(folder, tables, free=True)
 
 

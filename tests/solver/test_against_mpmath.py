@@ -3,7 +3,7 @@
 An independent Gauss-Newton in mpmath: residuals and partials written by hand, orientations as unknowns, dense normal
 equations, the datum of a free network bordered by  D'(x - x_ref) = 0  over the coordinates. With N = A'PA and
 
-    [N D; D' 0]^-1 = [Q .; . .]       v = A x - l,  Q_vv = P^-1 - A Q A',  r_i = (Q_vv P)_ii,  w_i = v_i / (s_i sqrt r_i)
+    [N D; D' 0]^-1 = [Q .; . .]       v = A x - l,  Q_vv = P^-1 - A Q A', r_i = (Q_vv P)_ii, w_i = v_i / (s_i sqrt r_i)
 
 everything is rounded to double only at the end.
 """

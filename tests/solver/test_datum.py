@@ -380,7 +380,7 @@ def test_two_pieces_hinged_at_a_station_are_told_apart(control: str, tmp_path: P
 
 
 def test_a_pivot_that_rounding_left_holds_nothing(tmp_path: Path) -> None:
-    """Network 235 of the study does not hold, yet its smallest pivot is 2.6e-10: the order of elimination is unlucky."""
+    """Network 235 of the study does not hold, yet its smallest pivot is 2.6e-10: an unlucky order of elimination."""
     made = next(networks(1, tmp_path, (("directions",),), "free", spur=False, first=235))
     ready = prepare(adjust.read(thinned(made, np.random.default_rng([SEED, 1, 235])).folder))
     here = linearised(ready)
