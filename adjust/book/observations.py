@@ -96,7 +96,7 @@ class Observations:
                 above=None if lay.above is None else lay.above[chosen],
                 constant=np.full(len(use), setting.value) if setting else None,
                 corrections=tuple((name, amount[chosen]) for name, amount in lay.corrections),
-                booked=() if sheet.value == kind.value else sheet.value,
+                booked=() if cells.table.kind == kind.table else sheet.value,
             )
         )
 

@@ -175,6 +175,9 @@ def _effect(key: str) -> Column:
     return f"external_effect_{key}", lambda entry: safe_text(_inside(entry, ("external_effect", key)))
 
 
+_NUMBER_KEYS = ("observed", "adjusted", "residual", "sd", "sd_adjusted", "smallest_detectable")
+
+
 def _numbers(s: Shown) -> list[Column]:
     """Columns of readings that are pure numbers; only tables that hold such a reading have them."""
 
@@ -182,7 +185,7 @@ def _numbers(s: Shown) -> list[Column]:
         cell = _figure(name, (key,), float, 6, s)[1]
         return name, lambda entry: cell(entry) if entry["kind"] in NUMBER_KINDS else ""
 
-    return [only(f"{key}_number", key) for key in ("observed", "adjusted", "residual", "sd", "sd_adjusted")]
+    return [only(f"{key}_number", key) for key in _NUMBER_KEYS]
 
 
 def _observation_columns(s: Shown) -> list[Column]:
