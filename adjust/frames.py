@@ -60,9 +60,7 @@ class LocalPlane:
                 plane_height = float(np.mean(given))
         return cls(plane_height=plane_height or 0.0)
 
-    def sights(
-        self, positions: Array, start: Ints, end: Ints, surface: str = "", above: Array | None = None
-    ) -> Array:
+    def sights(self, positions: Array, start: Ints, end: Ints, surface: str = "", above: Array | None = None) -> Array:
         """(m, 4) sights from ``start`` (m,) to ``end`` (m,) at ``positions`` (n, 3), metres.
 
         ``above`` (m, 2) are the heights of instrument and target above their marks; the plane itself has none.

@@ -358,8 +358,8 @@ def loop_traverse_feet(folder: Path) -> None:
         folder / "traverse.csv",
         [
             INVENTED,
-            "The sheet as booked, feet. `turn` says how the angle from backsight to foresight was turned; the bearing is",
-            "that of the line from T1 to T2 and is held: the basis of bearings.",
+            "The sheet as booked, feet. `turn` says how the angle from backsight to foresight was turned; the bearing",
+            "is that of the line from T1 to T2 and is held: the basis of bearings.",
         ],
         "at,back,fore,angle,turn,bearing,distance,back_distance",
         rows,

@@ -24,7 +24,7 @@ IN_SPACE = [pytest.param(kind, surface, id=f"{kind} {surface}") for surface in S
 def lines(seed: int) -> tuple[Array, Array]:
     """Ends (2M, 3) some hundred metres apart and up to 200 m in height, and heights (M, 2) above the marks."""
     rng = np.random.default_rng(seed)
-    positions = rng.uniform(-100.0, 100.0, (2 * M, 3)) + [500.0, 300.0, 60.0]
+    positions = rng.uniform(-100.0, 100.0, (2 * M, 3)) + np.array([500.0, 300.0, 60.0])
     positions[M:] += [400.0, -250.0, 120.0]
     return positions, rng.uniform(0.0, 2.0, (M, 2))
 

@@ -10,6 +10,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -60,8 +61,8 @@ def model(kind: NDArray[np.str_], ends: NDArray[np.int64], above: Array, xyz: Ar
     theta = 2 * np.arcsin(np.hypot(east, north) / (2 * R))
     r1, r2 = R + a[:, 2] + above[:, 0] - PLANE, R + b[:, 2] + above[:, 1] - PLANE
     slope = np.sqrt((r2 - r1) ** 2 + 4 * r1 * r2 * np.sin(theta / 2) ** 2)
-    # in the triangle: angle at the instrument from its nadir by the tangent formula for two sides and their angle
-    nadir = np.arctan2(r2 * np.sin(theta), r1 - r2 * np.cos(theta))
+    # the angle at the instrument by the tangent formula for two sides and their angle; 1 - cos without cancellation
+    nadir = np.arctan2(r2 * np.sin(theta), (r1 - r2) + 2 * r2 * np.sin(theta / 2) ** 2)
     return np.select(
         [kind == "direction", kind == "zenith_angle", kind == "slope", kind == "ground", kind == "ground-from"],
         [np.arctan2(east, north), math.pi - nadir - k * theta / 2, slope, (r1 + r2) * np.sin(theta / 2),
@@ -118,7 +119,7 @@ def reference(space: Space) -> tuple[Array, float, float]:
 
     def unpack(x: Array) -> tuple[Array, Array, float]:
         xyz = space.start.copy()
-        xyz[free] += x[:count]
+        xyz[free] += x[:count] - 1.0
         return xyz, x[count : count + space.sets], x[-1] if space.k[1] else space.k[0]
 
     def residuals(x: Array) -> Array:
@@ -129,8 +130,11 @@ def reference(space: Space) -> tuple[Array, float, float]:
 
     first = model(kind, ends, above, space.start, 0.13) - value
     zero = [first[np.flatnonzero(group == g)[0]] for g in range(space.sets)]
-    x0 = np.concatenate([np.zeros(count), zero, [space.k[0]]])
-    found = least_squares(residuals, x0, jac="3-point", x_scale="jac", xtol=1e-15, ftol=1e-15, gtol=1e-15)
+    x0 = np.concatenate([np.ones(count), zero, [space.k[0]]])
+    # coordinates are counted from 1, so that their steps are a millimetre: small against their lines, large against
+    # the rounding of coordinates of some kilometres
+    options: dict[str, Any] = {"jac": "3-point", "diff_step": 1e-3, "xtol": 1e-15, "ftol": 1e-15, "gtol": 1e-15}
+    found = least_squares(residuals, x0, method="lm", **options)
     xyz, _, k = unpack(found.x)
     return xyz, k, 2 * float(found.cost)
 
@@ -151,10 +155,13 @@ def write(space: Space, folder: Path, head: str = "") -> Path:
         if not rows:
             continue
         columns = {"direction": "at,to,direction,set,sd", "levelled": "from,to,rise,sd"}.get(
-            name, f"from,to,{'zenith_angle' if name == 'zenith_angle' else 'distance'},sd,instrument_height,target_height"
+            name,
+            f"from,to,{'zenith_angle' if name == 'zenith_angle' else 'distance'},sd,instrument_height,target_height",
         )
         _table(folder, name, columns, rows)
-        table = {"direction": "directions", "zenith_angle": "zenith_angles", "levelled": "levelled"}.get(name, "distances")
+        table = {"direction": "directions", "zenith_angle": "zenith_angles", "levelled": "levelled"}.get(
+            name, "distances"
+        )
         text += f'[[book]]\nfile = "{name}.csv"\nkind = "{table}"\n'
         text += f'surface = "{name}"\n' if table == "distances" else ""
     (folder / "job.toml").write_text(text, "utf-8")
@@ -177,7 +184,13 @@ def _readings(space: Space, name: str) -> list[str]:
         if kind == name:
             angular = kind in ("direction", "zenith_angle")
             number, sd = (math.degrees(value), SD[kind] / SEC) if angular else (value, SD[kind])
-            cells = [space.names[i], space.names[j], repr(number), *([str(group)] if kind == "direction" else []), repr(sd)]
+            cells = [
+                space.names[i],
+                space.names[j],
+                repr(number),
+                *([str(group)] if kind == "direction" else []),
+                repr(sd),
+            ]
             out.append(",".join(cells + ([repr(hi), repr(ht)] if kind not in ("direction", "levelled") else [])))
     return out
 
