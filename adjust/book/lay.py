@@ -34,6 +34,16 @@ class Lay:
     surface: str = ""
     above: Array | None = None
     corrections: tuple[tuple[str, Array], ...] = ()
+    by_slope: Array | None = None
+    """(n,) partial of a reduced distance by the slope distance, sin z; None where nothing was reduced."""
+    by_zenith: Array | None = None
+    """(n,) its partial by the zenith angle, S cos z, metres a radian."""
+
+    def sd(self, rows: list[int], slope: Array, zenith: Array | float) -> Array:
+        """Standard deviations of the values of ``rows`` from those of slope distances (m) and zenith angles (rad)."""
+        if self.by_slope is None or self.by_zenith is None:
+            return slope
+        return np.asarray(np.hypot(self.by_slope[rows] * slope, self.by_zenith[rows] * zenith))
 
 
 def lay_of(cells: Cells, kind: Kind, values: Array, use: list[int], refraction: float) -> Lay:
@@ -51,7 +61,7 @@ def lay_of(cells: Cells, kind: Kind, values: Array, use: list[int], refraction: 
         return Lay(values, surface, above)
     z = _zeniths(cells, use, declared)
     level = horizontal(values, z, refraction)
-    return Lay(level, GROUND_FROM, above, ((REDUCED, level - values),))
+    return Lay(level, GROUND_FROM, above, ((REDUCED, level - values),), np.sin(z), values * np.cos(z))
 
 
 def _above(cells: Cells, kind: Kind, use: list[int]) -> Array | None:

@@ -11,7 +11,7 @@ import numpy as np
 from adjust.book.cells import Cells
 from adjust.book.faults import Faults
 from adjust.book.job import Aside
-from adjust.book.lay import lay_of
+from adjust.book.lay import Lay, lay_of
 from adjust.book.marks import Marks
 from adjust.book.settings import Settings
 from adjust.book.toml_lines import line_of
@@ -21,6 +21,9 @@ from adjust.kinds.base import GroupUnknown, Kind
 from adjust.network import Array, Block, Bools, Group, Ints
 from adjust.sigmas import EXAMPLES, Precision
 from adjust.units import LONGEST_M, SMALLEST_SD
+
+ZENITH_SD = "zenith"
+"""Key of an instrument's figure for zenith angles, which reduced distances need beside their own."""
 
 
 @dataclass(frozen=True)
@@ -70,7 +73,7 @@ class Observations:
         names = [cells.names(column, use, self.booked) for column in sheet.stations]
         use = self._distinct(cells, sheet, names, use)
         lay = lay_of(cells, kind, values(use), use, self.settings.frame.refraction.value)
-        sd, precision = self._sds(cells, sheet, lay.values, held, use)
+        sd, precision = self._sds(cells, sheet, lay, held, use)
         group = self._groups(cells, kind, names, use)
         for column in names:
             for i in use:
@@ -195,7 +198,7 @@ class Observations:
             return np.zeros(len(cells), dtype=bool)
         return np.array([role == "held" for role in cells.choices("role", use)], dtype=bool)
 
-    def _sds(self, cells: Cells, sheet: Sheet, values: Array, held: Bools, use: list[int]) -> tuple[Array, list[str]]:
+    def _sds(self, cells: Cells, sheet: Sheet, lay: Lay, held: Bools, use: list[int]) -> tuple[Array, list[str]]:
         """Standard deviations (n,) from the column sd or the instrument, and the label of their source."""
         kind = sheet.kind
         sd = cells.sds(sheet.sd, kind.dimension, use)
@@ -212,7 +215,9 @@ class Observations:
             found = self._model(cells, sheet, name, rows)
             if found:
                 label, model = found
-                sd[rows] = self._model_sd(cells, kind, model, values, sizes, rows)
+                own = self._model_sd(cells, kind, model, lay.values, sizes, rows)
+                zenith = self.settings.instruments[label].get(ZENITH_SD)
+                sd[rows] = lay.sd(rows, own, zenith.sd(len(rows)) if zenith else 0.0)
                 for i in rows:
                     labels[i] = label
         sd *= cells.table.sd_factor

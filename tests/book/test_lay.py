@@ -78,6 +78,17 @@ def test_the_reduction_stands_in_the_record(tmp_path: Path) -> None:
     assert record["frame"] == {"kind": "local plane", "origin": None, "plane_height": 0, "radius": R}
 
 
+def test_the_reduced_distance_has_the_error_of_its_zenith_angle_too(tmp_path: Path) -> None:
+    """sin 30 times 2.3 mm and 100 m cos 30 times 3 seconds; the row's own sd is final; no figure, no share."""
+    rows = "from,to,distance,zenith_angle,sd\nA,B,100,30 00 00,\nA,C,100,30 00 00,0.004\n"
+    share = 100.0 * math.cos(math.radians(30)) * math.radians(3 / 3600)
+    level = horizontal(np.array([100.0]), np.array([math.radians(30)]), 0.13)[0]
+    own = 0.5 * (0.002 + 3e-6 * level)
+    close(one(tmp_path / "a", SLOPE, distances=rows).sd[:, 0], [math.hypot(own, share), 0.004], atol=1e-9)
+    toml = SLOPE.replace('zenith = "3 sec"\n', "")
+    close(one(tmp_path / "b", toml, distances=rows).sd[:, 0], [own, 0.004], atol=1e-9)
+
+
 def test_without_a_zenith_angle_a_slope_distance_stays_in_space(tmp_path: Path) -> None:
     block = one(tmp_path, SLOPE, distances="from,to,distance,instrument_height,target_height\nA,B,10,1.5,\nA,C,9,,\n"
                 .replace("1.5,", "1.5,1.2"))  # fmt: skip
