@@ -81,6 +81,10 @@ class Block:
     """Given identifications, '' where none; empty when no row has one."""
     precision: tuple[str, ...] = ()
     """(m) label of the source of each row's standard deviation: an instrument's name or 'sd'."""
+    setup: Ints = field(default_factory=lambda: np.empty(0, dtype=np.int64))
+    """(m,) number of the set-up each row was read in, through the whole job."""
+    eccentric: Array | None = None
+    """(m, 3) standard deviations in metres of centring, of the target, and of heights; None: all zero."""
     surface: str = ""
     """Where lengths are reduced to: '' the plane itself, ground, ground-from, slope."""
     above: Array | None = None

@@ -297,6 +297,12 @@ def format_bearing(radians: float, notation: str, places: int = 1) -> str:
     return f"{ns} {format_angle(inside, notation, places)} {ew}"
 
 
+def small_length(metres: float, unit: str) -> str:
+    """A small length with its sign in millimetres, or in the job's feet: '+7.2 mm', '-0.024 ft'."""
+    name, per_metre = SMALL_LENGTH[unit]
+    return f"{metres * per_metre:+.{1 if name == 'mm' else 3}f} {name}"
+
+
 def wrap(radians: float) -> float:
     """The angle brought to (-pi, pi]."""
     return -((math.pi - radians) % TURN - math.pi)

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from adjust.book import schema
 from adjust.book.cells import Cells
 from adjust.book.faults import Faults
 from adjust.book.job import Aside
@@ -57,6 +58,7 @@ class Observations:
         self._ids: dict[str, str] = {}
         self._of_setting: dict[str, int] = {}
         """Number of the group unknown of each setting that is estimated."""
+        self._setup_numbers: dict[tuple[str, str, str], int] = {}
 
     def add(self, cells: Cells) -> None:
         """Take over one table."""
@@ -75,6 +77,7 @@ class Observations:
         lay = lay_of(cells, kind, values(use), use, self.settings.frame.refraction.value)
         sd, precision = self._sds(cells, sheet, lay, held, use)
         group = self._groups(cells, kind, names, use)
+        setup = self._setups(cells, names[0])
         for column in names:
             for i in use:
                 if column[i]:
@@ -100,6 +103,8 @@ class Observations:
                 constant=np.full(len(use), setting.value) if setting else None,
                 corrections=tuple((name, amount[chosen]) for name, amount in lay.corrections),
                 booked=() if cells.table.kind == kind.table else sheet.value,
+                setup=np.array([setup[i] for i in use], dtype=np.int64),
+                eccentric=self._eccentric(kind, [precision[i] for i in use]),
             )
         )
 
@@ -285,6 +290,23 @@ class Observations:
         count = sizes["count"][rows]
         count = np.where(np.isnan(count), 1.0, count)
         return model.sd(len(rows), **given) * np.sqrt(kind.pointings / count)
+
+    def _setups(self, cells: Cells, standing: list[str]) -> list[int]:
+        """Number of each row's set-up: by station and name through the job, else one a station and table."""
+        named = cells.text("setup")
+        keys = [(at, name, "" if name else cells.rows.file) for at, name in zip(standing, named, strict=True)]
+        return [self._setup_numbers.setdefault(key, len(self._setup_numbers)) for key in keys]
+
+    def _eccentric(self, kind: Kind, labels: list[str]) -> Array | None:
+        """Standard deviations (m, 3) of centring, target and heights; a row with its own sd has its share in it."""
+        if not kind.occupies:
+            return None
+        sizes = {"sd": (0.0, 0.0, 0.0)}
+        for name, keys in self.settings.instruments.items():
+            models = [keys.get(field.name) for field in schema.CENTRING]
+            sizes[name] = tuple(float(model.sd(1)[0]) if model else 0.0 for model in models)  # type: ignore[assignment] # three fields, three sizes
+        out = np.array([sizes[label] for label in labels], dtype=float).reshape(len(labels), 3)
+        return out if out.any() else None
 
     def _groups(self, cells: Cells, kind: Kind, names: list[list[str]], use: list[int]) -> Ints:
         """Number of each row's group unknown; groups are told apart by file and the kind's columns."""

@@ -56,7 +56,8 @@ BOOK = (
     Field("file", "text", "name of the table; left out: KIND.csv"),
     Field("kind", "choice", "kind of the table; left out: the file's name without its ending"),
     Field("instrument", "text", "the instrument that took the readings; may be left out where only one fits"),
-    Field("sd_factor", "number", "factor on every standard deviation of the table", default=1.0, above=0.0),
+    Field("sd_factor", "number", "factor on every standard deviation of the table, not on centring",
+          default=1.0, above=0.0),
     Field("surface", "choice", "where its lengths lie; ground: horizontal at the mean height of the ends; "
           "ground-from: horizontal at the instrument; slope: from instrument to target; grid or left out: on the plane "
           "itself; ellipsoid: not on a local plane", choices=SURFACES),
@@ -64,9 +65,21 @@ BOOK = (
 )  # fmt: skip
 
 
+CENTRING = (
+    Field("centring", "precision", "of the instrument over its mark, per axis: one horizontal vector a set-up, common "
+          "to all its readings", dimension="offset"),
+    Field("target", "precision", "of a target over its mark, per axis: one horizontal vector a set-up and target",
+          dimension="offset"),
+    Field("height", "precision", "of instrument and target heights: one a set-up, one a set-up and target",
+          dimension="offset"),
+)  # fmt: skip
+"""Keys of an instrument that belong to the set-up and not to one kind of reading; in this order."""
+
+
 def instrument_keys() -> tuple[Field, ...]:
-    """The keys of [instruments.NAME]: the error models that the kinds ask for."""
-    return tuple({k.instrument.name: k.instrument for k in KINDS.values() if k.instrument}.values())
+    """The keys of [instruments.NAME]: the error models that the kinds ask for, and centring."""
+    own = {k.instrument.name: k.instrument for k in KINDS.values() if k.instrument}
+    return (*own.values(), *CENTRING)
 
 
 SECTIONS: dict[str, tuple[Field, ...]] = {
@@ -85,6 +98,8 @@ OBSERVATION = (
           "packed and mil, milligon for gon; nothing is added to it"),
     Field("count", "number", "readings meaned in this value: the instrument's figure is divided by its root",
           default=1.0, above=0.0),
+    Field("setup", "text", "name of the set-up at the standing station; readings of one set-up share its centring; "
+          "left out: one a station and table"),
     Field("use", "choice", "no: left out, with a reason; planned: not measured yet, no value", default="yes",
           choices=("yes", "no", "planned")),
     Field("reason", "text", "why the reading is left out; required with use = no"),

@@ -86,7 +86,7 @@ def _element(w: Whitened, hat: Array) -> dict[str, Array]:
     k = w.l.shape[1]
     rest = np.eye(k) - hat
     v = -w.l
-    factor = w.batch.factor
+    factor = w.factor
     if k == 1:
         sd = factor[:, :, 0]
         r = rest[:, :, 0]
@@ -122,7 +122,7 @@ def largest_effect(solution: Solution) -> tuple[Ints, Ints, Array]:
 
 def _effects(solution: Solution, w: Whitened, chosen: slice, is_coordinate: Bools, best: Ints, size: Array) -> None:
     """Fill ``best`` and ``size`` for the elements ``chosen``: columns of Q A' P are solved for."""
-    factor = w.batch.factor[chosen]
+    factor = w.factor[chosen]
     b, k, _ = factor.shape
     whitened_unit = 1.0 / factor if k == 1 else np.linalg.solve(factor, np.broadcast_to(np.eye(k), factor.shape))
     loads = w.reduced[chosen].transpose(0, 2, 1) @ whitened_unit  # (b, c, k): A*' L^-1

@@ -75,6 +75,8 @@ class Kind:
     length_column: str = ""
     setup_column: str = ""
     group: GroupUnknown | None = None
+    occupies: bool = True
+    """Read by an instrument centred over its station to targets centred over theirs."""
     from_control: bool = False
     """Its rows are the control marks themselves; a free datum sets them aside."""
     wraps: bool = False

@@ -42,5 +42,6 @@ KIND = Kind(
     ),
     length_column="length",
     setup_column="setups",
+    occupies=False,
     meaning="levelled height differences, `to` minus `from`",
 )

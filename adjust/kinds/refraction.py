@@ -31,5 +31,6 @@ KIND = Kind(
     columns=(),
     value=(),
     group=GroupUnknown("refraction", by=(), shared=True, absorbs=frozenset(), setting="refraction"),
+    occupies=False,
     meaning="the coefficient of refraction as given in job.toml",
 )

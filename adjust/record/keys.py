@@ -44,7 +44,11 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("units", "object units", "the job's units; the record itself is in metres and radians"),
         ("frame", "object frame", "the frame of the coordinates"),
         ("solution", "object solution", "figures of the adjustment"),
-        ("free", "object? solution", "the same for a free stage before it; null where there was none"),
+        (
+            "free",
+            "object? free",
+            "the same for the free stage: the readings alone; null where control is no more than the datum needs",
+        ),
         ("stations", "list station", "adjusted and held stations in the order of the book"),
         ("side_shots", "list any", "stations fixed by unchecked readings only, listed apart"),
         ("lines", "list line", "observed lines in the order of the book, then the pairs"),
@@ -116,6 +120,21 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("better_than_stated", "flag", "below the lower limit: a warning, no failure"),
     ),
     "solution": (*_FIGURES, *_keys(("parts", "list part", "the same figures per uncoupled part"))),
+    "free": (
+        *_FIGURES,
+        *_keys(
+            ("parts", "list part", "the same figures per uncoupled part"),
+            ("similarity", "object? similarity", "how the free network lies on its control; null below two marks"),
+        ),
+    ),
+    "similarity": _keys(
+        ("marks", "integer", "marks with known east and north"),
+        ("shift_east", "number", "middle of the known places minus middle of the free ones"),
+        ("shift_north", "number", "the same north"),
+        ("turn", "number", "clockwise turn from the free network to the control"),
+        ("scale_ppm", "number", "scale of the control against the readings, parts per million"),
+        ("sd_scale_ppm", "number?", "its standard deviation from the readings; null where nothing is left to compare"),
+    ),
     "part": (*_keys(("what", "text", "plane or heights, with stations where there are several")), *_FIGURES),
     "station": _keys(
         ("station", "text", "name"),
@@ -207,7 +226,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
     "mark": _keys(
         ("station", "text", "mark"),
         ("part", "text", "east, north or height"),
-        ("misfit", "number", "check mark: adjusted minus known; weighted: the others' estimate minus known"),
+        ("misfit", "number?", "check mark: adjusted minus known; others: estimate of all others minus known"),
         ("sd", "number?", "standard deviation of the misfit"),
         ("verdict", "text", "agrees, disagrees, cannot be judged"),
         ("sentence", "text", "the same in words"),

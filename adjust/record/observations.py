@@ -55,7 +55,7 @@ def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
                 "observed": value(solution.design.observed[r]),
                 "adjusted": value(adjusted),
                 "residual": number(solution.residuals[r]),
-                "sd": None if held else number(solution.design.sd[r]),
+                "sd": None if held else number(solution.sd_readings[r]),
                 "sd_adjusted": number(sd_adjusted[r]),
                 "redundancy": _share(rel.redundancy[r]),
                 "checked_share": _share(rel.checked_share[r]),

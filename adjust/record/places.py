@@ -105,8 +105,8 @@ def line_entries(judgement: Judgement) -> list[dict[str, Any]]:
 def mark_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """Verdicts on control marks."""
     return [
-        {"station": m.station, "part": m.part, "misfit": coordinate(m.misfit), "sd": number(m.sd),
-         "verdict": m.verdict, "sentence": m.sentence}
+        {"station": m.station, "part": m.part, "misfit": None if m.misfit is None else coordinate(m.misfit),
+         "sd": number(m.sd), "verdict": m.verdict, "sentence": m.sentence}
         for m in judgement.control
     ]  # fmt: skip
 

@@ -72,8 +72,25 @@ _VERDICTS = {
 
 def _overall(record: Entry, shown: Shown) -> list[str]:
     parts = record["solution"]["parts"] or [record["solution"]]
-    lines = ["", *[line for part in parts[:WORST] for line in _overall_part(part, record["settings"], shown)]]
+    lines = ["", *_readings_alone(record, shown)]
+    lines += [line for part in parts[:WORST] for line in _overall_part(part, record["settings"], shown)]
     return [*lines, f"  and {count(len(parts) - WORST, 'more part')}: see the record"] if len(parts) > WORST else lines
+
+
+def _readings_alone(record: Entry, shown: Shown) -> list[str]:
+    """The free stage: does the work hold together before any control is held, and how does control fit it."""
+    free = record["free"]
+    if not free:
+        return []
+    test, factor = free["overall_test"], free["variance_factor"]
+    text = f"Readings alone, before control is held: {_VERDICTS.get(test['verdict'], test['verdict'])}"
+    if factor is not None:
+        text += f" (variance factor {shown.mark(f'{factor:.2f}')})"
+    fit = free["similarity"]
+    if fit and fit["sd_scale_ppm"] is not None:
+        ppm, sd = shown.mark(f"{fit['scale_ppm']:+.1f}"), shown.mark(f"{fit['sd_scale_ppm']:.1f}")
+        text += f"; scale of the control against them {ppm} ppm, standard deviation {sd}"
+    return _wrapped(text + ".")
 
 
 def _overall_part(part: Entry, settings: Entry, shown: Shown) -> list[str]:
@@ -86,7 +103,9 @@ def _overall_part(part: Entry, settings: Entry, shown: Shown) -> list[str]:
     if factor is not None:
         text += f" (variance factor {shown.mark(f'{factor:.2f}')}"
         if test["interval"]:
-            least, most = (shown.mark(f"{bound:.2f}") for bound in test["interval"])
+            least, most = (
+                shown.mark(f"{bound:.2f}" if bound >= 0.095 else f"{bound:.1g}") for bound in test["interval"]
+            )
             text += f", limits {least} to {most}"
         text += ")"
     return _wrapped(text + ".")

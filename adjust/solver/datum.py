@@ -43,6 +43,8 @@ class PartDatum:
     """(f, d) null vectors in terms of the part's freedoms."""
     stations: Ints
     """Datum stations of a free part."""
+    spare: int = 0
+    """Control coordinates beyond what the datum needs."""
 
 
 @dataclass(frozen=True)
@@ -101,7 +103,8 @@ def find_datum(
         missing = tuple(name for name, v in zip(freedoms(part), null, strict=True) if np.abs(v).max(initial=0) > 1e-6)
         if missing and not free:
             sentences += _missing_words(network, part, missing, control)
-        out.append(PartDatum(part, free, missing, null, _datum_stations(network, part, chosen)))
+        spare = 0 if free else int(control.sum()) - _null(network, part, start, np.zeros_like(control)).shape[1]
+        out.append(PartDatum(part, free, missing, null, _datum_stations(network, part, chosen), spare))
     if sentences:
         raise Unsolvable(sentences)
     return out
@@ -143,11 +146,13 @@ def _fixed_by_kinds(network: Network, part: Part) -> set[str]:
 
 
 def _datum_stations(network: Network, part: Part, chosen: tuple[str, ...]) -> Ints:
-    """The chosen stations of the part, else those with starting values, else all."""
+    """The chosen stations of the part, where it has none of them those with starting values, else all."""
     inside = part.stations
     if chosen:
         wanted = {network.stations.index[name] for name in chosen}
-        return np.array([i for i in inside if i in wanted], dtype=np.int64)
+        found = np.array([i for i in inside if i in wanted], dtype=np.int64)
+        if len(found):
+            return found
     given = ~np.isnan(network.stations.start[inside])
     started = inside[
         (given[:, :2].all(axis=1) & part.nodes[inside, PLANE]) | (given[:, 2] & part.nodes[inside, HEIGHT])

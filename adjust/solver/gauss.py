@@ -84,7 +84,7 @@ class GaussNewton:
         """Rows K (h, u) of the readings held without error."""
         k = np.zeros((len(self.held), self.design.unknowns.count + 1))
         for i, row in enumerate(self.held):
-            np.add.at(k[i], self.design.columns[row], here.numbers.coefficients[row])
+            np.add.at(k[i], self.design.columns[row], here.numbers.coefficients[row])  # -1 falls into the last, cut off
         return k[:, :-1]
 
     def cofactors(self, here: Linear) -> Cofactors:

@@ -57,6 +57,8 @@ class Solution:
     """(g,) group unknowns, radians."""
     whitened: list[Whitened]
     cofactors: Cofactors
+    coefficients: Array
+    """(R, e) partials by every slot of ``design.places`` at the answer, known coordinates included."""
     residuals: Array
     """(R,) adjusted minus observed, metres and radians."""
     adjusted: Array
@@ -66,6 +68,8 @@ class Solution:
     iterations: int
     assumed: tuple[str, ...]
     """Stations placed at an origin of the program's choice."""
+    free: Solution | None = None
+    """The free stage before this one: the readings alone, fitted to the control; None where it adds nothing."""
 
     @property
     def names(self) -> tuple[str, ...]:
@@ -79,6 +83,15 @@ class Solution:
         out = self.cofactors.blocks(numbers)
         missing = np.isnan(self.positions)
         out[missing[:, :, None] | missing[:, None, :]] = np.nan
+        return out
+
+    @cached_property
+    def sd_readings(self) -> Array:
+        """(R,) stated standard deviations of the readings with their share of centring; 0 for conditions."""
+        out = np.zeros(len(self.residuals))
+        for w in self.whitened:
+            out[w.batch.rows] = np.sqrt((w.factor**2).sum(axis=2))
+        out[self.design.held] = 0.0
         return out
 
     @property

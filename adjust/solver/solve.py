@@ -2,16 +2,16 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from adjust.book.job import Job
-from adjust.errors import Unsolvable
+from adjust.errors import NotConverged, Unsolvable
 from adjust.frames import LocalPlane
 from adjust.graph.parts import HEIGHT, PLANE, Part, find_parts
 from adjust.graph.starts import Start, find_start
-from adjust.network import Array, Bools, Network
+from adjust.network import HELD, WEIGHTED, Array, Bools, Network
 from adjust.solver import defects
 from adjust.solver.cofactors import Cofactors
 from adjust.solver.datum import PartDatum, assemble_datum, find_datum, null_space
@@ -46,18 +46,39 @@ def solve(job: Job) -> Solution:
     """
     with one_thread():
         ready = prepare(job)
-        state = State(ready.start.positions, ready.start.groups)
-        try:
-            outcome = ready.iteration.run(state)
-        except SingularPattern as singular:
-            raise Unsolvable(free_movements(ready, singular)) from None
-        return solution_at(job, ready, outcome.last, outcome.cofactors, outcome.iterations)
+        return replace(_iterated(job, ready), free=_free_stage(job, ready))
 
 
-def prepare(job: Job) -> Setting:
+def _iterated(job: Job, ready: Setting) -> Solution:
+    try:
+        outcome = ready.iteration.run(State(ready.start.positions, ready.start.groups))
+    except SingularPattern as singular:
+        raise Unsolvable(free_movements(ready, singular)) from None
+    return solution_at(job, ready, outcome.last, outcome.cofactors, outcome.iterations)
+
+
+def _free_stage(job: Job, ready: Setting) -> Solution | None:
+    """The readings alone on a free datum carried by the control marks, where control is more than the datum needs.
+
+    None too where the readings do not hold together without the control, as in a resection.
+    """
+    if not any(one.spare > 0 for one in ready.parts):
+        return None
+    role = job.network.stations.role
+    marks = tuple(
+        job.network.stations.names[i] for i in np.flatnonzero(((role == HELD) | (role == WEIGHTED)).any(axis=1))
+    )
+    alone = replace(job, settings=replace(job.settings, datum_kind="free", datum_stations=marks))
+    try:
+        return _iterated(alone, prepare(alone, ready.start))
+    except (Unsolvable, NotConverged):
+        return None
+
+
+def prepare(job: Job, start: Start | None = None) -> Setting:
     """Parts, datum, starting values and pattern of a job; raises Unsolvable."""
     parts = find_parts(job.network)
-    start = find_start(job.network)
+    start = start or find_start(job.network)
     if start.failures:
         raise Unsolvable(start.failures)
     settings = job.settings
@@ -116,7 +137,8 @@ def solution_at(job: Job, ready: Setting, last: Linear, cofactors: Cofactors, it
     )
     return Solution(
         job, ready.network, design, last.state.positions, last.state.groups, last.whitened, cofactors,
-        residuals, design.observed + residuals, parts, total, iterations, ready.start.assumed,
+        last.numbers.coefficients, residuals, design.observed + residuals, parts, total, iterations,
+        ready.start.assumed,
     )  # fmt: skip
 
 

@@ -193,6 +193,19 @@ def test_instrument_and_target_heights_count_along_the_verticals(tmp_path: Path)
     close(at["B"], [0.0, 400.0, 40.0], atol=1e-6)
 
 
+def test_heights_of_instrument_and_target_have_errors_of_their_own(tmp_path: Path) -> None:
+    """One zenith angle of 3 seconds over 500 m, level: sqrt((500 m * 3")^2 + 2 * (2 mm)^2) in the height of B."""
+    toml = HEAD.replace('zenith = "3 sec"', 'zenith = "3 sec"\nheight = "2 mm"')
+    solution, _ = solved(
+        tmp_path,
+        toml,
+        control="station,east,north,height\nA,0,0,100\nB,0,500,\n",
+        zenith_angles="from,to,zenith_angle,instrument_height,target_height\nA,B,90 00 00,1.5,1.5\n",
+    )
+    wanted = math.sqrt((500.0 * math.radians(3 / 3600)) ** 2 + 2 * 0.002**2)
+    close(solution.sd[solution.names.index("B"), 2], wanted, atol=1e-6)
+
+
 @pytest.mark.parametrize(("surface", "scale"), [("ground", 1 + 1100 / R), ("ground-from", 1 + 1000 / R), ("grid", 1.0)])
 def test_lengths_at_ground_level_are_longer_than_on_the_plane(surface: str, scale: float, tmp_path: Path) -> None:
     """Known heights scale them; they are no readings of heights, and levelling is adjusted apart."""
