@@ -55,6 +55,8 @@ class Group:
     """False: local, eliminated within its element. True: one bordered unknown of the whole network."""
     set: str = ""
     """The set's name as booked."""
+    turns: bool = True
+    """An angle that turning the network adds to; False: a pure number, such as a coefficient of refraction."""
 
 
 @dataclass(frozen=True)
@@ -89,6 +91,10 @@ class Block:
     """(m, 2) heights of instrument and target above their marks, metres; None: all zero."""
     constant: Array | None = None
     """(m,) value of the group unknown for rows without one (a fixed refraction coefficient); None: zero."""
+    corrections: tuple[tuple[str, Array], ...] = ()
+    """Name and amount (m,) of every correction between the booked value and ``values``."""
+    booked: tuple[str, ...] = ()
+    """Columns of the file that hold the values as booked; empty: the kind's own."""
 
     def __len__(self) -> int:
         return len(self.line)

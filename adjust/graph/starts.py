@@ -13,6 +13,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from adjust.frames import RADIUS_M
 from adjust.graph.parts import HEIGHT, PLANE, find_parts, listed
 from adjust.kinds import KINDS
 from adjust.network import HELD, Array, Block, Network
@@ -39,13 +40,15 @@ class _Pointings:
         self.set: list[int] = []
         self.orientation: list[float] = [math.nan] * len(network.groups)
         self.lengths: dict[tuple[int, int], float] = {}
+        zeniths = _sines(network)
         for block in network.blocks:
             says = KINDS[block.kind].says
             if says == "pointings":
                 self._pointings(block)
             elif says == "length":
                 for (i, j), d in zip(block.stations.tolist(), block.values[:, 0].tolist(), strict=True):
-                    self.lengths.setdefault((min(i, j), max(i, j)), d)
+                    level = d * zeniths.get((min(i, j), max(i, j)), 1.0) if block.surface == "slope" else d
+                    self.lengths.setdefault((min(i, j), max(i, j)), level)
 
     def _pointings(self, block: Block) -> None:
         sights = KINDS[block.kind].sights
@@ -60,6 +63,16 @@ class _Pointings:
                 self.to.append(stations[j])
                 self.reading.append(value if k == len(sights) - 1 else 0.0)
                 self.set.append(group)
+
+
+def _sines(network: Network) -> dict[tuple[int, int], float]:
+    """Sine of the zenith angle of every line that has one: it brings a slope distance to level."""
+    return {
+        (min(i, j), max(i, j)): math.sin(z)
+        for block in network.blocks
+        if KINDS[block.kind].says == "zenith"
+        for (i, j), z in zip(block.stations.tolist(), block.values[:, 0].tolist(), strict=True)
+    }
 
 
 class _Plane:
@@ -203,6 +216,10 @@ def _heights(network: Network, positions: Array, asked: np.ndarray) -> None:
             for (i, j), rise in zip(block.stations.tolist(), block.values[:, 0].tolist(), strict=True):
                 steps[i].append((j, rise))
                 steps[j].append((i, -rise))
+        elif KINDS[block.kind].says == "zenith":
+            for i, j, rise in _rises(block, positions):
+                steps[i].append((j, rise))
+                steps[j].append((i, -rise))
     height = positions[:, 2]
     queue = deque(np.flatnonzero(~np.isnan(height)).tolist())
     for seed in [None, *np.flatnonzero(asked).tolist()]:
@@ -215,6 +232,15 @@ def _heights(network: Network, positions: Array, asked: np.ndarray) -> None:
                 if math.isnan(height[j]):
                     height[j] = height[i] + rise
                     queue.append(j)
+
+
+def _rises(block: Block, positions: Array) -> list[tuple[int, int, float]]:
+    """Height differences by zenith angles over the distances between starting positions: D cot z + D^2/2R."""
+    above = np.zeros((len(block), 2)) if block.above is None else block.above
+    start, end = block.stations.T
+    d = np.hypot(*(positions[end, :2] - positions[start, :2]).T)
+    rise = d / np.tan(block.values[:, 0]) + d**2 / (2 * RADIUS_M) + above[:, 0] - above[:, 1]
+    return [(i, j, r) for i, j, r in zip(start.tolist(), end.tolist(), rise.tolist(), strict=True) if math.isfinite(r)]
 
 
 def _orientations(network: Network, plane: _Plane) -> Array:

@@ -97,12 +97,14 @@ def _settings(solution: Solution) -> dict[str, Any]:
     settings = solution.job.settings
     return {
         **settings.tests.__dict__,
+        "frame": {"plane_height": number(settings.frame.plane_height), "refraction": settings.frame.refraction.text},
         "datum": {"kind": settings.datum_kind or None, "stations": list(settings.datum_stations)},
         "instruments": {
             name: {key: model.text for key, model in keys.items()} for name, keys in settings.instruments.items()
         },
         "books": [
             {"file": t.file, "kind": t.kind, "instrument": t.instrument or None, "sd_factor": number(t.sd_factor),
+             "surface": t.surface or None,
              "units": {"length": t.units.length, "angle": t.units.angle, "decimal": t.units.decimal}}
             for t in solution.job.tables
         ],
@@ -120,7 +122,9 @@ def _frame(solution: Solution) -> dict[str, Any]:
         if assumed
         else None
     )
-    return {"kind": solution.design.frame.name, "origin": origin}
+    frame = solution.design.frame
+    return {"kind": frame.name, "origin": origin, "plane_height": coordinate(frame.plane_height),
+            "radius": coordinate(frame.radius)}  # fmt: skip
 
 
 def _free(judgement: Judgement) -> dict[str, Any] | None:

@@ -80,6 +80,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("outlier", "number", "of one reading's test"),
         ("power", "number", "of one reading's test"),
         ("variance_factor", "text", "given or from-residuals"),
+        ("frame", "object frame_settings", "frame as declared"),
         ("datum", "object datum", "datum as declared"),
         ("instruments", "object any", "error models by instrument and key, as declared"),
         ("books", "list book", "tables in their order"),
@@ -87,11 +88,16 @@ RECORD: dict[str, tuple[Field, ...]] = {
     "datum": _keys(
         ("kind", "text?", "control, free, or null: by what each part has"), ("stations", "texts", "as declared")
     ),
+    "frame_settings": _keys(
+        ("plane_height", "number?", "height of the plane as declared; null: by the job's heights"),
+        ("refraction", "text", "coefficient of refraction, with +- where it is estimated"),
+    ),
     "book": _keys(
         ("file", "text", "file"),
         ("kind", "text", "kind"),
         ("instrument", "text?", "instrument of the table"),
         ("sd_factor", "number", "factor on its standard deviations"),
+        ("surface", "text?", "where its lengths lie, as declared; null: nothing declared, which is the plane itself"),
         ("units", "object book_units", "its units"),
     ),
     "book_units": _keys(("length", "text", "length"), ("angle", "text", "angle"), ("decimal", "text", "decimal mark")),
@@ -102,7 +108,12 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("axis_order", "text", "printed order of coordinates"),
         ("bearings", "text", "azimuth or quadrant"),
     ),
-    "frame": _keys(("kind", "text", "local plane"), ("origin", "text?", "sentence where the program chose an origin")),
+    "frame": _keys(
+        ("kind", "text", "local plane"),
+        ("origin", "text?", "sentence where the program chose an origin"),
+        ("plane_height", "number", "height of the plane on which coordinates lie; matters only where heights do"),
+        ("radius", "number", "radius of the Earth for curvature and for lengths at height"),
+    ),
     "overall_test": _keys(
         ("interval", "numbers?", "limits of the variance factor"),
         ("verdict", "text", "met, not met, cannot be tested"),
@@ -166,7 +177,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("id", "text", "given identification, else FILE:LINE"),
         ("file", "text", "table"),
         ("line", "integer", "physical line where the row begins"),
-        ("kind", "text", "distance, direction, angle, azimuth, levelled, control"),
+        ("kind", "text", "distance, direction, angle, azimuth, zenith_angle, levelled, control, refraction"),
         ("part", "text?", "east, north, height of a coordinate"),
         ("at", "text?", "standing station, or the mark of a coordinate"),
         ("from", "text?", "station"),
@@ -175,7 +186,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("second", "text?", "second target of an angle"),
         ("set", "text?", "set as booked"),
         ("booked", "text", "the value's text as it stands in the book"),
-        ("corrections", "list any", "corrections between booked and observed"),
+        ("corrections", "list correction", "corrections between booked and observed"),
         ("group", "text", "where its standard deviation comes from: an instrument, sd, or held"),
         ("observed", "number", "value adjusted, reduced from the book"),
         ("adjusted", "number", "observed plus residual"),
@@ -190,12 +201,15 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("external_effect", "object? external_effect", "coordinate that such a blunder, unseen, moves most"),
         ("suspect", "flag", "fails the plain one-reading test"),
     ),
+    "correction": _keys(
+        ("name", "text", "what was corrected"), ("value", "number", "amount that was added to the booked value")
+    ),
     "external_effect": _keys(
         ("station", "text", "station"), ("part", "text", "east, north or height"), ("value", "number", "movement")
     ),
     "parameter": _keys(
-        ("what", "text", "orientation or turn"),
-        ("of", "text", "station and set"),
+        ("what", "text", "orientation, turn or refraction"),
+        ("of", "text", "station and set, or the job"),
         ("value", "number", "value"),
         ("sd", "number?", "standard deviation"),
     ),

@@ -14,12 +14,15 @@ from adjust.record.numbers import angle, coordinate, number
 
 STATION_KEYS = ("at", "from", "to", "first", "second")
 
+_ROUNDED = {"angle": angle, "length": coordinate, "number": number}
+"""How values of each dimension are rounded."""
+
 
 def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """One entry a scalar row, in the order of job.toml, then of rows."""
     solution, rel = judgement.solution, judgement.reliability
     network = solution.network
-    booked = [solution.job.booked(block.file) for block in network.blocks]
+    booked = [solution.job.booked(block.file, block.booked) for block in network.blocks]
     statistic, smallest, suspect = judgement.statistic, judgement.smallest_detectable, judgement.suspect
     sd_adjusted = rel.sd_adjusted * np.sqrt(judgement.scale)
     entries = []
@@ -27,7 +30,7 @@ def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
         b, i, p = int(network.rows.block[r]), int(network.rows.row[r]), int(network.rows.part[r])
         block = network.blocks[b]
         kind = KINDS[block.kind]
-        value = angle if kind.dimension == "angle" else coordinate
+        value = _ROUNDED[kind.dimension]
         adjusted = solution.adjusted[r] % (2 * np.pi) if kind.wraps else solution.adjusted[r]
         held = bool(solution.design.held[r])
         texts = booked[b][int(block.line[i])]
@@ -45,7 +48,9 @@ def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
             | {
                 "set": (network.groups[block.group[i]].set if block.group[i] >= 0 else "") or None,
                 "booked": texts[p] if len(kind.parts) > 1 else next(t for t in texts if t),
-                "corrections": [],
+                "corrections": [
+                    {"name": name, "value": value(amount[i])} for name, amount in block.corrections if amount[i]
+                ],
                 "group": "held" if held else block.precision[i],
                 "observed": value(solution.design.observed[r]),
                 "adjusted": value(adjusted),
@@ -110,7 +115,7 @@ def unchecked_entries(judgement: Judgement) -> list[dict[str, Any]]:
         into = (
             f"straight into {judgement.solution.names[station]}"
             if station >= 0
-            else "straight into the orientation of its set"
+            else "straight into the unknown that it shares with others"
         )
         why = f"nothing else here checks this {kind}: an error in it would go unseen, {into}"
         out.append({"observation": ids[r], "why": why})

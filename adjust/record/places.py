@@ -11,7 +11,7 @@ from adjust.graph.parts import HEIGHT, PLANE
 from adjust.judge import critical
 from adjust.judge.assess import Judgement
 from adjust.judge.ellipses import ellipses
-from adjust.network import ROLES, Array, Bools
+from adjust.network import ROLES, Array, Bools, Group
 from adjust.record.numbers import angle, coordinate, number
 from adjust.solver.solution import Solution
 
@@ -112,13 +112,17 @@ def mark_entries(judgement: Judgement) -> list[dict[str, Any]]:
 
 
 def parameter_entries(judgement: Judgement) -> list[dict[str, Any]]:
-    """Group unknowns with their standard deviations: orientations, turns."""
+    """Group unknowns with their standard deviations: orientations, turns, refraction."""
     solution = judgement.solution
     sd = _group_sd(judgement)
     return [
-        {"what": g.what, "of": g.of, "value": angle(solution.groups[i] % (2 * np.pi)), "sd": number(sd[i])}
+        {"what": g.what, "of": g.of, "value": _group_value(g, solution.groups[i]), "sd": number(sd[i])}
         for i, g in enumerate(solution.network.groups)
     ]
+
+
+def _group_value(group: Group, value: float) -> float | None:
+    return angle(value % (2 * np.pi)) if group.turns else number(value)
 
 
 def _group_sd(judgement: Judgement) -> Array:

@@ -228,7 +228,8 @@ def null_space(network: Network, parts: list[PartDatum], unknowns: Unknowns, pos
         vectors = np.zeros((unknowns.count, one.null.shape[1]))
         numbered = unknowns.coordinate >= 0
         vectors[unknowns.coordinate[numbered]] = moved[numbered]
-        shared = np.flatnonzero((unknowns.shared >= 0) & one.part.groups)
+        turning = np.array([group.turns for group in network.groups], dtype=bool)
+        shared = np.flatnonzero((unknowns.shared >= 0) & one.part.groups & turning)
         if len(shared) and "turn" in freedoms(one.part):
             extent = _extent(one.part, positions)
             vectors[unknowns.shared[shared]] = one.null[freedoms(one.part).index("turn")] / extent

@@ -88,7 +88,7 @@ def prepare(job: Job, start: Start | None = None) -> Setting:
     if network is not job.network:
         datum = find_datum(network, find_parts(network), "free", settings.datum_stations, start.positions)
     unknowns = Unknowns.of(network, [d.part for d in datum], free)
-    design = Design(network, LocalPlane(), unknowns)
+    design = Design(network, LocalPlane.of(network.stations, settings.frame.plane_height), unknowns)
     batches = make_batches(design, np.where(design.held, _working_sd(design), design.sd))
     whole = assemble_datum(network, datum, unknowns, start.positions, start.groups)
     return Setting(network, datum, design, start, GaussNewton(design, batches, whole))

@@ -15,6 +15,7 @@ angle = "dms"
 distance = "2 mm + 3 ppm"
 direction = "2 sec"
 azimuth = "5 sec"
+zenith = "3 sec"
 [instruments.level-1]
 levelling = "1.2 mm*sqrt(km)"
 """

@@ -80,6 +80,8 @@ SAMPLES = {
     "directions": "at,to,direction,set\nA,B,10 00 00,1\n",
     "azimuths": "from,to,azimuth\nA,B,10 00 00\n",
     "levelled": "from,to,rise,length\nA,B,1,100\n",
+    "zenith_angles": "from,to,zenith_angle,instrument_height,target_height\nA,B,84 00 00,1.5,1.6\n",
+    "traverse": "at,back,fore,angle,turn,bearing,distance,back_distance\nA,B,C,10 00 00,left,N 1 00 00 E,10,5\n",
     "booked_names": "booked,station\nX,A\n",
     "pairs": "from,to\nA,B\n",
 }
