@@ -26,7 +26,7 @@ KIND = Kind(
     sights=((0, 1),),
     touches=("height",),
     says="rise",
-    fixes=frozenset(),
+    fixes=frozenset({"scale"}),  # where zenith angles tie the plane to the heights; heights alone have none
     geometry=geometry,
     columns=(
         Field("rise", "length", "height of `to` minus height of `from`"),

@@ -39,7 +39,7 @@ KIND = Kind(
     sights=((0, 1),),
     touches=("both",),
     says="zenith",
-    fixes=frozenset({"scale"}),
+    fixes=frozenset(),
     geometry=geometry,
     columns=(
         Field("zenith_angle", "zenith", "zenith angle of the sight, both faces meaned: 0 is up, a quarter turn level"),

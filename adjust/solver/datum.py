@@ -6,6 +6,9 @@ station at (E, N) by
 
     shift east (1, 0)   shift north (0, 1)   turn (N, -E)   scale (E, N)        and an orientation by 1 for the turn.
 
+Where plane and heights hang together the scale carries the heights along; that sights see the Earth's curvature fixes
+it by so little (one part in millions of the readings' own weight) that it counts as free.
+
 A freedom is taken away by a kind of reading (a distance fixes the scale) or by control; what is left is the null space
 of those conditions. A free part ends with C'(x - x_ref) = 0 over its datum stations, which is the minimum-norm
 (Moore-Penrose) solution over them (Koch 1999, section 3.3): with a solution x_m, cofactors Q_m on minimal constraints,
@@ -84,7 +87,10 @@ def movements(part: Part, positions: Array) -> Array:
         out[here, 0, 2], out[here, 1, 2] = xy[:, 1], -xy[:, 0]
         out[here, :2, 3] = xy
     if "height" in names:
-        out[part.nodes[:, HEIGHT], 2, -1] = 1.0
+        up = part.nodes[:, HEIGHT]
+        out[up, 2, -1] = 1.0
+        if "scale" in names:
+            out[up, 2, 3] = (positions[up, 2] - positions[up, 2].mean()) / _extent(part, positions)
     return out
 
 
