@@ -25,7 +25,7 @@ def bridges(count: int, start: Ints, end: Ints, roots: Iterable[int]) -> dict[in
         at[j].append((e, i))
     order: list[int] = []
     place, low = [-1] * count, [0] * count
-    found: dict[int, Ints] = {}
+    found: dict[int, tuple[int, int]] = {}
     for root in [*roots, *range(count)]:
         if place[root] >= 0:
             continue
@@ -41,7 +41,7 @@ def bridges(count: int, start: Ints, end: Ints, roots: Iterable[int]) -> dict[in
                     above = stack[-1][0]
                     low[above] = min(low[above], low[node])
                     if low[node] > place[above]:
-                        found[by] = np.array(order[place[node] :], dtype=np.int64)
+                        found[by] = (place[node], len(order))
                 continue
             e, j = step
             if place[j] >= 0:
@@ -50,4 +50,5 @@ def bridges(count: int, start: Ints, end: Ints, roots: Iterable[int]) -> dict[in
                 place[j] = low[j] = len(order)
                 order.append(j)
                 stack.append((j, e, iter(at[j])))
-    return found
+    visited = np.array(order, dtype=np.int64)
+    return {e: visited[first:last] for e, (first, last) in found.items()}  # views: a long chain has no long copies

@@ -26,8 +26,8 @@ from adjust.network import Array, Bools, Ints
 Complex = NDArray[np.complex128]
 
 STILL = 1e-6
-"""A station rests if its share of every unit movement is below this; rounding leaves 1e-9
-(tests/judge/defects_study.py)."""
+"""A station rests if its share of every unit movement is below this; rounding leaves 3e-15 at
+the most before the movements are taken apart (tests/judge/null_study.py)."""
 SAME = 1e-6
 """Relative difference of a up to which two lines move alike."""
 

@@ -26,6 +26,8 @@ from adjust.solver.solution import Solution
 MOST_WORK = 2_000_000
 """Unchecked readings times lines up to which every movement is followed; beyond it only the first of them are."""
 MOST = 8
+FAR_SORTED = 200
+"""Stations behind a bridge that are put in order; the nearest are told of, so that long chains cost no more."""
 
 
 @dataclass(frozen=True)
@@ -121,7 +123,8 @@ class Unchecked:
 
     def _only_way(self, r: int, far: Ints) -> str:
         i, j = self._readings.stations(r)[:2]
-        return f"the {self._kind(r)} {self._name(i)}-{self._name(j)} is the only way to {self._listed(far)}"
+        more = f" and {len(far) - FAR_SORTED} beyond them" if len(far) > FAR_SORTED else ""
+        return f"the {self._kind(r)} {self._name(i)}-{self._name(j)} is the only way to {self._listed(far[:FAR_SORTED])}{more}"
 
     def _listed(self, stations: Ints) -> str:
         return listed(self.solution.network, np.sort(stations), MOST)
@@ -170,11 +173,19 @@ class Unchecked:
         others = [k for k in own if k != r]
         if not all(self._untested[k] for k in own) or len(own) > 6:
             return f"an error in this {self._kind(r)} goes unseen into {name}: its other readings do not see that way"
-        if len(own) > 2 or r not in own:
+        if r not in own:
+            leads = "it orients the set that alone leads there" if self._leads(r, own) else "nothing else checks it"
+            return f"an error in this {self._kind(r)} goes unseen into {name}: {leads}"
+        if len(own) > 2:
             return (f"{name} has as many readings as unknowns: {counted([self._readings.kind(k) for k in own])} fix it "
                     "but nothing checks them")  # fmt: skip
         alone = f"it and {counted([self._readings.kind(k) for k in others])}" if others else "it"
         return f"an error in this {self._kind(r)} goes unseen into {name}, because {name} hangs on {alone} alone"
+
+    def _leads(self, r: int, rows: list[int]) -> bool:
+        """Whether one of these rows shares the orientation of row r."""
+        group = self._readings.group(r)
+        return group >= 0 and any(self._readings.group(k) == group for k in rows)
 
     def _rows_of(self, station: int, component: int) -> list[int]:
         return self._readings.at(station, component)

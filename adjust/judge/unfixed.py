@@ -41,7 +41,8 @@ def words(loose: Loose) -> list[str]:
 def warnings(solution: Solution) -> list[str]:
     """A sentence for every station that is fixed, but only just: bend between WARNED and REFUSED."""
     state = State(solution.positions, solution.groups)
-    thin = thin_stations(solution.design, solution.whitened, state, WARNED)
+    parts = [p.datum for p in solution.parts if p.datum]
+    thin = thin_stations(solution.design, parts, solution.whitened, state, WARNED)
     freedom = Freedom(solution.network, np.nan_to_num(solution.positions), np.zeros((len(solution.names), 3, 0)), [])
     return [f"{Figure(freedom).thin(t)} (nearly so: its precision along there is only a guess)" for t in thin]
 

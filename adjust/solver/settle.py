@@ -51,7 +51,7 @@ def settle(ready: Setting) -> Outcome:
     factor = outcome.cofactors.factor
     if factor is not None and factor.pivot_least < DOUBTFUL_PIVOT:
         _refuse_loose(ready, outcome.last)
-    thin = thin_stations(ready.design, outcome.last.whitened, outcome.last.state, REFUSED)
+    thin = thin_stations(ready.design, ready.parts, outcome.last.whitened, outcome.last.state, REFUSED)
     if thin:
         raise Loose(replace(freedom_at(ready, outcome.last), thin=tuple(thin)))
     return outcome
@@ -59,7 +59,7 @@ def settle(ready: Setting) -> Outcome:
 
 def _refuse_loose(ready: Setting, here: Linear) -> None:
     """Raise Loose if something is free at a state, or fixed only just."""
-    thin = tuple(thin_stations(ready.design, here.whitened, here.state, REFUSED))
+    thin = tuple(thin_stations(ready.design, ready.parts, here.whitened, here.state, REFUSED))
     freedom = replace(freedom_at(ready, here), thin=thin)
     if len(freedom.stations):
         raise Loose(freedom)
@@ -86,7 +86,7 @@ def _barely_fixed(ready: Setting, lost: SingularPattern) -> Unsolvable:
     """Nothing moves freely, and yet the numbers are lost: the stations that looked thinnest at the start, or those
     whose pivots went."""
     begin = ready.iteration.at(ready.begin)
-    thin = tuple(thin_stations(ready.design, begin.whitened, begin.state, 0.0))
+    thin = tuple(thin_stations(ready.design, ready.parts, begin.whitened, begin.state, 0.0))
     pivots = np.isin(ready.design.unknowns.coordinate, ready.iteration.kept[lost.unknowns])
     gone = np.asarray(pivots.any(axis=1))
     thin = tuple(t for t in thin if gone[t.station]) or thin
