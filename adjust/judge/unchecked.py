@@ -124,7 +124,8 @@ class Unchecked:
     def _only_way(self, r: int, far: Ints) -> str:
         i, j = self._readings.stations(r)[:2]
         more = f" and {len(far) - FAR_SORTED} beyond them" if len(far) > FAR_SORTED else ""
-        return f"the {self._kind(r)} {self._name(i)}-{self._name(j)} is the only way to {self._listed(far[:FAR_SORTED])}{more}"
+        line = f"{self._kind(r)} {self._name(i)}-{self._name(j)}"
+        return f"the {line} is the only way to {self._listed(far[:FAR_SORTED])}{more}"
 
     def _listed(self, stations: Ints) -> str:
         return listed(self.solution.network, np.sort(stations), MOST)

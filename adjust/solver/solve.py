@@ -84,7 +84,8 @@ def _loosened(job: Job, network: Network, parts: list[Part], start: Start) -> li
         try:
             out += find_datum(network, [part], job.settings.datum_kind, (), start.positions)
         except Unsolvable:
-            out += find_datum(network, [part], "free", (), start.positions)
+            free = find_datum(network, [part], "free", (), start.positions)
+            out += [replace(one, stations=one.part.stations) for one in free]
     return out
 
 

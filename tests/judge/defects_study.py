@@ -16,6 +16,7 @@ import tempfile
 from collections import Counter
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -117,9 +118,10 @@ class Sheet:
         tables = {
             "control": ("station,east,north,height", control),
             "stations": ("station,east,north", stations if self.distances or self.sets else []),
-            "distances": ("from,to,distance,sd", [f"{a},{b},{abs(self.at[a] - self.at[b]) + SD_M * self.error()!r},{SD_M}"
-                                                  for a, b in self.distances]),
-            "directions": ("at,to,set,direction,sd", [row for k, one in enumerate(self.sets) for row in self._set(k, *one)]),
+            "distances": ("from,to,distance,sd", [
+                f"{a},{b},{abs(self.at[a] - self.at[b]) + SD_M * self.error()!r},{SD_M}" for a, b in self.distances]),
+            "directions": ("at,to,set,direction,sd", [
+                row for k, one in enumerate(self.sets) for row in self._set(k, *one)]),
             "angles": ("at,first,second,angle,sd", [
                 f"{a},{b},{c},{self._degrees(self._azimuth(a, c) - self._azimuth(a, b))},{SD_SEC}"
                 for a, b, c in self.angles]),
@@ -196,7 +198,7 @@ def chain(s: Sheet) -> None:
     names = [s.new(s.at[a] + (s.at[b] - s.at[a]) * (k + 1) / (n + 1) + 0.2 * out * math.sin(math.pi * (k + 1) / (n + 1))
                    + complex(*s.rng.uniform(-9, 9, 2))) for k in range(n)]  # fmt: skip
     walk = [a, *names, b]
-    s.distances += list(zip(walk, walk[1:], strict=False))
+    s.distances += list(pairwise(walk))
     s.want("flex", names, ", ".join(_order(s, [a, b])))
 
 
@@ -332,7 +334,7 @@ def one_known_height_too_few(s: Sheet) -> None:
     s.kind = "control"
     first, second = s.middle[: len(s.middle) // 2], s.middle[len(s.middle) // 2 :]
     for names in (first, second):
-        s.levelled += list(zip(names, names[1:], strict=False))
+        s.levelled += list(pairwise(names))
     s.known_heights = [first[0]]
     s.want("height", second)
 

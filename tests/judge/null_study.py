@@ -11,6 +11,7 @@ from __future__ import annotations
 
 import sys
 import tempfile
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -52,7 +53,7 @@ def traverse(n: int) -> Sheet:
     sheet = Sheet(np.random.default_rng(n))
     walk = [sheet.new(complex(100 * k, 40 * (k % 2))) for k in range(n)]
     sheet.known = walk[:2]
-    sheet.distances = list(zip(walk, walk[1:], strict=False))
+    sheet.distances = list(pairwise(walk))
     sheet.sets = [(b, [a, c]) for a, b, c in zip(walk, walk[1:], walk[2:], strict=False)]
     return sheet
 
