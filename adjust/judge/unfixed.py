@@ -15,7 +15,7 @@ import numpy as np
 
 from adjust.graph.parts import HEIGHT, PLANE, listed
 from adjust.judge.pieces import Complex, Move, Peeling, Unit, independent, rigid_pieces, separate, similarity, velocity
-from adjust.judge.readings import Readings, counted, kind_word, number, plane_edges
+from adjust.judge.readings import Readings, counted, number, plane_edges
 from adjust.network import Array, Ints, Network
 from adjust.solver.datum import PartDatum, movements
 from adjust.solver.defects import WARNED, Freedom, Loose, Thin, thin_stations
@@ -78,6 +78,11 @@ class Figure:
 
     def sentences(self) -> list[str]:
         """All sentences in the order of the stations."""
+        if self.freedom.partial:
+            who = listed(self.network, self.freedom.stations, MOST)
+            count = self.freedom.moves.shape[2]
+            return [f"nothing fixes {who}: {count} movements or more are free, too many to tell one by one; "
+                    "tie some of these to the rest and run it again"]  # fmt: skip
         found: list[tuple[tuple[int, ...], str]] = []
         for one in self.freedom.parts:
             if one.part.nodes[:, PLANE].any():
@@ -334,6 +339,3 @@ class Figure:
 def _azimuth(v: complex) -> str:
     """Azimuth of a movement, a whole number of degrees below 180."""
     return f"{math.degrees(math.atan2(v.real, v.imag)) % 180:.0f}"
-
-
-__all__ = ["Figure", "kind_word", "warnings", "words"]

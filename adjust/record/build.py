@@ -178,5 +178,7 @@ def _warnings(judgement: Judgement) -> list[str]:
     out += unfixed.warnings(solution)
     gap = float(np.nansum(judgement.reliability.redundancy)) - solution.total.degrees_of_freedom
     if abs(gap) > 1e-6 * max(1, solution.total.degrees_of_freedom):
-        out.append(f"the redundancy numbers miss their sum by {gap:.2g}: some station may be barely fixed.")
+        loosest = solution.names[int(np.nanargmax(np.nan_to_num(solution.sd).max(axis=1)))]
+        out.append(f"the redundancy numbers miss their sum by {gap:.2g}: some station may be barely fixed; "
+                   f"{loosest} is the least certain.")  # fmt: skip
     return out

@@ -38,7 +38,8 @@ free movements 7.1e-15 at the most (146 jobs with defects); what is fixed 1.9e-5
 jobs, and 4.9e-7 in an open traverse of 1,500 stations (falling with the square of their number)."""
 REGULAR = 1e-12
 ROUNDS = 4
-BLOCK_FIRST, BLOCK_MOST = 8, 256
+BLOCK_FIRST, MOST_NUMBERS = 8, 30_000_000
+"""Vectors of the first block, and numbers in the largest one (240 MB): 300 movements of 100,000 unknowns."""
 DOUBTFUL_PIVOT = 1e-6
 """Pivots of the factor below this are looked into: rounding can leave 2.6e-10 in place of zero (engine.PIVOT_LEAST)."""
 THIN = 30.0
@@ -69,6 +70,8 @@ class Freedom:
     moves: Array
     parts: list[PartDatum]
     thin: tuple[Thin, ...] = ()
+    partial: bool = False
+    """There are more movements than were sought, so that these cannot be told apart."""
 
     @property
     def stations(self) -> Ints:
@@ -134,23 +137,28 @@ def _dense(pattern: Pattern, scale: Array, whitened: list[Whitened]) -> Array:
 
 
 def _iterated(pattern: Pattern, scale: Array, whitened: list[Whitened]) -> Array:
-    """The same by inverse iteration, with as many vectors as it takes to hold them all, BLOCK_MOST at the most."""
+    """The same by inverse iteration, with as many vectors as it takes to hold them all, ``most_moves`` at the most."""
     count = len(scale)
     shifted = pattern.normal(whitened)
     shifted.data *= scale[shifted.indices] * np.repeat(scale, np.diff(shifted.indptr))
     shifted.setdiag(shifted.diagonal() + REGULAR)
     lu = splu(shifted, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0,
               options={"SymmetricMode": True, "Equil": False})  # fmt: skip
-    rng, k = np.random.default_rng(1), BLOCK_FIRST
+    rng, k = np.random.default_rng(1), min(BLOCK_FIRST, most_moves(count))
     while True:
         y = np.linalg.qr(rng.standard_normal((count, k)))[0]
         for _ in range(ROUNDS):
             y = np.linalg.qr(lu.solve(np.asfortranarray(y)))[0]
         s, turned = _judged(pattern, scale, whitened, y)
         free = s < NULL_LEAST
-        if free.sum() < k or k >= min(BLOCK_MOST, count):
+        if free.sum() < k or k >= most_moves(count):
             return np.asarray(turned[:, free])
-        k = min(4 * k, BLOCK_MOST, count)
+        k = min(4 * k, most_moves(count))
+
+
+def most_moves(count: int) -> int:
+    """Movements that are sought among ``count`` unknowns."""
+    return max(1, min(count, MOST_NUMBERS // max(count, 1)))
 
 
 def as_moves(unknowns: Unknowns, vectors: Array) -> Array:

@@ -15,9 +15,19 @@ from adjust.errors import Unsolvable
 from adjust.graph.parts import listed
 from adjust.graph.starts import Start
 from adjust.network import Network
+from adjust.solver import defects
 from adjust.solver.cofactors import Cofactors
 from adjust.solver.datum import PartDatum
-from adjust.solver.defects import DOUBTFUL_PIVOT, REFUSED, Freedom, Loose, as_moves, null_vectors, thin_stations
+from adjust.solver.defects import (
+    DOUBTFUL_PIVOT,
+    REFUSED,
+    Freedom,
+    Loose,
+    as_moves,
+    most_moves,
+    null_vectors,
+    thin_stations,
+)
 from adjust.solver.design import Design, State
 from adjust.solver.engine import SingularPattern
 from adjust.solver.gauss import GaussNewton, Linear, NotSettled, Outcome
@@ -115,7 +125,9 @@ def freedom_at(ready: Setting, here: Linear) -> Freedom:
         null_vectors(iteration.pattern, unknowns, iteration.kept, here.whitened)
         if len(iteration.kept) else np.zeros((unknowns.count, 0))
     )  # fmt: skip
-    return Freedom(ready.network, np.nan_to_num(here.state.positions), as_moves(unknowns, vectors), ready.parts)
+    moves, count = as_moves(unknowns, vectors), len(iteration.kept)
+    partial = count > defects.DENSE_MOST and moves.shape[2] >= most_moves(count)
+    return Freedom(ready.network, np.nan_to_num(here.state.positions), moves, ready.parts, partial=partial)
 
 
 def first_look(ready: Setting) -> tuple[Linear, Cofactors]:

@@ -123,6 +123,17 @@ def test_more_movements_than_the_first_block_holds(tmp_path: Path, monkeypatch: 
     assert judged(sheet)[0]
 
 
+def test_more_movements_than_are_sought_are_not_told_apart(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(defects, "DENSE_MOST", 0)
+    monkeypatch.setattr(defects, "MOST_NUMBERS", 200)
+    sheet = sound(4, 24)
+    for _ in range(6):
+        spur_distance(sheet)
+    (only,) = told(sheet)
+    assert only.startswith(f"nothing fixes {', '.join(names[0] for _, names, _ in sheet.wanted)}: ")
+    assert "movements or more are free" in only
+
+
 def test_a_start_on_the_line_by_chance_is_no_defect(tmp_path: Path) -> None:
     """P starts on the line A-B and stands far off it: the iteration begins beside the line."""
     sheet = Sheet(np.random.default_rng(5))
