@@ -16,6 +16,7 @@ from adjust.judge.lines import Lines, find_lines
 from adjust.judge.overall import NOT_MET, OverallTest, overall_tests
 from adjust.judge.reliability import Reliability, largest_effect, reliability
 from adjust.judge.similarity import Similarity, fit_control
+from adjust.judge.unchecked import Unchecked
 from adjust.network import Array, Bools, Ints
 from adjust.notebook import cell, html_table
 from adjust.solver.solution import Solution
@@ -71,6 +72,11 @@ class Judgement:
         if limit is None:
             return np.zeros(len(self.statistic), dtype=bool)
         return np.asarray(np.abs(np.nan_to_num(self.statistic)) > limit)
+
+    @cached_property
+    def unchecked(self) -> Unchecked:
+        """Readings that no other checks with the reasons, and the stations that hang on them only."""
+        return Unchecked(self.solution, self.reliability)
 
     @property
     def blame(self) -> Ints:

@@ -10,12 +10,13 @@ import scipy
 
 import adjust
 from adjust.caution import CAUTION
+from adjust.judge import unfixed
 from adjust.judge.assess import Judgement
 from adjust.judge.overall import OverallTest
 from adjust.network import ROLES
 from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
-from adjust.record.places import line_entries, mark_entries, parameter_entries, station_entries
+from adjust.record.places import line_entries, mark_entries, parameter_entries, side_shot_entries, station_entries
 from adjust.solver.solution import PartResult, Solution
 from adjust.solver.threads import one_thread
 
@@ -46,7 +47,7 @@ def _record(judgement: Judgement) -> dict[str, Any]:
         "solution": _block(solution, judgement.overall),
         "free": _free(judgement),
         "stations": station_entries(judgement),
-        "side_shots": [],
+        "side_shots": side_shot_entries(judgement),
         "lines": line_entries(judgement),
         "observations": observation_entries(judgement),
         "parameters": parameter_entries(judgement),
@@ -203,7 +204,10 @@ def _warnings(judgement: Judgement) -> list[str]:
             out.append(f"{part.what}: no reading to spare: nothing is checked and no test can be made.")
         if part.datum and part.datum.free:
             out.append(f"{part.what}: free network ({_datum_words(solution, part)}): relative to its own datum.")
+    out += unfixed.warnings(solution)
     gap = float(np.nansum(judgement.reliability.redundancy)) - solution.total.degrees_of_freedom
     if abs(gap) > 1e-6 * max(1, solution.total.degrees_of_freedom):
-        out.append(f"the redundancy numbers miss their sum by {gap:.2g}: some station may be barely fixed.")
+        loosest = solution.names[int(np.nanargmax(np.nan_to_num(solution.sd).max(axis=1)))]
+        out.append(f"the redundancy numbers miss their sum by {gap:.2g}: some station may be barely fixed; "
+                   f"{loosest} is the least certain.")  # fmt: skip
     return out

@@ -106,20 +106,9 @@ def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
 
 
 def unchecked_entries(judgement: Judgement) -> list[dict[str, Any]]:
-    """Readings whose errors no test here can see, with the station that they carry alone."""
-    rows, ids = judgement.solution.network.rows, judgement.ids
-    out = []
-    for r in np.flatnonzero(~judgement.reliability.tested & ~judgement.solution.design.held).tolist():
-        kind = judgement.solution.network.blocks[rows.block[r]].kind.replace("_", " ")
-        station = int(judgement.effect_station[r])
-        into = (
-            f"straight into {judgement.solution.names[station]}"
-            if station >= 0
-            else "straight into the unknown that it shares with others"
-        )
-        why = f"nothing else here checks this {kind}: an error in it would go unseen, {into}"
-        out.append({"observation": ids[r], "why": why})
-    return out
+    """Readings whose errors no test here can see, with the reason."""
+    ids, unchecked = judgement.ids, judgement.unchecked
+    return [{"observation": ids[r], "why": unchecked.why[r]} for r in unchecked.rows]
 
 
 def left_out(aside: Aside, with_reason: bool) -> dict[str, Any]:

@@ -38,6 +38,19 @@ def station_entries(judgement: Judgement) -> list[dict[str, Any]]:
     return entries
 
 
+def side_shot_entries(judgement: Judgement) -> list[dict[str, Any]]:
+    """Stations that unchecked readings only fix, with those readings."""
+    solution, ids = judgement.solution, judgement.ids
+    sd = np.sqrt(np.maximum(np.einsum("nii->ni", judgement.covariance), 0.0))
+    return [
+        {"station": solution.names[i]}
+        | {key: coordinate(x) for key, x in zip(("east", "north", "height"), solution.positions[i], strict=True)}
+        | {key: number(x) for key, x in zip(("sd_east", "sd_north", "sd_height"), sd[i], strict=True)}
+        | {"readings": list(dict.fromkeys(ids[r] for r in rows))}
+        for i, rows in judgement.unchecked.side_shots.items()
+    ]
+
+
 class _Shapes:
     """Standard and confidence ellipses of covariances (n, 2, 2)."""
 

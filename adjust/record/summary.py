@@ -177,7 +177,10 @@ def _confidence(record: Entry) -> str:
 
 def _precision(record: Entry, shown: Shown) -> list[str]:
     lines = []
-    plane = [one for one in record["stations"] if one["ellipse_confidence"] and one["ellipse_confidence"]["semi_major"]]
+    aside = {one["station"] for one in record["side_shots"]}
+    judged = [one for one in record["stations"] if one["station"] not in aside]
+    judged = judged if any("new" in (one["role"], one["role_height"]) for one in judged) else record["stations"]
+    plane = [one for one in judged if one["ellipse_confidence"] and one["ellipse_confidence"]["semi_major"]]
     if plane:
         worst = max(plane, key=lambda one: float(one["ellipse_confidence"]["semi_major"]))
         e = worst["ellipse_confidence"]
@@ -186,11 +189,14 @@ def _precision(record: Entry, shown: Shown) -> list[str]:
             f"{shown.small_sd(e['semi_major'])} by {shown.small_sd(e['semi_minor'])} {shown.small} (half axes), "
             f"long axis {shown.rough_bearing(e['azimuth'])}."
         )
-    high = [one for one in record["stations"] if one["sd_height"]]
+    high = [one for one in judged if one["sd_height"]]
     if high:
         worst = max(high, key=lambda one: float(one["sd_height"]))
         sd = shown.small_sd(worst["sd_height"])
         lines.append(f"Least certain height: {plain(worst['station'])}, standard deviation {sd} {shown.small}.")
+    shots = [plain(one["station"]) for one in record["side_shots"]]
+    if shots:
+        lines += _wrapped(f"Side shots, fixed by unchecked readings only and counted in no verdict: {_some(shots)}.")
     return ["", *lines] if lines else []
 
 

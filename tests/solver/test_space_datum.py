@@ -21,7 +21,7 @@ zenith = "3 sec"
 levelling = "1 mm*sqrt(km)"
 """
 LEVELLED = "from,to,rise,length\nA,B,20.001,200\n"
-DISTANCE = "from,to,distance,sd\nA,C,234.307,3\n"
+DISTANCE = "from,to,distance,sd\nA,C,234.307,0.003\n"
 
 
 def job(folder: Path, more: dict[str, str]) -> adjust.Job:
