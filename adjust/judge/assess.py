@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -16,11 +16,12 @@ from adjust.judge.lines import Lines, find_lines
 from adjust.judge.overall import NOT_MET, OverallTest, overall_tests
 from adjust.judge.reliability import Reliability, largest_effect, reliability
 from adjust.judge.similarity import Similarity, fit_control
-from adjust.judge.unchecked import Unchecked
 from adjust.network import Array, Bools, Ints
-from adjust.notebook import cell, html_table
 from adjust.solver.solution import Solution
 from adjust.solver.threads import one_thread
+
+if TYPE_CHECKING:
+    from adjust.judge.unchecked import Unchecked
 
 
 @dataclass(frozen=True)
@@ -76,7 +77,14 @@ class Judgement:
     @cached_property
     def unchecked(self) -> Unchecked:
         """Readings that no other checks with the reasons, and the stations that hang on them only."""
+        from adjust.judge.unchecked import Unchecked  # its words are seldom needed, and take their time to load
+
         return Unchecked(self.solution, self.reliability)
+
+    @property
+    def all_checked(self) -> bool:
+        """Whether every reading is checked by others."""
+        return bool((self.reliability.tested | self.solution.design.held).all())
 
     @property
     def blame(self) -> Ints:
@@ -143,6 +151,8 @@ class Judgement:
         return pd.DataFrame(columns).set_index("id")
 
     def _repr_html_(self) -> str:
+        from adjust.notebook import cell, html_table
+
         worst = np.argsort(-np.abs(np.nan_to_num(self.statistic)), kind="stable")[:20].tolist()
         ids, head = self.ids, ("reading", "statistic", "redundancy", "suspect")
         rows = [

@@ -18,8 +18,7 @@ from adjust.judge.pieces import Complex, Move, Peeling, Unit, independent, rigid
 from adjust.judge.readings import Readings, counted, number, plane_edges
 from adjust.network import Array, Ints, Network
 from adjust.solver.datum import PartDatum, movements
-from adjust.solver.defects import WARNED, Freedom, Loose, Thin, thin_stations
-from adjust.solver.design import State
+from adjust.solver.defects import Freedom, Loose, Thin, thin_of
 from adjust.solver.solution import Solution
 
 CENTRE = 1e-4
@@ -40,9 +39,11 @@ def words(loose: Loose) -> list[str]:
 
 def warnings(solution: Solution) -> list[str]:
     """A sentence for every station that is fixed, but only just: bend between WARNED and REFUSED."""
-    state = State(solution.positions, solution.groups)
-    parts = [p.datum for p in solution.parts if p.datum]
-    thin = thin_stations(solution.design, parts, solution.whitened, state, WARNED)
+    return nearly(solution, thin_of(solution))
+
+
+def nearly(solution: Solution, thin: list[Thin]) -> list[str]:
+    """The sentences for stations that are fixed only just."""
     freedom = Freedom(solution.network, np.nan_to_num(solution.positions), np.zeros((len(solution.names), 3, 0)), [])
     return [f"{Figure(freedom).thin(t)} (nearly so: its precision along there is only a guess)" for t in thin]
 

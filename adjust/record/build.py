@@ -10,13 +10,13 @@ import scipy
 
 import adjust
 from adjust.caution import CAUTION
-from adjust.judge import unfixed
 from adjust.judge.assess import Judgement
 from adjust.judge.overall import OverallTest
 from adjust.network import ROLES
 from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
 from adjust.record.places import line_entries, mark_entries, parameter_entries, side_shot_entries, station_entries
+from adjust.solver.defects import thin_of
 from adjust.solver.solution import PartResult, Solution
 from adjust.solver.threads import one_thread
 
@@ -204,7 +204,11 @@ def _warnings(judgement: Judgement) -> list[str]:
             out.append(f"{part.what}: no reading to spare: nothing is checked and no test can be made.")
         if part.datum and part.datum.free:
             out.append(f"{part.what}: free network ({_datum_words(solution, part)}): relative to its own datum.")
-    out += unfixed.warnings(solution)
+    thin = thin_of(solution)
+    if thin:
+        from adjust.judge import unfixed  # its words are seldom needed, and take their time to load
+
+        out += unfixed.nearly(solution, thin)
     gap = float(np.nansum(judgement.reliability.redundancy)) - solution.total.degrees_of_freedom
     if abs(gap) > 1e-6 * max(1, solution.total.degrees_of_freedom):
         loosest = solution.names[int(np.nanargmax(np.nan_to_num(solution.sd).max(axis=1)))]

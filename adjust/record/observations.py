@@ -107,6 +107,8 @@ def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
 
 def unchecked_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """Readings whose errors no test here can see, with the reason."""
+    if judgement.all_checked:
+        return []
     ids, unchecked = judgement.ids, judgement.unchecked
     return [{"observation": ids[r], "why": unchecked.why[r]} for r in unchecked.rows]
 

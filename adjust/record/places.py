@@ -40,6 +40,8 @@ def station_entries(judgement: Judgement) -> list[dict[str, Any]]:
 
 def side_shot_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """Stations that unchecked readings only fix, with those readings."""
+    if judgement.all_checked:
+        return []
     solution, ids = judgement.solution, judgement.ids
     sd = np.sqrt(np.maximum(np.einsum("nii->ni", judgement.covariance), 0.0))
     return [

@@ -29,6 +29,7 @@ from adjust.solver.datum import PartDatum
 from adjust.solver.design import Design, State, Unknowns
 from adjust.solver.elements import Batch, Whitened, whiten
 from adjust.solver.engine import Pattern
+from adjust.solver.solution import Solution
 
 DENSE_MOST = 300
 """Unknowns up to which all singular vectors are formed."""
@@ -165,6 +166,13 @@ def as_moves(unknowns: Unknowns, vectors: Array) -> Array:
     """Movements (n, 3, d) of the stations for vectors (u, d) of unknowns; known coordinates rest."""
     padded = np.vstack([vectors, np.zeros((1, vectors.shape[1]))])
     return np.asarray(padded[unknowns.coordinate])
+
+
+def thin_of(solution: Solution) -> list[Thin]:
+    """Stations of a solution that are fixed, but only just: bend from WARNED up."""
+    state = State(solution.positions, solution.groups)
+    parts = [p.datum for p in solution.parts if p.datum]
+    return thin_stations(solution.design, parts, solution.whitened, state, WARNED)
 
 
 def thin_stations(

@@ -10,7 +10,6 @@ import numpy as np
 
 from adjust.book.job import Job
 from adjust.network import Array, Bools, Network
-from adjust.notebook import cell, html_table
 from adjust.solver.cofactors import Cofactors
 from adjust.solver.datum import PartDatum
 from adjust.solver.design import Design
@@ -116,6 +115,8 @@ class Solution:
                 f"{t.degrees_of_freedom} degrees of freedom, variance factor {t.variance_factor}>")  # fmt: skip
 
     def _repr_html_(self) -> str:
+        from adjust.notebook import cell, html_table
+
         head = ("station", "east m", "north m", "height m", "sd east m", "sd north m", "sd height m")
         rows = [
             (name, *(cell(x) for x in (*xyz, *sd)))
