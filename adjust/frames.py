@@ -104,6 +104,25 @@ class LocalPlane:
         return np.stack([-by_end, by_end], axis=2)
 
 
+def beside(sights: Array, offset: Array) -> tuple[Array, Array]:
+    """Sights (m, 4) to targets that stood off their marks by ``offset`` (m, 2) beyond and right; partials (m, 4, 4).
+
+    With D^2 = E^2 + N^2, a beyond and r right: E' = E + (a E + r N)/D, N' = N + (a N - r E)/D.
+    """
+    east, north, a, r = sights[:, 0], sights[:, 1], offset[:, 0], offset[:, 1]
+    d = np.hypot(east, north)
+    out, by = sights.copy(), np.broadcast_to(np.eye(4), (len(d), 4, 4)).copy()
+    out[:, 0] += (a * east + r * north) / d
+    out[:, 1] += (a * north - r * east) / d
+    # d(E/D)/dE = N^2/D^3, d(E/D)/dN = -E N/D^3, and so on
+    ee, nn, en = north**2 / d**3, east**2 / d**3, -east * north / d**3
+    by[:, 0, 0] += a * ee + r * en
+    by[:, 0, 1] += a * en + r * nn
+    by[:, 1, 0] += a * en - r * ee
+    by[:, 1, 1] += a * nn - r * en
+    return out, by
+
+
 @dataclass(frozen=True)
 class _Line:
     """Lines (m,) between heights h1 and h2 above the plane: differences and squares that all surfaces need."""

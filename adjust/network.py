@@ -89,6 +89,8 @@ class Block:
     """Where lengths are reduced to: '' the plane itself, ground, ground-from, slope."""
     above: Array | None = None
     """(m, 2) heights of instrument and target above their marks, metres; None: all zero."""
+    offset: Array | None = None
+    """(m, 2) how far the target stood beyond its mark and to the right of it, seen from the instrument, metres."""
     constant: Array | None = None
     """(m,) value of the group unknown for rows without one (a fixed refraction coefficient); None: zero."""
     corrections: tuple[tuple[str, Array], ...] = ()

@@ -18,7 +18,7 @@ from adjust.book.settings import Settings
 from adjust.book.toml_lines import line_of
 from adjust.errors import nearest
 from adjust.kinds import KINDS, TABLES
-from adjust.kinds.base import GroupUnknown, Kind
+from adjust.kinds.base import OFFSET, GroupUnknown, Kind
 from adjust.network import Array, Block, Bools, Group, Ints
 from adjust.sigmas import EXAMPLES, Precision
 from adjust.units import LONGEST_M, SMALLEST_SD
@@ -78,6 +78,7 @@ class Observations:
         sd, precision = self._sds(cells, sheet, lay, held, use)
         group = self._groups(cells, kind, names, use)
         setup = self._setups(cells, names[0])
+        offset = _offsets(cells, kind, use)
         for column in names:
             for i in use:
                 if column[i]:
@@ -100,6 +101,7 @@ class Observations:
                 precision=tuple(precision[i] for i in use),
                 surface=lay.surface,
                 above=None if lay.above is None else lay.above[chosen],
+                offset=offset,
                 constant=np.full(len(use), setting.value) if setting else None,
                 corrections=tuple((name, amount[chosen]) for name, amount in lay.corrections),
                 booked=() if cells.table.kind == kind.table else sheet.value,
@@ -347,3 +349,13 @@ class Observations:
             x for x in (stations, f"set {name}" if name else "", "" if stations else f"of {cells.rows.file}") if x
         )
         return Group(kind.group.what, of, kind.group.shared, name, "turn" in kind.group.absorbs)
+
+
+def _offsets(cells: Cells, kind: Kind, use: list[int]) -> Array | None:
+    """Offsets (m, 2) of the targets beyond and right of their marks; None where there are none."""
+    names = [field.name for field in OFFSET if field in kind.columns and cells.has(field.name)]
+    if not names:
+        return None
+    columns = [cells.values(f.name, use)[use] if f.name in names else np.zeros(len(use)) for f in OFFSET]
+    out = np.nan_to_num(np.stack(columns, axis=1))
+    return out if out.any() else None

@@ -92,6 +92,11 @@ class Kind:
         return self.in_space if surface == SLOPE and self.in_space else self.geometry
 
 
+OFFSET = (
+    Field("offset_along", "length", "how far the target stood beyond the mark, seen from the instrument; short of it: "
+          "negative"),
+    Field("offset_right", "length", "how far the target stood to the right of the mark; to the left: negative"),
+)  # fmt: skip
 ABOVE = (
     Field("instrument_height", "length", "height of the instrument above the mark `from`; blank: both are zero"),
     Field("target_height", "length", "height of the target above the mark `to`; blank: both are zero"),

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from adjust.fields import Field
-from adjust.kinds.base import GroupUnknown, Kind, azimuth
+from adjust.kinds.base import OFFSET, GroupUnknown, Kind, azimuth
 from adjust.network import Array
 
 
@@ -29,6 +29,7 @@ KIND = Kind(
     columns=(
         Field("direction", "circle", "circle reading to the target"),
         Field("set", "text", "name of the set; each file, station and set has one unknown orientation"),
+        *OFFSET,
     ),
     value=("direction",),
     instrument=Field(

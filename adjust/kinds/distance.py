@@ -8,7 +8,7 @@ from __future__ import annotations
 import numpy as np
 
 from adjust.fields import Field
-from adjust.kinds.base import ABOVE, Kind
+from adjust.kinds.base import ABOVE, OFFSET, Kind
 from adjust.network import Array
 
 
@@ -44,6 +44,7 @@ KIND = Kind(
         Field("distance", "length", "distance as the `surface` of its [[book]] block says; none: on the plane itself",
               above=0.0),
         *ABOVE,
+        *OFFSET,
         Field("zenith_angle", "zenith", "on the slope: reduces the distance of its row to the horizontal and is not "
               "adjusted itself; all rows of a table have one, or none"),
     ),

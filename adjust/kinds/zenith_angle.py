@@ -14,7 +14,7 @@ from __future__ import annotations
 import numpy as np
 
 from adjust.fields import Field
-from adjust.kinds.base import ABOVE, GroupUnknown, Kind
+from adjust.kinds.base import ABOVE, OFFSET, GroupUnknown, Kind
 from adjust.network import Array
 
 
@@ -45,6 +45,7 @@ KIND = Kind(
         Field("zenith_angle", "zenith", "zenith angle of the sight, both faces meaned: 0 is up, a quarter turn level"),
         Field("elevation", "elevation", "the same as an elevation angle: 0 is level, up is positive"),
         *ABOVE,
+        *OFFSET,
     ),
     value=("zenith_angle", "elevation"),
     surface="slope",

@@ -12,7 +12,7 @@ from functools import cached_property
 
 import numpy as np
 
-from adjust.frames import LocalPlane
+from adjust.frames import LocalPlane, beside
 from adjust.graph.parts import HEIGHT, PLANE, Part, row_groups
 from adjust.kinds import KINDS
 from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Cluster, Ints, Network
@@ -225,9 +225,15 @@ class Design:
         on = (block.surface, block.above)
         sights = [np.empty((len(block), 0, 4))]
         sights += [self.frame.sights(positions, i, j, *on)[:, None] for i, j in ends]
+        by_offset = None
+        if block.offset is not None:
+            moved, by_offset = beside(sights[1][:, 0], block.offset)
+            sights[1] = moved[:, None]
         values, by_sight, by_group = kind.on(block.surface)(
             np.concatenate(sights, axis=1), _group_values(block, groups)
         )
+        if by_offset is not None:
+            by_sight[:, :, 0] = by_sight[:, :, 0] @ by_offset
         carried = [np.empty((*values.shape, 0))]
         for s, (i, j) in enumerate(ends):
             by_ends = self.frame.carry(by_sight[:, :, s], self.frame.jacobian(positions, i, j, *on))
