@@ -80,7 +80,7 @@ def job(folder: Path, offsets: dict[str, tuple[float, float]], booked: bool = Tr
 def test_the_mark_is_found_where_it_is(tmp_path: Path, offsets: dict[str, tuple[float, float]], space: bool) -> None:
     solution = adjust.solve(job(tmp_path, offsets, space=space))
     at = solution.positions[solution.names.index("P")]
-    close(at[:2], MARK[:2], atol=2e-6)  # the readings above take curvature by its first term
+    close(at[:2], MARK[:2], atol=2e-5 if space else 1e-8)  # the readings take curvature by its first term
     if space:
         close(at[2], MARK[2], atol=2e-5)
     close(solution.residuals, np.zeros(len(solution.residuals)), atol=1e-6)
