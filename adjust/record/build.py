@@ -107,12 +107,7 @@ def _units(solution: Solution) -> dict[str, Any]:
 
 
 def _frame(solution: Solution) -> dict[str, Any]:
-    assumed = ", ".join(solution.assumed)
-    origin = (
-        f"no coordinates were given: {assumed} was placed at 0, 0 and its first sight pointed north"
-        if assumed
-        else None
-    )
+    origin = "; ".join(solution.assumed) or None
     return {"kind": solution.design.frame.name, "origin": origin}
 
 

@@ -65,7 +65,7 @@ class Solution:
     total: PartResult
     iterations: int
     assumed: tuple[str, ...]
-    """Stations placed at an origin of the program's choice."""
+    """Sentences on what the program chose where nothing was given: origin, north, scale, height."""
 
     @property
     def names(self) -> tuple[str, ...]:

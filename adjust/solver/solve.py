@@ -69,7 +69,7 @@ def prepare(job: Job) -> Setting:
     unknowns = Unknowns.of(network, [d.part for d in datum], free)
     design = Design(network, LocalPlane(), unknowns)
     batches = make_batches(design, np.where(design.held, _working_sd(design), design.sd))
-    whole = assemble_datum(network, datum, unknowns, start.positions, start.groups)
+    whole = assemble_datum(network, datum, unknowns, start.reference, start.groups)
     return Setting(network, datum, design, start, GaussNewton(design, batches, whole))
 
 

@@ -1,0 +1,188 @@
+"""Study: how many random networks start well, without and with one gross blunder.
+
+    python -m tests.graph.starts_study 300 [first seed]
+
+Every network of ``tests.networks`` (6 to 60 stations, kinds and control by lot, up to 45 % of the readings thinned out) is
+solved from the true coordinates and from the readings alone. *Same* means: v'Pv agrees to 1e-6 of itself and all
+residuals to 1e-6 of the largest. Networks that do not converge from the truth are counted apart: no start mends them.
+"""
+
+from __future__ import annotations
+
+import sys
+import tempfile
+import time
+from collections import Counter
+from dataclasses import dataclass, replace
+from pathlib import Path
+
+import numpy as np
+
+import adjust
+import adjust.solver.solve as solving
+from adjust.book.job import Job
+from adjust.errors import NotConverged, Unsolvable
+from adjust.graph.starts import Start, find_start
+from adjust.kinds import KINDS
+from adjust.network import NEW, Array, Block, Network
+from adjust.solver.solution import Solution
+from tests.networks import random_job
+
+MIXES = (
+    ("distances",), ("directions",), ("angles",), ("distances", "directions"), ("distances", "angles"),
+    ("distances", "azimuths"), ("azimuths", "directions"), ("distances", "directions", "angles", "azimuths"),
+    ("distances", "directions", "levelled_lengths"), ("angles", "azimuths"), ("levelled_lengths",),
+)  # fmt: skip
+
+
+@dataclass(frozen=True)
+class Trial:
+    """One network without starting coordinates, its true places, and what was done to it."""
+
+    job: Job
+    truth: Array
+    what: str
+    blunder: str = ""
+
+
+def made(seed: int, blunder: bool) -> Trial:
+    """A random network; with ``blunder`` one reading of it is grossly wrong."""
+    rng = np.random.default_rng(seed)
+    n = int(rng.integers(6, 61))
+    mix = MIXES[rng.integers(len(MIXES))]
+    control = str(rng.choice(["held", "weighted", "free"]))
+    with tempfile.TemporaryDirectory() as folder:
+        job_made = random_job(rng, Path(folder) / "job", n, mix, control)
+        job = adjust.read(job_made.folder)
+    truth = np.array([job_made.truth[job_made.names.index(name)] for name in job.network.stations.names])
+    stations = job.network.stations
+    start = np.where(stations.role == NEW, np.nan, stations.start)
+    network = replace(job.network, stations=replace(stations, start=start))
+    network = _thinned(network, rng, float(rng.uniform(0.55, 1.0)))
+    spoilt = ""
+    if blunder:
+        network, spoilt = _spoilt(network, rng)
+    return Trial(replace(job, network=network), truth, f"{'+'.join(mix)} {control} {n}", spoilt)
+
+
+def _thinned(network: Network, rng: np.random.Generator, share: float) -> Network:
+    blocks = []
+    for block in network.blocks:
+        keep = rng.random(len(block)) < share
+        if KINDS[block.kind].from_control or keep.sum() < 2:
+            keep[:] = True
+        blocks.append(_rows(block, keep))
+    return replace(network, blocks=tuple(blocks))
+
+
+def _rows(block: Block, keep: Array) -> Block:
+    ids = tuple(one for one, k in zip(block.ids, keep, strict=False) if k)
+    precision = tuple(one for one, k in zip(block.precision, keep, strict=False) if k)
+    return replace(
+        block, stations=block.stations[keep], values=block.values[keep], sd=block.sd[keep], group=block.group[keep],
+        held=block.held[keep], line=block.line[keep], ids=ids, precision=precision,
+    )  # fmt: skip
+
+
+def _spoilt(network: Network, rng: np.random.Generator) -> tuple[Network, str]:
+    """One reading wrong: by 1 mm to 1000 km, by any angle, turned the other way, or to another station."""
+    count = [0 if KINDS[b.kind].from_control else len(b) for b in network.blocks]
+    b = int(rng.choice(len(count), p=np.array(count) / sum(count)))
+    block = network.blocks[b]
+    row, kind = int(rng.integers(len(block))), KINDS[block.kind]
+    values, stations = block.values.copy(), block.stations.copy()
+    how = int(rng.integers(4))
+    if how == 0 and len(network.stations) > stations.shape[1]:
+        others = [i for i in range(len(network.stations)) if i not in stations[row]]
+        stations[row, -1] = rng.choice(others)
+        what = "another station"
+    elif kind.dimension == "angle":
+        size = 10 ** rng.uniform(-5, np.log10(np.pi))
+        values[row, 0] = (-values[row, 0] if how == 1 else values[row, 0] + size) % (2 * np.pi)
+        what = "turned the other way" if how == 1 else f"{size:.2g} rad"
+    else:
+        size = 10 ** rng.uniform(-3, 6)
+        less = kind.says == "rise" or size < values[row, 0]
+        values[row, 0] += -size if less and rng.random() < 0.5 else size
+        what = f"{size:.2g} m"
+    blocks = (*network.blocks[:b], replace(block, values=values, stations=stations), *network.blocks[b + 1 :])
+    return replace(network, blocks=blocks), f"{block.kind} {block.name(row)}: {what}"
+
+
+def solved(trial: Trial, from_truth: bool) -> Solution | str:
+    """The solution, or in a word why there is none."""
+    def truth(network: Network) -> Start:
+        found = find_start(network)
+        positions = np.where(np.isnan(network.stations.start), trial.truth, network.stations.start)
+        asked = np.zeros((len(trial.truth), 2), dtype=bool)
+        for part in solving.find_parts(network):
+            asked |= part.nodes
+        positions = np.where(asked[:, [0, 0, 1]], positions, np.nan)
+        return replace(found, positions=positions, groups=_groups(network, trial.truth), failures=())
+
+    before = solving.find_start
+    solving.find_start = truth if from_truth else before  # type: ignore[assignment]  # the study's own start
+    try:
+        return adjust.solve(trial.job)
+    except Unsolvable as e:
+        return "unsolvable: " + e.sentences[0]
+    except NotConverged:
+        return "does not converge"
+    finally:
+        solving.find_start = before  # type: ignore[assignment]  # put back
+
+
+def _groups(network: Network, truth: Array) -> Array:
+    """True orientations, as the median of what the pointings say."""
+    found: dict[int, list[float]] = {}
+    for block in network.blocks:
+        if (block.group >= 0).any():
+            d = truth[block.stations[:, 1]] - truth[block.stations[:, 0]]
+            turn = np.arctan2(d[:, 0], d[:, 1]) - block.values[:, 0]
+            for g, t in zip(block.group.tolist(), turn.tolist(), strict=True):
+                found.setdefault(g, []).append(t)
+    out = np.zeros(len(network.groups))
+    for g, turns in found.items():
+        away = np.angle(np.exp(1j * (np.array(turns)[:, None] - np.array(turns))))
+        out[g] = turns[int(np.abs(away).sum(axis=1).argmin())]
+    return out
+
+
+def same(a: Solution, b: Solution) -> bool:
+    """Whether two solutions are one."""
+    size = max(1e-3, float(np.abs(a.residuals).max()))
+    close = abs(a.total.square_sum - b.total.square_sum) <= 1e-6 * max(1.0, a.total.square_sum)
+    return bool(close and np.abs(a.residuals - b.residuals).max() <= 1e-6 * size)
+
+
+def verdict(trial: Trial) -> str:
+    """One word for a network, and more where it fails."""
+    reference, got = solved(trial, True), solved(trial, False)
+    if isinstance(reference, str):
+        return f"no solution from the truth ({reference.split(':')[0]})"
+    if isinstance(got, str):
+        return "mirror" if "equally well" in got else f"FAILS: {got}"
+    return "same" if same(reference, got) else "FAILS: another solution"
+
+
+def main(count: int, first: int = 0) -> None:
+    """Print the table."""
+    for blunder in (False, True):
+        began, tally, slowest = time.perf_counter(), Counter[str](), 0.0
+        for seed in range(first, first + count):
+            trial = made(seed, blunder)
+            t = time.perf_counter()
+            find_start(trial.job.network)
+            slowest = max(slowest, time.perf_counter() - t)
+            word = verdict(trial)
+            tally[word.split(":")[0]] += 1
+            if word.startswith(("FAILS", "mirror")):
+                print(f"  seed {seed} {trial.what} [{trial.blunder}] {word[:150]}")
+        able = count - sum(n for w, n in tally.items() if w.startswith("no solution"))
+        print(f"{'one blunder' if blunder else 'clean'}: {count} networks, {able} with a solution from the truth; "
+              f"same from the readings alone {tally['same']} ({100 * tally['same'] / max(1, able):.1f} %); {dict(tally)}; "
+              f"slowest start {slowest:.2f} s; {time.perf_counter() - began:.0f} s")  # fmt: skip
+
+
+if __name__ == "__main__":
+    main(int(sys.argv[1]) if len(sys.argv) > 1 else 100, int(sys.argv[2]) if len(sys.argv) > 2 else 0)
