@@ -13,12 +13,14 @@ from dataclasses import dataclass, field
 
 from adjust.graph.clues import Index
 from adjust.graph.loci import azimuth
-from adjust.graph.places import CLEARLY, Place, agree, candidates, ties
+from adjust.graph.places import CLEARLY, Place, agree, candidates, refined, ties
 
 MOST_GROUPS = 12
 """Equal solutions followed at once."""
 SAME_COST = 8.0
 """A group is dropped when another one with as many stations costs less by this."""
+FIRM = 5
+"""A set read at several stations is firm when more of its lines than this agree."""
 FLAT = 0.15
 """Sine of the crossing below which a weak step waits for a better one."""
 
@@ -30,6 +32,8 @@ class Group:
     at: dict[int, complex] = field(default_factory=dict)
     turn: dict[int, float] = field(default_factory=dict)
     via: dict[int, int] = field(default_factory=dict)
+    firm: dict[int, None] = field(default_factory=dict)
+    """Sets whose orientation is not looked at again: north where it is known, large ones that agree."""
     scaled: bool = True
     cost: float = 0.0
     weak: dict[int, None] = field(default_factory=dict)
@@ -44,7 +48,7 @@ class Group:
     def copy(self) -> Group:
         """A group that grows on its own."""
         return Group(
-            dict(self.at), dict(self.turn), dict(self.via), self.scaled, self.cost, dict(self.weak), dict(self.open),
+            dict(self.at), dict(self.turn), dict(self.via), dict(self.firm), self.scaled, self.cost, dict(self.weak), dict(self.open),
             dict(self.waiting), dict(self.stations), dict(self.sets),
         )  # fmt: skip
 
@@ -96,7 +100,7 @@ def _firmest(group: Group) -> int:
 
 def _orient(index: Index, group: Group, one: int) -> None:
     """Orient a set by its lines with known azimuth, as most of them say."""
-    if one == index.clues.north and one in group.turn and group.turn[one] == 0.0:
+    if one in group.firm:
         return
     if index.local[one] and index.of_set[one] and index.of_set[one][0].at not in group.at:
         return
@@ -116,6 +120,8 @@ def _orient(index: Index, group: Group, one: int) -> None:
     if not values:
         return
     value, _, agreeing = agree(values)
+    if agreeing > FIRM and not index.local[one]:
+        group.firm[one] = None
     before = group.turn.get(one)
     group.turn[one] = value
     group.via.pop(one, None)
@@ -165,7 +171,7 @@ def _look(index: Index, group: Group, station: int) -> None:
         group.open[station] = [best, *rivals]
     elif best.agreeing > 2 and best.sine > FLAT:
         group.cost += best.cost
-        put(index, group, station, best.point)
+        put(index, group, station, refined(found, best.point))
     else:
         group.waiting[station] = best
 

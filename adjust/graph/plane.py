@@ -7,6 +7,7 @@ readings that no other confirmed when it was used, and the places that most read
 
 from __future__ import annotations
 
+import cmath
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -53,15 +54,12 @@ class Built:
 def build(clues: Clues, stations: Ints, known: dict[int, complex], rows: dict[int, complex]) -> Built:
     """Places of the ``stations`` of one part from the ``known`` ones; ``rows`` decide between mirror images."""
     misfits = Misfits(clues)
-    best = _once(clues, misfits, stations, known, rows, frozenset())
-    if _clean(misfits, best, stations):
+    first = _once(clues, misfits, stations, known, rows, frozenset())
+    best = _polish(clues, misfits, known, first)
+    if len(bad_sources(misfits, best.z)) < 2:
         return best
-    best = _without_one(clues, misfits, stations, known, rows, best)
-    return _polish(clues, misfits, known, best)
-
-
-def _clean(misfits: Misfits, built: Built, stations: Ints) -> bool:
-    return not len(bad_sources(misfits, built.z)) and not np.isnan(built.z[stations]).any()
+    better = _without_one(clues, misfits, stations, known, rows, first)
+    return _polish(clues, misfits, known, better) if better is not first else best
 
 
 def bad_sources(misfits: Misfits, z: Array) -> list[int]:
@@ -79,12 +77,12 @@ def _once(clues: Clues, misfits: Misfits, stations: Ints, known: dict[int, compl
     index = Index(clues, without)
     alternatives = _groups(index, stations.tolist(), known)
     done = [_finished(index, group) for group in alternatives] or [(Group(dict(known)), [])]
-    places = [_array(clues, group.at) for group, _ in done]
+    places = [_array(clues, group) for group, _ in done]
     costs = [misfits.cost(z) for z in places]
     first = min(range(len(done)), key=lambda k: (-len(done[k][0].at), costs[k]))
     group, leaves = done[first]
-    mirrors = [Mirror((s,), (a,), (b,)) for s, a, b in leaves]
     z = places[first]
+    mirrors = [Mirror((s,), (z[s],), (z[s] + (b - a) * _back(clues, group),)) for s, a, b in leaves]
     for k, other in enumerate(places):
         if k != first and costs[k] < costs[first] + CLEARLY and len(done[k][0].at) == len(group.at):
             mirror = _mirror(misfits, z, other)
@@ -96,18 +94,26 @@ def _once(clues: Clues, misfits: Misfits, stations: Ints, known: dict[int, compl
     return Built(z, tuple(mirrors), tuple(group.weak), misfits.cost(z) + MISSING * missing, group.scaled, oriented)
 
 
-def _array(clues: Clues, at: dict[int, complex]) -> Array:
+def _array(clues: Clues, group: Group) -> Array:
+    """Places (n,) complex, turned to the north of the azimuths where the group has some."""
     z = np.full(len(clues.network.stations), complex(np.nan, np.nan))
-    for i, place in at.items():
-        z[i] = place
+    # azimuth = reading + turn in the group's frame; a complex factor turns against the azimuths
+    back = _back(clues, group)
+    for i, place in group.at.items():
+        z[i] = place * back
     return z
+
+
+def _back(clues: Clues, group: Group) -> complex:
+    """The factor that turns a group to the north of its azimuths."""
+    return cmath.rect(1.0, group.turn.get(clues.north, 0.0))
 
 
 def _groups(index: Index, stations: list[int], known: dict[int, complex]) -> list[Group]:
     """The equal groups that hold most: the known stations' one, or the largest where none is known."""
     bundles: list[list[Group]] = []
     if known:
-        world = Group(turn={index.clues.north: 0.0})
+        world = Group(turn={index.clues.north: 0.0}, firm={index.clues.north: None})
         for i, z in known.items():
             put(index, world, i, z)
         bundles.append(follow(index, [world]))
@@ -175,7 +181,7 @@ def _by_rows(z: Array, mirrors: list[Mirror], known: dict[int, complex], rows: d
         other = z.copy()
         other[list(mirror.stations)] = mirror.there
         here, there = _away(z, known, rows), _away(other, known, rows)
-        if min(here, there) > 0.5 * max(here, there):
+        if min(here, there) >= 0.5 * max(here, there):
             left.append(mirror)
         elif there < here:
             z = other

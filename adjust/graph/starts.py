@@ -41,6 +41,9 @@ class Start:
     given: Array = field(default_factory=lambda: np.empty((0, 3)))
     """(n, 3) given coordinates: control and `stations`, NaN where none."""
 
+    mirrors: tuple[Array, ...] = ()
+    """(n, 2) east and north of every other solution that the readings do not tell from this one."""
+
     @property
     def reference(self) -> Array:
         """Positions (n, 3) to which a free datum refers: given ones as they were given, else the starting ones."""
@@ -56,6 +59,7 @@ class _Plane:
     failures: list[str]
     assumed: list[str]
     doubtful: list[tuple[int, float]]
+    mirrors: list[Array]
 
 
 def find_start(network: Network) -> Start:
@@ -82,6 +86,7 @@ def find_start(network: Network) -> Start:
     return Start(
         positions, _orientations(network, clues, plane.z), tuple(plane.failures),
         (*plane.assumed, *height_words(network, height.origins)), doubtful, given,
+        tuple(np.column_stack([z.real, z.imag]) for z in plane.mirrors),
     )  # fmt: skip
 
 
@@ -107,7 +112,7 @@ def _given(network: Network, roles: tuple[int, ...]) -> dict[int, complex]:
 
 def _find_plane(network: Network, clues: Clues, parts: list[Part]) -> _Plane:
     n = len(network.stations)
-    out = _Plane(np.full(n, complex(np.nan, np.nan)), [], [], [])
+    out = _Plane(np.full(n, complex(np.nan, np.nan)), [], [], [], [])
     known = _given(network, (NEW, HELD, WEIGHTED, CHECK))
     for i, place in known.items():
         out.z[i] = place
@@ -170,11 +175,15 @@ def _careful(network: Network, clues: Clues, stations: Ints, out: _Plane) -> Non
     found = place_part(network, clues, stations, _given(network, (HELD, WEIGHTED)), _given(network, (NEW, CHECK)))
     out.z[stations] = found.built.z[stations]
     missing = stations[np.isnan(out.z[stations])]
-    if found.free and not len(missing):
+    if found.free and not len(missing) and not found.built.mirrors:
         _free_frame(network, clues, stations, out, found.built.oriented, found.built.scaled)
     elif found.free:
         out.assumed += frame_words(network, *reference(clues, stations), found.built.oriented, found.built.scaled, 0j)
     out.doubtful += found.doubtful
+    for mirror in found.built.mirrors:
+        other = out.z.copy()
+        other[list(mirror.stations)] = mirror.there
+        out.mirrors.append(other)
     out.failures += missing_words(network, clues, missing, out.z) + mirror_words(network, found.built.mirrors)
 
 
