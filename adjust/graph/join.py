@@ -20,13 +20,18 @@ COMMON_MOST = 8
 
 
 def local_groups(index: Index, seed: int) -> list[Group]:
-    """Equal groups grown from the best line at a station, or none."""
+    """Equal groups grown from the best line at a station, or none.
+
+    A few lines are tried until one leads somewhere and its readings agree well: a poor first triangle spoils the rest.
+    """
     best: list[Group] = []
-    for other in _lines(index, seed)[:LINES_TRIED]:
+    tried = 0
+    for other in _lines(index, seed):
         groups = follow(index, [_line_group(index, seed, other)])
-        if not best or len(groups[0].at) > len(best[0].at):
+        if not best or (-len(groups[0].at), groups[0].cost) < (-len(best[0].at), best[0].cost):
             best = groups
-        if len(best[0].at) > 3:
+        tried += len(groups[0].at) > 3
+        if tried and best[0].cost <= len(best[0].at) or tried >= LINES_TRIED:
             break
     return best
 
@@ -60,6 +65,11 @@ def join(index: Index, a: list[Group], b: list[Group]) -> list[Group]:
 
 def _unions(index: Index, a: Group, b: Group) -> list[Group]:
     common = [i for i in b.at if i in a.at]
+    if len(common) < 2:
+        decided = [(_decided(index, a, i, p.point), b) for i in a.open if i in b.at for p in a.open[i]]
+        decided += [(a, _decided(index, b, i, p.point)) for i in b.open if i in a.at for p in b.open[i]]
+        if decided:
+            return [union for one, other in decided for union in _unions(index, one, other)]
     if not common:
         return []
     if a.scaled < b.scaled:
@@ -71,6 +81,13 @@ def _unions(index: Index, a: Group, b: Group) -> list[Group]:
         resize(index, a, ratio)
     move = best_move(a, b, common)
     return [_united(index, a, b, *move)] if move else []
+
+
+def _decided(index: Index, group: Group, station: int, point: complex) -> Group:
+    """A copy of a group with an open station at one of its places."""
+    out = group.copy()
+    put(index, out, station, point)
+    return out
 
 
 def _ratio(a: Group, b: Group, common: list[int]) -> float | None:

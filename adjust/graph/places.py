@@ -178,7 +178,7 @@ def refined(t: Ties, x: complex) -> complex:
         re -= weight * normal.real * miss
         rn -= weight * normal.imag * miss
     determinant = ee * nn - en * en
-    if determinant < 0.01 * (ee + nn) ** 2:
+    if determinant <= 0.01 * (ee + nn) ** 2:
         return x
     step = complex(nn * re - en * rn, ee * rn - en * re) / determinant
     return x + step if abs(step) < AGREES * _nearest(t, x) else x
