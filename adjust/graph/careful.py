@@ -38,10 +38,10 @@ def place_part(network: Network, clues: Clues, stations: Ints, control: dict[int
         other = build(clues, stations, control | rows, {})
         if _missing(other, stations) < _missing(built, stations):
             built, free = other, False
-    if _missing(built, stations) and len(control | rows) == 1:
+    if _missing(built, stations) and len(control | rows) == 1 and len(stations) > 2:
         # one known station and nothing that turns the rest to north: the turn is the program's choice
         other = build(clues, stations, {}, {})
-        (station, place), = (control | rows).items()
+        ((station, place),) = (control | rows).items()
         if not _missing(other, stations):
             built, free = replace(other, z=other.z + (place - other.z[station])), False
     return Found(built, free, _doubtful(clues, built))
@@ -57,7 +57,7 @@ def _fitted(built: Built, rows: dict[int, complex]) -> tuple[Built, bool]:
     if not placed:
         return built, True
     if len(placed) == 1:
-        (i, z), = placed.items()
+        ((i, z),) = placed.items()
         return replace(built, z=built.z + (rows[i] - z)), False
     move = best_move(Group(dict(rows)), Group(placed, scaled=built.scaled), list(placed))
     if move is None:

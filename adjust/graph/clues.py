@@ -12,9 +12,13 @@ import math
 from dataclasses import dataclass, field
 
 import numpy as np
+from numpy.typing import NDArray
 
 from adjust.kinds import KINDS
 from adjust.network import Array, Block, Network
+
+Places = NDArray[np.complex128]
+"""Places of all stations (n,) as east + i north, NaN where not known."""
 
 
 @dataclass(frozen=True)
@@ -86,7 +90,13 @@ class Clues:
         sights = KINDS[block.kind].sights
         constant = np.zeros(len(block)) if block.constant is None else block.constant
         for row, (stations, value, one, turn) in enumerate(
-            zip(block.stations.tolist(), block.values[:, 0].tolist(), block.group.tolist(), constant.tolist(), strict=True)
+            zip(
+                block.stations.tolist(),
+                block.values[:, 0].tolist(),
+                block.group.tolist(),
+                constant.tolist(),
+                strict=True,
+            )
         ):
             if len(sights) == 1:
                 i, j = sights[0]
@@ -97,9 +107,7 @@ class Clues:
                 )
                 continue
             for k, (i, j) in enumerate(sights):
-                self.pointings.append(
-                    Pointing(stations[i], stations[j], value if k else 0.0, self.sets, first + row)
-                )
+                self.pointings.append(Pointing(stations[i], stations[j], value if k else 0.0, self.sets, first + row))
             self.sets += 1
 
     def _lines(self, block: Block, says: str, first: int) -> None:
@@ -126,7 +134,7 @@ class Clues:
         else it stands as it is. A zenith angle needs a length on its line or ``positions`` (n, 3) of its ends.
         """
         of_line: dict[tuple[int, int], float] = {}
-        for i, j, z, up, _ in self.zeniths:
+        for i, j, z, _, _ in self.zeniths:
             # seen from the instrument; from the other end the sign of the rise turns
             of_line[i, j] = z
             of_line.setdefault((j, i), math.pi - z)
@@ -134,8 +142,7 @@ class Clues:
         sources = {s[4] for s in self.slopes}
         self.lengths = [one for one in self.lengths if one.source not in sources]
         for i, j, slope, up, source in self.slopes:
-            z = of_line.get((i, j))
-            level = _level(slope, z, float(height[j] - height[i]) - up)
+            level = _level(slope, of_line.get((i, j)), float(height[j] - height[i]) - up)
             slope_lines[min(i, j), max(i, j)] = level
             self.lengths.append(Length(i, j, level, source))
         self.lengths.sort(key=lambda one: one.source)

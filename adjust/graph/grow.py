@@ -48,8 +48,8 @@ class Group:
     def copy(self) -> Group:
         """A group that grows on its own."""
         return Group(
-            dict(self.at), dict(self.turn), dict(self.via), dict(self.firm), self.scaled, self.cost, dict(self.weak), dict(self.open),
-            dict(self.waiting), dict(self.stations), dict(self.sets),
+            dict(self.at), dict(self.turn), dict(self.via), dict(self.firm), self.scaled, self.cost, dict(self.weak),
+            dict(self.open), dict(self.waiting), dict(self.stations), dict(self.sets),
         )  # fmt: skip
 
 
@@ -106,10 +106,9 @@ def _orient(index: Index, group: Group, one: int) -> None:
         return
     values, sources, via = [], [], -1
     for p in index.of_set[one]:
-        if p.at in group.at and p.to in group.at:
-            if group.at[p.at] != group.at[p.to]:
-                values.append(azimuth(group.at[p.to] - group.at[p.at]) - p.reading)
-                sources.append(p.source)
+        if p.at in group.at and p.to in group.at and group.at[p.at] != group.at[p.to]:
+            values.append(azimuth(group.at[p.to] - group.at[p.at]) - p.reading)
+            sources.append(p.source)
     if not values:
         for p in index.of_set[one]:
             line = _line(index, group, p.at, p.to, one)
@@ -208,7 +207,9 @@ def follow(index: Index, groups: list[Group]) -> list[Group]:
         chosen = [_fork(index, group) for group in groups]
         if not any(chosen):
             return groups
-        groups = [new for group, station in zip(groups, chosen, strict=True) for new in _branches(index, group, station)]
+        groups = [
+            new for group, station in zip(groups, chosen, strict=True) for new in _branches(index, group, station)
+        ]
 
 
 def prune(groups: list[Group]) -> list[Group]:

@@ -31,13 +31,13 @@ def local_groups(index: Index, seed: int) -> list[Group]:
         if not best or (-len(groups[0].at), groups[0].cost) < (-len(best[0].at), best[0].cost):
             best = groups
         tried += len(groups[0].at) > 3
-        if tried and best[0].cost <= len(best[0].at) or tried >= LINES_TRIED:
+        if (tried and best[0].cost <= len(best[0].at)) or tried >= LINES_TRIED:
             break
     return best
 
 
 def _lines(index: Index, seed: int) -> list[int]:
-    """Neighbours of a station, the best line to start from first: measured and pointed along, with common neighbours."""
+    """Neighbours of a station, the best line to start from first: measured, pointed along, with common ones."""
     lengths = {other for other, _, _ in index.lengths[seed]}
 
     def worth(other: int) -> tuple[bool, bool, int]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from adjust.graph.clues import Clues
+from adjust.graph.clues import Clues, Places
 from adjust.graph.places import SPREAD, agree
 from adjust.network import Array, Ints
 
@@ -24,14 +24,14 @@ class Misfits:
         self.to = np.array([p.to for p in pointings], dtype=np.int64)
         self.reading = np.array([p.reading for p in pointings], dtype=float)
         self.set = np.array([p.set for p in pointings], dtype=np.int64)
-        self.source: Ints = np.array([one.source for one in (*lengths, *pointings)], dtype=np.int64)
+        self.source: Ints = np.array([*(one.source for one in lengths), *(p.source for p in pointings)], dtype=np.int64)
 
-    def lengths(self, z: Array) -> Array:
+    def lengths(self, z: Places) -> Array:
         """Misfits of the lengths at complex places ``z`` (n,), as shares of the longer of observed and computed."""
         computed = np.abs(z[self.j] - z[self.i])
         return np.asarray((computed - self.metres) / np.maximum(np.maximum(computed, self.metres), 1e-9))
 
-    def orientations(self, z: Array, robust: bool) -> Array:
+    def orientations(self, z: Places, robust: bool) -> Array:
         """Orientation of every set at places ``z``: what most of its pointings say, or (quickly) their mean."""
         turns = self._turns(z)
         out = np.zeros(self.clues.sets)
@@ -50,27 +50,27 @@ class Misfits:
         out[self.clues.north] = 0.0
         return out
 
-    def pointings(self, z: Array, orientations: Array) -> Array:
+    def pointings(self, z: Places, orientations: Array) -> Array:
         """Misfits of the pointings in radians."""
         return self._wrapped(self._turns(z) - orientations[self.set])
 
-    def all(self, z: Array, robust: bool = True) -> Array:
+    def all(self, z: Places, robust: bool = True) -> Array:
         """Misfits of lengths, then pointings; NaN where an end is not placed."""
         return np.concatenate([self.lengths(z), self.pointings(z, self.orientations(z, robust))])
 
-    def worst(self, z: Array) -> float:
+    def worst(self, z: Places) -> float:
         """The largest misfit, quickly."""
         with np.errstate(invalid="ignore"):
             m = np.abs(self.all(z, robust=False))
         return float(np.nanmax(m)) if np.isfinite(m).any() else 0.0
 
-    def cost(self, z: Array) -> float:
+    def cost(self, z: Places) -> float:
         """Cauchy cost of all readings whose ends are placed."""
         with np.errstate(invalid="ignore"):
             m = self.all(z)
         return float(np.log1p((m[np.isfinite(m)] / SPREAD) ** 2).sum())
 
-    def _turns(self, z: Array) -> Array:
+    def _turns(self, z: Places) -> Array:
         d = z[self.to] - z[self.at]
         turns = np.arctan2(d.real, d.imag) - self.reading
         turns[self.at == self.to] = np.nan

@@ -149,6 +149,24 @@ def score(t: Ties, x: complex) -> tuple[float, int]:
     return cost, agreeing
 
 
+def voters(t: Ties, x: complex) -> set[int]:
+    """The readings that agree with a point."""
+    out = set()
+    for ray, source in t.rays:
+        w = (x - ray.start) * ray.along.conjugate()
+        if abs(math.atan2(w.imag, w.real)) < AGREES:
+            out.add(source)
+    for circle, source in t.circles:
+        d = abs(x - circle.centre)
+        if abs(d - circle.radius) < AGREES * max(d, circle.radius):
+            out.add(source)
+    for fan in t.fans:
+        turns = [azimuth(p - x) - reading for p, reading in fan.targets]
+        middle = agree(turns)[0]
+        out.update(s for s, turn in zip(fan.sources, turns, strict=True) if abs(wrapped(turn - middle)) < AGREES)
+    return out
+
+
 def refined(t: Ties, x: complex) -> complex:
     """The point after one reweighted least-squares step on its rays and circles; an intersection alone would pass its
     error on from step to step.
@@ -205,9 +223,7 @@ def _loci(t: Ties) -> list[Locus]:
     loci += [circle for circle, _ in t.circles[:MOST_LOCI]]
     for fan in t.fans[:3]:
         k = fan.targets[:4]
-        arcs = [
-            seen_under(k[a][0], k[b][0], k[b][1] - k[a][1]) for a in range(len(k)) for b in range(a + 1, len(k))
-        ]
+        arcs = [seen_under(k[a][0], k[b][0], k[b][1] - k[a][1]) for a in range(len(k)) for b in range(a + 1, len(k))]
         loci += [arc for arc in arcs if arc is not None]
     return loci
 

@@ -12,13 +12,13 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from adjust.graph.clues import Clues, Index
+from adjust.graph.clues import Clues, Index, Places
 from adjust.graph.grow import Group, follow, put
 from adjust.graph.join import best_move, join, local_groups
 from adjust.graph.misfit import Misfits
-from adjust.graph.places import AGREES, CLEARLY, Place
+from adjust.graph.places import AGREES, CLEARLY, ties, voters
 from adjust.graph.polish import polished
-from adjust.network import Array, Ints
+from adjust.network import Ints
 
 WORK_MOST = 60_000
 """Clues times trials without one reading, at most: bounds the time at about a second."""
@@ -42,7 +42,7 @@ class Mirror:
 class Built:
     """Places (n,) complex of a part, NaN where not reached, in the frame of the known stations if there are any."""
 
-    z: Array
+    z: Places
     mirrors: tuple[Mirror, ...]
     weak: tuple[int, ...]
     cost: float
@@ -62,7 +62,7 @@ def build(clues: Clues, stations: Ints, known: dict[int, complex], rows: dict[in
     return _polish(clues, misfits, known, better) if better is not first else best
 
 
-def bad_sources(misfits: Misfits, z: Array) -> list[int]:
+def bad_sources(misfits: Misfits, z: Places) -> list[int]:
     """Readings that misfit grossly, the worst first."""
     with np.errstate(invalid="ignore"):
         m = np.abs(misfits.all(z))
@@ -94,7 +94,7 @@ def _once(clues: Clues, misfits: Misfits, stations: Ints, known: dict[int, compl
     return Built(z, tuple(mirrors), tuple(group.weak), misfits.cost(z) + MISSING * missing, group.scaled, oriented)
 
 
-def _array(clues: Clues, group: Group) -> Array:
+def _array(clues: Clues, group: Group) -> Places:
     """Places (n,) complex, turned to the north of the azimuths where the group has some."""
     z = np.full(len(clues.network.stations), complex(np.nan, np.nan))
     # azimuth = reading + turn in the group's frame; a complex factor turns against the azimuths
@@ -147,22 +147,20 @@ def _joined(index: Index, bundles: list[list[Group]]) -> list[list[Group]]:
 
 
 def _finished(index: Index, group: Group) -> tuple[Group, list[tuple[int, complex, complex]]]:
-    """The group with its open stations at the best of their places, and the equal other places."""
+    """The group with its open stations at the best of their places, and other places that the same readings favour."""
     leaves = []
     for station, places in list(group.open.items()):
-        best, rival = places[0], places[1]
-        if _alike(best, rival):
-            leaves.append((station, best.point, rival.point))
-        put(index, group, station, best.point)
+        best = places[0].point
+        clues = ties(index, station, group.at, group.turn, group.via, group.scaled)
+        agreed = voters(clues, best)
+        rival = next((p.point for p in places[1:] if voters(clues, p.point) == agreed), None)
+        if rival is not None:
+            leaves.append((station, best, rival))
+        put(index, group, station, best)
     return group, leaves
 
 
-def _alike(a: Place, b: Place) -> bool:
-    """Whether two places agree with the same number of readings, so that nothing but the mirror is in doubt."""
-    return a.agreeing == b.agreeing and a.agreeing <= 2
-
-
-def _mirror(misfits: Misfits, z: Array, other: Array) -> Mirror | None:
+def _mirror(misfits: Misfits, z: Places, other: Places) -> Mirror | None:
     """The stations that stand elsewhere in an equal solution; None where different readings misfit."""
     if set(bad_sources(misfits, z)) != set(bad_sources(misfits, other)):
         return None
@@ -174,7 +172,8 @@ def _mirror(misfits: Misfits, z: Array, other: Array) -> Mirror | None:
     return Mirror(tuple(moved.tolist()), tuple(z[moved].tolist()), tuple(other[moved].tolist()))
 
 
-def _by_rows(z: Array, mirrors: list[Mirror], known: dict[int, complex], rows: dict[int, complex]) -> tuple[Array, list[Mirror]]:  # fmt: skip
+def _by_rows(z: Places, mirrors: list[Mirror], known: dict[int, complex],
+             rows: dict[int, complex]) -> tuple[Places, list[Mirror]]:  # fmt: skip
     """Mirrors that `stations` rows decide, decided; the rest is left."""
     left = []
     for mirror in mirrors:
@@ -188,7 +187,7 @@ def _by_rows(z: Array, mirrors: list[Mirror], known: dict[int, complex], rows: d
     return z, left
 
 
-def _away(z: Array, known: dict[int, complex], rows: dict[int, complex]) -> float:
+def _away(z: Places, known: dict[int, complex], rows: dict[int, complex]) -> float:
     """Sum of the distances from `stations` rows, after a similarity fit where nothing is known."""
     placed = {i: complex(z[i]) for i in rows if np.isfinite(z[i])}
     if not known and len(placed) > 2:

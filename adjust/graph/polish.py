@@ -8,16 +8,17 @@ from __future__ import annotations
 
 import numpy as np
 
+from adjust.graph.clues import Places
 from adjust.graph.misfit import Misfits
 from adjust.graph.places import SPREAD
-from adjust.network import Array
+from adjust.network import Ints
 
 STEPS = 8
 DAMPING = 1e-9
 """Share of the diagonal added to it: what nothing fixes stays where it is."""
 
 
-def polished(misfits: Misfits, z: Array, known: frozenset[int]) -> Array:
+def polished(misfits: Misfits, z: Places, known: frozenset[int]) -> Places:
     """Places (n,) complex after some reweighted steps; known and unplaced stations stay."""
     z = z.copy()
     free = np.array([i not in known for i in range(len(z))]) & np.isfinite(z)
@@ -36,7 +37,7 @@ def polished(misfits: Misfits, z: Array, known: frozenset[int]) -> Array:
     return z
 
 
-def _step(misfits: Misfits, z: Array, number: Array, n: int, spread: float) -> Array | None:
+def _step(misfits: Misfits, z: Places, number: Ints, n: int, spread: float) -> Places | None:
     """One step (n,) complex of the free stations."""
     from scipy.sparse import coo_array, csc_array, diags_array  # only where a start is in doubt
     from scipy.sparse.linalg import spsolve
@@ -63,12 +64,16 @@ def _step(misfits: Misfits, z: Array, number: Array, n: int, spread: float) -> A
             rows.append(np.flatnonzero(here))
             columns.append(2 * number[station][here] + part)
             values.append(sign * value[here])
-    sets = np.concatenate([np.full(len(misfits.i), -1), np.where(misfits.set == misfits.clues.north, -1, misfits.set)])[ok]
+    sets = np.concatenate([np.full(len(misfits.i), -1), np.where(misfits.set == misfits.clues.north, -1, misfits.set)])[
+        ok
+    ]
     turned = np.flatnonzero(sets >= 0)
     rows.append(turned)
     columns.append(2 * n + sets[turned])
     values.append(-np.ones(len(turned)))
-    a = coo_array((np.concatenate(values), (np.concatenate(rows), np.concatenate(columns))), shape=(k, 2 * n + g)).tocsc()
+    a = coo_array(
+        (np.concatenate(values), (np.concatenate(rows), np.concatenate(columns))), shape=(k, 2 * n + g)
+    ).tocsc()
     normal = csc_array(a.T @ diags_array(w) @ a)
     diagonal = normal.diagonal()
     normal = csc_array(normal + diags_array(DAMPING * diagonal + np.where(diagonal > 0, 0.0, 1.0)))

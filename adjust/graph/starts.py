@@ -13,15 +13,15 @@ from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from adjust.graph.clues import Clues
+from adjust.graph.clues import Clues, Places
 from adjust.graph.heights import Heights, find_heights
 from adjust.graph.misfit import Misfits
 from adjust.graph.parts import HEIGHT, PLANE, Part, find_parts
 from adjust.graph.polar import Polar
-from adjust.graph.words import frame_words, height_words, missing_words, mirror_words
+from adjust.graph.words import frame_words, height_words, mirror_words, missing_words
 from adjust.network import CHECK, HELD, NEW, WEIGHTED, Array, Ints, Network
 
-QUICK = 0.05
+QUICK = 0.03
 """Misfit up to which the quick start is good enough for Gauss-Newton."""
 FRAME = 1000.0
 """Free parts are shifted so that their coordinates are above this."""
@@ -55,11 +55,11 @@ class Start:
 class _Plane:
     """What has been found in the plane so far."""
 
-    z: Array
+    z: Places
     failures: list[str]
     assumed: list[str]
     doubtful: list[tuple[int, float]]
-    mirrors: list[Array]
+    mirrors: list[Places]
 
 
 def find_start(network: Network) -> Start:
@@ -90,7 +90,7 @@ def find_start(network: Network) -> Start:
     )  # fmt: skip
 
 
-def _heights(network: Network, clues: Clues, asked: np.ndarray, z: Array | None) -> Heights:
+def _heights(network: Network, clues: Clues, asked: np.ndarray, z: Places | None) -> Heights:
     given, fixed = network.stations.start[:, 2], network.stations.role[:, 2] == HELD
     if not (clues.zeniths or clues.slopes):
         return find_heights(given, fixed, clues.rises, asked)
@@ -202,7 +202,7 @@ def _free_frame(network: Network, clues: Clues, stations: Ints, out: _Plane, ori
     out.assumed += frame_words(network, origin, north, oriented, scaled, place)
 
 
-def _orientations(network: Network, clues: Clues, z: Array) -> Array:
+def _orientations(network: Network, clues: Clues, z: Places) -> Array:
     """Values (g,) of the group unknowns at the places."""
     if not clues.pointings:
         return np.zeros(len(network.groups))

@@ -7,10 +7,10 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from adjust.graph.clues import Clues
+from adjust.graph.clues import Clues, Places
 from adjust.graph.heights import ORIGIN
 from adjust.graph.parts import listed
-from adjust.network import Array, Ints, Network
+from adjust.network import Ints, Network
 
 if TYPE_CHECKING:
     from adjust.graph.plane import Mirror
@@ -20,9 +20,13 @@ def frame_words(network: Network, origin: int, north: int, oriented: bool, scale
     """What was chosen for a part without coordinates."""
     names = network.stations.names
     turn = "north is that of the azimuths" if oriented else f"north runs from it to {names[north]}"
-    size = "" if scaled else f", and the line {names[origin]}-{names[north]} was taken as 100 m, since no length was measured"
-    return [f"no coordinates were given: {names[origin]} was placed at {place.real:.0f}, {place.imag:.0f} (metres east, "
-            f"north) and {turn}{size}"]  # fmt: skip
+    size = (
+        ""
+        if scaled
+        else f", and the line {names[origin]}-{names[north]} was taken as 100 m, since no length was measured"
+    )
+    return [f"no coordinates were given: {names[origin]} was placed at {place.real:.0f}, {place.imag:.0f} (metres "
+            f"east, north) and {turn}{size}"]  # fmt: skip
 
 
 def height_words(network: Network, origins: tuple[int, ...]) -> list[str]:
@@ -32,7 +36,7 @@ def height_words(network: Network, origins: tuple[int, ...]) -> list[str]:
     ]
 
 
-def missing_words(network: Network, clues: Clues, missing: Ints, z: Array) -> list[str]:
+def missing_words(network: Network, clues: Clues, missing: Ints, z: Places) -> list[str]:
     """A sentence for every piece that no construction reaches: who, what holds it, and what is missing."""
     left = set(missing.tolist())
     ends = [(one.i, one.j, True, one.source) for one in clues.lengths]
@@ -86,6 +90,7 @@ def mirror_words(network: Network, mirrors: Sequence[Mirror]) -> list[str]:
         their = "its mirror image" if len(one.stations) == 1 else "their mirror images"
         sentences.append(
             f"{who} and {their} fit all readings equally well: {name} can stand at {a} or at {b} (metres east, north); "
-            f"a row for {name} in stations.csv near the right place, or one more reading that tells them apart, settles it"
+            f"a row for {name} in stations.csv near the right place, or one more reading that tells them apart, "
+            "settles it"
         )
     return sentences

@@ -14,7 +14,7 @@ ROLE = {"held": HELD, "weighted": WEIGHTED, "check": CHECK}
 
 
 class Sketch:
-    """Stations at true places (east, north, height) and the readings between them, in the order in which they are said."""
+    """Stations at true places (east, north, height) and the readings between them, in the order they are said."""
 
     def __init__(self, **places: tuple[float, ...]) -> None:
         self.names = tuple(places)
@@ -95,7 +95,7 @@ class Sketch:
 
     def network(self, known: str = "", rows: str = "", role: str = "held", heights: str = "",
                 shift: dict[str, tuple[float, float]] | None = None) -> Network:  # fmt: skip
-        """The network with ``known`` marks, `stations` ``rows`` and known ``heights``; ``shift`` spoils given places."""
+        """The network with ``known`` marks, `stations` ``rows``, known ``heights``; ``shift`` spoils given places."""
         n = len(self.names)
         start, roles = np.full((n, 3), np.nan), np.full((n, 3), NEW)
         for name in [*known.split(), *rows.split()]:

@@ -44,7 +44,8 @@ CASES = {
     "intersection of two angles, one turned backwards": (sketch("A B C").angles("A: C B", "B: A C"), "A B"),
     "resection from a set": (sketch("A B D C").sets("C: A B D"), "A B D"),
     "resection from two angles": (sketch("A B D C").angles("C: A B", "C: B D"), "A B D"),
-    "resection from two angles without a common mark": (sketch("A B D F C").angles("C: A B", "C: D F", "C: A F"), "A B D F"),
+    "resection from two angles without a common mark": (
+        sketch("A B D F C").angles("C: A B", "C: D F", "C: A F"), "A B D F"),
     "a chain of resections": (sketch("A B D C E H").sets("C: A B D", "E: A D C", "H: A C E"), "A B D"),
     "trilateration from three marks": (sketch("A B D C").distances("A-C", "B-C", "D-C"), "A B D"),
     "two distances and a pointing": (sketch("A B C").distances("A-C", "B-C").sets("A: B C"), "A B"),
@@ -54,7 +55,8 @@ CASES = {
     "azimuths of a set with a turn": (sketch("A B C D").azimuths("A-B", "A-C", "B-C", "D-B", "C-D", turn=0.05), "A B"),
     "azimuth orients a traverse from one mark": (
         sketch("A B C D").azimuths("A-B").distances("A-B", "B-C", "C-D").sets("B: A C", "C: B D"), "A"),
-    "resection with one angle and a distance": (sketch("A B C").angles("C: A B").distances("A-C").sets("B: A C"), "A B"),
+    "resection with one angle and a distance": (
+        sketch("A B C").angles("C: A B").distances("A-C").sets("B: A C"), "A B"),
     "two unknown set-ups see two marks and each other": (sketch("A F C D").sets("C: A D F", "D: A C F"), "A F"),
     "rounds with free orientation far from control, joined by two sights": (
         sketch("A B D E F G C").sets("D: E F G C", "E: D F C", "G: D F C A B", "C: D G A B E")
@@ -63,7 +65,8 @@ CASES = {
         sketch("A C D E F G H").sets("D: E F G", "E: D F", "F: D G E", "A: C H", "H: A C", "C: A H D F", "G: D F C")
         .distances("D-E", "A-H"), "A D"),
     "angles alone with one base line": (
-        sketch("A B C D E F").angles("A: B C", "B: C A", "B: D C", "C: B D", "D: B C", "D: E B", "B: E D", "E: F D", "D: F E"), "A B"),
+        sketch("A B C D E F").angles("A: B C", "B: C A", "B: D C", "C: B D", "D: B C")
+        .angles("D: E B", "B: E D", "E: F D", "D: F E"), "A B"),
     "trilateration chain, sorted out by a sight": (
         sketch("A B C D E").distances("A-C", "B-C", "B-D", "C-D", "D-E", "B-E").sets("C: A B D", "D: C B E"), "A B"),
 }  # fmt: skip
@@ -142,7 +145,7 @@ def test_one_known_mark_and_nothing_for_north_starts_in_a_frame_of_its_own_at_th
 
 
 def test_rough_station_rows_place_a_free_network_near_them_and_are_kept_as_reference() -> None:
-    """Rows scaled off a map, one of them in the wrong square: the shape comes from the readings, the place from the rest."""
+    """Rows scaled off a map, one in the wrong square: the shape comes from the readings, the place from the rest."""
     one = sketch().sets("A: B C H", "B: A C E D", "C: A B D H G", "D: C B E F G", "E: B D F", "G: C D F H")
     one.distances("A-B", "C-D", "D-F", "G-H")
     names = "A B C D E F G H"
