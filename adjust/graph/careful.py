@@ -6,11 +6,11 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from adjust.graph.agreement import AGREES
 from adjust.graph.clues import Clues
 from adjust.graph.grow import Group
 from adjust.graph.join import best_move
 from adjust.graph.misfit import Misfits
-from adjust.graph.places import AGREES
 from adjust.graph.plane import Built, build
 from adjust.network import Ints, Network
 

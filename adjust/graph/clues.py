@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,8 +22,7 @@ Places = NDArray[np.complex128]
 """Places of all stations (n,) as east + i north, NaN where not known."""
 
 
-@dataclass(frozen=True)
-class Length:
+class Length(NamedTuple):
     """A horizontal length ``i`` to ``j`` in metres; ``source`` numbers the reading."""
 
     i: int
@@ -31,8 +31,7 @@ class Length:
     source: int
 
 
-@dataclass(frozen=True)
-class Pointing:
+class Pointing(NamedTuple):
     """A circle reading at ``at`` to ``to`` in radians, of a set."""
 
     at: int
@@ -42,8 +41,7 @@ class Pointing:
     source: int
 
 
-@dataclass(frozen=True)
-class Rise:
+class Rise(NamedTuple):
     """Height of ``j`` minus height of ``i`` in metres; ``sure`` is False where an unreduced line went into it."""
 
     i: int

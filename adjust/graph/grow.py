@@ -11,9 +11,10 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass, field
 
+from adjust.graph.agreement import agree
 from adjust.graph.clues import Index
 from adjust.graph.loci import azimuth
-from adjust.graph.places import CLEARLY, Place, agree, candidates, refined, ties
+from adjust.graph.places import CLEARLY, Place, candidates, refined, ties
 
 MOST_GROUPS = 12
 """Equal solutions followed at once."""

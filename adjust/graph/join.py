@@ -10,10 +10,10 @@ from __future__ import annotations
 import cmath
 import math
 
+from adjust.graph.agreement import cost_of, wrapped
 from adjust.graph.clues import Index
 from adjust.graph.grow import Group, follow, prune, put, resize
-from adjust.graph.loci import similarity, wrapped
-from adjust.graph.places import cost_of
+from adjust.graph.loci import similarity
 
 LINES_TRIED = 4
 COMMON_MOST = 8

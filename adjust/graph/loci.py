@@ -53,11 +53,6 @@ def azimuth(vector: complex) -> float:
     return math.atan2(vector.real, vector.imag)
 
 
-def wrapped(angle: float) -> float:
-    """An angle brought into [-pi, pi]."""
-    return math.remainder(angle, 2 * math.pi)
-
-
 def seen_under(p: complex, q: complex, angle: float) -> Circle | None:
     """The circle from which the angle from ``p`` clockwise to ``q`` is seen; None if it is nearly straight.
 

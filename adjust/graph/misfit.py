@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 
+from adjust.graph.agreement import SPREAD, agree
 from adjust.graph.clues import Clues, Places
-from adjust.graph.places import SPREAD, agree
 from adjust.network import Array, Ints
 
 TWO_PI = 2 * np.pi

@@ -10,22 +10,16 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 
+from adjust.graph.agreement import AGREES, SPREAD, agree, wrapped
 from adjust.graph.clues import Index
-from adjust.graph.loci import Circle, Locus, Ray, azimuth, crossing, meet, seen_under, unit, wrapped
+from adjust.graph.loci import Circle, Locus, Ray, azimuth, crossing, meet, seen_under, unit
 
-SPREAD = 1e-3
-"""Misfit (radians, or share of the length) at which a reading begins to count as foreign: starts are that good."""
-AGREES = 0.02
-"""Misfit up to which a reading agrees with a place."""
 CLEARLY = 3.0
 """A place fits clearly better than another when its cost is less by this: one reading that misses by 4.4 SPREAD."""
 APART = 0.02
 """Places nearer than this share of the distance to the neighbours are one place."""
 MOST_LOCI = 5
 """Loci of one sort from which candidates are made: more only cost time, all readings still vote."""
-
-MOST_ASKED = 9
-"""Members of a set that are tried as its spokesman."""
 
 
 @dataclass
@@ -107,26 +101,6 @@ def _middle(found: list[tuple[float, int]], wraps: bool) -> tuple[float, int]:
         return sum(abs(wrapped(v - one[0])) if wraps else abs(v - one[0]) for v, _ in found)
 
     return min(found, key=away)
-
-
-def cost_of(misfit: float) -> float:
-    """Cauchy cost of a misfit."""
-    return math.log1p((misfit / SPREAD) ** 2)
-
-
-def agree(values: list[float]) -> tuple[float, float, int]:
-    """The angle among ``values`` that the others like best: (angle, cost of the others, number that agree)."""
-    away = [wrapped(v - values[0]) for v in values]
-    if max(away) - min(away) < SPREAD:
-        middle = sum(away) / len(away)
-        return values[0] + middle, sum(((m - middle) / SPREAD) ** 2 for m in away), len(values)
-    best = (values[0], math.inf, 0)
-    for one in values[:: max(1, len(values) // MOST_ASKED)]:
-        misfits = [wrapped(v - one) for v in values]
-        cost = sum(math.log1p((m / SPREAD) ** 2) for m in misfits)
-        if cost < best[1]:
-            best = (one, cost, sum(abs(m) < AGREES for m in misfits))
-    return best
 
 
 def score(t: Ties, x: complex) -> tuple[float, int]:

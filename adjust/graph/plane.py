@@ -12,11 +12,12 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from adjust.graph.agreement import AGREES
 from adjust.graph.clues import Clues, Index, Places
 from adjust.graph.grow import Group, follow, put
 from adjust.graph.join import best_move, join, local_groups
 from adjust.graph.misfit import Misfits
-from adjust.graph.places import AGREES, CLEARLY, ties, voters
+from adjust.graph.places import CLEARLY, ties, voters
 from adjust.graph.polish import polished
 from adjust.network import Ints
 

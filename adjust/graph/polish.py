@@ -8,9 +8,9 @@ from __future__ import annotations
 
 import numpy as np
 
+from adjust.graph.agreement import SPREAD
 from adjust.graph.clues import Places
 from adjust.graph.misfit import Misfits
-from adjust.graph.places import SPREAD
 from adjust.network import Ints
 
 STEPS = 8

@@ -97,7 +97,7 @@ def _heights(network: Network, clues: Clues, asked: np.ndarray, z: Places | None
     first = z is None
     known = find_heights(given, fixed, clues.rises, asked, begin=False).height
     places = None if z is None else np.column_stack([z.real, z.imag])
-    rises = [*clues.rises, *(replace(r, sure=False) for r in clues.reduce(known, places))]
+    rises = [*clues.rises, *(r._replace(sure=False) for r in clues.reduce(known, places))]
     found = find_heights(given, fixed, rises, asked, begin=not first)
     clues.reduce(found.height, places)
     return found

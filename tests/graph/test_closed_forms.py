@@ -8,8 +8,9 @@ import math
 import numpy as np
 import pytest
 
-from adjust.graph.loci import Circle, Ray, azimuth, crossing, meet, seen_under, similarity, unit, wrapped
-from adjust.graph.places import Fan, Ties, agree, candidates, refined
+from adjust.graph.agreement import agree, wrapped
+from adjust.graph.loci import Circle, Ray, azimuth, crossing, meet, seen_under, similarity, unit
+from adjust.graph.places import Fan, Ties, candidates, refined
 from tests.helpers import close
 
 SEEDS = range(20)
