@@ -15,6 +15,7 @@ import numpy as np
 from adjust.graph.agreement import AGREES
 from adjust.graph.clues import Clues, Index, Places
 from adjust.graph.grow import Group, follow, put
+from adjust.graph.hinge import hinged
 from adjust.graph.join import best_move, join, local_groups
 from adjust.graph.misfit import Misfits
 from adjust.graph.places import CLEARLY, ties, voters
@@ -131,20 +132,31 @@ def _groups(index: Index, stations: list[int], known: dict[int, complex]) -> lis
 
 
 def _joined(index: Index, bundles: list[list[Group]]) -> list[list[Group]]:
-    """Join groups until none of them can be joined."""
+    """Join groups by similarity, then by hinges, until none of them can be joined."""
     while True:
-        for a in range(len(bundles)):
-            for b in range(a + 1, len(bundles)):
-                union = join(index, bundles[a], bundles[b])
-                if union:
-                    rest = [bundle for k, bundle in enumerate(bundles) if k not in (a, b)]
-                    bundles = [union, *rest] if a == 0 else [*rest[:1], union, *rest[1:]]
-                    break
-            else:
-                continue
-            break
-        else:
+        union = _one_union(index, bundles) or _one_hinge(index, bundles)
+        if union is None:
             return bundles
+        bundles = union
+
+
+def _one_union(index: Index, bundles: list[list[Group]]) -> list[list[Group]] | None:
+    """The bundles after the first joining of two of them; the union stands where the first of the two stood."""
+    for a in range(len(bundles)):
+        for b in range(a + 1, len(bundles)):
+            union = join(index, bundles[a], bundles[b])
+            if union:
+                return [union if k == a else bundle for k, bundle in enumerate(bundles) if k != b]
+    return None
+
+
+def _one_hinge(index: Index, bundles: list[list[Group]]) -> list[list[Group]] | None:
+    """The bundles after one of them has won a station that others hold by a hinge."""
+    for a, bundle in enumerate(bundles):
+        grown = hinged(index, bundle, [*bundles[:a], *bundles[a + 1 :]])
+        if grown:
+            return [grown if k == a else other for k, other in enumerate(bundles)]
+    return None
 
 
 def _finished(index: Index, group: Group) -> tuple[Group, list[tuple[int, complex, complex]]]:
@@ -206,7 +218,8 @@ def _without_one(clues: Clues, misfits: Misfits, stations: Ints, known: dict[int
     for source in _suspects(clues, bad, first)[: min(TRIALS_MOST, max(4, WORK_MOST // max(1, len(misfits.source))))]:
         trial = _once(clues, misfits, stations, known, rows, frozenset({source}))
         if trial.cost < best.cost - CLEARLY:
-            best = trial
+            # an image that only the missing reading excludes is none
+            best = trial if first.mirrors else replace(trial, mirrors=())
             if _settled(misfits, trial, stations):
                 return best
     if len(known) > 2:
