@@ -1,8 +1,8 @@
 """Groups that hang on each other at single stations: their inner distances close the figure.
 
-Where a group shares one station P with another one, each of its stations Q is |PQ| away from P, however the group turns.
-These circles place Q together with each other (three groups in a triangle) or with any reading to Q; two places are left
-as a rule, which what follows tells apart or not.
+Where a group shares one station P with another one, each of its stations Q is |PQ| away from P, however the group
+turns. These circles place Q together with each other (three groups in a triangle) or with any reading to Q; two places
+are left as a rule, which what follows tells apart or not.
 """
 
 from __future__ import annotations

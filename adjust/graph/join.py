@@ -16,6 +16,9 @@ from adjust.graph.grow import Group, follow, prune, put, resize
 from adjust.graph.loci import similarity
 
 LINES_TRIED = 4
+GOOD = 5.0
+"""Cost a station below which a group is taken without trying another line: it grows with the chain even in clean
+networks (4.1 in 1,000 stations of angles alone)."""
 COMMON_MOST = 8
 
 
@@ -31,21 +34,29 @@ def local_groups(index: Index, seed: int) -> list[Group]:
         if not best or (-len(groups[0].at), groups[0].cost) < (-len(best[0].at), best[0].cost):
             best = groups
         tried += len(groups[0].at) > 3
-        if (tried and best[0].cost <= len(best[0].at)) or tried >= LINES_TRIED:
+        if (tried and best[0].cost <= GOOD * len(best[0].at)) or tried >= LINES_TRIED:
             break
     return best
 
 
 def _lines(index: Index, seed: int) -> list[int]:
-    """Neighbours of a station, the best line to start from first: measured, pointed along, with common ones."""
+    """Neighbours of a station, the best line to start from first: measured, pointed along, with most triangles."""
     lengths = {other for other, _, _ in index.lengths[seed]}
 
     def worth(other: int) -> tuple[bool, bool, int]:
         pointed = (min(seed, other), max(seed, other)) in index.of_line
-        common = sum(third in index.near[other] for third in index.near[seed])
-        return (other not in lengths, not pointed, -common)
+        third = (_seen_with(index, seed, other) | lengths) & (
+            _seen_with(index, other, seed) | {k for k, _, _ in index.lengths[other]}
+        )
+        return (other not in lengths, not pointed, -len(third))
 
     return sorted(index.near[seed], key=worth)
+
+
+def _seen_with(index: Index, at: int, to: int) -> set[int]:
+    """Stations that stand in one set with ``to`` at a station."""
+    sets = {p.set for p in index.out[at] if p.to == to}
+    return {p.to for p in index.out[at] if p.set in sets and p.to != to}
 
 
 def _line_group(index: Index, seed: int, other: int) -> Group:

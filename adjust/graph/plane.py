@@ -58,10 +58,29 @@ def build(clues: Clues, stations: Ints, known: dict[int, complex], rows: dict[in
     misfits = Misfits(clues)
     first = _once(clues, misfits, stations, known, rows, frozenset())
     best = _polish(clues, misfits, known, first)
-    if len(bad_sources(misfits, best.z)) < 2:
-        return best
-    better = _without_one(clues, misfits, stations, known, rows, first)
-    return _polish(clues, misfits, known, better) if better is not first else best
+    if len(bad_sources(misfits, best.z)) > 1:
+        better = _without_one(clues, misfits, stations, known, rows, first)
+        best = _polish(clues, misfits, known, better) if better is not first else best
+    return _weighed(misfits, known, best) if best.mirrors else best
+
+
+def _weighed(misfits: Misfits, known: dict[int, complex], built: Built) -> Built:
+    """The mirrors that are left when both solutions are polished: still apart, and still equal."""
+    fixed = frozenset(known)
+    z = polished(misfits, built.z, fixed)
+    left = []
+    # the images of many stations first: they are images of the places as they were found
+    for mirror in sorted(built.mirrors, key=lambda m: -len(m.stations)):
+        other = built.z.copy()
+        other[list(mirror.stations)] = mirror.there
+        other = polished(misfits, other, fixed)
+        gain = misfits.cost(z) - misfits.cost(other)
+        if gain > CLEARLY:
+            z = other
+        elif gain > -CLEARLY:
+            still = _mirror(misfits, z, other)
+            left += [still] if still else []
+    return replace(built, z=z, mirrors=tuple(left))
 
 
 def bad_sources(misfits: Misfits, z: Places) -> list[int]:

@@ -165,11 +165,21 @@ def rightly_mirrored(trial: Trial, reference: Solution) -> bool:
     """Whether every other solution that the start names is one: as good as the true one, or the true one itself."""
     start = find_start(trial.job.network)
     here = [start.positions] + [np.column_stack([xy, np.nan_to_num(start.positions[:, 2])]) for xy in start.mirrors]
+    found = []
     for places in here:
         got = solved(trial, places)
         if isinstance(got, str) or got.total.square_sum > 1.1 * reference.total.square_sum + 20:
             return False
-    return len(here) > 1
+        found.append(got.positions[:, 0] + 1j * got.positions[:, 1])
+    return len(here) > 1 and all(_apart(found[0], other) for other in found[1:])
+
+
+def _apart(a: Array, b: Array) -> bool:
+    """Whether two solutions (n,) complex have different shapes, or one shape that is mirrored."""
+    seen = ~np.isnan(a)
+    a, b = a[seen] - a[seen].mean(), b[seen] - b[seen].mean()
+    fit = np.vdot(a, b) / np.vdot(a, a)
+    return bool(np.abs(fit * a - b).max() > 1e-4 * np.abs(b).max())
 
 
 def verdict(trial: Trial) -> str:

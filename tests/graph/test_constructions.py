@@ -68,7 +68,8 @@ CASES = {
         sketch("A B C D E F").angles("A: B C", "B: C A", "B: D C", "C: B D", "D: B C")
         .angles("D: E B", "B: E D", "E: F D", "D: F E"), "A B"),
     "three groups hinged in a triangle, turned the right way by a sight across": (
-        sketch("A F C D G H").sets("C: A D H F", "D: A C", "H: A C", "G: D F").distances("A-C", "C-H", "D-G", "F-G"), "A F"),
+        sketch("A F C D G H").sets("C: A D H F", "D: A C", "H: A C", "G: D F")
+        .distances("A-C", "C-H", "D-G", "F-G"), "A F"),
     "a link traverse with a knee where no angle was turned, and one sight across": (
         sketch("A B D F G").sets("B: A D", "F: D G B", "D: F").distances("A-B", "B-D", "D-F", "F-G"), "A G"),
     "trilateration chain, sorted out by a sight": (
