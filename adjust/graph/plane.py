@@ -193,8 +193,12 @@ def _finished(index: Index, group: Group) -> tuple[Group, list[tuple[int, comple
 
 
 def _mirror(misfits: Misfits, z: Places, other: Places) -> Mirror | None:
-    """The stations that stand elsewhere in an equal solution; None where different readings misfit."""
-    if set(bad_sources(misfits, z)) != set(bad_sources(misfits, other)):
+    """The stations that stand elsewhere in an equal solution; None where readings misfit differently."""
+    with np.errstate(invalid="ignore"):
+        here, there = (np.nan_to_num(np.abs(misfits.all(one))) for one in (z, other))
+    # a gross error misfits in both images, and alike, or it is no image
+    bad = np.maximum(here, there) > AGREES
+    if np.abs(here - there)[bad].max(initial=0.0) > AGREES:
         return None
     with np.errstate(invalid="ignore"):
         size = float(np.nanmax(np.abs(z - z[np.isfinite(z)][0])))
@@ -237,8 +241,7 @@ def _without_one(clues: Clues, misfits: Misfits, stations: Ints, known: dict[int
     for source in _suspects(clues, bad, first)[: min(TRIALS_MOST, max(4, WORK_MOST // max(1, len(misfits.source))))]:
         trial = _once(clues, misfits, stations, known, rows, frozenset({source}))
         if trial.cost < best.cost - CLEARLY:
-            # an image that only the missing reading excludes is none
-            best = trial if first.mirrors else replace(trial, mirrors=())
+            best = trial
             if _settled(misfits, trial, stations):
                 return best
     if len(known) > 2:
