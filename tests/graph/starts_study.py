@@ -60,10 +60,10 @@ def made(seed: int, blunder: bool, least: float = 0.55) -> Trial:
     start = np.where(stations.role == NEW, np.nan, stations.start)
     network = replace(job.network, stations=replace(stations, start=start))
     network = _thinned(network, rng, float(rng.uniform(least, least + 0.45)))
-    spoilt = ""
+    what = ""
     if blunder:
-        network, spoilt = _spoilt(network, rng)
-    return Trial(replace(job, network=network), truth, f"{'+'.join(mix)} {control} {n}", spoilt)
+        network, what = spoilt(network, rng)
+    return Trial(replace(job, network=network), truth, f"{'+'.join(mix)} {control} {n}", what)
 
 
 def _thinned(network: Network, rng: np.random.Generator, share: float) -> Network:
@@ -85,7 +85,7 @@ def _rows(block: Block, keep: Array) -> Block:
     )  # fmt: skip
 
 
-def _spoilt(network: Network, rng: np.random.Generator) -> tuple[Network, str]:
+def spoilt(network: Network, rng: np.random.Generator) -> tuple[Network, str]:
     """One reading wrong: by 1 mm to 1000 km, by any angle, turned the other way, or to another station."""
     count = [0 if KINDS[b.kind].from_control else len(b) for b in network.blocks]
     b = int(rng.choice(len(count), p=np.array(count) / sum(count)))

@@ -14,6 +14,7 @@ from adjust.kinds import KINDS
 from adjust.network import Network
 from tests.graph.sketch import Sketch
 from tests.graph.starts_study import made, verdict
+from tests.graph.traverses import SHAPES, traverse
 
 PLACES = {
     "A": (1000.0, 2000.0), "B": (1210.0, 2035.0), "C": (1105.0, 2190.0), "D": (1290.0, 2240.0),
@@ -114,3 +115,16 @@ def test_the_study_spoils_what_it_says() -> None:
         sizes.append(wrong.blunder)
     assert any("another station" in s for s in sizes)
     assert any("turned the other way" in s for s in sizes)
+
+
+@pytest.mark.parametrize("shape", SHAPES)
+def test_traverses_start_from_their_readings(shape: str) -> None:
+    assert [verdict(traverse(seed, shape, blunder=False)) for seed in range(12)] == ["same"] * 12
+
+
+@pytest.mark.parametrize("shape", ["closed", "link"])
+def test_traverses_with_one_gross_error_start_where_the_truth_leads(shape: str) -> None:
+    """Three readings to spare. Where only one is, a gross error cannot be told from others and is not asked for."""
+    words = [verdict(traverse(seed, shape, blunder=True)) for seed in range(20)]
+    assert not [word for word in words if word.startswith("FAILS")]
+    assert words.count("same") > 10
