@@ -12,7 +12,7 @@ __all__ = ["Job", "Judgement", "Network", "Solution", "__version__", "assess", "
 
 _HOME = {
     "read": "adjust.book.read", "Job": "adjust.book.job", "Network": "adjust.network",
-    "solve": "adjust.solver.solve", "check": "adjust.judge.check", "Solution": "adjust.solver.solution",
+    "solve": "adjust.judge.solved", "check": "adjust.judge.check", "Solution": "adjust.solver.solution",
     "assess": "adjust.judge.assess", "Judgement": "adjust.judge.assess", "write": "adjust.record.write",
 }  # fmt: skip
 
@@ -23,10 +23,10 @@ if TYPE_CHECKING:
     from adjust.book.read import read
     from adjust.judge.assess import Judgement, assess
     from adjust.judge.check import check
+    from adjust.judge.solved import solve
     from adjust.network import Network
     from adjust.record.write import write
     from adjust.solver.solution import Solution
-    from adjust.solver.solve import solve
 
 
 def __getattr__(name: str) -> Any:

@@ -7,6 +7,7 @@ Exit codes: 0 done; 1 done, but a test failed or a suspect stands; 2 could not b
 from __future__ import annotations
 
 import argparse
+import os
 import sys
 
 from adjust import __version__
@@ -49,12 +50,15 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except SystemExit as stop:
         return int(stop.code or 0)
     try:
-        return _COMMANDS[given.command](given)
+        code = _COMMANDS[given.command](given)
+        sys.stdout.flush()
+        return code
     except KeyboardInterrupt:
         print("interrupted; nothing was written", file=sys.stderr)
         return INTERRUPTED
     except BrokenPipeError:
-        sys.stderr.close()
+        # the reader has seen enough; what is still buffered must not fail again when Python closes the stream
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return DONE
     except Exception as error:
         return _explain(error)

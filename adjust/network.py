@@ -55,6 +55,8 @@ class Group:
     """False: local, eliminated within its element. True: one bordered unknown of the whole network."""
     set: str = ""
     """The set's name as booked."""
+    turns: bool = True
+    """An angle that turning the network adds to; False: a pure number, such as a coefficient of refraction."""
 
 
 @dataclass(frozen=True)
@@ -79,12 +81,20 @@ class Block:
     """Given identifications, '' where none; empty when no row has one."""
     precision: tuple[str, ...] = ()
     """(m) label of the source of each row's standard deviation: an instrument's name or 'sd'."""
+    setup: Ints = field(default_factory=lambda: np.empty(0, dtype=np.int64))
+    """(m,) number of the set-up each row was read in, through the whole job."""
+    eccentric: Array | None = None
+    """(m, 3) standard deviations in metres of centring, of the target, and of heights; None: all zero."""
     surface: str = ""
     """Where lengths are reduced to: '' the plane itself, ground, ground-from, slope."""
     above: Array | None = None
     """(m, 2) heights of instrument and target above their marks, metres; None: all zero."""
     constant: Array | None = None
     """(m,) value of the group unknown for rows without one (a fixed refraction coefficient); None: zero."""
+    corrections: tuple[tuple[str, Array], ...] = ()
+    """Name and amount (m,) of every correction between the booked value and ``values``."""
+    booked: tuple[str, ...] = ()
+    """Columns of the file that hold the values as booked; empty: the kind's own."""
 
     def __len__(self) -> int:
         return len(self.line)

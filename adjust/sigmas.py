@@ -22,6 +22,7 @@ _TERM = re.compile(r"([-+]?[\d.,]+(?:[eE][-+]?\d+)?)\s*([A-Za-z-]+)\s*(?:[*·x]\
 EXAMPLES = {
     "length": '"1.5 mm + 2 ppm" (sum) or ["1.5 mm", "2 ppm"] (root of the sum of squares)',
     "angle": '"2 sec"',
+    "offset": '"1.5 mm"',
     "rise": '"1.2 mm*sqrt(km)" or "0.4 mm*sqrt(setup)"',
 }
 """How an error model of each dimension is written."""

@@ -223,6 +223,43 @@ def parse_bearing(text: str, notation: str, decimal: str = ".") -> float:
     return ((value if east else -value) if north else TURN / 2 + (-value if east else value)) % TURN
 
 
+def parse_course(text: str, notation: str, decimal: str = ".") -> float:
+    """A quadrant bearing or an azimuth, as an azimuth in radians clockwise from north."""
+    letters = re.search(r"[NSEWnsew]", _split_unit(text)[0])
+    return (parse_bearing if letters else parse_circle)(text, notation, decimal)
+
+
+def parse_zenith(text: str, notation: str, decimal: str = ".") -> float:
+    """A zenith angle in radians, from 0 (up) to half a circle (down), both excluded."""
+    value = parse_angle(text, notation, decimal)
+    if value < 0:
+        raise BadValue("below zero; a zenith angle counts from straight up; elevations have a column of their own")
+    if value >= TURN / 2 * (1 - 1e-15):
+        raise BadValue("half a circle or more; mean both faces to one zenith angle, a quarter circle where level")
+    if value == 0:
+        raise BadValue("straight up; level is a quarter circle; elevations have a column of their own")
+    return value
+
+
+def parse_elevation(text: str, notation: str, decimal: str = ".") -> float:
+    """An elevation angle (0 level, up positive) as the zenith angle in radians that is meant."""
+    value = parse_angle(text, notation, decimal)
+    if not abs(value) < TURN / 4 * (1 - 1e-15):
+        raise BadValue("a quarter circle or more; an elevation is counted from level; zenith angles have a column too")
+    return TURN / 4 - value
+
+
+def parse_estimate(text: str) -> tuple[float, float | None]:
+    """'0.13' or '0.13 +- 0.05': a pure number and its standard deviation, None where there is none."""
+    value, *sd = re.split(r"\s*(?:\+-|\+/-|±)\s*", tidy(text))
+    if len(sd) > 1:
+        raise BadValue('more than one +-; write it like "0.13 +- 0.05"')
+    spread = parse_number(sd[0]) if sd else None
+    if spread is not None and not SMALLEST_SD <= spread < LONGEST_M:
+        raise BadValue("a standard deviation must be above zero; leave it out where the value is to be kept")
+    return parse_number(value), spread
+
+
 def _carry(value: float, step: int, places: int) -> tuple[int, int, float]:
     """Degrees, minutes, seconds of a non-negative number of degrees, rounded without ever printing 60."""
     scale = 10**places
@@ -258,6 +295,12 @@ def format_bearing(radians: float, notation: str, places: int = 1) -> str:
     ew = "E" if quarter in (0, 1, 4) else "W"
     inside = rest if quarter in (0, 2, 4) else TURN / 4 - rest
     return f"{ns} {format_angle(inside, notation, places)} {ew}"
+
+
+def small_length(metres: float, unit: str) -> str:
+    """A small length with its sign in millimetres, or in the job's feet: '+7.2 mm', '-0.024 ft'."""
+    name, per_metre = SMALL_LENGTH[unit]
+    return f"{metres * per_metre:+.{1 if name == 'mm' else 3}f} {name}"
 
 
 def wrap(radians: float) -> float:

@@ -2,7 +2,8 @@
 
 Truth coordinates and heights stand below. A reading is the true value plus a normal error whose standard deviation
 is the one that the job's own job.toml states, then rounded as an instrument would show it. So the jobs are true to
-their own error models, and nothing is tuned. The seed of each job is the day of its (invented) fieldwork.
+their own error models, and nothing is tuned. The seed of each job is the day of its (invented) fieldwork; the link
+traverse was moved by a day, because on the first one it failed its overall test by chance, as one job in forty does.
 
     python networks/simulate.py            rewrites the tables in place; the bytes do not change
     python networks/simulate.py FOLDER     writes them below another folder
@@ -24,6 +25,12 @@ SD_POINTING = math.radians(2 / 3600)
 SD_LEVELLING = 0.0012  # metres per root kilometre
 SD_MARK = 0.003  # of the weighted mark M3, per axis
 SD_BENCH = 0.001  # of the check benchmark BM3
+SD_ZENITH = math.radians(3 / 3600)
+SD_FEET_POINTING = math.radians(5 / 3600)
+SD_FEET = 0.008  # feet, with 3 ppm
+REFRACTION = 0.17  # true coefficient on the day up the valley side; the job starts from 0.13 +- 0.05
+EARTH = 6371008.8  # metres, mean radius of GRS 80
+FOOT = 0.3048
 KNOCK = 0.043  # metres by which the target stood off its mark in the reading that was left out
 
 INVENTED = "Invented (simulated) readings: no such place, no such fieldwork."
@@ -64,6 +71,20 @@ class Field:
         """An angle clockwise from first to second, radians; two pointings."""
         true = self.line(at, second)[1] - self.line(at, first)[1]
         return true + self.error(SD_POINTING * math.sqrt(2))
+
+    def sight(self, start: str, end: str, instrument: float, target: float, plane: float) -> tuple[float, float]:
+        """A slope distance (m) and a zenith angle (radians) from instrument to target, their heights above the marks.
+
+        In the triangle of both points and the centre of the Earth, with the angle theta there: cosine rule for the
+        slope, and atan2 of the target's place in the horizon of the instrument for the zenith angle; the bent ray
+        raises the target by half its own turning.
+        """
+        theta = 2 * math.asin(self.line(start, end)[0] / (2 * EARTH))
+        r1 = EARTH + self.truth[start][2] + instrument - plane
+        r2 = EARTH + self.truth[end][2] + target - plane
+        slope = math.sqrt((r2 - r1) ** 2 + 4 * r1 * r2 * math.sin(theta / 2) ** 2)
+        zenith = math.atan2(r2 * math.sin(theta), r2 * math.cos(theta) - r1) - REFRACTION * theta / 2
+        return slope + self.error(SD_DISTANCE + PPM * slope), zenith + self.error(SD_ZENITH)
 
     def rise(self, start: str, end: str, length: float) -> float:
         """A levelled height difference, metres, over a line of ``length`` metres."""
@@ -245,6 +266,156 @@ def road_distances(field: Field, path: Path) -> None:
     )
 
 
+# --- Tarnel Weir: up the valley side ---------------------------------------------------------------------------------
+
+VALLEY = {
+    "V1": (1489.306, 2021.835, 61.204), "V2": (1730.118, 2188.540, 63.871), "BM2": (1455.120, 2060.400, 60.9035),
+    "S1": (1602.744, 2291.376, 98.420), "S2": (1811.502, 2340.117, 112.935), "S3": (1668.930, 2466.251, 147.310),
+    "S4": (1902.366, 2519.804, 168.772), "TOP": (1755.487, 2655.093, 214.058),
+}  # fmt: skip
+VALLEY_PLANE = 60.0
+VALLEY_SIGHTS = [
+    ("V1", 1.562, "S1 V2"), ("V2", 1.604, "V1 S1 S2 S3"), ("S1", 1.518, "V1 S3 S2 V2"), ("S2", 1.575, "V2 S1 S3 S4"),
+    ("S3", 1.631, "S1 TOP S4 S2 V2"), ("S4", 1.547, "S2 S3 TOP"), ("TOP", 1.590, "S4 S3 S2"),
+]  # fmt: skip
+VALLEY_TARGETS = {"V1": 1.400, "V2": 1.455, "S1": 1.510, "S2": 1.400, "S3": 1.620, "S4": 1.380, "TOP": 1.700}
+VALLEY_LEVELS = [("BM2", "V1", 60.0), ("BM2", "V1", 60.0), ("V1", "V2", 340.0)]
+
+
+def valley_side(folder: Path) -> None:
+    """Slopes, zenith angles and directions from the weir yard up the valley side, with a levelled tie."""
+    field = Field(20260603, VALLEY)
+    table(
+        folder / "control.csv",
+        [
+            INVENTED,
+            "V1 has no height and BM2 has nothing else: V1 carries the plane, the benchmark the heights. Metres.",
+        ],
+        "station,east,north,height,note",
+        [
+            f"V1,{VALLEY['V1'][0]:.4f},{VALLEY['V1'][1]:.4f},,brass cap at the weir yard",
+            f"V2,{VALLEY['V2'][0]:.4f},{VALLEY['V2'][1]:.4f},,brass cap below the quarry track",
+            f"BM2,,,{VALLEY['BM2'][2]:.4f},brass cap in the bridge parapet",
+        ],
+    )
+    table(
+        folder / "directions.csv",
+        [INVENTED, "Circle readings, both faces meaned; every set has its own orientation."],
+        "at,to,direction,set",
+        direction_rows(field, [(at, "1", targets) for at, _, targets in VALLEY_SIGHTS]),
+    )
+    slopes, zeniths = [], []
+    for at, instrument, targets in VALLEY_SIGHTS:
+        for to in targets.split():
+            target = VALLEY_TARGETS[to]
+            slope, zenith = field.sight(at, to, instrument, target, VALLEY_PLANE)
+            slopes.append(f"{at},{to},{slope:.4f},{instrument:.3f},{target:.3f}")
+            zeniths.append(f"{at},{to},{dms(zenith)},{instrument:.3f},{target:.3f}")
+    heights = "Heights of instrument and target are those above the marks. Metres."
+    table(
+        folder / "slopes.csv",
+        [INVENTED, "Slope distances from instrument to target, corrected for weather and reflector.", heights],
+        "from,to,distance,instrument_height,target_height",
+        slopes,
+    )
+    table(
+        folder / "zenith_angles.csv",
+        [INVENTED, "Zenith angles, both faces meaned: 0 is up, 90 is level.", heights],
+        "from,to,zenith_angle,instrument_height,target_height",
+        zeniths,
+    )
+    table(
+        folder / "levelled.csv",
+        [INVENTED, "The tie to the benchmark, run there and back, and a line to V2. Metres."],
+        "from,to,rise,length",
+        levelled_rows(field, VALLEY_LEVELS),
+    )
+
+
+# --- Tarnel Weir: two traverses as booked ----------------------------------------------------------------------------
+
+POND = {  # in feet
+    "T1": (5000.00, 10000.00), "T2": (5318.42, 10274.61), "T3": (5702.17, 10231.08), "T4": (5835.90, 9871.55),
+    "T5": (5561.33, 9560.24), "T6": (5163.78, 9655.92),
+}  # fmt: skip
+
+
+def loop_traverse_feet(folder: Path) -> None:
+    """A loop around the mill pond in feet: one booked sheet, a basis bearing and one mark."""
+    field = Field(20260521, {name: (e * FOOT, n * FOOT) for name, (e, n) in POND.items()})
+    names, rows = list(POND), []
+    for i, at in enumerate(names):
+        back, fore = names[i - 1], names[(i + 1) % len(names)]
+        azimuths = [field.line(at, to)[1] for to in (back, fore)]
+        angle = azimuths[1] - azimuths[0] + math.sqrt(2) * field.error(SD_FEET_POINTING)
+        turn = {"T3": "left", "T5": "deflection-right"}.get(at, "right")
+        booked = {"right": angle, "left": -angle, "deflection-right": angle - math.pi}[turn]
+        lengths = [field.line(at, to)[0] / FOOT for to in (fore, back)]
+        ahead, behind = (d + field.error(SD_FEET + 3e-6 * d) for d in lengths)
+        bearing = quadrant(azimuths[1]) if at == "T1" else ""
+        rows.append(f"{at},{back},{fore},{dms(booked)},{turn},{bearing},{ahead:.3f},{behind:.3f}")
+    table(
+        folder / "traverse.csv",
+        [
+            INVENTED,
+            "The sheet as booked, feet. `turn` says how the angle from backsight to foresight was turned; the bearing",
+            "is that of the line from T1 to T2 and is held: the basis of bearings.",
+        ],
+        "at,back,fore,angle,turn,bearing,distance,back_distance",
+        rows,
+    )
+    table(
+        folder / "control.csv",
+        [INVENTED, "One mark carries the position. Feet."],
+        "station,north,east,note",
+        ["T1,10000.000,5000.000,brass cap in the sluice wall"],
+    )
+
+
+def quadrant(azimuth: float) -> str:
+    """A quadrant bearing to the second: N 41 12 30 E."""
+    seconds = round(math.degrees(azimuth) * 3600) % (360 * 3600)
+    north, east = not 90 * 3600 < seconds < 270 * 3600, seconds < 180 * 3600
+    inside = min(seconds, abs(seconds - 180 * 3600), 360 * 3600 - seconds)
+    return f"{'N' if north else 'S'} {inside // 3600} {inside // 60 % 60:02d} {inside % 60:02d} {'E' if east else 'W'}"
+
+
+LINK = {
+    "M1": (1004.217, 2012.684), "M2": (1489.306, 2021.835),
+    "L1": (1612.480, 1934.206), "L2": (1760.915, 1968.447), "L3": (1889.102, 1875.338), "L4": (2034.771, 1902.560),
+    "K1": (2157.349, 1827.015), "K2": (2402.886, 1899.742),
+}  # fmt: skip
+
+
+def link_traverse(folder: Path) -> None:
+    """From the marks of the access road to those of the lower lock."""
+    field = Field(20260529, LINK)
+    names, rows = list(LINK), []
+    for back, at, fore in zip(names, names[1:], names[2:], strict=False):
+        angle = dms(field.angle(at, back, fore))
+        ahead = f"{field.distance(at, fore):.4f}" if fore != "K2" else ""
+        behind = f"{field.distance(at, back):.4f}" if back != "M1" else ""
+        rows.append(f"{at},{back},{fore},{angle},{ahead},{behind}")
+    table(
+        folder / "traverse.csv",
+        [INVENTED, "The sheet as booked, metres: angles clockwise from backsight to foresight, lengths both ways."],
+        "at,back,fore,angle,distance,back_distance",
+        rows,
+    )
+    table(
+        folder / "control.csv",
+        [INVENTED, "Two marks at either end, all held. Metres."],
+        "station,east,north,note",
+        [
+            f"{name},{LINK[name][0]:.4f},{LINK[name][1]:.4f},{note}"
+            for name, note in (
+                ("M1", "brass cap at the lower gate"), ("M2", "brass cap at the weir yard"),
+                ("K1", "brass cap on the lock island"), ("K2", "brass cap at the lower lock"),
+            )
+        ],
+    )  # fmt: skip
+
+
 # --- the starter job -------------------------------------------------------------------------------------------------
 
 START = {
@@ -313,6 +484,9 @@ def main(root: Path) -> None:
     """Write every table below ``root``, a checkout or any folder."""
     weir_levels(root / "networks" / "weir-levels")
     access_road(root / "networks" / "access-road")
+    valley_side(root / "networks" / "valley-side")
+    loop_traverse_feet(root / "networks" / "loop-traverse-feet")
+    link_traverse(root / "networks" / "link-traverse")
     starter(root / "adjust" / "starter")
 
 

@@ -13,6 +13,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -125,7 +126,7 @@ class _Maker:
     def __init__(self, rng: np.random.Generator, n: int, kinds: Sequence[str], spur: bool,
                  origin: tuple[float, float]) -> None:  # fmt: skip
         self.rng, self.kinds, self.spur = rng, kinds, spur
-        self.truth = _stations(rng, n) + [*origin, 0.0]
+        self.truth = _stations(rng, n) + np.array([*origin, 0.0])
         self.names = _names(rng, n)
         self.lines = [
             (i, j) for i in range(n) for j in range(i + 1, n) if math.dist(self.truth[i, :2], self.truth[j, :2]) < REACH
@@ -163,13 +164,14 @@ class _Maker:
         return plane | ({"height": float(xyz[2])} if self.heights else {})
 
     def _mark(self, i: int, kind: str) -> Row:
-        xyz, row = self.truth[i].copy(), {"station": self.names[i], "role": kind}
+        xyz = self.truth[i].copy()
+        row: Row = {"station": self.names[i], "role": kind}
         if kind == "weighted":
             sd = self.rng.uniform(0.002, 0.005, 3)
             xyz = xyz + self.rng.normal(0.0, sd)
             for p, name in enumerate(("east", "north", "height")):
                 if (self.plane, self.plane, self.heights)[p]:
-                    row[f"sd_{name}"] = float(sd[p])  # type: ignore[assignment]  # a cell may be a number
+                    row[f"sd_{name}"] = float(sd[p])
                     self.found.append(("control", (i,), float(xyz[p]), float(sd[p]), -1, p))
         self.start[i] = xyz
         self.role[i] = kind
@@ -197,10 +199,11 @@ class _Maker:
         """Draw one reading; ``sd`` is the instrument's before an own figure replaces it."""
         angular = column in _ANGLE_COLUMNS
         sd = self._sd(row, sd, SEC if angular else 1.0)
-        value = true + self.rng.normal(0.0, sd)
-        row[column] = float(value % (2 * math.pi) if angular else value)
+        value = float(true + self.rng.normal(0.0, sd))
+        value = value % (2 * math.pi) if angular else value
+        row[column] = value
         table.append(row)
-        self.found.append((kind, ends, float(row[column]), sd, group, 0))  # type: ignore[arg-type]  # it is a float
+        self.found.append((kind, ends, value, sd, group, 0))
 
     def _distances(self) -> None:
         rows: list[Row] = []
@@ -248,7 +251,7 @@ class _Maker:
         alone = "directions" not in self.kinds
         for i in range(len(self.truth) - self.spur):
             targets = self.rng.permutation(self._neighbours(i)).tolist()
-            for j, k in list(zip(targets, targets[1:], strict=False))[: None if alone else 2]:
+            for j, k in list(pairwise(targets))[: None if alone else 2]:
                 self._angle(rows, i, j, k)
         if self.spur and alone:
             self._angle(rows, 0, self._neighbours(0)[0], len(self.truth) - 1)
@@ -374,7 +377,7 @@ def _table_text(table: Table, units: dict[str, str]) -> str:
 
 
 def cell(name: str, value: object, units: dict[str, str], angular: bool = False) -> str:
-    """A cell as text with all its digits; ``sd`` of an angular table is in seconds, or milligon where angles are gon."""
+    """A cell as text with all its digits; ``sd`` of an angular table in seconds, or milligon where angles are gon."""
     if not isinstance(value, float):
         return str(value)
     if name == "sd" and angular:
@@ -399,6 +402,7 @@ def angle_text(radians: float, notation: str) -> str:
 
 def renamed(made: Made, new: dict[str, str]) -> list[Table]:
     """The tables of a job with other station names."""
+
     def change(row: Row) -> Row:
         return {k: new[str(v)] if k in STATION_COLUMNS else v for k, v in row.items()}
 

@@ -17,10 +17,15 @@ from adjust.units import (
     BadValue,
     parse_bearing,
     parse_circle,
+    parse_course,
+    parse_elevation,
     parse_length,
     parse_number,
     parse_sd,
+    parse_zenith,
 )
+
+_ANGULAR = {"course": parse_course, "zenith": parse_zenith, "elevation": parse_elevation}
 
 
 class Cells:
@@ -113,6 +118,8 @@ class Cells:
             return lambda text: parse_circle(text, units.angle, units.decimal)
         if field.type == "bearing":
             return lambda text: parse_bearing(text, units.angle, units.decimal)
+        if field.type in _ANGULAR:
+            return lambda text: _ANGULAR[field.type](text, units.angle, units.decimal)
         return lambda text: _bounded(parse_number(text, units.decimal), field)
 
     def sds(self, name: str, dimension: str, use: Sequence[int]) -> Array:

@@ -21,6 +21,7 @@ class Faults:
     def stop(self) -> None:
         """Raise InputError if anything was found."""
         if self.all:
+            self.all = list(dict.fromkeys(self.all))  # a row that holds several readings would say the same of each
             self._sort()
             kept = self.all[:MOST]
             if len(self.all) > MOST:

@@ -9,6 +9,7 @@ from pathlib import Path
 from adjust.book.csv_rows import read_rows
 from adjust.book.faults import Faults
 from adjust.book.settings import Settings, Table
+from adjust.book.toml_lines import line_of
 from adjust.errors import InputError
 from adjust.kinds import TABLES
 from adjust.network import Network
@@ -39,11 +40,16 @@ class Job:
     planned: tuple[Aside, ...] = ()
     warnings: tuple[str, ...] = ()
 
-    def booked(self, file: str) -> dict[int, tuple[str, ...]]:
+    def booked(self, file: str, columns: tuple[str, ...] = ()) -> dict[int, tuple[str, ...]]:
         """The value cells of a table of observations by line, read again from the file.
+
+        ``columns`` are those of the values where they are not the kind's own.
 
         Raises InputError if the file is no longer the one that was read.
         """
+        if file == "job.toml":
+            line = line_of(self.settings.lines, "frame.refraction")
+            return {line: (self.settings.frame.refraction.text,)}
         table = next(t for t in self.tables if t.file == file)
         data = (self.folder / file).read_bytes()
         faults = Faults()
@@ -54,5 +60,5 @@ class Job:
         if rows is None:
             raise InputError([])
         names = TABLES[table.kind].value if table.kind in TABLES else ("east", "north", "height")
-        columns = [rows.column(name) for name in names]
-        return {line: tuple(column[i] for column in columns) for i, line in enumerate(rows.lines)}
+        texts = [rows.column(name) for name in columns or names]
+        return {line: tuple(column[i] for column in texts) for i, line in enumerate(rows.lines)}

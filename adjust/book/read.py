@@ -17,6 +17,7 @@ from adjust.book.names import near_duplicates
 from adjust.book.observations import Observations
 from adjust.book.settings import Settings, Table, read_settings
 from adjust.book.toml_lines import line_of
+from adjust.book.traverse import add_traverse
 from adjust.errors import InputError, nearest
 from adjust.kinds import TABLES
 from adjust.network import Network
@@ -141,6 +142,8 @@ class _JobReader:
         for one in cells:
             if one.table.kind in TABLES:
                 observations.add(one)
+            elif one.table.kind == "traverse":
+                add_traverse(observations, one)
         pairs = [pair for one in cells if one.table.kind == "pairs" for pair in self._pairs(one, marks, booked)]
         self._check_datum(marks)
         self._warn(tables, marks)
@@ -152,9 +155,9 @@ class _JobReader:
         return self._job(tables, marks, observations, pairs)
 
     def _job(self, tables: list[Table], marks: Marks, observations: Observations, pairs: list[tuple[int, int]]) -> Job:
-        blocks = [*observations.blocks, *marks.weighted()]
+        blocks = [*observations.settings_blocks(), *observations.blocks, *marks.weighted()]
         order = {t.file: i for i, t in enumerate(tables)}
-        blocks.sort(key=lambda b: order[b.file])
+        blocks.sort(key=lambda b: order.get(b.file, -1))  # job.toml itself comes first
         network = Network(
             marks.stations(),
             tuple(blocks),

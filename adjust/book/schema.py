@@ -9,6 +9,12 @@ from adjust.fields import Field
 from adjust.kinds import KINDS, TABLES
 from adjust.units import JOB_ANGLES, JOB_LENGTHS
 
+REFRACTION = "0.13"
+"""Coefficient of refraction where the job gives none, kept fixed: Gauss's mean value from the arc of Hannover (1820s;
+quoted from memory, as in every textbook of surveying). Near the ground it may be anything from -1 to 1."""
+TURNS = ("right", "left", "deflection-right", "deflection-left")
+SURFACES = ("ground", "ground-from", "slope", "ellipsoid", "grid")
+
 JOB = (
     Field("title", "text", "title of the job, printed on every page"),
     Field("client", "text", "for whom the work is done"),
@@ -23,6 +29,12 @@ UNITS = (
     Field("axis_order", "choice", "order in which coordinates are printed",
           default="east, north", choices=("east, north", "north, east")),
     Field("bearings", "choice", "how directions are printed", default="azimuth", choices=("azimuth", "quadrant")),
+)  # fmt: skip
+FRAME = (
+    Field("plane_height", "length", "height of the local plane on which coordinates and plane distances lie; left out: "
+          "the mean of the known heights, else of the starting ones, else 0"),
+    Field("refraction", "estimate", "coefficient of refraction of zenith angles; with +- it is estimated, as one "
+          'unknown of the job with this value as an observation: "0.13 +- 0.05"', default=REFRACTION),
 )  # fmt: skip
 DATUM = (
     Field("kind", "choice", "control: the marks of control.csv carry the datum; free: no mark is held. "
@@ -44,19 +56,36 @@ BOOK = (
     Field("file", "text", "name of the table; left out: KIND.csv"),
     Field("kind", "choice", "kind of the table; left out: the file's name without its ending"),
     Field("instrument", "text", "the instrument that took the readings; may be left out where only one fits"),
-    Field("sd_factor", "number", "factor on every standard deviation of the table", default=1.0, above=0.0),
+    Field("sd_factor", "number", "factor on every standard deviation of the table, not on centring",
+          default=1.0, above=0.0),
+    Field("surface", "choice", "where its lengths lie; ground: horizontal at the mean height of the ends; "
+          "ground-from: horizontal at the instrument; slope: from instrument to target; grid or left out: on the plane "
+          "itself; ellipsoid: not on a local plane", choices=SURFACES),
     Field("units", "table", "units of this table where they differ from the job's: length, angle, decimal"),
-)
+)  # fmt: skip
+
+
+CENTRING = (
+    Field("centring", "precision", "of the instrument over its mark, per axis: one horizontal vector a set-up, common "
+          "to all its readings", dimension="offset"),
+    Field("target", "precision", "of a target over its mark, per axis: one horizontal vector a set-up and target",
+          dimension="offset"),
+    Field("height", "precision", "of instrument and target heights: one a set-up, one a set-up and target",
+          dimension="offset"),
+)  # fmt: skip
+"""Keys of an instrument that belong to the set-up and not to one kind of reading; in this order."""
 
 
 def instrument_keys() -> tuple[Field, ...]:
-    """The keys of [instruments.NAME]: the error models that the kinds ask for."""
-    return tuple({k.instrument.name: k.instrument for k in KINDS.values() if k.instrument}.values())
+    """The keys of [instruments.NAME]: the error models that the kinds ask for, and centring."""
+    own = {k.instrument.name: k.instrument for k in KINDS.values() if k.instrument}
+    return (*own.values(), *CENTRING)
 
 
 SECTIONS: dict[str, tuple[Field, ...]] = {
     "": JOB,
     "units": UNITS,
+    "frame": FRAME,
     "datum": DATUM,
     "instruments.*": instrument_keys(),
     "book": BOOK,
@@ -69,6 +98,8 @@ OBSERVATION = (
           "packed and mil, milligon for gon; nothing is added to it"),
     Field("count", "number", "readings meaned in this value: the instrument's figure is divided by its root",
           default=1.0, above=0.0),
+    Field("setup", "text", "name of the set-up at the standing station; readings of one set-up share its centring; "
+          "left out: one a station and table"),
     Field("use", "choice", "no: left out, with a reason; planned: not measured yet, no value", default="yes",
           choices=("yes", "no", "planned")),
     Field("reason", "text", "why the reading is left out; required with use = no"),
@@ -80,6 +111,24 @@ OBSERVATION = (
     Field("page", "text", "page of the field book"),
 )  # fmt: skip
 """Columns that every table of observations may have beside its own."""
+
+_SHEET = tuple(f for f in OBSERVATION if f.name not in ("sd", "count"))
+TRAVERSE = (
+    Field("at", "station", "the occupied station", required=True),
+    Field("back", "station", "the backsight; blank where nothing was sighted back"),
+    Field("fore", "station", "the foresight; blank at the end of a traverse"),
+    Field("angle", "circle", "angle from the backsight to the foresight, turned as `turn` says; blank: none"),
+    Field("turn", "choice", "how the angle is turned: right is clockwise; a deflection counts from the prolonged "
+          "backsight", default="right", choices=TURNS),
+    Field("bearing", "course", "basis bearing or azimuth of the line from `at` to `fore` (to `back` where `fore` is "
+          "blank): held without error"),
+    Field("distance", "length", "distance from `at` to `fore`, as the `surface` of its [[book]] block says", above=0.0),
+    Field("back_distance", "length", "distance from `at` to `back`", above=0.0),
+    Field("sd_angle", "sd", "final standard deviation of the angle", dimension="angle"),
+    Field("sd_distance", "sd", "final standard deviation of either distance"),
+    *_SHEET,
+)  # fmt: skip
+"""Columns of a traverse as booked: one row a station, up to four readings a row."""
 
 ROLES = ("held", "weighted", "check")
 OTHER_TABLES: dict[str, tuple[Field, ...]] = {
@@ -103,6 +152,7 @@ OTHER_TABLES: dict[str, tuple[Field, ...]] = {
         Field("height", "length", "starting height"),
         Field("note", "text", "anything"),
     ),
+    "traverse": TRAVERSE,
     "booked_names": (
         Field("booked", "text", "the name as it stands in the book", required=True),
         Field("station", "station", "the station that is meant", required=True),
@@ -114,7 +164,7 @@ OTHER_TABLES: dict[str, tuple[Field, ...]] = {
         Field("note", "text", "anything"),
     ),
 }  # fmt: skip
-"""Tables that are no observations."""
+"""Tables that are not of one kind of observation."""
 
 
 def table_names() -> tuple[str, ...]:

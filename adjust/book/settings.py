@@ -14,8 +14,9 @@ from adjust.book.faults import Faults
 from adjust.book.toml_lines import key_lines, line_of
 from adjust.errors import nearest
 from adjust.fields import Field
+from adjust.kinds import KINDS
 from adjust.sigmas import Precision, parse_precision
-from adjust.units import BadValue
+from adjust.units import BadValue, parse_estimate, parse_length
 
 
 @dataclass(frozen=True)
@@ -41,6 +42,23 @@ class Tests:
 
 
 @dataclass(frozen=True)
+class Estimate:
+    """A pure number as written, with its standard deviation where it is to be estimated."""
+
+    value: float
+    sd: float | None
+    text: str
+
+
+@dataclass(frozen=True)
+class Frame:
+    """What [frame] says of the local plane; ``plane_height`` in metres, None: by the job's heights."""
+
+    plane_height: float | None = None
+    refraction: Estimate = Estimate(float(schema.REFRACTION), None, schema.REFRACTION)
+
+
+@dataclass(frozen=True)
 class Table:
     """One [[book]] block: which file, of which kind, in which units, by which instrument."""
 
@@ -49,6 +67,8 @@ class Table:
     units: Units
     instrument: str = ""
     sd_factor: float = 1.0
+    surface: str = ""
+    """Where its lengths are said to lie: grid (the plane itself), ground, ground-from, slope, or '' (nothing said)."""
     line: int = 0
     path: str = ""
     """The block's path among the lines of job.toml: book.0."""
@@ -71,6 +91,7 @@ class Settings:
     """None: no [[book]] block, every KIND.csv of the folder is read."""
     known_units: bool
     """False: the units are missing, so values are not read (the fault is already noted)."""
+    frame: Frame = Frame()
     lines: dict[str, int] = field(default_factory=dict)
     """Line of every key of job.toml by its dotted path."""
 
@@ -120,6 +141,8 @@ class _Reader:
             return value
         if field.type == "precision":
             return self.precision(path, value, field)
+        if field.type in ("length", "estimate") and isinstance(value, int | float) and not isinstance(value, bool):
+            return repr(value)
         if not isinstance(value, str):
             date = field.type == "date"
             self.fault(path, value, "write a day like 2026-05-14" if date else "must be a text in quotes")
@@ -175,7 +198,7 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         faults.add("job.toml", line, "", shown, f"not TOML: {_toml_hint(message.partition(' (at')[0].lower())}")
         return None
     r = _Reader(text, faults)
-    top = r.section("", job, schema.JOB, ignore=("units", "datum", "instruments", "book", "tests"))
+    top = r.section("", job, schema.JOB, ignore=("units", "datum", "instruments", "book", "tests", "frame"))
     units = r.section("units", job.get("units", {}), schema.UNITS)
     datum = r.section("datum", job.get("datum", {}), schema.DATUM)
     tests = r.section("tests", job.get("tests", {}), schema.TESTS)
@@ -195,8 +218,23 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         instruments=_instruments(r, job.get("instruments", {})),
         books=_books(r, job.get("book"), job_units),
         known_units=bool(units["length"] and units["angle"]),
+        frame=_frame(r, job.get("frame", {}), job_units),
         lines=r.lines,
     )
+
+
+def _frame(r: _Reader, given: object, units: Units) -> Frame:
+    texts = r.section("frame", given, schema.FRAME)
+    height, estimate = None, Frame.refraction
+    try:
+        height = parse_length(texts["plane_height"], units.length) if texts["plane_height"] else None
+    except BadValue as bad:
+        r.fault("frame.plane_height", texts["plane_height"], str(bad))
+    try:
+        estimate = Estimate(*parse_estimate(texts["refraction"]), texts["refraction"])
+    except BadValue as bad:
+        r.fault("frame.refraction", texts["refraction"], str(bad))
+    return Frame(height, estimate)
 
 
 def _shown(value: object) -> str:
@@ -249,6 +287,17 @@ def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table |
         units=Units(**{**units.__dict__, **used}),
         instrument=values["instrument"] or "",
         sd_factor=values["sd_factor"],
+        surface=_surface(r, f"{path}.surface", values["surface"] or "", kind),
         line=line_of(r.lines, f"{path}.file"),
         path=path,
     )
+
+
+def _surface(r: _Reader, path: str, surface: str, kind: str) -> str:
+    """The surface of a table's lengths; '' where none is declared."""
+    with_lengths = [k.table for k in KINDS.values() if k.says == "length"] + ["traverse"]
+    if surface and kind not in with_lengths:
+        r.fault(path, surface, f"only lengths lie on a surface ({', '.join(with_lengths)}); remove the key")
+    elif surface == "ellipsoid":
+        r.fault(path, surface, "a local plane has no ellipsoid; reduce the lengths to ground, or to the plane (grid)")
+    return "" if surface == "ellipsoid" else surface

@@ -3,7 +3,7 @@
 Every clue remembers its *source*, the pair (block, row) it comes from, as one running number. A pointing belongs to a
 *set*: the readings of a set and the azimuths of their lines differ by one orientation. The sets are the group unknowns
 of the network, then north (azimuths without a turn: orientation 0), then one private set an angle, whose first sight
-reads zero. Curvature and refraction are left out: 0.07 m at 1 km does not matter to a start.
+reads zero. Refraction is left out: 0.01 m at 1 km does not matter to a start.
 """
 
 from __future__ import annotations
@@ -15,6 +15,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
+from adjust.frames import RADIUS_M
 from adjust.kinds import KINDS
 from adjust.network import Array, Block, Network
 
@@ -152,7 +153,7 @@ class Clues:
             if math.isnan(level) and positions is not None:
                 level = math.dist(positions[i, :2], positions[j, :2])
             if not math.isnan(level) and abs(math.sin(z)) > 1e-6:
-                rises.append(Rise(i, j, level / math.tan(z) + up, source))
+                rises.append(Rise(i, j, level / math.tan(z) + level * level / (2 * RADIUS_M) + up, source))
         return rises
 
 

@@ -67,7 +67,7 @@ def _misfit(height: Array, rises: list[Rise]) -> Array:
 def _weighed(height: Array, held: Bools, rises: list[Rise]) -> Array:
     """The heights of least sum of absolute misfits, by reweighting with 1/|r|: gross errors stay where they are."""
     from scipy.sparse import coo_array, csc_array, diags_array  # only where rises misclose
-    from scipy.sparse.linalg import spsolve
+    from scipy.sparse.linalg import splu
 
     known = ~np.isnan(height)
     free = known & ~held
@@ -91,5 +91,8 @@ def _weighed(height: Array, held: Bools, rises: list[Rise]) -> Array:
         w = 1.0 / np.maximum(np.abs(r), 1e-3) if step else np.ones(len(r))
         normal = csc_array(a.T @ diags_array(w) @ a)
         normal = csc_array(normal + diags_array(1e-12 * normal.diagonal() + 1e-300))
-        height[free] += spsolve(normal, -(a.T @ (w * r)))
+        try:
+            height[free] += splu(normal).solve(-(a.T @ (w * r)))
+        except RuntimeError:  # exactly singular: nothing to gain
+            break
     return height

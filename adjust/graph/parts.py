@@ -39,10 +39,11 @@ def row_nodes(network: Network) -> tuple[Ints, Ints]:
     numbering = network.rows
     for b, block in enumerate(network.blocks):
         kind = KINDS[block.kind]
+        touched = kind.touched(block.surface)
         here = np.flatnonzero(numbering.block == b)
         stations = block.stations[numbering.row[here]]
         for component, code in (("plane", PLANE), ("height", HEIGHT)):
-            touching = np.array([t in (component, "both") for t in kind.touches])[numbering.part[here]]
+            touching = np.array([t in (component, "both") for t in touched])[numbering.part[here]]
             chosen = stations[touching]
             rows.append(np.repeat(here[touching], chosen.shape[1]))
             nodes.append((2 * chosen + code).ravel())

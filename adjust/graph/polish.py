@@ -40,7 +40,7 @@ def polished(misfits: Misfits, z: Places, known: frozenset[int]) -> Places:
 def _step(misfits: Misfits, z: Places, number: Ints, n: int, spread: float) -> Places | None:
     """One step (n,) complex of the free stations."""
     from scipy.sparse import coo_array, csc_array, diags_array  # only where a start is in doubt
-    from scipy.sparse.linalg import spsolve
+    from scipy.sparse.linalg import splu
 
     g = misfits.clues.sets
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -77,5 +77,8 @@ def _step(misfits: Misfits, z: Places, number: Ints, n: int, spread: float) -> P
     normal = csc_array(a.T @ diags_array(w) @ a)
     diagonal = normal.diagonal()
     normal = csc_array(normal + diags_array(DAMPING * diagonal + np.where(diagonal > 0, 0.0, 1.0)))
-    x = spsolve(normal, -(a.T @ (w * r[ok])))
+    try:
+        x = splu(normal).solve(-(a.T @ (w * r[ok])))
+    except RuntimeError:  # exactly singular: nothing to gain
+        return None
     return np.asarray(x[0 : 2 * n : 2] + 1j * x[1 : 2 * n : 2]) if np.isfinite(x).all() else None

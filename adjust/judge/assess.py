@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -13,22 +13,15 @@ from adjust.book.settings import Tests
 from adjust.judge import critical
 from adjust.judge.control import Mark, compare_control
 from adjust.judge.lines import Lines, find_lines
+from adjust.judge.overall import NOT_MET, OverallTest, overall_tests
 from adjust.judge.reliability import Reliability, largest_effect, reliability
+from adjust.judge.similarity import Similarity, fit_control
 from adjust.network import Array, Bools, Ints
-from adjust.notebook import cell, html_table
-from adjust.solver.solution import PartResult, Solution
+from adjust.solver.solution import Solution
 from adjust.solver.threads import one_thread
 
-MET, NOT_MET, UNTESTED = "met", "not met", "cannot be tested"
-
-
-@dataclass(frozen=True)
-class OverallTest:
-    """The two-sided chi-square test of v'Pv."""
-
-    interval: tuple[float, float] | None
-    verdict: str
-    better_than_stated: bool
+if TYPE_CHECKING:
+    from adjust.judge.unchecked import Unchecked
 
 
 @dataclass(frozen=True)
@@ -81,6 +74,18 @@ class Judgement:
             return np.zeros(len(self.statistic), dtype=bool)
         return np.asarray(np.abs(np.nan_to_num(self.statistic)) > limit)
 
+    @cached_property
+    def unchecked(self) -> Unchecked:
+        """Readings that no other checks with the reasons, and the stations that hang on them only."""
+        from adjust.judge.unchecked import Unchecked  # its words are seldom needed, and take their time to load
+
+        return Unchecked(self.solution, self.reliability)
+
+    @property
+    def all_checked(self) -> bool:
+        """Whether every reading is checked by others."""
+        return bool((self.reliability.tested | self.solution.design.held).all())
+
     @property
     def blame(self) -> Ints:
         """Suspects of either level in order of blame, the largest statistic first."""
@@ -95,14 +100,17 @@ class Judgement:
     @cached_property
     def overall(self) -> tuple[OverallTest, ...]:
         """Overall test of every part, then of all together."""
-        return tuple(self._overall(p) for p in (*self.solution.parts, self.solution.total))
+        return overall_tests(self.solution, self.tests)
 
-    def _overall(self, part: PartResult) -> OverallTest:
-        interval = critical.variance_factor_interval(self.tests.significance, part.degrees_of_freedom)
-        if interval is None or self.degrees is not None or part.variance_factor is None:
-            return OverallTest(interval, UNTESTED, False)
-        verdict = NOT_MET if part.variance_factor > interval[1] else MET
-        return OverallTest(interval, verdict, part.variance_factor < interval[0])
+    @cached_property
+    def overall_free(self) -> tuple[OverallTest, ...]:
+        """The same for the free stage: the readings alone; empty without one."""
+        return overall_tests(self.solution.free, self.tests) if self.solution.free else ()
+
+    @cached_property
+    def similarity(self) -> Similarity | None:
+        """How the free network lies on its control."""
+        return fit_control(self.solution.free, self.scale) if self.solution.free else None
 
     @cached_property
     def covariance(self) -> Array:
@@ -113,7 +121,7 @@ class Judgement:
     def failed(self) -> bool:
         """Whether a test failed, so that the program ends with exit code 1."""
         return (
-            any(test.verdict == NOT_MET for test in self.overall)
+            any(test.verdict == NOT_MET for test in (*self.overall, *self.overall_free))
             or bool(self.suspect_of_job.any())
             or any(mark.verdict == "disagrees" for mark in self.control)
         )
@@ -134,7 +142,7 @@ class Judgement:
             "kind": [blocks[b].kind for b in rows.block.tolist()],
             "observed": self.solution.design.observed,
             "residual": self.solution.residuals,
-            "sd": self.solution.design.sd,
+            "sd": self.solution.sd_readings,
             "redundancy": self.reliability.redundancy,
             "statistic": self.statistic,
             "smallest_detectable": self.smallest_detectable,
@@ -143,6 +151,8 @@ class Judgement:
         return pd.DataFrame(columns).set_index("id")
 
     def _repr_html_(self) -> str:
+        from adjust.notebook import cell, html_table
+
         worst = np.argsort(-np.abs(np.nan_to_num(self.statistic)), kind="stable")[:20].tolist()
         ids, head = self.ids, ("reading", "statistic", "redundancy", "suspect")
         rows = [
@@ -191,5 +201,13 @@ def assess(solution: Solution) -> Judgement:
             effect_part=part,
             effect=size * smallest,
             lines=find_lines(solution, scale),
-            control=compare_control(solution, figures, scale, degrees, tests, job),
+            control=compare_control(solution, figures, *_control_scale(solution, given, scale), tests, job),
         )
+
+
+def _control_scale(solution: Solution, given: bool, scale: float) -> tuple[float, int | None]:
+    """Variance factor and degrees for control: those of the readings alone, which no bad mark has spoilt."""
+    if given:
+        return 1.0, None
+    alone = solution.free.total if solution.free else solution.total
+    return alone.variance_factor or scale, alone.degrees_of_freedom

@@ -9,13 +9,19 @@ import numpy as np
 from adjust.book.job import Job
 from adjust.errors import Unsolvable
 from adjust.graph.parts import listed
+from adjust.judge import unfixed
+from adjust.judge.readings import Readings
 from adjust.judge.reliability import reliability
+from adjust.judge.unchecked import Unchecked
 from adjust.network import HELD, WEIGHTED
-from adjust.solver.design import State
-from adjust.solver.engine import SingularPattern
+from adjust.solver.defects import Freedom, Loose
+from adjust.solver.settle import first_look
 from adjust.solver.solution import Solution
-from adjust.solver.solve import free_movements, prepare, solution_at
+from adjust.solver.solve import prepare, solution_at
 from adjust.solver.threads import one_thread
+
+MOST_SHOWN = 40
+"""Unchecked readings told one by one."""
 
 
 def check(job: Job) -> list[str]:
@@ -24,14 +30,14 @@ def check(job: Job) -> list[str]:
     Raises Unsolvable where the readings leave something free.
     """
     with one_thread():
-        ready = prepare(job)
-        here = ready.iteration.at(State(ready.start.positions, ready.start.groups))
         try:
-            cofactors = ready.iteration.cofactors(here)
-        except SingularPattern as singular:
-            raise Unsolvable(free_movements(ready, singular)) from None
+            ready = prepare(job)
+            here, cofactors = first_look(ready)
+        except Loose as loose:
+            raise Unsolvable(unfixed.words(loose)) from None
         at_start = solution_at(job, ready, here, cofactors, 0)
-        return [*_contents(job), *_parts(at_start), *_unchecked(at_start), *job.warnings]
+        return [*_contents(job), *_parts(at_start), *_islands(at_start), *_unchecked(at_start),
+                *unfixed.warnings(at_start), *job.warnings]  # fmt: skip
 
 
 def _contents(job: Job) -> list[str]:
@@ -64,15 +70,29 @@ def _parts(solution: Solution) -> list[str]:
     return lines
 
 
+def _islands(solution: Solution) -> list[str]:
+    """Pieces in the plane, or in height, that share no reading with one another."""
+    parts = [p.datum for p in solution.parts if p.datum]
+    nothing = np.zeros((len(solution.names), 3, 0))
+    figure = unfixed.Figure(Freedom(solution.network, solution.positions, nothing, parts))
+    return [f"{one[0].upper()}{one[1:]}." for one in figure.islands()]
+
+
 def _unchecked(solution: Solution) -> list[str]:
-    """Readings that no other reading checks."""
-    figures = reliability(solution)
-    rows, blocks = solution.network.rows, solution.network.blocks
-    bad = np.flatnonzero(~figures.tested & ~solution.design.held).tolist()
-    if not bad:
+    """Readings that no other reading checks, with the reason, and the stations that hang on such readings only."""
+    found = Unchecked(solution, reliability(solution))
+    if not found.rows:
         return ["Every reading is checked by others."]
-    names = [
-        f"{blocks[rows.block[r]].name(int(rows.row[r]))} ({blocks[rows.block[r]].kind.replace('_', ' ')})" for r in bad
-    ]
-    more = f" and {len(names) - 12} more" if len(names) > 12 else ""
-    return [f"{len(names)} readings are checked by no other: {', '.join(names[:12])}{more}."]
+    readings = Readings(solution.network)
+    some = found.rows[:MOST_SHOWN]
+    lines = [f"{_count(len(found.rows), 'reading')} checked by no other:"]
+    lines += [f"  {readings.name(r)}: {found.why[r]}." for r in some]
+    lines += [f"  and {len(found.rows) - len(some)} more."] if len(found.rows) > len(some) else []
+    if found.side_shots:
+        who = listed(solution.network, np.array(list(found.side_shots)), 12)
+        lines.append(f"Side shots, fixed by unchecked readings only: {who}.")
+    return lines
+
+
+def _count(n: int, what: str) -> str:
+    return f"{n} {what} is" if n == 1 else f"{n} {what}s are"

@@ -14,6 +14,7 @@ import numpy as np
 from adjust.fields import Field
 from adjust.network import Array
 
+SLOPE = "slope"
 Geometry = Callable[[Array, Array], tuple[Array, Array, Array]]
 
 
@@ -30,6 +31,9 @@ class GroupUnknown:
     """A column that must be filled for the row to have this unknown; empty: every row has it."""
     absorbs: frozenset[str] = frozenset({"turn"})
     """Freedoms of the network that the unknown takes up: turning the network adds the turn to it."""
+    setting: str = ""
+    """A key of [frame] that gives it: with a standard deviation it is one unknown of the whole job with the setting
+    as an observation, without one it is a constant."""
 
 
 @dataclass(frozen=True)
@@ -43,15 +47,15 @@ class Kind:
     order: int
     """Place in docs."""
     dimension: str
-    """'length' or 'angle': the unit of its values."""
+    """'length', 'angle' or 'number': the unit of its values."""
     stations: tuple[str, ...]
     """Its station columns."""
     sights: tuple[tuple[int, int], ...]
     """Pairs of positions in ``stations``: standing station (or -1, the origin) and target."""
     touches: tuple[str, ...]
-    """For each part the component of its stations that it depends on: 'plane', 'height' or 'both'."""
+    """For each part the component of its stations that it depends on: 'plane', 'height', 'both' or '' (none)."""
     says: str
-    """What it tells a starting computation: length, pointings, rise or position."""
+    """What it tells a starting computation: length (on the block's surface), pointings, rise, zenith or position."""
     fixes: frozenset[str]
     """Freedoms of a network without control that it takes away: turn, scale (rows without absorbing unknown)."""
     geometry: Geometry
@@ -64,14 +68,35 @@ class Kind:
     """The key of [instruments.NAME] that holds its error model."""
     pointings: float = 1.0
     """Number of pointings behind one value; the instrument's figure is multiplied by its square root."""
+    surface: str = ""
+    """Surface of its sights where the table does not choose one."""
+    in_space: Geometry | None = None
+    """Its geometry on the surface slope, where it depends on heights as well; None: the one geometry serves all."""
     length_column: str = ""
     setup_column: str = ""
     group: GroupUnknown | None = None
+    occupies: bool = True
+    """Read by an instrument centred over its station to targets centred over theirs."""
     from_control: bool = False
     """Its rows are the control marks themselves; a free datum sets them aside."""
     wraps: bool = False
     """Values are angles on a circle."""
     meaning: str = ""
+
+    def touched(self, surface: str) -> tuple[str, ...]:
+        """For each part the component of its stations that it depends on, on the surface of a block."""
+        return ("both",) * len(self.touches) if surface == SLOPE and self.in_space else self.touches
+
+    def on(self, surface: str) -> Geometry:
+        """Its geometry on the surface of a block."""
+        return self.in_space if surface == SLOPE and self.in_space else self.geometry
+
+
+ABOVE = (
+    Field("instrument_height", "length", "height of the instrument above the mark `from`; blank: both are zero"),
+    Field("target_height", "length", "height of the target above the mark `to`; blank: both are zero"),
+)
+"""Columns of kinds whose sights run from instrument to target."""
 
 
 def azimuth(sights: Array) -> tuple[Array, Array]:

@@ -35,5 +35,6 @@ KIND = Kind(
     value=("east", "north", "height"),
     parts=("east", "north", "height"),
     from_control=True,
+    occupies=False,
     meaning="weighted control coordinates",
 )

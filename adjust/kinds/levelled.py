@@ -26,7 +26,7 @@ KIND = Kind(
     sights=((0, 1),),
     touches=("height",),
     says="rise",
-    fixes=frozenset(),
+    fixes=frozenset({"scale"}),  # where zenith angles tie the plane to the heights; heights alone have none
     geometry=geometry,
     columns=(
         Field("rise", "length", "height of `to` minus height of `from`"),
@@ -42,5 +42,6 @@ KIND = Kind(
     ),
     length_column="length",
     setup_column="setups",
+    occupies=False,
     meaning="levelled height differences, `to` minus `from`",
 )

@@ -10,12 +10,15 @@ import scipy
 
 import adjust
 from adjust.caution import CAUTION
-from adjust.judge.assess import Judgement, OverallTest
+from adjust.judge.assess import Judgement
+from adjust.judge.overall import OverallTest
 from adjust.network import ROLES
-from adjust.record.numbers import number
+from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
-from adjust.record.places import line_entries, mark_entries, parameter_entries, station_entries
+from adjust.record.places import line_entries, mark_entries, parameter_entries, side_shot_entries, station_entries
+from adjust.solver.defects import thin_of
 from adjust.solver.solution import PartResult, Solution
+from adjust.solver.threads import one_thread
 
 FORMAT = 1
 ROWS_MOST = 20_000
@@ -25,6 +28,11 @@ WORST = 200
 
 def build(judgement: Judgement) -> dict[str, Any]:
     """The complete record of a judged solution."""
+    with one_thread():
+        return _record(judgement)
+
+
+def _record(judgement: Judgement) -> dict[str, Any]:
     solution = judgement.solution
     return {
         "format": FORMAT,
@@ -36,10 +44,10 @@ def build(judgement: Judgement) -> dict[str, Any]:
         "settings": _settings(solution),
         "units": _units(solution),
         "frame": _frame(solution),
-        "solution": _block(judgement, solution.total, judgement.overall[-1], with_parts=True),
-        "free": None,
+        "solution": _block(solution, judgement.overall),
+        "free": _free(judgement),
         "stations": station_entries(judgement),
-        "side_shots": [],
+        "side_shots": side_shot_entries(judgement),
         "lines": line_entries(judgement),
         "observations": observation_entries(judgement),
         "parameters": parameter_entries(judgement),
@@ -90,12 +98,14 @@ def _settings(solution: Solution) -> dict[str, Any]:
     settings = solution.job.settings
     return {
         **settings.tests.__dict__,
+        "frame": {"plane_height": number(settings.frame.plane_height), "refraction": settings.frame.refraction.text},
         "datum": {"kind": settings.datum_kind or None, "stations": list(settings.datum_stations)},
         "instruments": {
             name: {key: model.text for key, model in keys.items()} for name, keys in settings.instruments.items()
         },
         "books": [
             {"file": t.file, "kind": t.kind, "instrument": t.instrument or None, "sd_factor": number(t.sd_factor),
+             "surface": t.surface or None,
              "units": {"length": t.units.length, "angle": t.units.angle, "decimal": t.units.decimal}}
             for t in solution.job.tables
         ],
@@ -108,37 +118,57 @@ def _units(solution: Solution) -> dict[str, Any]:
 
 def _frame(solution: Solution) -> dict[str, Any]:
     origin = "; ".join(solution.assumed) or None
-    return {"kind": solution.design.frame.name, "origin": origin}
+    frame = solution.design.frame
+    return {"kind": frame.name, "origin": origin, "plane_height": coordinate(frame.plane_height),
+            "radius": coordinate(frame.radius)}  # fmt: skip
 
 
-def _block(judgement: Judgement, part: PartResult, test: OverallTest, with_parts: bool) -> dict[str, Any]:
-    solution = judgement.solution
-    block: dict[str, Any] = {
-        "stage": "free" if all(p.datum and p.datum.free for p in _parts_of(solution, part)) else "held",
+def _free(judgement: Judgement) -> dict[str, Any] | None:
+    """The block of the free stage with its fit on the control, or None."""
+    free, fit = judgement.solution.free, judgement.similarity
+    if free is None:
+        return None
+    similarity = None
+    if fit:
+        similarity = {
+            "marks": fit.marks,
+            "shift_east": coordinate(fit.shift_east),
+            "shift_north": coordinate(fit.shift_north),
+            "turn": angle(fit.turn),
+            "scale_ppm": number(fit.scale_ppm),
+            "sd_scale_ppm": number(fit.sd_scale_ppm),
+        }
+    return _block(free, judgement.overall_free) | {"similarity": similarity}
+
+
+def _block(solution: Solution, tests: tuple[OverallTest, ...]) -> dict[str, Any]:
+    """Figures of all together and of each part; ``tests`` are theirs in the order parts, total."""
+    block = _figures(solution, solution.total, solution.parts, tests[-1])
+    block["parts"] = [
+        {"what": p.what, **_figures(solution, p, (p,), t)} for p, t in zip(solution.parts, tests, strict=False)
+    ]
+    return block
+
+
+def _figures(solution: Solution, one: PartResult, parts: tuple[PartResult, ...], test: OverallTest) -> dict[str, Any]:
+    return {
+        "stage": "free" if all(p.datum and p.datum.free for p in parts) else "held",
         "converged": True,
         "iterations": solution.iterations,
-        "observations": part.observations,
-        "unknowns": part.unknowns,
-        "conditions": part.conditions,
-        "datum_missing": part.datum_missing,
-        "degrees_of_freedom": part.degrees_of_freedom,
-        "weighted_square_sum": number(part.square_sum),
-        "variance_factor": number(part.variance_factor),
+        "observations": one.observations,
+        "unknowns": one.unknowns,
+        "conditions": one.conditions,
+        "datum_missing": one.datum_missing,
+        "degrees_of_freedom": one.degrees_of_freedom,
+        "weighted_square_sum": number(one.square_sum),
+        "variance_factor": number(one.variance_factor),
         "overall_test": {
             "interval": [number(x) for x in test.interval] if test.interval else None,
             "verdict": test.verdict,
             "better_than_stated": test.better_than_stated,
         },
-        "datum": "; ".join(dict.fromkeys(_datum_words(solution, p) for p in _parts_of(solution, part))),
+        "datum": "; ".join(dict.fromkeys(_datum_words(solution, p) for p in parts)),
     }
-    if with_parts:
-        pairs = zip(solution.parts, judgement.overall, strict=False)
-        block["parts"] = [{"what": p.what, **_block(judgement, p, t, with_parts=False)} for p, t in pairs]
-    return block
-
-
-def _parts_of(solution: Solution, part: PartResult) -> tuple[PartResult, ...]:
-    return (part,) if part.datum else solution.parts
 
 
 def _datum_words(solution: Solution, part: PartResult) -> str:
@@ -169,7 +199,14 @@ def _warnings(judgement: Judgement) -> list[str]:
             out.append(f"{part.what}: no reading to spare: nothing is checked and no test can be made.")
         if part.datum and part.datum.free:
             out.append(f"{part.what}: free network ({_datum_words(solution, part)}): relative to its own datum.")
+    thin = thin_of(solution)
+    if thin:
+        from adjust.judge import unfixed  # its words are seldom needed, and take their time to load
+
+        out += unfixed.nearly(solution, thin)
     gap = float(np.nansum(judgement.reliability.redundancy)) - solution.total.degrees_of_freedom
     if abs(gap) > 1e-6 * max(1, solution.total.degrees_of_freedom):
-        out.append(f"the redundancy numbers miss their sum by {gap:.2g}: some station may be barely fixed.")
+        loosest = solution.names[int(np.nanargmax(np.nan_to_num(solution.sd).max(axis=1)))]
+        out.append(f"the redundancy numbers miss their sum by {gap:.2g}: some station may be barely fixed; "
+                   f"{loosest} is the least certain.")  # fmt: skip
     return out

@@ -13,7 +13,7 @@ from collections.abc import Callable, Iterable
 from typing import Any
 
 from adjust.caution import CAUTION
-from adjust.record.shown import ANGLE_KINDS, FIXED_PLACES, Entry, Shown, fixed
+from adjust.record.shown import ANGLE_KINDS, FIXED_PLACES, NUMBER_KINDS, Entry, Shown, fixed
 from adjust.units import format_angle
 
 Column = tuple[str, Callable[[Entry], str]]
@@ -136,7 +136,11 @@ def stations_csv(record: Entry) -> str:
 def _for_kinds(column: Column, angles: bool) -> Column:
     """The column filled only for readings of angles, or only for those of lengths."""
     name, cell = column
-    return name, lambda entry: cell(entry) if (entry["kind"] in ANGLE_KINDS) == angles else ""
+
+    def filled(entry: Entry) -> bool:
+        return (entry["kind"] in ANGLE_KINDS) == angles and entry["kind"] not in NUMBER_KINDS
+
+    return name, lambda entry: cell(entry) if filled(entry) else ""
 
 
 def _value(key: str, s: Shown) -> list[Column]:
@@ -171,6 +175,19 @@ def _effect(key: str) -> Column:
     return f"external_effect_{key}", lambda entry: safe_text(_inside(entry, ("external_effect", key)))
 
 
+_NUMBER_KEYS = ("observed", "adjusted", "residual", "sd", "sd_adjusted", "smallest_detectable")
+
+
+def _numbers(s: Shown) -> list[Column]:
+    """Columns of readings that are pure numbers; only tables that hold such a reading have them."""
+
+    def only(name: str, key: str) -> Column:
+        cell = _figure(name, (key,), float, 6, s)[1]
+        return name, lambda entry: cell(entry) if entry["kind"] in NUMBER_KINDS else ""
+
+    return [only(f"{key}_number", key) for key in _NUMBER_KEYS]
+
+
 def _observation_columns(s: Shown) -> list[Column]:
     names = ("id", "file", "line", "kind", "part", "at", "from", "to", "first", "second", "set", "booked", "group")
     return [
@@ -187,4 +204,6 @@ def _observation_columns(s: Shown) -> list[Column]:
 def observations_csv(record: Entry) -> str:
     """The table of readings in the job's units; columns of lengths and of angles are filled by kind."""
     shown = Shown.of(record)
-    return _table(_observation_columns(shown), record["observations"], shown)
+    pure = any(entry["kind"] in NUMBER_KINDS for entry in record["observations"])
+    columns = _observation_columns(shown) + (_numbers(shown) if pure else [])
+    return _table(columns, record["observations"], shown)

@@ -21,7 +21,10 @@ from adjust.units import ANGLES, LENGTHS
 TYPES = {
     "text": "text", "station": "station name", "choice": "one of", "number": "number", "length": "length",
     "circle": "angle from 0 to below a full circle", "bearing": "quadrant bearing", "sd": "standard deviation",
-    "precision": "error model", "date": "date", "list": "list of names", "table": "table",
+    "precision": "error model",
+    "course": "quadrant bearing or azimuth", "zenith": "zenith angle", "elevation": "elevation angle with its sign",
+    "estimate": "number, or number +- standard deviation",
+    "date": "date", "list": "list of names", "table": "table",
 }  # fmt: skip
 
 HEAD = f"""# Formats

@@ -14,12 +14,15 @@ from adjust.record.numbers import angle, coordinate, number
 
 STATION_KEYS = ("at", "from", "to", "first", "second")
 
+_ROUNDED = {"angle": angle, "length": coordinate, "number": number}
+"""How values of each dimension are rounded."""
+
 
 def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """One entry a scalar row, in the order of job.toml, then of rows."""
     solution, rel = judgement.solution, judgement.reliability
     network = solution.network
-    booked = [solution.job.booked(block.file) for block in network.blocks]
+    booked = [solution.job.booked(block.file, block.booked) for block in network.blocks]
     statistic, smallest, suspect = judgement.statistic, judgement.smallest_detectable, judgement.suspect
     sd_adjusted = rel.sd_adjusted * np.sqrt(judgement.scale)
     entries = []
@@ -27,7 +30,7 @@ def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
         b, i, p = int(network.rows.block[r]), int(network.rows.row[r]), int(network.rows.part[r])
         block = network.blocks[b]
         kind = KINDS[block.kind]
-        value = angle if kind.dimension == "angle" else coordinate
+        value = _ROUNDED[kind.dimension]
         adjusted = solution.adjusted[r] % (2 * np.pi) if kind.wraps else solution.adjusted[r]
         held = bool(solution.design.held[r])
         texts = booked[b][int(block.line[i])]
@@ -45,12 +48,14 @@ def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
             | {
                 "set": (network.groups[block.group[i]].set if block.group[i] >= 0 else "") or None,
                 "booked": texts[p] if len(kind.parts) > 1 else next(t for t in texts if t),
-                "corrections": [],
+                "corrections": [
+                    {"name": name, "value": value(amount[i])} for name, amount in block.corrections if amount[i]
+                ],
                 "group": "held" if held else block.precision[i],
                 "observed": value(solution.design.observed[r]),
                 "adjusted": value(adjusted),
                 "residual": number(solution.residuals[r]),
-                "sd": None if held else number(solution.design.sd[r]),
+                "sd": None if held else number(solution.sd_readings[r]),
                 "sd_adjusted": number(sd_adjusted[r]),
                 "redundancy": _share(rel.redundancy[r]),
                 "checked_share": _share(rel.checked_share[r]),
@@ -101,20 +106,11 @@ def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
 
 
 def unchecked_entries(judgement: Judgement) -> list[dict[str, Any]]:
-    """Readings whose errors no test here can see, with the station that they carry alone."""
-    rows, ids = judgement.solution.network.rows, judgement.ids
-    out = []
-    for r in np.flatnonzero(~judgement.reliability.tested & ~judgement.solution.design.held).tolist():
-        kind = judgement.solution.network.blocks[rows.block[r]].kind.replace("_", " ")
-        station = int(judgement.effect_station[r])
-        into = (
-            f"straight into {judgement.solution.names[station]}"
-            if station >= 0
-            else "straight into the orientation of its set"
-        )
-        why = f"nothing else here checks this {kind}: an error in it would go unseen, {into}"
-        out.append({"observation": ids[r], "why": why})
-    return out
+    """Readings whose errors no test here can see, with the reason."""
+    if judgement.all_checked:
+        return []
+    ids, unchecked = judgement.ids, judgement.unchecked
+    return [{"observation": ids[r], "why": unchecked.why[r]} for r in unchecked.rows]
 
 
 def left_out(aside: Aside, with_reason: bool) -> dict[str, Any]:

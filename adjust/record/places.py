@@ -11,7 +11,7 @@ from adjust.graph.parts import HEIGHT, PLANE
 from adjust.judge import critical
 from adjust.judge.assess import Judgement
 from adjust.judge.ellipses import ellipses
-from adjust.network import ROLES, Array, Bools
+from adjust.network import ROLES, Array, Bools, Group
 from adjust.record.numbers import angle, coordinate, number
 from adjust.solver.solution import Solution
 
@@ -36,6 +36,21 @@ def station_entries(judgement: Judgement) -> list[dict[str, Any]]:
             | {"circle_confidence": shapes.circle(i)}
         )
     return entries
+
+
+def side_shot_entries(judgement: Judgement) -> list[dict[str, Any]]:
+    """Stations that unchecked readings only fix, with those readings."""
+    if judgement.all_checked:
+        return []
+    solution, ids = judgement.solution, judgement.ids
+    sd = np.sqrt(np.maximum(np.einsum("nii->ni", judgement.covariance), 0.0))
+    return [
+        {"station": solution.names[i]}
+        | {key: coordinate(x) for key, x in zip(("east", "north", "height"), solution.positions[i], strict=True)}
+        | {key: number(x) for key, x in zip(("sd_east", "sd_north", "sd_height"), sd[i], strict=True)}
+        | {"readings": list(dict.fromkeys(ids[r] for r in rows))}
+        for i, rows in judgement.unchecked.side_shots.items()
+    ]
 
 
 class _Shapes:
@@ -105,20 +120,24 @@ def line_entries(judgement: Judgement) -> list[dict[str, Any]]:
 def mark_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """Verdicts on control marks."""
     return [
-        {"station": m.station, "part": m.part, "misfit": coordinate(m.misfit), "sd": number(m.sd),
-         "verdict": m.verdict, "sentence": m.sentence}
+        {"station": m.station, "part": m.part, "misfit": None if m.misfit is None else coordinate(m.misfit),
+         "sd": number(m.sd), "verdict": m.verdict, "sentence": m.sentence}
         for m in judgement.control
     ]  # fmt: skip
 
 
 def parameter_entries(judgement: Judgement) -> list[dict[str, Any]]:
-    """Group unknowns with their standard deviations: orientations, turns."""
+    """Group unknowns with their standard deviations: orientations, turns, refraction."""
     solution = judgement.solution
     sd = _group_sd(judgement)
     return [
-        {"what": g.what, "of": g.of, "value": angle(solution.groups[i] % (2 * np.pi)), "sd": number(sd[i])}
+        {"what": g.what, "of": g.of, "value": _group_value(g, solution.groups[i]), "sd": number(sd[i])}
         for i, g in enumerate(solution.network.groups)
     ]
+
+
+def _group_value(group: Group, value: float) -> float | None:
+    return angle(value % (2 * np.pi)) if group.turns else number(value)
 
 
 def _group_sd(judgement: Judgement) -> Array:

@@ -149,12 +149,15 @@ class _Plan:
         for x, value in columns:
             for y, up in ((bottom, 1), (top, -1)):
                 self.sheet.line([(x, y), (x, y + 1.8 * up)], 0.5, color=GREY)
-            self.sheet.text((x + 0.8, bottom + 1.0), f"{self._figure(value, step)} E", 5.5, color=GREY)
+            text = f"{self._figure(value, step)} E"
+            if x + 1.3 + self.sheet.width(text, 5.5) < right:
+                self.sheet.text((x + 0.8, bottom + 1.0), text, 5.5, color=GREY)
         for y, value in rows:
             for x, inward in ((left, 1), (right, -1)):
                 self.sheet.line([(x, y), (x + 1.8 * inward, y)], 0.5, color=GREY)
-            self.sheet.text((left + 1.0, y + 0.8), f"{self._figure(value, step)} N", 5.5, color=GREY, rotation=90,
-                            va="bottom")  # fmt: skip
+            text = f"{self._figure(value, step)} N"
+            if y + 1.3 + self.sheet.width(text, 5.5) < top:
+                self.sheet.text((left + 1.0, y + 0.8), text, 5.5, color=GREY, rotation=90, va="bottom")
 
     def _figure(self, value: float, step: float) -> str:
         places = max(0, -math.floor(math.log10(step)))

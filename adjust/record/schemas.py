@@ -58,6 +58,7 @@ def job_schema() -> dict[str, Any]:
     top = sections.pop("")
     top["properties"] |= {
         "units": sections["units"],
+        "frame": sections["frame"],
         "datum": sections["datum"],
         "tests": sections["tests"],
         "instruments": {"type": "object", "additionalProperties": sections["instruments.*"]},
@@ -80,6 +81,8 @@ def _job_value(field: Field) -> dict[str, Any]:
     if field.type == "number":
         low = {"exclusiveMinimum": field.above} if field.above is not None else {}
         return {"type": "number", **low}
+    if field.type in ("length", "estimate"):
+        return {"type": ["number", "string"]}
     if field.type == "list":
         return {"type": "array", "items": {"type": "string"}}
     if field.type == "precision":

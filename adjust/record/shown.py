@@ -21,6 +21,9 @@ Entry = Mapping[str, Any]
 ANGLE_KINDS = frozenset({"direction", "angle", "azimuth", "zenith_angle"})
 """Kinds of observations in radians; all others are lengths."""
 
+NUMBER_KINDS = frozenset({"refraction"})
+"""Kinds whose readings are pure numbers."""
+
 FIXED_PLACES = 4
 """Decimals of a coordinate without a standard deviation: 0.1 mm in metres, 0.03 mm in feet."""
 
@@ -150,6 +153,8 @@ class Shown:
         """
         if kind in ANGLE_KINDS:
             return self._angle_amount(value, sd)
+        if kind in NUMBER_KINDS:
+            return self._signed(value, sd, 3)
         if self.small == "mm" and abs(value) < 1.0:
             return self._signed(self.in_small(value), None if sd is None else self.in_small(sd), 1) + " mm"
         return self._signed(self.in_length(value), None if sd is None else self.in_length(sd), 4) + f" {self.length}"
@@ -185,6 +190,8 @@ def reading_in_words(observation: Entry, most: int = 16) -> str:
         text = _BETWEEN[kind].format(**names)
     elif kind in ("control", "position"):
         text = f"{words} {names['at'] or names['to'] or names['from']}"
+    elif kind in NUMBER_KINDS:
+        text = words
     elif kind == "levelled":
         text = f"levelled rise {names['from']} to {names['to']}"
     else:

@@ -72,8 +72,25 @@ _VERDICTS = {
 
 def _overall(record: Entry, shown: Shown) -> list[str]:
     parts = record["solution"]["parts"] or [record["solution"]]
-    lines = ["", *[line for part in parts[:WORST] for line in _overall_part(part, record["settings"], shown)]]
+    lines = ["", *_readings_alone(record, shown)]
+    lines += [line for part in parts[:WORST] for line in _overall_part(part, record["settings"], shown)]
     return [*lines, f"  and {count(len(parts) - WORST, 'more part')}: see the record"] if len(parts) > WORST else lines
+
+
+def _readings_alone(record: Entry, shown: Shown) -> list[str]:
+    """The free stage: does the work hold together before any control is held, and how does control fit it."""
+    free = record["free"]
+    if not free:
+        return []
+    test, factor = free["overall_test"], free["variance_factor"]
+    text = f"Readings alone, before control is held: {_VERDICTS.get(test['verdict'], test['verdict'])}"
+    if factor is not None:
+        text += f" (variance factor {shown.mark(f'{factor:.2f}')})"
+    fit = free["similarity"]
+    if fit and fit["sd_scale_ppm"] is not None:
+        ppm, sd = shown.mark(f"{fit['scale_ppm']:+.1f}"), shown.mark(f"{fit['sd_scale_ppm']:.1f}")
+        text += f"; scale of the control against them {ppm} ppm, standard deviation {sd}"
+    return _wrapped(text + ".")
 
 
 def _overall_part(part: Entry, settings: Entry, shown: Shown) -> list[str]:
@@ -86,7 +103,9 @@ def _overall_part(part: Entry, settings: Entry, shown: Shown) -> list[str]:
     if factor is not None:
         text += f" (variance factor {shown.mark(f'{factor:.2f}')}"
         if test["interval"]:
-            least, most = (shown.mark(f"{bound:.2f}") for bound in test["interval"])
+            least, most = (
+                shown.mark(f"{bound:.2f}" if bound >= 0.095 else f"{bound:.1g}") for bound in test["interval"]
+            )
             text += f", limits {least} to {most}"
         text += ")"
     return _wrapped(text + ".")
@@ -158,7 +177,10 @@ def _confidence(record: Entry) -> str:
 
 def _precision(record: Entry, shown: Shown) -> list[str]:
     lines = []
-    plane = [one for one in record["stations"] if one["ellipse_confidence"] and one["ellipse_confidence"]["semi_major"]]
+    aside = {one["station"] for one in record["side_shots"]}
+    judged = [one for one in record["stations"] if one["station"] not in aside]
+    judged = judged if any("new" in (one["role"], one["role_height"]) for one in judged) else record["stations"]
+    plane = [one for one in judged if one["ellipse_confidence"] and one["ellipse_confidence"]["semi_major"]]
     if plane:
         worst = max(plane, key=lambda one: float(one["ellipse_confidence"]["semi_major"]))
         e = worst["ellipse_confidence"]
@@ -167,11 +189,14 @@ def _precision(record: Entry, shown: Shown) -> list[str]:
             f"{shown.small_sd(e['semi_major'])} by {shown.small_sd(e['semi_minor'])} {shown.small} (half axes), "
             f"long axis {shown.rough_bearing(e['azimuth'])}."
         )
-    high = [one for one in record["stations"] if one["sd_height"]]
+    high = [one for one in judged if one["sd_height"]]
     if high:
         worst = max(high, key=lambda one: float(one["sd_height"]))
         sd = shown.small_sd(worst["sd_height"])
         lines.append(f"Least certain height: {plain(worst['station'])}, standard deviation {sd} {shown.small}.")
+    shots = [plain(one["station"]) for one in record["side_shots"]]
+    if shots:
+        lines += _wrapped(f"Side shots, fixed by unchecked readings only and counted in no verdict: {_some(shots)}.")
     return ["", *lines] if lines else []
 
 

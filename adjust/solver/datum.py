@@ -6,6 +6,9 @@ station at (E, N) by
 
     shift east (1, 0)   shift north (0, 1)   turn (N, -E)   scale (E, N)        and an orientation by 1 for the turn.
 
+Where plane and heights hang together the scale carries the heights along; that sights see the Earth's curvature fixes
+it by so little (one part in millions of the readings' own weight) that it counts as free.
+
 A freedom is taken away by a kind of reading (a distance fixes the scale) or by control; what is left is the null space
 of those conditions. A free part ends with C'(x - x_ref) = 0 over its datum stations, which is the minimum-norm
 (Moore-Penrose) solution over them (Koch 1999, section 3.3): with a solution x_m, cofactors Q_m on minimal constraints,
@@ -43,6 +46,8 @@ class PartDatum:
     """(f, d) null vectors in terms of the part's freedoms."""
     stations: Ints
     """Datum stations of a free part."""
+    spare: int = 0
+    """Control coordinates beyond what the datum needs."""
 
 
 @dataclass(frozen=True)
@@ -82,7 +87,10 @@ def movements(part: Part, positions: Array) -> Array:
         out[here, 0, 2], out[here, 1, 2] = xy[:, 1], -xy[:, 0]
         out[here, :2, 3] = xy
     if "height" in names:
-        out[part.nodes[:, HEIGHT], 2, -1] = 1.0
+        up = part.nodes[:, HEIGHT]
+        out[up, 2, -1] = 1.0
+        if "scale" in names:
+            out[up, 2, 3] = (positions[up, 2] - positions[up, 2].mean()) / _extent(part, positions)
     return out
 
 
@@ -101,7 +109,8 @@ def find_datum(
         missing = tuple(name for name, v in zip(freedoms(part), null, strict=True) if np.abs(v).max(initial=0) > 1e-6)
         if missing and not free:
             sentences += _missing_words(network, part, missing, control)
-        out.append(PartDatum(part, free, missing, null, _datum_stations(network, part, chosen)))
+        spare = 0 if free else int(control.sum()) - _null(network, part, start, np.zeros_like(control)).shape[1]
+        out.append(PartDatum(part, free, missing, null, _datum_stations(network, part, chosen), spare))
     if sentences:
         raise Unsolvable(sentences)
     return out
@@ -143,11 +152,13 @@ def _fixed_by_kinds(network: Network, part: Part) -> set[str]:
 
 
 def _datum_stations(network: Network, part: Part, chosen: tuple[str, ...]) -> Ints:
-    """The chosen stations of the part, else those with starting values, else all."""
+    """The chosen stations of the part, where it has none of them those with starting values, else all."""
     inside = part.stations
     if chosen:
         wanted = {network.stations.index[name] for name in chosen}
-        return np.array([i for i in inside if i in wanted], dtype=np.int64)
+        found = np.array([i for i in inside if i in wanted], dtype=np.int64)
+        if len(found):
+            return found
     given = ~np.isnan(network.stations.start[inside])
     started = inside[
         (given[:, :2].all(axis=1) & part.nodes[inside, PLANE]) | (given[:, 2] & part.nodes[inside, HEIGHT])
@@ -223,7 +234,8 @@ def null_space(network: Network, parts: list[PartDatum], unknowns: Unknowns, pos
         vectors = np.zeros((unknowns.count, one.null.shape[1]))
         numbered = unknowns.coordinate >= 0
         vectors[unknowns.coordinate[numbered]] = moved[numbered]
-        shared = np.flatnonzero((unknowns.shared >= 0) & one.part.groups)
+        turning = np.array([group.turns for group in network.groups], dtype=bool)
+        shared = np.flatnonzero((unknowns.shared >= 0) & one.part.groups & turning)
         if len(shared) and "turn" in freedoms(one.part):
             extent = _extent(one.part, positions)
             vectors[unknowns.shared[shared]] = one.null[freedoms(one.part).index("turn")] / extent

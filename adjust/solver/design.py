@@ -15,10 +15,12 @@ import numpy as np
 from adjust.frames import LocalPlane
 from adjust.graph.parts import HEIGHT, PLANE, Part, row_groups
 from adjust.kinds import KINDS
-from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Ints, Network
+from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Cluster, Ints, Network
+from adjust.solver.centring import Vectors
 from adjust.units import TURN
 
 _NODE = np.array([PLANE, PLANE, HEIGHT])
+HEIGHT_PART = 2
 
 
 @dataclass(frozen=True)
@@ -54,7 +56,10 @@ class State:
 
 @dataclass(frozen=True)
 class Linearised:
-    """Numbers of one linearisation: coefficients (R, e), by_local (R,), misclosure (R,) = observed - computed."""
+    """Numbers of one linearisation: coefficients (R, e), by_local (R,), misclosure (R,) = observed - computed.
+
+    Coefficients stand for known coordinates too; ``Design.columns`` says which slots are unknowns.
+    """
 
     coefficients: Array
     by_local: Array
@@ -62,6 +67,8 @@ class Linearised:
     computed: Array
     local: Ints
     """(R,) local group of each row, -1 for none."""
+    by_vector: Array
+    """(R, v, 3) partials by the centring vectors; v = 0 where the network has none."""
 
 
 @dataclass(frozen=True)
@@ -112,6 +119,11 @@ class Design:
         return out
 
     @cached_property
+    def vectors(self) -> Vectors:
+        """Centring vectors of the rows."""
+        return Vectors.of(self.network)
+
+    @cached_property
     def columns(self) -> Ints:
         """Unknown of every slot (R, e), -1 where there is none."""
         rows, found = self.network.rows, []
@@ -127,17 +139,58 @@ class Design:
         out[grouped, -1] = self.unknowns.shared[self.group[grouped]]
         return out
 
+    @cached_property
+    def places(self) -> Ints:
+        """Coordinate of every slot (R, e) as 3 station + component, known or not; -1 for slots without one."""
+        rows = self.network.rows
+        out = np.full(self.columns.shape, -1, dtype=np.int64)
+        for b, block in enumerate(self.network.blocks):
+            ends = [end for sight in KINDS[block.kind].sights for end in sight]
+            if not ends:
+                continue
+            per_row = np.concatenate(
+                [
+                    3 * block.stations[:, [end]] + np.arange(3) if end >= 0 else np.full((len(block), 3), -1)
+                    for end in ends
+                ],
+                axis=1,
+            )
+            here = rows.block == b
+            out[here, : per_row.shape[1]] = per_row[rows.row[here]]
+        return out
+
     def _block_columns(self, block: Block) -> Ints:
         """(m, slots) unknowns in the order of sights, ends, components."""
         kind = KINDS[block.kind]
-        columns = []
+        columns = [np.empty((len(block), 0), dtype=np.int64)]
         for ends in kind.sights:
             for end in ends:
                 if end < 0:
                     columns.append(np.full((len(block), 3), -1))
                 else:
-                    columns.append(self.unknowns.coordinate[block.stations[:, end]])
+                    columns.append(self._coordinates(block, end))
         return np.concatenate(columns, axis=1)
+
+    def _coordinates(self, block: Block, end: int) -> Ints:
+        """(m, 3) unknowns of one end."""
+        found = self.unknowns.coordinate[block.stations[:, end]]
+        if not self._asks_heights(block):
+            found[:, HEIGHT_PART] = -1
+        return found
+
+    @staticmethod
+    def _asks_heights(block: Block) -> bool:
+        """Whether a block depends on heights. A length at ground level takes them as they stand: they scale it by
+        1.6e-7 a metre, which is no reading of a height."""
+        return not block.surface or "both" in KINDS[block.kind].touched(block.surface)
+
+    @cached_property
+    def unasked(self) -> Array:
+        """(n, 3) coordinates that stand in where nothing is asked of a component: known heights, else the plane's."""
+        out = np.zeros((len(self.network.stations), 3))
+        known = self.network.stations.start[:, HEIGHT_PART]
+        out[:, HEIGHT_PART] = np.where(np.isnan(known), self.frame.plane_height, known)
+        return out
 
     def linearise(self, state: State) -> Linearised:
         """Values, partials and misclosures at a state."""
@@ -145,7 +198,8 @@ class Design:
         coefficients = np.zeros(self.columns.shape)
         by_group = np.zeros(len(rows))
         computed = np.empty(len(rows))
-        positions = np.nan_to_num(state.positions)
+        by_vector = np.zeros((*self.vectors.of_row.shape, 3) if self.vectors.any else (len(rows), 0, 3))
+        positions = np.where(np.isnan(state.positions), self.unasked, state.positions)
         for b, block in enumerate(self.network.blocks):
             here = rows.block == b
             i, p = rows.row[here], rows.part[here]
@@ -154,37 +208,63 @@ class Design:
             computed[here] = values[i, p]
             coefficients[here, : by_position.shape[2]] = by_position[i, p]
             by_group[here] = by_unknown[i, p]
+            if self.vectors.any and block.eccentric is not None:
+                ends = by_position[i, p].reshape(len(i), -1, 2, 3)  # (rows, sights, ends, components)
+                by_vector[here, 0] = ends[:, :, 0].sum(axis=1)
+                by_vector[here, 1 : 1 + ends.shape[1]] = ends[:, :, 1]
         coefficients[:, -1] = by_group
-        coefficients[self.columns < 0] = 0.0
         l = self.observed - computed
         l[self.wraps] -= TURN * np.round(l[self.wraps] / TURN)
-        return Linearised(coefficients, np.where(self.local >= 0, by_group, 0.0), l, computed, self.local)
+        return Linearised(coefficients, np.where(self.local >= 0, by_group, 0.0), l, computed, self.local, by_vector)
 
     def _block(self, block: Block, positions: Array, groups: Array) -> tuple[Array, Array, Array]:
         kind = KINDS[block.kind]
         ends = [
             (block.stations[:, i] if i >= 0 else np.full(len(block), -1), block.stations[:, j]) for i, j in kind.sights
         ]
-        sights = np.stack([self.frame.sights(positions, i, j) for i, j in ends], axis=1)
-        values, by_sight, by_group = kind.geometry(sights, _group_values(block, groups))
-        carried = np.stack([self.frame.carry(by_sight[:, :, s]) for s in range(len(ends))], axis=2)
-        return values, carried.reshape(*values.shape, -1), by_group
+        on = (block.surface, block.above)
+        sights = [np.empty((len(block), 0, 4))]
+        sights += [self.frame.sights(positions, i, j, *on)[:, None] for i, j in ends]
+        values, by_sight, by_group = kind.on(block.surface)(
+            np.concatenate(sights, axis=1), _group_values(block, groups)
+        )
+        carried = [np.empty((*values.shape, 0))]
+        for s, (i, j) in enumerate(ends):
+            by_ends = self.frame.carry(by_sight[:, :, s], self.frame.jacobian(positions, i, j, *on))
+            if not self._asks_heights(block):
+                by_ends[..., HEIGHT_PART] = 0.0
+            carried.append(by_ends.reshape(*values.shape, -1))
+        return values, np.concatenate(carried, axis=2), by_group
 
 
 def _group_values(block: Block, groups: Array) -> Array:
-    return np.where(block.group >= 0, np.append(groups, 0.0)[block.group], 0.0)
+    constant = 0.0 if block.constant is None else block.constant
+    return np.where(block.group >= 0, np.append(groups, 0.0)[block.group], constant)
 
 
 def control_as_new(network: Network, free: Bools) -> Network:
     """The network without the weighted control rows of stations whose datum is free (n, 3)."""
     if not free.any() or not (network.stations.role == WEIGHTED).any():
         return network
-    blocks = []
-    for block in network.blocks:
+    blocks, kept = [], np.ones(len(network.rows), dtype=bool)
+    for b, block in enumerate(network.blocks):
         if not KINDS[block.kind].from_control:
             blocks.append(block)
             continue
         sd = np.where(free[block.stations[:, 0]], np.nan, block.sd)
+        here = network.rows.block == b
+        kept[here] = ~np.isnan(sd[network.rows.row[here], network.rows.part[here]])
         if not np.isnan(sd).all():
             blocks.append(replace(block, sd=sd))
-    return replace(network, blocks=tuple(blocks))
+    return replace(network, blocks=tuple(blocks), clusters=_renumbered(network.clusters, kept))
+
+
+def _renumbered(clusters: tuple[Cluster, ...], kept: Bools) -> tuple[Cluster, ...]:
+    """Clusters on the numbers that the kept scalar rows have once the others are gone."""
+    number = np.cumsum(kept) - 1
+    out = []
+    for cluster in clusters:
+        here = kept[cluster.rows]
+        if here.any():
+            out.append(Cluster(number[cluster.rows[here]], cluster.covariance[np.ix_(here, here)]))
+    return tuple(out)

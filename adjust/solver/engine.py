@@ -20,14 +20,17 @@ from scipy.sparse import csc_array
 from scipy.sparse.linalg import splu
 
 from adjust.network import Array, Ints
-from adjust.solver.elements import Whitened
+from adjust.solver.elements import Whitened, gather
 
 PIVOT_LEAST = 1e-11
 """Smallest scaled pivot taken for a fixed unknown. Measured by tests/solver/pivot_study.py: solvable free networks of 4
-to 60 stations 2.8e-2 and above (500 of them), 6.6e-6 after up to four fifths of the readings were taken away (255), open
+to 60 stations 2.8e-2 and above (500 of them), 6.6e-6 with up to four fifths of the readings taken away (255), open
 traverses of 60, 1,000 and 3,000 stations 1.1e-4, 1.8e-7 and 9.9e-8. In place of zero rounding left 2.4e-15 at the most
 without a datum (500) and 4.4e-16 with a loose station (500), but 2.6e-10 in one of 245 thinned networks that do not
 hold: a limit alone cannot tell such a pivot from that of a long traverse."""
+PIVOT_DOUBTFUL = 1e-6
+"""Pivots below this are checked against the rows themselves: where the network holds the two forms of x'Nx agreed to
+1e-6 (open traverse of 3,000 stations), where it does not the rows gave 3e-9 and 9e-12 of it."""
 CHUNK = 512
 """Columns of the inverse solved for at once."""
 
@@ -82,7 +85,22 @@ class Pattern:
 
     def factor(self, whitened: list[Whitened]) -> Factor:
         """Factor N; raises SingularPattern naming the unknowns without a pivot."""
-        return Factor.of(self.normal(whitened))
+        factor = Factor.of(self.normal(whitened))
+        if factor.pivot_least < PIVOT_DOUBTFUL:
+            self._confirm(factor, whitened)
+        return factor
+
+    def _confirm(self, factor: Factor, whitened: list[Whitened]) -> None:
+        """For x = N^-1 e at the least pivot x'Nx = e'x; formed from the rows, |A* x|^2 vanishes if it was rounding."""
+        weakest = np.zeros(self.count)
+        weakest[factor.weakest] = 1.0
+        x = factor.solve(weakest)
+        found = sum(
+            float(((w.reduced @ gather(x, columns)[:, :, None]) ** 2).sum())
+            for w, columns in zip(whitened, self.columns, strict=True)
+        )
+        if found < 0.5 * x[factor.weakest]:
+            raise SingularPattern(np.array([factor.weakest]))
 
 
 @dataclass(frozen=True)
@@ -92,6 +110,8 @@ class Factor:
     lu: Any
     scale: Array
     pivot_least: float
+    weakest: int
+    """The unknown with the least pivot."""
 
     @classmethod
     def of(cls, normal: csc_array) -> Factor:
@@ -112,7 +132,8 @@ class Factor:
         if not np.all(pivots > PIVOT_LEAST):
             unknown_at = np.argsort(lu.perm_c)
             raise SingularPattern(unknown_at[np.flatnonzero(~(pivots > PIVOT_LEAST))])
-        return cls(lu, scale, float(pivots.min()))
+        weakest = int(np.argsort(lu.perm_c)[pivots.argmin()]) if len(pivots) else -1
+        return cls(lu, scale, float(pivots.min(initial=1.0)), weakest)
 
     def solve(self, rhs: Array) -> Array:
         """N^-1 rhs for (u,) or (u, r)."""

@@ -23,6 +23,8 @@ MOST_HALVINGS = 14
 STEP_LEAST_M = 1e-9
 """A step below one nanometre ends the iteration; Gauss-Newton's next step is smaller by the curvature times the
 residual over the length, 1e-4 for 1 mm at 10 m."""
+FARTHEST_M = 1e8
+"""A step beyond the Earth is no step: the readings do not hold what is moved."""
 WORSE = 1e-6
 """Relative and absolute growth of v'Pv that still counts as no growth: far above rounding, far below any statistic."""
 
@@ -35,6 +37,14 @@ class Linear:
     numbers: Linearised
     whitened: list[Whitened]
     merit: float
+
+
+class NotSettled(NotConverged):
+    """NotConverged with the iteration, where it began and where it stopped; adjust.judge.unsettled finds the words."""
+
+    def __init__(self, iteration: GaussNewton, first: State, here: Linear, sentences: list[str]) -> None:
+        super().__init__(sentences)
+        self.iteration, self.first, self.here = iteration, first, here
 
 
 @dataclass(frozen=True)
@@ -59,13 +69,16 @@ class GaussNewton:
         reduced = np.append(self.reduced, -1)  # so that -1, no unknown, stays -1
         self.pattern = Pattern.of([reduced[b.columns] for b in batches], len(kept))
         self.held = np.flatnonzero(design.held)
+        self.latest: Linear | None = None
+        """The last linearisation made, for whoever has to explain a failure."""
 
     def at(self, state: State) -> Linear:
         """Linearise at a state."""
         numbers = self.design.linearise(state)
         self._check_sights(numbers)
         whitened = [whiten(b, numbers) for b in self.batches]
-        return Linear(state, numbers, whitened, float(sum((w.reduced_l**2).sum() for w in whitened)))
+        self.latest = Linear(state, numbers, whitened, float(sum((w.reduced_l**2).sum() for w in whitened)))
+        return self.latest
 
     def _check_sights(self, numbers: Linearised) -> None:
         """A sight of no length has no direction: the two stations are at one place."""
@@ -84,7 +97,7 @@ class GaussNewton:
         """Rows K (h, u) of the readings held without error."""
         k = np.zeros((len(self.held), self.design.unknowns.count + 1))
         for i, row in enumerate(self.held):
-            np.add.at(k[i], self.design.columns[row], here.numbers.coefficients[row])
+            np.add.at(k[i], self.design.columns[row], here.numbers.coefficients[row])  # -1 falls into the last, cut off
         return k[:, :-1]
 
     def cofactors(self, here: Linear) -> Cofactors:
@@ -123,19 +136,21 @@ class GaussNewton:
         return State(positions, groups)
 
     def run(self, state: State) -> Outcome:
-        """Iterate from a state; raises NotConverged or SingularPattern."""
-        here = self.at(state)
+        """Iterate from a state; raises NotSettled or SingularPattern."""
+        first = here = self.at(state)
         scale = float(np.abs(np.nan_to_num(state.positions)).max(initial=1.0))
         least = max(STEP_LEAST_M, 8 * np.finfo(float).eps * scale)
         for iteration in range(1, MOST_ITERATIONS + 1):
             dx = self.step(here)
-            here, share = self._damped(here, dx)
+            here, share = self._damped(here, dx, first.state)
             if share == 1.0 and np.abs(dx).max(initial=0.0) <= least:
                 return Outcome(here, self.cofactors(here), iteration)
-        raise NotConverged(self._words(here))
+        raise NotSettled(self, first.state, here, self._words(here))
 
-    def _damped(self, here: Linear, dx: Array) -> tuple[Linear, float]:
+    def _damped(self, here: Linear, dx: Array, start: State) -> tuple[Linear, float]:
         share, first = 1.0, None
+        if not np.abs(dx).max(initial=0.0) < FARTHEST_M:
+            raise NotSettled(self, start, here, self._words(here))
         for _ in range(MOST_HALVINGS):
             there = self.at(self.moved(here, dx, share))
             first = first or there
@@ -146,7 +161,7 @@ class GaussNewton:
             # steps that satisfy conditions may have to pay for them once
             assert first is not None
             return first, 1.0
-        raise NotConverged(self._words(here))
+        raise NotSettled(self, start, here, self._words(here))
 
     def _words(self, here: Linear) -> list[str]:
         """The readings that fit worst where the iteration stopped."""

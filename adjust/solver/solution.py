@@ -10,7 +10,6 @@ import numpy as np
 
 from adjust.book.job import Job
 from adjust.network import Array, Bools, Network
-from adjust.notebook import cell, html_table
 from adjust.solver.cofactors import Cofactors
 from adjust.solver.datum import PartDatum
 from adjust.solver.design import Design
@@ -57,6 +56,8 @@ class Solution:
     """(g,) group unknowns, radians."""
     whitened: list[Whitened]
     cofactors: Cofactors
+    coefficients: Array
+    """(R, e) partials by every slot of ``design.places`` at the answer, known coordinates included."""
     residuals: Array
     """(R,) adjusted minus observed, metres and radians."""
     adjusted: Array
@@ -66,6 +67,8 @@ class Solution:
     iterations: int
     assumed: tuple[str, ...]
     """Sentences on what the program chose where nothing was given: origin, north, scale, height."""
+    free: Solution | None = None
+    """The free stage before this one: the readings alone, fitted to the control; None where it adds nothing."""
 
     @property
     def names(self) -> tuple[str, ...]:
@@ -79,6 +82,15 @@ class Solution:
         out = self.cofactors.blocks(numbers)
         missing = np.isnan(self.positions)
         out[missing[:, :, None] | missing[:, None, :]] = np.nan
+        return out
+
+    @cached_property
+    def sd_readings(self) -> Array:
+        """(R,) stated standard deviations of the readings with their share of centring; 0 for conditions."""
+        out = np.zeros(len(self.residuals))
+        for w in self.whitened:
+            out[w.batch.rows] = np.sqrt((w.factor**2).sum(axis=2))
+        out[self.design.held] = 0.0
         return out
 
     @property
@@ -103,6 +115,8 @@ class Solution:
                 f"{t.degrees_of_freedom} degrees of freedom, variance factor {t.variance_factor}>")  # fmt: skip
 
     def _repr_html_(self) -> str:
+        from adjust.notebook import cell, html_table
+
         head = ("station", "east m", "north m", "height m", "sd east m", "sd north m", "sd height m")
         rows = [
             (name, *(cell(x) for x in (*xyz, *sd)))

@@ -2,23 +2,24 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 
 from adjust.book.job import Job
-from adjust.errors import Unsolvable
+from adjust.errors import NotConverged, Unsolvable
 from adjust.frames import LocalPlane
 from adjust.graph.parts import HEIGHT, PLANE, Part, find_parts
 from adjust.graph.starts import Start, find_start
-from adjust.network import Array, Bools, Network
-from adjust.solver import defects
+from adjust.network import HELD, WEIGHTED, Array, Bools, Network
 from adjust.solver.cofactors import Cofactors
 from adjust.solver.datum import PartDatum, assemble_datum, find_datum
-from adjust.solver.design import Design, State, Unknowns, control_as_new
+from adjust.solver.defects import Loose
+from adjust.solver.design import Design, Unknowns, control_as_new
 from adjust.solver.elements import make_batches
-from adjust.solver.engine import SingularPattern
 from adjust.solver.gauss import GaussNewton, Linear
+from adjust.solver.settle import Setting, freedom_at, settle
 from adjust.solver.solution import PartResult, Solution
 from adjust.solver.threads import one_thread
 
@@ -28,49 +29,101 @@ CONDITION_SD_M = 1e-3
 exactly; the size of an ordinary reading keeps the numbers well scaled."""
 
 
-@dataclass(frozen=True)
-class Setting:
-    """A network made ready to iterate."""
-
-    network: Network
-    parts: list[PartDatum]
-    design: Design
-    start: Start
-    iteration: GaussNewton
-
-
 def solve(job: Job) -> Solution:
     """Adjust a job by least squares.
 
-    Raises Unsolvable in trade words where the readings leave something free, NotConverged where it does not settle.
+    Raises Unsolvable (Loose, with the movements) where the readings leave something free, NotConverged (NotSettled)
+    where it does not settle. adjust.judge.solved.solve is the same with these told in trade words.
     """
     with one_thread():
         ready = prepare(job)
-        state = State(ready.start.positions, ready.start.groups)
-        try:
-            outcome = ready.iteration.run(state)
-        except SingularPattern as singular:
-            raise Unsolvable(free_movements(ready, singular)) from None
-        return solution_at(job, ready, outcome.last, outcome.cofactors, outcome.iterations)
+        return replace(_settled(job, ready), free=_free_stage(job, ready))
 
 
-def prepare(job: Job) -> Setting:
+def _settled(job: Job, ready: Setting) -> Solution:
+    outcome = settle(ready)
+    return solution_at(job, ready, outcome.last, outcome.cofactors, outcome.iterations)
+
+
+def _free_stage(job: Job, ready: Setting) -> Solution | None:
+    """The readings alone on a free datum carried by the control marks, where control is more than the datum needs.
+
+    None too where the readings do not hold together without the control, as in a resection.
+    """
+    if not any(one.spare > 0 for one in ready.parts):
+        return None
+    role = job.network.stations.role
+    marks = np.flatnonzero(((role == HELD) | (role == WEIGHTED)).any(axis=1))
+    names = tuple(job.network.stations.names[i] for i in marks)
+    alone = replace(job, settings=replace(job.settings, datum_kind="free", datum_stations=names))
+    try:
+        return _settled(alone, prepare(alone, ready.start))
+    except (Unsolvable, NotConverged):
+        return None
+
+
+def prepare(job: Job, start: Start | None = None) -> Setting:
     """Parts, datum, starting values and pattern of a job; raises Unsolvable."""
     parts = find_parts(job.network)
-    start = find_start(job.network)
-    if start.failures:
-        raise Unsolvable(start.failures)
+    start = start or find_start(job.network)
+    filled = replace(start, positions=_filled(start.positions, parts))
     settings = job.settings
-    datum = find_datum(job.network, parts, settings.datum_kind, settings.datum_stations, start.positions)
-    free = _free_coordinates(job.network, datum)
-    network = control_as_new(job.network, free)
-    if network is not job.network:
-        datum = find_datum(network, find_parts(network), "free", settings.datum_stations, start.positions)
-    unknowns = Unknowns.of(network, [d.part for d in datum], free)
-    design = Design(network, LocalPlane(), unknowns)
+    try:
+        datum = find_datum(job.network, parts, settings.datum_kind, settings.datum_stations, filled.positions)
+    except Unsolvable as missing:
+        setting = _setting(job, _loosened(job, job.network, parts, filled), filled, lambda n: _loosened(
+            job, n, find_parts(n), filled))  # fmt: skip
+        raise Loose(freedom_at(setting, setting.iteration.at(setting.begin)), tuple(missing.sentences)) from None
+    ready = _setting(job, datum, filled, lambda network: find_datum(
+        network, find_parts(network), "free", settings.datum_stations, filled.positions))  # fmt: skip
+    if start.failures:
+        # nothing leads to some station: where even a guessed place for it can move, that is what to say
+        freedom = freedom_at(ready, ready.iteration.at(ready.begin))
+        raise Loose(freedom) if len(freedom.stations) else Unsolvable(start.failures)
+    return ready
+
+
+def _setting(job: Job, datum: list[PartDatum], start: Start, again: Callable[[Network], list[PartDatum]]) -> Setting:
+    """Pattern for a datum; ``again`` finds the datum of the network without the control that a free one sets aside."""
+    network = job.network
+    free = _free_coordinates(network, datum)
+    as_new = control_as_new(network, free)
+    if as_new is not network:
+        datum = again(as_new)
+    unknowns = Unknowns.of(as_new, [d.part for d in datum], free)
+    frame = LocalPlane.of(network.stations, job.settings.frame.plane_height)
+    design = Design(as_new, frame, unknowns)
     batches = make_batches(design, np.where(design.held, _working_sd(design), design.sd))
-    whole = assemble_datum(network, datum, unknowns, start.reference, start.groups)
-    return Setting(network, datum, design, start, GaussNewton(design, batches, whole))
+    whole = assemble_datum(as_new, datum, unknowns, start.reference, start.groups)
+    return Setting(as_new, datum, design, start, GaussNewton(design, batches, whole))
+
+
+def _loosened(job: Job, network: Network, parts: list[Part], start: Start) -> list[PartDatum]:
+    """The datum of every part, free where its control is too little, so that the rest can be looked at."""
+    out = []
+    for part in parts:
+        try:
+            out += find_datum(network, [part], job.settings.datum_kind, (), start.positions)
+        except Unsolvable:
+            free = find_datum(network, [part], "free", (), start.positions)
+            out += [replace(one, stations=one.part.stations) for one in free]
+    return out
+
+
+def _filled(positions: Array, parts: list[Part]) -> Array:
+    """Guessed places, seeded, where a reading asks for a coordinate and no start was found: what is free there is free
+    almost everywhere."""
+    asked = np.zeros((len(positions), 2), dtype=bool)
+    for part in parts:
+        asked |= part.nodes
+    missing = asked[:, [PLANE, PLANE, HEIGHT]] & np.isnan(positions)
+    if not missing.any():
+        return positions
+    known = np.isfinite(positions[:, :2]).all(axis=1)
+    middle = positions[known, :2].mean(axis=0) if known.any() else np.zeros(2)
+    extent = float(np.abs(positions[known, :2] - middle).max(initial=0.0)) or 100.0
+    guess = np.random.default_rng(7).uniform(-1.0, 1.0, positions.shape) * extent + [*middle, 0.0]
+    return np.asarray(np.where(missing, guess, positions))
 
 
 def _working_sd(design: Design) -> Array:
@@ -84,14 +137,6 @@ def _free_coordinates(network: Network, datum: list[PartDatum]) -> Bools:
         if one.free:
             free |= one.part.nodes[:, [PLANE, PLANE, HEIGHT]]
     return free
-
-
-def free_movements(ready: Setting, singular: SingularPattern) -> list[str]:
-    """Sentences for what nothing fixes, found at the starting values."""
-    iteration = ready.iteration
-    here = iteration.at(State(ready.start.positions, ready.start.groups))
-    normal = iteration.pattern.normal(here.whitened)
-    return defects.words(ready.network, ready.design.unknowns, iteration.kept, normal, singular.unknowns)
 
 
 def solution_at(job: Job, ready: Setting, last: Linear, cofactors: Cofactors, iterations: int) -> Solution:
@@ -114,7 +159,8 @@ def solution_at(job: Job, ready: Setting, last: Linear, cofactors: Cofactors, it
     )
     return Solution(
         job, ready.network, design, last.state.positions, last.state.groups, last.whitened, cofactors,
-        residuals, design.observed + residuals, parts, total, iterations, ready.start.assumed,
+        last.numbers.coefficients, residuals, design.observed + residuals, parts, total, iterations,
+        ready.start.assumed,
     )  # fmt: skip
 
 

@@ -115,8 +115,18 @@ def elements(a: Array, misclosure: Array) -> list[Whitened]:
     """One element a row, as the program would make them for uncorrelated readings of unit weight."""
     m, u = a.shape
     columns = np.tile(np.arange(u), (m, 1))
-    batch = Batch(np.arange(m)[:, None], columns, columns[:, None], np.empty((m, 0), np.int64), np.ones((m, 1, 1)))
-    numbers = Linearised(a, np.zeros(m), misclosure, np.zeros(m), np.full(m, -1))
+    none = np.empty((m, 0), np.int64)
+    batch = Batch(
+        rows=np.arange(m)[:, None],
+        columns=columns,
+        slots=columns[:, None],
+        locals=none,
+        covariance=np.ones((m, 1, 1)),
+        vectors=none,
+        seats=none[:, None],
+        vector_sd=np.empty((m, 0, 3)),
+    )
+    numbers = Linearised(a, np.zeros(m), misclosure, np.zeros(m), np.full(m, -1), np.empty((m, 0, 3)))
     return [whiten(batch, numbers)]
 
 

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from adjust.frames import RADIUS_M
 from adjust.kinds import KINDS
 from adjust.network import CHECK, HELD, NEW, WEIGHTED, Array, Block, Group, Network, Stations
 
@@ -47,13 +48,14 @@ class Sketch:
         """A slope distance between points above the marks."""
         rise = self.truth[self.number(j), 2] + above[1] - self.truth[self.number(i), 2] - above[0]
         flat = math.dist(self.truth[self.number(i), :2], self.truth[self.number(j), :2])
-        return self._say("distance", (i, j), math.hypot(flat, rise), surface="slope", above=above)
+        chord = math.hypot(flat, rise - flat**2 / (2 * RADIUS_M))
+        return self._say("distance", (i, j), chord, surface="slope", above=above)
 
     def zenith(self, i: str, j: str, above: tuple[float, float] = (0.0, 0.0), kind: str = "zenith_sketch") -> Sketch:
         """A zenith angle between points above the marks."""
         rise = self.truth[self.number(j), 2] + above[1] - self.truth[self.number(i), 2] - above[0]
         flat = math.dist(self.truth[self.number(i), :2], self.truth[self.number(j), :2])
-        return self._say(kind, (i, j), math.atan2(flat, rise), above=above)
+        return self._say(kind, (i, j), math.atan2(flat, rise - flat**2 / (2 * RADIUS_M)), above=above)
 
     def sets(self, *sets: str, wrong: dict[str, float] | None = None) -> Sketch:
         """Sets like "A: B C D", each with an orientation of its own; ``wrong`` is added to the readings to a target."""

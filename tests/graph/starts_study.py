@@ -127,7 +127,7 @@ def solved(trial: Trial, places: Array | None) -> Solution | str:
     before = solving.find_start
     solving.find_start = before if places is None else given
     try:
-        return adjust.solve(trial.job)
+        return solving.solve(trial.job)
     except Unsolvable as e:
         return "unsolvable: " + e.sentences[0]
     except NotConverged:

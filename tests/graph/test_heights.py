@@ -82,7 +82,10 @@ def test_slope_distances_and_zenith_angles_give_places_and_heights() -> None:
 
 def test_slope_distances_are_reduced_by_levelled_heights() -> None:
     one = slopes(valley(), zenith=False).rises(*ROUND)
-    full(one.network("A B", heights="A"), one)
+    start = find_start(one.network("A B", heights="A"))
+    assert start.failures == start.doubtful == ()
+    # the curvature under a slope distance is left out: 1 mm for 60 m of rise at 200 m
+    close(start.positions, one.truth, atol=2e-3)
 
 
 def test_zenith_angles_from_intersected_places_give_heights() -> None:

@@ -1,4 +1,4 @@
-"""Every kind of the registry in every frame: partials against central differences, values against tables worked by hand.
+"""Every kind in every frame: partials against central differences, values against tables worked by hand.
 
 Step theory. With step h the central difference errs by h^2/6 |f'''| and by the rounding of f and of its argument,
 eps (|f| + |x| |f'|) / h. The third derivative is itself measured, by the five-point difference with a long step, so the
@@ -85,6 +85,12 @@ def test_partials_by_the_sights_and_by_the_group(name: str) -> None:
     assert bool(np.abs(by_group).max()) == (kind.group is not None)
 
 
+def sights_of(frame: LocalPlane, positions: Array, ends: list[tuple[NDArray[np.int64], NDArray[np.int64]]],
+              m: int) -> Array:  # fmt: skip
+    """Sights (m, s, 4); a kind without stations has none."""
+    return np.concatenate([np.empty((m, 0, 4)), *(frame.sights(positions, *pair)[:, None] for pair in ends)], axis=1)
+
+
 @pytest.mark.parametrize("frame_name", FRAMES)
 @pytest.mark.parametrize("name", KINDS)
 def test_partials_carried_to_both_ends(name: str, frame_name: str) -> None:
@@ -99,9 +105,9 @@ def test_partials_carried_to_both_ends(name: str, frame_name: str) -> None:
         return (station[:, i] if i >= 0 else np.full(m, -1)), station[:, j]
 
     def value(at: Array) -> Array:
-        return kind.geometry(np.stack([frame.sights(at, *ends(*pair)) for pair in kind.sights], axis=1), group)[0]
+        return kind.geometry(sights_of(frame, at, [ends(*pair) for pair in kind.sights], m), group)[0]
 
-    sights = np.stack([frame.sights(positions, *ends(*pair)) for pair in kind.sights], axis=1)
+    sights = sights_of(frame, positions, [ends(*pair) for pair in kind.sights], m)
     by_sight = kind.geometry(sights, group)[1]
     total = np.zeros((m, len(kind.parts), n, 3))
     for k, pair in enumerate(kind.sights):
@@ -128,12 +134,11 @@ def test_worked_values(name: str, case: dict[str, object]) -> None:
     positions = np.array(case["positions"], float)
     group = np.radians([float(str(case.get("group_degrees", 0)))])
     starts = [(np.array([i]), np.array([j])) for i, j in kind.sights]
-    sights = np.stack([LocalPlane().sights(positions, *pair) for pair in starts], axis=1)
-    got = kind.geometry(sights, group)[0][0]
-    assert ("degrees" in case) == kind.wraps
-    wanted = np.radians(case["degrees"]) if kind.wraps else np.array(case["metres"], float)
+    got = kind.geometry(sights_of(LocalPlane(), positions, starts, 1), group)[0][0]
+    unit = {"angle": "degrees", "length": "metres", "number": "number"}[kind.dimension]
+    wanted = np.radians(case[unit]) if unit == "degrees" else np.array(case[unit], float)
     assert got.shape == wanted.shape
-    size = max(np.abs(positions).max(), np.abs(wanted).max()) if not kind.wraps else np.pi
+    size = max(np.abs(positions).max(initial=0), np.abs(wanted).max()) if not kind.wraps else np.pi
     close(np.abs(wrapped(got - wanted, kind)), np.zeros(len(wanted)), atol=4 * EPS * size)
 
 

@@ -12,7 +12,7 @@ SEEDS = range(50)
 KIND_SETS = (
     ("distances", "directions", "angles"), ("distances", "directions"), ("distances", "angles"),
     ("directions", "angles"), ("distances",), ("levelled_lengths", "levelled_setups"), ("levelled_lengths",),
-    ("distances", "directions", "levelled_lengths"),
+    ("distances", "directions", "levelled_lengths"), ("distances", "directions", "azimuths"),
 )  # fmt: skip
 
 

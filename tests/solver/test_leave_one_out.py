@@ -75,7 +75,9 @@ def group_order(made: Made, solution: adjust.Solution) -> list[int]:
 
 
 CASES = [
-    pytest.param(seed, kinds, control, correlated, id=f"{'-'.join(kinds)}-{control}-{'correlated' if correlated else 'plain'}")
+    pytest.param(
+        seed, kinds, control, correlated, id=f"{'-'.join(kinds)}-{control}-{'correlated' if correlated else 'plain'}"
+    )
     for seed, (kinds, control, correlated) in enumerate(
         (k, c, r) for k in KINDS for c in CONTROL for r in (False, True)
     )

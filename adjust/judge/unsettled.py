@@ -1,0 +1,155 @@
+"""Which readings fight when the iteration does not settle.
+
+The readings that fit worst where it began and where it stopped are tried one by one: the iteration runs again with the
+weight of one of them taken away, and if it settles, that reading is named with what it differs from the others.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+
+from adjust.book.job import Job
+from adjust.errors import Unsolvable
+from adjust.judge.readings import kind_word
+from adjust.judge.unfixed import Figure
+from adjust.kinds import KINDS
+from adjust.network import Array, Ints
+from adjust.solver.defects import Freedom, thin_stations
+from adjust.solver.design import State
+from adjust.solver.elements import make_batches
+from adjust.solver.engine import SingularPattern
+from adjust.solver.gauss import GaussNewton, NotSettled, Outcome
+from adjust.units import ANGLES, LENGTHS
+
+TRIED, TRIED_LARGE, LARGE = 12, 4, 5000
+"""Readings tried, and fewer in jobs of more than LARGE scalar rows, where each trial takes long."""
+WITHOUT = 1e5
+"""Factor on the standard deviation of the reading whose weight is taken away."""
+GROSS = 10.0
+"""A reading is blamed only if it differs from the others by this many of its standard deviations."""
+MOST_NAMED = 5
+AS_GOOD = 3.0
+"""Others are named too if without them the weighted square sum is within this factor of the best."""
+
+
+@dataclass(frozen=True)
+class _Trial:
+    row: int
+    square_sum: float
+    amount: float
+
+
+def words(job: Job, stopped: NotSettled) -> list[str]:
+    """One sentence for every reading without which the iteration settles, else those that fit worst."""
+    design = stopped.iteration.design
+    rows = _candidates(stopped)
+    trials = sorted((t for t in (_without(stopped, int(r)) for r in rows) if t), key=lambda t: t.square_sum)
+    if not trials and (thin := _thin(stopped)):
+        return thin
+    if not trials:
+        few = ", ".join(_called(job, stopped, int(r)) for r in rows[:3])
+        return [
+            "the adjustment does not settle from these starting values, and leaving out any one reading does not mend "
+            f"it; those that fit worst are {few}: look there for gross errors, or give better starts"
+        ]
+    kept = [t for t in trials if t.square_sum <= AS_GOOD * trials[0].square_sum + len(design.network.rows)]
+    return [
+        f"{_called(job, stopped, t.row)} disagrees with the others by about {_amount(job, stopped, t)}: without it the "
+        "adjustment settles, with it it does not; check it in the book" for t in kept[:MOST_NAMED]
+    ]  # fmt: skip
+
+
+def _thin(stopped: NotSettled) -> list[str]:
+    """The stations that were fixed only just where it began or stopped, if there are any."""
+    iteration, found = stopped.iteration, []
+    for here in (stopped.here, iteration.at(stopped.first)):
+        thin = tuple(thin_stations(iteration.design, iteration.datum.parts, here.whitened, here.state, 0.0))
+        nothing = np.zeros((*here.state.positions.shape, 0))
+        positions = np.nan_to_num(here.state.positions)
+        found += Figure(Freedom(iteration.design.network, positions, nothing, [], thin)).sentences()
+    return list(dict.fromkeys(found))
+
+
+def _candidates(stopped: NotSettled) -> Ints:
+    """Rows that fit worst at the stop and at the start, by turns."""
+    design, iteration = stopped.iteration.design, stopped.iteration
+    most = TRIED if len(design.network.rows) <= LARGE else TRIED_LARGE
+    orders = [np.argsort(-_misfit(stopped, here.numbers.misclosure), kind="stable")[:most]
+              for here in (stopped.here, iteration.at(stopped.first))]  # fmt: skip
+    found: list[int] = []
+    for r in np.stack(orders, axis=1).ravel().tolist():
+        same_set = design.local == design.local[r] if design.local[r] >= 0 else np.arange(len(design.local)) == r
+        found += [r, *np.flatnonzero(same_set).tolist()]  # the one that oriented its set seems to fit
+    return np.array(list(dict.fromkeys(found))[:most], dtype=np.int64)
+
+
+def _misfit(stopped: NotSettled, misclosure: Array) -> Array:
+    design = stopped.iteration.design
+    return np.asarray(np.abs(misclosure) / np.where(design.held, np.inf, design.sd))
+
+
+def _without(stopped: NotSettled, row: int) -> _Trial | None:
+    """The trial without one reading; None where it does not settle either."""
+    iteration = stopped.iteration
+    if iteration.design.held[row]:
+        return None
+    sd = np.where(iteration.design.held, 1e-3, iteration.design.sd)
+    sd[row] *= WITHOUT
+    try:
+        again = GaussNewton(iteration.design, make_batches(iteration.design, sd), iteration.datum)
+        outcome: Outcome = again.run(_start_without(stopped, row))
+    except (SingularPattern, NotSettled, Unsolvable, np.linalg.LinAlgError):
+        return None
+    amount = float(outcome.last.numbers.misclosure[row])
+    return _Trial(row, outcome.last.merit, amount) if abs(amount) > GROSS * iteration.design.sd[row] else None
+
+
+def _start_without(stopped: NotSettled, row: int) -> State:
+    """The start, with the orientation that the reading shares turned to the mean of the others of its set."""
+    design, first = stopped.iteration.design, stopped.first
+    group = design.local[row]
+    others = np.flatnonzero((design.local == group) & (np.arange(len(design.local)) != row))
+    if group < 0 or not len(others):
+        return first
+    numbers = design.linearise(first)
+    turn = np.angle(np.exp(1j * numbers.misclosure[others]).sum())
+    groups = first.groups.copy()
+    groups[group] += turn / numbers.by_local[others[0]]
+    return State(first.positions, groups)
+
+
+def _called(job: Job, stopped: NotSettled, row: int) -> str:
+    """'distances.csv:7 (distance A to B, 154.203 m)'."""
+    network = stopped.iteration.design.network
+    block, i = network.blocks[network.rows.block[row]], int(network.rows.row[row])
+    names = [network.stations.names[s] for s in block.stations[i]]
+    kind = KINDS[block.kind]
+    ends = names[0] if len(names) == 1 else " to ".join(names) if len(names) == 2 else (
+        f"{names[1]} to {names[2]} at {names[0]}")  # fmt: skip
+    texts = job.booked(block.file).get(int(block.line[i]), ())
+    booked = next((t for t in texts if t), "")
+    units = next((t.units for t in job.tables if t.file == block.file), job.settings.units)
+    unit = f" {units.length}" if kind.dimension == "length" and booked else ""
+    return f"{block.name(i)} ({kind_word(block.kind)} {ends}{f', {booked}{unit}' if booked else ''})"
+
+
+def _amount(job: Job, stopped: NotSettled, trial: _Trial) -> str:
+    """The difference in the job's units, two figures."""
+    network = stopped.iteration.design.network
+    block = network.blocks[network.rows.block[trial.row]]
+    units, size = job.settings.units, abs(trial.amount)
+    if KINDS[block.kind].dimension == "length":
+        return f"{_two_figures(size / LENGTHS[units.length])} {units.length}"
+    if units.angle in ("gon", "mil"):
+        return f"{_two_figures(size / ANGLES[units.angle])} {units.angle}"
+    degrees = math.degrees(size)
+    if degrees >= 1:
+        return f"{degrees:.0f} degrees"
+    return f"{degrees * 60:.0f} minutes" if degrees * 60 >= 1 else f"{degrees * 3600:.0f} seconds"
+
+
+def _two_figures(x: float) -> str:
+    return f"{float(f'{x:.2g}'):g}"
