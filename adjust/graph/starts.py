@@ -1,22 +1,30 @@
-"""Starting values from the readings: polar steps in the plane, chains of rises in height.
+"""Starting values from the readings alone: orchestrates heights, the quick start and the careful one.
 
-A kind says what it tells: a length, pointings (circle readings with a common orientation), a rise. From a known
-station and an oriented set, a pointing with a length places the target; two known ends orient a set. Where nothing is
-known of a connected piece, its first station stands at the origin with its first set (or first length) pointing north.
+The quick start makes polar steps from all that is known. If it reaches every station and no reading misfits by more
+than a few hundredths of its length (or radian), Gauss-Newton will do the rest. Otherwise each part that it leaves open
+is built with care (adjust.graph.plane), from control alone; `stations` rows decide between mirror images and help
+where control does not lead.
 """
 
 from __future__ import annotations
 
 import math
-from collections import defaultdict, deque
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from adjust.frames import RADIUS_M
-from adjust.graph.parts import HEIGHT, PLANE, find_parts, listed
-from adjust.kinds import KINDS
-from adjust.network import HELD, Array, Block, Network
+from adjust.graph.clues import Clues, Places
+from adjust.graph.heights import Heights, find_heights
+from adjust.graph.misfit import Misfits
+from adjust.graph.parts import HEIGHT, PLANE, Part, find_parts
+from adjust.graph.polar import Polar
+from adjust.graph.words import frame_words, height_words, mirror_words, missing_words
+from adjust.network import CHECK, HELD, NEW, WEIGHTED, Array, Ints, Network
+
+QUICK = 0.03
+"""Misfit up to which the quick start is good enough for Gauss-Newton."""
+FRAME = 1000.0
+"""Free parts are shifted so that their coordinates are above this."""
 
 
 @dataclass(frozen=True)
@@ -27,153 +35,31 @@ class Start:
     groups: Array
     failures: tuple[str, ...]
     assumed: tuple[str, ...]
-    """Stations set at an origin of the program's choice, for the record."""
+    """Sentences on what the program chose where nothing was given: origin, north, scale, height."""
+    doubtful: tuple[tuple[tuple[int, int], float], ...] = ()
+    """((block, row), computed minus observed in metres or radians) of readings that the start disagrees with."""
+    given: Array = field(default_factory=lambda: np.empty((0, 3)))
+    """(n, 3) given coordinates: control and `stations`, NaN where none."""
+
+    mirrors: tuple[Array, ...] = ()
+    """(n, 2) east and north of every other solution that the readings do not tell from this one."""
+
+    @property
+    def reference(self) -> Array:
+        """Positions (n, 3) to which a free datum refers: given ones as they were given, else the starting ones."""
+        use = ~np.isnan(self.positions) & ~np.isnan(self.given)
+        return np.where(use, self.given, self.positions)
 
 
-class _Pointings:
-    """Circle readings of all kinds alike: at, to, reading and the set that orients them."""
-
-    def __init__(self, network: Network) -> None:
-        self.at: list[int] = []
-        self.to: list[int] = []
-        self.reading: list[float] = []
-        self.set: list[int] = []
-        self.orientation: list[float] = [math.nan] * len(network.groups)
-        self.lengths: dict[tuple[int, int], float] = {}
-        zeniths = _sines(network)
-        for block in network.blocks:
-            says = KINDS[block.kind].says
-            if says == "pointings":
-                self._pointings(block)
-            elif says == "length":
-                for (i, j), d in zip(block.stations.tolist(), block.values[:, 0].tolist(), strict=True):
-                    level = d * zeniths.get((min(i, j), max(i, j)), 1.0) if block.surface == "slope" else d
-                    self.lengths.setdefault((min(i, j), max(i, j)), level)
-
-    def _pointings(self, block: Block) -> None:
-        sights = KINDS[block.kind].sights
-        for stations, value, group in zip(
-            block.stations.tolist(), block.values[:, 0].tolist(), block.group.tolist(), strict=True
-        ):
-            if group < 0:
-                group = len(self.orientation)
-                self.orientation.append(0.0 if len(sights) == 1 else math.nan)
-            for k, (i, j) in enumerate(sights):
-                self.at.append(stations[i])
-                self.to.append(stations[j])
-                self.reading.append(value if k == len(sights) - 1 else 0.0)
-                self.set.append(group)
-
-
-def _sines(network: Network) -> dict[tuple[int, int], float]:
-    """Sine of the zenith angle of every line that has one: it brings a slope distance to level."""
-    return {
-        (min(i, j), max(i, j)): math.sin(z)
-        for block in network.blocks
-        if KINDS[block.kind].says == "zenith"
-        for (i, j), z in zip(block.stations.tolist(), block.values[:, 0].tolist(), strict=True)
-    }
-
-
+@dataclass
 class _Plane:
-    """Spread known positions by polar steps, first come first served, in the order of the book."""
+    """What has been found in the plane so far."""
 
-    def __init__(self, network: Network, positions: Array) -> None:
-        self.p = _Pointings(network)
-        self.xy: dict[int, tuple[float, float]] = {
-            i: (e, n) for i, (e, n, _) in enumerate(positions.tolist()) if not (math.isnan(e) or math.isnan(n))
-        }
-        self.of_station: dict[int, list[int]] = defaultdict(list)
-        self.of_set: dict[int, list[int]] = defaultdict(list)
-        for k, (at, to, one) in enumerate(zip(self.p.at, self.p.to, self.p.set, strict=True)):
-            self.of_station[at].append(k)
-            self.of_station[to].append(k)
-            self.of_set[one].append(k)
-        self.neighbours: dict[int, list[int]] = defaultdict(list)
-        for i, j in self.p.lengths:
-            self.neighbours[i].append(j)
-            self.neighbours[j].append(i)
-        self.queue: deque[int] = deque(self.xy)
-
-    def spread(self) -> None:
-        """Go on until nothing new is reached."""
-        while self.queue:
-            station = self.queue.popleft()
-            for k in self.of_station[station]:
-                self._orient(k)
-                self._place(k)
-
-    def _orient(self, k: int) -> None:
-        p = self.p
-        at, to, one = p.at[k], p.to[k], p.set[k]
-        if not math.isnan(p.orientation[one]):
-            return
-        if at in self.xy and to in self.xy:
-            self.orient(one, self._azimuth(at, to) - p.reading[k])
-            return
-        azimuth = self._azimuth_of_line(at, to)
-        if azimuth is not None:
-            self.orient(one, azimuth - p.reading[k])
-
-    def _azimuth_of_line(self, at: int, to: int) -> float | None:
-        """Azimuth of a line that an oriented set points along, from either end."""
-        p = self.p
-        for k in self.of_station[at]:
-            orientation = p.orientation[p.set[k]]
-            if not math.isnan(orientation) and {p.at[k], p.to[k]} == {at, to}:
-                return orientation + p.reading[k] + (0.0 if p.at[k] == at else math.pi)
-        return None
-
-    def orient(self, one: int, value: float) -> None:
-        """Give a set its orientation and use it."""
-        self.p.orientation[one] = value
-        for k in self.of_set[one]:
-            self._place(k)
-
-    def _azimuth(self, i: int, j: int) -> float:
-        (e1, n1), (e2, n2) = self.xy[i], self.xy[j]
-        return math.atan2(e2 - e1, n2 - n1)
-
-    def _place(self, k: int) -> None:
-        p = self.p
-        at, to = p.at[k], p.to[k]
-        azimuth = p.orientation[p.set[k]] + p.reading[k]
-        length = p.lengths.get((min(at, to), max(at, to)))
-        if length is None or math.isnan(azimuth) or (at in self.xy) == (to in self.xy):
-            return
-        known, new, sense = (at, to, 1.0) if at in self.xy else (to, at, -1.0)
-        e, n = self.xy[known]
-        self.put(new, e + sense * length * math.sin(azimuth), n + sense * length * math.cos(azimuth))
-
-    def put(self, station: int, east: float, north: float) -> None:
-        """Make a station known."""
-        self.xy[station] = (east, north)
-        self.queue.append(station)
-
-    def begin(self, stations: list[int]) -> int | None:
-        """Choose an origin or an orientation where a piece has none; the station at the origin, if one was set."""
-        known = [i for i in stations if i in self.xy]
-        origin = None
-        if not known:
-            origin = max(stations, key=lambda i: (len(self.of_station[i]), -i))
-            self.put(origin, 0.0, 0.0)
-            known = [origin]
-        if len(known) == 1:
-            for k in self.of_station[known[0]]:
-                if math.isnan(self.p.orientation[self.p.set[k]]):
-                    self.orient(self.p.set[k], -self.p.reading[k])
-                    break
-            else:
-                self._along_length(known[0])
-        return origin
-
-    def _along_length(self, station: int) -> None:
-        """Without any pointing the first length from the station runs north."""
-        for other in self.neighbours[station]:
-            if other not in self.xy:
-                e, n = self.xy[station]
-                self.put(other, e, n + self.p.lengths[min(station, other), max(station, other)])
-                break
+    z: Places
+    failures: list[str]
+    assumed: list[str]
+    doubtful: list[tuple[int, float]]
+    mirrors: list[Places]
 
 
 def find_start(network: Network) -> Start:
@@ -182,67 +68,144 @@ def find_start(network: Network) -> Start:
     asked = np.zeros((len(network.stations), 2), dtype=bool)
     for part in parts:
         asked |= part.nodes
-    positions = network.stations.start.copy()
-    failures: list[str] = []
-    assumed: list[str] = []
-    plane = _Plane(network, positions)
-    plane.spread()
-    for part in parts:
-        stations = np.flatnonzero(part.nodes[:, PLANE]).tolist()
-        if any(i not in plane.xy for i in stations):
-            origin = plane.begin(stations)
-            plane.spread()
-            if origin is not None:
-                assumed.append(network.stations.names[origin])
-        missing = np.array([i for i in stations if i not in plane.xy], dtype=np.int64)
-        if len(missing):
-            failures.append(
-                f"{listed(network, missing, 8)}: no chain of oriented pointings with distances leads there; "
-                "give starting coordinates in stations.csv"
-            )
-    for i, (east, north) in plane.xy.items():
-        positions[i, :2] = np.where(network.stations.role[i, :2] == HELD, positions[i, :2], (east, north))
-    _heights(network, positions, asked[:, HEIGHT])
+    clues = Clues.of(network)
+    given = network.stations.start
+    height = _heights(network, clues, asked[:, HEIGHT], None)
+    plane = _find_plane(network, clues, parts)
+    if clues.zeniths or clues.slopes:
+        # the first round may have lacked heights to reduce slopes, or places to turn zenith angles into rises
+        height = _heights(network, clues, asked[:, HEIGHT], plane.z)
+        plane = _find_plane(network, clues, parts)
+        height = _heights(network, clues, asked[:, HEIGHT], plane.z)
+    positions = np.column_stack([plane.z.real, plane.z.imag, height.height])
+    held = network.stations.role == HELD
+    positions[held] = given[held]
     positions[~asked[:, PLANE], :2] = np.nan
     positions[~asked[:, HEIGHT], 2] = np.nan
-    return Start(positions, _orientations(network, plane), tuple(failures), tuple(assumed))
+    doubtful = tuple((clues.sources[s], size) for s, size in sorted([*plane.doubtful, *height.doubtful]))
+    return Start(
+        positions, _orientations(network, clues, plane.z), tuple(plane.failures),
+        (*plane.assumed, *height_words(network, height.origins)), doubtful, given,
+        tuple(np.column_stack([z.real, z.imag]) for z in plane.mirrors),
+    )  # fmt: skip
 
 
-def _heights(network: Network, positions: Array, asked: np.ndarray) -> None:
-    """Spread heights along rises; a piece without any known height starts at zero."""
-    steps: dict[int, list[tuple[int, float]]] = defaultdict(list)
-    for block in network.blocks:
-        if KINDS[block.kind].says == "rise":
-            for (i, j), rise in zip(block.stations.tolist(), block.values[:, 0].tolist(), strict=True):
-                steps[i].append((j, rise))
-                steps[j].append((i, -rise))
-        elif KINDS[block.kind].says == "zenith":
-            for i, j, rise in _rises(block, positions):
-                steps[i].append((j, rise))
-                steps[j].append((i, -rise))
-    height = positions[:, 2]
-    queue = deque(np.flatnonzero(~np.isnan(height)).tolist())
-    for seed in [None, *np.flatnonzero(asked).tolist()]:
-        if seed is not None and math.isnan(height[seed]):
-            height[seed] = 0.0
-            queue.append(seed)
-        while queue:
-            i = queue.popleft()
-            for j, rise in steps[i]:
-                if math.isnan(height[j]):
-                    height[j] = height[i] + rise
-                    queue.append(j)
+def _heights(network: Network, clues: Clues, asked: np.ndarray, z: Places | None) -> Heights:
+    given, fixed = network.stations.start[:, 2], network.stations.role[:, 2] == HELD
+    if not (clues.zeniths or clues.slopes):
+        return find_heights(given, fixed, clues.rises, asked)
+    first = z is None
+    known = find_heights(given, fixed, clues.rises, asked, begin=False).height
+    places = None if z is None else np.column_stack([z.real, z.imag])
+    rises = [*clues.rises, *(r._replace(sure=False) for r in clues.reduce(known, places))]
+    found = find_heights(given, fixed, rises, asked, begin=not first)
+    clues.reduce(found.height, places)
+    return found
 
 
-def _rises(block: Block, positions: Array) -> list[tuple[int, int, float]]:
-    """Height differences by zenith angles over the distances between starting positions: D cot z + D^2/2R."""
-    above = np.zeros((len(block), 2)) if block.above is None else block.above
-    start, end = block.stations.T
-    d = np.hypot(*(positions[end, :2] - positions[start, :2]).T)
-    rise = d / np.tan(block.values[:, 0]) + d**2 / (2 * RADIUS_M) + above[:, 0] - above[:, 1]
-    return [(i, j, r) for i, j, r in zip(start.tolist(), end.tolist(), rise.tolist(), strict=True) if math.isfinite(r)]
+def _given(network: Network, roles: tuple[int, ...]) -> dict[int, complex]:
+    """Stations with given east and north whose roles are among ``roles``."""
+    start, role = network.stations.start[:, :2], network.stations.role[:, :2]
+    ok = np.isin(role, roles).all(axis=1) & ~np.isnan(start).any(axis=1)
+    return {i: complex(*start[i]) for i in np.flatnonzero(ok).tolist()}
 
 
-def _orientations(network: Network, plane: _Plane) -> Array:
-    values = plane.p.orientation[: len(network.groups)]
-    return np.array([0.0 if math.isnan(v) else math.remainder(v, 2 * math.pi) for v in values], dtype=float)
+def _find_plane(network: Network, clues: Clues, parts: list[Part]) -> _Plane:
+    n = len(network.stations)
+    out = _Plane(np.full(n, complex(np.nan, np.nan)), [], [], [], [])
+    known = _given(network, (NEW, HELD, WEIGHTED, CHECK))
+    for i, place in known.items():
+        out.z[i] = place
+    plane_parts = [np.flatnonzero(part.nodes[:, PLANE]) for part in parts if part.nodes[:, PLANE].any()]
+    polar = Polar(clues, {i: (p.real, p.imag) for i, p in known.items()})
+    polar.spread()
+    for stations in plane_parts:
+        if not any(i in known for i in stations.tolist()):
+            origin, _ = reference(clues, stations)
+            polar.begin(origin, north=not _has_north(clues, stations))
+            polar.spread()
+    for i, (east, north) in polar.at.items():
+        out.z[i] = complex(east, north)
+    for stations in plane_parts:
+        own = _restricted(clues, stations) if len(plane_parts) > 1 else clues
+        if any(math.isnan(out.z[i].real) for i in stations.tolist()) or Misfits(own).worst(out.z) > QUICK:
+            _careful(network, own, stations, out)
+        elif not any(i in known for i in stations.tolist()):
+            _free_frame(network, own, stations, out, _has_north(own, stations), True)
+    return out
+
+
+def _restricted(clues: Clues, stations: Ints) -> Clues:
+    """The clues of one part."""
+    inside = set(stations.tolist())
+    return replace(
+        clues,
+        lengths=[one for one in clues.lengths if one.i in inside],
+        pointings=[p for p in clues.pointings if p.at in inside],
+    )
+
+
+def _has_north(clues: Clues, stations: Ints) -> bool:
+    inside = set(stations.tolist())
+    return any(p.set == clues.north and p.at in inside for p in clues.pointings)
+
+
+def reference(clues: Clues, stations: Ints) -> tuple[int, int]:
+    """(origin, north) of a part without coordinates: the station with most readings and its first sighted neighbour.
+
+    Its first pointing in the order of the book, else the first pointing to it, else its first length.
+    """
+    count = dict.fromkeys(stations.tolist(), 0)
+    ends = [(p.at, p.to) for p in clues.pointings] + [(one.i, one.j) for one in clues.lengths]
+    for i, j in ends:
+        if i in count and j in count:
+            count[i] += 1
+            count[j] += 1
+    origin = max(count, key=lambda i: count[i])
+    for i, j in ends:
+        if i == origin and j != origin:
+            return origin, j
+    return origin, next((i for i, j in ends if j == origin and i != origin), origin)
+
+
+def _careful(network: Network, clues: Clues, stations: Ints, out: _Plane) -> None:
+    """Build one part with care, and say what cannot be built or what is in doubt."""
+    from adjust.graph.careful import place_part  # most jobs never come here
+
+    found = place_part(network, clues, stations, _given(network, (HELD, WEIGHTED)), _given(network, (NEW, CHECK)))
+    out.z[stations] = found.built.z[stations]
+    missing = stations[np.isnan(out.z[stations])]
+    if found.free and not len(missing) and not found.built.mirrors:
+        _free_frame(network, clues, stations, out, found.built.oriented, found.built.scaled)
+    elif found.free:
+        out.assumed += frame_words(network, *reference(clues, stations), found.built.oriented, found.built.scaled, 0j)
+    out.doubtful += found.doubtful
+    for mirror in found.built.mirrors:
+        other = out.z.copy()
+        other[list(mirror.stations)] = mirror.there
+        out.mirrors.append(other)
+    out.failures += missing_words(network, clues, missing, out.z) + mirror_words(network, found.built.mirrors)
+
+
+def _free_frame(network: Network, clues: Clues, stations: Ints, out: _Plane, oriented: bool, scaled: bool) -> None:
+    """Turn and shift a part without coordinates into a frame that reads well, and say so."""
+    origin, north = reference(clues, stations)
+    z = out.z[stations] - out.z[origin]
+    first = out.z[north] - out.z[origin]
+    if not oriented and first != 0:
+        z = z * (1j * abs(first) / first)
+    if not scaled and first != 0:
+        z = z * (100.0 / abs(first))
+    least = complex(np.nanmin(z.real), np.nanmin(z.imag))
+    place = complex(*(FRAME * max(1.0, math.ceil((FRAME / 2 - v) / FRAME)) for v in (least.real, least.imag)))
+    out.z[stations] = z + place
+    out.assumed += frame_words(network, origin, north, oriented, scaled, place)
+
+
+def _orientations(network: Network, clues: Clues, z: Places) -> Array:
+    """Values (g,) of the group unknowns at the places."""
+    if not clues.pointings:
+        return np.zeros(len(network.groups))
+    with np.errstate(invalid="ignore"):
+        turns = Misfits(clues).orientations(z, robust=True)[: len(network.groups)]
+    return np.array([math.remainder(t, 2 * math.pi) for t in turns.tolist()], dtype=float)

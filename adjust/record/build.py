@@ -117,12 +117,7 @@ def _units(solution: Solution) -> dict[str, Any]:
 
 
 def _frame(solution: Solution) -> dict[str, Any]:
-    assumed = ", ".join(solution.assumed)
-    origin = (
-        f"no coordinates were given: {assumed} was placed at 0, 0 and its first sight pointed north"
-        if assumed
-        else None
-    )
+    origin = "; ".join(solution.assumed) or None
     frame = solution.design.frame
     return {"kind": frame.name, "origin": origin, "plane_height": coordinate(frame.plane_height),
             "radius": coordinate(frame.radius)}  # fmt: skip

@@ -66,7 +66,7 @@ class Solution:
     total: PartResult
     iterations: int
     assumed: tuple[str, ...]
-    """Stations placed at an origin of the program's choice."""
+    """Sentences on what the program chose where nothing was given: origin, north, scale, height."""
     free: Solution | None = None
     """The free stage before this one: the readings alone, fitted to the control; None where it adds nothing."""
 

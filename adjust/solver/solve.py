@@ -94,7 +94,7 @@ def _setting(job: Job, datum: list[PartDatum], start: Start, again: Callable[[Ne
     frame = LocalPlane.of(network.stations, job.settings.frame.plane_height)
     design = Design(as_new, frame, unknowns)
     batches = make_batches(design, np.where(design.held, _working_sd(design), design.sd))
-    whole = assemble_datum(as_new, datum, unknowns, start.positions, start.groups)
+    whole = assemble_datum(as_new, datum, unknowns, start.reference, start.groups)
     return Setting(as_new, datum, design, start, GaussNewton(design, batches, whole))
 
 
