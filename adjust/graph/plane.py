@@ -58,10 +58,23 @@ def build(clues: Clues, stations: Ints, known: dict[int, complex], rows: dict[in
     misfits = Misfits(clues)
     first = _once(clues, misfits, stations, known, rows, frozenset())
     best = _polish(clues, misfits, known, first)
-    if len(bad_sources(misfits, best.z)) > 1:
+    if len(bad_sources(misfits, best.z)) > 1 or _crowded(clues, best.z, stations):
         better = _without_one(clues, misfits, stations, known, rows, first)
         best = _polish(clues, misfits, known, better) if better is not first else best
     return _weighed(misfits, known, best) if best.mirrors else best
+
+
+def _crowded(clues: Clues, z: Places, stations: Ints) -> list[int]:
+    """Readings of stations that are not placed though three or more readings lead there: they may contradict."""
+    missing = set(stations[np.isnan(z[stations])].tolist())
+    found: dict[int, list[int]] = {}
+    if missing:
+        ends = [(c.i, c.j, c.source) for c in clues.lengths] + [(p.at, p.to, p.source) for p in clues.pointings]
+        for i, j, source in ends:
+            for one, other in ((i, j), (j, i)):
+                if one in missing and other not in missing:
+                    found.setdefault(one, []).append(source)
+    return [source for sources in found.values() if len(sources) > 2 for source in sources]
 
 
 def _weighed(misfits: Misfits, known: dict[int, complex], built: Built) -> Built:
@@ -238,7 +251,8 @@ def _without_one(clues: Clues, misfits: Misfits, stations: Ints, known: dict[int
     """The best of the constructions without one suspicious reading or without one known station."""
     best = first
     bad = bad_sources(misfits, first.z)
-    for source in _suspects(clues, bad, first)[: min(TRIALS_MOST, max(4, WORK_MOST // max(1, len(misfits.source))))]:
+    suspects = dict.fromkeys([*_crowded(clues, first.z, stations), *_suspects(clues, bad, first)])
+    for source in list(suspects)[: min(TRIALS_MOST, max(4, WORK_MOST // max(1, len(misfits.source))))]:
         trial = _once(clues, misfits, stations, known, rows, frozenset({source}))
         if trial.cost < best.cost - CLEARLY:
             best = trial
