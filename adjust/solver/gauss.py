@@ -1,7 +1,9 @@
 """Gauss-Newton with damping: x <- x + a dx, N dx = A*' l*, until the step vanishes.
 
-The merit is the weighted square sum v'Pv with the local unknowns at their best. A full step that worsens it is halved
-(Deuflhard 2004, section 4.2); the last linearisation is made at the answer, so that cofactors belong to it.
+The merit is the weighted square sum v'Pv with the local unknowns at their best. Where a full step worsens it, it is
+damped (Levenberg 1944, Marquardt 1963): (N + m diag N) dx = A*' l*, m growing tenfold until the merit falls and
+shrinking after every success; datum and conditions, which such a step leaves to their working weights, are imposed
+again by the next full one. The last linearisation is made at the answer, so that cofactors belong to it.
 """
 
 from __future__ import annotations
@@ -9,6 +11,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from scipy.sparse import diags_array
 
 from adjust.errors import NotConverged, Unsolvable
 from adjust.network import Array
@@ -16,10 +19,11 @@ from adjust.solver.cofactors import Cofactors
 from adjust.solver.datum import Datum, null_space, state_vector
 from adjust.solver.design import Design, Linearised, State
 from adjust.solver.elements import Batch, Whitened, whiten
-from adjust.solver.engine import Pattern
+from adjust.solver.engine import Factor, Pattern
 
-MOST_ITERATIONS = 60
-MOST_HALVINGS = 14
+MOST_ITERATIONS = 200
+DAMPING_FIRST, DAMPING_MOST = 1e-4, 1e12
+"""Shares of the diagonal of N added at the first failure, and at the last before the iteration gives up."""
 STEP_LEAST_M = 1e-9
 """A step below one nanometre ends the iteration; Gauss-Newton's next step is smaller by the curvature times the
 residual over the length, 1e-4 for 1 mm at 10 m."""
@@ -27,6 +31,9 @@ FARTHEST_M = 1e8
 """A step beyond the Earth is no step: the readings do not hold what is moved."""
 WORSE = 1e-6
 """Relative and absolute growth of v'Pv that still counts as no growth: far above rounding, far below any statistic."""
+
+GAIN_LEAST = 1e-10
+"""A damped step must lower v'Pv by at least this share; less is rounding."""
 
 
 @dataclass(frozen=True)
@@ -123,16 +130,16 @@ class GaussNewton:
             dx -= null @ np.linalg.solve(c.T @ null, c.T @ (x + dx - self.datum.reference))
         return dx
 
-    def moved(self, here: Linear, dx: Array, share: float) -> State:
-        """The state after ``share`` of a step; local unknowns follow at their best."""
+    def moved(self, here: Linear, dx: Array) -> State:
+        """The state after a step; local unknowns follow at their best."""
         positions, groups = here.state.positions.copy(), here.state.groups.copy()
         numbers = self.design.unknowns.coordinate
-        positions[numbers >= 0] += share * dx[numbers[numbers >= 0]]
+        positions[numbers >= 0] += dx[numbers[numbers >= 0]]
         shared = self.design.unknowns.shared
-        groups[shared >= 0] += share * dx[shared[shared >= 0]]
+        groups[shared >= 0] += dx[shared[shared >= 0]]
         for w in here.whitened:
             if w.batch.locals.shape[1]:
-                np.add.at(groups, w.batch.locals, w.local_step(share * dx))
+                np.add.at(groups, w.batch.locals, w.local_step(dx))
         return State(positions, groups)
 
     def run(self, state: State) -> Outcome:
@@ -140,28 +147,36 @@ class GaussNewton:
         first = here = self.at(state)
         scale = float(np.abs(np.nan_to_num(state.positions)).max(initial=1.0))
         least = max(STEP_LEAST_M, 8 * np.finfo(float).eps * scale)
+        damping = DAMPING_FIRST
         for iteration in range(1, MOST_ITERATIONS + 1):
             dx = self.step(here)
-            here, share = self._damped(here, dx, first.state)
-            if share == 1.0 and np.abs(dx).max(initial=0.0) <= least:
-                return Outcome(here, self.cofactors(here), iteration)
+            size = float(np.abs(dx).max(initial=0.0))
+            full = self.at(self.moved(here, dx)) if size < FARTHEST_M else None
+            if full is not None and full.merit <= here.merit * (1 + WORSE) + WORSE:
+                here, damping = full, max(damping / 10, DAMPING_FIRST)
+                if size <= least:
+                    return Outcome(here, self.cofactors(here), iteration)
+                continue
+            damped, damping = self._damped(here, damping)
+            if damped is None and full is not None and (len(self.held) or self.datum.defect):
+                damped = full  # conditions and datum may have to be paid for once, where nothing else can be gained
+            if damped is None:
+                break
+            here = damped
         raise NotSettled(self, first.state, here, self._words(here))
 
-    def _damped(self, here: Linear, dx: Array, start: State) -> tuple[Linear, float]:
-        share, first = 1.0, None
-        if not np.abs(dx).max(initial=0.0) < FARTHEST_M:
-            raise NotSettled(self, start, here, self._words(here))
-        for _ in range(MOST_HALVINGS):
-            there = self.at(self.moved(here, dx, share))
-            first = first or there
-            if there.merit <= here.merit * (1 + WORSE) + WORSE:
-                return there, share
-            share /= 2
-        if len(self.held) or self.datum.defect:
-            # steps that satisfy conditions may have to pay for them once
-            assert first is not None
-            return first, 1.0
-        raise NotSettled(self, start, here, self._words(here))
+    def _damped(self, here: Linear, damping: float) -> tuple[Linear | None, float]:
+        """The state after the first damped step that improves the merit, None if none does; and the next damping."""
+        normal, right = self.pattern.normal(here.whitened), self.pattern.right_side(here.whitened)
+        while damping <= DAMPING_MOST:
+            dx = np.zeros(self.design.unknowns.count)
+            dx[self.kept] = Factor.of(normal + diags_array(damping * normal.diagonal(), format="csc")).solve(right)
+            if np.abs(dx).max(initial=0.0) < FARTHEST_M:
+                there = self.at(self.moved(here, dx))
+                if there.merit < here.merit * (1 - GAIN_LEAST):
+                    return there, max(damping / 10, DAMPING_FIRST)
+            damping *= 10
+        return None, DAMPING_FIRST
 
     def _words(self, here: Linear) -> list[str]:
         """The readings that fit worst where the iteration stopped."""

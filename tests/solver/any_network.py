@@ -19,11 +19,13 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
+from scipy.special import chdtri
 
 import adjust
 from adjust.errors import NotConverged, Unsolvable
+from adjust.graph.starts import find_start
 from adjust.judge.ellipses import ellipses
-from tests.networks import Array, Made, Row, Table, random_job, write_job
+from tests.networks import Array, Made, Row, random_job, write_job
 from tests.solver.oracle import Dense, order
 
 KIND_SETS = (
@@ -85,15 +87,14 @@ def with_blunder(made: Made, number: int) -> tuple[Made, str]:
         new = (old + rng.uniform(0.01, 2 * np.pi - 0.01)) % (2 * np.pi)
     row[column] = float(new)
     rows = [*table.rows[:r], row, *table.rows[r + 1 :]]
-    tables = [*made.tables[:t], Table(table.file, table.kind, rows), *made.tables[t + 1 :]]
+    tables = [*made.tables[:t], replace(table, rows=rows), *made.tables[t + 1 :]]
     return replace(made, tables=tables), f"{table.file} row {r}"
 
 
-def reference(made: Made) -> Reference:
-    """Gauss-Newton from the truth on the dense equations, minimum norm where the datum is free."""
+def reference(made: Made, start: Array | None = None) -> Reference:
+    """Gauss-Newton from the truth, or from ``start``, on the dense equations; minimum norm where the datum is free."""
     dense = Dense.of(made)
-    xyz = made.truth.copy()
-    xyz[made.role[:, 0] == "held"] = made.truth[made.role[:, 0] == "held"]
+    xyz = made.truth.copy() if start is None else start.copy()
     inside = dense.coordinate >= 0
     groups = dense.groups_at(xyz)
     w = 1 / made.readings.sd
@@ -140,6 +141,28 @@ def differences(made: Made, judgement: adjust.Judgement, ref: Reference) -> dict
     return got
 
 
+def both_fit(made: Made) -> bool:
+    """Whether the solution said to be mirrored has another beside it: each fits, and their shapes differ."""
+    network = adjust.read(made.folder).network
+    start = find_start(network)
+    places = np.array([network.stations.index[name] for name in made.names])
+    found = []
+    for east_north in (start.positions[:, :2], *start.mirrors):
+        xyz = np.column_stack([east_north, start.positions[:, 2]])[places]
+        found.append(reference(made, np.where(np.isnan(xyz), made.truth, xyz)))
+    limit = chdtri(max(1, len(made.readings) - 1), 1e-6)
+    apart = [_apart(found[0].positions, other.positions) for other in found[1:]]
+    return len(found) > 1 and all(one.square_sum < limit for one in found) and min(apart) > 0.01
+
+
+def _apart(one: Array, other: Array) -> float:
+    """Largest distance between two figures, metres, once the second is shifted and turned onto the first."""
+    a, b = ((xyz[:, 0] + 1j * xyz[:, 1]) for xyz in (one, other))
+    a, b = a - a.mean(), b - b.mean()
+    turn = np.vdot(b, a)
+    return float(np.abs(a - b * turn / abs(turn)).max())
+
+
 def _row_order(made: Made, solution: adjust.Solution) -> Array:
     """Rows of the solution in the order of the made readings: both follow the book."""
     assert len(made.readings) == len(solution.residuals)
@@ -174,6 +197,8 @@ def outcome(number: int, folder: Path, blunder: bool = False) -> tuple[str, dict
             return "refused", {}, f"{place}: {text}"
         sound = reference(full).smallest > 1e-7
         twofold = "fit" in text and "equally" in text
+        if twofold and not both_fit(made):
+            return "refused wrongly", {}, text
         return ("refused, two solutions" if twofold else "refused wrongly" if sound else "refused rightly"), {}, text
     if blunder:
         return "converged", {}, place
