@@ -7,7 +7,7 @@ through all blocks in the order of the book.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 
 import numpy as np
@@ -100,6 +100,18 @@ class Block:
 
     def __len__(self) -> int:
         return len(self.line)
+
+    def only(self, i: int) -> Block:
+        """The block with row ``i`` alone, for a closer look at its geometry."""
+
+        def cut(values: Array | None) -> Array | None:
+            return None if values is None else values[i : i + 1]
+
+        return replace(
+            self, stations=self.stations[i : i + 1], values=self.values[i : i + 1], sd=self.sd[i : i + 1],
+            group=self.group[i : i + 1], held=self.held[i : i + 1], line=self.line[i : i + 1], above=cut(self.above),
+            offset=cut(self.offset), constant=cut(self.constant), eccentric=None,
+        )  # fmt: skip
 
     def name(self, i: int) -> str:
         """Identification of row ``i``: the given one, else FILE:LINE."""

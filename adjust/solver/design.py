@@ -217,6 +217,10 @@ class Design:
         l[self.wraps] -= TURN * np.round(l[self.wraps] / TURN)
         return Linearised(coefficients, np.where(self.local >= 0, by_group, 0.0), l, computed, self.local, by_vector)
 
+    def partials(self, block: Block, positions: Array, groups: Array) -> Array:
+        """Partials (m, p, slots) of a block's values by its slots at positions (n, 3) without NaN."""
+        return self._block(block, positions, groups)[1]
+
     def _block(self, block: Block, positions: Array, groups: Array) -> tuple[Array, Array, Array]:
         kind = KINDS[block.kind]
         ends = [

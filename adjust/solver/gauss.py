@@ -16,10 +16,11 @@ from scipy.sparse import diags_array
 from adjust.errors import NotConverged, Unsolvable
 from adjust.network import Array
 from adjust.solver.cofactors import Cofactors
+from adjust.solver.curvature import curvature
 from adjust.solver.datum import Datum, null_space, state_vector
 from adjust.solver.design import Design, Linearised, State
 from adjust.solver.elements import Batch, Whitened, whiten
-from adjust.solver.engine import Factor, Pattern
+from adjust.solver.engine import Factor, Pattern, SingularPattern
 
 MOST_ITERATIONS = 200
 DAMPING_FIRST, DAMPING_MOST = 1e-4, 1e12
@@ -29,11 +30,11 @@ STEP_LEAST_M = 1e-9
 residual over the length, 1e-4 for 1 mm at 10 m."""
 FARTHEST_M = 1e8
 """A step beyond the Earth is no step: the readings do not hold what is moved."""
-WORSE = 1e-6
-"""Relative and absolute growth of v'Pv that still counts as no growth: far above rounding, far below any statistic."""
-
-GAIN_LEAST = 1e-10
-"""A damped step must lower v'Pv by at least this share; less is rounding."""
+WORSE, WORSE_SHARE = 1e-6, 1e-12
+"""Growth of v'Pv, absolute and as a share, that still counts as none: above rounding, far below any statistic."""
+GAIN = 1e-9
+"""Fall of v'Pv, as a share, that shows that full steps still lead somewhere though they do not shrink. Near a minimum
+with a gross error full steps can lead away from it within the rounding of v'Pv; only their growth shows it."""
 
 
 @dataclass(frozen=True)
@@ -147,33 +148,40 @@ class GaussNewton:
         first = here = self.at(state)
         scale = float(np.abs(np.nan_to_num(state.positions)).max(initial=1.0))
         least = max(STEP_LEAST_M, 8 * np.finfo(float).eps * scale)
-        damping = DAMPING_FIRST
+        damping, last = DAMPING_FIRST, np.inf
         for iteration in range(1, MOST_ITERATIONS + 1):
             dx = self.step(here)
             size = float(np.abs(dx).max(initial=0.0))
             full = self.at(self.moved(here, dx)) if size < FARTHEST_M else None
-            if full is not None and full.merit <= here.merit * (1 + WORSE) + WORSE:
-                here, damping = full, max(damping / 10, DAMPING_FIRST)
+            shrinks = size <= max(last / 2, least)
+            # conditions and datum may have to be paid for with a larger v'Pv; then shrinking steps are the proof
+            free = shrinks and (len(self.held) or self.datum.defect)
+            if full is not None and (free or gains(full, here) or (shrinks and no_worse(full, here))):
+                here, last, damping = full, size, max(damping / 10, DAMPING_FIRST)
                 if size <= least:
                     return Outcome(here, self.cofactors(here), iteration)
                 continue
             damped, damping = self._damped(here, damping)
-            if damped is None and full is not None and (len(self.held) or self.datum.defect):
-                damped = full  # conditions and datum may have to be paid for once, where nothing else can be gained
             if damped is None:
                 break
-            here = damped
+            here, last = damped, size
         raise NotSettled(self, first.state, here, self._words(here))
 
     def _damped(self, here: Linear, damping: float) -> tuple[Linear | None, float]:
-        """The state after the first damped step that improves the merit, None if none does; and the next damping."""
+        """The state after the first damped step that does not worsen the merit, None if none; and the next damping."""
         normal, right = self.pattern.normal(here.whitened), self.pattern.right_side(here.whitened)
+        bent = curvature(self.design, here.state, here.whitened, self.reduced, len(self.kept))
+        hessian = normal if bent is None else (normal - bent).tocsc()
         while damping <= DAMPING_MOST:
             dx = np.zeros(self.design.unknowns.count)
-            dx[self.kept] = Factor.of(normal + diags_array(damping * normal.diagonal(), format="csc")).solve(right)
+            try:
+                dx[self.kept] = Factor.of(hessian + diags_array(damping * normal.diagonal(), format="csc")).solve(right)
+            except SingularPattern:  # not positive definite yet
+                damping *= 10
+                continue
             if np.abs(dx).max(initial=0.0) < FARTHEST_M:
                 there = self.at(self.moved(here, dx))
-                if there.merit < here.merit * (1 - GAIN_LEAST):
+                if no_worse(there, here):
                     return there, max(damping / 10, DAMPING_FIRST)
             damping *= 10
         return None, DAMPING_FIRST
@@ -185,3 +193,13 @@ class GaussNewton:
         names = [self.design.network.blocks[rows.block[r]].name(int(rows.row[r])) for r in worst]
         return ["the adjustment does not settle from these starting values; the readings that fit worst are "
                 + ", ".join(names) + ": look there for a gross error, or give better starts"]  # fmt: skip
+
+
+def no_worse(there: Linear, here: Linear) -> bool:
+    """Whether v'Pv has not grown by more than rounding."""
+    return there.merit <= here.merit * (1 + WORSE_SHARE) + WORSE
+
+
+def gains(there: Linear, here: Linear) -> bool:
+    """Whether v'Pv has fallen by more than rounding could."""
+    return there.merit < here.merit * (1 - GAIN)
