@@ -26,6 +26,8 @@ from adjust.units import ANGLES, LENGTHS
 
 TRIED, TRIED_LARGE, LARGE = 12, 4, 5000
 """Readings tried, and fewer in jobs of more than LARGE scalar rows, where each trial takes long."""
+TRIAL_ITERATIONS = 15
+"""Without its gross error a network settles in fewer than ten iterations; more would only make the user wait."""
 WITHOUT = 1e5
 """Factor on the standard deviation of the reading whose weight is taken away."""
 GROSS = 10.0
@@ -100,7 +102,7 @@ def _without(stopped: NotSettled, row: int) -> _Trial | None:
     sd[row] *= WITHOUT
     try:
         again = GaussNewton(iteration.design, make_batches(iteration.design, sd), iteration.datum)
-        outcome: Outcome = again.run(_start_without(stopped, row))
+        outcome: Outcome = again.run(_start_without(stopped, row), TRIAL_ITERATIONS)
     except (SingularPattern, NotSettled, Unsolvable, np.linalg.LinAlgError):
         return None
     amount = float(outcome.last.numbers.misclosure[row])

@@ -21,7 +21,7 @@ from adjust.solver.elements import Whitened
 
 GROSS = 30.0
 """Standard deviations of misclosure from which a reading's curvature is kept."""
-MOST_ROWS = 200
+MOST_ROWS = 40
 STEP = 1e-5
 """Step of the differences as a share of the sight: the first partials then err by 1e-10 of themselves."""
 

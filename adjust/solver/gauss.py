@@ -22,7 +22,7 @@ from adjust.solver.design import Design, Linearised, State
 from adjust.solver.elements import Batch, Whitened, whiten
 from adjust.solver.engine import Factor, Pattern, SingularPattern
 
-MOST_ITERATIONS = 200
+MOST_ITERATIONS = 60
 DAMPING_FIRST, DAMPING_MOST = 1e-4, 1e12
 """Shares of the diagonal of N added at the first failure, and at the last before the iteration gives up."""
 STEP_LEAST_M = 1e-9
@@ -143,13 +143,13 @@ class GaussNewton:
                 np.add.at(groups, w.batch.locals, w.local_step(dx))
         return State(positions, groups)
 
-    def run(self, state: State) -> Outcome:
-        """Iterate from a state; raises NotSettled or SingularPattern."""
+    def run(self, state: State, most: int | None = None) -> Outcome:
+        """Iterate from a state, ``most`` times at the most; raises NotSettled or SingularPattern."""
         first = here = self.at(state)
         scale = float(np.abs(np.nan_to_num(state.positions)).max(initial=1.0))
         least = max(STEP_LEAST_M, 8 * np.finfo(float).eps * scale)
         damping, last = DAMPING_FIRST, np.inf
-        for iteration in range(1, MOST_ITERATIONS + 1):
+        for iteration in range(1, (most or MOST_ITERATIONS) + 1):
             dx = self.step(here)
             size = float(np.abs(dx).max(initial=0.0))
             full = self.at(self.moved(here, dx)) if size < FARTHEST_M else None
@@ -165,7 +165,7 @@ class GaussNewton:
             if damped is None:
                 break
             here, last = damped, size
-        raise NotSettled(self, first.state, here, self._words(here))
+        raise self.stopped(first.state, here)
 
     def _damped(self, here: Linear, damping: float) -> tuple[Linear | None, float]:
         """The state after the first damped step that does not worsen the merit, None if none; and the next damping."""
@@ -185,6 +185,10 @@ class GaussNewton:
                     return there, max(damping / 10, DAMPING_FIRST)
             damping *= 10
         return None, DAMPING_FIRST
+
+    def stopped(self, first: State, here: Linear) -> NotSettled:
+        """The refusal of an iteration that began at ``first`` and stopped at ``here``."""
+        return NotSettled(self, first, here, self._words(here))
 
     def _words(self, here: Linear) -> list[str]:
         """The readings that fit worst where the iteration stopped."""

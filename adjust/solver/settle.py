@@ -23,6 +23,7 @@ from adjust.solver.defects import (
     REFUSED,
     Freedom,
     Loose,
+    Thin,
     as_moves,
     most_moves,
     null_vectors,
@@ -31,6 +32,10 @@ from adjust.solver.defects import (
 from adjust.solver.design import Design, State
 from adjust.solver.engine import SingularPattern
 from adjust.solver.gauss import GaussNewton, Linear, NotSettled, Outcome
+
+GROSS_SD = 300.0
+"""Standard deviations of misclosure from which a figure counts as bent by a gross error: sound readings stay below 5,
+and a station that is fixed only just pulls its own readings to a few tens."""
 
 
 @dataclass(frozen=True)
@@ -61,16 +66,27 @@ def settle(ready: Setting) -> Outcome:
     factor = outcome.cofactors.factor
     if factor is not None and factor.pivot_least < DOUBTFUL_PIVOT:
         _refuse_loose(ready, outcome.last)
-    thin = thin_stations(ready.design, ready.parts, outcome.last.whitened, outcome.last.state, REFUSED)
+    thin = _thin(ready, outcome.last)
     if thin:
-        raise Loose(replace(freedom_at(ready, outcome.last), thin=tuple(thin)))
+        raise Loose(replace(freedom_at(ready, outcome.last), thin=thin))
     return outcome
+
+
+def _thin(ready: Setting, here: Linear) -> tuple[Thin, ...]:
+    """Stations fixed only just; none where a gross error has bent the figure, for then that is what to say."""
+    if _gross(here):
+        return ()
+    return tuple(thin_stations(ready.design, ready.parts, here.whitened, here.state, REFUSED))
+
+
+def _gross(here: Linear) -> bool:
+    """Whether some misclosure shows a gross error."""
+    return max((float(np.abs(w.reduced_l).max(initial=0.0)) for w in here.whitened), default=0.0) > GROSS_SD
 
 
 def _refuse_loose(ready: Setting, here: Linear) -> None:
     """Raise Loose if something is free at a state, or fixed only just."""
-    thin = tuple(thin_stations(ready.design, ready.parts, here.whitened, here.state, REFUSED))
-    freedom = replace(freedom_at(ready, here), thin=thin)
+    freedom = replace(freedom_at(ready, here), thin=_thin(ready, here))
     if len(freedom.stations):
         raise Loose(freedom)
 
@@ -87,8 +103,11 @@ def _from_beside(ready: Setting) -> Outcome:
         _refuse_loose(ready, unsettled.here)
         raise
     except SingularPattern as lost:
-        if ready.iteration.latest is not None:
-            _refuse_loose(ready, ready.iteration.latest)
+        latest = ready.iteration.latest
+        if latest is not None:
+            _refuse_loose(ready, latest)
+            if _gross(latest):
+                raise ready.iteration.stopped(ready.begin, latest) from None
         raise _barely_fixed(ready, lost) from None
 
 

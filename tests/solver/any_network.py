@@ -88,7 +88,7 @@ def with_blunder(made: Made, number: int) -> tuple[Made, str]:
     row[column] = float(new)
     rows = [*table.rows[:r], row, *table.rows[r + 1 :]]
     tables = [*made.tables[:t], replace(table, rows=rows), *made.tables[t + 1 :]]
-    return replace(made, tables=tables), f"{table.file} row {r}"
+    return replace(made, tables=tables), f"{table.file}:{r + 2}"
 
 
 def reference(made: Made, start: Array | None = None) -> Reference:
@@ -182,7 +182,7 @@ def _ellipses(made: Made, got: Array, ref: Reference) -> float:
 
 
 def outcome(number: int, folder: Path, blunder: bool = False) -> tuple[str, dict[str, float], str]:
-    """What happened to the network of a number: agrees, differs, refused rightly, refused wrongly; and the figures."""
+    """What happened to the network of a number: agrees, differs, converged, refused in some way; and the figures."""
     made = case(number, folder)
     full = made
     place = ""
@@ -194,7 +194,9 @@ def outcome(number: int, folder: Path, blunder: bool = False) -> tuple[str, dict
     except (Unsolvable, NotConverged) as refusal:
         text = "; ".join(refusal.sentences)
         if blunder:
-            return "refused", {}, f"{place}: {text}"
+            if "fit" in text and "equally" in text:
+                return "refused, two solutions", {}, text
+            return ("refused, culprit named" if f"{place} " in text else "refused"), {}, f"{place}: {text}"
         sound = reference(full).smallest > 1e-7
         twofold = "fit" in text and "equally" in text
         if twofold and not both_fit(made):
@@ -221,7 +223,7 @@ def main() -> None:
             worst = {
                 k: max(v, worst.get(k, 0.0)) for k, v in (worst | found).items() for v in [max(v, found.get(k, v))]
             }
-            if what in ("differs", "refused wrongly", "refused"):
+            if what in ("differs", "refused wrongly", "refused", "refused, culprit named"):
                 kinds, control = KIND_SETS[number % len(KIND_SETS)], CONTROL[number // len(KIND_SETS) % 3]
                 print(f"network {number} ({kinds}, {control}): {what}: {text[:300]}")
             shutil.rmtree(folder, ignore_errors=True)
