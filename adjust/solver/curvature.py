@@ -21,7 +21,7 @@ from adjust.solver.elements import Whitened
 
 GROSS = 30.0
 """Standard deviations of misclosure from which a reading's curvature is kept."""
-MOST_ROWS = 40
+MOST_ROWS = 300
 STEP = 1e-5
 """Step of the differences as a share of the sight: the first partials then err by 1e-10 of themselves."""
 
@@ -42,6 +42,11 @@ def curvature(design: Design, state: State, whitened: list[Whitened], reduced: I
         data.append(p * second[inside].ravel())
     parts = (np.concatenate(data), (np.concatenate(i), np.concatenate(j)))
     return coo_array(parts, shape=(count, count)).tocsc()
+
+
+def is_gross(whitened: list[Whitened]) -> bool:
+    """Whether any reading's curvature is to be kept."""
+    return any(bool((np.abs(w.reduced_l) > GROSS).any()) for w in whitened)
 
 
 def _gross(whitened: list[Whitened]) -> tuple[Ints, Array]:

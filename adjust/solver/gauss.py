@@ -16,13 +16,13 @@ from scipy.sparse import diags_array
 from adjust.errors import NotConverged, Unsolvable
 from adjust.network import Array
 from adjust.solver.cofactors import Cofactors
-from adjust.solver.curvature import curvature
+from adjust.solver.curvature import curvature, is_gross
 from adjust.solver.datum import Datum, null_space, state_vector
 from adjust.solver.design import Design, Linearised, State
 from adjust.solver.elements import Batch, Whitened, whiten
 from adjust.solver.engine import Factor, Pattern, SingularPattern
 
-MOST_ITERATIONS = 60
+MOST_ITERATIONS = 100
 DAMPING_FIRST, DAMPING_MOST = 1e-4, 1e12
 """Shares of the diagonal of N added at the first failure, and at the last before the iteration gives up."""
 STEP_LEAST_M = 1e-9
@@ -156,7 +156,9 @@ class GaussNewton:
             shrinks = size <= max(last / 2, least)
             # conditions and datum may have to be paid for with a larger v'Pv; then shrinking steps are the proof
             free = shrinks and (len(self.held) or self.datum.defect)
-            if full is not None and (free or gains(full, here) or (shrinks and no_worse(full, here))):
+            if full is not None and (
+                free or (shrinks and no_worse(full, here)) or (gains(full, here) and not is_gross(here.whitened))
+            ):
                 here, last, damping = full, size, max(damping / 10, DAMPING_FIRST)
                 if size <= least:
                     return Outcome(here, self.cofactors(here), iteration)
@@ -164,7 +166,7 @@ class GaussNewton:
             damped, damping = self._damped(here, damping)
             if damped is None:
                 break
-            here, last = damped, size
+            here, last = damped, np.inf  # the next full step may move the datum by any amount
         raise self.stopped(first.state, here)
 
     def _damped(self, here: Linear, damping: float) -> tuple[Linear | None, float]:
