@@ -22,7 +22,7 @@ from adjust.solver.design import Design, Linearised, State
 from adjust.solver.elements import Batch, Whitened, whiten
 from adjust.solver.engine import Factor, Pattern, SingularPattern
 
-MOST_ITERATIONS = 100
+MOST_ITERATIONS, MOST_NEWTON = 60, 100
 DAMPING_FIRST, DAMPING_MOST = 1e-4, 1e12
 """Shares of the diagonal of N added at the first failure, and at the last before the iteration gives up."""
 STEP_LEAST_M = 1e-9
@@ -144,12 +144,25 @@ class GaussNewton:
         return State(positions, groups)
 
     def run(self, state: State, most: int | None = None) -> Outcome:
-        """Iterate from a state, ``most`` times at the most; raises NotSettled or SingularPattern."""
+        """Iterate from a state, ``most`` times at the most; raises NotSettled or SingularPattern.
+
+        Where a gross error keeps full steps from settling, the way is gone again with Newton's steps from the first
+        full step that does not shrink: each of the two settles on networks where the other does not.
+        """
+        try:
+            return self._iterate(state, most or MOST_ITERATIONS, patient=True)
+        except (NotSettled, SingularPattern):
+            if most is not None or self.latest is None or not is_gross(self.latest.whitened):
+                raise
+        return self._iterate(state, MOST_NEWTON, patient=False)
+
+    def _iterate(self, state: State, most: int, patient: bool) -> Outcome:
+        """The iteration; ``patient``: full steps as long as they lower the merit, though they may not shrink."""
         first = here = self.at(state)
         scale = float(np.abs(np.nan_to_num(state.positions)).max(initial=1.0))
         least = max(STEP_LEAST_M, 8 * np.finfo(float).eps * scale)
         damping, last = DAMPING_FIRST, np.inf
-        for iteration in range(1, (most or MOST_ITERATIONS) + 1):
+        for iteration in range(1, most + 1):
             dx = self.step(here)
             size = float(np.abs(dx).max(initial=0.0))
             full = self.at(self.moved(here, dx)) if size < FARTHEST_M else None
@@ -157,7 +170,9 @@ class GaussNewton:
             # conditions and datum may have to be paid for with a larger v'Pv; then shrinking steps are the proof
             free = shrinks and (len(self.held) or self.datum.defect)
             if full is not None and (
-                free or (shrinks and no_worse(full, here)) or (gains(full, here) and not is_gross(here.whitened))
+                free
+                or (shrinks and no_worse(full, here))
+                or (gains(full, here) and (patient or not is_gross(here.whitened)))
             ):
                 here, last, damping = full, size, max(damping / 10, DAMPING_FIRST)
                 if size <= least:

@@ -67,6 +67,8 @@ class Solution:
     iterations: int
     assumed: tuple[str, ...]
     """Sentences on what the program chose where nothing was given: origin, north, scale, height."""
+    doubtful: tuple[tuple[tuple[int, int], float], ...] = ()
+    """((block, row), computed minus observed in metres or radians) of readings that starting routes disagreed about."""
     free: Solution | None = None
     """The free stage before this one: the readings alone, fitted to the control; None where it adds nothing."""
 

@@ -160,7 +160,7 @@ def solution_at(job: Job, ready: Setting, last: Linear, cofactors: Cofactors, it
     return Solution(
         job, ready.network, design, last.state.positions, last.state.groups, last.whitened, cofactors,
         last.numbers.coefficients, residuals, design.observed + residuals, parts, total, iterations,
-        ready.start.assumed,
+        ready.start.assumed, ready.start.doubtful,
     )  # fmt: skip
 
 

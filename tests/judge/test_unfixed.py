@@ -334,6 +334,7 @@ def test_a_long_chain_does_not_exhaust_the_stack() -> None:
 def test_the_reading_that_fights_is_named_with_its_amount(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """With the iterations cut short; left to itself the damped iteration settles on most of these too."""
     monkeypatch.setattr("adjust.solver.gauss.MOST_ITERATIONS", 4)
+    monkeypatch.setattr("adjust.solver.gauss.MOST_NEWTON", 4)
     for seed in (1, 3, 7, 17):
         sheet = sound(seed)
         folder = tmp_path / str(seed)
@@ -355,6 +356,7 @@ def test_the_reading_that_fights_is_named_with_its_amount(tmp_path: Path, monkey
 def test_pointings_that_fight_are_given_in_degrees(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """One pointing of a set of four turned half round: the iteration is stopped, since the start is good."""
     monkeypatch.setattr("adjust.solver.gauss.MOST_ITERATIONS", 4)
+    monkeypatch.setattr("adjust.solver.gauss.MOST_NEWTON", 4)
     sheet = sound(216)
     folder = sheet.write(tmp_path)
     lines = (folder / "directions.csv").read_text().splitlines()
