@@ -78,6 +78,8 @@ class Design:
     network: Network
     frame: LocalPlane
     unknowns: Unknowns
+    coupled: Bools
+    """(n,) stations whose plane and height belong to one part."""
 
     @cached_property
     def observed(self) -> Array:
@@ -175,13 +177,14 @@ class Design:
         """(m, 3) unknowns of one end."""
         found = self.unknowns.coordinate[block.stations[:, end]]
         if not self._asks_heights(block):
-            found[:, HEIGHT_PART] = -1
+            found[~self.coupled[block.stations[:, end]], HEIGHT_PART] = -1
         return found
 
     @staticmethod
     def _asks_heights(block: Block) -> bool:
         """Whether a block depends on heights. A length at ground level takes them as they stand: they scale it by
-        1.6e-7 a metre, which is no reading of a height."""
+        1.6e-7 a metre, which is no reading of a height; only where zenith angles or slopes tie plane and heights
+        together anyway does it have its partials by them."""
         return not block.surface or "both" in KINDS[block.kind].touched(block.surface)
 
     @cached_property
@@ -242,7 +245,8 @@ class Design:
         for s, (i, j) in enumerate(ends):
             by_ends = self.frame.carry(by_sight[:, :, s], self.frame.jacobian(positions, i, j, *on))
             if not self._asks_heights(block):
-                by_ends[..., HEIGHT_PART] = 0.0
+                for end, stations in enumerate((i, j)):
+                    by_ends[~self.coupled[stations], :, end, HEIGHT_PART] = 0.0
             carried.append(by_ends.reshape(*values.shape, -1))
         return values, np.concatenate(carried, axis=2), by_group
 

@@ -71,11 +71,12 @@ def model(kind: NDArray[np.str_], ends: NDArray[np.int64], above: Array, xyz: Ar
     )  # fmt: skip
 
 
-def random_space(rng: np.random.Generator, free: bool = False) -> Space:
-    """Five to nine stations within a kilometre and 300 m of height, read from nearly every station."""
-    n = int(rng.integers(5, 10))
-    cells = rng.permutation(16)[:n]
-    plane = np.stack([cells % 4, cells // 4], axis=1) * 250.0 + rng.uniform(-70, 70, (n, 2)) + [4000, 7000]
+def random_space(rng: np.random.Generator, free: bool = False, n: int = 0) -> Space:
+    """Five to nine stations (or ``n``), 250 m apart within 300 m of height, read from nearly every station."""
+    n = n or int(rng.integers(5, 10))
+    side = max(4, math.ceil(math.sqrt(1.6 * n)))
+    cells = rng.permutation(side * side)[:n]
+    plane = np.stack([cells % side, cells // side], axis=1) * 250.0 + rng.uniform(-70, 70, (n, 2)) + [4000, 7000]
     truth = np.column_stack([plane, rng.uniform(150, 450, n)])
     known = np.zeros((n, 3), dtype=bool)
     if not free:
