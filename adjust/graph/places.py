@@ -147,22 +147,17 @@ def refined(t: Ties, x: complex) -> complex:
 
     A ray misses by its offset across, a circle by its offset along the radius, both as a share of the distance.
     """
-    ee = en = nn = re = rn = 0.0
+    pulls: list[tuple[complex, float]] = []
     for ray, _ in t.rays:
         w = x - ray.start
         d = abs(w) or 1.0
-        across = (w * ray.along.conjugate()).imag / d
-        normal = 1j * ray.along / d
-        weight = 1.0 / (1.0 + (across / SPREAD) ** 2)
-        ee += weight * normal.real**2
-        en += weight * normal.real * normal.imag
-        nn += weight * normal.imag**2
-        re -= weight * normal.real * across
-        rn -= weight * normal.imag * across
+        pulls.append((1j * ray.along / d, (w * ray.along.conjugate()).imag / d))
     for circle, _ in t.circles:
         w = x - circle.centre
         d = abs(w) or 1.0
-        miss, normal = (d - circle.radius) / d, w / (d * d)
+        pulls.append((w / (d * d), (d - circle.radius) / d))
+    ee = en = nn = re = rn = 0.0
+    for normal, miss in pulls:
         weight = 1.0 / (1.0 + (miss / SPREAD) ** 2)
         ee += weight * normal.real**2
         en += weight * normal.real * normal.imag

@@ -23,6 +23,8 @@ from adjust.solver.elements import Batch, Whitened, whiten
 from adjust.solver.engine import Factor, Pattern, SingularPattern
 
 MOST_ITERATIONS, MOST_NEWTON = 60, 100
+"""Iterations by full steps, and by Newton's steps after these did not settle. Of 927 networks with a gross error 13
+settle in neither (tests/solver/any_network.py)."""
 DAMPING_FIRST, DAMPING_MOST = 1e-4, 1e12
 """Shares of the diagonal of N added at the first failure, and at the last before the iteration gives up."""
 STEP_LEAST_M = 1e-9
