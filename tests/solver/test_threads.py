@@ -36,6 +36,6 @@ def test_every_factor_is_solved_on_one_thread(monkeypatch: pytest.MonkeyPatch) -
         return solve(self, rhs)
 
     monkeypatch.setattr(Factor, "solve", watched)
-    build(adjust.assess(adjust.solve(adjust.read(ROOT / "networks" / "weir-levels"))))
+    build(adjust.assess(adjust.solve(adjust.read(ROOT / "networks" / "access-road"))))
     assert len(seen) > 3
     assert all(limits == {1} for limits in seen)
