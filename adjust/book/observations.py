@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -12,38 +11,15 @@ from adjust.book import schema
 from adjust.book.cells import Cells
 from adjust.book.faults import Faults
 from adjust.book.job import Aside
-from adjust.book.lay import Lay, lay_of
+from adjust.book.lay import lay_of
 from adjust.book.marks import Marks
 from adjust.book.settings import Settings
+from adjust.book.sheet import Sheet
+from adjust.book.stated import stated_sds
 from adjust.book.toml_lines import line_of
-from adjust.errors import nearest
 from adjust.kinds import KINDS, TABLES
 from adjust.kinds.base import OFFSET, GroupUnknown, Kind
 from adjust.network import Array, Block, Bools, Group, Ints
-from adjust.sigmas import EXAMPLES, Precision
-from adjust.units import LONGEST_M, SMALLEST_SD
-
-ZENITH_SD = "zenith"
-"""Key of an instrument's figure for zenith angles, which reduced distances need beside their own."""
-
-
-@dataclass(frozen=True)
-class Sheet:
-    """Where readings of a kind stand in a table, and what was found of them so far."""
-
-    kind: Kind
-    stations: tuple[str, ...]
-    """Columns of its stations."""
-    value: tuple[str, ...]
-    """Columns of which one holds the value."""
-    sd: str = "sd"
-    what: str = ""
-    """Added to the name of a row that holds several readings."""
-
-    @classmethod
-    def of(cls, kind: Kind) -> Sheet:
-        """The kind's own table."""
-        return cls(kind, kind.stations, kind.value)
 
 
 class Observations:
@@ -72,10 +48,10 @@ class Observations:
     ) -> None:
         """Take over the rows ``use`` of a table; ``values`` gives (n,) values, ``held`` (n,) those without error."""
         kind = sheet.kind
-        names = [cells.names(column, use, self.booked) for column in sheet.stations]
+        names = sheet.names or tuple(cells.names(column, use, self.booked) for column in sheet.stations)
         use = self._distinct(cells, sheet, names, use)
         lay = lay_of(cells, kind, values(use), use, self.settings.frame.refraction.value)
-        sd, precision = self._sds(cells, sheet, lay, held, use)
+        sd, precision = stated_sds(self.settings, cells, sheet, lay, held, use)
         group = self._groups(cells, kind, names, use)
         setup = self._setups(cells, names[0])
         offset = _offsets(cells, kind, use)
@@ -137,7 +113,7 @@ class Observations:
             if not kind.stations and kind.group and kind.group.setting in self._of_setting
         ]
 
-    def _numbers(self, names: list[list[str]], use: list[int]) -> Ints:
+    def _numbers(self, names: tuple[list[str], ...], use: list[int]) -> Ints:
         index = self.marks.index
         return np.array([[index[column[i]] for column in names] for i in use], dtype=np.int64).reshape(
             len(use), len(names)
@@ -166,7 +142,7 @@ class Observations:
             (self.left_out if use[i] == "no" else self.planned).append(aside)
         return [i for i in everything if use[i] == "yes"]
 
-    def _distinct(self, cells: Cells, sheet: Sheet, names: list[list[str]], use: list[int]) -> list[int]:
+    def _distinct(self, cells: Cells, sheet: Sheet, names: tuple[list[str], ...], use: list[int]) -> list[int]:
         """A reading runs between different stations."""
         kept = []
         for i in use:
@@ -205,94 +181,6 @@ class Observations:
             return np.zeros(len(cells), dtype=bool)
         return np.array([role == "held" for role in cells.choices("role", use)], dtype=bool)
 
-    def _sds(self, cells: Cells, sheet: Sheet, lay: Lay, held: Bools, use: list[int]) -> tuple[Array, list[str]]:
-        """Standard deviations (n,) from the column sd or the instrument, and the label of their source."""
-        kind = sheet.kind
-        sd = cells.sds(sheet.sd, kind.dimension, use)
-        labels = ["sd"] * len(cells)
-        # read for every row, also where a row's own sd makes them needless: what cannot be meant is a fault anyway
-        sizes = {c: cells.values(c, use) for c in (kind.length_column, kind.setup_column, "count") if c}
-        blank = cells.text(sheet.sd)
-        lacking = [i for i in use if not blank[i] and not held[i]]
-        by_model: dict[str, list[int]] = {}
-        for i in lacking:
-            name = cells.text("instrument")[i] or cells.table.instrument
-            by_model.setdefault(name, []).append(i)
-        for name, rows in by_model.items():
-            found = self._model(cells, sheet, name, rows)
-            if found:
-                label, model = found
-                own = self._model_sd(cells, kind, model, lay.values, sizes, rows)
-                zenith = self.settings.instruments[label].get(ZENITH_SD)
-                sd[rows] = lay.sd(rows, own, zenith.sd(len(rows)) if zenith else 0.0)
-                for i in rows:
-                    labels[i] = label
-        sd *= cells.table.sd_factor
-        for i in use:
-            if not held[i] and (sd[i] < SMALLEST_SD or sd[i] >= LONGEST_M):
-                hint = (
-                    f"the standard deviation comes to {sd[i]:g} m or rad; look at the instrument, count and sd_factor"
-                )
-                cells.fault(i, sheet.sd, blank[i], hint)
-        sd[held] = 0.0
-        return sd, labels
-
-    def _model(self, cells: Cells, sheet: Sheet, name: str, rows: list[int]) -> tuple[str, Precision] | None:
-        """The instrument's error model for this kind; exactly one must fit where none is named."""
-        kind = sheet.kind
-        key = kind.instrument.name if kind.instrument else ""
-        instruments = self.settings.instruments
-        fitting = {n: keys[key] for n, keys in instruments.items() if key in keys}
-        if name and name not in instruments:
-            self._unknown_instrument(cells, name, rows[0])
-        elif name and name not in fitting:
-            self._no_figure(cells, sheet, name, rows[0])
-        elif name:
-            return name, fitting[name]
-        elif len(fitting) == 1:
-            return next(iter(fitting.items()))
-        elif fitting:
-            hint = (
-                f"which instrument? {', '.join(fitting)} all have {key}; name one in [[book]] or in a column instrument"
-            )
-            cells.fault(rows[0], "instrument", "", hint)
-        else:
-            self._no_figure(cells, sheet, "NAME", rows[0])
-        return None
-
-    def _no_figure(self, cells: Cells, sheet: Sheet, name: str, i: int) -> None:
-        """Neither the row nor an instrument tells the standard deviation."""
-        hint, kind = f"no standard deviation: add a column {sheet.sd}", sheet.kind
-        if kind.instrument:
-            figure = EXAMPLES[kind.instrument.dimension].partition(" or ")[0].removesuffix(" (sum)")
-            hint += f", or for example {kind.instrument.name} = {figure} under [instruments.{name}] in job.toml"
-        cells.fault(i, sheet.sd, "", hint)
-
-    def _unknown_instrument(self, cells: Cells, name: str, i: int) -> None:
-        """The name stands in the row, or else in the table's [[book]] block."""
-        hint = f"no such instrument; add [instruments.{name}]; {nearest(name, self.settings.instruments)}"
-        if cells.text("instrument")[i]:
-            cells.fault(i, "instrument", name, hint)
-        else:
-            line = line_of(self.settings.lines, f"{cells.table.path}.instrument")
-            self.faults.add("job.toml", line, "book.instrument", name, hint)
-
-    def _model_sd(
-        self, cells: Cells, kind: Kind, model: Precision, values: Array, sizes: dict[str, Array], rows: list[int]
-    ) -> Array:
-        given: dict[str, Array] = {"distance": values[rows]}
-        for need, column in (("length", kind.length_column), ("setup", kind.setup_column)):
-            if column and need in model.needs:
-                given[need] = sizes[column][rows]
-                blank = cells.text(column)
-                for i in rows:
-                    if not blank[i]:
-                        hint = f'the instrument\'s "{model.text}" needs the {column} of the line; fill it or give sd'
-                        cells.fault(i, column, "", hint)
-        count = sizes["count"][rows]
-        count = np.where(np.isnan(count), 1.0, count)
-        return model.sd(len(rows), **given) * np.sqrt(kind.pointings / count)
-
     def _setups(self, cells: Cells, standing: list[str]) -> list[int]:
         """Number of each row's set-up: by station and name through the job, else one a station and table."""
         named = cells.text("setup")
@@ -310,7 +198,7 @@ class Observations:
         out = np.array([sizes[label] for label in labels], dtype=float).reshape(len(labels), 3)
         return out if out.any() else None
 
-    def _groups(self, cells: Cells, kind: Kind, names: list[list[str]], use: list[int]) -> Ints:
+    def _groups(self, cells: Cells, kind: Kind, names: tuple[list[str], ...], use: list[int]) -> Ints:
         """Number of each row's group unknown; groups are told apart by file and the kind's columns."""
         out = np.full(len(cells), -1, dtype=np.int64)
         if kind.group is None:

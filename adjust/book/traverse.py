@@ -15,7 +15,8 @@ from functools import partial
 import numpy as np
 
 from adjust.book.cells import Cells
-from adjust.book.observations import Observations, Sheet
+from adjust.book.observations import Observations
+from adjust.book.sheet import Sheet
 from adjust.kinds import KINDS
 from adjust.network import Array
 from adjust.units import TURN

@@ -1,0 +1,109 @@
+"""The stated standard deviation of every reading: its own, or that of the instrument that took it."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from adjust.book.cells import Cells
+from adjust.book.lay import Lay
+from adjust.book.settings import Settings
+from adjust.book.sheet import Sheet
+from adjust.book.toml_lines import line_of
+from adjust.errors import nearest
+from adjust.kinds.base import Kind
+from adjust.network import Array, Bools
+from adjust.sigmas import EXAMPLES, Precision
+from adjust.units import LONGEST_M, SMALLEST_SD
+
+ZENITH_SD = "zenith"
+"""Key of an instrument's figure for zenith angles, which reduced distances need beside their own."""
+
+
+def stated_sds(
+    settings: Settings, cells: Cells, sheet: Sheet, lay: Lay, held: Bools, use: list[int]
+) -> tuple[Array, list[str]]:
+    """Standard deviations (n,) from the column sd or the instrument, and the label of their source."""
+    kind = sheet.kind
+    sd = cells.sds(sheet.sd, kind.dimension, use)
+    labels = ["sd"] * len(cells)
+    # read for every row, also where a row's own sd makes them needless: what cannot be meant is a fault anyway
+    sizes = {c: cells.values(c, use) for c in (kind.length_column, kind.setup_column, "count") if c} | sheet.sizes
+    blank = cells.text(sheet.sd)
+    lacking = [i for i in use if not blank[i] and not held[i]]
+    by_model: dict[str, list[int]] = {}
+    for i in lacking:
+        name = cells.text("instrument")[i] or cells.table.instrument
+        by_model.setdefault(name, []).append(i)
+    for name, rows in by_model.items():
+        found = _model(settings, cells, sheet, name, rows)
+        if found:
+            label, model = found
+            own = _model_sd(cells, kind, model, lay.values, sizes, rows)
+            zenith = settings.instruments[label].get(ZENITH_SD)
+            sd[rows] = lay.sd(rows, own, zenith.sd(len(rows)) if zenith else 0.0)
+            for i in rows:
+                labels[i] = label
+    sd *= cells.table.sd_factor
+    for i in use:
+        if not held[i] and (sd[i] < SMALLEST_SD or sd[i] >= LONGEST_M):
+            hint = f"the standard deviation comes to {sd[i]:g} m or rad; look at the instrument, count and sd_factor"
+            cells.fault(i, sheet.sd, blank[i], hint)
+    sd[held] = 0.0
+    return sd, labels
+
+
+def _model(settings: Settings, cells: Cells, sheet: Sheet, name: str, rows: list[int]) -> tuple[str, Precision] | None:
+    """The instrument's error model for this kind; exactly one must fit where none is named."""
+    kind = sheet.kind
+    key = kind.instrument.name if kind.instrument else ""
+    instruments = settings.instruments
+    fitting = {n: keys[key] for n, keys in instruments.items() if key in keys}
+    if name and name not in instruments:
+        _unknown_instrument(settings, cells, name, rows[0])
+    elif name and name not in fitting:
+        _no_figure(cells, sheet, name, rows[0])
+    elif name:
+        return name, fitting[name]
+    elif len(fitting) == 1:
+        return next(iter(fitting.items()))
+    elif fitting:
+        hint = f"which instrument? {', '.join(fitting)} all have {key}; name one in [[book]] or in a column instrument"
+        cells.fault(rows[0], "instrument", "", hint)
+    else:
+        _no_figure(cells, sheet, "NAME", rows[0])
+    return None
+
+
+def _no_figure(cells: Cells, sheet: Sheet, name: str, i: int) -> None:
+    """Neither the row nor an instrument tells the standard deviation."""
+    hint, kind = f"no standard deviation: add a column {sheet.sd}", sheet.kind
+    if kind.instrument:
+        figure = EXAMPLES[kind.instrument.dimension].partition(" or ")[0].removesuffix(" (sum)")
+        hint += f", or for example {kind.instrument.name} = {figure} under [instruments.{name}] in job.toml"
+    cells.fault(i, sheet.sd, "", hint)
+
+
+def _unknown_instrument(settings: Settings, cells: Cells, name: str, i: int) -> None:
+    """The name stands in the row, or else in the table's [[book]] block."""
+    hint = f"no such instrument; add [instruments.{name}]; {nearest(name, settings.instruments)}"
+    if cells.text("instrument")[i]:
+        cells.fault(i, "instrument", name, hint)
+    else:
+        line = line_of(settings.lines, f"{cells.table.path}.instrument")
+        cells.faults.add("job.toml", line, "book.instrument", name, hint)
+
+
+def _model_sd(
+    cells: Cells, kind: Kind, model: Precision, values: Array, sizes: dict[str, Array], rows: list[int]
+) -> Array:
+    given: dict[str, Array] = {"distance": values[rows]}
+    for need, column in (("length", kind.length_column), ("setup", kind.setup_column)):
+        if column and need in model.needs:
+            given[need] = sizes[column][rows]
+            for i in rows:
+                if np.isnan(sizes[column][i]) and not cells.text(column)[i]:
+                    hint = f'the instrument\'s "{model.text}" needs the {column} of the line; fill it or give sd'
+                    cells.fault(i, column, "", hint)
+    count = sizes["count"][rows]
+    count = np.where(np.isnan(count), 1.0, count)
+    return model.sd(len(rows), **given) * np.sqrt(kind.pointings / count)
