@@ -12,6 +12,8 @@ zenith, elevation                         a zenith angle from 0 to half a circle
 estimate                                  a pure number, or one with its standard deviation: "0.13 +- 0.05"
 sd                                        a standard deviation in the small unit of the column it belongs to
 precision                                 an error model such as "1.5 mm + 2 ppm" or ["1.5 mm", "2 ppm"]
+allowance                                 how large a misclosure may be: "12 mm*sqrt(km)", "1:10000", or a list
+rules                                     "NAME: CLASS" of a rule, or a list of such
 date, list                                TOML date, TOML list of text
 """
 
@@ -36,4 +38,4 @@ class Field:
     above: float | None = None
     """Value that must be exceeded (in SI units)."""
     dimension: str = ""
-    """For ``precision``: length, angle or rise."""
+    """For ``precision``: length, angle or rise; for ``allowance``: length or angle."""

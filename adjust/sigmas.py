@@ -16,7 +16,7 @@ from adjust.units import ANGLES, LENGTHS, SMALLEST_SD, BadValue, parse_number
 
 Array = NDArray[np.float64]
 
-_TERM = re.compile(r"([-+]?[\d.,]+(?:[eE][-+]?\d+)?)\s*([A-Za-z-]+)\s*(?:[*·x]\s*sqrt\(\s*([A-Za-z-]+)\s*\))?")
+TERM = re.compile(r"([-+]?[\d.,]+(?:[eE][-+]?\d+)?)\s*([A-Za-z-]+)\s*(?:[*·x]\s*sqrt\(\s*([A-Za-z-]+)\s*\))?")
 
 
 EXAMPLES = {
@@ -81,7 +81,7 @@ def parse_precision(value: object, dimension: str, decimal: str = ".") -> Precis
 
 
 def _term(text: str, dimension: str, decimal: str) -> Term:
-    match = _TERM.fullmatch(text)
+    match = TERM.fullmatch(text)
     if not match:
         raise BadValue(f'"{text}" is no number with a unit; write it like {EXAMPLES[dimension]}')
     if "," in match[1]:  # the decimal mark of [units] is that of the tables

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import hashlib
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 
 from adjust.book.csv_rows import read_rows
 from adjust.book.faults import Faults
+from adjust.book.rules import Tolerance
 from adjust.book.settings import Settings, Table
 from adjust.book.toml_lines import line_of
 from adjust.errors import InputError
@@ -39,6 +40,7 @@ class Job:
     left_out: tuple[Aside, ...] = ()
     planned: tuple[Aside, ...] = ()
     warnings: tuple[str, ...] = ()
+    tolerance: Tolerance = field(default_factory=Tolerance)
 
     def booked(self, file: str, columns: tuple[str, ...] = ()) -> dict[int, tuple[str, ...]]:
         """The value cells of a table of observations by line, read again from the file.

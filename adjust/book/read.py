@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -15,6 +16,7 @@ from adjust.book.job import Job
 from adjust.book.marks import Marks
 from adjust.book.names import near_duplicates
 from adjust.book.observations import Observations
+from adjust.book.rules import resolve
 from adjust.book.settings import Settings, Table, read_settings
 from adjust.book.toml_lines import line_of
 from adjust.book.traverse import add_traverse
@@ -145,6 +147,11 @@ class _JobReader:
             elif one.table.kind == "traverse":
                 add_traverse(observations, one)
         pairs = [pair for one in cells if one.table.kind == "pairs" for pair in self._pairs(one, marks, booked)]
+        tolerance, files = resolve(
+            self.settings.allowances, self.settings.rules, line_of(self.settings.lines, "tolerance.rule"), self.folder,
+            self.faults,
+        )  # fmt: skip
+        self.inputs += files
         self._check_datum(marks)
         self._warn(tables, marks)
         if not self.faults.all and not any(len(b) for b in observations.blocks):
@@ -152,7 +159,7 @@ class _JobReader:
                 "job.toml", 0, "", "", "the job has no readings; add a table such as distances.csv or levelled.csv"
             )
         self.faults.stop()
-        return self._job(tables, marks, observations, pairs)
+        return replace(self._job(tables, marks, observations, pairs), tolerance=tolerance)
 
     def _job(self, tables: list[Table], marks: Marks, observations: Observations, pairs: list[tuple[int, int]]) -> Job:
         blocks = [*observations.settings_blocks(), *observations.blocks, *marks.weighted()]

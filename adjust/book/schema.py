@@ -51,6 +51,16 @@ TESTS = (
     Field("variance_factor", "choice", "given: the stated standard deviations are trusted; from-residuals: only their "
           "ratios are, and the residuals set the scale", default="given", choices=("given", "from-residuals")),
 )  # fmt: skip
+TOLERANCE = (
+    Field("levelling", "allowance", "largest misclosure of level loops, of runs between known heights, and of the two "
+          "runnings of a section", dimension="length"),
+    Field("traverse", "allowance", "largest linear misclosure of a traverse after its angles are balanced",
+          dimension="length"),
+    Field("angular", "allowance", "largest angular misclosure of a traverse or triangle of n angles",
+          dimension="angle"),
+    Field("rule", "rules", "a published rule and its class, or a list of such: \"usa-levelling-1984: third order\"; "
+          "a TOML file of the same form in the job folder is a rule too"),
+)  # fmt: skip
 BOOK_UNITS = tuple(Field(f.name, f.type, f.meaning + " (in this table)", choices=f.choices) for f in UNITS[:3])
 BOOK = (
     Field("file", "text", "name of the table; left out: KIND.csv"),
@@ -90,6 +100,7 @@ SECTIONS: dict[str, tuple[Field, ...]] = {
     "instruments.*": instrument_keys(),
     "book": BOOK,
     "tests": TESTS,
+    "tolerance": TOLERANCE,
 }
 """Sections of job.toml; '' is the top, 'instruments.*' every instrument, 'book' every [[book]] block."""
 

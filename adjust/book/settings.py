@@ -9,6 +9,7 @@ import tomllib
 from dataclasses import dataclass, field
 from typing import Any
 
+from adjust.allowances import Allowance, parse_allowance
 from adjust.book import schema
 from adjust.book.faults import Faults
 from adjust.book.toml_lines import key_lines, line_of
@@ -92,6 +93,10 @@ class Settings:
     known_units: bool
     """False: the units are missing, so values are not read (the fault is already noted)."""
     frame: Frame = Frame()
+    allowances: dict[str, Allowance] = field(default_factory=dict)
+    """What [tolerance] itself allows, by key."""
+    rules: tuple[str, ...] = ()
+    """Rules that [tolerance] names, with their classes."""
     lines: dict[str, int] = field(default_factory=dict)
     """Line of every key of job.toml by its dotted path."""
 
@@ -139,8 +144,10 @@ class _Reader:
             return field.default
         if field.type == "table":
             return value
-        if field.type == "precision":
-            return self.precision(path, value, field)
+        if field.type in ("precision", "allowance"):
+            return self.parsed(path, value, field)
+        if field.type == "rules":
+            return self.rules(path, value)
         if field.type in ("length", "estimate") and isinstance(value, int | float) and not isinstance(value, bool):
             return repr(value)
         if not isinstance(value, str):
@@ -165,12 +172,19 @@ class _Reader:
             return float(value)
         return field.default
 
-    def precision(self, path: str, value: object, field: Field) -> Precision | None:
+    def parsed(self, path: str, value: object, field: Field) -> Precision | Allowance | None:
         try:
-            return parse_precision(value, field.dimension)
+            return (parse_precision if field.type == "precision" else parse_allowance)(value, field.dimension)
         except BadValue as bad:
             self.fault(path, value, str(bad))
             return None
+
+    def rules(self, path: str, value: object) -> tuple[str, ...]:
+        texts = [value] if isinstance(value, str) else value
+        if isinstance(texts, list) and texts and all(isinstance(t, str) for t in texts):
+            return tuple(texts)
+        self.fault(path, value, 'must name a rule and its class: "usa-levelling-1984: third order"')
+        return ()
 
 
 _TOML_HINTS = {
@@ -198,10 +212,11 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         faults.add("job.toml", line, "", shown, f"not TOML: {_toml_hint(message.partition(' (at')[0].lower())}")
         return None
     r = _Reader(text, faults)
-    top = r.section("", job, schema.JOB, ignore=("units", "datum", "instruments", "book", "tests", "frame"))
+    top = r.section("", job, schema.JOB, ignore=tuple(name.partition(".")[0] for name in schema.SECTIONS if name))
     units = r.section("units", job.get("units", {}), schema.UNITS)
     datum = r.section("datum", job.get("datum", {}), schema.DATUM)
     tests = r.section("tests", job.get("tests", {}), schema.TESTS)
+    tolerance = r.section("tolerance", job.get("tolerance", {}), schema.TOLERANCE)
     if datum["stations"] and datum["kind"] != "free":
         r.fault(
             "datum.stations", datum["stations"], 'stations carry the datum of a free network only; set kind = "free"'
@@ -219,6 +234,8 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         books=_books(r, job.get("book"), job_units),
         known_units=bool(units["length"] and units["angle"]),
         frame=_frame(r, job.get("frame", {}), job_units),
+        allowances={key: value for key, value in tolerance.items() if key != "rule" and value},
+        rules=tolerance["rule"] or (),
         lines=r.lines,
     )
 

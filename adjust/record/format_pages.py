@@ -11,6 +11,7 @@ from collections.abc import Iterable
 from pathlib import Path
 
 from adjust.book import schema
+from adjust.book.rules import CONFIDENCES, SUBJECTS, built_in, built_in_rule
 from adjust.caution import CAUTION
 from adjust.fields import Field
 from adjust.kinds import TABLES
@@ -21,7 +22,7 @@ from adjust.units import ANGLES, LENGTHS
 TYPES = {
     "text": "text", "station": "station name", "choice": "one of", "number": "number", "length": "length",
     "circle": "angle from 0 to below a full circle", "bearing": "quadrant bearing", "sd": "standard deviation",
-    "precision": "error model",
+    "precision": "error model", "allowance": "allowance", "rules": "rule and class",
     "course": "quadrant bearing or azimuth", "zenith": "zenith angle", "elevation": "elevation angle with its sign",
     "estimate": "number, or number +- standard deviation",
     "date": "date", "list": "list of names", "table": "table",
@@ -49,6 +50,8 @@ Nothing is ever written to the inputs.
   `deg`, `packed` and `mil`, in milligon for `gon`, or carry their own unit.
 - **Error models**: `"1.5 mm + 2 ppm"` adds linearly; `["1.5 mm", "2 ppm"]` is the root of the sum of squares;
   `"1.2 mm*sqrt(km)"` and `"0.4 mm*sqrt(setup)"` for levelling. An angle has two pointings: sqrt(2) times a direction.
+- **Allowances** of misclosures: `"12 mm*sqrt(km)"`, `"5 mm*sqrt(setup)"`, `"10 sec*sqrt(n)"` with n angles, `"1:10000"`
+  of the length, sums with ` + `; of a list the smallest counts. [The rules](rules.md) that come with the program.
 - **Names** are any text without control characters, compared exactly. Names that look alike are warned about.
 - An observation's `id` is the given one, else `FILE:LINE` (the physical line where its row begins).
 """
@@ -95,6 +98,43 @@ def formats_page() -> str:
     return "\n".join(parts)
 
 
+RULES_HEAD = """# Closure rules
+
+Made from `adjust/rules/*.toml` by `python -m adjust.record.format_pages docs`; do not edit.
+
+Name a rule and its class in job.toml, `[tolerance] rule = "NAME: CLASS"`, or a list of such. Rules change: each says
+its edition, and how sure its figures are. To meet a rule here is arithmetic on these readings by that edition; local
+rules may be stricter. A rule of your own is a file of the same form in the job folder:
+
+```toml
+title = "Our office's rule for building sites"
+body = "Tarnel Weir survey office"
+edition = "2026"
+
+[[limit]]
+class = "site"
+of = "level loops"
+formula = "10 mm*sqrt(km)"
+section = "2"
+```
+
+A limit is of: OF.
+"""
+
+
+def rules_page() -> str:
+    """docs/rules.md: every rule that comes with the program."""
+    parts = [RULES_HEAD.replace("OF", ", ".join(f"`{of}`" for of in SUBJECTS))]
+    for name in built_in():
+        rule = built_in_rule(name)
+        note = f" Note: {rule.note}." if rule.note else ""
+        parts.append(f"## {name}\n\n{rule.title}. {rule.body}, edition {rule.edition}.{note}\n")
+        rows = ["| class | of | allowed | how sure |", "|---|---|---|---|"]
+        rows += [f"| {c} | {x.of} | {x.allowance.text} | {CONFIDENCES[x.confidence]} |" for c, x in rule.limits]
+        parts.append("\n".join(rows) + "\n")
+    return "\n".join(parts)
+
+
 def _table(fields: Iterable[Field], first: str) -> str:
     rows = [f"| {first} | what | meaning |", "|---|---|---|"]
     for f in fields:
@@ -116,6 +156,7 @@ def pages() -> dict[str, str]:
     """Every generated file of docs by name."""
     return {
         "formats.md": formats_page(),
+        "rules.md": rules_page(),
         "job.schema.json": json.dumps(job_schema(), indent=1) + "\n",
         "record.schema.json": json.dumps(record_schema(), indent=1) + "\n",
     }

@@ -61,6 +61,7 @@ def job_schema() -> dict[str, Any]:
         "frame": sections["frame"],
         "datum": sections["datum"],
         "tests": sections["tests"],
+        "tolerance": sections["tolerance"],
         "instruments": {"type": "object", "additionalProperties": sections["instruments.*"]},
         "book": {"type": "array", "items": sections["book"]},
     }
@@ -85,6 +86,6 @@ def _job_value(field: Field) -> dict[str, Any]:
         return {"type": ["number", "string"]}
     if field.type == "list":
         return {"type": "array", "items": {"type": "string"}}
-    if field.type == "precision":
+    if field.type in ("precision", "allowance", "rules"):
         return {"type": ["string", "array"], "items": {"type": "string"}}
     return {"type": "string", **({"enum": list(field.choices)} if field.choices else {})}

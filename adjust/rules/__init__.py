@@ -1,0 +1,1 @@
+"""Closure rules as dated data; adjust.book.rules reads them."""
