@@ -14,6 +14,10 @@ sd                                        a standard deviation in the small unit
 precision                                 an error model such as "1.5 mm + 2 ppm" or ["1.5 mm", "2 ppm"]
 allowance                                 how large a misclosure may be: "12 mm*sqrt(km)", "1:10000", or a list
 rules                                     "NAME: CLASS" of a rule, or a list of such
+temperature, pressure, humidity, ppm      degrees Celsius, hPa, per cent, parts per million, or with their own unit
+wavelength                                a length, written with its unit: "658 nm"
+air                                       a table of temperature, pressure, humidity or ppm
+words                                     a list of some of the choices
 date, list                                TOML date, TOML list of text
 """
 

@@ -22,6 +22,10 @@ ANGLES = {
     "rad": 1.0, "deg": math.pi / 180, "min": math.pi / 10800, "sec": math.pi / 648000,
     "gon": math.pi / 200, "mgon": math.pi / 200000, "mil": math.pi / 3200,
 }  # fmt: skip
+TEMPERATURES = {"C": (1.0, 0.0), "F": (5 / 9, -160 / 9), "K": (1.0, -273.15)}
+"""Factor and shift to degrees Celsius."""
+PRESSURES = {"hPa": 1.0, "mbar": 1.0, "kPa": 10.0, "mmHg": 1013.25 / 760, "inHg": 25.4 * 1013.25 / 760}
+"""In hectopascal; a standard atmosphere of 1013.25 hPa is 760 mm of mercury."""
 JOB_LENGTHS = ("m", "ft", "us-ft")
 JOB_ANGLES = ("dms", "deg", "gon", "mil", "packed")
 
@@ -91,6 +95,23 @@ def parse_length(text: str, unit: str, decimal: str = ".") -> float:
     if not abs(value) < LONGEST_M:
         raise BadValue("too large for a length")
     return value
+
+
+def parse_temperature(text: str, decimal: str = ".") -> float:
+    """A temperature in degrees Celsius; "72 F" and "295 K" say so."""
+    number, own = _split_unit(text.replace("°", " "))
+    if own and own not in TEMPERATURES:
+        raise BadValue(f"{own} is no unit of temperature; use one of {', '.join(TEMPERATURES)}")
+    factor, shift = TEMPERATURES[own or "C"]
+    return parse_number(number, decimal) * factor + shift
+
+
+def parse_pressure(text: str, decimal: str = ".") -> float:
+    """An air pressure in hectopascal; "29.9 inHg" says so."""
+    number, own = _split_unit(text)
+    if own and own not in PRESSURES:
+        raise BadValue(f"{own} is no unit of pressure; use one of {', '.join(PRESSURES)}")
+    return parse_number(number, decimal) * PRESSURES[own or "hPa"]
 
 
 def small_angle_unit(notation: str) -> str:

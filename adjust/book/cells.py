@@ -10,6 +10,7 @@ from adjust.book import schema
 from adjust.book.csv_rows import Rows
 from adjust.book.faults import Faults
 from adjust.book.settings import Table
+from adjust.book.weather import AIR_TYPES, parse_air
 from adjust.errors import nearest
 from adjust.fields import Field
 from adjust.network import Array
@@ -118,6 +119,8 @@ class Cells:
             return lambda text: parse_circle(text, units.angle, units.decimal)
         if field.type == "bearing":
             return lambda text: parse_bearing(text, units.angle, units.decimal)
+        if field.type in AIR_TYPES:
+            return lambda text: parse_air(field.type, text, units.decimal)
         if field.type in _ANGULAR:
             return lambda text: _ANGULAR[field.type](text, units.angle, units.decimal)
         return lambda text: _bounded(parse_number(text, units.decimal), field)

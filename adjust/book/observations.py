@@ -9,10 +9,12 @@ import numpy as np
 
 from adjust.book import schema
 from adjust.book.cells import Cells
+from adjust.book.distance_ledger import Corrected, correct, ledger_in_order
 from adjust.book.faults import Faults
 from adjust.book.job import Aside
 from adjust.book.lay import lay_of
 from adjust.book.marks import Marks
+from adjust.book.reductions import LedgerLine
 from adjust.book.settings import Settings
 from adjust.book.sheet import Sheet
 from adjust.book.stated import stated_sds
@@ -31,6 +33,7 @@ class Observations:
         self.groups: list[Group] = []
         self.left_out: list[Aside] = []
         self.planned: list[Aside] = []
+        self.ledger: list[LedgerLine] = []
         self._ids: dict[str, str] = {}
         self._of_setting: dict[str, int] = {}
         """Number of the group unknown of each setting that is estimated."""
@@ -50,7 +53,10 @@ class Observations:
         kind = sheet.kind
         names = sheet.names or tuple(cells.names(column, use, self.booked) for column in sheet.stations)
         use = self._distinct(cells, sheet, names, use)
-        lay = lay_of(cells, kind, values(use), use, self.settings.frame.refraction.value)
+        ids = self._row_names(cells, sheet)
+        measured = values(use)
+        corrected = correct(self.settings, cells, ids, measured, use) if kind.says == "length" else Corrected(measured)
+        lay = lay_of(cells, kind, corrected.values, use, self.settings.frame.refraction.value)
         sd, precision = stated_sds(self.settings, cells, sheet, lay, held, use)
         group = self._groups(cells, kind, names, use)
         setup = self._setups(cells, names[0])
@@ -61,6 +67,7 @@ class Observations:
                     self.marks.number(column[i])
         if self.faults.all:
             return
+        self.ledger += ledger_in_order(corrected, lay, ids, use)
         chosen = np.array(use, dtype=np.int64)
         setting = self.settings.frame.refraction if kind.group and kind.group.setting else None
         self.blocks.append(
@@ -79,7 +86,9 @@ class Observations:
                 above=None if lay.above is None else lay.above[chosen],
                 offset=offset,
                 constant=np.full(len(use), setting.value) if setting else None,
-                corrections=tuple((name, amount[chosen]) for name, amount in lay.corrections),
+                corrections=tuple(
+                    (name, amount[chosen]) for name, amount in (*corrected.corrections, *lay.corrections)
+                ),
                 booked=() if cells.table.kind == kind.table else sheet.value,
                 setup=np.array([setup[i] for i in use], dtype=np.int64),
                 eccentric=self._eccentric(kind, [precision[i] for i in use]),
@@ -92,7 +101,15 @@ class Observations:
         ids = cells.text("id")
         if not sheet.what:
             return tuple(ids[i] for i in use) if any(ids) else ()
-        return tuple(f"{ids[i] or f'{cells.rows.file}:{cells.rows.lines[i]}'} {sheet.what}" for i in use)
+        names = Observations._row_names(cells, sheet)
+        return tuple(names[i] for i in use)
+
+    @staticmethod
+    def _row_names(cells: Cells, sheet: Sheet) -> list[str]:
+        """What the reading of every row is called: its identification, else FILE:LINE."""
+        ids, what = cells.text("id"), f" {sheet.what}" if sheet.what else ""
+        file = cells.rows.file
+        return [f"{own or f'{file}:{line}'}{what}" for own, line in zip(ids, cells.rows.lines, strict=True)]
 
     def settings_blocks(self) -> list[Block]:
         """Settings that are observations of their own: the coefficient of refraction, where a reading needs it."""

@@ -159,7 +159,9 @@ class _JobReader:
                 "job.toml", 0, "", "", "the job has no readings; add a table such as distances.csv or levelled.csv"
             )
         self.faults.stop()
-        return replace(self._job(tables, marks, observations, pairs), tolerance=tolerance)
+        return replace(
+            self._job(tables, marks, observations, pairs), tolerance=tolerance, ledger=tuple(observations.ledger)
+        )
 
     def _job(self, tables: list[Table], marks: Marks, observations: Observations, pairs: list[tuple[int, int]]) -> Job:
         blocks = [*observations.settings_blocks(), *observations.blocks, *marks.weighted()]

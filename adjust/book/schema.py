@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from adjust.fields import Field
 from adjust.kinds import KINDS, TABLES
+from adjust.kinds.base import AIR
 from adjust.units import JOB_ANGLES, JOB_LENGTHS
 
 REFRACTION = "0.13"
@@ -61,6 +62,19 @@ TOLERANCE = (
     Field("rule", "rules", "a published rule and its class, or a list of such: \"usa-levelling-1984: third order\"; "
           "a TOML file of the same form in the job folder is a rule too"),
 )  # fmt: skip
+APPLIED = ("reflector", "constant", "scale", "atmosphere")
+WEATHER = AIR
+REFLECTORS = (
+    Field("constant", "length", 'added to every distance to it, with its sign and unit: "-30 mm"', required=True),
+)
+METER = (
+    Field("constant", "length", "added to every distance of the instrument, from its calibration: \"0.8 mm\""),
+    Field("scale", "ppm", "calibrated scale: parts per million of every distance to add: 1.4"),
+    Field("wavelength", "wavelength", "carrier of its distance meter, from its manual: \"658 nm\""),
+    Field("zero_weather", "air", "the weather in which its own correction is zero, from its manual: "
+          "{ temperature = \"12 C\", pressure = \"1013.25 hPa\", humidity = 60 }"),
+)  # fmt: skip
+"""Keys of an instrument that measures distances; with them they are corrected."""
 BOOK_UNITS = tuple(Field(f.name, f.type, f.meaning + " (in this table)", choices=f.choices) for f in UNITS[:3])
 BOOK = (
     Field("file", "text", "name of the table; left out: KIND.csv"),
@@ -71,6 +85,10 @@ BOOK = (
     Field("surface", "choice", "where its lengths lie; ground: horizontal at the mean height of the ends; "
           "ground-from: horizontal at the instrument; slope: from instrument to target; grid or left out: on the plane "
           "itself; ellipsoid: not on a local plane", choices=SURFACES),
+    Field("reflector", "text", "the reflector of its distances; may be left out where there is only one"),
+    Field("applied", "words", "corrections of its distances that the instrument has already made; [] is none. Must be "
+          "said where the job has a reflector, weather, or an instrument's constant or scale", choices=APPLIED),
+    Field("weather", "air", "temperature, pressure and humidity, or ppm, of its distances where a row has none"),
     Field("units", "table", "units of this table where they differ from the job's: length, angle, decimal"),
 )  # fmt: skip
 
@@ -89,7 +107,7 @@ CENTRING = (
 def instrument_keys() -> tuple[Field, ...]:
     """The keys of [instruments.NAME]: the error models that the kinds ask for, and centring."""
     own = {k.instrument.name: k.instrument for k in KINDS.values() if k.instrument}
-    return (*own.values(), *CENTRING)
+    return (*own.values(), *CENTRING, *METER)
 
 
 SECTIONS: dict[str, tuple[Field, ...]] = {
@@ -98,11 +116,14 @@ SECTIONS: dict[str, tuple[Field, ...]] = {
     "frame": FRAME,
     "datum": DATUM,
     "instruments.*": instrument_keys(),
+    "reflectors.*": REFLECTORS,
+    "weather": WEATHER,
     "book": BOOK,
     "tests": TESTS,
     "tolerance": TOLERANCE,
 }
-"""Sections of job.toml; '' is the top, 'instruments.*' every instrument, 'book' every [[book]] block."""
+"""Sections of job.toml; '' is the top, 'instruments.*' every instrument, 'reflectors.*' every reflector, 'book' every
+[[book]] block."""
 
 OBSERVATION = (
     Field("sd", "sd", "final standard deviation of this reading: length unit of the table, seconds for dms, deg, "

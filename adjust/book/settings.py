@@ -10,9 +10,11 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from adjust.allowances import Allowance, parse_allowance
+from adjust.atmosphere import Air
 from adjust.book import schema
 from adjust.book.faults import Faults
 from adjust.book.toml_lines import key_lines, line_of
+from adjust.book.weather import AIR_TYPES, Meter, read_air, read_constant, read_meter
 from adjust.errors import nearest
 from adjust.fields import Field
 from adjust.kinds import KINDS
@@ -68,6 +70,10 @@ class Table:
     units: Units
     instrument: str = ""
     sd_factor: float = 1.0
+    reflector: str = ""
+    applied: tuple[str, ...] | None = None
+    """Corrections that the instrument has made; None: not said."""
+    weather: Air = field(default_factory=Air)
     surface: str = ""
     """Where its lengths are said to lie: grid (the plane itself), ground, ground-from, slope, or '' (nothing said)."""
     line: int = 0
@@ -93,6 +99,11 @@ class Settings:
     known_units: bool
     """False: the units are missing, so values are not read (the fault is already noted)."""
     frame: Frame = Frame()
+    meters: dict[str, Meter] = field(default_factory=dict)
+    """Of the instruments that say something of their distances."""
+    reflectors: dict[str, float] = field(default_factory=dict)
+    """Constants in metres by name."""
+    weather: Air = field(default_factory=Air)
     allowances: dict[str, Allowance] = field(default_factory=dict)
     """What [tolerance] itself allows, by key."""
     rules: tuple[str, ...] = ()
@@ -116,7 +127,9 @@ class _Reader:
         """Values of a section by key, defaults where absent or wrong."""
         values = {f.name: f.default for f in fields}
         if not isinstance(given, dict):
-            form = 'units = { length = "ft" }' if path.startswith("book.") else f"[{path}]"
+            inline = path.startswith(("book.", "instruments.")) and path.count(".") > 1
+            inside = 'length = "ft"' if path.endswith(".units") else 'temperature = "20 C", pressure = "950 hPa"'
+            form = f"{path.rpartition('.')[2]} = {{ {inside} }}" if inline else f"[{path}]"
             self.fault(path, given, f"must be a table: {form}")
             return values
         known = {f.name: f for f in fields}
@@ -142,10 +155,14 @@ class _Reader:
                 return value
             self.fault(path, value, 'must be a list of station names: ["M1", "M2"]')
             return field.default
-        if field.type == "table":
+        if field.type in ("table", "air"):
             return value
         if field.type in ("precision", "allowance"):
             return self.parsed(path, value, field)
+        if field.type == "words":
+            return self.words(path, value, field)
+        if field.type in AIR_TYPES and isinstance(value, int | float) and not isinstance(value, bool):
+            return repr(value)
         if field.type == "rules":
             return self.rules(path, value)
         if field.type in ("length", "estimate") and isinstance(value, int | float) and not isinstance(value, bool):
@@ -178,6 +195,13 @@ class _Reader:
         except BadValue as bad:
             self.fault(path, value, str(bad))
             return None
+
+    def words(self, path: str, value: object, field: Field) -> tuple[str, ...] | None:
+        if isinstance(value, list) and all(v in field.choices for v in value):
+            return tuple(value)
+        choices = ", ".join(f'"{c}"' for c in field.choices)
+        self.fault(path, value, f"must be a list of some of {choices}; [] where nothing was applied")
+        return None
 
     def rules(self, path: str, value: object) -> tuple[str, ...]:
         texts = [value] if isinstance(value, str) else value
@@ -221,6 +245,7 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         r.fault(
             "datum.stations", datum["stations"], 'stations carry the datum of a free network only; set kind = "free"'
         )
+    instruments, meters = _instruments(r, job.get("instruments", {}))
     job_units = Units(**{**units, "length": units["length"] or "m", "angle": units["angle"] or "dms"})
     return Settings(
         title=top["title"] or "",
@@ -230,7 +255,10 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         datum_kind=datum["kind"] or "",
         datum_stations=tuple(datum["stations"] or ()),
         tests=Tests(**tests),
-        instruments=_instruments(r, job.get("instruments", {})),
+        instruments=instruments,
+        meters=meters,
+        reflectors=_reflectors(r, job.get("reflectors", {})),
+        weather=read_air(r.section("weather", job.get("weather", {}), schema.WEATHER), r.fault, "weather"),
         books=_books(r, job.get("book"), job_units),
         known_units=bool(units["length"] and units["angle"]),
         frame=_frame(r, job.get("frame", {}), job_units),
@@ -259,14 +287,42 @@ def _shown(value: object) -> str:
     return value if isinstance(value, str) else json.dumps(value, default=str, ensure_ascii=False)
 
 
-def _instruments(r: _Reader, given: object) -> dict[str, dict[str, Precision]]:
+def _instruments(r: _Reader, given: object) -> tuple[dict[str, dict[str, Precision]], dict[str, Meter]]:
+    """Error models by instrument and key, and the distance meters of those that say something of them."""
     if not isinstance(given, dict):
         r.fault("instruments", given, "must hold one table an instrument: [instruments.station-1]")
+        return {}, {}
+    models, meters = {}, {}
+    of_meter = [f.name for f in schema.METER]
+    for name, keys in given.items():
+        path = f"instruments.{name}"
+        found = r.section(path, keys, schema.instrument_keys())
+        models[name] = {k: v for k, v in found.items() if v and k not in of_meter}
+        if any(found[k] is not None for k in of_meter):
+            zero = found["zero_weather"]
+            air = None if zero is None else _air(r, f"{path}.zero_weather", zero)
+            meters[name] = read_meter(found, air, r.fault, path)
+    return models, meters
+
+
+def _reflectors(r: _Reader, given: object) -> dict[str, float]:
+    """Constants of the reflectors by name."""
+    if not isinstance(given, dict):
+        r.fault("reflectors", given, "must hold one table a reflector: [reflectors.round]")
         return {}
-    return {
-        name: {k: v for k, v in r.section(f"instruments.{name}", keys, schema.instrument_keys()).items() if v}
-        for name, keys in given.items()
-    }
+    out = {}
+    for name, keys in given.items():
+        value = r.section(f"reflectors.{name}", keys, schema.REFLECTORS)["constant"]
+        try:
+            out[name] = 0.0 if value is None else read_constant(value)
+        except BadValue as bad:
+            r.fault(f"reflectors.{name}.constant", value, str(bad))
+    return out
+
+
+def _air(r: _Reader, path: str, given: object) -> Air:
+    """Weather written as a table."""
+    return read_air(r.section(path, given, schema.WEATHER), r.fault, path)
 
 
 def _books(r: _Reader, given: object, units: Units) -> tuple[Table, ...] | None:
@@ -304,6 +360,9 @@ def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table |
         units=Units(**{**units.__dict__, **used}),
         instrument=values["instrument"] or "",
         sd_factor=values["sd_factor"],
+        reflector=values["reflector"] or "",
+        applied=values["applied"],
+        weather=Air() if values["weather"] is None else _air(r, f"{path}.weather", values["weather"]),
         surface=_surface(r, f"{path}.surface", values["surface"] or "", kind),
         line=line_of(r.lines, f"{path}.file"),
         path=path,

@@ -102,6 +102,14 @@ ABOVE = (
     Field("target_height", "length", "height of the target above the mark `to`; blank: both are zero"),
 )
 """Columns of kinds whose sights run from instrument to target."""
+AIR = (
+    Field("temperature", "temperature", "of the air at the time of the reading, degrees C or with its unit: 72 F"),
+    Field("pressure", "pressure", "of the air there, not reduced to the sea; hPa or with its unit: 29.5 inHg"),
+    Field("humidity", "humidity", "relative humidity in per cent; left out: dry air"),
+    Field("ppm", "ppm", "correction for the atmosphere in parts per million, in place of the weather"),
+)
+REFLECTOR = Field("reflector", "text", "the reflector of this row")
+"""Columns of measured distances."""
 
 
 def azimuth(sights: Array) -> tuple[Array, Array]:

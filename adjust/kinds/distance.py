@@ -8,7 +8,7 @@ from __future__ import annotations
 import numpy as np
 
 from adjust.fields import Field
-from adjust.kinds.base import ABOVE, OFFSET, Kind
+from adjust.kinds.base import ABOVE, AIR, OFFSET, REFLECTOR, Kind
 from adjust.network import Array
 
 
@@ -45,6 +45,8 @@ KIND = Kind(
               above=0.0),
         *ABOVE,
         *OFFSET,
+        REFLECTOR,
+        *AIR,
         Field("zenith_angle", "zenith", "on the slope: reduces the distance of its row to the horizontal and is not "
               "adjusted itself; all rows of a table have one, or none"),
     ),

@@ -25,6 +25,9 @@ TYPES = {
     "precision": "error model", "allowance": "allowance", "rules": "rule and class",
     "course": "quadrant bearing or azimuth", "zenith": "zenith angle", "elevation": "elevation angle with its sign",
     "estimate": "number, or number +- standard deviation",
+    "temperature": "temperature", "pressure": "air pressure", "humidity": "relative humidity",
+    "ppm": "parts per million", "wavelength": "wavelength with its unit", "air": "table of weather",
+    "words": "list of",
     "date": "date", "list": "list of names", "table": "table",
 }  # fmt: skip
 
@@ -72,7 +75,12 @@ not be done; 70 internal error; 130 interrupted.
 def formats_page() -> str:
     """The whole page."""
     parts = [HEAD, "## job.toml\n"]
-    titles = {"": "Top of the file", "instruments.*": "[instruments.NAME]", "book": "[[book]]"}
+    titles = {
+        "": "Top of the file",
+        "instruments.*": "[instruments.NAME]",
+        "reflectors.*": "[reflectors.NAME]",
+        "book": "[[book]]",
+    }
     for name, fields in schema.SECTIONS.items():
         parts.append(f"### {titles.get(name, f'[{name}]')}\n\n{_table(fields, 'key')}")
     parts.append("## Tables\n")

@@ -52,6 +52,9 @@ def _record_value(field: Field) -> dict[str, Any]:
 def job_schema() -> dict[str, Any]:
     """The schema of job.toml as JSON; keys that are not in the table are faults."""
     sections = {name: _job_object(fields) for name, fields in book.SECTIONS.items()}
+    for section in ("book", "instruments.*"):
+        for key in {"weather", "zero_weather"} & set(sections[section]["properties"]):
+            sections[section]["properties"][key] = sections["weather"]
     book_units = _job_object(book.BOOK_UNITS)
     sections["book"]["properties"]["units"] = book_units
     sections["book"]["properties"]["kind"]["enum"] = list(book.table_names())
@@ -62,6 +65,8 @@ def job_schema() -> dict[str, Any]:
         "datum": sections["datum"],
         "tests": sections["tests"],
         "tolerance": sections["tolerance"],
+        "weather": sections["weather"],
+        "reflectors": {"type": "object", "additionalProperties": sections["reflectors.*"]},
         "instruments": {"type": "object", "additionalProperties": sections["instruments.*"]},
         "book": {"type": "array", "items": sections["book"]},
     }
@@ -82,8 +87,10 @@ def _job_value(field: Field) -> dict[str, Any]:
     if field.type == "number":
         low = {"exclusiveMinimum": field.above} if field.above is not None else {}
         return {"type": "number", **low}
-    if field.type in ("length", "estimate"):
+    if field.type in ("length", "estimate", "temperature", "pressure", "humidity", "ppm"):
         return {"type": ["number", "string"]}
+    if field.type == "words":
+        return {"type": "array", "items": {"enum": list(field.choices)}}
     if field.type == "list":
         return {"type": "array", "items": {"type": "string"}}
     if field.type in ("precision", "allowance", "rules"):
