@@ -8,7 +8,7 @@ from pathlib import Path
 
 from adjust.book.csv_rows import read_rows
 from adjust.book.faults import Faults
-from adjust.book.reductions import LedgerLine
+from adjust.book.reductions import LedgerLine, Reduction
 from adjust.book.rules import Tolerance
 from adjust.book.settings import Settings, Table
 from adjust.book.toml_lines import line_of
@@ -41,6 +41,8 @@ class Job:
     left_out: tuple[Aside, ...] = ()
     planned: tuple[Aside, ...] = ()
     warnings: tuple[str, ...] = ()
+    reductions: tuple[Reduction, ...] = ()
+    """What the reduction of the raw books gave and looked at, in the order of the tables."""
     ledger: tuple[LedgerLine, ...] = ()
     """Corrections of distances, one line each, distance by distance."""
     tolerance: Tolerance = field(default_factory=Tolerance)

@@ -14,7 +14,7 @@ from adjust.book.faults import Faults
 from adjust.book.job import Aside
 from adjust.book.lay import lay_of
 from adjust.book.marks import Marks
-from adjust.book.reductions import LedgerLine
+from adjust.book.reductions import LedgerLine, Reduction
 from adjust.book.settings import Settings
 from adjust.book.sheet import Sheet
 from adjust.book.stated import stated_sds
@@ -33,7 +33,9 @@ class Observations:
         self.groups: list[Group] = []
         self.left_out: list[Aside] = []
         self.planned: list[Aside] = []
+        self.reductions: list[Reduction] = []
         self.ledger: list[LedgerLine] = []
+        self.warnings: list[str] = []
         self._ids: dict[str, str] = {}
         self._of_setting: dict[str, int] = {}
         """Number of the group unknown of each setting that is estimated."""

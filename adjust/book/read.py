@@ -16,6 +16,7 @@ from adjust.book.job import Job
 from adjust.book.marks import Marks
 from adjust.book.names import near_duplicates
 from adjust.book.observations import Observations
+from adjust.book.rounds import add_rounds
 from adjust.book.rules import resolve
 from adjust.book.settings import Settings, Table, read_settings
 from adjust.book.toml_lines import line_of
@@ -146,6 +147,8 @@ class _JobReader:
                 observations.add(one)
             elif one.table.kind == "traverse":
                 add_traverse(observations, one)
+            elif one.table.kind == "rounds":
+                add_rounds(observations, one)
         pairs = [pair for one in cells if one.table.kind == "pairs" for pair in self._pairs(one, marks, booked)]
         tolerance, files = resolve(
             self.settings.allowances, self.settings.rules, line_of(self.settings.lines, "tolerance.rule"), self.folder,
@@ -175,7 +178,7 @@ class _JobReader:
         )
         return Job(
             self.folder, self.settings, network, tuple(tables), tuple(self.inputs),
-            tuple(observations.left_out), tuple(observations.planned), tuple(self.warnings),
+            tuple(observations.left_out), tuple(observations.planned), (*self.warnings, *observations.warnings),
         )  # fmt: skip
 
     def _cells(self, table: Table) -> Cells | None:

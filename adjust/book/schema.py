@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from adjust.fields import Field
 from adjust.kinds import KINDS, TABLES
-from adjust.kinds.base import AIR
+from adjust.kinds.base import ABOVE, AIR, OFFSET, REFLECTOR
 from adjust.units import JOB_ANGLES, JOB_LENGTHS
 
 REFRACTION = "0.13"
@@ -75,6 +75,16 @@ METER = (
           "{ temperature = \"12 C\", pressure = \"1013.25 hPa\", humidity = 60 }"),
 )  # fmt: skip
 """Keys of an instrument that measures distances; with them they are corrected."""
+REJECTION = (
+    Field("direction", "allowance", "largest difference of a set's direction from the mean of the other sets; beyond "
+          "it is left out", dimension="angle"),
+    Field("zenith", "allowance", "likewise of a zenith angle", dimension="angle"),
+    Field("distance", "allowance", "likewise of a distance", dimension="length"),
+    Field("horizon", "allowance", "largest horizon closure of a set: only judged", dimension="angle"),
+    Field("collimation", "allowance", "largest difference of a 2C from the mean of its station: only judged",
+          dimension="angle"),
+)  # fmt: skip
+"""Limits of `rounds`, declared before the work."""
 BOOK_UNITS = tuple(Field(f.name, f.type, f.meaning + " (in this table)", choices=f.choices) for f in UNITS[:3])
 BOOK = (
     Field("file", "text", "name of the table; left out: KIND.csv"),
@@ -120,6 +130,7 @@ SECTIONS: dict[str, tuple[Field, ...]] = {
     "weather": WEATHER,
     "book": BOOK,
     "tests": TESTS,
+    "rejection": REJECTION,
     "tolerance": TOLERANCE,
 }
 """Sections of job.toml; '' is the top, 'instruments.*' every instrument, 'reflectors.*' every reflector, 'book' every
@@ -162,6 +173,28 @@ TRAVERSE = (
 )  # fmt: skip
 """Columns of a traverse as booked: one row a station, up to four readings a row."""
 
+_POINTING = tuple(f for f in OBSERVATION if f.name not in ("sd", "count"))
+ROUNDS = (
+    Field("at", "station", "the occupied station", required=True),
+    Field("to", "station", "the target", required=True),
+    Field("set", "text", "name of the set; each file, station and set has one unknown orientation"),
+    Field("face", "choice", "face of the instrument: 1 or left with the vertical circle on the left, 2 or right",
+          choices=("1", "2", "left", "right"), required=True),
+    Field("horizontal_circle", "circle", "reading of the horizontal circle, as booked in this face"),
+    Field("zenith_circle", "circle", "reading of the vertical circle, from the zenith through the full circle: below "
+          "half a circle in face 1, above it in face 2"),
+    Field("slope_distance", "length", "distance from instrument to target", above=0.0),
+    *ABOVE,
+    *OFFSET,
+    REFLECTOR,
+    *AIR,
+    Field("sd_direction", "sd", "final standard deviation of the set's direction to the target", dimension="angle"),
+    Field("sd_zenith", "sd", "final standard deviation of the set's zenith angle", dimension="angle"),
+    Field("sd_distance", "sd", "final standard deviation of the set's distance"),
+    *_POINTING,
+)  # fmt: skip
+"""Columns of a total station's raw book: one row a pointing in one face."""
+
 ROLES = ("held", "weighted", "check")
 OTHER_TABLES: dict[str, tuple[Field, ...]] = {
     "control": (
@@ -185,6 +218,7 @@ OTHER_TABLES: dict[str, tuple[Field, ...]] = {
         Field("note", "text", "anything"),
     ),
     "traverse": TRAVERSE,
+    "rounds": ROUNDS,
     "booked_names": (
         Field("booked", "text", "the name as it stands in the book", required=True),
         Field("station", "station", "the station that is meant", required=True),

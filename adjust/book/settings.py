@@ -106,6 +106,8 @@ class Settings:
     weather: Air = field(default_factory=Air)
     allowances: dict[str, Allowance] = field(default_factory=dict)
     """What [tolerance] itself allows, by key."""
+    rejection: dict[str, Allowance] = field(default_factory=dict)
+    """Limits of `rounds` by key, constants in metres or radians."""
     rules: tuple[str, ...] = ()
     """Rules that [tolerance] names, with their classes."""
     lines: dict[str, int] = field(default_factory=dict)
@@ -263,9 +265,20 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         known_units=bool(units["length"] and units["angle"]),
         frame=_frame(r, job.get("frame", {}), job_units),
         allowances={key: value for key, value in tolerance.items() if key != "rule" and value},
+        rejection=_rejection(r, job.get("rejection", {})),
         rules=tolerance["rule"] or (),
         lines=r.lines,
     )
+
+
+def _rejection(r: _Reader, given: object) -> dict[str, Allowance]:
+    """Limits of rounds: plain sizes, for a set has no length and no number of angles."""
+    out = {key: value for key, value in r.section("rejection", given, schema.REJECTION).items() if value}
+    for key, value in list(out.items()):
+        if value.allowable() is None:
+            r.fault(f"rejection.{key}", value.text, 'a plain limit is meant, as in "6 sec" or "5 mm"')
+            del out[key]
+    return out
 
 
 def _frame(r: _Reader, given: object, units: Units) -> Frame:
@@ -371,6 +384,8 @@ def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table |
 
 def _surface(r: _Reader, path: str, surface: str, kind: str) -> str:
     """The surface of a table's lengths; '' where none is declared."""
+    if kind == "rounds" and not surface:
+        return "slope"  # from instrument to target, as the column says
     with_lengths = [k.table for k in KINDS.values() if k.says == "length"] + ["traverse"]
     if surface and kind not in with_lengths:
         r.fault(path, surface, f"only lengths lie on a surface ({', '.join(with_lengths)}); remove the key")

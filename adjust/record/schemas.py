@@ -66,6 +66,7 @@ def job_schema() -> dict[str, Any]:
         "tests": sections["tests"],
         "tolerance": sections["tolerance"],
         "weather": sections["weather"],
+        "rejection": sections["rejection"],
         "reflectors": {"type": "object", "additionalProperties": sections["reflectors.*"]},
         "instruments": {"type": "object", "additionalProperties": sections["instruments.*"]},
         "book": {"type": "array", "items": sections["book"]},

@@ -1,0 +1,263 @@
+"""A total station's raw book turned into directions, zenith angles and slope distances.
+
+One row is one pointing in one face. The rows of a set to one target are meaned (adjust.book.faces): first each face,
+then both; where a face is missing the reading is corrected with the collimation or index of the other pointings of its
+station and counts half. Sets are compared (adjust.book.sets): what lies outside the limits that [rejection] declares is
+left out and listed. Out come ordinary readings, one a set and target, each with the line of its first row.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from adjust.book import faces
+from adjust.book.cells import Cells
+from adjust.book.job import Aside
+from adjust.book.observations import Observations
+from adjust.book.round_checks import findings
+from adjust.book.round_words import reductions_of
+from adjust.book.sets import Outside, SetMeans, outside, set_means
+from adjust.book.sheet import Sheet
+from adjust.kinds import KINDS
+from adjust.network import Array
+from adjust.units import TURN, wrap
+
+READINGS = ("horizontal_circle", "zenith_circle", "slope_distance")
+MISLABELLED = np.deg2rad(20.0)
+"""Circle readings of one target in one face that differ by a half circle to within this are of two faces; collimation
+is minutes at the most, two targets at a station are seldom opposite to within it (common practice)."""
+SHEETS = {
+    "direction": Sheet(KINDS["direction"], ("at", "to"), ("horizontal_circle",), "sd_direction", "direction"),
+    "zenith": Sheet(KINDS["zenith_angle"], ("at", "to"), ("zenith_circle",), "sd_zenith", "zenith angle"),
+    "distance": Sheet(KINDS["distance"], ("at", "to"), ("slope_distance",), "sd_distance", "distance"),
+}
+
+
+@dataclass(frozen=True)
+class Pointing:
+    """All rows of one set to one target, reduced; angles in radians, lengths in metres, None where not observed."""
+
+    at: str
+    set: str
+    to: str
+    rows: tuple[int, ...]
+    lines: tuple[int, ...]
+    faces: tuple[int, ...]
+    """Number of readings in face 1 and in face 2."""
+    direction: float | None = None
+    two_c: float | None = None
+    zenith: float | None = None
+    index: float | None = None
+    distance: float | None = None
+    distance_spread: float | None = None
+    closure: float | None = None
+    """Last minus first reading of the target in one face of the set: the horizon closure."""
+    one_face: bool = False
+
+    @property
+    def pairs(self) -> float:
+        """Readings in both faces; a single face counts half."""
+        low, high = min(self.faces), max(self.faces)
+        return float(low) if low else high / 2
+
+
+@dataclass(frozen=True)
+class Station:
+    """Everything read at one station in one table."""
+
+    at: str
+    file: str
+    pointings: tuple[Pointing, ...]
+    means: dict[str, SetMeans]
+    """By direction, zenith and distance."""
+    out: dict[str, list[Outside]]
+    """What lies outside the declared limits."""
+
+
+def add_rounds(observations: Observations, cells: Cells) -> None:
+    """Take over one table of rounds."""
+    rows = observations.used("rounds", READINGS, cells)
+    table = _Table(observations, cells, rows)
+    if observations.faults.all:
+        return
+    stations = [_station(observations, cells, at, found) for at, found in table.by_station().items()]
+    for station in stations:
+        observations.reductions += reductions_of(
+            station, _instrument_sds(observations, cells, station), observations.settings.rejection
+        )
+        observations.warnings += findings(station)
+        _leave_out(observations, cells, station)
+    for key, sheet in SHEETS.items():
+        _take(observations, cells, sheet, key, stations)
+
+
+class _Table:
+    """The rows of a table with their values, checked."""
+
+    def __init__(self, observations: Observations, cells: Cells, rows: list[int]) -> None:
+        self.cells, self.rows = cells, rows
+        self.at = cells.names("at", rows, observations.booked)
+        self.to = cells.names("to", rows, observations.booked)
+        self.set = cells.text("set")
+        self.face = [{"1": 1, "left": 1, "2": 2, "right": 2}.get(f, 0) for f in cells.choices("face", rows)]
+        self.value = {column: cells.values(column, rows) for column in READINGS}
+        self._check()
+
+    def _check(self) -> None:
+        """Every row says something, in a face that its zenith circle can be in."""
+        if self.rows and not any(self.cells.has(column) for column in READINGS):
+            self.cells.header_fault(READINGS[0], "", "a book without readings: " + ", ".join(READINGS))
+        for i in self.rows:
+            if not any(self.cells.text(column)[i] for column in READINGS):
+                self.cells.fault(i, READINGS[0], "", "a row without a reading; fill it, or set use = no with a reason")
+            if not self.face[i] and not self.cells.text("face")[i]:
+                self.cells.fault(i, "face", "", "which face? Write 1 or 2 (left or right)")
+            self._check_zenith(i)
+
+    def _check_zenith(self, i: int) -> None:
+        v = self.value["zenith_circle"][i]
+        if np.isnan(v) or not self.face[i] or (v < TURN / 2) == (self.face[i] == 1):
+            return
+        shown = self.cells.text("zenith_circle")[i]
+        other = 2 if self.face[i] == 1 else 1
+        hint = f"a zenith circle of face {other} in a row of face {self.face[i]}: the face is mixed up; correct one"
+        self.cells.fault(i, "face", shown, hint)
+
+    def by_station(self) -> dict[str, list[Pointing]]:
+        """Reduced pointings by station, in the order of the book."""
+        groups: dict[tuple[str, str, str], list[int]] = defaultdict(list)
+        for i in self.rows:
+            groups[self.at[i], self.set[i], self.to[i]].append(i)
+        out: dict[str, list[Pointing]] = defaultdict(list)
+        for (at, in_set, to), rows in groups.items():
+            out[at].append(self._pointing(at, in_set, to, rows))
+        return {at: _with_missing_faces(found) for at, found in out.items()}
+
+    def _pointing(self, at: str, in_set: str, to: str, rows: list[int]) -> Pointing:
+        h, v, d = ([[self._value(c, i) for i in rows if self.face[i] == f] for f in (1, 2)] for c in READINGS)
+        h1, h2, v1, v2 = (_given(x) for x in (*h, *v))
+        self._check_faces(rows, h1, h2)
+        lengths = _given([*d[0], *d[1]])
+        lines = tuple(self.cells.rows.lines[i] for i in rows)
+        counts = (len(h1) or len(v1), len(h2) or len(v2)) if (h1 or h2 or v1 or v2) else (1, 1)
+        found = Pointing(at, in_set, to, tuple(rows), lines, counts, one_face=not all(counts))
+        if h1 and h2:
+            one, two = faces.circle_mean(h1), faces.circle_mean(h2)
+            found = replace(found, direction=faces.direction(one, two), two_c=faces.two_c(one, two))
+        elif h1 or h2:
+            found = replace(found, direction=(faces.circle_mean(h1 or h2) + (0 if h1 else TURN / 2)) % TURN)
+        if v1 and v2:
+            one, two = faces.circle_mean(v1), faces.circle_mean(v2)
+            found = replace(found, zenith=faces.zenith(one, two), index=faces.index(one, two))
+        elif v1 or v2:
+            found = replace(found, zenith=faces.circle_mean(v1) if v1 else TURN - faces.circle_mean(v2))
+        again = next((x for x in (h1, h2) if len(x) > 1), None)
+        return replace(
+            found,
+            distance=float(np.mean(lengths)) if lengths else None,
+            distance_spread=max(lengths) - min(lengths) if len(lengths) > 1 else None,
+            closure=wrap(again[-1] - again[0]) if again else None,
+        )
+
+    def _value(self, column: str, i: int) -> float | None:
+        x = float(self.value[column][i])
+        return None if np.isnan(x) else x
+
+    def _check_faces(self, rows: list[int], h1: list[float], h2: list[float]) -> None:
+        """Readings of one face agree; those of two faces lie half a circle apart."""
+        for readings in (h1, h2):
+            if any(abs(abs(wrap(r - readings[0])) - TURN / 2) < MISLABELLED for r in readings[1:]):
+                self.cells.fault(rows[-1], "face", self.cells.text("face")[rows[-1]],
+                                 "the circle turned by half, but the rows are of one face; correct a face")  # fmt: skip
+        if h1 and h2 and abs(wrap(h1[0] - h2[0])) < MISLABELLED:
+            self.cells.fault(rows[-1], "face", self.cells.text("face")[rows[-1]],
+                             "one circle reading in two faces; the second must lie half a circle on")  # fmt: skip
+
+
+def _given(values: list[float | None]) -> list[float]:
+    return [v for v in values if v is not None]
+
+
+def _with_missing_faces(pointings: list[Pointing]) -> list[Pointing]:
+    """Single faces corrected with the mean collimation and index of the station's other pointings."""
+    c = [p.two_c for p in pointings if p.two_c is not None]
+    i = [p.index for p in pointings if p.index is not None]
+    out = []
+    for p in pointings:
+        first = p.faces[0] > 0
+        if p.one_face and p.two_c is None and p.direction is not None and c:
+            p = replace(p, direction=(p.direction - (1 if first else -1) * sum(c) / len(c) / 2) % TURN)
+        if p.one_face and p.index is None and p.zenith is not None and i:
+            p = replace(p, zenith=p.zenith - (1 if first else -1) * sum(i) / len(i))
+        out.append(p)
+    return out
+
+
+def _station(observations: Observations, cells: Cells, at: str, pointings: list[Pointing]) -> Station:
+    means, out = {}, {}
+    for key in SHEETS:
+        values = {(p.set, p.to): x for p in pointings if (x := getattr(p, key)) is not None}
+        out[key] = []
+        limit = observations.settings.rejection.get(key)
+        if values and limit is not None:
+            out[key] = outside(values, key == "direction", limit.allowable() or 0.0)
+        kept = {k: x for k, x in values.items() if k not in {o.key for o in out[key] if o.sure}}
+        if kept:
+            means[key] = set_means(kept, key == "direction")
+    return Station(at, cells.rows.file, tuple(pointings), means, out)
+
+
+def _instrument_sds(observations: Observations, cells: Cells, station: Station) -> dict[str, float]:
+    """The instrument's own figure for one direction, zenith angle and distance, where one instrument fits."""
+    out = {}
+    row = station.pointings[0].rows[0]
+    name = cells.text("instrument")[row] or cells.table.instrument
+    for key, sheet in SHEETS.items():
+        assert sheet.kind.instrument is not None
+        models = {n: keys[sheet.kind.instrument.name] for n, keys in observations.settings.instruments.items()
+                  if sheet.kind.instrument.name in keys and (not name or n == name)}  # fmt: skip
+        if len(models) == 1:
+            lengths = [p.distance for p in station.pointings if p.distance is not None]
+            typical = np.array([float(np.mean(lengths)) if lengths else 0.0])
+            out[key] = float(next(iter(models.values())).sd(1, distance=typical)[0])
+    return out
+
+
+def _leave_out(observations: Observations, cells: Cells, station: Station) -> None:
+    """List what the declared limits reject."""
+    of = {(p.set, p.to): p for p in station.pointings}
+    for key, found in station.out.items():
+        for one in found:
+            if one.sure:
+                p = of[one.key]
+                what = SHEETS[key].what
+                limit = observations.settings.rejection[key].text
+                reason = f"outside the limit of {limit} declared in [rejection]"
+                name = f"{cells.rows.file}:{p.lines[0]} {what}"
+                observations.left_out.append(
+                    Aside(name, cells.rows.file, p.lines[0], SHEETS[key].kind.name, reason)
+                )  # fmt: skip
+
+
+def _take(observations: Observations, cells: Cells, sheet: Sheet, key: str, stations: list[Station]) -> None:
+    """Hand the readings of one kind over, one a pointing, in the order of the book."""
+    n = len(cells)
+    values, count = np.full(n, np.nan), np.full(n, np.nan)
+    for station in stations:
+        rejected = {o.key for o in station.out[key] if o.sure}
+        for p in station.pointings:
+            x = getattr(p, key)
+            if x is not None and (p.set, p.to) not in rejected:
+                values[p.rows[0]] = x
+                count[p.rows[0]] = 1.0 if key == "distance" else p.pairs
+    use = np.flatnonzero(~np.isnan(values)).tolist()
+    if not use:
+        return
+
+    def given(rows: list[int]) -> Array:
+        return values
+
+    observations.take(cells, replace(sheet, sizes={"count": count}), use, given, np.zeros(n, dtype=bool))
