@@ -163,7 +163,10 @@ class _JobReader:
             )
         self.faults.stop()
         return replace(
-            self._job(tables, marks, observations, pairs), tolerance=tolerance, ledger=tuple(observations.ledger)
+            self._job(tables, marks, observations, pairs),
+            tolerance=tolerance,
+            reductions=tuple(observations.reductions),
+            ledger=tuple(observations.ledger),
         )
 
     def _job(self, tables: list[Table], marks: Marks, observations: Observations, pairs: list[tuple[int, int]]) -> Job:

@@ -120,5 +120,6 @@ def _uneven(station: Station) -> list[str]:
     worst = max(range(k), key=lambda j: abs(means[j] - mean))
     rest = math.fsum(m for j, m in enumerate(means) if j != worst) / (k - 1)
     odd, others = (f'{x * RHO_SEC:+.0f}"' for x in (means[worst], rest))
-    return [f"{station.file}: {station.at}: 2C changes with the target: {odd} to {named[worst]}, {others} to the others "
-            "on the mean: a short sight, a tilted axis, or a target read off its middle."]  # fmt: skip
+    where = f"{station.file}: {station.at}"
+    return [f"{where}: 2C changes with the target: {odd} to {named[worst]}, {others} to the others on the mean: a "
+            "short sight, a tilted axis, or a target read off its middle."]  # fmt: skip

@@ -197,7 +197,8 @@ def _with_missing_faces(pointings: list[Pointing]) -> list[Pointing]:
 
 
 def _station(observations: Observations, cells: Cells, at: str, pointings: list[Pointing]) -> Station:
-    means, out = {}, {}
+    means: dict[str, SetMeans] = {}
+    out: dict[str, list[Outside]] = {}
     for key in SHEETS:
         values = {(p.set, p.to): x for p in pointings if (x := getattr(p, key)) is not None}
         out[key] = []

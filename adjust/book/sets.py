@@ -91,7 +91,8 @@ def outside(values: Mapping[Key, float], turning: bool, limit: float) -> list[Ou
 
     Of two sets that differ both are returned, neither sure.
     """
-    left, out = dict(values), []
+    left: dict[Key, float] = dict(values)
+    out: list[Outside] = []
     while True:
         found = [one for key in left if (one := _off(left, key, turning)) and abs(one.off) > limit]
         sure = [one for one in found if one.sure]
