@@ -52,6 +52,8 @@ class Pointing:
     zenith: float | None = None
     index: float | None = None
     distance: float | None = None
+    lengths: int = 0
+    """Slope distances behind the mean."""
     distance_spread: float | None = None
     closure: float | None = None
     """Last minus first reading of the target in one face of the set: the horizon closure."""
@@ -158,6 +160,7 @@ class _Table:
         return replace(
             found,
             distance=float(np.mean(lengths)) if lengths else None,
+            lengths=len(lengths),
             distance_spread=max(lengths) - min(lengths) if len(lengths) > 1 else None,
             closure=wrap(again[-1] - again[0]) if again else None,
         )
@@ -253,7 +256,7 @@ def _take(observations: Observations, cells: Cells, sheet: Sheet, key: str, stat
             x = getattr(p, key)
             if x is not None and (p.set, p.to) not in rejected:
                 values[p.rows[0]] = x
-                count[p.rows[0]] = 1.0 if key == "distance" else p.pairs
+                count[p.rows[0]] = p.lengths if key == "distance" else p.pairs
     use = np.flatnonzero(~np.isnan(values)).tolist()
     if not use:
         return
