@@ -214,12 +214,13 @@ def test_the_raw_book_adjusts_as_its_reductions_typed_as_tables(tmp_path: Path) 
              "distance": ("distances", "from,to,distance")}  # fmt: skip
     for kind, (table, head) in kinds.items():
         one = block(job, kind)
+        count = 2 if kind == "distance" else 1  # a distance was read in each face; a pointing is both
         toml += f'[[book]]\nkind = "{table}"\n' + ('surface = "slope"\n' if kind == "distance" else "")
         heights = "" if kind == "direction" else ",instrument_height,target_height"
-        lines = [f"{head}{heights}"]
+        lines = [f"{head}{heights},count"]
         for (s, t), value in zip(one.stations, one.values[:, 0], strict=True):
             unit = "m" if kind == "distance" else "rad"
-            lines.append(f"{names[s]},{names[t]},{float(value)!r} {unit}{',1.5,1.6' if heights else ''}")
+            lines.append(f"{names[s]},{names[t]},{float(value)!r} {unit}{',1.5,1.6' if heights else ''},{count}")
         (typed / f"{table}.csv").write_text("\n".join(lines) + "\n", "utf-8")
     (typed / "job.toml").write_text(HEAD + toml, "utf-8")
     (typed / "control.csv").write_text(control, "utf-8")
