@@ -12,7 +12,7 @@ is right in air of refractivity N0 reads too long by N - N0 ppm, so the first ve
 
     D' = D (n0 - n)/n,  n = 1 + N 1e-6.
 
-The second velocity correction, (k - k^2) D^3/(12 R^2), is 0.02 mm at 5 km (k = 0.13) and left out. Saturated vapour
+The second velocity correction, (k - k^2) D^3/(12 R^2), is 0.03 mm at 5 km (k = 0.13) and left out. Saturated vapour
 pressure: A. L. Buck, New equations for computing vapor pressure and enhancement factor, J. Appl. Meteorol. 20, 1981.
 """
 
