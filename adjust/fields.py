@@ -9,6 +9,7 @@ circle                                    an angle from zero to below a full cir
 bearing                                   a quadrant bearing (N 45 30 15 E)
 course                                    a quadrant bearing or an azimuth
 zenith, elevation                         a zenith angle from 0 to half a circle; an elevation angle with its sign
+lengths                                   a length, or a table of lengths by page
 estimate                                  a pure number, or one with its standard deviation: "0.13 +- 0.05"
 sd                                        a standard deviation in the small unit of the column it belongs to
 precision                                 an error model such as "1.5 mm + 2 ppm" or ["1.5 mm", "2 ppm"]

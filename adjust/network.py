@@ -97,6 +97,9 @@ class Block:
     """Name and amount (m,) of every correction between the booked value and ``values``."""
     booked: tuple[str, ...] = ()
     """Columns of the file that hold the values as booked; empty: the kind's own."""
+    booked_at: Ints | None = None
+    """(m, k) lines of the texts in the k columns ``booked`` where a value is a difference of several rows, 0 where
+    a column takes no part; None: all stand in the line of the row."""
 
     def __len__(self) -> int:
         return len(self.line)

@@ -19,6 +19,7 @@ from adjust.book.observations import Observations
 from adjust.book.rounds import add_rounds
 from adjust.book.rules import resolve
 from adjust.book.settings import Settings, Table, read_settings
+from adjust.book.staff import add_staff, compare_sections, level_books
 from adjust.book.toml_lines import line_of
 from adjust.book.traverse import add_traverse
 from adjust.errors import InputError, nearest
@@ -142,13 +143,17 @@ class _JobReader:
                 if one.table.kind == kind:
                     marks.add(one)
         observations = Observations(self.settings, marks, self.faults, booked)
+        levels = level_books(observations, cells)
         for one in cells:
             if one.table.kind in TABLES:
                 observations.add(one)
+            elif one.table.kind == "staff":
+                add_staff(observations, one, levels)
             elif one.table.kind == "traverse":
                 add_traverse(observations, one)
             elif one.table.kind == "rounds":
                 add_rounds(observations, one)
+        compare_sections(observations, levels)
         pairs = [pair for one in cells if one.table.kind == "pairs" for pair in self._pairs(one, marks, booked)]
         tolerance, files = resolve(
             self.settings.allowances, self.settings.rules, line_of(self.settings.lines, "tolerance.rule"), self.folder,
@@ -156,7 +161,7 @@ class _JobReader:
         )  # fmt: skip
         self.inputs += files
         self._check_datum(marks)
-        self._warn(tables, marks)
+        self._warn(tables, [name for name in marks.names if name not in levels.private])
         if not self.faults.all and not any(len(b) for b in observations.blocks):
             self.faults.add(
                 "job.toml", 0, "", "", "the job has no readings; add a table such as distances.csv or levelled.csv"
@@ -230,8 +235,8 @@ class _JobReader:
             hint = 'no mark has role held or weighted in the control table; add control or set kind = "free"'
             self.faults.add("job.toml", line_of(self.settings.lines, "datum.kind"), "datum.kind", "control", hint)
 
-    def _warn(self, tables: list[Table], marks: Marks) -> None:
-        for group in near_duplicates(marks.names):
+    def _warn(self, tables: list[Table], names: list[str]) -> None:
+        for group in near_duplicates(names):
             self.warnings.append(
                 f"{' and '.join(group)} look alike: one station under two names? booked_names.csv can join them."
             )

@@ -100,6 +100,20 @@ BOOK = (
           "said where the job has a reflector, weather, or an instrument's constant or scale", choices=APPLIED),
     Field("weather", "air", "temperature, pressure and humidity, or ppm, of its distances where a row has none"),
     Field("units", "table", "units of this table where they differ from the job's: length, angle, decimal"),
+    Field("collimation", "text", "staff: the line of sight of the level; peg_test: each sight is corrected by the "
+          "two-peg test of its level; none: no correction; or a figure, above level positive: -8 sec, 0.05 mm/m. To "
+          "be said where the job has a two-peg test"),
+    Field("curvature", "choice", "staff, peg_test: with-refraction: sights are corrected for curvature and for the "
+          "`refraction` of [frame]; none: they are not, as is usual with balanced sights", default="none",
+          choices=("none", "with-refraction")),
+    Field("wire_limit", "length", "staff: largest difference between the half-sum of the wires and the middle reading "
+          "(common practice)", default="3 mm"),
+    Field("staff_length", "length", "staff, peg_test: readings above it are warned about", default="5 m"),
+    Field("sum_back", "lengths", "staff: sum of the back sights as booked, of the whole table or one a page"),
+    Field("sum_intermediate", "lengths", "staff: likewise of the intermediate sights"),
+    Field("sum_fore", "lengths", "staff: likewise of the fore sights"),
+    Field("sum_rise", "lengths", "staff: likewise of the rises"),
+    Field("sum_fall", "lengths", "staff: likewise of the falls"),
 )  # fmt: skip
 
 
@@ -194,6 +208,48 @@ ROUNDS = (
     *_POINTING,
 )  # fmt: skip
 """Columns of a total station's raw book: one row a pointing in one face."""
+_RAW = tuple(
+    Field("use", "choice", "no: the reading of this row is left out, with a reason", default="yes",
+          choices=("yes", "no")) if f.name == "use" else f
+    for f in _SHEET if f.name != "setup"
+)  # fmt: skip
+STAFF = (
+    Field("line", "text", "name of the levelling line, unique in the job; blank: that of the row above; no such "
+          "column: one line, named after the file"),
+    Field("station", "station", "where the staff stood. A change point whose name stands in no other table and ends no "
+          "line is private to its line: `L1/TP1`", required=True),
+    Field("back", "length", "back sight: begins a set-up", required=True),
+    Field("intermediate", "length", "intermediate sight: a side shot of the set-up"),
+    Field("fore", "length", "fore sight: ends the set-up; that of the next begins in the same row or in the next",
+          required=True),
+    Field("back_length", "length", "length of the back sight", above=0.0),
+    Field("intermediate_length", "length", "length of the intermediate sight", above=0.0),
+    Field("fore_length", "length", "length of the fore sight", above=0.0),
+    Field("back_upper", "length", "upper wire of the back sight; 100 times the wires' difference is its length"),
+    Field("back_lower", "length", "lower wire of the back sight"),
+    Field("fore_upper", "length", "upper wire of the fore sight"),
+    Field("fore_lower", "length", "lower wire of the fore sight"),
+    Field("sd", "sd", "final standard deviation of the rise that ends in this row"),
+    *_RAW,
+)  # fmt: skip
+"""Columns of a level book as booked: one row a position of the staff."""
+PEG_TEST = (
+    Field("level", "text", "the instrument tested; left out: that of the [[book]] block, or the only one"),
+    Field("near_a", "length", "reading on peg A with the level midway between A and B", required=True),
+    Field("near_b", "length", "reading on peg B with the level midway", required=True),
+    Field("far_a", "length", "reading on peg A with the level far from A, at B or beyond it", required=True),
+    Field("far_b", "length", "reading on peg B with the level there", required=True),
+    Field("length", "length", "how much longer the sight to A was than that to B when the level stood far: the "
+          "distance from A to B where it stood beyond B in line with both", above=0.0),
+    Field("near_a_length", "length", "length of that sight; with all four filled the level may stand anywhere, and "
+          "`length` is not needed", above=0.0),
+    Field("near_b_length", "length", "length of that sight", above=0.0),
+    Field("far_a_length", "length", "length of that sight", above=0.0),
+    Field("far_b_length", "length", "length of that sight", above=0.0),
+    Field("sd", "sd", "standard deviation of one staff reading; left out: by the level's `levelling` figure"),
+    *(f for f in OBSERVATION if f.name in ("day", "crew", "note", "page")),
+)  # fmt: skip
+"""Columns of two-peg tests: one row a test."""
 
 ROLES = ("held", "weighted", "check")
 OTHER_TABLES: dict[str, tuple[Field, ...]] = {
@@ -219,6 +275,8 @@ OTHER_TABLES: dict[str, tuple[Field, ...]] = {
     ),
     "traverse": TRAVERSE,
     "rounds": ROUNDS,
+    "staff": STAFF,
+    "peg_test": PEG_TEST,
     "booked_names": (
         Field("booked", "text", "the name as it stands in the book", required=True),
         Field("station", "station", "the station that is meant", required=True),

@@ -13,6 +13,7 @@ from adjust.allowances import Allowance, parse_allowance
 from adjust.atmosphere import Air
 from adjust.book import schema
 from adjust.book.faults import Faults
+from adjust.book.level_keys import LevelBook, level_book
 from adjust.book.toml_lines import key_lines, line_of
 from adjust.book.weather import AIR_TYPES, Meter, read_air, read_constant, read_meter
 from adjust.errors import nearest
@@ -79,6 +80,7 @@ class Table:
     line: int = 0
     path: str = ""
     """The block's path among the lines of job.toml: book.0."""
+    level: LevelBook = field(default_factory=LevelBook)
 
 
 @dataclass(frozen=True)
@@ -157,7 +159,7 @@ class _Reader:
                 return value
             self.fault(path, value, 'must be a list of station names: ["M1", "M2"]')
             return field.default
-        if field.type in ("table", "air"):
+        if field.type in ("table", "air", "lengths"):
             return value
         if field.type in ("precision", "allowance"):
             return self.parsed(path, value, field)
@@ -366,11 +368,11 @@ def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table |
                 f"{path}.file", file, f"the file's name does not tell its kind; add kind = ...; {nearest(kind, kinds)}"
             )
             return None
-    used = {k: v for k, v in own.items() if v}
+    used = Units(**{**units.__dict__, **{k: v for k, v in own.items() if v}})
     return Table(
         file=file or f"{kind}.csv",
         kind=kind,
-        units=Units(**{**units.__dict__, **used}),
+        units=used,
         instrument=values["instrument"] or "",
         sd_factor=values["sd_factor"],
         reflector=values["reflector"] or "",
@@ -379,6 +381,7 @@ def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table |
         surface=_surface(r, f"{path}.surface", values["surface"] or "", kind),
         line=line_of(r.lines, f"{path}.file"),
         path=path,
+        level=level_book(r.fault, path, block, values, kind, used.length),
     )
 
 

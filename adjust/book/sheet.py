@@ -24,6 +24,8 @@ class Sheet:
     """For each station column the name in every row of the table, where the row itself does not hold it."""
     sizes: dict[str, Array] = field(default_factory=dict)
     """(n,) by column of sizes that were worked out: length (metres), setups, count; in place of the row's cells."""
+    wanting: dict[str, tuple[str, str]] = field(default_factory=dict)
+    """By the same columns: the column to name where such a size is missing, and what to fill."""
 
     @classmethod
     def of(cls, kind: Kind) -> Sheet:

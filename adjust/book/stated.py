@@ -10,7 +10,6 @@ from adjust.book.settings import Settings
 from adjust.book.sheet import Sheet
 from adjust.book.toml_lines import line_of
 from adjust.errors import nearest
-from adjust.kinds.base import Kind
 from adjust.network import Array, Bools
 from adjust.sigmas import EXAMPLES, Precision
 from adjust.units import LONGEST_M, SMALLEST_SD
@@ -38,7 +37,7 @@ def stated_sds(
         found = _model(settings, cells, sheet, name, rows)
         if found:
             label, model = found
-            own = _model_sd(cells, kind, model, lay.values, sizes, rows)
+            own = _model_sd(cells, sheet, model, lay.values, sizes, rows)
             zenith = settings.instruments[label].get(ZENITH_SD)
             sd[rows] = lay.sd(rows, own, zenith.sd(len(rows)) if zenith else 0.0)
             for i in rows:
@@ -94,16 +93,17 @@ def _unknown_instrument(settings: Settings, cells: Cells, name: str, i: int) -> 
 
 
 def _model_sd(
-    cells: Cells, kind: Kind, model: Precision, values: Array, sizes: dict[str, Array], rows: list[int]
+    cells: Cells, sheet: Sheet, model: Precision, values: Array, sizes: dict[str, Array], rows: list[int]
 ) -> Array:
+    kind = sheet.kind
     given: dict[str, Array] = {"distance": values[rows]}
     for need, column in (("length", kind.length_column), ("setup", kind.setup_column)):
         if column and need in model.needs:
             given[need] = sizes[column][rows]
+            where, fill = sheet.wanting.get(column, (column, f"the {column} of the line; fill it or give sd"))
             for i in rows:
                 if np.isnan(sizes[column][i]) and not cells.text(column)[i]:
-                    hint = f'the instrument\'s "{model.text}" needs the {column} of the line; fill it or give sd'
-                    cells.fault(i, column, "", hint)
+                    cells.fault(i, where, "", f'the instrument\'s "{model.text}" needs {fill}')
     count = sizes["count"][rows]
     count = np.where(np.isnan(count), 1.0, count)
     return model.sd(len(rows), **given) * np.sqrt(kind.pointings / count)

@@ -28,6 +28,7 @@ TYPES = {
     "temperature": "temperature", "pressure": "air pressure", "humidity": "relative humidity",
     "ppm": "parts per million", "wavelength": "wavelength with its unit", "air": "table of weather",
     "words": "list of",
+    "lengths": "length, or a table of lengths by page",
     "date": "date", "list": "list of names", "table": "table",
 }  # fmt: skip
 

@@ -9,7 +9,7 @@ import numpy as np
 from adjust.book.job import Aside
 from adjust.judge.assess import Judgement
 from adjust.kinds import KINDS
-from adjust.network import PARTS
+from adjust.network import PARTS, Block
 from adjust.record.numbers import angle, coordinate, number
 
 STATION_KEYS = ("at", "from", "to", "first", "second")
@@ -33,7 +33,7 @@ def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
         value = _ROUNDED[kind.dimension]
         adjusted = solution.adjusted[r] % (2 * np.pi) if kind.wraps else solution.adjusted[r]
         held = bool(solution.design.held[r])
-        texts = booked[b][int(block.line[i])]
+        texts = _booked_texts(booked[b], block, i)
         named = dict(zip(kind.stations, block.stations[i].tolist(), strict=True))
         named.setdefault("at", named.pop("station", -1))
         entries.append(
@@ -47,7 +47,7 @@ def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
             | {key: _name(judgement, named.get(key, -1)) for key in STATION_KEYS}
             | {
                 "set": (network.groups[block.group[i]].set if block.group[i] >= 0 else "") or None,
-                "booked": texts[p] if len(kind.parts) > 1 else next(t for t in texts if t),
+                "booked": texts[p] if len(kind.parts) > 1 else texts[0],
                 "corrections": [
                     {"name": name, "value": value(amount[i])} for name, amount in block.corrections if amount[i]
                 ],
@@ -67,6 +67,14 @@ def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
             }
         )
     return entries
+
+
+def _booked_texts(booked: dict[int, tuple[str, ...]], block: Block, i: int) -> tuple[str, ...]:
+    """The texts of a value's parts; the one filled cell; or of a level's set-up "back - fore" from its two rows."""
+    if block.booked_at is not None:
+        return (" - ".join(booked[int(line)][k] for k, line in enumerate(block.booked_at[i]) if line),)
+    texts = booked[int(block.line[i])]
+    return texts if len(KINDS[block.kind].parts) > 1 else (next(t for t in texts if t),)
 
 
 def _share(x: float) -> float | None:

@@ -92,6 +92,8 @@ def _job_value(field: Field) -> dict[str, Any]:
         return {"type": ["number", "string"]}
     if field.type == "words":
         return {"type": "array", "items": {"enum": list(field.choices)}}
+    if field.type == "lengths":
+        return {"type": ["number", "string", "object"], "additionalProperties": {"type": ["number", "string"]}}
     if field.type == "list":
         return {"type": "array", "items": {"type": "string"}}
     if field.type in ("precision", "allowance", "rules"):
