@@ -82,6 +82,11 @@ SAMPLES = {
     "levelled": "from,to,rise,length\nA,B,1,100\n",
     "zenith_angles": "from,to,zenith_angle,instrument_height,target_height\nA,B,84 00 00,1.5,1.6\n",
     "traverse": "at,back,fore,angle,turn,bearing,distance,back_distance\nA,B,C,10 00 00,left,N 1 00 00 E,10,5\n",
+    "staff": (  # of another level than the one tested, so that nothing needs to be declared
+        "line,station,back,fore,fore_length,sd,instrument\n"
+        "L1,A,1.5,,,,level-2\nL1,B,,1.2,31,0.001,level-2\n"
+    ),
+    "peg_test": "level,near_a,near_b,far_a,far_b,length\nlevel-1,1.5,1.4,1.704,1.6,60\n",
     "booked_names": "booked,station\nX,A\n",
     "pairs": "from,to\nA,B\n",
 }
@@ -269,7 +274,8 @@ ODD = [
 def test_nothing_in_a_cell_is_an_internal_error(kind: str, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     """Whatever stands in a cell is read, refused with a fault, or unsolvable in words: never exit code 70."""
     job(tmp_path, **SAMPLES)
-    header, row = SAMPLES[kind].splitlines()
+    header, *before, row = SAMPLES[kind].splitlines()
+    above = "".join(f"{one}\n" for one in before)
     columns = range(len(row.split(",")) + 1)
     codes = set()
     for odd in ODD:
@@ -277,7 +283,7 @@ def test_nothing_in_a_cell_is_an_internal_error(kind: str, tmp_path: Path, capsy
             cells = [*row.split(","), ""]
             cells[column] = f'"{odd}"'
             more = "" if "sd" in header else ",sd" if kind in TABLES else ",note"
-            (tmp_path / f"{kind}.csv").write_text(f"{header}{more}\n{','.join(cells)}\n", "utf-8")
+            (tmp_path / f"{kind}.csv").write_text(f"{header}{more}\n{above}{','.join(cells)}\n", "utf-8")
             code = main(["check", str(tmp_path)])
             err = capsys.readouterr().err
             assert code in (0, 2), f"{odd[:40]!r} in column {column} of {kind}: {err}"
