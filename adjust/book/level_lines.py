@@ -170,13 +170,11 @@ def _walk(cells: Cells, stations: tuple[str, ...], name: str, rows: list[int]) -
 
 
 def _intermediate(cells: Cells, i: int, opened: int | None, shared: bool) -> list[Shot]:
-    found = cells.text("intermediate")[i]
-    if shared:
-        cells.fault(i, "intermediate", found, "another sight stands in this row; give the intermediate sight its own")
-    elif opened is None:
-        cells.fault(i, "intermediate", found, "an intermediate sight before any back sight of its set-up")
-    else:
+    if opened is not None and not shared:
         return [Shot(opened, i, False)]
+    own = "another sight stands in this row; give the intermediate sight its own"
+    hint = own if shared else "an intermediate sight before any back sight of its set-up"
+    cells.fault(i, "intermediate", cells.text("intermediate")[i], hint)
     return []
 
 

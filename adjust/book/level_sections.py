@@ -19,9 +19,9 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from statistics import NormalDist
 
 import numpy as np
-from scipy.special import ndtri
 
 from adjust.book.level_lines import StaffLine, StaffTable
 from adjust.book.reductions import Reduction
@@ -94,7 +94,7 @@ def sections(books: list[Legs], lasting: set[str], significance: float) -> list[
     pairs = [(runs[k], runs[k + 1]) for runs in by_ends.values() for k in range(0, len(runs) - 1, 2)]
     odd = [(runs[-2], runs[-1]) for runs in by_ends.values() if len(runs) > 2 and len(runs) % 2]
     unit = books[0].table.cells.table.units.length
-    limit = float(ndtri(1.0 - significance / 2.0))
+    limit = NormalDist().inv_cdf(1.0 - significance / 2.0)
     out = []
     so_far = 0.0
     for one, other in pairs:
@@ -159,13 +159,16 @@ def _together(pairs: list[tuple[Section, Section]]) -> list[Reduction]:
     return [Reduction("sections together", f"{len(d)} pairs", file, (), values, "length", "", sentence)]
 
 
-def balances(table: StaffTable, lengths: tuple[Array, Array], tilt: Array, sd: Array) -> list[Reduction]:
-    """The balance of back and fore sights of every line, and what a collimation error would do there."""
+def balances(table: StaffTable, lengths: tuple[Array, Array], tilt: tuple[Array, Array], sd: Array) -> list[Reduction]:
+    """The balance of back and fore sights of every line, and what a collimation error would do there.
+
+    ``tilt`` holds the collimation (n,) that the rows are corrected by and its standard deviation.
+    """
     out = []
     for line in table.lines:
         rows = np.array([shot.row for shot in line.shots if shot.fore], dtype=np.int64)
         rows = rows[~np.isnan(sd[rows])]
-        out.append(_balance(table, line, lengths[0][rows], lengths[1][rows], tilt[rows], sd[rows]))
+        out.append(_balance(table, line, lengths[0][rows], lengths[1][rows], (tilt[0][rows], tilt[1][rows]), sd[rows]))
     return out
 
 
@@ -178,7 +181,9 @@ def _uneven(line: StaffLine, uneven: float, effect: float, own: float, unit: str
     )
 
 
-def _balance(table: StaffTable, line: StaffLine, back: Array, fore: Array, tilt: Array, sd: Array) -> Reduction:
+def _balance(
+    table: StaffTable, line: StaffLine, back: Array, fore: Array, tilt: tuple[Array, Array], sd: Array
+) -> Reduction:
     file, unit = table.cells.rows.file, table.cells.table.units.length
     places = tuple(table.place(i) for i in line.rows)
     uneven = float((back - fore).sum())
@@ -189,7 +194,8 @@ def _balance(table: StaffTable, line: StaffLine, back: Array, fore: Array, tilt:
     values: dict[str, float | None] = {
         "sum_back_lengths": float(back.sum()), "sum_fore_lengths": float(fore.sum()), "imbalance": uneven,
         "greatest_of_a_set_up": float(np.abs(back - fore).max()), "by_10_sec": effect, "sd_rise": own,
-        "collimation": float(-(tilt * (back - fore)).sum()) + 0.0,
+        "collimation": float(-(tilt[0] * (back - fore)).sum()) + 0.0,
+        "sd_collimation": abs(float((tilt[1] * (back - fore)).sum())),
     }  # fmt: skip
-    sentence = _uneven(line, uneven, effect, own, unit) if abs(effect) > own and not tilt.any() else ""
+    sentence = _uneven(line, uneven, effect, own, unit) if abs(effect) > own and not tilt[0].any() else ""
     return Reduction("sight balance", line.name, file, places, values, "length", "", sentence)

@@ -103,7 +103,7 @@ class _Reduced:
             self.back_length[i] = table.length["back"][shot.back]
             self.ahead_length[i] = table.length[shot.sight][i]
             self.raw[i] = table.reading["back"][shot.back] - table.reading[shot.sight][i]
-        self.tilt = self._tilts(use)
+        self.tilt, self.tilt_sd = self._tilts(use)
         self.corrections = (
             (COLLIMATION, self._correction(use, self.tilt, 1)), (CURVATURE, self._correction(use, self._bends(), 2)),
         )  # fmt: skip
@@ -117,24 +117,25 @@ class _Reduced:
         self.books.private.add(own)
         return own
 
-    def _tilts(self, use: list[int]) -> Array:
-        """Collimation (n,) that each row is corrected by, zero where it is not."""
+    def _tilts(self, use: list[int]) -> tuple[Array, Array]:
+        """Collimation (n,) that each row is corrected by, and its standard deviation; zero where there is none."""
         cells, level = self.table.cells, self.table.cells.table.level
-        out = np.zeros(len(cells))
+        out, sd = np.zeros((2, len(cells)))
         missing: set[str] = set()
+        named = cells.text("instrument")
         for i in use:
-            name = the_level(self.observations.settings, cells.text("instrument")[i] or cells.table.instrument)
+            name = the_level(self.observations.settings, named[i] or cells.table.instrument)
             if level.tilt is not None:
                 out[i] = level.tilt
             elif level.collimation == PEG_TEST and name in self.books.tilts:
-                out[i] = self.books.tilts[name].angle
+                out[i], sd[i] = self.books.tilts[name].angle, self.books.tilts[name].sd or 0.0
             elif self.books.unread:
                 continue
             elif level.collimation == PEG_TEST or (not level.collimation and name in self.books.tilts):
                 missing.add(name)
         for name in sorted(missing):
             self._undeclared(name)
-        return out
+        return out, sd
 
     def _undeclared(self, name: str) -> None:
         table, observations = self.table.cells.table, self.observations
@@ -205,7 +206,7 @@ def tell(observations: Observations, reduced: _Reduced, books: LevelBooks, sd: A
     told += wire_reductions(table.cells, table.wires, names)
     told += _set_ups(reduced, sd)
     lengths = (reduced.back_length, reduced.ahead_length)
-    balance = balances(table, lengths, reduced.tilt, sd)
+    balance = balances(table, lengths, (reduced.tilt, reduced.tilt_sd), sd)
     legs = Legs(table, names, reduced.values, reduced.length(), sd)
     books.legs.append(legs)
     observations.reductions += told + balance

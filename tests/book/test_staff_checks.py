@@ -188,6 +188,9 @@ def test_two_tests_of_a_level_are_meaned_or_said_to_differ(tmp_path: Path) -> No
     assert read.warnings == ()
     (block,) = read.network.blocks
     close(dict(block.corrections)["collimation"][:1], [-(0.0043 / 60) * 14.5], atol=1e-9)
+    one_test = 0.0012 * math.sqrt(0.06) * math.sqrt(2) / 60
+    close(values(found(read, "sight balance")[0], "imbalance", "collimation", "sd_collimation"),
+          [1.0, -0.0043 / 60, one_test / math.sqrt(2)], atol=1e-10)  # fmt: skip
     apart = job(tmp_path / "far", toml, staff=BOOK, control=CONTROL, peg_test=PEG + "level-1,1.5,1.4,1.712,1.6,60\n")
     assert [w for w in apart.warnings if "two-peg" in w] == [
         "the two-peg tests of level-1 give +13.8 sec and +41.3 sec, more than their standard deviations allow: was it "
@@ -227,6 +230,10 @@ def test_forward_and_back_runs_are_compared(tmp_path: Path) -> None:
     close(values(pair, "sd_difference"), [0.0012 * math.sqrt(0.332)], atol=1e-9)
     close(values(pair, "allowable"), [1.959964 * 0.0012 * math.sqrt(0.332)], atol=1e-8)
     assert pair.sentence in read.warnings
+    assert pair.sentence == (
+        "M1 to M2, L1 and L2, forward and back: the two runs differ by 21.0 mm, more than the 1.4 mm which their "
+        "standard deviations allow."
+    )
     (all_,) = found(read, "sections together")
     close(values(all_, "sd_one_run_per_root_km", "sd_mean_per_root_km"),
           [0.021 / math.sqrt(2 * 0.166), 0.021 / math.sqrt(4 * 0.166)], atol=1e-9)  # fmt: skip

@@ -83,8 +83,7 @@ SAMPLES = {
     "zenith_angles": "from,to,zenith_angle,instrument_height,target_height\nA,B,84 00 00,1.5,1.6\n",
     "traverse": "at,back,fore,angle,turn,bearing,distance,back_distance\nA,B,C,10 00 00,left,N 1 00 00 E,10,5\n",
     "staff": (  # of another level than the one tested, so that nothing needs to be declared
-        "line,station,back,fore,fore_length,sd,instrument\n"
-        "L1,A,1.5,,,,level-2\nL1,B,,1.2,31,0.001,level-2\n"
+        "line,station,back,fore,fore_length,sd,instrument\nL1,A,1.5,,,,level-2\nL1,B,,1.2,31,0.001,level-2\n"
     ),
     "peg_test": "level,near_a,near_b,far_a,far_b,length\nlevel-1,1.5,1.4,1.704,1.6,60\n",
     "booked_names": "booked,station\nX,A\n",
