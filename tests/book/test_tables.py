@@ -82,6 +82,10 @@ SAMPLES = {
     "levelled": "from,to,rise,length\nA,B,1,100\n",
     "zenith_angles": "from,to,zenith_angle,instrument_height,target_height\nA,B,84 00 00,1.5,1.6\n",
     "traverse": "at,back,fore,angle,turn,bearing,distance,back_distance\nA,B,C,10 00 00,left,N 1 00 00 E,10,5\n",
+    "rounds": (
+        "at,to,set,face,horizontal_circle,zenith_circle\nA,B,1,1,10 00 00,84 00 00\nA,C,1,1,20 00 00,84 00 00\n"
+        "A,C,1,2,200 00 00,276 00 00\nA,B,1,2,190 00 00,276 00 00\n"
+    ),
     "staff": (  # of another level than the one tested, so that nothing needs to be declared
         "line,station,back,fore,fore_length,sd,instrument\nL1,A,1.5,,,,level-2\nL1,B,,1.2,31,0.001,level-2\n"
     ),
@@ -272,7 +276,8 @@ ODD = [
 @pytest.mark.parametrize("kind", list(SAMPLES))
 def test_nothing_in_a_cell_is_an_internal_error(kind: str, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     """Whatever stands in a cell is read, refused with a fault, or unsolvable in words: never exit code 70."""
-    job(tmp_path, **SAMPLES)
+    raw = kind in ("rounds", "staff", "peg_test")  # many columns; a small job beside them keeps the test short
+    job(tmp_path, **({name: SAMPLES[name] for name in ("control", "levelled", kind)} if raw else SAMPLES))
     header, *before, row = SAMPLES[kind].splitlines()
     above = "".join(f"{one}\n" for one in before)
     columns = range(len(row.split(",")) + 1)
