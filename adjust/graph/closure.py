@@ -33,9 +33,11 @@ STEPS, MORE_STEPS, NEARLY = 40, 60, 0.05
 """Steps from every place by lot, and further ones where no misfit is above NEARLY: valleys are long where a knot is
 fixed only just."""
 MET = 3
-"""How often every solution is met before the search ends."""
+"""How often every solution is met before the search ends; or twice the rounds of the first are over."""
 RANK_LEAST = 1e-7
 MOST_SOLUTIONS = 6
+FAR = 100.0
+"""Times the extent of the placed stations within which a knot lies."""
 
 
 @dataclass
@@ -146,9 +148,8 @@ def find_knot(index: Index, group: Group, missing: list[int]) -> list[int]:
     """A smallest set of the ``missing`` stations that the readings fix together; empty if they fix none."""
     rng = np.random.default_rng(5)
     lot = dict(zip(missing, (rng.normal(size=(len(missing), 2)) @ [1, 1j]).tolist(), strict=True))
-    size = max((abs(z - w) for z in list(group.at.values())[:50] for w in [next(iter(group.at.values()))]), default=1.0)
-    middle = complex(np.mean(list(group.at.values())))
-    lot = {s: middle + (size or 1.0) * z for s, z in lot.items()}
+    middle, size = _extent(group)
+    lot = {s: middle + size * z for s, z in lot.items()}
     left = _fixed(index, group, missing, lot)
     for station in sorted(left, key=index.degree):
         if station in left and len(left) > 1:
@@ -165,13 +166,31 @@ def _fixed(index: Index, group: Group, stations: list[int], lot: dict[int, compl
         z[: len(stations)] = [lot[s] for s in stations]
         partials = _partials(k, z[None])[0]
         partials = partials / np.maximum(np.linalg.norm(partials, axis=0), 1e-300)
-        _, s, vt = np.linalg.svd(np.concatenate([partials, np.zeros((1, k.unknowns))]), full_matrices=True)
-        free = vt[np.concatenate([s, np.zeros(len(vt) - len(s))]) < RANK_LEAST]
+        triangle = np.zeros((k.unknowns, k.unknowns))
+        upper = np.linalg.qr(partials, mode="r")
+        triangle[: len(upper)] = upper
+        _, s, vt = np.linalg.svd(triangle)
+        free = vt[s < RANK_LEAST]
         moved = np.abs(free[:, : 2 * len(stations)]).max(axis=0, initial=0.0).reshape(-1, 2).max(axis=1) > 1e-6
         if not moved.any():
             return stations
         stations = [s for s, m in zip(stations, moved.tolist(), strict=True) if not m]
     return []
+
+
+def loosened(index: Index, group: Group, knot: list[int]) -> tuple[Group, list[int]]:
+    """The group without the neighbours of a knot that were placed by a poor crossing, and the knot with them.
+
+    A station may be fixed well only by what the knot says of it; where it stands far off, no knot fits.
+    """
+    poor = [s for s in group.poor if any(o in knot for o in index.near[s])]
+    out = group.copy()
+    for s in poor:
+        del out.at[s]
+        for p in index.out[s]:
+            if index.local[p.set]:
+                out.turn.pop(p.set, None)
+    return out, [*knot, *poor]
 
 
 def close_knot(index: Index, group: Group, knot: list[int], bodies: list[Group]) -> list[Group]:
@@ -180,7 +199,9 @@ def close_knot(index: Index, group: Group, knot: list[int], bodies: list[Group])
     rng = np.random.default_rng([11, len(knot)])
     side = max(4, min(SIDE_BY_SIDE, NUMBERS_MOST // (k.rows * k.unknowns)))
     solutions: list[_Solution] = []
-    for _ in range(ROUNDS):
+    first = ROUNDS
+    middle, size = _extent(group)
+    for number in range(1, ROUNDS + 1):
         z = np.array([_by_lot(index, group, k, bodies, rng) for _ in range(side)])
         z, scale, r = _settled(k, z, STEPS)
         near = np.abs(r).max(axis=1) < NEARLY
@@ -188,11 +209,13 @@ def close_knot(index: Index, group: Group, knot: list[int], bodies: list[Group])
             continue
         z, scale, r = _settled(k, z[near], MORE_STEPS, scale[near])
         costs = np.log1p((r / SPREAD) ** 2).sum(axis=1)
-        for one in np.flatnonzero(np.abs(r).max(axis=1) < FITS).tolist():
+        here = np.abs(z[:, : len(knot)] - middle).max(axis=1) < FAR * size  # rays meet anything at infinity
+        for one in np.flatnonzero(here & (np.abs(r).max(axis=1) < FITS)).tolist():
             _meet(solutions, _Solution(z[one], float(scale[one]), float(costs[one])), len(knot))
         least = min((one.cost for one in solutions), default=0.0)
         solutions = [one for one in solutions if one.cost < least + SAME_COST]
-        if solutions and min(one.times for one in solutions) >= MET:
+        first = min(first, number) if solutions else ROUNDS
+        if solutions and (min(one.times for one in solutions) >= MET or number > 2 * first):
             break
     solutions.sort(key=lambda one: one.cost)
     return [_grown(index, group, k, one) for one in solutions[:MOST_SOLUTIONS]]
@@ -223,9 +246,7 @@ def _grown(index: Index, group: Group, k: _Knot, found: _Solution) -> Group:
 def _by_lot(index: Index, group: Group, k: _Knot, bodies: list[Group], rng: np.random.Generator) -> Places:
     """Places (m,) by lot: each new station on a locus of one placed before, rigid pieces turned as a whole."""
     z, left = dict(group.at), dict.fromkeys(k.new)
-    some = list(group.at.values())
-    middle = sum(some) / len(some)
-    size = max(abs(p - middle) for p in some) or 1.0
+    middle, size = _extent(group)
     while left:
         near = [s for s in left if any(o in z for o in index.near[s])] or list(left)
         s = near[int(rng.integers(len(near)))]
@@ -244,6 +265,13 @@ def _by_lot(index: Index, group: Group, k: _Knot, bodies: list[Group], rng: np.r
         for i in members:
             left.pop(i, None)
     return np.array([z[s] for s in k.number])
+
+
+def _extent(group: Group) -> tuple[complex, float]:
+    """Middle of the placed stations and the largest distance from it."""
+    some = list(group.at.values())
+    middle = sum(some) / len(some)
+    return middle, max(abs(p - middle) for p in some) or 1.0
 
 
 def _locus_by_lot(index: Index, group: Group, s: int, z: dict[int, complex], size: float,

@@ -17,10 +17,10 @@ from adjust.graph.misfit import Misfits
 from adjust.network import Array, Ints
 
 STEPS = 60
-TIMES, MORE = 2.0, 30.0
+TIMES, MORE = 1.1, 20.0
 """A solution is worse than another when its cost is more than this many times the other's, and this much more. The
 sum of squares of a right solution is its degrees of freedom, give or take; control that moves and centring, which are
-left out here, make it a few times that, in both solutions alike."""
+left out here, make it larger in both solutions alike."""
 
 
 def worse(cost: float, than: float) -> bool:

@@ -13,7 +13,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from adjust.graph.agreement import AGREES
-from adjust.graph.closure import KNOT_MOST, close_knot, find_knot
+from adjust.graph.closure import KNOT_MOST, close_knot, find_knot, loosened
 from adjust.graph.clues import Clues, Index, Places
 from adjust.graph.grow import Group, follow, put
 from adjust.graph.hinge import hinged
@@ -104,7 +104,8 @@ def _weighed(misfits: Misfits, known: dict[int, complex], built: Built) -> Built
 
 
 def _alike(a: Mirror, b: Mirror) -> bool:
-    return a.stations == b.stations and bool(np.abs(np.subtract(a.there, b.there)).max() < 1e-3 * max(map(abs, a.there)))
+    size = max(map(abs, a.there))
+    return a.stations == b.stations and bool(np.abs(np.subtract(a.there, b.there)).max() < 1e-3 * size)
 
 
 def bad_sources(misfits: Misfits, z: Places) -> list[int]:
@@ -187,6 +188,10 @@ def _knotted(index: Index, stations: list[int], bundle: list[Group], bundles: li
             return bundle
         bodies = [other[0] for other in bundles if other is not bundle]
         grown = [new for group in bundle for new in close_knot(index, group, knot, bodies)]
+        if not grown:
+            loose = [loosened(index, group, knot) for group in bundle]
+            grown = [new for group, more in loose if len(more) > len(knot)
+                     for new in close_knot(index, group, more, bodies)]  # fmt: skip
         if not grown:
             return bundle
         bundle = follow(index, grown)

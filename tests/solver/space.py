@@ -125,7 +125,7 @@ def reference(space: Space) -> tuple[Array, float, float]:
 
     def residuals(x: Array) -> Array:
         xyz, zero, k = unpack(x)
-        v = model(kind, ends, above, xyz, k) - np.where(group >= 0, zero[group], 0.0) - value
+        v = model(kind, ends, above, xyz, k) - np.where(group >= 0, np.append(zero, 0.0)[group], 0.0) - value
         v = np.where(kind == "direction", np.remainder(v + math.pi, 2 * math.pi) - math.pi, v) / sd
         return np.append(v, (k - space.k[0]) / space.k[1]) if space.k[1] else v
 
