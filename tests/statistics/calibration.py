@@ -99,7 +99,7 @@ def compare(bench: Bench, count: int, seed: int) -> Differences:
     rng = np.random.default_rng(seed)
     errors = bench.clean.errors(rng, count)
     base = bench.base["given"]
-    size = base.reliability.root * 4.13
+    size = base.reliability.root * 4.13  # just detectable (Baarda 1968), so that flags and none both occur
     row = rng.choice(np.flatnonzero(base.reliability.tested), count)
     errors[np.arange(count), row] += np.where(np.arange(count) % 2, size[row], 0.0)
     draws, most, differ, of = bench.of(errors), np.zeros(4), 0, 0

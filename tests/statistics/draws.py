@@ -6,8 +6,8 @@ At a linearisation everything that the judge starts from is linear in the errors
 
 so the program is asked once for its answer to a unit error in every reading (``Response``), and a draw is the sum. What
 the judge makes of it, statistics, limits, verdicts, is asked of the program draw by draw: a ``Judgement`` of the job
-without errors with this draw's residuals, square sums, coordinates and marks in place of its own. ``Bench.whole``
-adjusts the same draw again from its readings, as ``brasscap adjust`` does; the study compares the two.
+without errors with this draw's residuals, square sums, coordinates and marks in place of its own. The study adjusts
+some draws again from their readings, as ``brasscap adjust`` does, and compares the two (calibration.py).
 """
 
 from __future__ import annotations
@@ -189,7 +189,3 @@ class Bench:
                 by = by if given else replace(by, scale=by.scale * shrunk**2)
                 known = compare_control(solution, figures, by, base.tests, replace(marks, shift=draws.shifts[d]))
             yield replace(base, solution=solution, reliability=figures, control=known, scale=scale)
-
-    def whole(self, errors: Array, mode: str) -> Judgement:
-        """The judgement of a complete adjustment of the job with errors (R,) in its readings."""
-        return adjust.assess(adjust.solve(with_tests(self.clean.with_errors(errors), variance_factor=mode)))
