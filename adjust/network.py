@@ -104,16 +104,16 @@ class Block:
     def __len__(self) -> int:
         return len(self.line)
 
-    def only(self, i: int) -> Block:
-        """The block with row ``i`` alone, for a closer look at its geometry."""
+    def take(self, rows: Ints) -> Block:
+        """The block with ``rows`` alone, any number of times, for a closer look at their geometry."""
 
         def cut(values: Array | None) -> Array | None:
-            return None if values is None else values[i : i + 1]
+            return None if values is None else values[rows]
 
         return replace(
-            self, stations=self.stations[i : i + 1], values=self.values[i : i + 1], sd=self.sd[i : i + 1],
-            group=self.group[i : i + 1], held=self.held[i : i + 1], line=self.line[i : i + 1], above=cut(self.above),
-            offset=cut(self.offset), constant=cut(self.constant), eccentric=None,
+            self, stations=self.stations[rows], values=self.values[rows], sd=self.sd[rows], group=self.group[rows],
+            held=self.held[rows], line=self.line[rows], above=cut(self.above), offset=cut(self.offset),
+            constant=cut(self.constant), eccentric=None,
         )  # fmt: skip
 
     def name(self, i: int) -> str:

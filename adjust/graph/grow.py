@@ -39,6 +39,8 @@ class Group:
     cost: float = 0.0
     weak: dict[int, None] = field(default_factory=dict)
     """Readings that steps without a check rest on."""
+    poor: dict[int, None] = field(default_factory=dict)
+    """Stations placed where two lines hardly cross."""
     open: dict[int, list[Place]] = field(default_factory=dict)
     waiting: dict[int, Place] = field(default_factory=dict)
     """Weak steps not made yet."""
@@ -50,7 +52,7 @@ class Group:
         """A group that grows on its own."""
         return Group(
             dict(self.at), dict(self.turn), dict(self.via), dict(self.firm), self.scaled, self.cost, dict(self.weak),
-            dict(self.open), dict(self.waiting), dict(self.stations), dict(self.sets),
+            dict(self.poor), dict(self.open), dict(self.waiting), dict(self.stations), dict(self.sets),
         )  # fmt: skip
 
 
@@ -86,6 +88,8 @@ def grow(index: Index, group: Group) -> None:
             found = ties(index, station, group.at, group.turn, group.via, group.scaled)
             group.weak.update(dict.fromkeys(found.sources))
             group.cost += place.cost
+            if place.sine < FLAT:
+                group.poor[station] = None
             put(index, group, station, place.point)
         else:
             return

@@ -13,6 +13,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from adjust.graph.agreement import AGREES
+from adjust.graph.closure import KNOT_MOST, close_knot, find_knot, loosened
 from adjust.graph.clues import Clues, Index, Places
 from adjust.graph.grow import Group, follow, put
 from adjust.graph.hinge import hinged
@@ -57,6 +58,8 @@ def build(clues: Clues, stations: Ints, known: dict[int, complex], rows: dict[in
     """Places of the ``stations`` of one part from the ``known`` ones; ``rows`` decide between mirror images."""
     misfits = Misfits(clues)
     first = _once(clues, misfits, stations, known, rows, frozenset())
+    if np.isnan(first.z[stations]).any():
+        first = _once(clues, misfits, stations, known, rows, frozenset(), knots=True)
     best = _polish(clues, misfits, known, first)
     if len(bad_sources(misfits, best.z)) > 1 or _crowded(clues, best.z, stations):
         better = _without_one(clues, misfits, stations, known, rows, first)
@@ -79,21 +82,30 @@ def _crowded(clues: Clues, z: Places, stations: Ints) -> list[int]:
 
 def _weighed(misfits: Misfits, known: dict[int, complex], built: Built) -> Built:
     """The mirrors that are left when both solutions are polished: still apart, and still equal."""
+    from adjust.graph.fine import Fine, worse  # only where two solutions are to be told apart
+
     fixed = frozenset(known)
-    z = polished(misfits, built.z, fixed)
-    left = []
+    fine = Fine(misfits, fixed, len(built.z))
+    z, best = fine.adjusted(polished(misfits, built.z, fixed))
+    others: list[tuple[Places, float]] = []
     # the images of many stations first: they are images of the places as they were found
     for mirror in sorted(built.mirrors, key=lambda m: -len(m.stations)):
         other = built.z.copy()
         other[list(mirror.stations)] = mirror.there
-        other = polished(misfits, other, fixed)
-        gain = misfits.cost(z) - misfits.cost(other)
-        if gain > CLEARLY:
-            z = other
-        elif gain > -CLEARLY:
-            still = _mirror(misfits, z, other)
-            left += [still] if still else []
+        others.append(fine.adjusted(polished(misfits, other, fixed)))
+        if others[-1][1] < best and worse(best, others[-1][1]):
+            (z, best), others[-1] = others[-1], (z, best)
+    left: list[Mirror] = []
+    for other, cost in others:
+        still = None if worse(cost, best) else _mirror(misfits, z, other)
+        if still is not None and not any(_alike(still, one) for one in left):
+            left.append(still)
     return replace(built, z=z, mirrors=tuple(left))
+
+
+def _alike(a: Mirror, b: Mirror) -> bool:
+    size = max(map(abs, a.there))
+    return a.stations == b.stations and bool(np.abs(np.subtract(a.there, b.there)).max() < 1e-3 * size)
 
 
 def bad_sources(misfits: Misfits, z: Places) -> list[int]:
@@ -106,10 +118,10 @@ def bad_sources(misfits: Misfits, z: Places) -> list[int]:
 
 
 def _once(clues: Clues, misfits: Misfits, stations: Ints, known: dict[int, complex], rows: dict[int, complex],
-          without: frozenset[int]) -> Built:  # fmt: skip
-    """One construction without some readings."""
+          without: frozenset[int], knots: bool = False) -> Built:  # fmt: skip
+    """One construction without some readings; ``knots``: stations that are fixed only together are sought too."""
     index = Index(clues, without)
-    alternatives = _groups(index, stations.tolist(), known)
+    alternatives = _groups(index, stations.tolist(), known, knots)
     done = [_finished(index, group) for group in alternatives] or [(Group(dict(known)), [])]
     places = [_array(clues, group) for group, _ in done]
     costs = [misfits.cost(z) for z in places]
@@ -143,7 +155,7 @@ def _back(clues: Clues, group: Group) -> complex:
     return cmath.rect(1.0, group.turn.get(clues.north, 0.0))
 
 
-def _groups(index: Index, stations: list[int], known: dict[int, complex]) -> list[Group]:
+def _groups(index: Index, stations: list[int], known: dict[int, complex], knots: bool) -> list[Group]:
     """The equal groups that hold most: the known stations' one, or the largest where none is known."""
     bundles: list[list[Group]] = []
     if known:
@@ -160,7 +172,31 @@ def _groups(index: Index, stations: list[int], known: dict[int, complex]) -> lis
             bundles = _joined(index, [*bundles, local])
     if not bundles:
         return []
-    return bundles[0] if known else max(bundles, key=lambda b: len(b[0].at))
+    main = 0 if known else max(range(len(bundles)), key=lambda b: len(bundles[b][0].at))
+    return _knotted(index, stations, bundles[main], bundles) if knots else bundles[main]
+
+
+def _knotted(index: Index, stations: list[int], bundle: list[Group], bundles: list[list[Group]]) -> list[Group]:
+    """The equal groups with the knots closed that hang on them, and what follows from those."""
+    while True:
+        first = bundle[0]  # what is open in it has all its neighbours placed
+        missing = [s for s in stations if s not in first.at and s not in first.open]
+        if not missing or len(missing) > KNOT_MOST:
+            return bundle
+        knot = find_knot(index, first, missing)
+        if not knot:
+            return bundle
+        bodies = [other[0] for other in bundles if other is not bundle]
+        grown = [new for group in bundle for new in close_knot(index, group, knot, bodies)]
+        if not grown:
+            loose = [loosened(index, group, knot) for group in bundle]
+            grown = [new for group, more in loose if len(more) > len(knot)
+                     for new in close_knot(index, group, more, bodies)]  # fmt: skip
+        if not grown:
+            return bundle
+        bundle = follow(index, grown)
+        (bundle, *bundles) = _joined(index, [bundle, *(b for b in bundles if b[0].at.keys() - bundle[0].at.keys())])
+        bundles = [bundle, *bundles]
 
 
 def _joined(index: Index, bundles: list[list[Group]]) -> list[list[Group]]:

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field, replace
+from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -20,6 +21,9 @@ from adjust.graph.parts import HEIGHT, PLANE, Part, find_parts
 from adjust.graph.polar import Polar
 from adjust.graph.words import frame_words, height_words, mirror_words, missing_words
 from adjust.network import CHECK, HELD, NEW, WEIGHTED, Array, Ints, Network
+
+if TYPE_CHECKING:
+    from adjust.graph.spatial import Found
 
 QUICK = 0.03
 """Misfit up to which the quick start is good enough for Gauss-Newton."""
@@ -43,6 +47,9 @@ class Start:
 
     mirrors: tuple[Array, ...] = ()
     """(n, 2) east and north of every other solution that the readings do not tell from this one."""
+
+    images: tuple[Array, ...] = ()
+    """(n, 3) of every other solution of stations placed in space."""
 
     @property
     def reference(self) -> Array:
@@ -71,13 +78,26 @@ def find_start(network: Network) -> Start:
     clues = Clues.of(network)
     given = network.stations.start
     height = _heights(network, clues, asked[:, HEIGHT], None)
-    plane = _find_plane(network, clues, parts)
-    if clues.zeniths or clues.slopes:
+    # before the plane: slope distances that nothing reduces would only mislead it
+    hung = _hung(network, clues, parts, height) if clues.slopes else []
+    found = _in_space(network, clues, hung, np.full((len(asked), 3), np.nan))
+    rest = [part for k, part in enumerate(parts) if k not in found]
+    plane = _find_plane(network, clues, rest)
+    if (clues.zeniths or clues.slopes) and rest:
         # the first round may have lacked heights to reduce slopes, or places to turn zenith angles into rises
         height = _heights(network, clues, asked[:, HEIGHT], plane.z)
-        plane = _find_plane(network, clues, parts)
+        plane = _find_plane(network, clues, rest)
         height = _heights(network, clues, asked[:, HEIGHT], plane.z)
     positions = np.column_stack([plane.z.real, plane.z.imag, height.height])
+    if len(found) < len(hung):
+        # a rough start in the plane may still lead to the right heights
+        guess = positions.copy()
+        guess[list(height.origins), 2] = np.nan
+        found |= _in_space(network, clues, [k for k in hung if k not in found], guess)
+    if found:
+        return _joined(
+            network, clues, {k: (parts[k], one) for k, one in found.items()}, positions, plane, height, asked
+        )
     held = network.stations.role == HELD
     positions[held] = given[held]
     positions[~asked[:, PLANE], :2] = np.nan
@@ -87,6 +107,55 @@ def find_start(network: Network) -> Start:
         positions, _orientations(network, clues, plane.z), tuple(plane.failures),
         (*plane.assumed, *height_words(network, height.origins)), doubtful, given,
         tuple(np.column_stack([z.real, z.imag]) for z in plane.mirrors),
+    )  # fmt: skip
+
+
+def _hung(network: Network, clues: Clues, parts: list[Part], height: Heights) -> list[int]:
+    """Parts with a known height in which the heights of some stations follow from slope distances alone."""
+    fixed = np.isin(network.stations.role[:, 2], (HELD, WEIGHTED))
+    sloped = np.zeros(len(fixed), dtype=bool)
+    sloped[[e for s in clues.slopes for e in s[:2]]] = True
+    hanging = np.isnan(height.height) & sloped
+    return [k for k, p in enumerate(parts)
+            if (p.nodes[:, HEIGHT] & hanging).any() and (p.nodes[:, HEIGHT] & fixed).any()]  # fmt: skip
+
+
+def _in_space(network: Network, clues: Clues, parts: list[int], guess: Array) -> dict[int, Found]:
+    """The parts that are placed in space."""
+    if not parts:
+        return {}
+    from adjust.graph.spatial import place_in_space  # only where heights hang on slope distances
+
+    every = find_parts(network)
+    tried = {k: place_in_space(network, clues, every[k].nodes, guess) for k in parts}
+    return {k: found for k, found in tried.items() if found is not None}
+
+
+def _joined(network: Network, clues: Clues, found: dict[int, tuple[Part, Found]], positions: Array, plane: _Plane,
+            height: Heights, asked: np.ndarray) -> Start:  # fmt: skip
+    """The start with some parts placed in space and the others in the plane."""
+    failures, doubtful = list(plane.failures), dict([*plane.doubtful, *height.doubtful])
+    images: list[Array] = []
+    placed: set[int] = set()
+    for part, one in found.values():
+        stations = np.flatnonzero(part.nodes.all(axis=1))
+        placed.update(stations.tolist())
+        positions[stations] = one.x[stations]
+        failures += one.failures
+        doubtful |= dict(one.misfits)
+    for _, one in found.values():
+        images += [np.where(np.isnan(y), positions, y) for y in one.mirrors]
+    held = network.stations.role == HELD
+    positions[held] = network.stations.start[held]
+    positions[~asked[:, PLANE], :2] = np.nan
+    positions[~asked[:, HEIGHT], 2] = np.nan
+    z = np.asarray(positions[:, 0] + 1j * positions[:, 1])
+    return Start(
+        positions, _orientations(network, clues, z), tuple(failures),
+        (*plane.assumed, *height_words(network, tuple(i for i in height.origins if i not in placed))),
+        tuple((clues.sources[s], size) for s, size in sorted(doubtful.items())), network.stations.start,
+        tuple(y[:, :2] for y in images) or tuple(np.column_stack([w.real, w.imag]) for w in plane.mirrors),
+        tuple(images),
     )  # fmt: skip
 
 

@@ -11,7 +11,7 @@ import numpy as np
 
 from adjust.book.settings import Tests
 from adjust.judge import critical
-from adjust.judge.control import Mark, compare_control
+from adjust.judge.control import Mark, compare_control, yardstick
 from adjust.judge.lines import Lines, find_lines
 from adjust.judge.overall import NOT_MET, OverallTest, overall_tests
 from adjust.judge.reliability import Reliability, largest_effect, reliability
@@ -201,13 +201,5 @@ def assess(solution: Solution) -> Judgement:
             effect_part=part,
             effect=size * smallest,
             lines=find_lines(solution, scale),
-            control=compare_control(solution, figures, *_control_scale(solution, given, scale), tests, job),
+            control=compare_control(solution, figures, yardstick(solution, given), tests),
         )
-
-
-def _control_scale(solution: Solution, given: bool, scale: float) -> tuple[float, int | None]:
-    """Variance factor and degrees for control: those of the readings alone, which no bad mark has spoilt."""
-    if given:
-        return 1.0, None
-    alone = solution.free.total if solution.free else solution.total
-    return alone.variance_factor or scale, alone.degrees_of_freedom

@@ -12,6 +12,9 @@ damping of adjust.solver.gauss grows until it is not (Nocedal and Wright 2006, s
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from dataclasses import replace
+
 import numpy as np
 from scipy.sparse import coo_array, csc_array
 
@@ -32,14 +35,13 @@ def curvature(design: Design, state: State, whitened: list[Whitened], reduced: I
     if not len(rows):
         return None
     i, j, data = [], [], []
-    for r, p in zip(rows.tolist(), load.tolist(), strict=True):
-        columns, second = _second(design, state, r)
-        at = reduced[columns]
-        inside = np.ix_(at >= 0, at >= 0)
-        ii, jj = np.meshgrid(at, at, indexing="ij")
-        i.append(ii[inside].ravel())
-        j.append(jj[inside].ravel())
-        data.append(p * second[inside].ravel())
+    for columns, second, p in _second(design, state, rows, load):
+        at = np.append(reduced, -1)[columns]
+        inside = (at[:, :, None] >= 0) & (at[:, None, :] >= 0)
+        ii, jj = np.broadcast_to(at[:, :, None], second.shape), np.broadcast_to(at[:, None, :], second.shape)
+        i.append(ii[inside])
+        j.append(jj[inside])
+        data.append((p[:, None, None] * second)[inside])
     parts = (np.concatenate(data), (np.concatenate(i), np.concatenate(j)))
     return coo_array(parts, shape=(count, count)).tocsc()
 
@@ -68,28 +70,50 @@ def _gross(whitened: list[Whitened]) -> tuple[Ints, Array]:
     return np.concatenate(rows)[order], np.concatenate(load)[order]
 
 
-def _second(design: Design, state: State, r: int) -> tuple[Ints, Array]:
-    """Unknowns (c,) of a row and the second partials (c, c) of its computed value by them."""
-    rows = design.network.rows
-    i, part = int(rows.row[r]), int(rows.part[r])
-    block = design.network.blocks[rows.block[r]].only(i)
-    slots = np.flatnonzero((design.columns[r] >= 0) & (design.places[r] >= 0))
-    places = design.places[r, slots]
+def _second(design: Design, state: State, rows: Ints, load: Array) -> Iterator[tuple[Ints, Array, Array]]:
+    """By blocks: unknowns (m, c) of the rows, -1 for none, second partials (m, c, c) by them, and p (m,)."""
+    numbering = design.network.rows
     positions = np.where(np.isnan(state.positions), design.unasked, state.positions)
-    h = STEP * _length(block, positions)
-    second = np.empty((len(slots), len(slots)))
-    for k, place in enumerate(places.tolist()):
-        ends = []
-        for sign in (1.0, -1.0):
-            moved = positions.copy()
-            moved.reshape(-1)[place] += sign * h
-            ends.append(design.partials(block, moved, state.groups)[0, part, slots])
-        second[:, k] = (ends[0] - ends[1]) / (2 * h)
-    return design.columns[r, slots], (second + second.T) / 2
+    for b in np.unique(numbering.block[rows]):
+        here = rows[numbering.block[rows] == b]
+        places = design.places[here]
+        slots = np.flatnonzero((places >= 0).all(axis=0))
+        if len(slots):
+            block = design.network.blocks[b].take(numbering.row[here])
+            second = _differences(design, block, numbering.part[here], slots, places[:, slots], positions,
+                                  state.groups)  # fmt: skip
+            yield design.columns[here][:, slots], second, load[numbering.block[rows] == b]
 
 
-def _length(block: Block, positions: Array) -> float:
-    """Length of the shortest sight of a row, at least a millimetre."""
-    at = positions[block.stations[0], :2]
-    others = np.hypot(*(at[1:] - at[0]).T) if len(at) > 1 else np.array([1.0])
-    return max(float(others.min(initial=np.inf)), 1e-3)
+def _differences(design: Design, block: Block, part: Ints, slots: Ints, places: Ints, positions: Array,
+                 groups: Array) -> Array:  # fmt: skip
+    """Second partials (m, c, c) of the block's rows by the coordinates at ``places`` (m, c), by central differences.
+
+    Every row is taken once for each coordinate and sign, each time with stations of its own, of which one is moved:
+    so one call serves all. A coordinate that stands in two sights of a row is moved in both, at its first place.
+    """
+    m, c = places.shape
+    h = STEP * _lengths(block, positions)
+    which, one = np.tile(np.arange(m), 2 * c), np.tile(np.repeat(np.arange(c), m), 2)
+    sign = np.repeat([1.0, -1.0], m * c)
+    stations = block.stations[which]
+    own = np.arange(stations.size).reshape(stations.shape)
+    moved = positions[stations.ravel()]
+    place = places[which, one]
+    copy, seat = np.nonzero(stations == place[:, None] // 3)
+    moved[own[copy, seat], place[copy] % 3] += (sign * h[which])[copy]
+    alone = replace(design, coupled=design.coupled[stations.ravel()])
+    by = alone.partials(replace(block.take(which), stations=own), moved, groups)
+    ends = by[np.arange(len(which)), part[which]][:, slots].reshape(2, c, m, c)
+    second = ((ends[0] - ends[1]) / (2 * h[:, None])).transpose(1, 2, 0)  # (row, slot, coordinate moved)
+    again = np.array([[p in row[:k] for k, p in enumerate(row)] for row in places.tolist()])
+    second = np.where(again[:, None, :], 0.0, second)
+    return np.asarray((second + second.transpose(0, 2, 1)) / 2)
+
+
+def _lengths(block: Block, positions: Array) -> Array:
+    """Length (m,) of the shortest sight of every row, at least a millimetre."""
+    at = positions[block.stations, :2]
+    if at.shape[1] < 2:
+        return np.ones(len(block))
+    return np.asarray(np.maximum(np.hypot(*(at[:, 1:] - at[:, :1]).transpose(2, 0, 1)).min(axis=1), 1e-3))

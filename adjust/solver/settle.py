@@ -61,7 +61,7 @@ def settle(ready: Setting) -> Outcome:
     except SingularPattern:
         outcome = _from_beside(ready)
     except NotSettled as unsettled:
-        _refuse_loose(ready, unsettled.here)
+        _refuse_loose(ready, _sound(ready, unsettled.here))
         raise
     factor = outcome.cofactors.factor
     if factor is not None and factor.pivot_least < DOUBTFUL_PIVOT:
@@ -84,6 +84,11 @@ def _gross(here: Linear) -> bool:
     return max((float(np.abs(w.reduced_l).max(initial=0.0)) for w in here.whitened), default=0.0) > GROSS_SD
 
 
+def _sound(ready: Setting, here: Linear) -> Linear:
+    """A state to look for freedoms at: a figure bent by a gross error may flex, which beside the start it does not."""
+    return ready.iteration.at(beside(ready)) if _gross(here) else here
+
+
 def _refuse_loose(ready: Setting, here: Linear) -> None:
     """Raise Loose if something is free at a state, or fixed only just."""
     freedom = replace(freedom_at(ready, here), thin=_thin(ready, here))
@@ -100,12 +105,12 @@ def _from_beside(ready: Setting) -> Outcome:
     try:
         return ready.iteration.run(state)
     except NotSettled as unsettled:
-        _refuse_loose(ready, unsettled.here)
+        _refuse_loose(ready, _sound(ready, unsettled.here))
         raise
     except SingularPattern as lost:
         latest = ready.iteration.latest
         if latest is not None:
-            _refuse_loose(ready, latest)
+            _refuse_loose(ready, _sound(ready, latest))
             if _gross(latest):
                 raise ready.iteration.stopped(ready.begin, latest) from None
         raise _barely_fixed(ready, lost) from None

@@ -1,11 +1,12 @@
 """Study: how many random networks start well, without and with one gross blunder.
 
-    python -m tests.graph.starts_study 300 [first seed [least share of readings kept]]
+    python -m tests.graph.starts_study 300 [first seed [least share of readings kept]] [--clean]
 
 Every network of ``tests.networks`` (6 to 60 stations, kinds and control by lot, 0 to 45 % of the readings thinned out
 unless told otherwise) is solved from the true coordinates and from the readings alone. *Same*: v'Pv agrees to 1e-6
 of itself, all residuals to 1e-6 of the largest, and positions that do not hang on a free datum. Networks that do not
 converge from the truth are counted apart: no start mends them. Mirror images that are said are checked by solving both.
+A least share of 0.2 keeps 20 to 65 % of the readings: thin networks. --clean leaves out the gross errors.
 """
 
 from __future__ import annotations
@@ -194,9 +195,9 @@ def verdict(trial: Trial) -> str:
     return "same" if same(reference, got, " free " in trial.what) else "FAILS: another solution"
 
 
-def main(count: int, first: int = 0, least: float = 0.55) -> None:
+def main(count: int, first: int = 0, least: float = 0.55, clean: bool = False) -> None:
     """Print the table."""
-    for blunder in (False, True):
+    for blunder in (False,) if clean else (False, True):
         began, tally, slowest = time.perf_counter(), Counter[str](), 0.0
         for seed in range(first, first + count):
             trial = made(seed, blunder, least)
@@ -206,7 +207,7 @@ def main(count: int, first: int = 0, least: float = 0.55) -> None:
             word = verdict(trial)
             tally[word.split(":")[0]] += 1
             if word.startswith("FAILS"):
-                print(f"  seed {seed} {trial.what} [{trial.blunder}] {word[:150]}")
+                print(f"  seed {seed} {trial.what} [{trial.blunder}] {word[:150]}", flush=True)
         able = sum(n for w, n in tally.items() if not w.startswith(("no solution", "rightly")))
         name, share = "one blunder" if blunder else "clean", 100 * tally["same"] / max(1, able)
         print(f"{name}: {count} networks, {able} with one solution, found from the truth; same from the readings alone "
@@ -215,4 +216,7 @@ def main(count: int, first: int = 0, least: float = 0.55) -> None:
 
 
 if __name__ == "__main__":
-    main(int((sys.argv[1:] or ["100"])[0]), int((sys.argv[2:] or ["0"])[0]), float((sys.argv[3:] or ["0.55"])[0]))
+    clean = "--clean" in sys.argv
+    words = [a for a in sys.argv[1:] if a != "--clean"]
+    count, first, least = [*words, *("100", "0", "0.55")[len(words) :]]
+    main(int(count), int(first), float(least), clean)

@@ -1,0 +1,174 @@
+"""Networks of slope distances alone, without starting coordinates, against scipy on independently written equations.
+
+    python -m tests.solver.any_slopes [COUNT] [--blunder]
+
+makes COUNT random networks of 6 to 20 stations in space: slope distances between near stations, no zenith angle, no
+levelled line, a third of them with directions from some stations; three to five known stations, of which some are known
+in the plane or in height only; from hilly (300 m) to flat (1 m). Their starting coordinates are taken away. Each must
+agree with the reference, or be said to have two solutions, which the reference confirms from both places, or be said
+to be fixed only just or not at all. With --blunder one distance is wrong by 0.1 m to 10 km, and what counts is whether
+it settles where it should.
+"""
+
+from __future__ import annotations
+
+import re
+import shutil
+import sys
+import tempfile
+from collections import Counter
+from dataclasses import replace
+from pathlib import Path
+
+import numpy as np
+
+import adjust
+from adjust.errors import BrasscapError
+from adjust.graph.starts import find_start
+from tests.solver.space import SD as SDS
+from tests.solver.space import Array, Rows, Space, arrays, model, reference, write
+
+SEED = 20261205
+COORDINATES_M, SQUARE_SUM = 1e-6, 1e-6
+RELIEF = (300.0, 100.0, 30.0, 5.0, 1.0)
+
+
+def random_slopes(rng: np.random.Generator) -> Space:
+    """A network: stations 250 m apart, slopes to the five to eight nearest, directions in every third network."""
+    n = int(rng.integers(6, 21))
+    side = int(np.ceil(np.sqrt(1.3 * n)))
+    cells = rng.permutation(side * side)[:n]
+    plane = np.stack([cells % side, cells // side], axis=1) * 250.0 + rng.uniform(-70, 70, (n, 2)) + [4000, 7000]
+    relief = RELIEF[int(rng.integers(len(RELIEF)))]
+    truth = np.column_stack([plane, 200 + rng.uniform(0, relief, n)])
+    known = np.zeros((n, 3), dtype=bool)
+    marks = rng.permutation(n)[: int(rng.integers(3, 6))]
+    known[marks] = True
+    if rng.random() < 0.3:
+        known[marks[0], 2] = False
+        known[marks[1], :2] = False
+        known[rng.permutation(n)[:2], 2] = True
+    rows, sets = Rows(), 0
+    pointed = rng.random() < 1 / 3
+    for i in range(n):
+        hi = round(float(rng.uniform(1.4, 1.7)), 3)
+        near = np.argsort(np.hypot(*(plane - plane[i]).T))[1 : int(rng.integers(5, 9))].tolist()
+        for j in near:
+            above = (hi, round(float(rng.uniform(1.3, 2.0)), 3))
+            if rng.random() < 0.7:
+                rows.put("slope", (i, j), above, 0.0)
+        if pointed and rng.random() < 0.5:
+            for j in near:
+                rows.put("direction", (i, j), (hi, 1.5), 0.0, sets)
+            sets += 1
+    kind, ends, above_all, _, group = arrays(rows)
+    zero = rng.uniform(0, 2 * np.pi, max(sets, 1))
+    value = model(kind, ends, above_all, truth, 0.13) - np.where(group >= 0, zero[group], 0.0)
+    value = value + rng.normal(0, [SDS[k] for k in kind])
+    rows.value = np.where(kind == "direction", value % (2 * np.pi), value).tolist()
+    return Space([f"P{i}" for i in range(n)], truth, truth.copy(), known, rows, sets, (0.13, None))
+
+
+def with_blunder(space: Space, rng: np.random.Generator) -> None:
+    """One distance wrong by 0.1 m to 10 km."""
+    r = int(rng.choice(np.flatnonzero(np.array(space.rows.kind) == "slope")))
+    space.rows.value[r] += float(10 ** rng.uniform(-1, 4))
+
+
+def written(space: Space, folder: Path) -> Path:
+    """The job without starting coordinates."""
+    job = write(space, folder)
+    toml = (job / "job.toml").read_text()
+    (job / "job.toml").write_text(toml.replace('[[book]]\nfile = "stations.csv"\n', ""))
+    (job / "stations.csv").unlink()
+    return job
+
+
+def singular(space: Space) -> float:
+    """Least singular value of the reference's design at the truth, columns scaled, as a share of the largest."""
+    kind, ends, above, _, group = arrays(space.rows)
+    sd = np.array([SDS[k] for k in kind])
+    columns = []
+    for s, c in np.argwhere(~space.known).tolist():
+        step = np.zeros_like(space.truth)
+        step[s, c] = 0.01
+        d = model(kind, ends, above, space.truth + step, 0.13) - model(kind, ends, above, space.truth - step, 0.13)
+        columns.append(np.where(kind == "direction", np.remainder(d + np.pi, 2 * np.pi) - np.pi, d) / sd)
+    columns += [(group == g) / sd for g in range(space.sets)]
+    a = np.array(columns).T
+    a = a / np.maximum(np.linalg.norm(a, axis=0), 1e-300)
+    if a.shape[0] < a.shape[1]:
+        return 0.0
+    s = np.linalg.svd(a, compute_uv=False)
+    return float(s[-1] / s[0])
+
+
+def both_fit(space: Space, job: Path) -> bool:
+    """Whether both places named are solutions of the reference: each as good as the degrees of freedom allow."""
+    network = adjust.read(job).network
+    start = find_start(network)
+    order = [network.stations.index[name] for name in space.names]
+    sums = []
+    shapes: list[Array] = []
+    for x in (start.positions, *start.images):
+        xyz, _, square_sum = reference(replace(space, start=np.where(space.known, space.truth, x[order])))
+        sums.append(square_sum)
+        shapes.append(xyz)
+    apart = min(float(np.abs(shapes[0] - other).max()) for other in shapes[1:]) if len(shapes) > 1 else 0.0
+    return len(sums) > 1 and apart > 0.01 and max(sums) < 2 * min(sums) + 40
+
+
+def outcome(number: int, folder: Path, blunder: bool = False) -> tuple[str, float, str]:
+    """What happened to the network of a number; largest difference of coordinates in metres; words of a refusal."""
+    rng = np.random.default_rng([SEED, number])
+    space = random_slopes(rng)
+    if blunder:
+        with_blunder(space, rng)
+    job = written(space, folder)
+    sound = singular(space)
+    try:
+        solution = adjust.solve(adjust.read(job))
+    except BrasscapError as refusal:
+        text = "; ".join(refusal.sentences)
+        if "equally" in text:
+            good = blunder or both_fit(space, job)
+            return ("refused, two solutions" if good else "refused wrongly, two solutions"), sound, text
+        if "only just" in text:
+            return "refused, fixed only just", sound, text
+        free = bool(re.search("nothing fixes|held by|too few|row in stations", text)) and sound < 1e-7
+        return ("refused, not fixed" if free else "refused wrongly"), sound, text
+    xyz, _, square_sum = reference(space)
+    got = solution.positions[[solution.network.stations.index[name] for name in space.names]]
+    off = float(np.abs(got - xyz).max())
+    if blunder:
+        return (
+            (
+                "settled at the least"
+                if off < 1e-4 or solution.total.square_sum < square_sum * 1.001
+                else "settled elsewhere"
+            ),
+            off,
+            "",
+        )
+    good = off < COORDINATES_M and abs(solution.total.square_sum - square_sum) < SQUARE_SUM * (1 + square_sum)
+    return ("agrees" if good else "differs"), off, f"v'Pv {solution.total.square_sum:.4g} reference {square_sum:.4g}"
+
+
+def main() -> None:
+    """Run the study and print its table."""
+    blunder = "--blunder" in sys.argv
+    count = next((int(a) for a in sys.argv[1:] if a.isdigit()), 200)
+    tally: Counter[str] = Counter()
+    with tempfile.TemporaryDirectory() as place:
+        for number in range(count):
+            folder = Path(place) / str(number)
+            what, off, text = outcome(number, folder, blunder)
+            tally[what] += 1
+            if what in ("differs", "refused wrongly", "refused wrongly, two solutions", "settled elsewhere"):
+                print(f"network {number}: {what} {off:.1e} {text[:300]}", flush=True)
+            shutil.rmtree(folder, ignore_errors=True)
+    print(f"{count} networks of slope distances, seed {SEED}: " + ", ".join(f"{n} {w}" for w, n in tally.most_common()))
+
+
+if __name__ == "__main__":
+    main()
