@@ -24,7 +24,7 @@ from adjust.graph.sights import known_places
 from adjust.judge.booked import Booked
 from adjust.judge.closures import computed_traverses
 from adjust.judge.traversed import Traversed
-from adjust.network import Array
+from adjust.network import CHECK, Array
 from adjust.solver.solution import Solution
 from adjust.solver.threads import one_thread
 
@@ -83,13 +83,14 @@ def area(corners: Array) -> float:
 
 def balances(solution: Solution) -> tuple[Balance, ...]:
     """Every loop and link traverse by compass and transit rule, every levelled run (and loop of a known mark) by
-    length or set-ups, beside least squares. Loops without a known station begin at the adjusted place of their first;
-    links without a direction have no balance."""
+    length or set-ups, beside least squares. Loops without a known station begin at the adjusted place of their first.
+    Links without a direction have no balance, nor what ends at a mark that is only to be checked."""
     with one_thread():
         booked = Booked.of(solution)
+        checked = (booked.network.stations.role[:, :2] == CHECK).any(axis=1)
         out = []
         for one in computed_traverses(booked):
-            if not one.turnable:
+            if not one.turnable and (one.traverse.closed or not checked[list(one.traverse.stations)].any()):
                 out += _traverse(solution, booked, one)
         return (*out, *_levels(solution))
 
@@ -113,7 +114,9 @@ def _levels(solution: Solution) -> list[Balance]:
     job, network = solution.job, solution.job.network
     lines = Lines.of(network)
     known = known_heights(network)
-    runs = [run for run in level_loops(network, lines) if known[run.stations[0]]] + list(level_runs(network, lines))
+    carries = known & (network.stations.role[:, 2] != CHECK)
+    runs = [run for run in level_loops(network, lines) if known[list(run.stations[:-1])].sum() == 1]
+    runs += [run for run in level_runs(network, lines) if carries[[run.stations[0], run.stations[-1]]].all()]
     return [_level(solution, job, lines, run) for run in runs]
 
 

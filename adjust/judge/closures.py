@@ -147,11 +147,12 @@ def _traverse(booked: Booked, one: Traversed) -> Closure:
     east, north = one.east.value, one.north.value
     linear = math.hypot(east, north)
     misclosure |= {"east": east, "north": north, "linear": linear, "direction": math.atan2(east, north) % TURN}
-    plane = None if one.turnable else ((cov[0, 0], cov[0, 1]), (cov[1, 0], cov[1, 1]))
+    (ee, en), (ne, nn) = cov.tolist()
+    plane = None if one.turnable else ((ee, en), (ne, nn))
     along = np.array([east, north]) / linear if linear else np.array([1.0, 0.0])
     across = np.array([along[1], -along[0]])
     sideways = math.sqrt(max(float(across @ cov @ across), 0.0))
-    sd |= {"east": math.sqrt(cov[0, 0]), "north": math.sqrt(cov[1, 1])}
+    sd |= {"east": math.sqrt(ee), "north": math.sqrt(nn)}
     sd["linear"] = math.sqrt(max(float(along @ cov @ along), 0.0))
     if sideways < linear:  # else it has no direction worth the name
         sd["direction"] = sideways / linear

@@ -198,7 +198,7 @@ def _link(booked: Booked, one: Traverse) -> Traversed:
 
 
 def _along(base: Form, turned: list[Form], first: int, last: int) -> tuple[Form, ...]:
-    """Bearings of a link's legs; none gets a half circle from the opening angle: its line is looked along, not walked."""
+    """Bearings of a link's legs; the opening angle brings no half circle: its line is looked along, not walked."""
     out = [total([base, *turned[:first]])]
     for angle in turned[first:last]:
         out.append(_plus(total([out[-1], angle]), TURN / 2))

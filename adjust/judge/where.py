@@ -267,9 +267,9 @@ def _bisector(words: Words, walked: Walked) -> list[Hint]:
         away = abs(reached - due)
         wrong = wrap(math.atan2(ahead[0].value, ahead[1].value) - math.atan2(wanted[0].value, wanted[1].value))
         if away <= tolerance:
-            hints.append(Hint(away / (tolerance or 1.0), "the perpendicular bisector of the closing line passes "
-                              f"through {words.name(one.at)}: the angle there may be wrong by "
-                              f"{words.angle(wrong)} (its two ends lie equally far from it within {words.length(tolerance)})"))  # fmt: skip
+            hints.append(Hint(away / (tolerance or 1.0), "the perpendicular bisector of the closing line passes by "
+                              f"{words.name(one.at)}: the angle there may be wrong by {words.angle(wrong)} (both ends "
+                              f"of the line are equally far from it within {words.length(tolerance)})"))  # fmt: skip
     return _some(hints, len(done.turned))
 
 
