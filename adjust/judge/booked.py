@@ -26,7 +26,7 @@ from adjust.graph.parts import find_parts
 from adjust.graph.sights import Sights, Way
 from adjust.graph.starts import find_start
 from adjust.kinds import KINDS
-from adjust.network import CHECK, WEIGHTED, Array, Block, Ints, Network
+from adjust.network import CHECK, WEIGHTED, Array, Block, Bools, Ints, Network
 from adjust.solver.design import Design, State, Unknowns
 from adjust.solver.solution import Solution
 from adjust.units import TURN, wrap
@@ -235,11 +235,11 @@ class Booked:
     @cached_property
     def _by_vector(self) -> Array:
         """(R, v, 3) partials by the centring vectors at the provisional places."""
-        missing = np.isnan(self.places[:, :2]).any(axis=1)
+        missing: Bools = np.asarray(np.isnan(self.places[:, :2]).any(axis=1))
         numbers = self.design.linearise(State(self.places, self.groups)).by_vector
         for b, block in enumerate(self.network.blocks):  # a place that is not known tells nothing of its centring
             rows = np.flatnonzero(self.network.rows.block == b)
-            lost = np.asarray(missing[block.stations]).reshape(len(block), -1).any(axis=1)
+            lost: Bools = np.asarray(missing[block.stations].reshape(len(block), -1).any(axis=1))
             numbers[rows[lost[self.network.rows.row[rows]]]] = np.nan
         return numbers
 

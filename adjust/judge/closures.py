@@ -202,7 +202,7 @@ class _Judge:
 
     def _own(self, one: Closure) -> tuple[dict[str, float], str]:
         times = normal_critical(self.level)
-        allowable = {key: times * one.sd[key] for key in ("height", "angle") if key in one.sd}
+        allowable: dict[str, float] = {key: times * one.sd[key] for key in ("height", "angle") if key in one.sd}
         if "linear" in one.sd:
             allowable["linear"] = self._linear(one)
         level = self.job.settings.tests.significance

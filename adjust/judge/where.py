@@ -113,7 +113,7 @@ class Words:
     def row(self, row: int) -> str:
         """A reading by its id."""
         rows = self.job.network.rows
-        return self.job.network.blocks[rows.block[row]].name(int(rows.row[row]))
+        return str(self.job.network.blocks[rows.block[row]].name(int(rows.row[row])))
 
 
 def _some(hints: Iterable[Hint], of: int) -> list[Hint]:

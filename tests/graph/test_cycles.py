@@ -19,7 +19,7 @@ def random_graph(rng: np.random.Generator, nodes: int, extra: int) -> tuple[Ints
 
 
 def total_by_networkx(ends: Ints, size: Ints) -> tuple[int, int]:
-    """Number of loops and their total by networkx, which knows no edges side by side: each gets a node in its middle."""
+    """Number of loops and their total by networkx, which knows no edges side by side: each gets a node in it."""
     graph, n = networkx.Graph(), int(ends.max()) + 1
     for e, ((i, j), s) in enumerate(zip(ends.tolist(), size.tolist(), strict=True)):
         graph.add_edge(i, n + e, weight=s)

@@ -10,6 +10,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -84,7 +85,7 @@ def random_traverse(rng: np.random.Generator, shape: str, folder: Path) -> Made:
             _read(rng, made, "direction", (at, other), SD_POINTING)
         else:
             _read(rng, made, "angle", (at, one, other), SD_POINTING * math.sqrt(2))
-    for i, j in zip(walk, walk[1:], strict=False):
+    for i, j in pairwise(walk):
         for ends in [(i, j), (j, i)][: 1 + int(rng.random() < 0.6)]:
             d = abs(places[j] - places[i])
             _read(rng, made, "distance", ends, SD_CONST + SD_PPM * d)
@@ -160,7 +161,7 @@ def closed(made: Made, values: list[float]) -> tuple[float, complex]:
         bearing, inner = start + turned[0] - share, turned[1:]
     share = 0.0 if math.isnan(w) else w / len(turned)
     z = 0j
-    for k, (i, j) in enumerate(zip(made.walk, made.walk[1:], strict=False)):
+    for k, (i, j) in enumerate(pairwise(made.walk)):
         if k:
             bearing += inner[k - 1] - share + math.pi
         z += float(np.mean(length[frozenset((i, j))])) * complex(math.sin(bearing), math.cos(bearing))

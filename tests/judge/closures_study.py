@@ -44,7 +44,7 @@ def differences(made: Made, one: Closure) -> dict[str, float]:
 
 
 def levels(seed: int, folder: Path) -> tuple[float, float, int]:
-    """Largest differences of misclosures (metres) and standard deviations (relative) of a level net, and their number."""
+    """Largest differences of misclosures (metres) and standard deviations (relative) of a net; number of closures."""
     rng = np.random.default_rng(seed)
     n = int(rng.integers(4, 41))
     lines = level_net(rng, folder, n, known=int(rng.integers(0, 4)) if seed % 2 else 1)

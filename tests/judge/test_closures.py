@@ -1,4 +1,4 @@
-"""Closures: misclosures and standard deviations against an independent computation, verdicts, and what is not tested."""
+"""Closures: misclosures and standard deviations against an independent computation, verdicts, what is not tested."""
 
 from __future__ import annotations
 
@@ -18,7 +18,10 @@ from tests.helpers import close
 from tests.judge.closing import SHAPES, closed
 from tests.judge.closures_study import differences, levels, traverse
 
-HEAD = '[units]\nlength = "m"\nangle = "dms"\n[instruments.one]\ndistance = "2 mm"\ndirection = "3 sec"\nazimuth = "5 sec"\n'
+HEAD = (
+    '[units]\nlength = "m"\nangle = "dms"\n[instruments.one]\ndistance = "2 mm"\ndirection = "3 sec"\n'
+    'azimuth = "5 sec"\n'
+)
 
 
 def job(folder: Path, settings: str = HEAD, **tables: str) -> adjust.Job:
@@ -144,7 +147,7 @@ def test_a_rule_is_asked_first(tmp_path: Path) -> None:
 
 
 LINK = "station,east,north\nR,900,1000\nA,1000,1000\nB,1300,1000\nS,1400,1000\n"
-SHEET = ("at,back,fore,angle,distance\nA,R,P,180 00 00,100.003\nP,A,Q,180 00 04,100\nQ,P,B,180 00 05,100\n")  # fmt: skip
+SHEET = "at,back,fore,angle,distance\nA,R,P,180 00 00,100.003\nP,A,Q,180 00 04,100\nQ,P,B,180 00 05,100\n"
 
 
 def test_a_link_carries_its_bearing_to_the_known_one(tmp_path: Path) -> None:
@@ -189,9 +192,9 @@ def test_a_closing_bearing_that_was_derived_cannot_be_tested(tmp_path: Path) -> 
 
 
 def test_both_ways_of_a_leg_are_meaned(tmp_path: Path) -> None:
-    sheet = "at,back,fore,angle,distance,back_distance\n" + "".join(
-        f"{row},{back}\n" for row, back in zip((SHEET + "B,Q,S,180 00 00,\n").split("\n")[1:-1], ("", "100.009", "", ""),
-                                               strict=True))  # fmt: skip
+    rows = (SHEET + "B,Q,S,180 00 00,\n").split("\n")[1:-1]
+    booked = [f"{row},{back}\n" for row, back in zip(rows, ("", "100.009", "", ""), strict=True)]
+    sheet = "at,back,fore,angle,distance,back_distance\n" + "".join(booked)
     (one,) = closures(job(tmp_path, control=LINK, traverse=sheet))
     close(one.misclosure["east"], (100.003 + 100.009) / 2 - 100, atol=1e-6)
     close(one.sd["east"], 0.002 * math.sqrt(2.5), atol=1e-6)
@@ -199,7 +202,7 @@ def test_both_ways_of_a_leg_are_meaned(tmp_path: Path) -> None:
 
 def test_slopes_are_brought_to_the_plane(tmp_path: Path) -> None:
     """Two stations 30 m apart in height: the slopes are those of the plane's 100 m to the digits booked."""
-    control = ("station,east,north,height\nR,900,1000,0\nA,1000,1000,0\nB,1200,1000,0\nS,1400,1000,0\nP,,,30\n")  # fmt: skip
+    control = "station,east,north,height\nR,900,1000,0\nA,1000,1000,0\nB,1200,1000,0\nS,1400,1000,0\nP,,,30\n"
     frame = HEAD.replace("[instruments", "[frame]\nplane_height = 0\n[instruments") + 'zenith = "3 sec"\n'
     books = '[[book]]\nfile = "control.csv"\n[[book]]\nfile = "angles.csv"\n'
     books += '[[book]]\nfile = "distances.csv"\nsurface = "slope"\n'

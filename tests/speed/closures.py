@@ -2,8 +2,9 @@
 
     python tests/speed/closures.py [RUNS]
 
-Tests and precision of the readings are not part of the adjustment here. Two nets: lines with bench marks along them between junctions 3 to 8 lines apart, as levelling nets are; and a grid in
-which every station is a junction of four, the hardest for loops. One process, one job read before.
+An adjustment is the solution alone, without tests and precision. Two nets: lines with bench marks along them between
+junctions, as levelling nets are; and a grid in which every station is a junction of four, the hardest for loops. One
+process, one job read before.
 """
 
 from __future__ import annotations
@@ -12,6 +13,7 @@ import statistics
 import sys
 import tempfile
 import time
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -33,7 +35,7 @@ def level_net(folder: Path, junctions: int, between: int, rng: np.random.Generat
             middle = min(int(rng.integers(0, between + 1)), STATIONS - count)
             chain = [k, *range(count, count + middle), place[to]]
             count += middle
-            lines += [(a, b, float(rng.uniform(200, 1500))) for a, b in zip(chain, chain[1:], strict=False)]
+            lines += [(a, b, float(rng.uniform(200, 1500))) for a, b in pairwise(chain)]
     used = sorted({end for a, b, _ in lines for end in (a, b)})
     height = dict(zip(used, rng.uniform(0, 100, len(used)), strict=True))
     folder.mkdir(parents=True)
@@ -62,9 +64,9 @@ def main() -> None:
                 ratios.append((end - middle) / (middle - begin))
                 times.append((end - middle, middle - begin))
             a, b = (statistics.median(column) for column in zip(*times, strict=True))
-            print(f"{name}: {len(job.network.stations)} stations, {len(job.network.rows)} lines, {len(found)} closures: "
-                  f"closures / adjustment {statistics.median(ratios):.2f} ({min(ratios):.2f} to {max(ratios):.2f}), "
-                  f"medians {a:.2f} and {b:.2f} s")  # fmt: skip
+            print(f"{name}: {len(job.network.stations)} stations, {len(job.network.rows)} lines, "
+                  f"{len(found)} closures: closures / adjustment {statistics.median(ratios):.2f} "
+                  f"({min(ratios):.2f} to {max(ratios):.2f}), medians {a:.2f} and {b:.2f} s")  # fmt: skip
 
 
 if __name__ == "__main__":
