@@ -13,9 +13,11 @@ round C, no d is larger than the way along C, so each of these closed walks has 
 branch contain a cycle that avoids v, smaller than L, which later candidates span; the others are candidates of v.
 Nothing was asked of ties: any tree of shortest paths will do. Lines side by side are edges of their own.
 
-**Search in rounds.** With L given, only nodes within L/2 of a root matter. L starts at twice the mean loop and doubles
-until mu cycles are found; a round takes only what is longer than the last one's L. So the work is that of small
-neighbourhoods where loops are small, as they are in the field.
+**Search in rounds.** With L given, only nodes within L/2 of a root matter. L starts at one and a half mean loops and grows
+by half until mu cycles are found; a round takes only what is longer than the last one's L. A cycle that is not spanned
+yet has an edge outside the spanning forest whose own cycle with the forest is not spanned (else the sum would be), so
+after the first round one end of every such edge is enough as a root. So the work is that of small neighbourhoods where
+loops are small, as they are in the field.
 
 **Before that** stations that only one line leads to are stripped, and chains through stations with two lines become
 one edge each; neither changes the cycle space. A chain that ends where it began is a cycle by itself.
@@ -71,7 +73,8 @@ def minimum_basis(ends: Ints, size: Ints) -> list[Cycle]:
     through = [c for c in chains if c.a != c.b]
     for one in _Reduction(through).basis():
         basis.append((one.size, tuple(e for i in one.chains for e in through[i].edges)))
-    return [walked(edges, ends) for _, edges in sorted(basis)]
+    pairs = ends.tolist()
+    return [walked(edges, pairs) for _, edges in sorted(basis)]
 
 
 def contracted(ends: Ints, size: Ints) -> list[Chain]:
@@ -118,6 +121,7 @@ class _Reduction:
 
     def __init__(self, chains: list[Chain]) -> None:
         self.chains = chains
+        self.size = [c.size for c in chains]
         self.near: dict[int, dict[int, int]] = {}
         for k, c in enumerate(chains):
             self.near.setdefault(c.a, {})[k] = c.b
@@ -148,26 +152,32 @@ class _Reduction:
         """The chosen candidates by size."""
         taken: list[_Found] = []
         pivots: dict[int, int] = {}
-        total = sum(c.size for c in self.chains)
-        done, limit = 0, 4 * total // max(self.rank, 1)
+        done, limit = 0, 3 * sum(self.size) // max(self.rank, 1)
+        roots = set(self.near)
         while len(taken) < self.rank:
-            for one in sorted(self._candidates(done, limit)):
-                mask = one.mask
-                while mask and (pivot := pivots.get(mask.bit_length())):
-                    mask ^= pivot
-                if mask:
+            for one in sorted(self._candidates(roots, done, limit)):
+                if mask := _rest(one.mask, pivots):
                     pivots[mask.bit_length()] = mask
                     taken.append(one)
                     if len(taken) == self.rank:
                         break
-            done, limit = limit, 2 * limit
+            done, limit = limit, limit + limit // 2 + 1
+            roots = self._roots(pivots)
         return taken
 
-    def _candidates(self, above: int, limit: int) -> set[_Found]:
+    def _roots(self, pivots: dict[int, int]) -> set[int]:
+        """One end of every chain outside the forest whose own cycle with the forest is not spanned yet."""
+        out: set[int] = set()
+        for chain, bit in zip(self.chains, self.bit, strict=True):
+            if bit and chain.a not in out and chain.b not in out and _rest(bit, pivots):
+                out.add(chain.a)
+        return out
+
+    def _candidates(self, roots: set[int], above: int, limit: int) -> set[_Found]:
         """Candidates of a size in (above, limit]."""
         near = {i: dict(to) for i, to in self.near.items()}
         found: set[_Found] = set()
-        for root in sorted(near, key=lambda i: (-len(near[i]), i)):
+        for root in sorted(roots, key=lambda i: (-len(near[i]), i)):
             if root in near:
                 found |= self._from(root, near, above, limit)
                 after = list(near[root].values())
@@ -178,49 +188,66 @@ class _Reduction:
 
     def _from(self, root: int, near: dict[int, dict[int, int]], above: int, limit: int) -> set[_Found]:
         """Candidates of one root: a tree of shortest paths as far as half the limit, and the chains that close it."""
-        chains, bit = self.chains, self.bit
+        size = self.size
         distance: dict[int, int] = {}
-        path: dict[int, tuple[int, ...]] = {}
-        mask: dict[int, int] = {}
+        tree: dict[int, tuple[int, int]] = {}  # chain towards the root, and the node it comes from
+        branch: dict[int, int] = {}
         heap: list[tuple[int, int, int, int]] = [(0, root, -1, -1)]
         best = {root: 0}
+        found = set()
         while heap:
-            d, here, k, before = heapq.heappop(heap)
+            d, here, up, before = heapq.heappop(heap)
             if here in distance:
                 continue
-            distance[here] = d
-            path[here] = (*path[before], k) if before >= 0 else ()
-            mask[here] = mask[before] ^ bit[k] if before >= 0 else 0
+            distance[here], tree[here] = d, (up, before)
+            mine = branch[here] = up if before in (root, -1) else branch[before]
             for k, there in near[here].items():
-                along = d + chains[k].size
-                if 2 * along <= limit and there not in distance and along < best.get(there, limit):
+                along = d + size[k]
+                if there in distance:  # the later end of a chain that is no branch of the tree sees it close
+                    if k != up and branch[there] != mine and above < along + distance[there] <= limit:
+                        path = (*_path(tree, here), k, *_path(tree, there))
+                        found.add(self._found(along + distance[there], path))
+                elif 2 * along <= limit and along < best.get(there, limit):
                     best[there] = along
                     heapq.heappush(heap, (along, there, k, here))
-        found = set()
-        for here, d in distance.items():
-            mine = path[here]
-            for k, there in near[here].items():
-                if here < there and there in distance:
-                    size, other = d + chains[k].size + distance[there], path[there]
-                    if above < size <= limit and mine[:1] != other[:1] and k not in (*mine[-1:], *other[-1:]):
-                        both = tuple(sorted((*mine, k, *other)))
-                        found.add(_Found(size, len(both), both, mask[here] ^ bit[k] ^ mask[there]))
         return found
 
+    def _found(self, size: int, chains: tuple[int, ...]) -> _Found:
+        mask = 0
+        for k in chains:
+            mask ^= self.bit[k]
+        return _Found(size, len(chains), tuple(sorted(chains)), mask)
 
-def walked(edges: tuple[int, ...], ends: Ints) -> Cycle:
+
+def _rest(mask: int, pivots: dict[int, int]) -> int:
+    """What is left of a cycle after the chosen ones: 0 if they span it."""
+    while mask and (pivot := pivots.get(mask.bit_length())):
+        mask ^= pivot
+    return mask
+
+
+def _path(tree: dict[int, tuple[int, int]], here: int) -> list[int]:
+    """Chains from a node to the root."""
+    out = []
+    while (step := tree[here])[1] >= 0:
+        out.append(step[0])
+        here = step[1]
+    return out
+
+
+def walked(edges: tuple[int, ...], ends: list[list[int]]) -> Cycle:
     """The edges of a cycle in the order of a walk from its lowest node along its lowest edge there."""
     at: dict[int, list[int]] = {}
-    pairs = {e: (int(ends[e, 0]), int(ends[e, 1])) for e in sorted(edges)}
-    for e, pair in pairs.items():
-        for i in pair:
+    for e in sorted(edges):
+        for i in ends[e]:
             at.setdefault(i, []).append(e)
     here = min(at)
     nodes, order, e = [here], [at[here][0]], at[here][0]
     while True:
-        here = sum(pairs[e]) - here
+        here = sum(ends[e]) - here
         nodes.append(here)
         if here == nodes[0]:
             return Cycle(tuple(nodes), tuple(order))
-        e = next(other for other in at[here] if other != e)
+        one, other = at[here]
+        e = one if one != e else other
         order.append(e)

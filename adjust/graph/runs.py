@@ -8,7 +8,6 @@ one known height to another (or is a loop of one mark, which the loops have alre
 from __future__ import annotations
 
 from dataclasses import dataclass
-from itertools import pairwise
 
 import numpy as np
 
@@ -36,18 +35,19 @@ class Run:
 
 @dataclass(frozen=True)
 class Lines:
-    """The levelled lines: stations (m, 2), scalar rows (m,), length and set-ups (m, 2), variances (m,)."""
+    """The levelled lines: stations (m, 2), scalar rows, rises and variances (m,), length and set-ups (m, 2)."""
 
     ends: Ints
     row: Ints
     walked: Array
     variance: Array
+    rise: Array
 
     @classmethod
     def of(cls, network: Network) -> Lines:
         """Read the levelled lines off the blocks."""
         ends, row = [np.empty((0, 2), np.int64)], [np.empty(0, np.int64)]
-        walked, variance = [np.empty((0, 2))], [np.empty(0)]
+        walked, variance, rise = [np.empty((0, 2))], [np.empty(0)], [np.empty(0)]
         for b, block in enumerate(network.blocks):
             if KINDS[block.kind].says != "rise":
                 continue
@@ -57,7 +57,9 @@ class Lines:
             row.append(rows[given])
             walked.append(np.full((given.sum(), 2), np.nan) if block.walked is None else block.walked[given])
             variance.append(block.sd[given, 0] ** 2)
-        return cls(np.concatenate(ends), np.concatenate(row), np.concatenate(walked), np.concatenate(variance))
+            rise.append(block.values[given, 0])
+        return cls(np.concatenate(ends), np.concatenate(row), np.concatenate(walked), np.concatenate(variance),
+                   np.concatenate(rise))  # fmt: skip
 
     @property
     def measure(self) -> str:
@@ -99,6 +101,8 @@ def level_runs(network: Network, lines: Lines | None = None) -> tuple[Run, ...]:
     """Runs between different known heights, by size: a basis of minimal total size of what the known heights close."""
     lines = lines or Lines.of(network)
     known = known_heights(network)
+    if known[np.unique(lines.ends)].sum() < 2:
+        return ()
     hub = len(network.stations)
     ends, size = np.where(known[lines.ends], hub, lines.ends), lines.size
     found = [
@@ -136,8 +140,10 @@ def _run(kind: str, walk: Cycle, lines: Lines) -> Run:
 
 def signs(network: Network, run: Run) -> Array:
     """(k,) +1 for every line walked as it was levelled, -1 against; for two lines between two stations as well."""
-    numbering, out = network.rows, []
-    for (row,), (here, _) in zip(run.rows, pairwise(run.stations), strict=True):
-        block = network.blocks[numbering.block[row]]
-        out.append(1.0 if block.stations[numbering.row[row], 0] == here else -1.0)
-    return np.array(out)
+    rows = np.array([row for (row,) in run.rows])
+    start = np.empty(len(rows), dtype=np.int64)
+    blocks, lines = network.rows.block[rows], network.rows.row[rows]
+    for b in np.unique(blocks):
+        here = blocks == b
+        start[here] = network.blocks[b].stations[lines[here], 0]
+    return np.where(start == np.array(run.stations[:-1]), 1.0, -1.0)

@@ -124,9 +124,7 @@ def _level(solution: Solution, job: Job, lines: Lines, run: Run) -> Balance:
     network, known = job.network, job.network.stations.known[:, 2]
     place = {row: k for k, row in enumerate(lines.row.tolist())}
     rows = [row for (row,) in run.rows]
-    numbering = network.rows
-    rises = np.array([network.blocks[numbering.block[r]].values[numbering.row[r], 0] for r in rows])
-    steps = rises * signs(network, run)
+    steps = lines.rise[[place[row] for row in rows]] * signs(network, run)
     first, last = run.stations[0], run.stations[-1]
     misclosure = math.fsum(steps.tolist()) + (0.0 if run.kind == LOOP else float(known[first] - known[last]))
     sizes = lines.walked[[place[row] for row in rows]]

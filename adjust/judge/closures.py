@@ -44,7 +44,7 @@ class Closure:
     length: float | None
     """Length walked; None where it was not booked."""
     count: int
-    """Angles turned, or set-ups (lines where set-ups were not booked), for rules by a root of their number."""
+    """What ``counted`` says, for rules by a root of their number."""
     misclosure: dict[str, float]
     """Computed minus known: height; angle; east, north, linear, direction (its bearing)."""
     ratio: float | None
@@ -61,6 +61,8 @@ class Closure:
     """Of height, angle and linear."""
     plane: tuple[tuple[float, float], tuple[float, float]] | None = None
     """Covariance of the misclosure in east and north; None where it has one dimension only."""
+    counted: str = "angles"
+    """angles; legs of a traverse by bearings; set-ups; lines where set-ups were not booked."""
 
 
 Rule = Callable[[Closure], tuple[dict[str, float], str]]
@@ -100,19 +102,20 @@ def _levels(job: Job) -> list[tuple[Closure, where.Levels]]:
     lines = Lines.of(network)
     if not len(lines.row):
         return []
-    walked = dict(zip(lines.row.tolist(), lines.walked.tolist(), strict=True))
-    variance = dict(zip(lines.row.tolist(), lines.variance.tolist(), strict=True))
-    rises = {int(r): float(network.blocks[network.rows.block[r]].values[network.rows.row[r], 0]) for r in lines.row}
+    place = np.full(len(network.rows), -1)
+    place[lines.row] = np.arange(len(lines.row))
     out = []
     for run in (*level_loops(network, lines), *level_runs(network, lines)):
         rows = [row for (row,) in run.rows]
-        along = signs(network, run) * np.array([rises[row] for row in rows])
+        here = place[rows]
+        along = signs(network, run) * lines.rise[here]
         w = math.fsum(along.tolist()) + _known_difference(job, run)
-        sd = math.sqrt(_height_variance(job, run, rows, [variance[row] for row in rows]))
-        lengths, setups = np.array([walked[row] for row in rows]).T
-        count = len(rows) if np.isnan(setups).any() else round(float(setups.sum()))
+        sd = math.sqrt(_height_variance(job, run, rows, lines.variance[here].tolist()))
+        lengths, setups = lines.walked[here].T
+        count, counted = (len(rows), "lines") if np.isnan(setups).any() else (round(float(setups.sum())), "set-ups")
         length = None if np.isnan(lengths).any() else math.fsum(lengths.tolist())
-        one = Closure(run.kind, run.stations, tuple(rows), length, count, {"height": w}, None, {"height": sd})
+        one = Closure(run.kind, run.stations, tuple(rows), length, count, {"height": w}, None, {"height": sd},
+                      counted=counted)  # fmt: skip
         out.append((one, where.Levels(along)))
     return out
 
@@ -126,9 +129,9 @@ def _known_difference(job: Job, run: Run) -> float:
 def _height_variance(job: Job, run: Run, rows: list[int], variances: list[float]) -> float:
     """b'Qb of the lines, and of marks that are not held without error."""
     network = job.network
-    signed = dict(zip(rows, signs(network, run).tolist(), strict=True))
     marks = {} if run.kind == LOOP else {(run.stations[0], 2): 1.0, (run.stations[-1], 2): -1.0}
     if network.clusters or any(network.stations.role[i, 2] != HELD for i, _ in marks):
+        signed = dict(zip(rows, signs(network, run).tolist(), strict=True))
         booked = Booked(job, network, np.full((len(network.stations), 3), np.nan), np.zeros(len(network.groups)))
         return float(booked.covariance([Form(0.0, signed, marks)])[0, 0])
     return math.fsum(variances)
@@ -157,7 +160,8 @@ def _traverse(booked: Booked, one: Traversed) -> Closure:
     if sideways < linear:  # else it has no direction worth the name
         sd["direction"] = sideways / linear
     return Closure(one.traverse.kind, one.traverse.stations, rows, one.length, len(one.turned) or len(one.legs),
-                   misclosure, one.length / linear if linear else None, sd, plane=plane)  # fmt: skip
+                   misclosure, one.length / linear if linear else None, sd, plane=plane,
+                   counted="angles" if one.turned else "legs")  # fmt: skip
 
 
 def _triangles(booked: Booked, traverses: list[Traverse]) -> list[Closure]:
@@ -198,7 +202,8 @@ class _Judge:
             verdicts["angle"] = UNTESTED
         verdict = next((v for v in (NOT_MET, UNTESTED) if v in verdicts.values()), MET if verdicts else UNTESTED)
         one = replace(one, allowable=allowable, rule=text, verdict=verdict, verdicts=verdicts)
-        return replace(one, sentence=where.sentence(self.job, one, context))
+        words = where.sentence(self.job, one, context)
+        return replace(one, sentence=words) if words else one
 
     def _own(self, one: Closure) -> tuple[dict[str, float], str]:
         times = normal_critical(self.level)

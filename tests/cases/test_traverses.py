@@ -135,6 +135,7 @@ def test_the_program_closes_the_readings_as_booked_alike(name: str) -> None:
     close([one.misclosure["east"] / unit, one.misclosure["north"] / unit], by_hand.misclosure, atol=slack)
     assert one.length is not None
     close(one.length / unit, by_hand.length.sum(), atol=1e-9)
+    assert (one.counted, one.count) == ("legs", len(by_hand.length))
     assert "angles" in one.sentence  # bearings of every leg leave nothing to sum
 
 
