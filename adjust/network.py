@@ -93,6 +93,8 @@ class Block:
     """(m, 2) how far the target stood beyond its mark and to the right of it, seen from the instrument, metres."""
     constant: Array | None = None
     """(m,) value of the group unknown for rows without one (a fixed refraction coefficient); None: zero."""
+    walked: Array | None = None
+    """(m, 2) length in metres and number of set-ups of levelled lines, NaN where not booked; None: not of this kind."""
     corrections: tuple[tuple[str, Array], ...] = ()
     """Name and amount (m,) of every correction between the booked value and ``values``."""
     booked: tuple[str, ...] = ()
@@ -113,7 +115,7 @@ class Block:
         return replace(
             self, stations=self.stations[rows], values=self.values[rows], sd=self.sd[rows], group=self.group[rows],
             held=self.held[rows], line=self.line[rows], above=cut(self.above), offset=cut(self.offset),
-            constant=cut(self.constant), eccentric=None,
+            constant=cut(self.constant), eccentric=None, walked=cut(self.walked),
         )  # fmt: skip
 
     def name(self, i: int) -> str:
@@ -153,6 +155,13 @@ class Rows:
     block: Ints
     row: Ints
     part: Ints
+
+    def of_block(self, b: int, m: int) -> Ints:
+        """(m,) number of the first given part of every row of block ``b``, -1 where it has none."""
+        out = np.full(m, -1, dtype=np.int64)
+        here = np.flatnonzero(self.block == b)[::-1]
+        out[self.row[here]] = here
+        return out
 
     @classmethod
     def of(cls, blocks: tuple[Block, ...]) -> Rows:

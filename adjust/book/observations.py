@@ -94,6 +94,7 @@ class Observations:
                 booked=() if cells.table.kind == kind.table else sheet.value,
                 setup=np.array([setup[i] for i in use], dtype=np.int64),
                 eccentric=self._eccentric(kind, [precision[i] for i in use]),
+                walked=_walked(cells, sheet, use),
             )
         )
 
@@ -266,3 +267,12 @@ def _offsets(cells: Cells, kind: Kind, use: list[int]) -> Array | None:
     columns = [cells.values(f.name, use)[use] if f.name in names else np.zeros(len(use)) for f in OFFSET]
     out = np.nan_to_num(np.stack(columns, axis=1))
     return out if out.any() else None
+
+
+def _walked(cells: Cells, sheet: Sheet, use: list[int]) -> Array | None:
+    """Lengths in metres and set-ups (m, 2) of levelled lines as far as they were booked; None for other kinds."""
+    columns = (sheet.kind.length_column, sheet.kind.setup_column)
+    if not all(columns):
+        return None
+    sizes = [sheet.sizes[c] if c in sheet.sizes else cells.values(c, use) for c in columns]
+    return np.stack([size[use] for size in sizes], axis=1).reshape(len(use), 2)

@@ -1,0 +1,221 @@
+"""Closures: does it close? Misclosures of everything that closes, their own standard deviations, and verdicts.
+
+A misclosure w = computed - known is a sum of readings, w = b'l + constants, so its variance is b'Qb with the full
+covariance Q of the readings (centring and targets included, adjust.judge.booked). Without a rule of the job a
+misclosure is compared with that: two-sided normal at a level a, and for the linear misclosure (E, N) with covariance C
+the ellipse w'C^-1 w <= -2 ln a (chi-square with two degrees), cut along the misclosure. The level a is that of one of
+all tests of closures here, so that a sound job has none that fails with probability 1 - significance (Sidak 1967, as if
+they were independent).
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from adjust.book.job import Job
+from adjust.graph.runs import LOOP, Lines, Run, level_loops, level_runs, signs
+from adjust.graph.traverses import Traverse, find_traverses, find_triangles
+from adjust.judge import where
+from adjust.judge.booked import Booked, Form, total
+from adjust.judge.critical import job_level, normal_critical
+from adjust.judge.traversed import Traversed, traversed
+from adjust.kinds import KINDS
+from adjust.network import HELD
+from adjust.solver.solution import Solution
+from adjust.solver.threads import one_thread
+from adjust.units import TURN, wrap
+
+TESTED = ("height", "angle", "linear")
+MET, NOT_MET, UNTESTED = "met", "not met", "cannot be tested"
+
+
+@dataclass(frozen=True)
+class Closure:
+    """One closure; lengths in metres, angles in radians."""
+
+    kind: str
+    stations: tuple[int, ...]
+    rows: tuple[int, ...]
+    """Scalar rows of all its readings."""
+    length: float | None
+    """Length walked; None where it was not booked."""
+    count: int
+    """What ``counted`` says, for rules by a root of their number."""
+    misclosure: dict[str, float]
+    """Computed minus known: height; angle; east, north, linear, direction (its bearing)."""
+    ratio: float | None
+    """Length over linear misclosure."""
+    sd: dict[str, float]
+    """Standard deviations of the same from the readings; of linear in its own direction."""
+    allowable: dict[str, float] = field(default_factory=dict)
+    rule: str = ""
+    verdict: str = UNTESTED
+    """The worst of ``verdicts``; what cannot be tested counts less than what fails."""
+    sentence: str = ""
+    """Why something cannot be tested, or where to look."""
+    verdicts: dict[str, str] = field(default_factory=dict)
+    """Of height, angle and linear."""
+    plane: tuple[tuple[float, float], tuple[float, float]] | None = None
+    """Covariance of the misclosure in east and north; None where it has one dimension only."""
+    counted: str = "angles"
+    """angles; legs of a traverse by bearings; set-ups; lines where set-ups were not booked."""
+
+
+Rule = Callable[[Closure], tuple[dict[str, float], str]]
+"""From a closure without verdict to what is allowed (height, angle, linear) and the rule's text; ({}, '') if it does
+not say."""
+
+
+def closures(what: Job | Solution, rule: Rule | None = None) -> tuple[Closure, ...]:
+    """All closures of a job: level loops and runs, then loop and link traverses, then triangles.
+
+    Of a solution the same, reduced at the adjusted places instead of the starting ones.
+    """
+    with one_thread():
+        job = what if isinstance(what, Job) else what.job
+        found: list[tuple[Closure, where.Levels | where.Walked | None]] = [*_levels(job)]
+        if any(KINDS[block.kind].says in ("length", "pointings") for block in job.network.blocks):
+            booked = Booked.of(what)
+            computed = computed_traverses(booked)
+            found += [(_traverse(booked, one), where.Walked(booked, one)) for one in computed]
+            found += [(one, None) for one in _triangles(booked, [one.traverse for one in computed])]
+        tests = sum(key in one.misclosure for one, _ in found for key in TESTED)
+        judge = _Judge(job, rule, job_level(job.settings.tests.significance, tests))
+        return where.with_common(job, tuple(judge.judged(one, context) for one, context in found))
+
+
+def computed_traverses(booked: Booked) -> tuple[Traversed, ...]:
+    """The traverses of a job, computed."""
+    sights = booked.sights
+    lengths = {pair: booked.leg(*pair).value for pair in sights.legs}
+    usable = {pair: rows for pair, rows in sights.legs.items() if lengths[pair] > 0}  # NaN: no place reduces it
+    sights.legs = usable
+    return tuple(traversed(booked, one) for one in find_traverses(booked.network, sights, lengths))
+
+
+def _levels(job: Job) -> list[tuple[Closure, where.Levels]]:
+    network = job.network
+    lines = Lines.of(network)
+    if not len(lines.row):
+        return []
+    place = np.full(len(network.rows), -1)
+    place[lines.row] = np.arange(len(lines.row))
+    out = []
+    for run in (*level_loops(network, lines), *level_runs(network, lines)):
+        rows = [row for (row,) in run.rows]
+        here = place[rows]
+        along = signs(network, run) * lines.rise[here]
+        w = math.fsum(along.tolist()) + _known_difference(job, run)
+        sd = math.sqrt(_height_variance(job, run, rows, lines.variance[here].tolist()))
+        lengths, setups = lines.walked[here].T
+        count, counted = (len(rows), "lines") if np.isnan(setups).any() else (round(float(setups.sum())), "set-ups")
+        length = None if np.isnan(lengths).any() else math.fsum(lengths.tolist())
+        one = Closure(run.kind, run.stations, tuple(rows), length, count, {"height": w}, None, {"height": sd},
+                      counted=counted)  # fmt: skip
+        out.append((one, where.Levels(along)))
+    return out
+
+
+def _known_difference(job: Job, run: Run) -> float:
+    """Height at the beginning less that at the end; zero for a loop."""
+    known = job.network.stations.known[:, 2]
+    return 0.0 if run.kind == LOOP else float(known[run.stations[0]] - known[run.stations[-1]])
+
+
+def _height_variance(job: Job, run: Run, rows: list[int], variances: list[float]) -> float:
+    """b'Qb of the lines, and of marks that are not held without error."""
+    network = job.network
+    marks = {} if run.kind == LOOP else {(run.stations[0], 2): 1.0, (run.stations[-1], 2): -1.0}
+    if network.clusters or any(network.stations.role[i, 2] != HELD for i, _ in marks):
+        signed = dict(zip(rows, signs(network, run).tolist(), strict=True))
+        booked = Booked(job, network, np.full((len(network.stations), 3), np.nan), np.zeros(len(network.groups)))
+        return float(booked.covariance([Form(0.0, signed, marks)])[0, 0])
+    return math.fsum(variances)
+
+
+def _traverse(booked: Booked, one: Traversed) -> Closure:
+    """The closure of a computed traverse."""
+    run = one.traverse.run(booked.sights)
+    rows = tuple(sorted({*(row for rows in run.rows for row in rows), *(one.angle.rows if one.angle else ())}))
+    misclosure: dict[str, float] = {}
+    sd: dict[str, float] = {}
+    if one.angle is not None:
+        misclosure["angle"] = one.angle.value
+        sd["angle"] = math.sqrt(booked.covariance([one.angle])[0, 0])
+    cov = booked.covariance([one.east, one.north])
+    east, north = one.east.value, one.north.value
+    linear = math.hypot(east, north)
+    misclosure |= {"east": east, "north": north, "linear": linear, "direction": math.atan2(east, north) % TURN}
+    (ee, en), (ne, nn) = cov.tolist()
+    plane = None if one.turnable else ((ee, en), (ne, nn))
+    along = np.array([east, north]) / linear if linear else np.array([1.0, 0.0])
+    across = np.array([along[1], -along[0]])
+    sideways = math.sqrt(max(float(across @ cov @ across), 0.0))
+    sd |= {"east": math.sqrt(ee), "north": math.sqrt(nn)}
+    sd["linear"] = math.sqrt(max(float(along @ cov @ along), 0.0))
+    if sideways < linear:  # else it has no direction worth the name
+        sd["direction"] = sideways / linear
+    return Closure(one.traverse.kind, one.traverse.stations, rows, one.length, len(one.turned) or len(one.legs),
+                   misclosure, one.length / linear if linear else None, sd, plane=plane,
+                   counted="angles" if one.turned else "legs")  # fmt: skip
+
+
+def _triangles(booked: Booked, traverses: list[Traverse]) -> list[Closure]:
+    """Sums of three angles, except of three-sided loop traverses, which have them already."""
+    without = {frozenset(one.stations) for one in traverses if one.closed and not one.by_bearings and not one.missing}
+    out = []
+    for run in find_triangles(booked.sights, {s for s in without if len(s) == 3}):
+        i, j, k, _ = run.stations
+        forms = [booked.turned(*corner) for corner in ((i, j, k), (j, k, i), (k, i, j))]
+        sum_of = total([form for form in forms if form])
+        sd = math.sqrt(booked.covariance([sum_of])[0, 0])
+        rows = tuple(sorted(sum_of.rows))
+        out.append(Closure(run.kind, run.stations, rows, None, 3, {"angle": wrap(sum_of.value - TURN / 2)}, None,
+                           {"angle": sd}))  # fmt: skip
+    return out
+
+
+@dataclass(frozen=True)
+class _Judge:
+    """Verdicts by a rule, else by the misclosure's own standard deviation."""
+
+    job: Job
+    rule: Rule | None
+    level: float
+    """Significance of one test."""
+
+    def judged(self, one: Closure, context: where.Levels | where.Walked | None) -> Closure:
+        """The closure with what is allowed, verdicts, and where to look."""
+        allowable, text = self.rule(one) if self.rule else ({}, "")
+        if not allowable:
+            allowable, text = self._own(one)
+        verdicts = {
+            key: (MET if abs(one.misclosure[key]) <= most else NOT_MET) if math.isfinite(most) else UNTESTED
+            for key, most in allowable.items()
+            if key in one.misclosure
+        }
+        if isinstance(context, where.Walked) and context.traversed.angle is None:
+            verdicts["angle"] = UNTESTED
+        verdict = next((v for v in (NOT_MET, UNTESTED) if v in verdicts.values()), MET if verdicts else UNTESTED)
+        one = replace(one, allowable=allowable, rule=text, verdict=verdict, verdicts=verdicts)
+        words = where.sentence(self.job, one, context)
+        return replace(one, sentence=words) if words else one
+
+    def _own(self, one: Closure) -> tuple[dict[str, float], str]:
+        times = normal_critical(self.level)
+        allowable: dict[str, float] = {key: times * one.sd[key] for key in ("height", "angle") if key in one.sd}
+        if "linear" in one.sd:
+            allowable["linear"] = self._linear(one)
+        level = self.job.settings.tests.significance
+        return allowable, f"its own standard deviation, at a significance of {level:g} for all closures together"
+
+    def _linear(self, one: Closure) -> float:
+        """How far the ellipse of the misclosure reaches in its direction; along a line, the normal interval."""
+        if one.plane is None or one.misclosure["linear"] == 0:
+            return normal_critical(self.level) * one.sd["linear"]
+        w = np.array([one.misclosure["east"], one.misclosure["north"]]) / one.misclosure["linear"]
+        return math.sqrt(-2 * math.log(self.level) / float(w @ np.linalg.pinv(np.array(one.plane), hermitian=True) @ w))
