@@ -13,9 +13,9 @@ round C, no d is larger than the way along C, so each of these closed walks has 
 branch contain a cycle that avoids v, smaller than L, which later candidates span; the others are candidates of v.
 Nothing was asked of ties: any tree of shortest paths will do. Lines side by side are edges of their own.
 
-**Search in rounds.** With L given, only nodes within L/2 of a root matter. L starts at one and a half mean loops and grows
+**Search in rounds.** With L given, only nodes within L/2 of a root matter. L starts at the mean loop and grows
 by half until mu cycles are found; a round takes only what is longer than the last one's L. A cycle that is not spanned
-yet has an edge outside the spanning forest whose own cycle with the forest is not spanned (else the sum would be), so
+yet has an edge outside the spanning forest whose own cycle with the forest is not spanned (the sum would be), so
 after the first round one end of every such edge is enough as a root. So the work is that of small neighbourhoods where
 loops are small, as they are in the field.
 
@@ -152,7 +152,7 @@ class _Reduction:
         """The chosen candidates by size."""
         taken: list[_Found] = []
         pivots: dict[int, int] = {}
-        done, limit = 0, 3 * sum(self.size) // max(self.rank, 1)
+        done, limit = 0, 2 * sum(self.size) // max(self.rank, 1)
         roots = set(self.near)
         while len(taken) < self.rank:
             for one in sorted(self._candidates(roots, done, limit)):

@@ -83,6 +83,7 @@ def _rows(block: Block, keep: Array) -> Block:
     return replace(
         block, stations=block.stations[keep], values=block.values[keep], sd=block.sd[keep], group=block.group[keep],
         held=block.held[keep], line=block.line[keep], ids=ids, precision=precision,
+        walked=None if block.walked is None else block.walked[keep],
     )  # fmt: skip
 
 

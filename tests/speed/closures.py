@@ -52,7 +52,7 @@ def main() -> None:
     """Print the ratios."""
     runs = int(sys.argv[1]) if len(sys.argv) > 1 else 5
     with tempfile.TemporaryDirectory() as place:
-        for name, junctions, between in (("lines between junctions", 26, 7), ("grid of junctions", 70, 0)):
+        for name, junctions, between in (("lines between junctions", 27, 8), ("grid of junctions", 71, 0)):
             job = level_net(Path(place) / name, junctions, between, np.random.default_rng(5))
             ratios, times = [], []
             for _ in range(runs):
