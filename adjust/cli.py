@@ -108,15 +108,16 @@ def _start(given: argparse.Namespace) -> int:
 
 def _check(given: argparse.Namespace) -> int:
     clock = _Clock(given.verbose)
-    from adjust import check, read
+    from adjust import read
+    from adjust.judge.check import look
 
     job = read(given.job)
     clock.phase("read")
-    lines = check(job)
+    seen = look(job)
     clock.phase("check")
     if not given.quiet:
-        print("\n".join([*lines, CAUTION_SHORT]))
-    return DONE
+        print("\n".join([*seen.lines, CAUTION_SHORT]))
+    return FAILED if seen.failed else DONE
 
 
 def _adjust(given: argparse.Namespace) -> int:

@@ -25,6 +25,7 @@ import numpy as np
 
 from adjust.book.level_lines import StaffLine, StaffTable
 from adjust.book.reductions import Reduction
+from adjust.book.rules import Limit
 from adjust.network import Array
 from adjust.units import RHO_SEC, small_length
 
@@ -85,8 +86,11 @@ def _of_line(legs: Legs, line: StaffLine, lasting: set[str]) -> list[Section]:
     return [s for s in out if s.ends[0] != s.ends[1]]
 
 
-def sections(books: list[Legs], lasting: set[str], significance: float) -> list[Reduction]:
-    """Every pair of runs of one section, their sum, and the standard deviation that they show."""
+def sections(books: list[Legs], lasting: set[str], significance: float, rule: Limit | None = None) -> list[Reduction]:
+    """Every pair of runs of one section, their sum, and the standard deviation that they show.
+
+    Without a rule of the job they are compared with their standard deviations, all together at its significance.
+    """
     by_ends: dict[tuple[str, ...], list[Section]] = {}
     for legs in books:
         for section in runs_of(legs, lasting):
@@ -94,13 +98,15 @@ def sections(books: list[Legs], lasting: set[str], significance: float) -> list[
     pairs = [(runs[k], runs[k + 1]) for runs in by_ends.values() for k in range(0, len(runs) - 1, 2)]
     odd = [(runs[-2], runs[-1]) for runs in by_ends.values() if len(runs) > 2 and len(runs) % 2]
     unit = books[0].table.cells.table.units.length
-    limit = NormalDist().inv_cdf(1.0 - significance / 2.0)
+    tests = max(1, len(pairs) + len(odd))
+    one_test = 1.0 - (1.0 - significance) ** (1.0 / tests)  # Sidak 1967, as for closures
+    limit = NormalDist().inv_cdf(1.0 - one_test / 2.0)
     out = []
     so_far = 0.0
     for one, other in pairs:
         so_far += difference(one, other)
-        out.append(_compared(one, other, limit, so_far, unit))
-    out += [_compared(one, other, limit, None, unit) for one, other in odd]
+        out.append(_compared(one, other, limit, so_far, unit, rule))
+    out += [_compared(one, other, limit, None, unit, rule) for one, other in odd]
     return out + (_together(pairs) if pairs else [])
 
 
@@ -109,23 +115,30 @@ def difference(one: Section, other: Section) -> float:
     return one.rise + (other.rise if one.ends == other.ends[::-1] else -other.rise)
 
 
-def _compared(one: Section, other: Section, limit: float, so_far: float | None, unit: str) -> Reduction:
+def _compared(
+    one: Section, other: Section, limit: float, so_far: float | None, unit: str, rule: Limit | None
+) -> Reduction:
     d, sd = difference(one, other), math.sqrt(one.variance + other.variance)
     opposite = one.ends == other.ends[::-1]
-    met = abs(d) <= limit * sd
+    allowable: float | None = limit * sd
+    if rule:
+        allowable = rule.allowance.allowable(_mean_length(one, other), None, min(one.setups, other.setups))
+    met = allowable is not None and abs(d) <= allowable
     way = "forward and back" if opposite else "run twice the same way"
     of = f"{one.ends[0]} to {one.ends[1]}, {one.line} and {other.line}"
-    size, allowed = (small_length(abs(x), unit).lstrip("+") for x in (d, limit * sd))
-    sentence = "" if met else (
-        f"{of}, {way}: the two runs differ by {size}, more than the {allowed} which their standard deviations allow."
-    )  # fmt: skip
+    size, allowed = (small_length(abs(x), unit).lstrip("+") for x in (d, allowable or 0.0))
+    by = f"of {rule.words}" if rule else "which their standard deviations allow"
+    sentence = f"{of}, {way}: the two runs differ by {size}, more than the {allowed} {by}."
+    if allowable is None:
+        sentence = f"{of}: {by} asks for the length of the section, which was not booked."
     values: dict[str, float | None] = {
         "first": one.rise, "second": -other.rise if opposite else other.rise, "difference": d, "sd_difference": sd,
-        "allowable": limit * sd, "length": _mean_length(one, other), "accumulated": so_far,
+        "allowable": allowable, "length": _mean_length(one, other), "accumulated": so_far,
     }  # fmt: skip
     files = one.file if one.file == other.file else f"{one.file}, {other.file}"
     places = one.places + other.places
-    return Reduction("sections", of, files, places, values, "length", "met" if met else "not met", sentence)
+    verdict = "cannot be tested" if allowable is None else "met" if met else "not met"
+    return Reduction("sections", of, files, places, values, "length", verdict, "" if met else sentence)
 
 
 def _mean_length(one: Section, other: Section) -> float | None:

@@ -15,6 +15,7 @@ from adjust.book.job import Aside
 from adjust.book.lay import lay_of
 from adjust.book.marks import Marks
 from adjust.book.reductions import LedgerLine, Reduction
+from adjust.book.rules import Tolerance
 from adjust.book.settings import Settings
 from adjust.book.sheet import Sheet
 from adjust.book.stated import stated_sds
@@ -29,6 +30,7 @@ class Observations:
 
     def __init__(self, settings: Settings, marks: Marks, faults: Faults, booked: dict[str, str]) -> None:
         self.settings, self.marks, self.faults, self.booked = settings, marks, faults, booked
+        self.tolerance = Tolerance()
         self.blocks: list[Block] = []
         self.groups: list[Group] = []
         self.left_out: list[Aside] = []

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import hashlib
-from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -143,6 +142,11 @@ class _JobReader:
                 if one.table.kind == kind:
                     marks.add(one)
         observations = Observations(self.settings, marks, self.faults, booked)
+        observations.tolerance, files = resolve(
+            self.settings.allowances, self.settings.rules, line_of(self.settings.lines, "tolerance.rule"), self.folder,
+            self.faults,
+        )  # fmt: skip
+        self.inputs += files
         levels = level_books(observations, cells)
         for one in cells:
             if one.table.kind in TABLES:
@@ -155,11 +159,6 @@ class _JobReader:
                 add_rounds(observations, one)
         compare_sections(observations, levels)
         pairs = [pair for one in cells if one.table.kind == "pairs" for pair in self._pairs(one, marks, booked)]
-        tolerance, files = resolve(
-            self.settings.allowances, self.settings.rules, line_of(self.settings.lines, "tolerance.rule"), self.folder,
-            self.faults,
-        )  # fmt: skip
-        self.inputs += files
         self._check_datum(marks)
         self._warn(tables, [name for name in marks.names if name not in levels.private])
         if not self.faults.all and not any(len(b) for b in observations.blocks):
@@ -167,12 +166,7 @@ class _JobReader:
                 "job.toml", 0, "", "", "the job has no readings; add a table such as distances.csv or levelled.csv"
             )
         self.faults.stop()
-        return replace(
-            self._job(tables, marks, observations, pairs),
-            tolerance=tolerance,
-            reductions=tuple(observations.reductions),
-            ledger=tuple(observations.ledger),
-        )
+        return self._job(tables, marks, observations, pairs)
 
     def _job(self, tables: list[Table], marks: Marks, observations: Observations, pairs: list[tuple[int, int]]) -> Job:
         blocks = [*observations.settings_blocks(), *observations.blocks, *marks.weighted()]
@@ -187,6 +181,7 @@ class _JobReader:
         return Job(
             self.folder, self.settings, network, tuple(tables), tuple(self.inputs),
             tuple(observations.left_out), tuple(observations.planned), (*self.warnings, *observations.warnings),
+            tuple(observations.reductions), tuple(observations.ledger), observations.tolerance,
         )  # fmt: skip
 
     def _cells(self, table: Table) -> Cells | None:

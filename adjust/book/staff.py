@@ -218,7 +218,8 @@ def tell(observations: Observations, reduced: _Reduced, books: LevelBooks, sd: A
 def compare_sections(observations: Observations, books: LevelBooks) -> None:
     """Sections that were levelled more than once, over all level books of the job."""
     if books.legs and not observations.faults.all:
-        found = sections(books.legs, books.lasting, observations.settings.tests.significance)
+        rule = observations.tolerance.limits.get("level sections")
+        found = sections(books.legs, books.lasting, observations.settings.tests.significance, rule)
         observations.reductions += found
         observations.warnings += [r.sentence for r in found if r.verdict == "not met"]
 

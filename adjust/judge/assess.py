@@ -21,7 +21,13 @@ from adjust.solver.solution import Solution
 from adjust.solver.threads import one_thread
 
 if TYPE_CHECKING:
+    from adjust.judge.balances import Balance
+    from adjust.judge.closures import Closure
     from adjust.judge.unchecked import Unchecked
+
+CLOSURES_MOST = 20_000
+"""Scalar readings above which an adjustment does not look for closures (docs/measured.md: a level net of 5,000 stations
+needs about one adjustment's time); the record of larger jobs is cut as well."""
 
 
 @dataclass(frozen=True)
@@ -113,6 +119,29 @@ class Judgement:
         return fit_control(self.solution.free, self.scale) if self.solution.free else None
 
     @cached_property
+    def closures(self) -> tuple[Closure, ...]:
+        """Everything that closes, by the rules of the job; none where there are too many readings to look for them."""
+        from adjust.judge.closures import closures
+        from adjust.judge.tolerances import declared_rule
+
+        job = self.solution.job
+        return closures(self.solution, declared_rule(job)) if len(job.network.rows) <= CLOSURES_MOST else ()
+
+    @cached_property
+    def balances(self) -> tuple[Balance, ...]:
+        """Simple balances of traverses and levelled runs, for comparison."""
+        from adjust.judge.balances import balances
+
+        return balances(self.solution) if self.closures else ()
+
+    @cached_property
+    def booked_ids(self) -> list[str]:
+        """Identification of each scalar row of the job's own network, by which closures count."""
+        network = self.solution.job.network
+        rows = network.rows
+        return [network.blocks[b].name(i) for b, i in zip(rows.block.tolist(), rows.row.tolist(), strict=True)]
+
+    @cached_property
     def covariance(self) -> Array:
         """(n, 3, 3) covariance of each station with the variance factor applied; NaN where not determined."""
         return self.solution.covariance * self.scale
@@ -124,6 +153,8 @@ class Judgement:
             any(test.verdict == NOT_MET for test in (*self.overall, *self.overall_free))
             or bool(self.suspect_of_job.any())
             or any(mark.verdict == "disagrees" for mark in self.control)
+            or any(one.verdicts[key] == NOT_MET for one in self.closures for key in one.declared)
+            or any(one.verdict == NOT_MET for one in self.solution.job.reductions)
         )
 
     @property

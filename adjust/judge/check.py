@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -10,8 +11,11 @@ from adjust.book.job import Job
 from adjust.errors import Unsolvable
 from adjust.graph.parts import listed
 from adjust.judge import unfixed
+from adjust.judge.closures import closures
+from adjust.judge.evening import book_lines, closure_lines, ledger_lines, not_closed
 from adjust.judge.readings import Readings
 from adjust.judge.reliability import reliability
+from adjust.judge.tolerances import declared_rule
 from adjust.judge.unchecked import Unchecked
 from adjust.network import HELD, WEIGHTED
 from adjust.solver.defects import Freedom, Loose
@@ -24,11 +28,30 @@ MOST_SHOWN = 40
 """Unchecked readings told one by one."""
 
 
+@dataclass(frozen=True)
+class Look:
+    """What was seen before an adjustment: sentences, and whether something does not close or meet a limit."""
+
+    lines: list[str]
+    failed: bool
+
+
 def check(job: Job) -> list[str]:
     """Sentences about a job, in the order in which a surveyor would ask.
 
     Raises Unsolvable where the readings leave something free.
     """
+    return look(job).lines
+
+
+def look(job: Job) -> Look:
+    """Look at a job: the book, what closes, what hangs together, what nothing checks.
+
+    Raises Unsolvable where the readings leave something free; nothing is said of closures then.
+    """
+    found = closures(job, declared_rule(job))
+    failed = not_closed(found) > 0 or any(one.verdict == "not met" for one in job.reductions)
+    evening = [*book_lines(job), *ledger_lines(job), *closure_lines(job, found)]
     with one_thread():
         try:
             ready = prepare(job)
@@ -36,8 +59,9 @@ def check(job: Job) -> list[str]:
         except Loose as loose:
             raise Unsolvable(unfixed.words(loose)) from None
         at_start = solution_at(job, ready, here, cofactors, 0)
-        return [*_contents(job), *_parts(at_start), *_islands(at_start), *_unchecked(at_start),
-                *unfixed.warnings(at_start), *job.warnings]  # fmt: skip
+        lines = [*_contents(job), *evening, *_parts(at_start), *_islands(at_start), *_unchecked(at_start),
+                 *unfixed.warnings(at_start), *job.warnings]  # fmt: skip
+        return Look(lines, failed)
 
 
 def _contents(job: Job) -> list[str]:

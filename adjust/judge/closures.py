@@ -61,6 +61,8 @@ class Closure:
     """Of height, angle and linear."""
     plane: tuple[tuple[float, float], tuple[float, float]] | None = None
     """Covariance of the misclosure in east and north; None where it has one dimension only."""
+    declared: tuple[str, ...] = ()
+    """What of height, angle and linear is allowed by a rule of the job; the rest by its own standard deviation."""
     counted: str = "angles"
     """angles; legs of a traverse by bearings; set-ups; lines where set-ups were not booked."""
 
@@ -191,8 +193,10 @@ class _Judge:
     def judged(self, one: Closure, context: where.Levels | where.Walked | None) -> Closure:
         """The closure with what is allowed, verdicts, and where to look."""
         allowable, text = self.rule(one) if self.rule else ({}, "")
-        if not allowable:
-            allowable, text = self._own(one)
+        declared = tuple(allowable)
+        own, words = self._own(one)
+        if own.keys() - allowable.keys():
+            allowable, text = {**own, **allowable}, "; ".join(t for t in (text, words) if t)
         verdicts = {
             key: (MET if abs(one.misclosure[key]) <= most else NOT_MET) if math.isfinite(most) else UNTESTED
             for key, most in allowable.items()
@@ -201,7 +205,8 @@ class _Judge:
         if isinstance(context, where.Walked) and context.traversed.angle is None:
             verdicts["angle"] = UNTESTED
         verdict = next((v for v in (NOT_MET, UNTESTED) if v in verdicts.values()), MET if verdicts else UNTESTED)
-        one = replace(one, allowable=allowable, rule=text, verdict=verdict, verdicts=verdicts)
+        one = replace(one, allowable=allowable, rule=text, verdict=verdict, verdicts=verdicts,
+                      declared=declared)  # fmt: skip
         words = where.sentence(self.job, one, context)
         return replace(one, sentence=words) if words else one
 

@@ -9,10 +9,20 @@ import numpy as np
 import scipy
 
 import adjust
+from adjust.atmosphere import Air
+from adjust.book.level_keys import LEVEL_KINDS
+from adjust.book.settings import Table
 from adjust.caution import CAUTION
 from adjust.judge.assess import Judgement
 from adjust.judge.overall import OverallTest
 from adjust.network import ROLES
+from adjust.record.closing import (
+    balance_entries,
+    closure_entries,
+    ledger_entries,
+    reduction_entries,
+    tolerance_settings,
+)
 from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
 from adjust.record.places import line_entries, mark_entries, parameter_entries, side_shot_entries, station_entries
@@ -51,14 +61,15 @@ def _record(judgement: Judgement) -> dict[str, Any]:
         "lines": line_entries(judgement),
         "observations": observation_entries(judgement),
         "parameters": parameter_entries(judgement),
-        "closures": [],
+        "closures": closure_entries(judgement),
+        "balances": balance_entries(judgement),
         "suspects": suspect_entries(judgement),
         "expected_by_chance": number(judgement.expected_by_chance),
         "unchecked": unchecked_entries(judgement),
         "control": mark_entries(judgement),
         "variance_components": [],
-        "ledger": [],
-        "reductions": [],
+        "ledger": ledger_entries(solution.job),
+        "reductions": reduction_entries(solution.job),
         "left_out": [left_out(aside, with_reason=True) for aside in solution.job.left_out],
         "not_measured": [left_out(aside, with_reason=False) for aside in solution.job.planned],
         "warnings": _warnings(judgement),
@@ -103,13 +114,37 @@ def _settings(solution: Solution) -> dict[str, Any]:
         "instruments": {
             name: {key: model.text for key, model in keys.items()} for name, keys in settings.instruments.items()
         },
+        "tolerance": tolerance_settings(solution.job),
+        "rejection": {key: limit.text for key, limit in settings.rejection.items()},
+        "weather": _weather(settings.weather),
+        "reflectors": {name: coordinate(constant) for name, constant in settings.reflectors.items()},
+        "meters": {
+            name: {"constant": coordinate(m.constant), "scale_ppm": number(m.scale_ppm),
+                   "wavelength_um": number(m.wavelength_um),
+                   "zero_weather": _weather(m.zero_weather) if m.zero_weather else None}
+            for name, m in settings.meters.items()
+        },
         "books": [
             {"file": t.file, "kind": t.kind, "instrument": t.instrument or None, "sd_factor": number(t.sd_factor),
-             "surface": t.surface or None,
+             "surface": t.surface or None, "reflector": t.reflector or None,
+             "applied": None if t.applied is None else list(t.applied), "weather": _weather(t.weather),
+             "collimation": t.level.collimation or None, "curvature": _curvature(t),
              "units": {"length": t.units.length, "angle": t.units.angle, "decimal": t.units.decimal}}
             for t in solution.job.tables
         ],
     }  # fmt: skip
+
+
+def _curvature(table: Table) -> str | None:
+    """Whether the sights of a level book are corrected for curvature; None of other tables."""
+    if table.kind not in LEVEL_KINDS:
+        return None
+    return "with-refraction" if table.level.curvature else "none"
+
+
+def _weather(air: Air) -> dict[str, float | None]:
+    """Weather in degrees C, hPa, per cent, or the ppm that stands for it."""
+    return {key: number(value) for key, value in air.__dict__.items()}
 
 
 def _units(solution: Solution) -> dict[str, Any]:
