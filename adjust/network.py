@@ -102,6 +102,8 @@ class Block:
     booked_at: Ints | None = None
     """(m, k) lines of the texts in the k columns ``booked`` where a value is a difference of several rows, 0 where
     a column takes no part; None: all stand in the line of the row."""
+    booked_join: str = " - "
+    """Between these texts: a level's set-up is back - fore, a pointing is the readings of both faces."""
 
     def __len__(self) -> int:
         return len(self.line)

@@ -22,7 +22,7 @@ from adjust.book.round_words import reductions_of
 from adjust.book.sets import Outside, SetMeans, outside, set_means
 from adjust.book.sheet import Sheet
 from adjust.kinds import KINDS
-from adjust.network import Array
+from adjust.network import Array, Block
 from adjust.units import TURN, wrap
 
 READINGS = ("horizontal_circle", "zenith_circle", "slope_distance")
@@ -264,4 +264,21 @@ def _take(observations: Observations, cells: Cells, sheet: Sheet, key: str, stat
     def given(rows: list[int]) -> Array:
         return values
 
+    before = len(observations.blocks)
     observations.take(cells, replace(sheet, sizes={"count": count}), use, given, np.zeros(n, dtype=bool))
+    if len(observations.blocks) > before:
+        observations.blocks[-1] = _with_texts(observations.blocks[-1], cells, sheet, key, stations)
+
+
+def _with_texts(block: Block, cells: Cells, sheet: Sheet, key: str, stations: list[Station]) -> Block:
+    """The block with the lines of all texts behind each of its readings."""
+    column = sheet.value[0]
+    texts = cells.text(column)
+    by_line = {p.lines[0]: [x for i, x in zip(p.rows, p.lines, strict=True) if texts[i]]
+               for station in stations for p in station.pointings}  # fmt: skip
+    most = max(len(by_line[int(line)]) for line in block.line)
+    at = np.zeros((len(block), most), dtype=np.int64)
+    for k, line in enumerate(block.line.tolist()):
+        found = by_line[line]
+        at[k, : len(found)] = found
+    return replace(block, booked=(column,) * most, booked_at=at, booked_join=" / ")

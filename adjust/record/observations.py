@@ -72,7 +72,7 @@ def observation_entries(judgement: Judgement) -> list[dict[str, Any]]:
 def _booked_texts(booked: dict[int, tuple[str, ...]], block: Block, i: int) -> tuple[str, ...]:
     """The texts of a value's parts; the one filled cell; or of a level's set-up "back - fore" from its two rows."""
     if block.booked_at is not None:
-        return (" - ".join(booked[int(line)][k] for k, line in enumerate(block.booked_at[i]) if line),)
+        return (block.booked_join.join(booked[int(line)][k] for k, line in enumerate(block.booked_at[i]) if line),)
     texts = booked[int(block.line[i])]
     return texts if len(KINDS[block.kind].parts) > 1 else (next(t for t in texts if t),)
 
