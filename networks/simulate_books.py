@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import math
 import sys
+from itertools import pairwise
 from pathlib import Path
 
 from simulate import EARTH, HERE, INVENTED, SD_DISTANCE, Field, dms, table
@@ -132,9 +133,84 @@ def pointing_row(
             f"{temperature:g},{pressure:g},{use}")  # fmt: skip
 
 
+# --- Tarnel Weir: levels along the river ------------------------------------------------------------------------------
+
+RIVER = {"BM1": 62.4180, "BM4": 64.9375, "RB1": 60.2310, "RB2": 58.8842, "RB3": 60.0514, "RB4": 61.7706,
+         "LB1": 60.4425, "LB2": 59.1147, "LB3": 60.8098}  # fmt: skip
+RIVER_LINES = [
+    ("forward", "BM1 RB1 RB2 RB3 RB4 BM4"),
+    ("back", "BM4 RB4 RB3 RB2 RB1 BM1"),
+    ("left-bank", "BM1 LB1 LB2 LB3 BM4"),
+    ("crossing", "LB2 RB2"),
+]
+SECTION_SETUPS = {"BM1 RB1": 5, "RB1 RB2": 6, "RB2 RB3": 6, "RB3 RB4": 7, "BM4 RB4": 5, "BM1 LB1": 6, "LB1 LB2": 7,
+                  "LB2 LB3": 6, "BM4 LB3": 8, "LB2 RB2": 3}  # fmt: skip
+SD_READING = 0.0003  # metres: one staff reading at 30 m
+COLLIMATION = math.radians(12 / 3600)  # the line of sight points up by 12 seconds
+STEEP = ("left-bank", "LB3", "BM4")  # a section where the fore sights had to stay short
+
+
+class Level(Field):
+    """A level whose line of sight points up, and a staff read to the tenth of a millimetre."""
+
+    def reading(self, height_of_sight: float, height: float, length: float) -> float:
+        """What the staff shows."""
+        return (
+            height_of_sight - height + math.tan(COLLIMATION) * length + self.error(SD_READING * math.sqrt(length / 30))
+        )
+
+    def set_up(self, height: float, ahead: float, lengths: tuple[float, float]) -> tuple[float, float]:
+        """Back and fore reading between two heights."""
+        sight = max(height, ahead) + 0.4 + 1.2 * self.random.uniform()
+        return self.reading(sight, height, lengths[0]), self.reading(sight, ahead, lengths[1])
+
+
+def river(folder: Path) -> None:
+    """Forward and back along the right bank, once along the left, and a tie across: 400 readings and their lengths."""
+    field = Level(20260701, {name: (height,) for name, height in RIVER.items()})
+    rows = []
+    for line, marks in RIVER_LINES:
+        rows += level_line(field, line, marks.split())
+    header = "line,station,back,fore,back_length,fore_length"
+    table(folder / "staff.csv", [INVENTED, "One row is one position of the staff."], header, rows)
+    near, far = 25.0, 2.0
+    a, b = 60.0, 60.732
+    peg = [field.reading(61.9, h, d) for h, d in ((a, near), (b, near), (a, 50 + far), (b, far))]
+    cells = ",".join(f"{x:.4f}" for x in peg)
+    table(folder / "peg_test.csv", [INVENTED], "near_a,near_b,far_a,far_b,length", [f"{cells},50"])
+    marks = [f"{name},{RIVER[name]:.4f}" for name in ("BM1", "BM4")]
+    table(folder / "control.csv", [INVENTED], "station,height", marks)
+    lasting = [name for name in RIVER if name not in ("BM1", "BM4")]
+    table(folder / "stations.csv", ["Lasting marks; every other change point belongs to its line."], "station", lasting)
+
+
+def level_line(field: Level, line: str, marks: list[str]) -> list[str]:
+    """Rows of one line: every change point has the fore sight of one set-up and the back sight of the next."""
+    rows, point = [], 0
+    pending = ""  # the fore sight that waits for the back sight of the next set-up
+    for first, last in pairwise(marks):
+        n = SECTION_SETUPS[" ".join(sorted((first, last)))]
+        here, step = RIVER[first], (RIVER[last] - RIVER[first]) / n
+        name = first
+        for k in range(n):
+            ahead = RIVER[last] if k == n - 1 else here + step + field.random.uniform(-0.35, 0.35)
+            long = 24 + 8 * field.random.uniform()
+            short = 9 if (line, first, last) == STEEP else long + field.random.uniform(-1.5, 1.5)
+            lengths = (round(long, 1), round(short, 1))
+            back, fore = field.set_up(here, ahead, lengths)
+            fore_of, fore_length = pending.split(",") if pending else ("", "")
+            rows.append(f"{line},{name},{back:.4f},{fore_of},{lengths[0]:.1f},{fore_length}")
+            pending = f"{fore:.4f},{lengths[1]:.1f}"
+            point += 1
+            name, here = (last, RIVER[last]) if k == n - 1 else (f"TP{point}", ahead)
+    fore_of, fore_length = pending.split(",")
+    return [*rows, f"{line},{marks[-1]},,{fore_of},,{fore_length}"]
+
+
 def main(folder: Path = HERE) -> None:
     """Write every table."""
     pillars(folder / "spillway-pillars")
+    river(folder / "river-levels")
 
 
 if __name__ == "__main__":

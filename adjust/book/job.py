@@ -45,6 +45,8 @@ class Job:
     """What the reduction of the raw books gave and looked at, in the order of the tables."""
     ledger: tuple[LedgerLine, ...] = ()
     """Corrections of distances, one line each, distance by distance."""
+    private: frozenset[str] = frozenset()
+    """Names of change points that belong to one line of a level book."""
     tolerance: Tolerance = field(default_factory=Tolerance)
 
     def booked(self, file: str, columns: tuple[str, ...] = ()) -> dict[int, tuple[str, ...]]:

@@ -166,9 +166,12 @@ class _JobReader:
                 "job.toml", 0, "", "", "the job has no readings; add a table such as distances.csv or levelled.csv"
             )
         self.faults.stop()
-        return self._job(tables, marks, observations, pairs)
+        return self._job(tables, marks, observations, pairs, frozenset(levels.private))
 
-    def _job(self, tables: list[Table], marks: Marks, observations: Observations, pairs: list[tuple[int, int]]) -> Job:
+    def _job(
+        self, tables: list[Table], marks: Marks, observations: Observations, pairs: list[tuple[int, int]],
+        private: frozenset[str],
+    ) -> Job:  # fmt: skip
         blocks = [*observations.settings_blocks(), *observations.blocks, *marks.weighted()]
         order = {t.file: i for i, t in enumerate(tables)}
         blocks.sort(key=lambda b: order.get(b.file, -1))  # job.toml itself comes first
@@ -181,7 +184,7 @@ class _JobReader:
         return Job(
             self.folder, self.settings, network, tuple(tables), tuple(self.inputs),
             tuple(observations.left_out), tuple(observations.planned), (*self.warnings, *observations.warnings),
-            tuple(observations.reductions), tuple(observations.ledger), observations.tolerance,
+            tuple(observations.reductions), tuple(observations.ledger), private, observations.tolerance,
         )  # fmt: skip
 
     def _cells(self, table: Table) -> Cells | None:

@@ -127,10 +127,13 @@ def closure_words(job: Job, one: Closure) -> str:
         texts.append(f"linear {small_length(one.misclosure['linear'], unit).lstrip('+')}{ratio} (east {east}, north "
                      f"{north})" + _allowed(job, one, "linear"))  # fmt: skip
     verdict = one.verdict.upper() if one.verdict == "not met" else one.verdict
-    return f"{one.kind} {_way(names)}{far}: {'; '.join(texts)}: {verdict}."
+    return f"{one.kind} {_way(names, job.private)}{far}: {'; '.join(texts)}: {verdict}."
 
 
-def _way(names: list[str]) -> str:
+def _way(names: list[str], private: frozenset[str]) -> str:
+    """The stations walked; of long ways the change points are left out, and then the middle."""
+    if len(names) > LONG_WAY + 2:
+        names = [name for k, name in enumerate(names) if name not in private or k in (0, len(names) - 1)]
     if len(names) <= LONG_WAY + 2:
         return "-".join(names)
     half = LONG_WAY // 2
