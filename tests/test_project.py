@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
+import importlib
 import importlib.metadata
-import importlib.util
 import json
 import re
 import subprocess
@@ -113,13 +113,10 @@ def test_links_lead_somewhere() -> None:
     assert [pair for pair in links if not (ROOT / pair[1]).exists()] == []
 
 
-def test_simulated_readings_come_again_byte_for_byte(tmp_path: Path) -> None:
-    spec = importlib.util.spec_from_file_location("simulate", ROOT / "networks" / "simulate.py")
-    assert spec is not None
-    assert spec.loader is not None
-    simulate = importlib.util.module_from_spec(spec)
-    spec.loader.exec_module(simulate)
-    simulate.main(tmp_path)
+def test_simulated_readings_come_again_byte_for_byte(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.syspath_prepend(str(ROOT / "networks"))
+    for name in ("simulate", "simulate_books"):
+        importlib.import_module(name).main(tmp_path)
     made = {p.relative_to(tmp_path) for p in tmp_path.rglob("*.csv")}
     kept = {p for p in project_files() if p.suffix == ".csv" and p.parts[0] in ("networks", "adjust")}
     assert made == kept
