@@ -207,11 +207,11 @@ def level_line(field: Level, line: str, marks: list[str]) -> list[str]:
     return [*rows, f"{line},{marks[-1]},,{fore_of},,{fore_length}"]
 
 
-def main(folder: Path = HERE) -> None:
-    """Write every table."""
-    pillars(folder / "spillway-pillars")
-    river(folder / "river-levels")
+def main(root: Path) -> None:
+    """Write every table below ``root``, a checkout or any folder."""
+    pillars(root / "networks" / "spillway-pillars")
+    river(root / "networks" / "river-levels")
 
 
 if __name__ == "__main__":
-    main(Path(sys.argv[1]) if len(sys.argv) > 1 else HERE)
+    main(Path(sys.argv[1]) if len(sys.argv) > 1 else HERE.parent)
