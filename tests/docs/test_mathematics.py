@@ -1,4 +1,4 @@
-"""The pages of mathematics: every module with formulas has one, their links lead somewhere, their examples are right."""
+"""The pages of mathematics: every module with formulas has one, links lead somewhere, examples are right."""
 
 from __future__ import annotations
 
@@ -25,7 +25,8 @@ def modules() -> dict[str, str]:
     """Docstring of every module under adjust/ by its path."""
     found = {}
     for path in sorted((ROOT / "adjust").rglob("*.py")):
-        found[path.relative_to(ROOT / "adjust").as_posix()] = ast.get_docstring(ast.parse(path.read_text("utf-8"))) or ""
+        text = ast.get_docstring(ast.parse(path.read_text("utf-8")))
+        found[path.relative_to(ROOT / "adjust").as_posix()] = text or ""
     return found
 
 
