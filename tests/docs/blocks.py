@@ -12,6 +12,7 @@ A mark is an HTML comment on the line before the fence. What a block may be:
 | sh | demo, tests, lint | run by .ci/run, which finds them by this mark |
 | sh | set-up | installs or activates an environment: not run here |
 | text | form | a pattern or formula; nothing to run. The mathematics pages need no mark for it |
+| text | none, right after python | what that program prints: the worked examples of the mathematics pages |
 
 Anything else is refused. `python -m tests.docs.refresh` writes the `prints` blocks anew.
 """
@@ -77,9 +78,15 @@ def blocks(text: str) -> list[Block]:
             continue
         end = next(k for k in range(i + 1, len(lines)) if lines[k].rstrip() == fence[1])
         mark = re.fullmatch(r"<!-- (.+) -->", lines[i - 1].strip()) if i else None
-        found.append(Block(i + 1, fence[2], mark[1] if mark else "", "\n".join(lines[i + 1 : end]), end + 1))
+        word = mark[1] if mark else "prints" if fence[2] == "text" and _follows_program(found, i) else ""
+        found.append(Block(i + 1, fence[2], word, "\n".join(lines[i + 1 : end]), end + 1))
         i = end + 1
     return found
+
+
+def _follows_program(found: list[Block], fence: int) -> bool:
+    """Whether the last block is Python and nothing but an empty line stands between it and this fence (from 0)."""
+    return bool(found) and found[-1].language == "python" and found[-1].last == fence - 1
 
 
 def faults(name: str, text: str) -> list[str]:

@@ -3,8 +3,8 @@
 A text is a string literal with at least two words, wherever it stands in the code: a message cannot be added in a way
 that this does not see. The parts of an f-string or of a sum that are filled in are written ‹so›; their names are for
 the reader only and are not compared. Literals joined by the compiler or by + are one text. Left out are docstrings,
-the meanings of fields and kinds (docs/formats.md, docs/record.md), help texts (docs/commands/) and what NOT_SHOWN
-and OTHER_PAGES name with their reason.
+the meanings of fields and kinds (docs/formats.md, docs/record.md), help texts (docs/commands/), labels of the drawing
+(modules that only what imports matplotlib needs) and what NOT_SHOWN and OTHER_PAGES name with their reason.
 
 In the page a section names its modules in a comment, `<!-- from adjust/units.py adjust/sigmas.py -->`; below it every
 bullet begins with one or several texts in backticks, then a dash, then what they mean and what to do.
@@ -18,6 +18,7 @@ import re
 from collections import defaultdict
 from collections.abc import Iterator
 from dataclasses import dataclass
+from pathlib import Path
 
 from tests.docs.blocks import ROOT
 
@@ -29,10 +30,6 @@ OTHER_PAGES = {
     "adjust/record/keys.py": "meanings of the record's keys: docs/record.md",
     "adjust/record/format_pages.py": "the text of docs/formats.md itself",
     "adjust/record/schemas.py": "titles of the JSON Schemas",
-    "adjust/record/drawing.py": "labels of the drawing",
-    "adjust/record/plan_view.py": "labels of the drawing",
-    "adjust/record/level_view.py": "labels of the drawing",
-    "adjust/record/sheet.py": "labels of the drawing",
 }
 """Modules whose texts are no messages, with the reason."""
 
@@ -57,6 +54,9 @@ NOT_SHOWN = {
     "back distance": "name of a reading inside the program",
 }
 """Texts that nobody sees as a message, with the reason."""
+
+SAYS = ("cli", "record/build", "record/summary", "record/csv_tables", "record/folder", "record/starter")
+"""What prints and writes words: a module that one of these imports is no mere drawing."""
 
 _SILENT_CALLS = ("Field", "Kind", "_keys")
 _SILENT_KEYWORDS = ("help", "description", "epilog", "metavar", "meaning")
@@ -129,13 +129,40 @@ def _texts(node: ast.AST) -> Iterator[tuple[int, str]]:
                     yield from _texts(one)
 
 
+def drawn() -> set[str]:
+    """Modules whose texts stand in drawings only: those with matplotlib, and what nothing but these imports."""
+    imports = {path.relative_to(ROOT).as_posix(): _imports(path) for path in (ROOT / "adjust" / "record").glob("*.py")}
+    imports["adjust/cli.py"] = set()
+
+    def reached(found: set[str]) -> set[str]:
+        while more := {m for one in found for m in imports.get(one, ()) if m in imports} - found:
+            found = found | more
+        return found
+
+    draws = {module for module, names in imports.items() if "matplotlib" in names}
+    return reached(draws) - reached({f"adjust/{name}.py" for name in SAYS})
+
+
+def _imports(path: Path) -> set[str]:
+    """Modules of adjust as files, and packages by their first name, that a module imports anywhere."""
+    found = set()
+    for node in ast.walk(ast.parse(path.read_text("utf-8"))):
+        if isinstance(node, ast.Import):
+            found |= {alias.name.split(".")[0] for alias in node.names}
+        elif isinstance(node, ast.ImportFrom) and node.module:
+            found |= {node.module.split(".")[0], node.module.replace(".", "/") + ".py"}
+            found |= {f"{node.module.replace('.', '/')}/{alias.name}.py" for alias in node.names}
+    return found
+
+
 @functools.cache
 def in_code() -> list[Text]:
     """Every message of the program, in the order of the modules and lines, each once a module."""
     found: dict[tuple[str, str], Text] = {}
+    silent = drawn() | set(OTHER_PAGES)
     for path in sorted((ROOT / "adjust").rglob("*.py")):
         module = path.relative_to(ROOT).as_posix()
-        if module in OTHER_PAGES:
+        if module in silent:
             continue
         for line, named in _texts(ast.parse(path.read_text("utf-8"))):
             text = Text(module, line, " ".join(named.split()))

@@ -29,7 +29,9 @@ def refreshed(text: str) -> str:
         elif runs(block) or block.mark.startswith("file "):
             outcome = run(block)
     for block, (code, output) in reversed(edits):
-        lines[block.line - 2 : block.last - 1] = [_mark(code), f"```{block.language}", *output.rstrip().split("\n")]
+        if lines[block.line - 2].startswith("<!--"):
+            lines[block.line - 2] = _mark(code)
+        lines[block.line : block.last - 1] = output.rstrip().split("\n")
     return "\n".join(lines)
 
 

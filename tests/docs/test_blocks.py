@@ -23,13 +23,19 @@ def text(path: Path) -> str:
     return path.read_text("utf-8")
 
 
-RUNNING = [p for p in PAGES if any(runs(b) for b in blocks(text(p))) and p != LITERAL]
+ELSEWHERE = ROOT / "docs" / "mathematics"
+"""Its worked examples run in tests/docs/test_mathematics.py."""
+RUNNING = [p for p in PAGES if any(map(runs, blocks(text(p)))) and p != LITERAL and p.parent != ELSEWHERE]
 STALE = "prints something else now; run python -m tests.docs.refresh, and read what changed"
 
 
 @pytest.mark.parametrize("page", PAGES, ids=name)
 def test_every_block_says_what_it_is(page):
     assert faults(name(page), text(page)) == []
+
+
+def test_the_worked_examples_that_do_not_run_here_run_there():
+    assert not ELSEWHERE.exists() or (Path(__file__).parent / "test_mathematics.py").exists()
 
 
 def compared(page: list[Block], outcomes: Iterator[tuple[int, str]]) -> int:
@@ -68,6 +74,7 @@ BAD = {
     "<!-- part of networks/access-road/job.toml -->\n```toml\ntitle = 1\n```": "not in that file",
     "<!-- piece -->\n```toml\n[tests]\nconfidnce = 0.9\n```": "confidnce",
     "```csv\na,b\n```": "a block `csv`",
+    "```python\nprint(1)\n```\n\nand\n\n```text\n1\n```": "a block `text`",
 }
 
 
@@ -75,6 +82,13 @@ BAD = {
 def test_a_block_that_could_drift_is_refused(bad):
     (fault,) = faults("docs/page.md", bad)
     assert BAD[bad] in fault
+
+
+def test_output_right_after_a_program_needs_no_mark():
+    page = blocks("```python\nprint(1)\n```\n\n```text\n1\n```")
+    assert compared(page, iter([(0, "1\n")])) == 1
+    with pytest.raises(AssertionError, match="line 1"):
+        compared(page, iter([(0, "2\n")]))
 
 
 def test_the_runner_keeps_folder_code_and_both_streams(tmp_path):

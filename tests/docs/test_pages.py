@@ -66,6 +66,12 @@ def test_every_argument_is_documented_and_no_other(command):
     assert usage[1].split()[1] == command
 
 
+def test_the_options_of_the_program_itself_stand_in_the_index():
+    rows = cells((DOCS / "README.md").read_text("utf-8"), "option")
+    actions = [a for a in cli.parser()._actions if a.option_strings]
+    assert {tuple(re.findall(r"`([^`]+)`", row[0])) for row in rows} == {tuple(a.option_strings) for a in actions}
+
+
 def test_every_exit_code_is_documented_and_no_other():
     codes = {cli.DONE, cli.FAILED, cli.REFUSED, cli.INTERNAL, cli.INTERRUPTED}
     of = {c: {int(r[0]) for r in cells((DOCS / "commands" / f"{c}.md").read_text("utf-8"), "exit code")}
@@ -153,6 +159,8 @@ def test_a_message_that_is_gone_is_seen(monkeypatch):
 
 def test_exceptions_to_the_list_of_messages_are_current():
     assert [m for m in messages.OTHER_PAGES if not (ROOT / m).is_file()] == []
+    assert "adjust/record/drawing.py" in messages.drawn()
+    assert all((ROOT / "adjust" / f"{m}.py").is_file() for m in messages.SAYS)
     code = "".join(p.read_text("utf-8") for p in sorted((ROOT / "adjust").rglob("*.py")))
     parts = {t: [p for p in t.split(messages.HOLE) if p.strip()] for t in messages.NOT_SHOWN}
     assert [t for t, found in parts.items() if not all(p in code for p in found)] == []
