@@ -114,6 +114,27 @@ def test_units_of_the_record_are_those_of_the_page():
     assert all(0 <= line["azimuth"] < 6.2832 for line in record["lines"])
 
 
+@pytest.mark.parametrize("factor", ["given", "from-residuals"])
+def test_what_the_record_page_says_of_null_where_nothing_is_to_spare(factor, tmp_path):
+    """One point from two distances: no degree of freedom, no more control than the datum needs."""
+    toml = '[units]\nlength = "m"\nangle = "dms"\n[instruments.tape]\ndistance = "5 mm"\n[tests]\n'
+    (tmp_path / "job.toml").write_text(f'{toml}variance_factor = "{factor}"\n')
+    (tmp_path / "control.csv").write_text("station,east,north\nW1,100,100\nW2,160,100\n")
+    (tmp_path / "stations.csv").write_text("station,east,north\nN1,130,130\n")
+    (tmp_path / "distances.csv").write_text("from,to,distance\nW1,N1,43.215\nW2,N1,38.902\n")
+    record = build(adjust.assess(adjust.solve(adjust.read(tmp_path))))
+    new = next(s for s in record["stations"] if s["station"] == "N1")
+    reading = record["observations"][0]
+    assert record["solution"]["variance_factor"] is record["solution"]["overall_test"]["interval"] is None
+    assert record["free"] is record["solution"]["parts"][0]["variance_factor"] is None
+    assert [reading[k] for k in ("statistic", "smallest_detectable", "external_effect", "set", "part")] == [None] * 5
+    assert (reading["critical"] is None) == (factor == "from-residuals")
+    line = record["lines"][0]
+    scaled = [new["ellipse"], new["ellipse_confidence"], new["sd_east"], line["ellipse"], line["sd_distance"]]
+    assert [value is None for value in scaled] == [factor == "from-residuals"] * 5
+    assert new["height"] is new["sd_height"] is new["covariance"][2][2] is None
+
+
 # ---- messages
 
 
