@@ -1,4 +1,4 @@
-"""The plan of a network: stations by shape, lines by kind of reading, ellipses with their own stated scale.
+"""The plan of a network: stations by shape, lines by kind of reading, ellipses with their own stated scales.
 
 paper mm = (metre − centre) · 1000 / N            N the plan's scale number
 ellipse half axis in mm = half axis in m · 1000 / N · magnification
@@ -8,104 +8,60 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Iterable
 from dataclasses import dataclass, field
 
 import numpy as np
 
+from adjust.record.crowd import LARGER, crowd, free_place
+from adjust.record.grid import draw_grid
+from adjust.record.labels import Labels
+from adjust.record.net import (
+    HEIGHT,
+    LOOK_ORDER,
+    ROLES,
+    Relative,
+    left_out_lines,
+    line_looks,
+    ordered,
+    pointed_lines,
+    relative_ellipses,
+    station_ellipses,
+    suspect_readings,
+    unchecked_stations,
+)
+from adjust.record.paper import SCREEN, Box, Layout, Point, Wanted, chosen_scale, extent, ratio_in_words, scale_number
+from adjust.record.plan_marks import draw_left_out, draw_suspects, part_way
 from adjust.record.sheet import (
+    BLACK,
     BLUE,
-    GREY,
-    PALE,
+    DARK,
+    GREEN,
     VERMILLION,
-    Box,
-    Labels,
-    Point,
     Sheet,
-    draw_badge,
     draw_symbol,
     mark_id,
     nearest_step,
-    number,
-    round_step,
 )
-from adjust.record.shown import Entry, Shown, plain
-from adjust.units import LENGTHS
+from adjust.record.shown import Entry, Shown, count
+from adjust.record.writing import Writing
 
-METRIC_SCALES = (1.0, 1.25, 1.5, 2.0, 2.5, 3.0, 4.0, 5.0, 7.5)
-FOOT_SCALES = (1.0, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0)
-"""Steps of 1:N, and of feet to the inch, that scale rules of the trade carry."""
+SOME, MANY, HUGE = 25, 300, 1000
+"""Stations above which names are set smaller; above which only the telling ones are named; above which only the
+largest ellipses are drawn."""
+MOST_ELLIPSES, MOST_RELATIVE = 150, 40
+CELLS = 9
+"""Above MANY stations one name is taken from each cell of a grid with this many rows, so that every part is named."""
 
-MARGIN = 17.0
-MANY = 300
-"""Stations above which only the telling ones are labelled."""
-MOST_ELLIPSES = 1000
-BADGES = 9
-ALONG = ("distance", "levelled", "vector")
-"""Kinds read along the whole line; all others are pointings taken at its start."""
-ARC = 9.0
-"""Radius in mm of the arc that marks a suspect angle."""
-Names = tuple[str, str]
-
-
-def pointed_lines(observation: Entry) -> list[Names]:
-    """The lines a reading runs along, from its standpoint: two for an angle, none for a reading of one station."""
-    start = observation["at"] or observation["from"]
-    ends = [observation[key] for key in ("to", "first", "second")]
-    return [(start, end) for end in ends if start and end and start != end]
-
-
-def line_looks(observations: Iterable[Entry]) -> dict[Names, str]:
-    """Each line with what was read along it: 'distance', 'pointing' or 'levelled', the first that holds."""
-    rank = {"distance": 0, "pointing": 1, "levelled": 2}
-    looks: dict[Names, str] = {}
-    for one in observations:
-        kind = one["kind"]
-        look = {"vector": "distance"}.get(kind, kind if kind in rank else "pointing")
-        for a, b in pointed_lines(one):
-            key = (a, b) if a < b else (b, a)
-            looks[key] = min(looks.get(key, look), look, key=rank.__getitem__)
-    return looks
-
-
-def unchecked_stations(record: Entry) -> set[str]:
-    """Stations to which an unchecked reading points: its new stations, those aimed at before the standpoint."""
-    new = {one["station"] for one in record["stations"] if one["role"] == "new"}
-    by_id = {one["id"]: one for one in record["observations"]}
-    found: set[str] = set()
-    for entry in record["unchecked"]:
-        one = by_id.get(entry["observation"])
-        aimed = {one[key] for key in ("to", "first", "second")} & new if one else set()
-        found |= aimed or ({one[key] for key in ("at", "from")} & new if one else set())
-    return found
-
-
-def suspect_readings(record: Entry) -> list[Entry]:
-    """The observations blamed, in order of blame, as far as the record lists them."""
-    by_id = {one["id"]: one for one in record["observations"]}
-    return [by_id[one["observation"]] for one in record["suspects"] if one["observation"] in by_id]
-
-
-def scale_number(extent: Point, room: Point, shown: Shown) -> float:
-    """The rounded N of 1:N at which ``extent`` (m, across and up) fits ``room`` (mm)."""
-    least = max(extent[0] / room[0], extent[1] / room[1]) * 1000
-    if shown.length == "m":
-        return _round_up(max(least, 10.0), METRIC_SCALES)
-    inch_rule = LENGTHS[shown.length] / LENGTHS["in"]
-    return _round_up(max(least / inch_rule, 1.0), FOOT_SCALES) * inch_rule
-
-
-def _round_up(least: float, steps: tuple[float, ...]) -> float:
-    power = 10.0 ** math.floor(math.log10(least))
-    return min(step * power for step in (*steps, 10.0) if step * power >= least * (1 - 1e-9))
-
-
-def scale_in_words(scale: float, shown: Shown) -> str:
-    """'Scale 1:2000 on A4', for feet with the engineer's form before it."""
-    if shown.length == "m":
-        return f"Scale 1:{shown.mark(number(scale))} on A4"
-    feet = number(round(scale * LENGTHS["in"] / LENGTHS[shown.length], 6))
-    return f"Scale 1 inch = {shown.mark(feet)} {shown.length} (1:{scale:.0f}) on A4"
+Dash = str | tuple[int, tuple[float, ...]]
+LOOKS: dict[str, tuple[float, Dash, str]] = {
+    "both": (0.9, "-", DARK),
+    "distance": (0.9, (0, (9.0, 2.0, 1.5, 2.0)), DARK),
+    "pointing": (0.9, (0, (6.0, 3.5)), BLUE),
+    HEIGHT: (1.0, (0, (1.0, 1.8)), GREEN),
+}
+"""Line width in points, dash and colour of what was read along a line."""
+RELATIVE_DASH: Dash = (0, (3.0, 1.4))
+FILL = (0.0, 0.447, 0.698, 0.10)
 
 
 @dataclass
@@ -114,100 +70,181 @@ class PlanView:
 
     scale: float
     magnification: float | None = None
-    ellipses: int = 0
+    relative: float | None = None
+    """Magnification of the relative ellipses."""
     symbols: list[str] = field(default_factory=list)
     looks: list[str] = field(default_factory=list)
-    hidden: int = 0
-    """Stations without plane coordinates, not drawn."""
+    pairs: bool = False
+    """A pair that no reading joins has its line."""
+    left_out: bool = False
+    suspects: bool = False
+    inset: float | None = None
+    """Scale number of the inset."""
+    notes: list[str] = field(default_factory=list)
+    """What is not drawn, in words."""
+
+
+@dataclass(frozen=True)
+class Ground:
+    """A piece of ground on the sheet: frame, scale number, and the metres in the frame's middle."""
+
+    frame: Box
+    scale: float
+    centre: Point
+
+    def place(self, one: Entry) -> Point:
+        """Where a station with plane coordinates comes to lie."""
+        k, (left, bottom, right, top) = 1000 / self.scale, self.frame
+        return (left + right) / 2 + (one["east"] - self.centre[0]) * k, (bottom + top) / 2 + (
+            one["north"] - self.centre[1]
+        ) * k
 
 
 class _Plan:
-    def __init__(self, sheet: Sheet, record: Entry, frame: Box) -> None:
-        self.sheet, self.record, self.frame = sheet, record, frame
-        self.shown = Shown.of(record)
+    """The data of one plan and its piece of ground; the inset is another one of the same data."""
+
+    def __init__(self, sheet: Sheet, record: Entry, layout: Layout) -> None:
+        self.sheet, self.record, self.layout, self.shown = sheet, record, layout, Shown.of(record)
+        self.wanted, self.writing = Wanted.of(record), Writing.of(record)
         self.stations = [one for one in record["stations"] if one["east"] is not None and one["north"] is not None]
-        places = np.array([[one["east"], one["north"]] for one in self.stations])
-        low, high = places.min(axis=0), places.max(axis=0)
-        room = (frame[2] - frame[0] - 2 * MARGIN, frame[3] - frame[1] - 2 * MARGIN)
-        self.scale = scale_number(tuple(high - low), room, self.shown)
-        self.centre = (low + high) / 2
-        middle = np.array([(frame[0] + frame[2]) / 2, (frame[1] + frame[3]) / 2])
-        self.paper = (places - self.centre) * (1000 / self.scale) + middle
-        self.at = {one["station"]: (float(x), float(y)) for one, (x, y) in zip(self.stations, self.paper, strict=True)}
-        self.size = 1.0 if len(self.stations) <= 80 else 0.7 if len(self.stations) <= MANY else 0.45
+        names = {one["station"] for one in self.stations}
+        self.looks = {line: look for line, look in line_looks(record["observations"]).items() if names >= set(line)}
+        self.left_out = [line for line in left_out_lines(record) if names >= set(line)]
+        self.ellipses = [one for one in station_ellipses(record) if one["station"] in names]
+        self.relative = [one for one in relative_ellipses(record) if names >= set(one.ends)]
         self.unchecked = unchecked_stations(record)
+        n = len(self.stations)
+        self.size = (1.0 if n <= 80 else 0.7 if n <= MANY else 0.45 if n <= HUGE else 0.28) * self.small
+        self.inset: tuple[Ground, set[str]] | None = None
+        self.view = PlanView(self._ground(layout.frame).scale)
+        self.hide()
+        self.settle()
 
-    def grid(self) -> None:
-        """Small crosses and edge figures at round coordinates of the job's unit."""
-        unit = LENGTHS[self.shown.length] * 1000 / self.scale  # mm of paper for one unit
-        step = round_step(62.0 / unit)
-        columns, rows = (self._round_lines(axis, step, unit) for axis in (0, 1))
-        for x, _ in columns:
-            for y, _ in rows:
-                self.sheet.lines([[(x - 1.2, y), (x + 1.2, y)], [(x, y - 1.2), (x, y + 1.2)]], 0.5, "grid", colors=PALE)
-        left, bottom, right, top = self.frame
-        for x, value in columns:
-            for y, up in ((bottom, 1), (top, -1)):
-                self.sheet.line([(x, y), (x, y + 1.8 * up)], 0.5, color=GREY)
-            text = f"{self._figure(value, step)} E"
-            if x + 1.3 + self.sheet.width(text, 5.5) < right:
-                self.sheet.text((x + 0.8, bottom + 1.0), text, 5.5, color=GREY)
-        for y, value in rows:
-            for x, inward in ((left, 1), (right, -1)):
-                self.sheet.line([(x, y), (x + 1.8 * inward, y)], 0.5, color=GREY)
-            text = f"{self._figure(value, step)} N"
-            if y + 1.3 + self.sheet.width(text, 5.5) < top:
-                self.sheet.text((left + 1.0, y + 0.8), text, 5.5, color=GREY, rotation=90, va="bottom")
+    @property
+    def small(self) -> float:
+        """Symbols on the sheet for screens are a little smaller, as its plan is."""
+        return 0.8 if self.layout.name == SCREEN else 1.0
 
-    def _figure(self, value: float, step: float) -> str:
-        places = max(0, -math.floor(math.log10(step)))
-        return self.shown.mark(f"{value + 0.0:.{places}f}")
+    def hide(self) -> None:
+        """Keep what its layers ask for and a large network leaves room for; note what is not drawn."""
+        notes, every = self.view.notes, len(self.ellipses)
+        if "ellipses" not in self.wanted.layers:
+            self.ellipses = []
+        elif len(self.stations) > HUGE and every > MOST_ELLIPSES:
+            self.ellipses = self.ellipses[:MOST_ELLIPSES]
+            notes.append(f"Of {every} ellipses the {MOST_ELLIPSES} largest are drawn.")
+        every = len(self.relative)
+        if "relative" not in self.wanted.layers:
+            self.relative = []
+        elif every > MOST_RELATIVE:
+            pairs = [one for one in self.relative if one.pair]
+            self.relative = [*pairs, *(one for one in self.relative if not one.pair)][:MOST_RELATIVE]
+            notes.append(f"Of {every} relative ellipses {MOST_RELATIVE} are drawn: pairs asked for, then the largest.")
+        for layer, words, found in (("lines", "lines", self.looks), ("left-out", "readings left out", self.left_out),
+                                    ("suspects", "suspects", self.record["suspects"])):  # fmt: skip
+            if layer not in self.wanted.layers and found:
+                notes.append(f"Not drawn, as asked: {words}.")
+        if "lines" not in self.wanted.layers:
+            self.looks = {}
+        if "left-out" not in self.wanted.layers:
+            self.left_out = []
 
-    def _round_lines(self, axis: int, step: float, unit: float) -> list[tuple[float, float]]:
-        """Paper position (mm) and value of the round coordinates inside the frame."""
-        low, high = self.frame[axis] + 6, self.frame[axis + 2] - 6
-        middle, centre = (self.frame[axis] + self.frame[axis + 2]) / 2, self.centre[axis] / LENGTHS[self.shown.length]
-        first, last = (
-            math.ceil((centre + (low - middle) / unit) / step),
-            math.floor((centre + (high - middle) / unit) / step),
-        )
-        return [(middle + (k * step - centre) * unit, k * step) for k in range(first, last + 1)]
+    def _ground(self, frame: Box) -> Ground:
+        low, high = extent(self.record)
+        scale = chosen_scale(self.record, self.layout, frame)
+        return Ground(frame, scale, ((low[0] + high[0]) / 2, (low[1] + high[1]) / 2))
 
-    def lines(self) -> list[str]:
-        """Draw the lines by what was read along them; the looks that occur."""
-        looks = line_looks(self.record["observations"])
-        blamed = {tuple(sorted(line)) for one in suspect_readings(self.record) if one["kind"] in ALONG
-                  for line in pointed_lines(one)}  # fmt: skip
-        drawn = [(a, b) for a, b in looks if a in self.at and b in self.at]
-        thin = 1.0 if len(looks) < 400 else 0.5
-        for look, (width, dash) in LOOKS.items():
-            for suspect in (False, True):
-                chosen = [line for line in drawn if looks[line] == look and (line in blamed) == suspect]
-                gid = f"lines-{look}" + ("-suspect" if suspect else "")
-                look_of = {"colors": VERMILLION, "zorder": 2} if suspect else {"colors": GREY, "zorder": 1}
-                segments = [[self.at[a], self.at[b]] for a, b in chosen]
-                self.sheet.lines(segments, width * (2.2 if suspect else thin), gid, linestyles=[dash], **look_of)
-        seen = {looks[line] for line in drawn}
-        return [look for look in LOOKS if look in seen]
+    def settle(self) -> None:
+        """Places on paper; an inset where stations crowd, in a free corner or else in a strip kept for it."""
+        self.ground = self._ground(self.layout.frame)
+        self._lay()
+        if "inset" in self.wanted.layers and len(self.stations) <= MANY:
+            frame = self.layout.frame
+            self.inset = self._inset(frame) or self._inset_beside(frame)
+        if self.inset is None:
+            self.ground = self._ground(self.layout.frame)
+            self._lay()
+        self.view.scale = self.ground.scale
 
-    def _half_axes(self) -> list[tuple[Entry, Point, float, float, float]]:
-        """Stations with a confidence ellipse: entry, place, half axes in mm of paper unmagnified, azimuth."""
-        found = []
-        for one in self.stations:
-            e = one["ellipse_confidence"]
-            if e and e["semi_major"]:
-                k = 1000 / self.scale
-                found.append(
-                    (one, self.at[one["station"]], e["semi_major"] * k, (e["semi_minor"] or 0.0) * k, e["azimuth"])
-                )
-        return sorted(found, key=lambda item: -item[2])[:MOST_ELLIPSES]
+    def _lay(self) -> None:
+        self.at = {one["station"]: self.ground.place(one) for one in self.stations}
+        self.paper = np.array(list(self.at.values())).reshape(-1, 2)
 
-    def magnification(self, half: list[float]) -> float:
-        """1, 2 or 5 · 10^k that brings the median half axis near 3.5 % of the frame's width, the largest below 15 %."""
-        width = self.frame[2] - self.frame[0]
-        target = min(0.035 * width, 0.45 * self._spacing())
+    def _inset(self, frame: Box, box: Box | None = None) -> tuple[Ground, set[str]] | None:
+        """An enlarged piece of ground and the stations that it alone names."""
+        close = crowd(self.paper)
+        lines = [[self.at[a], self.at[b]] for a, b in self.looks]
+        place = box or (free_place(frame, self.paper, lines, 5.0) if close else None)
+        if close is None or place is None:
+            return None
+        east, north = zip(*((self.stations[i]["east"], self.stations[i]["north"]) for i in close), strict=True)
+        side = place[2] - place[0]
+        scale = scale_number((max(east) - min(east), max(north) - min(north)), (side - 22, side - 22), self.shown)
+        if scale * LARGER > self.ground.scale:
+            return None
+        ground = Ground(place, scale, ((max(east) + min(east)) / 2, (max(north) + min(north)) / 2))
+        inside = {one["station"] for one in self.stations if _within(ground.place(one), place)}
+        return ground, inside
+
+    def _inset_beside(self, frame: Box) -> tuple[Ground, set[str]] | None:
+        """The same where no corner is free: the plan gives up a strip of the frame."""
+        if crowd(self.paper) is None:
+            return None
+        left, bottom, right, top = frame
+        if right - left >= top - bottom:
+            side = min(0.36 * (right - left), top - bottom - 4)
+            rest, box = (left, bottom, right - side - 4, top), (right - side - 2, top - side - 2, right - 2, top - 2)
+        else:
+            side = min(0.36 * (top - bottom), right - left - 4)
+            rest, box = (left, bottom, right, top - side - 4), (right - side - 2, top - side - 2, right - 2, top - 2)
+        self.ground = self._ground(rest)
+        self._lay()
+        return self._inset(rest, box)
+
+    def magnifications(self) -> None:
+        """Magnify both families of ellipses as asked, or to be seen without covering each other."""
+        k = 1000 / self.ground.scale
+        for key, halves, share, wish in (
+            ("magnification", [one["ellipse_confidence"]["semi_major"] for one in self.ellipses], 0.035,
+             self.wanted.ellipses),
+            ("relative", [one.semi_major for one in self.relative], 0.022, self.wanted.relative),
+        ):  # fmt: skip
+            if halves:
+                places = [self.at[one["station"]] for one in self.ellipses]
+                if key == "relative":
+                    places = list(self.spots(self.at, self.relative))
+                setattr(self.view, key, self._magnification([half * k for half in halves], places, share, wish))
+
+    def spots(self, at: dict[str, Point], lines: list[Relative]) -> list[Point]:
+        """Where on its line each relative ellipse lies: near the middle, off stations and off each other."""
+        taken = np.array(list(at.values()))
+        found: list[Point] = []
+        for one in lines:
+            a, b = at[one.ends[0]], at[one.ends[1]]
+            places = [part_way(a, b, share) for share in (0.5, 0.43, 0.57, 0.36, 0.64)]
+            free = [min(8.0, float(np.hypot(*(taken - place).T).min())) - 0.4 * i for i, place in enumerate(places)]
+            found.append(places[int(np.argmax(free))])
+            taken = np.vstack([taken, found[-1]])
+        return found
+
+    def _magnification(self, half: list[float], at: list[Point], share: float, wish: float | None) -> float:
+        """1, 2 or 5 · 10^k that brings the median half axis near ``share`` of the frame's width and keeps all inside.
+
+        One that was asked for is taken if no ellipse would leave the frame; else the drawing chooses, and says so.
+        """
+        left, bottom, right, top = self.ground.frame
+        width = right - left
+        most = min(min(0.15 * width, x - left, right - x, y - bottom, top - y) / one
+                   for one, (x, y) in zip(half, at, strict=True))  # fmt: skip
+        if wish:
+            least_room = min(min(x - left, right - x, y - bottom, top - y) / one
+                             for one, (x, y) in zip(half, at, strict=True))  # fmt: skip
+            if wish <= least_room:
+                return wish
+            self.view.notes.append(f"Ellipses {wish:g} times larger would leave the frame: drawn smaller.")
+        target = min(share * width, 13 * share * self._spacing())
         chosen = nearest_step(target / float(np.median(half)))
-        while max(half) * chosen > 0.15 * width:
+        while chosen > most:
             chosen = nearest_step(chosen / 2)
         return chosen
 
@@ -220,72 +257,91 @@ class _Plan:
         nearest = np.asarray(KDTree(self.paper).query(self.paper, k=2)[0])
         return max(float(np.median(nearest[:, 1])), 2.0)
 
-    def ellipses(self, labels: Labels) -> tuple[float | None, int]:
-        """Draw the confidence ellipses; their magnification and number."""
-        found = self._half_axes()
-        if not found:
-            return None, 0
-        m = self.magnification([item[2] for item in found])
-        for one, at, major, minor, azimuth in found:
-            gid = mark_id("ellipse", one["station"])
-            self.sheet.ellipse(at, (major * m, minor * m), azimuth, gid=gid, edgecolor=BLUE, linewidth=1.1 * self.size,
-                               facecolor=(0.0, 0.447, 0.698, 0.10), zorder=3)  # fmt: skip
-            labels.segments += _outline(at, major * m, minor * m, azimuth)
-        return m, len(found)
-
     def symbol(self, one: Entry) -> str:
         """The symbol of a station."""
         return "unchecked" if one["station"] in self.unchecked and one["role"] == "new" else str(one["role"])
 
-    def badges(self, labels: Labels) -> None:
-        """Number the first suspects: a distance at its middle, a pointing near its standpoint, an angle on its arc."""
-        taken: list[Point] = []
-        for i, one in enumerate(suspect_readings(self.record)[:BADGES]):
-            ends = [line for line in pointed_lines(one) if line[0] in self.at and line[1] in self.at]
-            if ends:
-                at = self._suspect(one, [(self.at[a], self.at[b]) for a, b in ends], taken)
-                taken.append(at)
-                draw_badge(self.sheet, i + 1, at, gid=f"suspect-{i + 1}")
-                labels.keep_off(at, 2.2)
+    def draw_lines(self, at: dict[str, Point], inside: Box | None, tag: str) -> None:
+        """The lines by what was read along them; those of suspects once more, thick and in colour."""
+        blamed = {ordered(line) for one in suspect_readings(self.record) if one["kind"] in ("distance", "levelled")
+                  for line in pointed_lines(one)} if "suspects" in self.wanted.layers else set()  # fmt: skip
+        thin = 1.0 if len(self.looks) < 400 else 0.55 if len(self.looks) < 3000 else 0.3
+        for look, (width, dash, colour) in LOOKS.items():
+            chosen = [line for line, what in self.looks.items() if what == look]
+            segments = [[at[a], at[b]] for a, b in chosen]
+            self.sheet.lines(segments, width * thin, f"lines-{look}{tag}", inside, linestyles=[dash], colors=colour,
+                             zorder=1)  # fmt: skip
+            hot = [[at[a], at[b]] for a, b in chosen if (a, b) in blamed]
+            self.sheet.lines(hot, 2.0, f"lines-{look}-suspect{tag}", inside, colors=VERMILLION, zorder=2)
+        self.view.looks = [look for look in LOOK_ORDER if look in self.looks.values()]
 
-    def _suspect(self, one: Entry, ends: list[tuple[Point, Point]], taken: list[Point]) -> Point:
-        """Mark the reading where it was taken; the place of its number."""
-        start, end = ends[-1]
-        if one["kind"] in ALONG:
-            return _clear_of(taken, start, end, 0.5)
-        if one["kind"] == "angle" and len(ends) == 2:
-            return self._arc(start, ends[0][1], end)
-        tip = _part_way(start, end, 0.4)
-        self.sheet.line([start, tip], 1.8, color=VERMILLION, zorder=2)
-        return _clear_of(taken, start, tip, 0.7)
+    def draw_ellipses(self, at: dict[str, Point], only: set[str], labels: Labels, inside: Box | None) -> None:
+        """The confidence ellipses of the stations ``only``; on paper of one size in the plan and in its inset."""
+        if self.view.magnification is None:
+            return
+        k = 1000 / self.ground.scale * self.view.magnification
+        for one in self.ellipses:
+            if (name := one["station"]) in only:
+                e = one["ellipse_confidence"]
+                half = (e["semi_major"] * k, (e["semi_minor"] or 0.0) * k)
+                self.sheet.ellipse(at[name], half, e["azimuth"], mark_id("ellipse", name), inside, edgecolor=BLUE,
+                                   linewidth=1.1 * max(self.size, 0.5), facecolor=FILL, zorder=3)  # fmt: skip
+                labels.segments += outline(at[name], *half, e["azimuth"])
 
-    def _arc(self, at: Point, first: Point, second: Point) -> Point:
-        """The angle's arc, clockwise from ``first`` to ``second``; its middle."""
-        begin, finish = (math.atan2(p[0] - at[0], p[1] - at[1]) for p in (first, second))
-        turns = np.linspace(begin, begin + (finish - begin) % (2 * math.pi), 41).tolist()
-        arc = [(at[0] + ARC * math.sin(t), at[1] + ARC * math.cos(t)) for t in turns]
-        self.sheet.line(arc, 1.8, color=VERMILLION, zorder=3.5)
-        return arc[20]
+    def draw_relative(self, at: dict[str, Point], drawn: list[Relative], labels: Labels, inside: Box | None) -> None:
+        """Relative ellipses in the middle of their lines, and the lines of pairs that no reading joins."""
+        if self.view.relative is None:
+            return
+        k = 1000 / self.ground.scale * self.view.relative
+        for one, spot in zip(drawn, self.spots(at, drawn), strict=True):
+            a, b = at[one.ends[0]], at[one.ends[1]]
+            if one.pair:
+                self.view.pairs = True
+                self.sheet.line([a, b], 0.7, mark_id("pair", " - ".join(one.ends)), inside, color=GREEN,
+                                linestyle=(0, (1.0, 3.0)), zorder=1)  # fmt: skip
+                labels.segments.append([a, b])
+            half = (one.semi_major * k, one.semi_minor * k)
+            self.sheet.ellipse(spot, half, one.azimuth, mark_id("relative", " - ".join(one.ends)), inside,
+                               edgecolor=GREEN, linewidth=1.0, linestyle=RELATIVE_DASH, zorder=2.8)  # fmt: skip
+            labels.segments += outline(spot, *half, one.azimuth)
 
-    def labelled(self) -> list[Entry]:
-        """Stations in the order of labelling; of many only control, checks, unchecked, blamed and the worst ten."""
-        blamed = {name for one in suspect_readings(self.record) for line in pointed_lines(one) for name in line}
+    def draw_stations(self, at: dict[str, Point], only: set[str], labels: Labels, size: float) -> None:
+        """The symbols of the stations ``only``."""
+        for one in self.stations:
+            if (name := one["station"]) in only:
+                draw_symbol(self.sheet, self.symbol(one), at[name], size, mark_id("station", name))
+                labels.keep_off(at[name], 1.7 * size)
+        seen = {self.symbol(one) for one in self.stations}
+        self.view.symbols = [symbol for symbol in ROLES if symbol in seen]
+
+    def names(self, only: set[str]) -> list[str]:
+        """Names in the order of labelling; of many: control, checks, unchecked, blamed, the worst ten and a sample."""
+        if "names" not in self.wanted.layers:
+            return []
         if len(self.stations) <= MANY:
-            return self.stations
-        worst = {item[0]["station"] for item in self._half_axes()[:10]}
-        telling = worst | blamed | self.unchecked
-        return [one for one in self.stations if one["station"] in telling or one["role"] != "new"][:MANY]
+            return [one["station"] for one in self.stations if one["station"] in only]
+        blamed = {name for one in suspect_readings(self.record) for line in pointed_lines(one) for name in line}
+        telling = {one["station"] for one in self.ellipses[:10]} | blamed | self.unchecked
+        first = [one["station"] for one in self.stations if one["station"] in telling or one["role"] != "new"][:MANY]
+        return list(dict.fromkeys([*first, *self._sample()]))
+
+    def _sample(self) -> list[str]:
+        """One station a cell: the one nearest to the cell's middle."""
+        left, bottom, _, top = self.ground.frame
+        side = (top - bottom) / CELLS
+        best: dict[tuple[int, int], tuple[float, str]] = {}
+        for name, (x, y) in self.at.items():
+            cell = (int((x - left) // side), int((y - bottom) // side))
+            off = math.dist((x, y), (left + (cell[0] + 0.5) * side, bottom + (cell[1] + 0.5) * side))
+            best[cell] = min(best.get(cell, (off, name)), (off, name))
+        return [name for _, name in (best[cell] for cell in sorted(best))]
 
 
-LOOKS: dict[str, tuple[float, str | tuple[int, tuple[float, ...]]]] = {
-    "distance": (0.8, "-"),
-    "pointing": (0.7, (0, (6.0, 3.5))),
-    "levelled": (0.8, (0, (1.0, 2.0))),
-}
-"""Line width in points and dash of each look."""
+def _within(at: Point, box: Box) -> bool:
+    return box[0] < at[0] < box[2] and box[1] < at[1] < box[3]
 
 
-def _outline(at: Point, major: float, minor: float, azimuth: float) -> list[list[Point]]:
+def outline(at: Point, major: float, minor: float, azimuth: float) -> list[list[Point]]:
     """The ellipse as sixteen chords."""
     s, c = math.sin(azimuth), math.cos(azimuth)
     turns = [(major * math.cos(t), minor * math.sin(t)) for t in np.linspace(0, 2 * math.pi, 17).tolist()]
@@ -293,35 +349,89 @@ def _outline(at: Point, major: float, minor: float, azimuth: float) -> list[list
     return [[one, other] for one, other in itertools.pairwise(points)]
 
 
-def _part_way(one: Point, other: Point, share: float) -> Point:
-    return one[0] + share * (other[0] - one[0]), one[1] + share * (other[1] - one[1])
-
-
-def _clear_of(taken: list[Point], one: Point, other: Point, share: float) -> Point:
-    """A place on the line, at ``share`` of it or a little off, that keeps 5 mm from those taken."""
-    places = [_part_way(one, other, share + step) for step in (0.0, 0.1, -0.1, 0.2, -0.2, 0.3)]
-    return next((place for place in places if all(math.dist(place, t) > 5 for t in taken)), places[-1])
-
-
-def draw_plan(sheet: Sheet, record: Entry, frame: Box) -> PlanView:
-    """Draw the plan into the frame (mm) and say what it shows; at least one station has plane coordinates."""
-    plan = _Plan(sheet, record, frame)
-    labels = Labels(sheet, (frame[0] + 4, frame[1] + 4, frame[2] - 1, frame[3] - 1), 7.5 if plan.size == 1 else 5.5)
-    plan.grid()
-    view = PlanView(plan.scale, looks=plan.lines(), hidden=len(record["stations"]) - len(plan.stations))
-    labels.segments = [
-        [plan.at[a], plan.at[b]] for a, b in line_looks(record["observations"]) if {a, b} <= plan.at.keys()
-    ]
-    view.magnification, view.ellipses = plan.ellipses(labels)
-    for one in plan.stations:
-        draw_symbol(sheet, plan.symbol(one), plan.at[one["station"]], plan.size, mark_id("station", one["station"]))
-        labels.keep_off(plan.at[one["station"]], 1.6 * plan.size)
-    seen = {plan.symbol(one) for one in plan.stations}
-    view.symbols = [symbol for symbol in ("held", "weighted", "check", "new", "unchecked") if symbol in seen]
-    plan.badges(labels)
-    items = []
-    for one in plan.labelled():
-        name = one["station"]
-        items.append((plan.at[name], plain(name, 18), mark_id("label", name)))
-    labels.place(items)
+def draw_plan(sheet: Sheet, record: Entry, layout: Layout) -> PlanView:
+    """Draw the plan into the layout's frame and say what it shows; at least one station has plane coordinates."""
+    plan = _Plan(sheet, record, layout)
+    view, frame = plan.view, layout.frame
+    if "grid" in plan.wanted.layers:
+        draw_grid(sheet, plan.shown, plan.ground, frame)
+    plan.magnifications()
+    own = plan.inset[1] if plan.inset else set()
+    labels = Labels(sheet, (frame[0] + 4, frame[1] + 4, frame[2] - 1, frame[3] - 1), _type_size(plan))
+    if plan.inset:
+        _cover(labels, plan.inset[0].frame)
+    _paint(plan, plan.at, set(plan.at) - own, labels, None)
+    if plan.inset:
+        for name in sorted(own):
+            draw_symbol(sheet, "new", plan.at[name], 0.35, mark_id("crowded", name))
+        _frame_of_inset(plan, labels)
+    lost = labels.place([(plan.at[name], plan.writing.name(name), mark_id("label", name))
+                         for name in plan.names(set(plan.at) - own)])  # fmt: skip
+    if plan.inset:
+        lost += _draw_inset(plan, *plan.inset)
+    without = len(record["stations"]) - len(plan.stations)
+    if without:
+        view.notes.append(
+            f"Not drawn: {without} {'station' if without == 1 else 'stations'} without plane coordinates."
+        )
+    if "names" not in plan.wanted.layers:
+        view.notes.append("Not drawn, as asked: names.")
+    elif len(plan.stations) > MANY:
+        view.notes.append("Named: control, suspects, unchecked, the ten least certain, and a sample as room allows.")
+    elif lost:
+        view.notes.append(f"{count(lost, 'name')} left out for want of room; see stations.csv.")
     return view
+
+
+def _type_size(plan: _Plan) -> float:
+    n, small = len(plan.stations), plan.layout.name == SCREEN
+    return (6.5 if n <= 80 else 5.0) if small else 9.0 if n <= SOME else 7.5 if n <= 80 else 5.5
+
+
+def _cover(labels: Labels, box: Box) -> None:
+    labels.boxes.append(box)
+
+
+def _paint(plan: _Plan, at: dict[str, Point], only: set[str], labels: Labels, inside: Box | None) -> None:
+    """Everything of the stations ``only`` at the places ``at``; ``inside`` a box where it is given."""
+    tag = "-inset" if inside else ""
+    plan.draw_lines(at, inside, tag)
+    labels.segments += [[at[a], at[b]] for a, b in plan.looks]
+    plan.draw_ellipses(at, only, labels, inside)
+    own = plan.inset[1] if plan.inset else set()
+    shown = [one for one in plan.relative if (set(one.ends) <= own) == bool(inside)]
+    plan.draw_relative(at, shown, labels, inside)
+    plan.draw_stations(at, only, labels, plan.size)
+    lines = [line for line in plan.left_out if (set(line) <= own) == bool(inside)]
+    draw_left_out(plan.sheet, at, lines, labels, inside)
+    plan.view.left_out |= bool(lines)
+    if "suspects" in plan.wanted.layers:
+        plan.view.suspects |= draw_suspects(plan.sheet, plan.record, at, own, bool(inside), labels)
+
+
+def _frame_of_inset(plan: _Plan, labels: Labels) -> None:
+    """The inset's piece of ground on the plan, with its letter."""
+    ground = plan.inset[0] if plan.inset else plan.ground
+    share = ground.scale / plan.ground.scale
+    half = (ground.frame[2] - ground.frame[0]) / 2 * share
+    x, y = plan.ground.place({"east": ground.centre[0], "north": ground.centre[1]})
+    plan.sheet.polygon([(x - half, y - half), (x + half, y - half), (x + half, y + half), (x - half, y + half)],
+                       gid="inset-place", linewidth=0.8, edgecolor=BLACK, zorder=3.2)  # fmt: skip
+    plan.sheet.text((x + half + 0.8, y + half - 2.2), "A", 8, bold=True, path_effects=plan.sheet.halo())
+    labels.boxes += [(x - half, y - half, x + half + 3.2, y + half)]
+
+
+def _draw_inset(plan: _Plan, ground: Ground, own: set[str]) -> int:
+    """The crowded stations enlarged; how many names found no room there."""
+    sheet, (left, bottom, right, top) = plan.sheet, ground.frame
+    plan.view.inset = ground.scale
+    corners = [(left, bottom), (right, bottom), (right, top), (left, top)]
+    sheet.polygon(corners, "inset", facecolor="white", linewidth=0.8, zorder=0.9)
+    at = {one["station"]: ground.place(one) for one in plan.stations}
+    labels = Labels(sheet, (left + 1, bottom + 1, right - 1, top - 5), min(7.5, _type_size(plan)))
+    title = f"Inset A, {ratio_in_words(ground.scale, plan.shown)}"
+    width = sheet.width(title, 7, True)
+    sheet.text((left + 1.2, top - 3.4), title, 7, bold=True, path_effects=sheet.halo(), gid="inset-title")
+    _cover(labels, (left, top - 4.4, left + 1.6 + width, top))
+    _paint(plan, at, own, labels, ground.frame)
+    return labels.place([(at[name], plan.writing.name(name), mark_id("label", name)) for name in plan.names(own)])
