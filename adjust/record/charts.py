@@ -202,7 +202,8 @@ def _law_plot(sheet: Sheet, box: Box, record: Entry, tested: list[Entry], law: L
             _beyond(chart, a, value)
         if one["id"] in numbers:
             x, up = chart.at(a, max(-most, min(most, value)))
-            draw_badge(sheet, numbers[one["id"]], (x - 5 if value > 0 else x + 5, up), 0.8)
+            place = (x - 5, up) if abs(value) <= most else (x - 4, up - math.copysign(2.4, value))
+            draw_badge(sheet, numbers[one["id"]], place, 0.8)
     steps = [float(k) for k in range(-int(most), int(most) + 1)]
     chart.ticks(steps, steps, f"expected: {law.name}", "found: the statistics in order of size")
     chart.frame()
@@ -358,7 +359,9 @@ def _numbered(chart: Chart, record: Entry, rows: list[Entry], first: int, most: 
     for i, one in enumerate(rows):
         if one["id"] in numbers and one["statistic"] is not None:
             x, y = chart.at(first + 1.0 + i, max(-most, min(most, one["statistic"])))
-            aside = 4.5 if x + 30 < chart.box[2] else -4.5
+            aside = 4.5 if x + 45 < chart.box[2] else -4.5
+            if abs(one["statistic"]) > most:
+                y, aside = y - math.copysign(2.4, one["statistic"]), aside + (9.0 if aside > 0 else 0.0)
             draw_badge(chart.sheet, numbers[one["id"]], (x + aside, y), 0.8, f"order-suspect-{numbers[one['id']]}")
             chart.sheet.text((x + aside + math.copysign(2.2, aside), y), plain(one["id"], 24), 6.5,
                              ha="left" if aside > 0 else "right", va="center_baseline",

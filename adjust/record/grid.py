@@ -11,7 +11,7 @@ from adjust.record.shown import Shown
 from adjust.units import LENGTHS
 
 if TYPE_CHECKING:
-    from adjust.record.plan_view import Ground
+    from adjust.record.plan_data import Ground
 
 
 def draw_grid(sheet: Sheet, shown: Shown, ground: Ground, frame: Box) -> None:
@@ -20,10 +20,9 @@ def draw_grid(sheet: Sheet, shown: Shown, ground: Ground, frame: Box) -> None:
     left, bottom, right, top = frame
     step = round_step(min(62.0, (right - left) / 2.5) / unit)
     columns, rows = (_round_lines(ground, frame, axis, step, unit, shown) for axis in (0, 1))
-    for x, _ in columns:
-        for y, _ in rows:
-            sheet.lines([[(x - 1.2, y), (x + 1.2, y)], [(x, y - 1.2), (x, y + 1.2)]], 0.5, "grid", colors=PALE,
-                        zorder=0.5)  # fmt: skip
+    crosses = [cross for x, _ in columns for y, _ in rows for cross in ([(x - 1.2, y), (x + 1.2, y)],
+                                                                        [(x, y - 1.2), (x, y + 1.2)])]  # fmt: skip
+    sheet.lines(crosses, 0.5, "grid", edgecolor=PALE, zorder=0.5)
     for x, value in columns:
         for y, up in ((bottom, 1), (top, -1)):
             sheet.line([(x, y), (x, y + 1.8 * up)], 0.5, color=GREY)

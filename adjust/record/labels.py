@@ -24,7 +24,7 @@ class Labels:
 
     def __init__(self, sheet: Sheet, frame: Box, size: float = 7.0) -> None:
         self.sheet, self.frame, self.size = sheet, frame, size
-        self.start = 2.2
+        self.start, self.tight = 2.2, False
         self.boxes: list[Box] = []
         self.soft: list[Box] = []
         self.segments: list[Sequence[Point]] = []
@@ -39,7 +39,9 @@ class Labels:
         segments = np.array([[*one, *other] for one, other in self.segments]).reshape(-1, 4)
         homeless = 0
         for at, text, gid in items:
-            options = around(at, self.sheet.width(text, self.size), HIGH * self.size, self.start)
+            options = around(at, self.sheet.width(text, self.size), HIGH * self.size, self.start)[
+                : 16 if self.tight else None
+            ]
             near = _near(at, boxes), _near(at, soft), _crossing(at, segments)
             costs = [self._cost(option, *near) + 0.02 * i for i, option in enumerate(options)]
             best = options[int(np.argmin(costs))]

@@ -8,7 +8,8 @@ from adjust.caution import CAUTION
 from adjust.record.level_view import LevelView, draw_bar
 from adjust.record.net import suspect_readings
 from adjust.record.paper import SCREEN, Box, Layout, number, ratio_in_words, scale_in_words
-from adjust.record.plan_view import FILL, LOOKS, RELATIVE_DASH, PlanView
+from adjust.record.plan_data import PlanView
+from adjust.record.plan_view import FILL, LOOKS, RELATIVE_DASH
 from adjust.record.sheet import (
     BLUE,
     GREEN,
@@ -195,7 +196,7 @@ class Panel:
             y = self._row(f"confidence ellipse, {self._confidence()}")
             self.sheet.ellipse((self.inner + 6, y), (3.4, 1.5), 1.2, edgecolor=BLUE, facecolor=FILL)
         if view.relative:
-            y = self._row(f"relative ellipse of two stations, {self._confidence()}")
+            y = self._row(f"relative ellipse, {self._confidence()}")
             self.sheet.ellipse((self.inner + 6, y), (3.4, 1.5), 1.2, edgecolor=GREEN, linestyle=RELATIVE_DASH,
                                linewidth=1.0)  # fmt: skip
         if view.pairs:
@@ -211,10 +212,10 @@ class Panel:
         if not suspects or self.y < foot + 18:
             return
         by_id = {one["id"]: one for one in self.record["observations"]}
-        self._section(count(len(suspects), "suspect reading"))
+        self._section(count(len(suspects), "suspect reading"), rule=self.y < self.layout.columns[0][3] - 5)
         listed = 0
         for one in suspects[:LISTED]:
-            if one["observation"] in by_id and self.y > foot + 12:
+            if one["observation"] in by_id and self.y > foot + 9:
                 listed += 1
                 self._suspect(listed, one, by_id[one["observation"]])
         if len(suspects) > listed:
@@ -247,7 +248,7 @@ class Panel:
         x, y = self.inner, foot + 3.5
         for times, colour, words, gid in (
             (view.relative, GREEN, "Relative ellipses", "relative-scale"),
-            (view.magnification, BLUE, "Ellipses", "ellipse-scale"),
+            (view.magnification, BLUE, f"Ellipses ({self._confidence()})", "ellipse-scale"),
         ):
             if times:
                 y = self._ellipse_scale(view, times, colour, words, gid, y)
@@ -277,7 +278,7 @@ class Panel:
             self.sheet.line([(end, y - 1), (end, y + 1)], 1.2, color=colour)
         self.sheet.text((x + length * each + 2, y), f"{self._round(length)} {self.shown.small}", 7,
                         va="center_baseline", gid=f"{gid}-text")  # fmt: skip
-        said = f"{words} ({self._confidence()}) drawn {self._round(times)} times larger"
+        said = f"{words} drawn {self._round(times)} times larger"
         if view.inset:
             said += f", in the inset {self._round(float(f'{times * view.inset / view.scale:.4g}'))} times"
         lines = self.sheet.wrap(said, self.width, 6.5)

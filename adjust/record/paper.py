@@ -62,7 +62,7 @@ def lying(name: str) -> Layout:
 def standing(name: str) -> Layout:
     """The paper on its short side: the view above, three columns below."""
     height, width = PAPERS[name]
-    return _stacked(name, width, height, EDGE, 74.0, 3, 9.0, MARGIN)
+    return _stacked(name, width, height, EDGE, 68.0, 3, 9.0, MARGIN)
 
 
 def screen(record: Entry) -> Layout:
@@ -139,7 +139,7 @@ def layout_of(record: Entry) -> Layout:
     low, high = extent(record)
     size = (high[0] - low[0], high[1] - low[1])
     least = [max(size[i] / room(one.frame, one.margin)[i] for i in (0, 1)) for one in (flat, upright)]
-    return upright if least[1] < 0.9 * least[0] else flat
+    return upright if least[1] < 0.95 * least[0] else flat
 
 
 def scale_number(size: Point, space: Point, shown: Shown) -> float:

@@ -167,13 +167,25 @@ class Sheet:
     def lines(
         self, segments: Sequence[Sequence[Point]], width: float, gid: str, inside: Box | None = None, **more: Any
     ) -> None:
-        """Many lines of one look, as one group."""
-        from matplotlib.collections import LineCollection
+        """Many separate lines of one look, as one path: small in a file, and quick."""
+        from matplotlib.patches import PathPatch
+        from matplotlib.path import Path as Outline
 
         if segments:
-            made = LineCollection(segments, linewidths=width, gid=gid, **more)
-            self.axes.add_collection(made, autolim=False)
-            self.clip(made, inside)
+            places = [point for segment in segments for point in segment]
+            codes = [code for s in segments for code in (Outline.MOVETO, *[Outline.LINETO] * (len(s) - 1))]
+            options: dict[str, Any] = {"facecolor": "none", "edgecolor": BLACK, "clip_on": False} | more
+            made = PathPatch(Outline(places, codes), linewidth=width, gid=gid, **options)
+            self.clip(self.axes.add_artist(made), inside)
+
+    def marks(self, at: Sequence[Point], marker: str, mm: float, gid: str, **more: Any) -> None:
+        """Many marks of one look and size, as one group."""
+        from matplotlib.lines import Line2D
+
+        if at:
+            xs, ys = zip(*at, strict=True)
+            options: dict[str, Any] = {"linestyle": "none", "clip_on": False, "markeredgecolor": BLACK} | more
+            self.axes.add_artist(Line2D(xs, ys, marker=marker, markersize=mm / MM * 72, gid=gid, **options))
 
     def polygon(self, points: Sequence[Point], gid: str | None = None, **more: Any) -> None:
         """A closed polygon."""
@@ -236,15 +248,28 @@ def draw_symbol(sheet: Sheet, symbol: str, at: Point, size: float = 1.0, gid: st
             d = r / math.sqrt(2)
             cross = f"cross-{gid}" if gid else None
             sheet.lines([[(x - d, y - d), (x + d, y + d)], [(x - d, y + d), (x + d, y - d)]], 0.9 * max(size, 0.4),
-                        cross or "cross", colors=BLACK, zorder=4.1)  # fmt: skip
+                        cross or "cross", zorder=4.1)  # fmt: skip
 
 
 def draw_cross(sheet: Sheet, at: Point, size: float = 1.0, gid: str = "left-out") -> None:
     """The mark of a reading that was left out."""
     (x, y), d = at, 1.3 * size
     strokes: list[list[Point]] = [[(x - d, y - d), (x + d, y + d)], [(x - d, y + d), (x + d, y - d)]]
-    sheet.lines(strokes, 2.6, f"{gid}-edge", colors="white", zorder=2.4)
-    sheet.lines(strokes, 1.2, gid, colors=BLACK, zorder=2.5)
+    sheet.lines(strokes, 2.6, f"{gid}-edge", edgecolor="white", zorder=2.4)
+    sheet.lines(strokes, 1.2, gid, zorder=2.5)
+
+
+MARKS = {"held": ("^", 3.6, BLACK), "weighted": ("^", 3.6, "white"), "check": ("s", 2.6, GREEN),
+         "new": ("o", 2.4, "white"), "unchecked": ("o", 3.2, "white")}  # fmt: skip
+
+
+def draw_symbols(sheet: Sheet, symbol: str, at: Sequence[Point], size: float, gid: str) -> None:
+    """Many stations of one symbol as one group, for networks too large for an id a station."""
+    marker, mm, fill = MARKS[symbol]
+    width = 0.9 * max(size, 0.4)
+    sheet.marks(at, marker, mm * size, gid, markerfacecolor=fill, markeredgewidth=width, zorder=4)
+    if symbol == "unchecked":
+        sheet.marks(at, "x", mm * size * 0.7, f"{gid}-cross", markeredgewidth=width, zorder=4.1)
 
 
 def draw_badge(sheet: Sheet, number: int, at: Point, size: float = 1.0, gid: str | None = None) -> None:
