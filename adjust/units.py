@@ -267,7 +267,7 @@ def parse_times(text: str) -> float:
     match = _TIMES.fullmatch(tidy(text))
     number = parse_number(match[1]) if match else 0.0
     if not 1e-3 <= number <= 1e9:
-        raise BadValue('how many times larger than the plan; write it like "x 2000"')
+        raise BadValue('how many times larger; write it like "x 2000"')
     return number
 
 

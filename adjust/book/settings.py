@@ -174,7 +174,7 @@ class _Reader:
         """The entries that are known."""
         for one in value:
             if one not in field.choices:
-                self.fault(path, one, nearest(one, field.choices))
+                self.fault(path, one, f"an unknown layer; {nearest(one, field.choices)}")
         return [one for one in value if one in field.choices]
 
     def number(self, path: str, value: object, field: Field) -> Any:

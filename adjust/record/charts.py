@@ -133,8 +133,8 @@ def _page(record: Entry, layout: Layout, heading: str) -> tuple[Sheet, Box]:
     sheet.text((left, y - 11.5), heading, 9, bold=True)
     sheet.line([(left, y - 14), (right, y - 14)], 1.0)
     lines = sheet.wrap(CAUTION, right - left, 6, most=8)
-    for i, line in enumerate(reversed(lines)):
-        sheet.text((left, EDGE + 1 + 2.7 * i), line, 6)
+    for i, line in enumerate(lines):
+        sheet.text((left, EDGE + 1 + 2.7 * (len(lines) - 1 - i)), line, 6)
     foot = EDGE + 2.5 + 2.7 * len(lines)
     sheet.line([(left, foot), (right, foot)], 0.6)
     return sheet, (left, foot, right, y - 14)
@@ -311,7 +311,7 @@ def _order_chart(sheet: Sheet, box: Box, record: Entry, first: int, last: int, p
             chart.level(
                 sign * critical, 1.0, color=VERMILLION, linestyle=(0, (5.0, 2.5)), gid=f"critical-{first}-{sign}"
             )
-    small = 2.8 if per_row <= PER_ROW else 1.4
+    small = 3.4 if per_row <= PER_ROW else 1.4
     by_kind: dict[str, list[Point]] = {}
     for i, one in enumerate(rows):
         value, x = one["statistic"], first + 1.0 + i

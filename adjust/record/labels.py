@@ -11,6 +11,8 @@ from numpy.typing import NDArray
 from adjust.record.paper import Box, Point
 from adjust.record.sheet import Sheet
 
+Array = NDArray[np.float64]
+
 FORBIDDEN = 1e4
 """Cost of a place that covers another label or a symbol, or leaves the frame: such a label is not drawn."""
 HIGH, BELOW = 0.35, 0.08
@@ -39,13 +41,12 @@ class Labels:
         segments = np.array([[*one, *other] for one, other in self.segments]).reshape(-1, 4)
         homeless = 0
         for at, text, gid in items:
-            options = around(at, self.sheet.width(text, self.size), HIGH * self.size, self.start)[
-                : 16 if self.tight else None
-            ]
-            near = _near(at, boxes), _near(at, soft), _crossing(at, segments)
-            costs = [self._cost(option, *near) + 0.02 * i for i, option in enumerate(options)]
-            best = options[int(np.argmin(costs))]
-            if min(costs) > FORBIDDEN:
+            options = np.array(around(at, self.sheet.width(text, self.size), HIGH * self.size, self.start))
+            options = options[:16] if self.tight else options
+            costs = self._costs(options, _near(at, boxes), _near(at, soft), _crossing(at, segments))
+            k = int(np.argmin(costs))
+            best = (float(options[k, 0]), float(options[k, 1]), float(options[k, 2]), float(options[k, 3]))
+            if costs[k] > FORBIDDEN:
                 homeless += 1
                 continue
             boxes = np.vstack([boxes, best])
@@ -64,16 +65,14 @@ class Labels:
             begin = (at[0] + (end[0] - at[0]) * 1.6 / away, at[1] + (end[1] - at[1]) * 1.6 / away)
             self.sheet.line([begin, end], 0.4, zorder=5.5)
 
-    def _cost(
-        self, box: Box, boxes: NDArray[np.float64], soft: NDArray[np.float64], segments: NDArray[np.float64]
-    ) -> float:
+    def _costs(self, options: Array, boxes: Array, soft: Array, segments: Array) -> Array:
+        """What each option (o, 4) covers; the earlier ones are liked a little better."""
         left, bottom, right, top = self.frame
-        outside = (
-            max(0.0, left - box[0]) + max(0.0, bottom - box[1]) + max(0.0, box[2] - right) + max(0.0, box[3] - top)
-        )
-        covered = _overlap(box, boxes)
-        cost = 10 * covered + 0.3 * _overlap(box, soft) + _inside_length(box, segments)
-        return cost + (FORBIDDEN if outside > 0 or covered > 0 else 0.0)
+        outside = (options[:, 0] < left) | (options[:, 1] < bottom) | (options[:, 2] > right) | (options[:, 3] > top)
+        covered = _overlap(options, boxes)
+        cost: Array = 10 * covered + 0.3 * _overlap(options, soft) + _inside_length(options, segments)
+        cost += 0.02 * np.arange(len(options)) + np.where(outside | (covered > 0), FORBIDDEN, 0.0)
+        return cost
 
 
 def around(at: Point, width: float, height: float, start: float = 2.2) -> list[Box]:
@@ -94,7 +93,7 @@ REACH = 60.0
 """mm beyond which nothing can meet a label of a station: names are cut to 18 characters."""
 
 
-def _near(at: Point, boxes: NDArray[np.float64]) -> NDArray[np.float64]:
+def _near(at: Point, boxes: Array) -> Array:
     """The boxes that a label of this point can meet."""
     return boxes[
         (boxes[:, 0] < at[0] + REACH) & (boxes[:, 2] > at[0] - REACH)
@@ -102,7 +101,7 @@ def _near(at: Point, boxes: NDArray[np.float64]) -> NDArray[np.float64]:
     ]  # fmt: skip
 
 
-def _crossing(at: Point, segments: NDArray[np.float64]) -> NDArray[np.float64]:
+def _crossing(at: Point, segments: Array) -> Array:
     """The segments whose box comes near this point."""
     x, y = segments[:, 0::2], segments[:, 1::2]
     return segments[
@@ -111,18 +110,21 @@ def _crossing(at: Point, segments: NDArray[np.float64]) -> NDArray[np.float64]:
     ] if len(segments) else segments  # fmt: skip
 
 
-def _overlap(box: Box, boxes: NDArray[np.float64]) -> float:
-    """Area in mm² that the box, with a margin of 0.4 mm, shares with the boxes (n, 4)."""
-    wide = np.minimum(boxes[:, 2], box[2] + 0.4) - np.maximum(boxes[:, 0], box[0] - 0.4)
-    high = np.minimum(boxes[:, 3], box[3] + 0.4) - np.maximum(boxes[:, 1], box[1] - 0.4)
-    return float(np.sum(np.clip(wide, 0, None) * np.clip(high, 0, None)))
+def _overlap(options: Array, boxes: Array) -> Array:
+    """(o,) area in mm² that each option, with a margin of 0.4 mm, shares with the boxes (n, 4)."""
+    wide = np.minimum(boxes[:, 2], options[:, 2:3] + 0.4) - np.maximum(boxes[:, 0], options[:, 0:1] - 0.4)
+    high = np.minimum(boxes[:, 3], options[:, 3:4] + 0.4) - np.maximum(boxes[:, 1], options[:, 1:2] - 0.4)
+    area: Array = np.sum(np.clip(wide, 0, None) * np.clip(high, 0, None), axis=1)
+    return area
 
 
-def _inside_length(box: Box, segments: NDArray[np.float64]) -> float:
-    """Length in mm of the segments (n, 4: x1 y1 x2 y2) inside the box, by clipping their parameter to both slabs."""
+def _inside_length(options: Array, segments: Array) -> Array:
+    """(o,) length in mm of the segments (n, 4: x1 y1 x2 y2) inside each option, by clipping their parameter to both
+    slabs."""
     start, step = segments[:, :2], segments[:, 2:] - segments[:, :2]
     step = np.where(np.abs(step) < 1e-9, 1e-9, step)
-    one, other = (np.array(box[:2]) - start) / step, (np.array(box[2:]) - start) / step
-    enter, leave = np.minimum(one, other).max(axis=1), np.maximum(one, other).min(axis=1)
+    one, other = (options[:, None, :2] - start) / step, (options[:, None, 2:] - start) / step
+    enter, leave = np.minimum(one, other).max(axis=2), np.maximum(one, other).min(axis=2)
     share = np.clip(np.minimum(leave, 1) - np.maximum(enter, 0), 0, None)
-    return float(np.sum(share * np.hypot(step[:, 0], step[:, 1])))
+    length: Array = np.sum(share * np.hypot(step[:, 0], step[:, 1]), axis=1)
+    return length
