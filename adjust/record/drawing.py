@@ -30,14 +30,39 @@ DOTS = {SCREEN: 254}
 
 def draw(record: Entry) -> dict[str, bytes]:
     """The drawing's files by name, from the record alone."""
-    return {"drawing.svg": drawing_svg(record), "drawing.png": drawing_png(record), "drawing.pdf": drawing_pdf(record)}
+    with _own_settings():
+        sheets = pages(record)
+        svg, pdf = _svg(sheets[0], record), _pdf(sheets, record)
+    return {"drawing.svg": svg, "drawing.png": drawing_png(record), "drawing.pdf": pdf}
 
 
 def drawing_svg(record: Entry) -> bytes:
     """The sheet as svg."""
     with _own_settings():
-        about = {"Date": None, "Creator": "Brasscap", "Title": title_of(record), "Description": CAUTION}
-        return _saved(compose(record, layout_of(record)), "svg", about)
+        return _svg(compose(record, layout_of(record)), record)
+
+
+def drawing_pdf(record: Entry) -> bytes:
+    """All pages as pdf; its text can be searched."""
+    with _own_settings():
+        return _pdf(pages(record), record)
+
+
+def _svg(sheet: Sheet, record: Entry) -> bytes:
+    about = {"Date": None, "Creator": "Brasscap", "Title": title_of(record), "Description": CAUTION}
+    return _saved(sheet, "svg", about)
+
+
+def _pdf(sheets: list[Sheet], record: Entry) -> bytes:
+    from matplotlib.backends.backend_pdf import PdfPages
+
+    stream = io.BytesIO()
+    about = {"CreationDate": None, "ModDate": None, "Creator": "Brasscap", "Title": title_of(record),
+             "Subject": CAUTION}  # fmt: skip
+    with PdfPages(stream, metadata=about) as file:
+        for sheet in sheets:
+            file.savefig(sheet.figure)
+    return stream.getvalue()
 
 
 def drawing_png(record: Entry, layout: Layout | None = None) -> bytes:
@@ -46,20 +71,6 @@ def drawing_png(record: Entry, layout: Layout | None = None) -> bytes:
         about = {"Software": "Brasscap", "Title": title_of(record), "Description": CAUTION}
         chosen = layout or screen(record)
         return _saved(compose(record, chosen), "png", about, dpi=DOTS.get(chosen.name, 160))
-
-
-def drawing_pdf(record: Entry) -> bytes:
-    """All pages as pdf; its text can be searched."""
-    from matplotlib.backends.backend_pdf import PdfPages
-
-    with _own_settings():
-        stream = io.BytesIO()
-        about = {"CreationDate": None, "ModDate": None, "Creator": "Brasscap", "Title": title_of(record),
-                 "Subject": CAUTION}  # fmt: skip
-        with PdfPages(stream, metadata=about) as file:
-            for sheet in pages(record):
-                file.savefig(sheet.figure)
-        return stream.getvalue()
 
 
 def pages(record: Entry) -> list[Sheet]:

@@ -82,6 +82,8 @@ class Panel:
         if view is not None:
             self._legend(view, first=len(layout.columns) > 1)
         if len(layout.columns) == 3:
+            self.y -= 1.5
+            self._all(self._notes(view))
             self.column(last)
         ceiling = self._scales(view, last, foot)
         if len(layout.columns) != 2:
@@ -137,6 +139,7 @@ class Panel:
             f"Datum: {plain(solution['datum'], 90)}",
             *([f"Frame: {frame}; N is its north axis"] if isinstance(view, PlanView) else []),
             f"Unit: {self.shown.length}; confidence {self._confidence()}",
+            *([] if len(self.layout.columns) == 3 else self._notes(view)),
             *(
                 f"Overall test, {plain(part['what'], 40)}: {part['overall_test']['verdict']}"
                 for part in solution["parts"][:3]
@@ -144,9 +147,20 @@ class Panel:
         ]
         if not solution["converged"]:
             facts.insert(0, "NOT SETTLED: do not use this drawing")
-        facts += [*(view.notes if view else []), *filter(None, [self.writing.note(), self._unread()])]
-        for fact in facts:
-            self._write(fact, 6.5 if self.small else 7, most=4)
+        self._all(facts)
+
+    def _notes(self, view: View | None) -> list[str]:
+        """What is not drawn, or not as it is."""
+        return [*filter(None, [self.writing.note(), self._unread()]), *(view.notes if view else [])]
+
+    def _all(self, facts: list[str]) -> None:
+        """The sentences, as far as there is room above the caution."""
+        size, foot = 6.5 if self.small else 7.0, self.layout.caution[3] + 4
+        for i, fact in enumerate(facts):
+            if self.y - 0.48 * size * len(self.sheet.wrap(fact, self.width, size, most=4)) < foot:
+                self._write(f"and {len(facts) - i} more, see record.json", size)
+                return
+            self._write(fact, size, most=4)
             self.y -= 0.4
 
     def _unread(self) -> str:

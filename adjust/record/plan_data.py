@@ -105,14 +105,14 @@ class Plan:
             self.ellipses = []
         elif len(self.stations) > HUGE and every > MOST_ELLIPSES:
             self.ellipses = self.ellipses[:MOST_ELLIPSES]
-            notes.append(f"Of {every} ellipses the {MOST_ELLIPSES} largest are drawn.")
+            notes.append(f"Drawn: the {MOST_ELLIPSES} largest of {every} ellipses.")
         every = len(self.relative)
         if "relative" not in self.wanted.layers:
             self.relative = []
         elif every > MOST_RELATIVE:
             pairs = [one for one in self.relative if one.pair]
             self.relative = [*pairs, *(one for one in self.relative if not one.pair)][:MOST_RELATIVE]
-            notes.append(f"Of {every} relative ellipses {MOST_RELATIVE} are drawn: pairs asked for, then the largest.")
+            notes.append(f"Drawn: {MOST_RELATIVE} of {every} relative ellipses, pairs asked for, then the largest.")
         for layer, words, found in (("lines", "lines", self.looks), ("left-out", "readings left out", self.left_out),
                                     ("suspects", "suspects", self.record["suspects"])):  # fmt: skip
             if layer not in self.wanted.layers and found:
@@ -171,6 +171,8 @@ class Plan:
             side = min(0.36 * (top - bottom), right - left - 4)
             rest, box = (left, bottom, right, top - side - 4), (right - side - 2, top - side - 2, right - 2, top - 2)
         self.ground = self._ground(rest)
+        if self.wanted.scale == self.view.scale != self.ground.scale:
+            return None  # the scale that was asked for needs the whole frame
         self._lay()
         return self._inset(rest, box)
 

@@ -144,7 +144,7 @@ def draw_plan(sheet: Sheet, record: Entry, layout: Layout) -> PlanView:
     if "names" not in plan.wanted.layers:
         view.notes.append("Not drawn, as asked: names.")
     elif len(plan.stations) > MANY:
-        view.notes.append("Named: control, suspects, unchecked, the ten least certain, and a sample as room allows.")
+        view.notes.append("Named: control, suspects, unchecked, the ten least certain, and a sample.")
     elif lost:
         view.notes.append(f"{count(lost, 'name')} left out for want of room; see stations.csv.")
     return view

@@ -148,7 +148,7 @@ def test_a_crowd_without_a_free_corner_gets_a_strip() -> None:
 def test_a_large_network_says_what_it_does_not_draw() -> None:
     side = math.isqrt(HUGE) + 1
     svg = Svg(grid_record(side))
-    assert f"Of {side * side - 1} ellipses the {MOST_ELLIPSES} largest are drawn." in svg.page
+    assert f"Drawn: the {MOST_ELLIPSES} largest of {side * side - 1} ellipses." in svg.page
     assert len(svg.many("ellipse-G")) == MOST_ELLIPSES
     assert "Named: control, suspects, unchecked, the ten least certain, and a sample" in svg.page
     marks = svg.groups["stations-new"]
