@@ -328,7 +328,7 @@ def _order_chart(sheet: Sheet, box: Box, record: Entry, first: int, last: int, p
     _numbered(chart, record, rows, first, most)
     step = max(1, round(len(rows) / 10))
     step = next(s for s in (1, 2, 5, 10, 20, 25, 50, 100, 200, 500, 1000, 2000, 5000, 10**6) if s >= step)
-    xs = [float(k) for k in range(first + 1, last + 1) if k % step == 0 or k == first + 1]
+    xs = [float(k) for k in range(first + 1, last + 1) if k == first + 1 or (k % step == 0 and k > first + step / 3)]
     chart.ticks(xs, [float(k) for k in range(-int(most), int(most) + 1, 2 if most > 5 else 1)],
                 "reading, in the order of the book", "statistic")  # fmt: skip
     if critical:
