@@ -10,9 +10,10 @@ bearing                                   a quadrant bearing (N 45 30 15 E)
 course                                    a quadrant bearing or an azimuth
 zenith, elevation                         a zenith angle from 0 to half a circle; an elevation angle with its sign
 estimate                                  a pure number, or one with its standard deviation: "0.13 +- 0.05"
+ratio, times                              a scale "1:500"; how many times larger, "x 2000"
 sd                                        a standard deviation in the small unit of the column it belongs to
 precision                                 an error model such as "1.5 mm + 2 ppm" or ["1.5 mm", "2 ppm"]
-date, list                                TOML date, TOML list of text
+date, list                                TOML date, TOML list of text, of the choices where there are some
 """
 
 from __future__ import annotations

@@ -51,6 +51,21 @@ TESTS = (
     Field("variance_factor", "choice", "given: the stated standard deviations are trusted; from-residuals: only their "
           "ratios are, and the residuals set the scale", default="given", choices=("given", "from-residuals")),
 )  # fmt: skip
+PAPERS = ("A4", "A3", "A2", "Letter", "Tabloid")
+LAYERS = ("grid", "lines", "ellipses", "relative", "names", "inset", "suspects", "left-out")
+DRAWING = (
+    Field("paper", "choice", "paper of drawing.svg and drawing.pdf; left out: A4, or Letter where lengths are in feet; "
+          "Tabloid is 11 by 17 inches", choices=PAPERS),
+    Field("orientation", "choice", "auto: as the network is longer or higher", default="auto",
+          choices=("auto", "landscape", "portrait")),
+    Field("scale", "ratio", 'scale of the plan, "1:500", true on the paper; where the stations do not fit at it, the '
+          "drawing takes one that shows them all and warns; left out: the largest round scale that shows all"),
+    Field("ellipses", "times", "how many times larger than the plan the confidence ellipses are drawn (in a drawing of "
+          'heights: the intervals, than the height axis): "x 2000"; left out: by their size'),
+    Field("relative_ellipses", "times", 'the same for relative ellipses: "x 5000"; left out: by their size'),
+    Field("layers", "list", "what is drawn beside stations, title, scales and caution; left out: everything",
+          choices=LAYERS),
+)  # fmt: skip
 BOOK_UNITS = tuple(Field(f.name, f.type, f.meaning + " (in this table)", choices=f.choices) for f in UNITS[:3])
 BOOK = (
     Field("file", "text", "name of the table; left out: KIND.csv"),
@@ -90,6 +105,7 @@ SECTIONS: dict[str, tuple[Field, ...]] = {
     "instruments.*": instrument_keys(),
     "book": BOOK,
     "tests": TESTS,
+    "drawing": DRAWING,
 }
 """Sections of job.toml; '' is the top, 'instruments.*' every instrument, 'book' every [[book]] block."""
 

@@ -16,7 +16,7 @@ from adjust.errors import nearest
 from adjust.fields import Field
 from adjust.kinds import KINDS
 from adjust.sigmas import Precision, parse_precision
-from adjust.units import BadValue, parse_estimate, parse_length
+from adjust.units import BadValue, parse_estimate, parse_length, parse_ratio, parse_times
 
 
 @dataclass(frozen=True)
@@ -59,6 +59,20 @@ class Frame:
 
 
 @dataclass(frozen=True)
+class Drawing:
+    """What [drawing] asks for; None and '': the drawing chooses."""
+
+    paper: str = ""
+    orientation: str = "auto"
+    scale: float | None = None
+    """N of 1:N."""
+    ellipses: float | None = None
+    """Times larger than the plan."""
+    relative_ellipses: float | None = None
+    layers: tuple[str, ...] = schema.LAYERS
+
+
+@dataclass(frozen=True)
 class Table:
     """One [[book]] block: which file, of which kind, in which units, by which instrument."""
 
@@ -92,6 +106,7 @@ class Settings:
     known_units: bool
     """False: the units are missing, so values are not read (the fault is already noted)."""
     frame: Frame = Frame()
+    drawing: Drawing = Drawing()
     lines: dict[str, int] = field(default_factory=dict)
     """Line of every key of job.toml by its dotted path."""
 
@@ -134,7 +149,10 @@ class _Reader:
             return value.isoformat()
         if field.type == "list":
             if isinstance(value, list) and all(isinstance(v, str) for v in value):
-                return value
+                return self.chosen(path, value, field) if field.choices else value
+            if field.choices:
+                self.fault(path, value, f'must be a list: ["{field.choices[0]}", "{field.choices[1]}"]')
+                return field.default
             self.fault(path, value, 'must be a list of station names: ["M1", "M2"]')
             return field.default
         if field.type == "table":
@@ -151,6 +169,13 @@ class _Reader:
             self.fault(path, value, "use one of " + ", ".join(f'"{c}"' for c in field.choices))
             return field.default
         return value
+
+    def chosen(self, path: str, value: list[str], field: Field) -> list[str]:
+        """The entries that are known."""
+        for one in value:
+            if one not in field.choices:
+                self.fault(path, one, f"an unknown layer; {nearest(one, field.choices)}")
+        return [one for one in value if one in field.choices]
 
     def number(self, path: str, value: object, field: Field) -> Any:
         if isinstance(value, bool) or not isinstance(value, int | float):
@@ -198,7 +223,7 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         faults.add("job.toml", line, "", shown, f"not TOML: {_toml_hint(message.partition(' (at')[0].lower())}")
         return None
     r = _Reader(text, faults)
-    top = r.section("", job, schema.JOB, ignore=("units", "datum", "instruments", "book", "tests", "frame"))
+    top = r.section("", job, schema.JOB, ignore=("units", "datum", "instruments", "book", "tests", "frame", "drawing"))
     units = r.section("units", job.get("units", {}), schema.UNITS)
     datum = r.section("datum", job.get("datum", {}), schema.DATUM)
     tests = r.section("tests", job.get("tests", {}), schema.TESTS)
@@ -219,6 +244,7 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         books=_books(r, job.get("book"), job_units),
         known_units=bool(units["length"] and units["angle"]),
         frame=_frame(r, job.get("frame", {}), job_units),
+        drawing=_drawing(r, job.get("drawing", {})),
         lines=r.lines,
     )
 
@@ -235,6 +261,19 @@ def _frame(r: _Reader, given: object, units: Units) -> Frame:
     except BadValue as bad:
         r.fault("frame.refraction", texts["refraction"], str(bad))
     return Frame(height, estimate)
+
+
+def _drawing(r: _Reader, given: object) -> Drawing:
+    values = r.section("drawing", given, schema.DRAWING)
+    parsed: dict[str, float | None] = {}
+    for key, parse in (("scale", parse_ratio), ("ellipses", parse_times), ("relative_ellipses", parse_times)):
+        try:
+            parsed[key] = parse(values[key]) if values[key] is not None else None
+        except BadValue as bad:
+            parsed[key] = None
+            r.fault(f"drawing.{key}", values[key], str(bad))
+    layers = schema.LAYERS if values["layers"] is None else tuple(values["layers"])
+    return Drawing(values["paper"] or "", values["orientation"], layers=layers, **parsed)
 
 
 def _shown(value: object) -> str:

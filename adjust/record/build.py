@@ -15,6 +15,7 @@ from adjust.judge.overall import OverallTest
 from adjust.network import ROLES
 from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
+from adjust.record.paper import drawing_warnings
 from adjust.record.places import line_entries, mark_entries, parameter_entries, side_shot_entries, station_entries
 from adjust.solver.defects import thin_of
 from adjust.solver.solution import PartResult, Solution
@@ -33,6 +34,12 @@ def build(judgement: Judgement) -> dict[str, Any]:
 
 
 def _record(judgement: Judgement) -> dict[str, Any]:
+    record = _sections(judgement)
+    record["warnings"] += drawing_warnings(record)
+    return record
+
+
+def _sections(judgement: Judgement) -> dict[str, Any]:
     solution = judgement.solution
     return {
         "format": FORMAT,
@@ -109,7 +116,15 @@ def _settings(solution: Solution) -> dict[str, Any]:
              "units": {"length": t.units.length, "angle": t.units.angle, "decimal": t.units.decimal}}
             for t in solution.job.tables
         ],
+        "drawing": _drawing(solution),
     }  # fmt: skip
+
+
+def _drawing(solution: Solution) -> dict[str, Any]:
+    one = solution.job.settings.drawing
+    return {"paper": one.paper or None, "orientation": one.orientation, "scale": number(one.scale),
+            "ellipses": number(one.ellipses), "relative_ellipses": number(one.relative_ellipses),
+            "layers": list(one.layers)}  # fmt: skip
 
 
 def _units(solution: Solution) -> dict[str, Any]:

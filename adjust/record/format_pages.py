@@ -23,6 +23,7 @@ TYPES = {
     "precision": "error model",
     "course": "quadrant bearing or azimuth", "zenith": "zenith angle", "elevation": "elevation angle with its sign",
     "estimate": "number, or number +- standard deviation",
+    "ratio": "scale", "times": "how many times larger",
     "date": "date", "list": "list of names", "table": "table",
 }  # fmt: skip
 
@@ -93,6 +94,7 @@ def _table(fields: Iterable[Field], first: str) -> str:
     rows = [f"| {first} | what | meaning |", "|---|---|---|"]
     for f in fields:
         what = TYPES[f.type] if not f.choices else " ".join(f"`{c}`" for c in f.choices)
+        what = f"list of {what}" if f.type == "list" and f.choices else what
         notes = [f.meaning] + (["**required**"] if f.required else [])
         if f.default is not None:
             notes.append(f"default `{f.default}`")

@@ -61,6 +61,7 @@ def job_schema() -> dict[str, Any]:
         "frame": sections["frame"],
         "datum": sections["datum"],
         "tests": sections["tests"],
+        "drawing": sections["drawing"],
         "instruments": {"type": "object", "additionalProperties": sections["instruments.*"]},
         "book": {"type": "array", "items": sections["book"]},
     }
@@ -84,7 +85,10 @@ def _job_value(field: Field) -> dict[str, Any]:
     if field.type in ("length", "estimate"):
         return {"type": ["number", "string"]}
     if field.type == "list":
-        return {"type": "array", "items": {"type": "string"}}
+        return {
+            "type": "array",
+            "items": {"type": "string", **({"enum": list(field.choices)} if field.choices else {})},
+        }
     if field.type == "precision":
         return {"type": ["string", "array"], "items": {"type": "string"}}
     return {"type": "string", **({"enum": list(field.choices)} if field.choices else {})}
