@@ -13,7 +13,8 @@ import zipfile
 from pathlib import Path
 
 STARTER = {f"adjust/starter/{name}" for name in ("job.toml", "control.csv", "distances.csv", "directions.csv")}
-SOURCE = {"README.md", "DEVELOPERS.md", "pyproject.toml", "docs/LICENSE.txt", "networks/simulate.py", ".ci/run"}
+SOURCE = {"README.md", "DEVELOPERS.md", "pyproject.toml", "docs/LICENSE.txt", "networks/simulate.py"}
+SOURCE |= {".ci/run", ".ci/oldest.txt", ".github/workflows/tests.yml"}
 
 
 def tracked(checkout: Path) -> set[str]:

@@ -19,6 +19,16 @@ if TYPE_CHECKING:
     from typing import Any
 
 DONE, FAILED, REFUSED, INTERNAL, INTERRUPTED = 0, 1, 2, 70, 130
+SHELLS = ("bash", "zsh", "fish")
+
+
+class _Completion(argparse.Action):
+    """Print the completion script of a shell and end, as --version does."""
+
+    def __call__(self, parser: argparse.ArgumentParser, given: object, shell: Any, option: object = None) -> None:
+        with open(os.path.join(os.path.dirname(__file__), "completion", shell), encoding="utf-8") as script:
+            print(script.read(), end="")
+        parser.exit()
 
 
 def parser() -> argparse.ArgumentParser:
@@ -29,6 +39,8 @@ def parser() -> argparse.ArgumentParser:
         epilog=CAUTION_SHORT + " Exit: 0 done, 1 a test failed, 2 could not be done.",
     )
     top.add_argument("--version", action="version", version=f"brasscap {__version__}")
+    top.add_argument("--completion", action=_Completion, choices=SHELLS, metavar="SHELL",
+                     help="print the completion script for bash, zsh or fish")  # fmt: skip
     commands = top.add_subparsers(dest="command", metavar="COMMAND", required=True)
     start = commands.add_parser("start", help="write a small commented job to begin from")
     start.add_argument("dir", metavar="DIR", help="a new folder")

@@ -11,6 +11,7 @@ course                                    a quadrant bearing or an azimuth
 zenith, elevation                         a zenith angle from 0 to half a circle; an elevation angle with its sign
 lengths                                   a length, or a table of lengths by page
 estimate                                  a pure number, or one with its standard deviation: "0.13 +- 0.05"
+ratio, times                              a scale "1:500"; how many times larger, "x 2000"
 sd                                        a standard deviation in the small unit of the column it belongs to
 precision                                 an error model such as "1.5 mm + 2 ppm" or ["1.5 mm", "2 ppm"]
 allowance                                 how large a misclosure may be: "12 mm*sqrt(km)", "1:10000", or a list
@@ -18,8 +19,7 @@ rules                                     "NAME: CLASS" of a rule, or a list of 
 temperature, pressure, humidity, ppm      degrees Celsius, hPa, per cent, parts per million, or with their own unit
 wavelength                                a length, written with its unit: "658 nm"
 air                                       a table of temperature, pressure, humidity or ppm
-words                                     a list of some of the choices
-date, list                                TOML date, TOML list of text
+date, list                                TOML date, TOML list of text, of the choices where there are some
 """
 
 from __future__ import annotations

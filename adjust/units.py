@@ -270,6 +270,28 @@ def parse_elevation(text: str, notation: str, decimal: str = ".") -> float:
     return TURN / 4 - value
 
 
+_RATIO = re.compile(r"1\s*:\s*([\d.]+)")
+_TIMES = re.compile(r"[x×]\s*([\d.]+)")
+
+
+def parse_ratio(text: str) -> float:
+    """N of a scale '1:N'."""
+    match = _RATIO.fullmatch(tidy(text))
+    number = parse_number(match[1]) if match else 0.0
+    if not 1 <= number <= 1e7:
+        raise BadValue('a scale from 1:1 to 1:10000000; write it like "1:500"')
+    return number
+
+
+def parse_times(text: str) -> float:
+    """How many times larger: 'x 2000'."""
+    match = _TIMES.fullmatch(tidy(text))
+    number = parse_number(match[1]) if match else 0.0
+    if not 1e-3 <= number <= 1e9:
+        raise BadValue('how many times larger; write it like "x 2000"')
+    return number
+
+
 def parse_estimate(text: str) -> tuple[float, float | None]:
     """'0.13' or '0.13 +- 0.05': a pure number and its standard deviation, None where there is none."""
     value, *sd = re.split(r"\s*(?:\+-|\+/-|±)\s*", tidy(text))

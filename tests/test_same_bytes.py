@@ -128,6 +128,7 @@ def plain(tmp_path_factory: pytest.TempPathFactory, big_job: Path) -> Outcome:
         "stations.csv",
         "observations.csv",
         "drawing.png",
+        "drawing.pdf",
     }
     assert {Path(name).parent.name for name in outcome.files} == set(DEMOS)
     record = json.loads(outcome.big)

@@ -26,6 +26,8 @@ class Aside:
     line: int
     kind: str
     reason: str
+    stations: tuple[str, ...] = ()
+    """Its stations, the standpoint first."""
 
 
 @dataclass(frozen=True)

@@ -24,6 +24,9 @@ from adjust.kinds import KINDS, TABLES
 from adjust.kinds.base import OFFSET, GroupUnknown, Kind
 from adjust.network import Array, Block, Bools, Group, Ints
 
+END_COLUMNS = ("at", "from", "to", "back", "fore", "first", "second")
+"""Columns of a reading's stations in any table, the standpoint first."""
+
 
 class Observations:
     """The growing list of blocks, group unknowns, and rows set aside."""
@@ -146,6 +149,7 @@ class Observations:
         everything = range(len(cells))
         use = cells.choices("use", everything)
         ids, reasons = cells.text("id"), cells.text("reason")
+        ends = [cells.text(column) for column in END_COLUMNS if cells.has(column)]
         for i in everything:
             place = f"{cells.rows.file}:{cells.rows.lines[i]}"
             if ids[i] and self._ids.setdefault(ids[i], place) != place:
@@ -154,7 +158,8 @@ class Observations:
                 cells.fault(i, "id", ids[i], "looks like FILE:LINE, the name of rows without an id; give another")
             if use[i] == "yes":
                 continue
-            aside = Aside(ids[i] or place, cells.rows.file, cells.rows.lines[i], kind, reasons[i])
+            stations = tuple(self.booked.get(column[i], column[i]) for column in ends if column[i])
+            aside = Aside(ids[i] or place, cells.rows.file, cells.rows.lines[i], kind, reasons[i], stations)
             if use[i] == "no" and not reasons[i]:
                 cells.fault(i, "reason", "", "a reading left out needs its reason")
             if use[i] == "planned" and any(cells.text(column)[i] for column in value):

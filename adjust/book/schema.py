@@ -85,6 +85,21 @@ REJECTION = (
           dimension="angle"),
 )  # fmt: skip
 """Limits of `rounds`, declared before the work."""
+PAPERS = ("A4", "A3", "A2", "Letter", "Tabloid")
+LAYERS = ("grid", "lines", "ellipses", "relative", "names", "inset", "suspects", "left-out")
+DRAWING = (
+    Field("paper", "choice", "paper of drawing.svg and drawing.pdf; left out: A4, or Letter where lengths are in feet; "
+          "Tabloid is 11 by 17 inches", choices=PAPERS),
+    Field("orientation", "choice", "auto: as the network is longer or higher", default="auto",
+          choices=("auto", "landscape", "portrait")),
+    Field("scale", "ratio", 'scale of the plan, "1:500", true on the paper; where the stations do not fit at it, the '
+          "drawing takes one that shows them all and warns; left out: the largest round scale that shows all"),
+    Field("ellipses", "times", "how many times larger than the plan the confidence ellipses are drawn (in a drawing of "
+          'heights: the intervals, than the height axis): "x 2000"; left out: by their size'),
+    Field("relative_ellipses", "times", 'the same for relative ellipses: "x 5000"; left out: by their size'),
+    Field("layers", "list", "what is drawn beside stations, title, scales and caution; left out: everything",
+          choices=LAYERS),
+)  # fmt: skip
 BOOK_UNITS = tuple(Field(f.name, f.type, f.meaning + " (in this table)", choices=f.choices) for f in UNITS[:3])
 BOOK = (
     Field("file", "text", "name of the table; left out: KIND.csv"),
@@ -96,7 +111,7 @@ BOOK = (
           "ground-from: horizontal at the instrument; slope: from instrument to target; grid or left out: on the plane "
           "itself; ellipsoid: not on a local plane", choices=SURFACES),
     Field("reflector", "text", "the reflector of its distances; may be left out where there is only one"),
-    Field("applied", "words", "corrections of its distances that the instrument has already made; [] is none. Must be "
+    Field("applied", "list", "corrections of its distances that the instrument has already made; [] is none. Must be "
           "said where the job has a reflector, weather, or an instrument's constant or scale", choices=APPLIED),
     Field("weather", "air", "temperature, pressure and humidity, or ppm, of its distances where a row has none"),
     Field("units", "table", "units of this table where they differ from the job's: length, angle, decimal"),
@@ -146,6 +161,7 @@ SECTIONS: dict[str, tuple[Field, ...]] = {
     "tests": TESTS,
     "rejection": REJECTION,
     "tolerance": TOLERANCE,
+    "drawing": DRAWING,
 }
 """Sections of job.toml; '' is the top, 'instruments.*' every instrument, 'reflectors.*' every reflector, 'book' every
 [[book]] block."""

@@ -2,25 +2,22 @@
 
 from __future__ import annotations
 
-import datetime
-import json
-import re
 import tomllib
 from dataclasses import dataclass, field
 from typing import Any
 
-from adjust.allowances import Allowance, parse_allowance
+from adjust.allowances import Allowance
 from adjust.atmosphere import Air
 from adjust.book import schema
 from adjust.book.faults import Faults
 from adjust.book.level_keys import LevelBook, level_book
-from adjust.book.toml_lines import key_lines, line_of
-from adjust.book.weather import AIR_TYPES, Meter, read_air, read_constant, read_meter
+from adjust.book.toml_lines import line_of
+from adjust.book.toml_reader import Reader
+from adjust.book.weather import Meter, read_air, read_constant, read_meter
 from adjust.errors import nearest
-from adjust.fields import Field
 from adjust.kinds import KINDS
-from adjust.sigmas import Precision, parse_precision
-from adjust.units import BadValue, parse_estimate, parse_length
+from adjust.sigmas import Precision
+from adjust.units import BadValue, parse_estimate, parse_length, parse_ratio, parse_times
 
 
 @dataclass(frozen=True)
@@ -60,6 +57,20 @@ class Frame:
 
     plane_height: float | None = None
     refraction: Estimate = Estimate(float(schema.REFRACTION), None, schema.REFRACTION)
+
+
+@dataclass(frozen=True)
+class Drawing:
+    """What [drawing] asks for; None and '': the drawing chooses."""
+
+    paper: str = ""
+    orientation: str = "auto"
+    scale: float | None = None
+    """N of 1:N."""
+    ellipses: float | None = None
+    """Times larger than the plan."""
+    relative_ellipses: float | None = None
+    layers: tuple[str, ...] = schema.LAYERS
 
 
 @dataclass(frozen=True)
@@ -112,107 +123,9 @@ class Settings:
     """Limits of `rounds` by key, constants in metres or radians."""
     rules: tuple[str, ...] = ()
     """Rules that [tolerance] names, with their classes."""
+    drawing: Drawing = Drawing()
     lines: dict[str, int] = field(default_factory=dict)
     """Line of every key of job.toml by its dotted path."""
-
-
-class _Reader:
-    def __init__(self, text: str, faults: Faults) -> None:
-        self.faults = faults
-        self.lines = key_lines(text)
-
-    def fault(self, path: str, found: object, hint: str) -> None:
-        shown = re.sub(r"^book\.\d+", "book", path)  # the line tells which block
-        self.faults.add("job.toml", line_of(self.lines, path), shown, _shown(found), hint)
-
-    def section(
-        self, path: str, given: object, fields: tuple[Field, ...], ignore: tuple[str, ...] = ()
-    ) -> dict[str, Any]:
-        """Values of a section by key, defaults where absent or wrong."""
-        values = {f.name: f.default for f in fields}
-        if not isinstance(given, dict):
-            inline = path.startswith(("book.", "instruments.")) and path.count(".") > 1
-            inside = 'length = "ft"' if path.endswith(".units") else 'temperature = "20 C", pressure = "950 hPa"'
-            form = f"{path.rpartition('.')[2]} = {{ {inside} }}" if inline else f"[{path}]"
-            self.fault(path, given, f"must be a table: {form}")
-            return values
-        known = {f.name: f for f in fields}
-        for key, value in given.items():
-            where = f"{path}.{key}" if path else key
-            if key in known:
-                values[key] = self.value(where, value, known[key])
-            elif key not in ignore:
-                self.fault(where, key, f"an unknown key; {nearest(key, [*known, *ignore])}")
-        for f in fields:
-            if f.required and f.name not in given:
-                choices = " | ".join(f'"{c}"' for c in f.choices)
-                self.fault(f"{path}.{f.name}", "", f"missing; write {f.name} = {choices} under [{path}]")
-        return values
-
-    def value(self, path: str, value: object, field: Field) -> Any:
-        if field.type == "number":
-            return self.number(path, value, field)
-        if field.type == "date" and isinstance(value, datetime.date):
-            return value.isoformat()
-        if field.type == "list":
-            if isinstance(value, list) and all(isinstance(v, str) for v in value):
-                return value
-            self.fault(path, value, 'must be a list of station names: ["M1", "M2"]')
-            return field.default
-        if field.type in ("table", "air", "lengths"):
-            return value
-        if field.type in ("precision", "allowance"):
-            return self.parsed(path, value, field)
-        if field.type == "words":
-            return self.words(path, value, field)
-        if field.type in AIR_TYPES and isinstance(value, int | float) and not isinstance(value, bool):
-            return repr(value)
-        if field.type == "rules":
-            return self.rules(path, value)
-        if field.type in ("length", "estimate") and isinstance(value, int | float) and not isinstance(value, bool):
-            return repr(value)
-        if not isinstance(value, str):
-            date = field.type == "date"
-            self.fault(path, value, "write a day like 2026-05-14" if date else "must be a text in quotes")
-            return field.default
-        if field.choices and value not in field.choices:
-            self.fault(path, value, "use one of " + ", ".join(f'"{c}"' for c in field.choices))
-            return field.default
-        return value
-
-    def number(self, path: str, value: object, field: Field) -> Any:
-        if isinstance(value, bool) or not isinstance(value, int | float):
-            self.fault(path, value, "must be a number")
-        elif field.above is not None and not value > field.above:
-            self.fault(path, value, f"must be above {field.above:g}")
-        elif path.startswith("tests.") and not value < 1:
-            self.fault(path, value, "a probability; write it between 0 and 1, as in 0.05 for 5 per cent")
-        elif not value < 1e300:
-            self.fault(path, value, "must be a finite number")
-        else:
-            return float(value)
-        return field.default
-
-    def parsed(self, path: str, value: object, field: Field) -> Precision | Allowance | None:
-        try:
-            return (parse_precision if field.type == "precision" else parse_allowance)(value, field.dimension)
-        except BadValue as bad:
-            self.fault(path, value, str(bad))
-            return None
-
-    def words(self, path: str, value: object, field: Field) -> tuple[str, ...] | None:
-        if isinstance(value, list) and all(v in field.choices for v in value):
-            return tuple(value)
-        choices = ", ".join(f'"{c}"' for c in field.choices)
-        self.fault(path, value, f"must be a list of some of {choices}; [] where nothing was applied")
-        return None
-
-    def rules(self, path: str, value: object) -> tuple[str, ...]:
-        texts = [value] if isinstance(value, str) else value
-        if isinstance(texts, list) and texts and all(isinstance(t, str) for t in texts):
-            return tuple(texts)
-        self.fault(path, value, 'must name a rule and its class: "usa-levelling-1984: third order"')
-        return ()
 
 
 _TOML_HINTS = {
@@ -239,7 +152,7 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         shown = text.split("\n")[line - 1].strip() if line <= text.count("\n") + 1 else ""
         faults.add("job.toml", line, "", shown, f"not TOML: {_toml_hint(message.partition(' (at')[0].lower())}")
         return None
-    r = _Reader(text, faults)
+    r = Reader(text, faults)
     top = r.section("", job, schema.JOB, ignore=tuple(name.partition(".")[0] for name in schema.SECTIONS if name))
     units = r.section("units", job.get("units", {}), schema.UNITS)
     datum = r.section("datum", job.get("datum", {}), schema.DATUM)
@@ -269,11 +182,12 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         allowances={key: value for key, value in tolerance.items() if key != "rule" and value},
         rejection=_rejection(r, job.get("rejection", {})),
         rules=tolerance["rule"] or (),
+        drawing=_drawing(r, job.get("drawing", {})),
         lines=r.lines,
     )
 
 
-def _rejection(r: _Reader, given: object) -> dict[str, Allowance]:
+def _rejection(r: Reader, given: object) -> dict[str, Allowance]:
     """Limits of rounds: plain sizes, for a set has no length and no number of angles."""
     out = {key: value for key, value in r.section("rejection", given, schema.REJECTION).items() if value}
     for key, value in list(out.items()):
@@ -283,7 +197,7 @@ def _rejection(r: _Reader, given: object) -> dict[str, Allowance]:
     return out
 
 
-def _frame(r: _Reader, given: object, units: Units) -> Frame:
+def _frame(r: Reader, given: object, units: Units) -> Frame:
     texts = r.section("frame", given, schema.FRAME)
     height, estimate = None, Frame.refraction
     try:
@@ -297,12 +211,20 @@ def _frame(r: _Reader, given: object, units: Units) -> Frame:
     return Frame(height, estimate)
 
 
-def _shown(value: object) -> str:
-    """A value as it is written in TOML, near enough to be found again."""
-    return value if isinstance(value, str) else json.dumps(value, default=str, ensure_ascii=False)
+def _drawing(r: Reader, given: object) -> Drawing:
+    values = r.section("drawing", given, schema.DRAWING)
+    parsed: dict[str, float | None] = {}
+    for key, parse in (("scale", parse_ratio), ("ellipses", parse_times), ("relative_ellipses", parse_times)):
+        try:
+            parsed[key] = parse(values[key]) if values[key] is not None else None
+        except BadValue as bad:
+            parsed[key] = None
+            r.fault(f"drawing.{key}", values[key], str(bad))
+    layers = schema.LAYERS if values["layers"] is None else tuple(values["layers"])
+    return Drawing(values["paper"] or "", values["orientation"], layers=layers, **parsed)
 
 
-def _instruments(r: _Reader, given: object) -> tuple[dict[str, dict[str, Precision]], dict[str, Meter]]:
+def _instruments(r: Reader, given: object) -> tuple[dict[str, dict[str, Precision]], dict[str, Meter]]:
     """Error models by instrument and key, and the distance meters of those that say something of them."""
     if not isinstance(given, dict):
         r.fault("instruments", given, "must hold one table an instrument: [instruments.station-1]")
@@ -320,7 +242,7 @@ def _instruments(r: _Reader, given: object) -> tuple[dict[str, dict[str, Precisi
     return models, meters
 
 
-def _reflectors(r: _Reader, given: object) -> dict[str, float]:
+def _reflectors(r: Reader, given: object) -> dict[str, float]:
     """Constants of the reflectors by name."""
     if not isinstance(given, dict):
         r.fault("reflectors", given, "must hold one table a reflector: [reflectors.round]")
@@ -335,12 +257,12 @@ def _reflectors(r: _Reader, given: object) -> dict[str, float]:
     return out
 
 
-def _air(r: _Reader, path: str, given: object) -> Air:
+def _air(r: Reader, path: str, given: object) -> Air:
     """Weather written as a table."""
     return read_air(r.section(path, given, schema.WEATHER), r.fault, path)
 
 
-def _books(r: _Reader, given: object, units: Units) -> tuple[Table, ...] | None:
+def _books(r: Reader, given: object, units: Units) -> tuple[Table, ...] | None:
     if given is None:
         return None
     if not isinstance(given, list) or not all(isinstance(b, dict) for b in given):
@@ -350,7 +272,7 @@ def _books(r: _Reader, given: object, units: Units) -> tuple[Table, ...] | None:
     return tuple(t for t in tables if t)
 
 
-def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table | None:
+def _book(r: Reader, path: str, block: dict[str, Any], units: Units) -> Table | None:
     kinds = schema.table_names()
     values = r.section(path, block, schema.BOOK)
     own = r.section(f"{path}.units", values["units"], schema.BOOK_UNITS) if values["units"] is not None else {}
@@ -376,7 +298,7 @@ def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table |
         instrument=values["instrument"] or "",
         sd_factor=values["sd_factor"],
         reflector=values["reflector"] or "",
-        applied=values["applied"],
+        applied=None if values["applied"] is None else tuple(values["applied"]),
         weather=Air() if values["weather"] is None else _air(r, f"{path}.weather", values["weather"]),
         surface=_surface(r, f"{path}.surface", values["surface"] or "", kind),
         line=line_of(r.lines, f"{path}.file"),
@@ -385,7 +307,7 @@ def _book(r: _Reader, path: str, block: dict[str, Any], units: Units) -> Table |
     )
 
 
-def _surface(r: _Reader, path: str, surface: str, kind: str) -> str:
+def _surface(r: Reader, path: str, surface: str, kind: str) -> str:
     """The surface of a table's lengths; '' where none is declared."""
     if kind == "rounds" and not surface:
         return "slope"  # from instrument to target, as the column says

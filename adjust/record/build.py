@@ -25,6 +25,7 @@ from adjust.record.closing import (
 )
 from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
+from adjust.record.paper import drawing_warnings
 from adjust.record.places import line_entries, mark_entries, parameter_entries, side_shot_entries, station_entries
 from adjust.solver.defects import thin_of
 from adjust.solver.solution import PartResult, Solution
@@ -43,6 +44,12 @@ def build(judgement: Judgement) -> dict[str, Any]:
 
 
 def _record(judgement: Judgement) -> dict[str, Any]:
+    record = _sections(judgement)
+    record["warnings"] += drawing_warnings(record)
+    return record
+
+
+def _sections(judgement: Judgement) -> dict[str, Any]:
     solution = judgement.solution
     return {
         "format": FORMAT,
@@ -132,6 +139,7 @@ def _settings(solution: Solution) -> dict[str, Any]:
              "units": {"length": t.units.length, "angle": t.units.angle, "decimal": t.units.decimal}}
             for t in solution.job.tables
         ],
+        "drawing": _drawing(solution),
     }  # fmt: skip
 
 
@@ -145,6 +153,13 @@ def _curvature(table: Table) -> str | None:
 def _weather(air: Air) -> dict[str, float | None]:
     """Weather in degrees C, hPa, per cent, or the ppm that stands for it."""
     return {key: number(value) for key, value in air.__dict__.items()}
+
+
+def _drawing(solution: Solution) -> dict[str, Any]:
+    one = solution.job.settings.drawing
+    return {"paper": one.paper or None, "orientation": one.orientation, "scale": number(one.scale),
+            "ellipses": number(one.ellipses), "relative_ellipses": number(one.relative_ellipses),
+            "layers": list(one.layers)}  # fmt: skip
 
 
 def _units(solution: Solution) -> dict[str, Any]:

@@ -15,7 +15,6 @@ from adjust.book.rules import CONFIDENCES, SUBJECTS, built_in, built_in_rule
 from adjust.caution import CAUTION
 from adjust.fields import Field
 from adjust.kinds import TABLES
-from adjust.record.keys import RECORD
 from adjust.record.schemas import job_schema, record_schema
 from adjust.units import ANGLES, LENGTHS
 
@@ -27,8 +26,8 @@ TYPES = {
     "estimate": "number, or number +- standard deviation",
     "temperature": "temperature", "pressure": "air pressure", "humidity": "relative humidity",
     "ppm": "parts per million", "wavelength": "wavelength with its unit", "air": "table of weather",
-    "words": "list of",
     "lengths": "length, or a table of lengths by page",
+    "ratio": "scale", "times": "how many times larger",
     "date": "date", "list": "list of names", "table": "table",
 }  # fmt: skip
 
@@ -64,12 +63,15 @@ FAULTS = """## Faults
 
 All faults come at once on standard error, one a line, and nothing is written (exit code 2):
 
+<!-- form -->
 ```text
 FILE:LINE: column NAME: "what was found": what to do
 ```
 
 Exit codes: 0 done; 1 done, but a test failed, a suspect stands at the job's level, or a check mark disagrees; 2 could
-not be done; 70 internal error; 130 interrupted.
+not be done; 70 internal error; 130 interrupted. Every message is explained in [messages](messages.md).
+
+What comes out is explained in [the record, key by key](record.md).
 """
 
 
@@ -96,14 +98,6 @@ def formats_page() -> str:
             parts.append(f"### {table}\n\n{_table(fields, 'column')}")
     parts.append(f"### Columns that every table of observations may have\n\n{_table(schema.OBSERVATION, 'column')}")
     parts.append(FAULTS)
-    parts.append(
-        "## record.json\n\nLengths are metres, angles radians, whatever the job's units. Every key is always present;\n"
-        "there is no NaN. Coordinates are rounded to 1e-8 m, angles to 1e-12 rad, other numbers to ten\n"
-        "significant digits. `stations.csv` and `observations.csv` carry the same names in the job's units, with the\n"
-        "unit in the header.\n"
-    )
-    for name, fields in RECORD.items():
-        parts.append(f"### {name or 'The record'}\n\n{_record_table(fields)}")
     return "\n".join(parts)
 
 
@@ -148,16 +142,11 @@ def _table(fields: Iterable[Field], first: str) -> str:
     rows = [f"| {first} | what | meaning |", "|---|---|---|"]
     for f in fields:
         what = TYPES[f.type] if not f.choices else " ".join(f"`{c}`" for c in f.choices)
+        what = f"list of {what}" if f.type == "list" and f.choices else what
         notes = [f.meaning] + (["**required**"] if f.required else [])
         if f.default is not None:
             notes.append(f"default `{f.default}`")
         rows.append(f"| `{f.name}` | {what} | {'; '.join(notes)} |")
-    return "\n".join(rows) + "\n"
-
-
-def _record_table(fields: Iterable[Field]) -> str:
-    rows = ["| key | type | meaning |", "|---|---|---|"]
-    rows += [f"| `{f.name}` | {f.type} | {f.meaning} |" for f in fields]
     return "\n".join(rows) + "\n"
 
 

@@ -94,6 +94,15 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("reflectors", "object any", "constants of the reflectors by name, metres"),
         ("meters", "object any", "constant, scale, wavelength and weather of zero correction of distance meters"),
         ("books", "list book", "tables in their order"),
+        ("drawing", "object drawing", "drawing as declared"),
+    ),
+    "drawing": _keys(
+        ("paper", "text?", "paper; null: by the unit of length"),
+        ("orientation", "text", "auto, landscape or portrait"),
+        ("scale", "number?", "N of the scale 1:N asked for; null: by size"),
+        ("ellipses", "number?", "how many times larger than the plan the ellipses are to be drawn; null: by size"),
+        ("relative_ellipses", "number?", "the same for relative ellipses"),
+        ("layers", "texts", "what is drawn"),
     ),
     "datum": _keys(
         ("kind", "text?", "control, free, or null: by what each part has"), ("stations", "texts", "as declared")
@@ -310,9 +319,14 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("line", "integer", "line"),
         ("kind", "text", "kind"),
         ("reason", "text", "reason given"),
+        ("stations", "texts", "its stations, the standpoint first"),
     ),
     "not_measured": _keys(
-        ("observation", "text", "id"), ("file", "text", "table"), ("line", "integer", "line"), ("kind", "text", "kind")
+        ("observation", "text", "id"),
+        ("file", "text", "table"),
+        ("line", "integer", "line"),
+        ("kind", "text", "kind"),
+        ("stations", "texts", "its stations, the standpoint first"),
     ),
 }
 """Sections of record.json by name; '' is the record itself."""

@@ -124,4 +124,4 @@ def unchecked_entries(judgement: Judgement) -> list[dict[str, Any]]:
 def left_out(aside: Aside, with_reason: bool) -> dict[str, Any]:
     """A row set aside."""
     entry = {"observation": aside.observation, "file": aside.file, "line": aside.line, "kind": aside.kind}
-    return entry | ({"reason": aside.reason} if with_reason else {})
+    return entry | ({"reason": aside.reason} if with_reason else {}) | {"stations": list(aside.stations)}

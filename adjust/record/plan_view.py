@@ -1,291 +1,113 @@
-"""The plan of a network: stations by shape, lines by kind of reading, ellipses with their own stated scale.
-
-paper mm = (metre − centre) · 1000 / N            N the plan's scale number
-ellipse half axis in mm = half axis in m · 1000 / N · magnification
-"""
+"""The plan of a network painted: stations by shape, lines by kind of reading, ellipses with their own stated scales."""
 
 from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Iterable
-from dataclasses import dataclass, field
 
 import numpy as np
 
+from adjust.record.grid import draw_grid
+from adjust.record.labels import Labels
+from adjust.record.net import ALONG, HEIGHT, LOOK_ORDER, ROLES, Relative, ordered, pointed_lines, suspect_readings
+from adjust.record.paper import SCREEN, Box, Layout, Point, ratio_in_words
+from adjust.record.plan_data import HUGE, MANY, SOME, Ground, Plan, PlanView
+from adjust.record.plan_marks import draw_left_out, draw_suspects
 from adjust.record.sheet import (
+    BLACK,
     BLUE,
-    GREY,
-    PALE,
+    DARK,
+    GREEN,
     VERMILLION,
-    Box,
-    Labels,
-    Point,
     Sheet,
-    draw_badge,
     draw_symbol,
+    draw_symbols,
     mark_id,
-    nearest_step,
-    number,
-    round_step,
 )
-from adjust.record.shown import Entry, Shown, plain
-from adjust.units import LENGTHS
+from adjust.record.shown import Entry, count
 
-METRIC_SCALES = (1.0, 1.25, 1.5, 2.0, 2.5, 3.0, 4.0, 5.0, 7.5)
-FOOT_SCALES = (1.0, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0)
-"""Steps of 1:N, and of feet to the inch, that scale rules of the trade carry."""
-
-MARGIN = 17.0
-MANY = 300
-"""Stations above which only the telling ones are labelled."""
-MOST_ELLIPSES = 1000
-BADGES = 9
-ALONG = ("distance", "levelled", "vector")
-"""Kinds read along the whole line; all others are pointings taken at its start."""
-ARC = 9.0
-"""Radius in mm of the arc that marks a suspect angle."""
-Names = tuple[str, str]
-
-
-def pointed_lines(observation: Entry) -> list[Names]:
-    """The lines a reading runs along, from its standpoint: two for an angle, none for a reading of one station."""
-    start = observation["at"] or observation["from"]
-    ends = [observation[key] for key in ("to", "first", "second")]
-    return [(start, end) for end in ends if start and end and start != end]
-
-
-def line_looks(observations: Iterable[Entry]) -> dict[Names, str]:
-    """Each line with what was read along it: 'distance', 'pointing' or 'levelled', the first that holds."""
-    rank = {"distance": 0, "pointing": 1, "levelled": 2}
-    looks: dict[Names, str] = {}
-    for one in observations:
-        kind = one["kind"]
-        look = {"vector": "distance"}.get(kind, kind if kind in rank else "pointing")
-        for a, b in pointed_lines(one):
-            key = (a, b) if a < b else (b, a)
-            looks[key] = min(looks.get(key, look), look, key=rank.__getitem__)
-    return looks
-
-
-def unchecked_stations(record: Entry) -> set[str]:
-    """Stations to which an unchecked reading points: its new stations, those aimed at before the standpoint."""
-    new = {one["station"] for one in record["stations"] if one["role"] == "new"}
-    by_id = {one["id"]: one for one in record["observations"]}
-    found: set[str] = set()
-    for entry in record["unchecked"]:
-        one = by_id.get(entry["observation"])
-        aimed = {one[key] for key in ("to", "first", "second")} & new if one else set()
-        found |= aimed or ({one[key] for key in ("at", "from")} & new if one else set())
-    return found
-
-
-def suspect_readings(record: Entry) -> list[Entry]:
-    """The observations blamed, in order of blame, as far as the record lists them."""
-    by_id = {one["id"]: one for one in record["observations"]}
-    return [by_id[one["observation"]] for one in record["suspects"] if one["observation"] in by_id]
-
-
-def scale_number(extent: Point, room: Point, shown: Shown) -> float:
-    """The rounded N of 1:N at which ``extent`` (m, across and up) fits ``room`` (mm)."""
-    least = max(extent[0] / room[0], extent[1] / room[1]) * 1000
-    if shown.length == "m":
-        return _round_up(max(least, 10.0), METRIC_SCALES)
-    inch_rule = LENGTHS[shown.length] / LENGTHS["in"]
-    return _round_up(max(least / inch_rule, 1.0), FOOT_SCALES) * inch_rule
-
-
-def _round_up(least: float, steps: tuple[float, ...]) -> float:
-    power = 10.0 ** math.floor(math.log10(least))
-    return min(step * power for step in (*steps, 10.0) if step * power >= least * (1 - 1e-9))
-
-
-def scale_in_words(scale: float, shown: Shown) -> str:
-    """'Scale 1:2000 on A4', for feet with the engineer's form before it."""
-    if shown.length == "m":
-        return f"Scale 1:{shown.mark(number(scale))} on A4"
-    feet = number(round(scale * LENGTHS["in"] / LENGTHS[shown.length], 6))
-    return f"Scale 1 inch = {shown.mark(feet)} {shown.length} (1:{scale:.0f}) on A4"
-
-
-@dataclass
-class PlanView:
-    """What was drawn, for the legend and the scales of the panel."""
-
-    scale: float
-    magnification: float | None = None
-    ellipses: int = 0
-    symbols: list[str] = field(default_factory=list)
-    looks: list[str] = field(default_factory=list)
-    hidden: int = 0
-    """Stations without plane coordinates, not drawn."""
-
-
-class _Plan:
-    def __init__(self, sheet: Sheet, record: Entry, frame: Box) -> None:
-        self.sheet, self.record, self.frame = sheet, record, frame
-        self.shown = Shown.of(record)
-        self.stations = [one for one in record["stations"] if one["east"] is not None and one["north"] is not None]
-        places = np.array([[one["east"], one["north"]] for one in self.stations])
-        low, high = places.min(axis=0), places.max(axis=0)
-        room = (frame[2] - frame[0] - 2 * MARGIN, frame[3] - frame[1] - 2 * MARGIN)
-        self.scale = scale_number(tuple(high - low), room, self.shown)
-        self.centre = (low + high) / 2
-        middle = np.array([(frame[0] + frame[2]) / 2, (frame[1] + frame[3]) / 2])
-        self.paper = (places - self.centre) * (1000 / self.scale) + middle
-        self.at = {one["station"]: (float(x), float(y)) for one, (x, y) in zip(self.stations, self.paper, strict=True)}
-        self.size = 1.0 if len(self.stations) <= 80 else 0.7 if len(self.stations) <= MANY else 0.45
-        self.unchecked = unchecked_stations(record)
-
-    def grid(self) -> None:
-        """Small crosses and edge figures at round coordinates of the job's unit."""
-        unit = LENGTHS[self.shown.length] * 1000 / self.scale  # mm of paper for one unit
-        step = round_step(62.0 / unit)
-        columns, rows = (self._round_lines(axis, step, unit) for axis in (0, 1))
-        for x, _ in columns:
-            for y, _ in rows:
-                self.sheet.lines([[(x - 1.2, y), (x + 1.2, y)], [(x, y - 1.2), (x, y + 1.2)]], 0.5, "grid", colors=PALE)
-        left, bottom, right, top = self.frame
-        for x, value in columns:
-            for y, up in ((bottom, 1), (top, -1)):
-                self.sheet.line([(x, y), (x, y + 1.8 * up)], 0.5, color=GREY)
-            text = f"{self._figure(value, step)} E"
-            if x + 1.3 + self.sheet.width(text, 5.5) < right:
-                self.sheet.text((x + 0.8, bottom + 1.0), text, 5.5, color=GREY)
-        for y, value in rows:
-            for x, inward in ((left, 1), (right, -1)):
-                self.sheet.line([(x, y), (x + 1.8 * inward, y)], 0.5, color=GREY)
-            text = f"{self._figure(value, step)} N"
-            if y + 1.3 + self.sheet.width(text, 5.5) < top:
-                self.sheet.text((left + 1.0, y + 0.8), text, 5.5, color=GREY, rotation=90, va="bottom")
-
-    def _figure(self, value: float, step: float) -> str:
-        places = max(0, -math.floor(math.log10(step)))
-        return self.shown.mark(f"{value + 0.0:.{places}f}")
-
-    def _round_lines(self, axis: int, step: float, unit: float) -> list[tuple[float, float]]:
-        """Paper position (mm) and value of the round coordinates inside the frame."""
-        low, high = self.frame[axis] + 6, self.frame[axis + 2] - 6
-        middle, centre = (self.frame[axis] + self.frame[axis + 2]) / 2, self.centre[axis] / LENGTHS[self.shown.length]
-        first, last = (
-            math.ceil((centre + (low - middle) / unit) / step),
-            math.floor((centre + (high - middle) / unit) / step),
-        )
-        return [(middle + (k * step - centre) * unit, k * step) for k in range(first, last + 1)]
-
-    def lines(self) -> list[str]:
-        """Draw the lines by what was read along them; the looks that occur."""
-        looks = line_looks(self.record["observations"])
-        blamed = {tuple(sorted(line)) for one in suspect_readings(self.record) if one["kind"] in ALONG
-                  for line in pointed_lines(one)}  # fmt: skip
-        drawn = [(a, b) for a, b in looks if a in self.at and b in self.at]
-        thin = 1.0 if len(looks) < 400 else 0.5
-        for look, (width, dash) in LOOKS.items():
-            for suspect in (False, True):
-                chosen = [line for line in drawn if looks[line] == look and (line in blamed) == suspect]
-                gid = f"lines-{look}" + ("-suspect" if suspect else "")
-                look_of = {"colors": VERMILLION, "zorder": 2} if suspect else {"colors": GREY, "zorder": 1}
-                segments = [[self.at[a], self.at[b]] for a, b in chosen]
-                self.sheet.lines(segments, width * (2.2 if suspect else thin), gid, linestyles=[dash], **look_of)
-        seen = {looks[line] for line in drawn}
-        return [look for look in LOOKS if look in seen]
-
-    def _half_axes(self) -> list[tuple[Entry, Point, float, float, float]]:
-        """Stations with a confidence ellipse: entry, place, half axes in mm of paper unmagnified, azimuth."""
-        found = []
-        for one in self.stations:
-            e = one["ellipse_confidence"]
-            if e and e["semi_major"]:
-                k = 1000 / self.scale
-                found.append(
-                    (one, self.at[one["station"]], e["semi_major"] * k, (e["semi_minor"] or 0.0) * k, e["azimuth"])
-                )
-        return sorted(found, key=lambda item: -item[2])[:MOST_ELLIPSES]
-
-    def magnification(self, half: list[float]) -> float:
-        """1, 2 or 5 · 10^k that brings the median half axis near 3.5 % of the frame's width, the largest below 15 %."""
-        width = self.frame[2] - self.frame[0]
-        target = min(0.035 * width, 0.45 * self._spacing())
-        chosen = nearest_step(target / float(np.median(half)))
-        while max(half) * chosen > 0.15 * width:
-            chosen = nearest_step(chosen / 2)
-        return chosen
-
-    def _spacing(self) -> float:
-        """Median distance of a station to its nearest neighbour, mm of paper."""
-        if len(self.paper) < 2:
-            return math.inf
-        from scipy.spatial import KDTree
-
-        nearest = np.asarray(KDTree(self.paper).query(self.paper, k=2)[0])
-        return max(float(np.median(nearest[:, 1])), 2.0)
-
-    def ellipses(self, labels: Labels) -> tuple[float | None, int]:
-        """Draw the confidence ellipses; their magnification and number."""
-        found = self._half_axes()
-        if not found:
-            return None, 0
-        m = self.magnification([item[2] for item in found])
-        for one, at, major, minor, azimuth in found:
-            gid = mark_id("ellipse", one["station"])
-            self.sheet.ellipse(at, (major * m, minor * m), azimuth, gid=gid, edgecolor=BLUE, linewidth=1.1 * self.size,
-                               facecolor=(0.0, 0.447, 0.698, 0.10), zorder=3)  # fmt: skip
-            labels.segments += _outline(at, major * m, minor * m, azimuth)
-        return m, len(found)
-
-    def symbol(self, one: Entry) -> str:
-        """The symbol of a station."""
-        return "unchecked" if one["station"] in self.unchecked and one["role"] == "new" else str(one["role"])
-
-    def badges(self, labels: Labels) -> None:
-        """Number the first suspects: a distance at its middle, a pointing near its standpoint, an angle on its arc."""
-        taken: list[Point] = []
-        for i, one in enumerate(suspect_readings(self.record)[:BADGES]):
-            ends = [line for line in pointed_lines(one) if line[0] in self.at and line[1] in self.at]
-            if ends:
-                at = self._suspect(one, [(self.at[a], self.at[b]) for a, b in ends], taken)
-                taken.append(at)
-                draw_badge(self.sheet, i + 1, at, gid=f"suspect-{i + 1}")
-                labels.keep_off(at, 2.2)
-
-    def _suspect(self, one: Entry, ends: list[tuple[Point, Point]], taken: list[Point]) -> Point:
-        """Mark the reading where it was taken; the place of its number."""
-        start, end = ends[-1]
-        if one["kind"] in ALONG:
-            return _clear_of(taken, start, end, 0.5)
-        if one["kind"] == "angle" and len(ends) == 2:
-            return self._arc(start, ends[0][1], end)
-        tip = _part_way(start, end, 0.4)
-        self.sheet.line([start, tip], 1.8, color=VERMILLION, zorder=2)
-        return _clear_of(taken, start, tip, 0.7)
-
-    def _arc(self, at: Point, first: Point, second: Point) -> Point:
-        """The angle's arc, clockwise from ``first`` to ``second``; its middle."""
-        begin, finish = (math.atan2(p[0] - at[0], p[1] - at[1]) for p in (first, second))
-        turns = np.linspace(begin, begin + (finish - begin) % (2 * math.pi), 41).tolist()
-        arc = [(at[0] + ARC * math.sin(t), at[1] + ARC * math.cos(t)) for t in turns]
-        self.sheet.line(arc, 1.8, color=VERMILLION, zorder=3.5)
-        return arc[20]
-
-    def labelled(self) -> list[Entry]:
-        """Stations in the order of labelling; of many only control, checks, unchecked, blamed and the worst ten."""
-        blamed = {name for one in suspect_readings(self.record) for line in pointed_lines(one) for name in line}
-        if len(self.stations) <= MANY:
-            return self.stations
-        worst = {item[0]["station"] for item in self._half_axes()[:10]}
-        telling = worst | blamed | self.unchecked
-        return [one for one in self.stations if one["station"] in telling or one["role"] != "new"][:MANY]
-
-
-LOOKS: dict[str, tuple[float, str | tuple[int, tuple[float, ...]]]] = {
-    "distance": (0.8, "-"),
-    "pointing": (0.7, (0, (6.0, 3.5))),
-    "levelled": (0.8, (0, (1.0, 2.0))),
+Dash = str | tuple[int, tuple[float, ...]]
+LOOKS: dict[str, tuple[float, Dash, str]] = {
+    "both": (0.9, "-", DARK),
+    "distance": (0.9, (0, (9.0, 2.0, 1.5, 2.0)), DARK),
+    "pointing": (0.9, (0, (6.0, 3.5)), BLUE),
+    HEIGHT: (1.0, (0, (1.0, 1.8)), GREEN),
 }
-"""Line width in points and dash of each look."""
+"""Line width in points, dash and colour of what was read along a line."""
+RELATIVE_DASH: Dash = (0, (3.0, 1.4))
+FILL = (0.0, 0.447, 0.698, 0.10)
 
 
-def _outline(at: Point, major: float, minor: float, azimuth: float) -> list[list[Point]]:
+class _Painted(Plan):
+    """The plan with what paints its parts."""
+
+    def draw_lines(self, at: dict[str, Point], inside: Box | None, tag: str) -> None:
+        """The lines by what was read along them; those of suspects once more, thick and in colour."""
+        blamed = {ordered(line) for one in suspect_readings(self.record) if one["kind"] in ALONG
+                  for line in pointed_lines(one)} if "suspects" in self.wanted.layers else set()  # fmt: skip
+        thin = 1.0 if len(self.looks) < 400 else 0.55 if len(self.looks) < 3000 else 0.3
+        for look, (width, dash, colour) in LOOKS.items():
+            chosen = [line for line, what in self.looks.items() if what == look]
+            segments = [[at[a], at[b]] for a, b in chosen]
+            self.sheet.lines(segments, width * thin, f"lines-{look}{tag}", inside, linestyle=dash, edgecolor=colour,
+                             zorder=1)  # fmt: skip
+            hot = [[at[a], at[b]] for a, b in chosen if (a, b) in blamed]
+            self.sheet.lines(hot, 2.0, f"lines-{look}-suspect{tag}", inside, edgecolor=VERMILLION, zorder=2)
+        self.view.looks = [look for look in LOOK_ORDER if look in self.looks.values()]
+
+    def draw_ellipses(self, at: dict[str, Point], only: set[str], labels: Labels, inside: Box | None) -> None:
+        """The confidence ellipses of the stations ``only``; on paper of one size in the plan and in its inset."""
+        if self.view.magnification is None:
+            return
+        k = 1000 / self.ground.scale * self.view.magnification
+        for one in self.ellipses:
+            if (name := one["station"]) in only:
+                e = one["ellipse_confidence"]
+                half = (e["semi_major"] * k, (e["semi_minor"] or 0.0) * k)
+                self.sheet.ellipse(at[name], half, e["azimuth"], mark_id("ellipse", name), inside, edgecolor=BLUE,
+                                   linewidth=1.1 * max(self.size, 0.5), facecolor=FILL, zorder=3)  # fmt: skip
+                labels.segments += outline(at[name], *half, e["azimuth"])
+
+    def draw_relative(self, at: dict[str, Point], drawn: list[Relative], labels: Labels, inside: Box | None) -> None:
+        """Relative ellipses in the middle of their lines, and the lines of pairs that no reading joins."""
+        if self.view.relative is None:
+            return
+        k = 1000 / self.ground.scale * self.view.relative
+        for one, spot in zip(drawn, self.spots(at, drawn), strict=True):
+            a, b = at[one.ends[0]], at[one.ends[1]]
+            if one.pair:
+                self.view.pairs = True
+                self.sheet.line([a, b], 0.7, mark_id("pair", " - ".join(one.ends)), inside, color=GREEN,
+                                linestyle=(0, (1.0, 3.0)), zorder=1)  # fmt: skip
+                labels.segments.append([a, b])
+            half = (one.semi_major * k, one.semi_minor * k)
+            self.sheet.ellipse(spot, half, one.azimuth, mark_id("relative", " - ".join(one.ends)), inside,
+                               edgecolor=GREEN, linewidth=1.0, linestyle=RELATIVE_DASH, zorder=2.8)  # fmt: skip
+            labels.segments += outline(spot, *half, one.azimuth)
+
+    def draw_stations(self, at: dict[str, Point], only: set[str], labels: Labels, size: float) -> None:
+        """The symbols of the stations ``only``."""
+        if len(self.stations) > HUGE:
+            self._draw_many(at, labels, size)
+            only = set()
+        for one in self.stations:
+            if (name := one["station"]) in only:
+                draw_symbol(self.sheet, self.symbol(one), at[name], size, mark_id("station", name))
+                labels.keep_off(at[name], 1.7 * size)
+        seen = {self.symbol(one) for one in self.stations}
+        self.view.symbols = [symbol for symbol in ROLES if symbol in seen]
+
+    def _draw_many(self, at: dict[str, Point], labels: Labels, size: float) -> None:
+        """All symbols by kind; names may then cover new stations, but no control."""
+        for symbol in ROLES:
+            places = [at[one["station"]] for one in self.stations if self.symbol(one) == symbol]
+            larger = 2.0 if symbol != "new" else 1.0
+            draw_symbols(self.sheet, symbol, places, size * larger, f"stations-{symbol}")
+            for place in places if symbol != "new" else []:
+                labels.keep_off(place, 1.7 * size * larger)
+
+
+def outline(at: Point, major: float, minor: float, azimuth: float) -> list[list[Point]]:
     """The ellipse as sixteen chords."""
     s, c = math.sin(azimuth), math.cos(azimuth)
     turns = [(major * math.cos(t), minor * math.sin(t)) for t in np.linspace(0, 2 * math.pi, 17).tolist()]
@@ -293,35 +115,91 @@ def _outline(at: Point, major: float, minor: float, azimuth: float) -> list[list
     return [[one, other] for one, other in itertools.pairwise(points)]
 
 
-def _part_way(one: Point, other: Point, share: float) -> Point:
-    return one[0] + share * (other[0] - one[0]), one[1] + share * (other[1] - one[1])
-
-
-def _clear_of(taken: list[Point], one: Point, other: Point, share: float) -> Point:
-    """A place on the line, at ``share`` of it or a little off, that keeps 5 mm from those taken."""
-    places = [_part_way(one, other, share + step) for step in (0.0, 0.1, -0.1, 0.2, -0.2, 0.3)]
-    return next((place for place in places if all(math.dist(place, t) > 5 for t in taken)), places[-1])
-
-
-def draw_plan(sheet: Sheet, record: Entry, frame: Box) -> PlanView:
-    """Draw the plan into the frame (mm) and say what it shows; at least one station has plane coordinates."""
-    plan = _Plan(sheet, record, frame)
-    labels = Labels(sheet, (frame[0] + 4, frame[1] + 4, frame[2] - 1, frame[3] - 1), 7.5 if plan.size == 1 else 5.5)
-    plan.grid()
-    view = PlanView(plan.scale, looks=plan.lines(), hidden=len(record["stations"]) - len(plan.stations))
-    labels.segments = [
-        [plan.at[a], plan.at[b]] for a, b in line_looks(record["observations"]) if {a, b} <= plan.at.keys()
-    ]
-    view.magnification, view.ellipses = plan.ellipses(labels)
-    for one in plan.stations:
-        draw_symbol(sheet, plan.symbol(one), plan.at[one["station"]], plan.size, mark_id("station", one["station"]))
-        labels.keep_off(plan.at[one["station"]], 1.6 * plan.size)
-    seen = {plan.symbol(one) for one in plan.stations}
-    view.symbols = [symbol for symbol in ("held", "weighted", "check", "new", "unchecked") if symbol in seen]
-    plan.badges(labels)
-    items = []
-    for one in plan.labelled():
-        name = one["station"]
-        items.append((plan.at[name], plain(name, 18), mark_id("label", name)))
-    labels.place(items)
+def draw_plan(sheet: Sheet, record: Entry, layout: Layout) -> PlanView:
+    """Draw the plan into the layout's frame and say what it shows; at least one station has plane coordinates."""
+    plan = _Painted(sheet, record, layout)
+    view, frame = plan.view, layout.frame
+    if "grid" in plan.wanted.layers:
+        draw_grid(sheet, plan.shown, plan.ground, frame)
+    plan.magnifications()
+    own = plan.inset[1] if plan.inset else set()
+    labels = Labels(sheet, (frame[0] + 4, frame[1] + 4, frame[2] - 1, frame[3] - 1), _type_size(plan))
+    labels.tight = len(plan.stations) > MANY
+    if plan.inset:
+        _cover(labels, plan.inset[0].frame)
+    _paint(plan, plan.at, set(plan.at) - own, labels, None)
+    if plan.inset:
+        for name in sorted(own):
+            draw_symbol(sheet, "new", plan.at[name], 0.35, mark_id("crowded", name))
+        _frame_of_inset(plan, labels)
+    lost = labels.place([(plan.at[name], plan.writing.name(name), mark_id("label", name))
+                         for name in plan.names(set(plan.at) - own)])  # fmt: skip
+    if plan.inset:
+        lost += _draw_inset(plan, *plan.inset)
+    without = len(record["stations"]) - len(plan.stations)
+    if without:
+        view.notes.append(
+            f"Not drawn: {without} {'station' if without == 1 else 'stations'} without plane coordinates."
+        )
+    if "names" not in plan.wanted.layers:
+        view.notes.append("Not drawn, as asked: names.")
+    elif len(plan.stations) > MANY:
+        view.notes.append("Named: control, suspects, unchecked, the ten least certain, and a sample.")
+    elif lost:
+        view.notes.append(f"{count(lost, 'name')} left out for want of room; see stations.csv.")
     return view
+
+
+def _type_size(plan: _Painted) -> float:
+    n, small = len(plan.stations), plan.layout.name == SCREEN
+    return (6.5 if n <= 80 else 5.0) if small else 9.0 if n <= SOME else 7.5 if n <= 80 else 5.5
+
+
+def _cover(labels: Labels, box: Box) -> None:
+    labels.boxes.append(box)
+
+
+def _paint(plan: _Painted, at: dict[str, Point], only: set[str], labels: Labels, inside: Box | None) -> None:
+    """Everything of the stations ``only`` at the places ``at``; ``inside`` a box where it is given."""
+    tag = "-inset" if inside else ""
+    plan.draw_lines(at, inside, tag)
+    if len(plan.stations) <= HUGE:  # above, names lie over lines anyway
+        labels.segments += [[at[a], at[b]] for a, b in plan.looks]
+    plan.draw_ellipses(at, only, labels, inside)
+    own = plan.inset[1] if plan.inset else set()
+    shown = [one for one in plan.relative if (set(one.ends) <= own) == bool(inside)]
+    plan.draw_relative(at, shown, labels, inside)
+    plan.draw_stations(at, only, labels, plan.size)
+    lines = [line for line in plan.left_out if (set(line) <= own) == bool(inside)]
+    draw_left_out(plan.sheet, at, lines, labels, inside)
+    plan.view.left_out |= bool(lines)
+    if "suspects" in plan.wanted.layers:
+        plan.view.suspects |= draw_suspects(plan.sheet, plan.record, at, own, bool(inside), labels)
+
+
+def _frame_of_inset(plan: _Painted, labels: Labels) -> None:
+    """The inset's piece of ground on the plan, with its letter."""
+    ground = plan.inset[0] if plan.inset else plan.ground
+    share = ground.scale / plan.ground.scale
+    half = (ground.frame[2] - ground.frame[0]) / 2 * share
+    x, y = plan.ground.place({"east": ground.centre[0], "north": ground.centre[1]})
+    plan.sheet.polygon([(x - half, y - half), (x + half, y - half), (x + half, y + half), (x - half, y + half)],
+                       gid="inset-place", linewidth=0.8, edgecolor=BLACK, zorder=3.2)  # fmt: skip
+    plan.sheet.text((x + half + 0.8, y + half - 2.2), "A", 8, bold=True, path_effects=plan.sheet.halo())
+    labels.boxes += [(x - half, y - half, x + half + 3.2, y + half)]
+
+
+def _draw_inset(plan: _Painted, ground: Ground, own: set[str]) -> int:
+    """The crowded stations enlarged; how many names found no room there."""
+    sheet, (left, bottom, right, top) = plan.sheet, ground.frame
+    plan.view.inset = ground.scale
+    corners = [(left, bottom), (right, bottom), (right, top), (left, top)]
+    sheet.polygon(corners, "inset", facecolor="white", linewidth=0.8, zorder=0.9)
+    at = {one["station"]: ground.place(one) for one in plan.stations}
+    labels = Labels(sheet, (left + 1, bottom + 1, right - 1, top - 5), min(7.5, _type_size(plan)))
+    title = f"Inset A, {ratio_in_words(ground.scale, plan.shown)}"
+    width = sheet.width(title, 7, True)
+    sheet.text((left + 1.2, top - 3.4), title, 7, bold=True, path_effects=sheet.halo(), gid="inset-title")
+    _cover(labels, (left, top - 4.4, left + 1.6 + width, top))
+    _paint(plan, at, own, labels, ground.frame)
+    return labels.place([(at[name], plan.writing.name(name), mark_id("label", name)) for name in plan.names(own)])

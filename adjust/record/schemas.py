@@ -68,6 +68,7 @@ def job_schema() -> dict[str, Any]:
         "weather": sections["weather"],
         "rejection": sections["rejection"],
         "reflectors": {"type": "object", "additionalProperties": sections["reflectors.*"]},
+        "drawing": sections["drawing"],
         "instruments": {"type": "object", "additionalProperties": sections["instruments.*"]},
         "book": {"type": "array", "items": sections["book"]},
     }
@@ -90,12 +91,13 @@ def _job_value(field: Field) -> dict[str, Any]:
         return {"type": "number", **low}
     if field.type in ("length", "estimate", "temperature", "pressure", "humidity", "ppm"):
         return {"type": ["number", "string"]}
-    if field.type == "words":
-        return {"type": "array", "items": {"enum": list(field.choices)}}
     if field.type == "lengths":
         return {"type": ["number", "string", "object"], "additionalProperties": {"type": ["number", "string"]}}
     if field.type == "list":
-        return {"type": "array", "items": {"type": "string"}}
+        return {
+            "type": "array",
+            "items": {"type": "string", **({"enum": list(field.choices)} if field.choices else {})},
+        }
     if field.type in ("precision", "allowance", "rules"):
         return {"type": ["string", "array"], "items": {"type": "string"}}
     return {"type": "string", **({"enum": list(field.choices)} if field.choices else {})}

@@ -1,4 +1,4 @@
-"""A landscape A4 sheet in millimetres of paper: lines, patches, measured text, round scales, labels kept apart.
+"""A sheet in millimetres of paper: lines, patches, measured text, symbols.
 
 One axes covers the sheet and its data unit is 1 mm of paper, so a length on the drawing is known by construction: no
 autoscaling, no aspect to correct. Colours are Okabe and Ito's palette (Color Universal Design, 2008); shape, dash or
@@ -8,26 +8,24 @@ number always says the same thing again, for a grey print.
 from __future__ import annotations
 
 import math
+import unicodedata
 from collections.abc import Sequence
+from functools import cache
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 from urllib.parse import quote
 
 import numpy as np
-from numpy.typing import NDArray
+
+from adjust.record.paper import Box, Point
 
 if TYPE_CHECKING:  # matplotlib is heavy and loaded only where a sheet is made
     from matplotlib.figure import Figure
     from matplotlib.font_manager import FontProperties
 
-PAPER = (297.0, 210.0)
 MM = 25.4
-BLACK, GREY, PALE = "#000000", "#555555", "#b8b8b8"
+BLACK, DARK, GREY, PALE = "#000000", "#333333", "#555555", "#b8b8b8"
 BLUE, VERMILLION, GREEN = "#0072B2", "#D55E00", "#009E73"
-
-Box = tuple[float, float, float, float]
-"""left, bottom, right, top in mm."""
-Point = tuple[float, float]
 
 
 def mark_id(what: str, name: str) -> str:
@@ -48,41 +46,82 @@ def nearest_step(wanted: float) -> float:
     return min((step * power for step in (1.0, 2.0, 5.0, 10.0)), key=lambda one: abs(math.log(one / wanted)))
 
 
-def number(value: float) -> str:
-    """A round number without exponent or trailing zeros: 500, 0.25."""
-    return f"{value:.10f}".rstrip("0").rstrip(".") if value < 1e6 else f"{value:.0f}"
+@cache
+def _glyphs() -> frozenset[int]:
+    """Code points of the bundled font."""
+    from matplotlib.ft2font import FT2Font
+
+    return frozenset(FT2Font(str(_font_file())).get_charmap())
+
+
+def _font_file(bold: bool = False) -> Path:
+    from matplotlib import get_data_path
+
+    return Path(get_data_path()) / "fonts" / "ttf" / f"DejaVuSans{'-Bold' if bold else ''}.ttf"
+
+
+@cache
+def _advance(sign: str, bold: bool) -> float:
+    """Width of a sign over the size of its type; kerning, which would only make a line shorter, is left out."""
+    from matplotlib import ft2font
+
+    # the flag's name since matplotlib 3.10, else the older one
+    flag = ft2font.LoadFlags.NO_SCALE if hasattr(ft2font, "LoadFlags") else getattr(ft2font, "LOAD_NO_SCALE")  # noqa: B009  # unknown to its stubs
+    font = _font(bold)
+    return float(font.load_char(ord(sign), flag).horiAdvance) / float(font.units_per_EM)
+
+
+@cache
+def _font(bold: bool) -> Any:
+    from matplotlib.ft2font import FT2Font
+
+    return FT2Font(str(_font_file(bold)))
+
+
+def drawable(text: str) -> bool:
+    """Whether the bundled font sets this text as it is written.
+
+    Scripts that run from right to left and signs that combine need a shaping which not every installation has, so
+    they count as not drawable: the drawing must come out the same everywhere.
+    """
+    return all(
+        ord(c) in _glyphs() and unicodedata.bidirectional(c) not in ("R", "AL") and not unicodedata.combining(c)
+        for c in text
+    )
+
+
+def spelled(text: str) -> str:
+    """The text with a question mark for every sign that is not drawable."""
+    return text if drawable(text) else "".join(c if drawable(c) else "?" for c in text)
 
 
 class Sheet:
     """The paper: everything is placed in mm from its lower left corner."""
 
-    def __init__(self) -> None:
-        from matplotlib import get_data_path
-        from matplotlib.backends.backend_agg import FigureCanvasAgg
+    def __init__(self, width: float = 297.0, height: float = 210.0) -> None:
         from matplotlib.figure import Figure
 
-        self.figure: Figure = Figure(figsize=(PAPER[0] / MM, PAPER[1] / MM), dpi=160, facecolor="white")
-        self._renderer = FigureCanvasAgg(self.figure).get_renderer()  # type: ignore[no-untyped-call]  # so in its stubs
+        self.size = (width, height)
+        self.figure: Figure = Figure(figsize=(width / MM, height / MM), dpi=160, facecolor="white")
         self.axes = self.figure.add_axes((0.0, 0.0, 1.0, 1.0))
-        self.axes.set(xlim=(0, PAPER[0]), ylim=(0, PAPER[1]))
+        self.axes.set(xlim=(0, width), ylim=(0, height))
         self.axes.set_axis_off()
-        self._fonts = Path(get_data_path()) / "fonts" / "ttf"  # the bundled ones: same glyphs on every machine
 
     def font(self, size: float, bold: bool = False) -> FontProperties:
-        """The bundled DejaVu Sans in ``size`` points."""
+        """The bundled DejaVu Sans in ``size`` points: the same glyphs on every machine."""
         from matplotlib.font_manager import FontProperties
 
-        return FontProperties(fname=self._fonts / f"DejaVuSans{'-Bold' if bold else ''}.ttf", size=size)
+        return FontProperties(fname=_font_file(bold), size=size)
 
     def width(self, text: str, size: float, bold: bool = False) -> float:
         """Width of a line of text in mm."""
-        pixels = self._renderer.get_text_width_height_descent(text, self.font(size, bold), False)[0]
-        return float(pixels) / self.figure.dpi * MM
+        ems = sum(_advance(sign, bold) for sign in spelled(text))
+        return ems * size / 72 * MM
 
     def text(self, at: Point, text: str, size: float, bold: bool = False, **more: Any) -> None:
         """One line of text; never read as mathematics, whatever signs a name holds."""
         options: dict[str, Any] = {"va": "baseline", "ha": "left", "color": BLACK, "zorder": 6} | more
-        self.axes.text(*at, text, fontproperties=self.font(size, bold), parse_math=False, **options)
+        self.axes.text(*at, spelled(text), fontproperties=self.font(size, bold), parse_math=False, **options)
 
     def halo(self) -> list[Any]:
         """A white edge that keeps text readable over lines."""
@@ -115,20 +154,38 @@ class Sheet:
             line = line[:-1]
         return line.rstrip() + "…"
 
-    def line(self, points: Sequence[Point], width: float, gid: str | None = None, **more: Any) -> None:
+    def line(
+        self, points: Sequence[Point], width: float, gid: str | None = None, inside: Box | None = None, **more: Any
+    ) -> None:
         """A line through the points, ``width`` in points."""
         from matplotlib.lines import Line2D
 
         options: dict[str, Any] = {"color": BLACK, "solid_capstyle": "butt", "clip_on": False} | more
         xs, ys = zip(*points, strict=True)
-        self.axes.add_artist(Line2D(xs, ys, linewidth=width, gid=gid, **options))
+        self.clip(self.axes.add_artist(Line2D(xs, ys, linewidth=width, gid=gid, **options)), inside)
 
-    def lines(self, segments: Sequence[Sequence[Point]], width: float, gid: str, **more: Any) -> None:
-        """Many lines of one look, as one group."""
-        from matplotlib.collections import LineCollection
+    def lines(
+        self, segments: Sequence[Sequence[Point]], width: float, gid: str, inside: Box | None = None, **more: Any
+    ) -> None:
+        """Many separate lines of one look, as one path: small in a file, and quick."""
+        from matplotlib.patches import PathPatch
+        from matplotlib.path import Path as Outline
 
         if segments:
-            self.axes.add_collection(LineCollection(segments, linewidths=width, gid=gid, **more), autolim=False)
+            places = [point for segment in segments for point in segment]
+            codes = [code for s in segments for code in (Outline.MOVETO, *[Outline.LINETO] * (len(s) - 1))]
+            options: dict[str, Any] = {"facecolor": "none", "edgecolor": BLACK, "clip_on": False} | more
+            made = PathPatch(Outline(places, codes), linewidth=width, gid=gid, **options)
+            self.clip(self.axes.add_artist(made), inside)
+
+    def marks(self, at: Sequence[Point], marker: str, mm: float, gid: str, **more: Any) -> None:
+        """Many marks of one look and size, as one group."""
+        from matplotlib.lines import Line2D
+
+        if at:
+            xs, ys = zip(*at, strict=True)
+            options: dict[str, Any] = {"linestyle": "none", "clip_on": False, "markeredgecolor": BLACK} | more
+            self.axes.add_artist(Line2D(xs, ys, marker=marker, markersize=mm / MM * 72, gid=gid, **options))
 
     def polygon(self, points: Sequence[Point], gid: str | None = None, **more: Any) -> None:
         """A closed polygon."""
@@ -138,14 +195,20 @@ class Sheet:
         self.axes.add_artist(Polygon(np.array(points), closed=True, gid=gid, **options))
 
     def ellipse(
-        self, at: Point, half: tuple[float, float], azimuth: float, gid: str | None = None, **more: Any
+        self,
+        at: Point,
+        half: tuple[float, float],
+        azimuth: float,
+        gid: str | None = None,
+        inside: Box | None = None,
+        **more: Any,
     ) -> None:
         """An ellipse with half axes (major, minor) in mm, the major one ``azimuth`` radians clockwise from up."""
         from matplotlib.patches import Ellipse
 
         options: dict[str, Any] = {"facecolor": "none", "edgecolor": BLACK, "linewidth": 0.8, "clip_on": False} | more
         turn = 90.0 - math.degrees(azimuth)
-        self.axes.add_artist(Ellipse(at, 2 * half[0], 2 * half[1], angle=turn, gid=gid, **options))
+        self.clip(self.axes.add_artist(Ellipse(at, 2 * half[0], 2 * half[1], angle=turn, gid=gid, **options)), inside)
 
     def curve(self, one: Point, bend: Point, other: Point, width: float, **more: Any) -> None:
         """A curved line from ``one`` to ``other``, drawn towards ``bend``."""
@@ -156,15 +219,25 @@ class Sheet:
         shape = Curve([one, bend, other], [Curve.MOVETO, Curve.CURVE3, Curve.CURVE3])
         self.axes.add_artist(PathPatch(shape, linewidth=width, **options))
 
+    def clip(self, artist: Any, box: Box | None) -> None:
+        """Show the artist inside ``box`` (mm) only."""
+        from matplotlib.patches import Rectangle
+
+        if box:
+            inside = Rectangle(box[:2], box[2] - box[0], box[3] - box[1], transform=self.axes.transData)
+            artist.set_clip_path(inside)
+            artist.set_clip_on(True)
+
 
 def draw_symbol(sheet: Sheet, symbol: str, at: Point, size: float = 1.0, gid: str | None = None) -> None:
-    """A station: held, weighted (triangles), check (square), new (circle), unchecked (crossed circle)."""
+    """A station: held (filled triangle), weighted (open one), check (square), new (circle), unchecked (crossed one)."""
     x, y = at
-    look: dict[str, Any] = {"zorder": 4, "gid": gid, "linewidth": 0.9 * max(size, 0.6)}
+    look: dict[str, Any] = {"zorder": 4, "gid": gid, "linewidth": 0.9 * max(size, 0.4)}
     if symbol in ("held", "weighted"):
         r = 2.1 * size
         corners = [(x + r * math.sin(a), y + r * math.cos(a)) for a in (0.0, 2 * math.pi / 3, 4 * math.pi / 3)]
-        sheet.polygon(corners, facecolor=BLACK if symbol == "held" else "#9a9a9a", **look)
+        look["linewidth"] *= 1.0 if symbol == "held" else 1.5
+        sheet.polygon(corners, facecolor=BLACK if symbol == "held" else "white", **look)
     elif symbol == "check":
         r = 1.35 * size
         sheet.polygon([(x - r, y - r), (x + r, y - r), (x + r, y + r), (x - r, y + r)], facecolor=GREEN, **look)
@@ -173,8 +246,30 @@ def draw_symbol(sheet: Sheet, symbol: str, at: Point, size: float = 1.0, gid: st
         sheet.ellipse(at, (r, r), 0.0, facecolor="white", **look)
         if symbol == "unchecked":
             d = r / math.sqrt(2)
-            for slope in (1, -1):
-                sheet.line([(x - d, y - slope * d), (x + d, y + slope * d)], 0.9, zorder=4.1)
+            cross = f"cross-{gid}" if gid else None
+            sheet.lines([[(x - d, y - d), (x + d, y + d)], [(x - d, y + d), (x + d, y - d)]], 0.9 * max(size, 0.4),
+                        cross or "cross", zorder=4.1)  # fmt: skip
+
+
+def draw_cross(sheet: Sheet, at: Point, size: float = 1.0, gid: str = "left-out") -> None:
+    """The mark of a reading that was left out."""
+    (x, y), d = at, 1.3 * size
+    strokes: list[list[Point]] = [[(x - d, y - d), (x + d, y + d)], [(x - d, y + d), (x + d, y - d)]]
+    sheet.lines(strokes, 2.6, f"{gid}-edge", edgecolor="white", zorder=2.4)
+    sheet.lines(strokes, 1.2, gid, zorder=2.5)
+
+
+MARKS = {"held": ("^", 3.6, BLACK), "weighted": ("^", 3.6, "white"), "check": ("s", 2.6, GREEN),
+         "new": ("o", 2.4, "white"), "unchecked": ("o", 3.2, "white")}  # fmt: skip
+
+
+def draw_symbols(sheet: Sheet, symbol: str, at: Sequence[Point], size: float, gid: str) -> None:
+    """Many stations of one symbol as one group, for networks too large for an id a station."""
+    marker, mm, fill = MARKS[symbol]
+    width = 0.9 * max(size, 0.4)
+    sheet.marks(at, marker, mm * size, gid, markerfacecolor=fill, markeredgewidth=width, zorder=4)
+    if symbol == "unchecked":
+        sheet.marks(at, "x", mm * size * 0.7, f"{gid}-cross", markeredgewidth=width, zorder=4.1)
 
 
 def draw_badge(sheet: Sheet, number: int, at: Point, size: float = 1.0, gid: str | None = None) -> None:
@@ -183,68 +278,3 @@ def draw_badge(sheet: Sheet, number: int, at: Point, size: float = 1.0, gid: str
     sheet.ellipse(at, (r, r), 0.0, gid=gid, facecolor="white", edgecolor=VERMILLION, linewidth=1.3, zorder=5)
     place = (at[0], at[1] - 0.15)
     sheet.text(place, str(number), 6.5 * size, bold=True, ha="center", va="center_baseline", color=VERMILLION)
-
-
-class Labels:
-    """Places labels greedily where they cover least: other labels and symbols first, then lines and ellipses."""
-
-    def __init__(self, sheet: Sheet, frame: Box, size: float = 7.0) -> None:
-        self.sheet, self.frame, self.size = sheet, frame, size
-        self.boxes: list[Box] = []
-        self.soft: list[Box] = []
-        self.segments: list[Sequence[Point]] = []
-
-    def keep_off(self, at: Point, radius: float) -> None:
-        """Labels stay off this symbol."""
-        self.boxes.append((at[0] - radius, at[1] - radius, at[0] + radius, at[1] + radius))
-
-    def place(self, items: Sequence[tuple[Point, str, str]]) -> None:
-        """Place labels in their order: each a point, the text, and the label's id."""
-        boxes, soft = np.array(self.boxes).reshape(-1, 4), np.array(self.soft).reshape(-1, 4)
-        segments = np.array([[*one, *other] for one, other in self.segments]).reshape(-1, 4)
-        for at, text, gid in items:
-            options = _around(at, self.sheet.width(text, self.size), self.size * 0.26)
-            costs = [self._cost(option, boxes, soft, segments) + 0.02 * i for i, option in enumerate(options)]
-            best = options[int(np.argmin(costs))]
-            boxes = np.vstack([boxes, best])
-            self.sheet.text((best[0], best[1]), text, self.size, path_effects=self.sheet.halo(), gid=gid)
-
-    def _cost(
-        self, box: Box, boxes: NDArray[np.float64], soft: NDArray[np.float64], segments: NDArray[np.float64]
-    ) -> float:
-        left, bottom, right, top = self.frame
-        outside = (
-            max(0.0, left - box[0]) + max(0.0, bottom - box[1]) + max(0.0, box[2] - right) + max(0.0, box[3] - top)
-        )
-        return 100 * outside + 10 * _overlap(box, boxes) + 0.3 * _overlap(box, soft) + _inside_length(box, segments)
-
-
-def _around(at: Point, width: float, height: float) -> list[Box]:
-    """Places for a label around a point: right first, then the other sides, near and farther."""
-    x, y = at
-    places: list[Box] = []
-    for gap in (2.2, 3.6, 6.0):
-        d = gap * 0.75
-        mid, low, high = y - height / 2, y - d - height, y + d
-        ahead = ((x + d, high), (x + gap, mid), (x + d, low))
-        behind = ((x - d - width, high), (x - gap - width, mid), (x - d - width, low))
-        centred = ((x - width / 2, y + gap), (x - width / 2, y - gap - height))
-        places += [(left, bottom, left + width, bottom + height) for left, bottom in (*ahead, *behind, *centred)]
-    return places
-
-
-def _overlap(box: Box, boxes: NDArray[np.float64]) -> float:
-    """Area in mm² that the box, with a margin of 0.4 mm, shares with the boxes (n, 4)."""
-    wide = np.minimum(boxes[:, 2], box[2] + 0.4) - np.maximum(boxes[:, 0], box[0] - 0.4)
-    high = np.minimum(boxes[:, 3], box[3] + 0.4) - np.maximum(boxes[:, 1], box[1] - 0.4)
-    return float(np.sum(np.clip(wide, 0, None) * np.clip(high, 0, None)))
-
-
-def _inside_length(box: Box, segments: NDArray[np.float64]) -> float:
-    """Length in mm of the segments (n, 4: x1 y1 x2 y2) inside the box, by clipping their parameter to both slabs."""
-    start, step = segments[:, :2], segments[:, 2:] - segments[:, :2]
-    step = np.where(np.abs(step) < 1e-9, 1e-9, step)
-    one, other = (np.array(box[:2]) - start) / step, (np.array(box[2:]) - start) / step
-    enter, leave = np.minimum(one, other).max(axis=1), np.maximum(one, other).min(axis=1)
-    share = np.clip(np.minimum(leave, 1) - np.maximum(enter, 0), 0, None)
-    return float(np.sum(share * np.hypot(step[:, 0], step[:, 1])))

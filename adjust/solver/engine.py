@@ -6,8 +6,8 @@
     factor.entries(i, j)                      exact entries of N^-1
 
 SuperLU is run in its symmetric mode without pivoting, which for a positive definite matrix is a Cholesky
-factorisation in all but name; the pivots of the scaled matrix are the shares of each unknown that the unknowns after
-it do not explain (1 - R^2), so a pivot near zero is an unknown that nothing fixes.
+factorisation in all but name; the pivots of the scaled matrix are the shares of each unknown that the unknowns
+eliminated before it do not explain (1 - R^2), so a pivot near zero is an unknown that nothing fixes.
 """
 
 from __future__ import annotations

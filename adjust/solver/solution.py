@@ -113,8 +113,9 @@ class Solution:
 
     def __repr__(self) -> str:
         t = self.total
+        factor = "none" if t.variance_factor is None else f"{t.variance_factor:.4g}"
         return (f"<Solution of {self.job.settings.title!r}: {t.observations} readings, {t.unknowns} unknowns, "
-                f"{t.degrees_of_freedom} degrees of freedom, variance factor {t.variance_factor}>")  # fmt: skip
+                f"{t.degrees_of_freedom} degrees of freedom, variance factor {factor}>")  # fmt: skip
 
     def _repr_html_(self) -> str:
         from adjust.notebook import cell, html_table

@@ -1,8 +1,12 @@
-"""Do the bytes of dense linear algebra depend on the number of BLAS threads, and what does one thread cost?"""
+"""Do the bytes of dense linear algebra depend on the number of BLAS threads, and what does one thread cost?
+
+python docs/decisions/0001-one-blas-thread.py [UNKNOWNS ...]
+"""
 
 from __future__ import annotations
 
 import hashlib
+import sys
 import time
 
 import numpy as np
@@ -10,7 +14,7 @@ from threadpoolctl import threadpool_info, threadpool_limits
 
 random = np.random.RandomState(1)
 print([(lib["internal_api"], lib["version"]) for lib in threadpool_info()])
-for unknowns in (20, 60, 200, 600):
+for unknowns in [int(text) for text in sys.argv[1:]] or [20, 60, 200, 600]:
     design = random.normal(size=(2 * unknowns, unknowns))
     for threads in (1, 2):
         times = []

@@ -6,6 +6,7 @@ import copy
 import math
 from typing import Any
 
+from adjust.book.schema import LAYERS
 from adjust.caution import CAUTION
 
 Record = dict[str, Any]
@@ -65,7 +66,9 @@ def record(title: str, stations: list[Record], observations: list[Record], what:
     return {
         "format": 1, "brasscap": "0.1.0", "versions": {}, "caution": CAUTION,
         "settings": {"confidence": 0.95, "significance": 0.05, "outlier": 0.001, "power": 0.8,
-                     "variance_factor": "given", "datum": {"kind": "control"}},
+                     "variance_factor": "given", "datum": {"kind": "control"},
+                     "drawing": {"paper": None, "orientation": "auto", "scale": None, "ellipses": None,
+                                 "relative_ellipses": None, "layers": list(LAYERS)}},
         "units": {"length": "m", "angle": "dms", "decimal": ".", "axis_order": "east, north", "bearings": "azimuth"},
         "frame": {"kind": "local plane", "origin": None},
         "job": {"title": title, "client": "Tarnel Weir trustees", "surveyed": "2026-05-14",
@@ -134,7 +137,7 @@ def plane_record() -> Record:
          "sentence": "C9 stands 13.1 mm north of its known place."},
     ]  # fmt: skip
     made["left_out"] = [{"observation": "distances.csv:12", "file": "distances.csv", "line": 12, "kind": "distance",
-                         "reason": "tripod was knocked"}]  # fmt: skip
+                         "reason": "tripod was knocked", "stations": ["P2", "C9"]}]  # fmt: skip
     made["warnings"] = ["TP1 and TP01 are different stations; booked_names can join them."]
     return made
 
