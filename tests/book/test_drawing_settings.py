@@ -70,7 +70,7 @@ layers = ["lines", "names"]
         ("scale = 500", 'column drawing.scale: "500": must be a text in quotes'),
         ('ellipses = "2000"', 'column drawing.ellipses: "2000": how many times larger; write it like "x 2000"'),
         ('relative_ellipses = "x 0"', 'column drawing.relative_ellipses: "x 0": how many times larger; '),
-        ('layers = ["line"]', 'column drawing.layers: "line": an unknown layer; did you mean lines?'),
+        ('layers = ["line"]', 'column drawing.layers: "line": an unknown word; did you mean lines?'),
         ('layers = "lines"', 'column drawing.layers: "lines": must be a list: ["grid", "lines"]'),
     ],
 )
