@@ -52,6 +52,8 @@ NOT_SHOWN = {
     "shift north": "name of a freedom inside the program",
     "the job": "value of the key `of` in parameters: docs/record.md",
     "back distance": "name of a reading inside the program",
+    "shortest-path-tree candidates, reduced modulo two": "name of a method inside the program",
+    "(?:tp|cp|t|c|turn|change)?[ ._-]*\\d+[a-z]?": "a pattern of names",
 }
 """Texts that nobody sees as a message, with the reason."""
 
