@@ -14,7 +14,7 @@ estimate                                  a pure number, or one with its standar
 ratio, times                              a scale "1:500"; how many times larger, "x 2000"
 sd                                        a standard deviation in the small unit of the column it belongs to
 precision                                 an error model such as "1.5 mm + 2 ppm" or ["1.5 mm", "2 ppm"]
-allowance                                 how large a misclosure may be, as in adjust/allowances.py: "1:10000", or a list
+allowance                                 how large a misclosure may be, see adjust/allowances.py: "1:10000", or a list
 rules                                     "NAME: CLASS" of a rule, or a list of such
 temperature, pressure, humidity, ppm      degrees Celsius, hPa, per cent, parts per million, or with their own unit
 wavelength                                a length, written with its unit: "658 nm"

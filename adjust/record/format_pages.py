@@ -68,8 +68,9 @@ All faults come at once on standard error, one a line, and nothing is written (e
 FILE:LINE: column NAME: "what was found": what to do
 ```
 
-Exit codes: 0 done; 1 done, but a test failed, a suspect stands at the job's level, or a check mark disagrees; 2 could
-not be done; 70 internal error; 130 interrupted. Every message is explained in [messages](messages.md).
+Exit codes: 0 done; 1 done, but a test failed, a suspect stands at the job's level, a check mark disagrees, or something
+does not close or meet its limit; 2 could not be done; 70 internal error; 130 interrupted. Every message is explained in
+[messages](messages.md).
 
 What comes out is explained in [the record, key by key](record.md).
 """
@@ -109,6 +110,7 @@ Name a rule and its class in job.toml, `[tolerance] rule = "NAME: CLASS"`, or a 
 its edition, and how sure its figures are. To meet a rule here is arithmetic on these readings by that edition; local
 rules may be stricter. A rule of your own is a file of the same form in the job folder:
 
+<!-- file our-office.toml -->
 ```toml
 title = "Our office's rule for building sites"
 body = "Tarnel Weir survey office"

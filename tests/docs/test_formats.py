@@ -13,6 +13,7 @@ import adjust
 from adjust.record.build import build
 from adjust.record.format_pages import pages
 from adjust.record.schemas import job_schema, record_schema
+from tests.docs.blocks import blocks
 
 ROOT = Path(__file__).parents[2]
 JOBS = [*sorted(p.parent for p in (ROOT / "networks").glob("*/job.toml")), ROOT / "adjust" / "starter"]
@@ -57,3 +58,15 @@ def test_the_job_schema_refuses_what_the_reader_refuses(change):
     validator = _validator(job_schema())
     assert validator.is_valid(good)
     assert not validator.is_valid(good | change)
+
+
+def test_the_rule_of_ones_own_in_the_page_is_a_rule(tmp_path):
+    page = (ROOT / "docs" / "rules.md").read_text("utf-8")
+    (block,) = [b for b in blocks(page) if b.mark == "file our-office.toml"]
+    (tmp_path / "our-office.toml").write_text(block.text + "\n", "utf-8")
+    head = '[units]\nlength = "m"\nangle = "dms"\n[tolerance]\nrule = "our-office: site"\n'
+    (tmp_path / "job.toml").write_text(head, "utf-8")
+    (tmp_path / "levelled.csv").write_text("from,to,rise,sd\nA,B,1.0,0.001\n", "utf-8")
+    limit = adjust.read(tmp_path).tolerance.limits["level loops"]
+    assert limit.allowance.text == "10 mm*sqrt(km)"
+    assert "Our office's rule for building sites" in limit.source

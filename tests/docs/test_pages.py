@@ -197,8 +197,8 @@ TRADE = (
     "side shot", "smallest detectable", "standard deviation", "station", "statistic", "suspect", "to spare", "turn",
     "unchecked", "variance factor", "verdict", "weighted", "critical value", "mirror image", "centring",
     "relative ellipse", "significance", "power", "tau",
-    "allowable", "balance of sights", "change point", "collimation", "compass rule", "face", "horizon closure", "index",
-    "misclosure", "rejection", "section", "tolerance", "transit rule", "two-peg test", "weather",
+    "allowable", "change point", "collimation", "compass rule", "face", "horizon closure", "index",
+    "misclosure", "rejection", "section", "sight balance", "tolerance", "transit rule", "two-peg test", "weather",
 )  # fmt: skip
 """Words of the trade that the record and what is printed use."""
 
