@@ -125,7 +125,8 @@ def _compared(
         allowable = rule.allowance.allowable(_mean_length(one, other), None, min(one.setups, other.setups))
     met = allowable is not None and abs(d) <= allowable
     way = "forward and back" if opposite else "run twice the same way"
-    of = f"{one.ends[0]} to {one.ends[1]}, {one.line} and {other.line}"
+    lines = one.line if one.line == other.line else f"{one.line} and {other.line}"
+    of = f"{one.ends[0]} to {one.ends[1]}, {lines}"
     size, allowed = (small_length(abs(x), unit).lstrip("+") for x in (d, allowable or 0.0))
     by = f"of {rule.words}" if rule else "which their standard deviations allow"
     sentence = f"{of}, {way}: the two runs differ by {size}, more than the {allowed} {by}."

@@ -37,10 +37,10 @@ def _judged(what: str, n: int, found: list[Reduction]) -> str:
     """How many of a sort, and how they were judged where they were."""
     verdicts = Counter(one.verdict for one in found if one.what == what and one.verdict)
     if not verdicts:
-        return f"{n} {what}"
+        return f"{what} {n}"
     if set(verdicts) == {"met"}:
-        return f"{n} {what} (met)" if n == 1 else f"{n} {what} (all met)"
-    return f"{n} {what} ({', '.join(f'{k} {verdict}' for verdict, k in verdicts.items())})"
+        return f"{what} {n} (met)" if n == 1 else f"{what} {n} (all met)"
+    return f"{what} {n} ({', '.join(f'{k} {verdict}' for verdict, k in verdicts.items())})"
 
 
 def _instruments(job: Job, found: list[Reduction]) -> list[str]:

@@ -13,6 +13,7 @@ from adjust.atmosphere import Air
 from adjust.book.level_keys import LEVEL_KINDS
 from adjust.book.settings import Table
 from adjust.caution import CAUTION
+from adjust.graph.cycles import METHOD
 from adjust.judge.assess import Judgement
 from adjust.judge.overall import OverallTest
 from adjust.network import ROLES
@@ -121,6 +122,7 @@ def _settings(solution: Solution) -> dict[str, Any]:
         "instruments": {
             name: {key: model.text for key, model in keys.items()} for name, keys in settings.instruments.items()
         },
+        "loops": METHOD,
         "tolerance": tolerance_settings(solution.job),
         "rejection": {key: limit.text for key, limit in settings.rejection.items()},
         "weather": _weather(settings.weather),

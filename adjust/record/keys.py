@@ -88,6 +88,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("frame", "object frame_settings", "frame as declared"),
         ("datum", "object datum", "datum as declared"),
         ("instruments", "object any", "error models by instrument and key, as declared"),
+        ("loops", "text", "how the basis of loops of least length was found"),
         ("tolerance", "object any", "limits of closures by what they are of: allowed, source, confidence"),
         ("rejection", "object any", "limits of rounds as declared"),
         ("weather", "object weather", "weather of the job"),

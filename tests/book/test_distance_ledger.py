@@ -100,7 +100,7 @@ def test_without_anything_declared_nothing_is_done(tmp_path: Path) -> None:
     [
         (METER + BOOK, "distances.csv:1: column temperature"),
         (METER + BOOK, "which corrections has the instrument made already?"),
-        (METER + BOOK + 'applied = ["weather"]\n', "an unknown word; known here: reflector, constant, scale, atmosphere"),
+        (METER + BOOK + 'applied = ["weather"]\n', "an unknown word; known here: reflector, constant"),
         (METER + BOOK + 'applied = []\nreflector = "rund"\n' + ROUND, "did you mean round?"),
         (METER + BOOK + "applied = []\n" + ROUND + '[reflectors.mini]\nconstant = "2 mm"\n', "which reflector?"),
         (METER + ROUND.replace(" mm", "") + BOOK + "applied = []\n", 'in which unit? Write "-30 mm"'),
