@@ -91,7 +91,7 @@ def test_clean_random_networks_all_start() -> None:
     words = [verdict(made(seed, blunder=False)) for seed in range(40)]
     bad = [(seed, word) for seed, word in enumerate(words) if word.startswith("FAILS")]
     assert not bad
-    assert sum(word == "same" for word in words) > 40
+    assert sum(word == "same" for word in words) > 25
 
 
 def test_random_networks_with_one_gross_error_start_in_at_least_98_of_100() -> None:
