@@ -282,8 +282,8 @@ def test_nothing_in_a_cell_is_an_internal_error(kind: str, tmp_path: Path, capsy
     above = "".join(f"{one}\n" for one in before)
     columns = range(len(row.split(",")) + 1)
     codes = set()
-    for odd in ODD:
-        for column in columns:
+    for k, odd in enumerate(ODD):
+        for column in columns[k % 2 :: 2]:  # every text in every other column: half the time
             cells = [*row.split(","), ""]
             cells[column] = f'"{odd}"'
             more = "" if "sd" in header else ",sd" if kind in TABLES else ",note"

@@ -87,17 +87,17 @@ def test_wrong_coordinates_of_one_of_four_weighted_marks_are_outvoted() -> None:
 
 
 def test_clean_random_networks_all_start() -> None:
-    """60 networks; the figures of larger samples come from tests/graph/starts_study.py."""
-    words = [verdict(made(seed, blunder=False)) for seed in range(60)]
+    """40 networks; the figures of larger samples come from tests/graph/starts_study.py."""
+    words = [verdict(made(seed, blunder=False)) for seed in range(40)]
     bad = [(seed, word) for seed, word in enumerate(words) if word.startswith("FAILS")]
     assert not bad
-    assert sum(word == "same" for word in words) > 40
+    assert sum(word == "same" for word in words) > 25
 
 
 def test_random_networks_with_one_gross_error_start_in_at_least_98_of_100() -> None:
-    words = [verdict(made(seed, blunder=True)) for seed in range(60)]
+    words = [verdict(made(seed, blunder=True)) for seed in range(40)]
     able = [word for word in words if word == "same" or word.startswith("FAILS")]
-    assert len(able) > 35
+    assert len(able) > 22
     assert sum(word == "same" for word in able) >= 0.98 * len(able), [w for w in able if w != "same"]
 
 
