@@ -1,8 +1,9 @@
 """Where a page sum can have gone wrong: the everyday slips that would explain the difference exactly.
 
 The amount is the sum of the readings in the table minus the sum as booked. Tried are: a reading left out of the sum or
-added twice, a reading in another column of the page, two neighbouring digits swapped in a reading, and a whole step of
-one digit (a slip of adding, or a digit misread). The list is common practice; a hint is no proof.
+added twice, a reading in another column of the page, the two readings of a row in each other's column, two neighbouring
+digits swapped in a reading, and a whole step of one digit (a slip of adding, or a digit misread). The list is common
+practice; a hint is no proof.
 """
 
 from __future__ import annotations
@@ -83,6 +84,18 @@ def _moved(table: StaffTable, rows: list[int], sight: str, amount: float, off: d
             if abs(float(table.reading[here][i]) - abs(amount)) < SAME:
                 where = f"{table.cells.text(here)[i]} in line {table.place(i)}"
                 out.append(f"{where} stands under {there} in the book")
+        out += _exchanged(table, rows, (sight, other), amount)
+    return out
+
+
+def _exchanged(table: StaffTable, rows: list[int], columns: tuple[str, str], amount: float) -> list[str]:
+    """Two readings of one row that stand in each other's column."""
+    out = []
+    for i in rows:
+        here, there = (float(table.reading[column][i]) for column in columns)
+        if abs(here - there - amount) < SAME:
+            texts = " and ".join(table.cells.text(column)[i] for column in columns)
+            out.append(f"{texts} in line {table.place(i)} stand in each other's column")
     return out
 
 

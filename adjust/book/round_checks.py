@@ -10,6 +10,7 @@ from adjust.book.sets import outside
 from adjust.units import RHO_SEC, wrap
 
 if TYPE_CHECKING:
+    from adjust.book.round_slips import Slip
     from adjust.book.rounds import Pointing, Station
 
 SAME_PLACE = 30 / RHO_SEC
@@ -20,12 +21,14 @@ GROSS = 120 / RHO_SEC
 FEWEST = 3
 
 
-def findings(station: Station) -> list[str]:
-    """Sentences about one station, in the order in which one would look."""
-    return [*_moved(station), *_one_target_two_names(station), *_undecided(station), *_uneven(station)]
+def findings(station: Station, slips: list[Slip]) -> list[str]:
+    """Sentences about one station, in the order in which one would look; ``slips`` are readings known as misread."""
+    named = {slip.key for slip in slips if slip.what == "direction"}
+    misread = [slip.sentence for slip in slips]
+    return [*misread, *_moved(station, named), *_one_target_two_names(station), *_undecided(station), *_uneven(station)]
 
 
-def _moved(station: Station) -> list[str]:
+def _moved(station: Station, named: set[tuple[str, str]]) -> list[str]:
     """Pointings far off in one set: the zero target of a set, or another target under the name."""
     values = {(p.set, p.to): p.direction for p in station.pointings if p.direction is not None}
     limit = min(GROSS, _clear(station))
@@ -35,7 +38,7 @@ def _moved(station: Station) -> list[str]:
         zero = next(p.to for p in station.pointings if p.set == in_set) == to
         size = f'{abs(one.off) * RHO_SEC:.0f}"'
         where = f"{station.file}: {station.at} set {in_set}"
-        if not one.sure:
+        if not one.sure or one.key in named:
             continue
         if zero:
             out.append(f"{where}: the zero target {to} lies {size} away from the other sets, the rest of the set does "

@@ -16,8 +16,10 @@ import numpy as np
 from adjust.book import faces
 from adjust.book.cells import Cells
 from adjust.book.job import Aside
+from adjust.book.mixed_faces import mixed_faces
 from adjust.book.observations import Observations
 from adjust.book.round_checks import findings
+from adjust.book.round_slips import Raw, limits, slips
 from adjust.book.round_words import reductions_of
 from adjust.book.sets import Outside, SetMeans, outside, set_means
 from adjust.book.sheet import Sheet
@@ -26,9 +28,6 @@ from adjust.network import Array, Block
 from adjust.units import TURN, wrap
 
 READINGS = ("horizontal_circle", "zenith_circle", "slope_distance")
-MISLABELLED = np.deg2rad(20.0)
-"""Circle readings of one target in one face that differ by a half circle to within this are of two faces; collimation
-is minutes at the most, two targets at a station are seldom opposite to within it (common practice)."""
 SHEETS = {
     "direction": Sheet(KINDS["direction"], ("at", "to"), ("horizontal_circle",), "sd_direction", "direction"),
     "zenith": Sheet(KINDS["zenith_angle"], ("at", "to"), ("zenith_circle",), "sd_zenith", "zenith angle"),
@@ -86,11 +85,13 @@ def add_rounds(observations: Observations, cells: Cells) -> None:
     if observations.faults.all:
         return
     stations = [_station(observations, cells, at, found) for at, found in table.by_station().items()]
-    for station in stations:
+    raw = [table.raw(station) for station in stations]
+    clear = limits(list(zip(stations, raw, strict=True)))
+    for station, rows_there in zip(stations, raw, strict=True):
         observations.reductions += reductions_of(
             station, _instrument_sds(observations, cells, station), observations.settings.rejection
         )
-        observations.warnings += findings(station)
+        observations.warnings += findings(station, slips(station, rows_there, clear))
         _leave_out(observations, cells, station)
     for key, sheet in SHEETS.items():
         _take(observations, cells, sheet, key, stations)
@@ -117,31 +118,69 @@ class _Table:
                 self.cells.fault(i, READINGS[0], "", "a row without a reading; fill it, or set use = no with a reason")
             if not self.face[i] and not self.cells.text("face")[i]:
                 self.cells.fault(i, "face", "", "which face? Write 1 or 2 (left or right)")
-            self._check_zenith(i)
+        told = {i for i in self.rows if self._wrong_by_zenith(i)}
+        self._check_lone_targets()
+        unsaid = {key: rows for key, rows in self._groups().items() if not told.intersection(rows)}
+        for i, hint in mixed_faces(unsaid, self.face, self.value["horizontal_circle"], self.cells.rows.lines):
+            self.cells.fault(i, "face", self.cells.text("face")[i], hint)
 
-    def _check_zenith(self, i: int) -> None:
+    def _check_lone_targets(self) -> None:
+        """The circle stands anywhere, so a direction says something beside another of its set only."""
+        sighted: dict[tuple[str, str], list[int]] = defaultdict(list)
+        for i in self.rows:
+            if self.cells.text("horizontal_circle")[i]:
+                sighted[self.at[i], self.set[i]].append(i)
+        for (at, in_set), rows in sighted.items():
+            if len({self.to[i] for i in rows}) > 1 or not (at and self.to[rows[0]]):
+                continue
+            i = rows[0]
+            which = f"of set {in_set} at {at}" if in_set else f"sighted at {at}"
+            hint = (
+                f"{self.to[i]} is the only target {which}, and the direction of a lone target tells nothing; sight "
+                "another target in the set, give it the name of another set, or leave horizontal_circle blank"
+            )
+            self.cells.fault(i, "horizontal_circle", self.cells.text("horizontal_circle")[i], hint)
+
+    def _wrong_by_zenith(self, i: int) -> bool:
+        """Whether the zenith circle of a row is of the other face; a fault then."""
         v = self.value["zenith_circle"][i]
         if np.isnan(v) or not self.face[i] or (v < TURN / 2) == (self.face[i] == 1):
-            return
+            return False
         shown = self.cells.text("zenith_circle")[i]
         other = 2 if self.face[i] == 1 else 1
         hint = f"a zenith circle of face {other} in a row of face {self.face[i]}: the face is mixed up; correct one"
         self.cells.fault(i, "face", shown, hint)
+        return True
 
-    def by_station(self) -> dict[str, list[Pointing]]:
-        """Reduced pointings by station, in the order of the book."""
+    def _groups(self) -> dict[tuple[str, str, str], list[int]]:
+        """Rows by station, set and target."""
         groups: dict[tuple[str, str, str], list[int]] = defaultdict(list)
         for i in self.rows:
             groups[self.at[i], self.set[i], self.to[i]].append(i)
+        return groups
+
+    def raw(self, station: Station) -> list[Raw]:
+        """The rows of a station one by one; distances are told apart by what they were measured to."""
+        columns = ("instrument_height", "target_height", "reflector", "instrument", "offset_along", "offset_right")
+        there = [self.cells.text(c) for c in columns if self.cells.has(c)]
+        h, v, d = READINGS
+        return [
+            Raw(p.set, p.to, i, line, self.face[i], self._value(h, i), self._value(v, i), self._value(d, i),
+                tuple(self.cells.text(c)[i] for c in READINGS),
+                tuple(text[i] for text in there))
+            for p in station.pointings for i, line in zip(p.rows, p.lines, strict=True)
+        ]  # fmt: skip
+
+    def by_station(self) -> dict[str, list[Pointing]]:
+        """Reduced pointings by station, in the order of the book."""
         out: dict[str, list[Pointing]] = defaultdict(list)
-        for (at, in_set, to), rows in groups.items():
+        for (at, in_set, to), rows in self._groups().items():
             out[at].append(self._pointing(at, in_set, to, rows))
         return {at: _with_missing_faces(found) for at, found in out.items()}
 
     def _pointing(self, at: str, in_set: str, to: str, rows: list[int]) -> Pointing:
         h, v, d = ([[self._value(c, i) for i in rows if self.face[i] == f] for f in (1, 2)] for c in READINGS)
         h1, h2, v1, v2 = (_given(x) for x in (*h, *v))
-        self._check_faces(rows, h1, h2)
         lengths = _given([*d[0], *d[1]])
         lines = tuple(self.cells.rows.lines[i] for i in rows)
         counts = (len(h1) or len(v1), len(h2) or len(v2)) if (h1 or h2 or v1 or v2) else (1, 1)
@@ -168,16 +207,6 @@ class _Table:
     def _value(self, column: str, i: int) -> float | None:
         x = float(self.value[column][i])
         return None if np.isnan(x) else x
-
-    def _check_faces(self, rows: list[int], h1: list[float], h2: list[float]) -> None:
-        """Readings of one face agree; those of two faces lie half a circle apart."""
-        for readings in (h1, h2):
-            if any(abs(abs(wrap(r - readings[0])) - TURN / 2) < MISLABELLED for r in readings[1:]):
-                self.cells.fault(rows[-1], "face", self.cells.text("face")[rows[-1]],
-                                 "the circle turned by half, but the rows are of one face; correct a face")  # fmt: skip
-        if h1 and h2 and abs(wrap(h1[0] - h2[0])) < MISLABELLED:
-            self.cells.fault(rows[-1], "face", self.cells.text("face")[rows[-1]],
-                             "one circle reading in two faces; the second must lie half a circle on")  # fmt: skip
 
 
 def _given(values: list[float | None]) -> list[float]:

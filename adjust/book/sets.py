@@ -94,7 +94,7 @@ def outside(values: Mapping[Key, float], turning: bool, limit: float) -> list[Ou
     left: dict[Key, float] = dict(values)
     out: list[Outside] = []
     while True:
-        found = [one for key in left if (one := _off(left, key, turning)) and abs(one.off) > limit]
+        found = [one for key in left if (one := against_others(left, key, turning)) and abs(one.off) > limit]
         sure = [one for one in found if one.sure]
         if not sure:
             return out + found
@@ -103,7 +103,7 @@ def outside(values: Mapping[Key, float], turning: bool, limit: float) -> list[Ou
         del left[worst.key]
 
 
-def _off(values: Mapping[Key, float], key: Key, turning: bool) -> Outside | None:
+def against_others(values: Mapping[Key, float], key: Key, turning: bool) -> Outside | None:
     """How far a value lies from the mean of the other sets, turned by medians; None where there is no other."""
     s, t = key
     others = [k for k in values if k[1] == t and k != key]

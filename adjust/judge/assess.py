@@ -135,6 +135,13 @@ class Judgement:
         return balances(self.solution) if self.closures else ()
 
     @cached_property
+    def constants(self) -> list[str]:
+        """Sentences on constants of reflector or instrument that the distances seem to have had already."""
+        from adjust.judge.constants import twice
+
+        return twice(self.solution)
+
+    @cached_property
     def booked_ids(self) -> list[str]:
         """Identification of each scalar row of the job's own network, by which closures count."""
         network = self.solution.job.network

@@ -12,6 +12,7 @@ from adjust.errors import Unsolvable
 from adjust.graph.parts import listed
 from adjust.judge import unfixed
 from adjust.judge.closures import closures
+from adjust.judge.constants import twice
 from adjust.judge.evening import book_lines, closure_lines, ledger_lines, not_closed
 from adjust.judge.readings import Readings
 from adjust.judge.reliability import reliability
@@ -60,7 +61,7 @@ def look(job: Job) -> Look:
             raise Unsolvable(unfixed.words(loose)) from None
         at_start = solution_at(job, ready, here, cofactors, 0)
         lines = [*_contents(job), *evening, *_parts(at_start), *_islands(at_start), *_unchecked(at_start),
-                 *unfixed.warnings(at_start), *job.warnings]  # fmt: skip
+                 *unfixed.warnings(at_start), *twice(at_start), *job.warnings]  # fmt: skip
         return Look(lines, failed)
 
 

@@ -5,6 +5,7 @@ what the other readings may add; what everything would fit equally well is not s
 
     levels     w is a whole number of metres, decimetres (feet, tenths): a staff misread; tolerance up to a twentieth of
                the step, else too much would fit by chance. w = 2 r of a line: its sign or its ends turned round.
+               w = 2 (back - fore) of a row of a raw book: its sights in each other's column (once, at an end).
     angles     with t the angle booked, w = 2 t (modulo a circle): turned the other way, since t stands for -t;
                w = t or -t: counted twice, or dropped; w = 180 degrees.
                The whole w put into one angle closes the traverse: forwards and backwards it meets at that station.
@@ -27,6 +28,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from adjust.book.job import Job
+from adjust.judge.book_rows import changes
 from adjust.judge.booked import Booked, Form, total
 from adjust.judge.traversed import Traversed, polar
 from adjust.network import Array
@@ -131,7 +133,13 @@ def _levels(words: Words, one: Closure, levels: Levels) -> list[Hint]:
         if away <= tolerance < abs(rise):
             turned.append(Hint(away / tolerance, f"the misclosure is twice the rise of {words.line(i, j)} "
                                f"({words.row(row)}): its sign or its ends may be turned round {within}"))  # fmt: skip
-    return [*_steps(words, w, tolerance, within), *_some(turned, len(levels.rises))]
+    exchanged = [
+        Hint(abs(w - size) / tolerance, f"the misclosure is what the sights of {place} would leave in each other's "
+             f"column {within}")
+        for place, size in changes(words.job, one.rows, levels.rises) if abs(w - size) <= tolerance < abs(size)
+    ]  # fmt: skip
+    return [*_steps(words, w, tolerance, within), *_some(turned, len(levels.rises)),
+            *_some(exchanged, len(levels.rises))]  # fmt: skip
 
 
 def _steps(words: Words, w: float, tolerance: float, within: str) -> list[Hint]:
@@ -287,8 +295,9 @@ def with_common(job: Job, closures: tuple[Closure, ...]) -> tuple[Closure, ...]:
                 shared -= _pieces(closures[k])
         named = [words.line(i, j) + (f" ({words.row(row)})" if row >= 0 else "") for i, j, row in sorted(shared)]
         if named and len(shared) < min(len(_pieces(closures[k])) for k in failing):
-            text = (f"{what} {' and '.join(named[:MOST])} is common to all {len(failing)} that fail and in none that "
-                    "closes")  # fmt: skip
+            rest = f" and {len(named) - MOST} more" if len(named) > MOST else ""
+            these = f"{what} {named[0]} is" if len(named) == 1 else f"{what}s {' and '.join(named[:MOST])}{rest} are"
+            text = f"{these} common to all {len(failing)} that fail and in none that closes"
             for k in failing:
                 out[k] = replace(out[k], sentence="; ".join(s for s in (text, out[k].sentence) if s))
     return tuple(out)

@@ -238,7 +238,7 @@ def _datum_words(solution: Solution, part: PartResult) -> str:
 
 def _warnings(judgement: Judgement) -> list[str]:
     solution = judgement.solution
-    out = list(solution.job.warnings)
+    out = [*solution.job.warnings, *judgement.constants]
     idle = [name for name, xyz in zip(solution.names, solution.positions, strict=True) if np.isnan(xyz).all()]
     if idle:
         shown = ", ".join(idle[:8]) + (f" and {len(idle) - 8} more" if len(idle) > 8 else "")

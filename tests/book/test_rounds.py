@@ -254,3 +254,56 @@ def test_bad_rows(tmp_path: Path, row: str, words: str) -> None:
 def test_a_limit_is_a_plain_size(tmp_path: Path) -> None:
     toml = '[rejection]\ndirection = "6 sec*sqrt(n)"\n' + TABLE
     assert "a plain limit is meant" in faults(tmp_path, "at,to,face,horizontal_circle\nS,A,1,30 00 00\n", toml)
+
+
+def test_a_lone_target_needs_no_circle(tmp_path: Path) -> None:
+    """A set to one target gives zenith angle and distance where its circle is left blank; a direction is a fault."""
+    head = "at,to,set,face,horizontal_circle,zenith_circle,slope_distance\n"
+    whole = "S,A,1,1,10 00 00,87 00 00,50\nS,B,1,1,80 00 00,88 00 00,60\n"
+    job = read(tmp_path, head + whole + "S,A,2,1,,87 00 01,50.001\nS,A,2,2,,272 59 59,50.001\n")
+    assert [len(block(job, kind)) for kind in ("direction", "zenith_angle", "distance")] == [2, 3, 3]
+    found = faults(tmp_path, head + whole + "S,A,2,1,40 00 00,87 00 01,50.001\nS,A,2,2,220 00 00,272 59 59,50.001\n")
+    assert found.startswith('rounds.csv:4: column horizontal_circle: "40 00 00": A is the only target of set 2 at S')
+    assert "\n" not in found
+    left_out = "S,A,2,1,40 00 00,87 00 01,50,,\nS,B,2,1,110 00 00,88 00 00,60,no,wind\n"
+    head, whole = head.replace("\n", ",use,reason\n"), whole.replace("\n", ",,\n")
+    assert "A is the only target of set 2" in faults(tmp_path, head + whole + left_out)
+
+
+@pytest.mark.parametrize(("face_of", "words"), [
+    ("2 1 1 2 2 2", 'rounds.csv:2: column face: "2"'),
+    ("1 1 1 2 1 2", 'rounds.csv:6: column face: "1"'),  # the rows beside the fifth are of face 2
+    ("1 1 1 1 2 2", "correct a face in line 4 or 5"),  # the middle of the set: nothing tells
+])  # fmt: skip
+def test_a_mixed_up_face_in_a_single_set(tmp_path: Path, face_of: str, words: str) -> None:
+    circle = ("10 00 00", "80 00 00", "150 00 00", "330 00 00", "260 00 00", "190 00 00")
+    rows = [f"S,{to},{f},{h}" for to, f, h in zip("ABCCBA", face_of.split(), circle, strict=True)]
+    found = faults(tmp_path, "at,to,face,horizontal_circle\n" + "\n".join(rows) + "\n")
+    assert words in found, found
+    assert "\n" not in found
+
+
+@pytest.mark.parametrize("sets", [1, 2, 3])
+@pytest.mark.parametrize("column", ["horizontal_circle", "zenith_circle"])
+def test_one_minute_in_one_face_is_named_by_its_line(tmp_path: Path, sets: int, column: str) -> None:
+    """Every row of a book in turn, and of the sound book nothing."""
+    for k in range(0, 12 * sets + 2, 5):
+        book = moved(Book(np.random.default_rng([11, k]), sets=sets), k, column, -60 * SEC)
+        own = [w for w in read(tmp_path, book.csv()).warnings if f"in line {k + 2}" in w]
+        assert len(own) == 1, f"row {k}"
+        assert "misread?" in own[0]
+        if sets > 1:
+            assert "which is 1 minute" in own[0]
+            assert own[0].count(" in line ") == 1
+    assert read(tmp_path, Book(np.random.default_rng(12), sets=sets).csv()).warnings == ()
+
+
+@pytest.mark.parametrize(
+    ("sets", "words"), [(1, "two slope distances differ by 1.00"), (2, "m longer than the middle")]
+)
+def test_a_metre_misread_in_a_distance(tmp_path: Path, sets: int, words: str) -> None:
+    book = Book(np.random.default_rng(13), sets=sets, reopen=False)
+    book.rows[2]["slope_distance"] = f"{float(book.rows[2]['slope_distance']) + 1:.4f}"
+    (told,) = read(tmp_path, book.csv()).warnings
+    assert words in told
+    assert "in line 4" in told
