@@ -21,11 +21,13 @@ from adjust.units import BadValue
 
 SUBJECTS = {
     "level sections": "length", "level runs": "length", "level loops": "length",
+    "height loops": "length", "height runs": "length",
     "traverse angles": "angle", "traverse position": "length", "triangles": "angle",
 }  # fmt: skip
 """What a limit can be of, with its dimension."""
 OF_KEYS = {
     "levelling": ("level sections", "level runs", "level loops"),
+    "heights": ("height runs", "height loops"),
     "traverse": ("traverse position",),
     "angular": ("traverse angles", "triangles"),
 }

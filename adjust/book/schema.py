@@ -55,6 +55,8 @@ TESTS = (
 TOLERANCE = (
     Field("levelling", "allowance", "largest misclosure of level loops, of runs between known heights, and of the two "
           "runnings of a section", dimension="length"),
+    Field("heights", "allowance", "largest misclosure of loops and runs with heights by zenith angles",
+          dimension="length"),
     Field("traverse", "allowance", "largest linear misclosure of a traverse after its angles are balanced",
           dimension="length"),
     Field("angular", "allowance", "largest angular misclosure of a traverse or triangle of n angles",

@@ -1,13 +1,20 @@
-"""Levelled loops and runs: which lines close on themselves, and which lead from one known height to another.
+"""Loops and runs of heights: which lines close on themselves, and which lead from one known height to another.
 
 Loops are a minimum cycle basis of the graph of levelled lines (adjust.graph.cycles): every other loop is a sum of
 them. Runs are found in the same way after all known heights have become one node: what passes through it leads from
 one known height to another (or is a loop of one mark, which the loops have already).
+
+Where zenith angles give rises too, the levelled loops and runs stay what they are, and loops and runs of all lines
+together follow that do not depend on them. Two loops with the same lines by zenith angles (modulo two) differ by
+levelled loops only, so independence asks for these lines alone. A minimum basis of all loops spans, up to any size,
+what there is up to that size; so going through it by size and keeping what does not depend on the levelled loops and
+on what was kept gives loops of the smallest total size.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from typing import NamedTuple
 
 import numpy as np
 
@@ -19,6 +26,8 @@ HEIGHT = 2
 LENGTH, SETUPS, VARIANCE = "length", "set-ups", "variance"
 """What the sizes of loops are, by what was booked for every line."""
 LOOP, RUN = "level loop", "level run"
+HEIGHT_LOOP, HEIGHT_RUN = "height loop", "height run"
+"""Of levelled lines alone, and with lines by zenith angles."""
 
 
 @dataclass(frozen=True)
@@ -73,8 +82,13 @@ class Lines:
     def size(self) -> Ints:
         """Whole sizes (m,): millimetres, thousandths of a set-up, or shares of the mean variance in thousandths."""
         per = {LENGTH: self.walked[:, 0], SETUPS: self.walked[:, 1]}.get(self.measure, self.variance)
-        mean = float(per.mean()) if self.measure == VARIANCE and len(per) else 1.0
-        return np.maximum(np.round(per / (mean or 1.0) * 1000), 1).astype(np.int64)
+        return whole_sizes(per, self.measure != VARIANCE)
+
+
+def whole_sizes(sizes: Array, absolute: bool = True) -> Ints:
+    """Whole thousandths (m,) of some sizes, or of their shares of the mean; at least one."""
+    mean = 1.0 if absolute or not len(sizes) else float(sizes.mean())
+    return np.maximum(np.round(sizes / (mean or 1.0) * 1000), 1).astype(np.int64)
 
 
 def known_heights(network: Network) -> Bools:
@@ -103,8 +117,61 @@ def level_runs(network: Network, lines: Lines | None = None) -> tuple[Run, ...]:
     known = known_heights(network)
     if known[np.unique(lines.ends)].sum() < 2:
         return ()
-    hub = len(network.stations)
-    ends, size = np.where(known[lines.ends], hub, lines.ends), lines.size
+    return tuple(_run(RUN, walk, lines) for walk in _between(lines.ends, lines.size, known))
+
+
+class Walk(NamedTuple):
+    """A height loop or run: stations (k + 1) in the order walked, and numbers of the lines (k) between them."""
+
+    kind: str
+    stations: tuple[int, ...]
+    lines: tuple[int, ...]
+
+
+def height_walks(network: Network, ends: Ints, size: Ints, levelled: int) -> tuple[Walk, ...]:
+    """Loops, then runs between known heights, with lines by zenith angles in them.
+
+    ``ends`` (m, 2) and whole ``size`` (m,) are those of all lines, the first ``levelled`` of them levelled.
+    """
+    if levelled == len(size):
+        return ()
+    known, apart, out = known_heights(network), _Apart(levelled), []
+    for cycle in minimum_basis(ends, size):
+        if apart.takes(cycle.edges):
+            nodes = cycle.nodes[:-1]
+            first = min(nodes, key=lambda i: (not known[i], i))
+            out.append(Walk(HEIGHT_LOOP, *_from(cycle, nodes.index(first))))
+    if known[np.unique(ends)].sum() >= 2:
+        between = _between(ends, size, known)
+        out += [Walk(HEIGHT_RUN, *walk) for walk in between if apart.takes(walk.edges)]
+    return tuple(out)
+
+
+@dataclass
+class _Apart:
+    """Walks that are independent modulo two in their lines by zenith angles, those from number ``first`` on."""
+
+    first: int
+    leading: dict[int, int] = field(default_factory=dict)
+
+    def takes(self, edges: tuple[int, ...]) -> bool:
+        """Whether a walk does not depend on those taken; it is taken then."""
+        mask = 0
+        for e in edges:
+            mask ^= 1 << (e - self.first) if e >= self.first else 0
+        while mask:
+            known = self.leading.get(mask.bit_length())
+            if known is None:
+                self.leading[mask.bit_length()] = mask
+                return True
+            mask ^= known
+        return False
+
+
+def _between(lines: Ints, size: Ints, known: Bools) -> list[Cycle]:
+    """Walks along ``lines`` (m, 2) between different known heights, by size, a basis of what these close."""
+    hub = len(known)
+    ends = np.where(known[lines], hub, lines)
     found = [
         (int(size[e]), _named(Cycle((hub, hub), (e,)), lines))
         for e in np.flatnonzero((ends == hub).all(axis=1)).tolist()
@@ -113,14 +180,14 @@ def level_runs(network: Network, lines: Lines | None = None) -> tuple[Run, ...]:
         if hub in cycle.nodes:
             turned = _from(cycle, cycle.nodes.index(hub))
             found.append((int(size[list(cycle.edges)].sum()), _named(turned, lines)))
-    return tuple(_run(RUN, c, lines) for _, c in sorted(found) if c.nodes[0] != c.nodes[-1])
+    return [walk for _, walk in sorted(found) if walk.nodes[0] != walk.nodes[-1]]
 
 
-def _named(cycle: Cycle, lines: Lines) -> Cycle:
+def _named(cycle: Cycle, lines: Ints) -> Cycle:
     """A walk from the hub to the hub with the known stations it really leaves and reaches, from the lower one."""
-    i, j = lines.ends[cycle.edges[0]].tolist()
+    i, j = lines[cycle.edges[0]].tolist()
     first = i if len(cycle.edges) == 1 or j == cycle.nodes[1] else j
-    i, j = lines.ends[cycle.edges[-1]].tolist()
+    i, j = lines[cycle.edges[-1]].tolist()
     last = j if len(cycle.edges) == 1 or i == cycle.nodes[-2] else i
     walk = Cycle((first, *cycle.nodes[1:-1], last), cycle.edges)
     return walk if first <= last else Cycle(walk.nodes[::-1], walk.edges[::-1])

@@ -17,11 +17,13 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from adjust.book.job import Job
-from adjust.graph.runs import LOOP, Lines, Run, level_loops, level_runs, signs
+from adjust.graph import runs
+from adjust.graph.runs import HEIGHT_LOOP, LOOP, Lines, Run, height_walks, level_loops, level_runs, signs
 from adjust.graph.traverses import Traverse, find_traverses, find_triangles
 from adjust.judge import where
 from adjust.judge.booked import Booked, Form, total
 from adjust.judge.critical import job_level, normal_critical
+from adjust.judge.rises import Rise, rises
 from adjust.judge.traversed import Traversed, traversed
 from adjust.kinds import KINDS
 from adjust.network import HELD
@@ -73,15 +75,17 @@ not say."""
 
 
 def closures(what: Job | Solution, rule: Rule | None = None) -> tuple[Closure, ...]:
-    """All closures of a job: level loops and runs, then loop and link traverses, then triangles.
+    """All closures of a job: level loops and runs, height loops and runs, loop and link traverses, triangles.
 
     Of a solution the same, reduced at the adjusted places instead of the starting ones.
     """
     with one_thread():
         job = what if isinstance(what, Job) else what.job
-        found: list[tuple[Closure, where.Levels | where.Walked | None]] = [*_levels(job)]
-        if any(KINDS[block.kind].says in ("length", "pointings") for block in job.network.blocks):
+        found: list[tuple[Closure, where.Context]] = [*_levels(job)]
+        said = {KINDS[block.kind].says for block in job.network.blocks}
+        if said & {"length", "pointings"}:
             booked = Booked.of(what)
+            found += _heights(booked) if "zenith" in said else []
             computed = computed_traverses(booked)
             found += [(_traverse(booked, one), where.Walked(booked, one)) for one in computed]
             found += [(one, None) for one in _triangles(booked, [one.traverse for one in computed])]
@@ -139,6 +143,39 @@ def _height_variance(job: Job, run: Run, rows: list[int], variances: list[float]
     return math.fsum(variances)
 
 
+def _heights(booked: Booked) -> list[tuple[Closure, where.Heights]]:
+    """Loops and runs with rises by zenith angles in them."""
+    lines, by_angles = Lines.of(booked.network), rises(booked)
+    if not by_angles:
+        return []
+    legs = [Rise(int(i), int(j), Form(rise, {int(row): 1.0}), length, ()) for (i, j), row, rise, length in
+            zip(lines.ends, lines.row, lines.rise.tolist(), lines.walked[:, 0].tolist(), strict=True)]  # fmt: skip
+    legs += by_angles
+    # levelled lines without a length: all by their variances then, those of zenith angles without centring
+    by_length = lines.measure == runs.LENGTH or not len(lines.row)
+    size = [one.length if by_length else _plain_variance(booked, one.form) for one in legs]
+    ends = np.array([(one.start, one.end) for one in legs])
+    walks = height_walks(booked.network, ends, runs.whole_sizes(np.array(size), by_length), len(lines.row))
+    return [_height(booked, walk, [legs[k] for k in walk.lines]) for walk in walks]
+
+
+def _plain_variance(booked: Booked, form: Form) -> float:
+    return math.fsum(booked.variance[row] * by * by for row, by in form.rows.items())
+
+
+def _height(booked: Booked, walk: runs.Walk, legs: list[Rise]) -> tuple[Closure, where.Heights]:
+    """One loop or run: known height, rises, less the known height."""
+    signed = [1.0 if leg.start == at else -1.0 for leg, at in zip(legs, walk.stations, strict=False)]
+    first, last = walk.stations[0], walk.stations[-1]
+    ends = [] if walk.kind == HEIGHT_LOOP else [booked.coordinate(first, 2), booked.coordinate(last, 2) * -1.0]
+    w = total([*(leg.form * sign for leg, sign in zip(legs, signed, strict=True)), *ends])
+    sd = math.sqrt(booked.covariance([w])[0, 0])
+    length = math.fsum(leg.length for leg in legs)
+    one = Closure(walk.kind, walk.stations, tuple(sorted(w.rows)), None if math.isnan(length) else length, len(legs),
+                  {"height": w.value}, None, {"height": sd}, counted="lines")  # fmt: skip
+    return one, where.Heights(tuple(legs), tuple(signed))
+
+
 def _traverse(booked: Booked, one: Traversed) -> Closure:
     """The closure of a computed traverse."""
     run = one.traverse.run(booked.sights)
@@ -190,7 +227,7 @@ class _Judge:
     level: float
     """Significance of one test."""
 
-    def judged(self, one: Closure, context: where.Levels | where.Walked | None) -> Closure:
+    def judged(self, one: Closure, context: where.Context) -> Closure:
         """The closure with what is allowed, verdicts, and where to look."""
         allowable, text = self.rule(one) if self.rule else ({}, "")
         declared = tuple(allowable)

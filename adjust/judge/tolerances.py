@@ -5,11 +5,14 @@ from __future__ import annotations
 import math
 
 from adjust.book.job import Job
-from adjust.graph.runs import LOOP, RUN
+from adjust.graph.runs import HEIGHT_LOOP, HEIGHT_RUN, LOOP, RUN
 from adjust.graph.traverses import TRIANGLE
 from adjust.judge.closures import Closure, Rule
 
-SUBJECT = {(LOOP, "height"): "level loops", (RUN, "height"): "level runs", (TRIANGLE, "angle"): "triangles"}
+SUBJECT = {
+    (LOOP, "height"): "level loops", (RUN, "height"): "level runs", (TRIANGLE, "angle"): "triangles",
+    (HEIGHT_LOOP, "height"): "height loops", (HEIGHT_RUN, "height"): "height runs",
+}  # fmt: skip
 """What a limit is of, by the kind of closure and what misses; traverses are the rest."""
 TRAVERSE = {"angle": "traverse angles", "linear": "traverse position"}
 

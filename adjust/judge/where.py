@@ -6,6 +6,9 @@ what the other readings may add; what everything would fit equally well is not s
     levels     w is a whole number of metres, decimetres (feet, tenths): a staff misread; tolerance up to a twentieth of
                the step, else too much would fit by chance. w = 2 r of a line: its sign or its ends turned round.
                w = 2 (back - fore) of a row of a raw book: its sights in each other's column (once, at an end).
+    heights    by zenith angles: whole metres and decimetres likewise. An instrument or target height v with the
+               share f in w: w = f v counted twice, w = 2 f v its sign, and where none is booked, w = -f v of
+               another that is.
     angles     with t the angle booked, w = 2 t (modulo a circle): turned the other way, since t stands for -t;
                w = t or -t: counted twice, or dropped; w = 180 degrees.
                The whole w put into one angle closes the traverse: forwards and backwards it meets at that station.
@@ -30,6 +33,7 @@ import numpy as np
 from adjust.book.job import Job
 from adjust.judge.book_rows import changes
 from adjust.judge.booked import Booked, Form, total
+from adjust.judge.rises import Rise
 from adjust.judge.traversed import Traversed, polar
 from adjust.network import Array
 from adjust.units import LENGTHS, TURN, format_angle, small_length, wrap
@@ -43,6 +47,8 @@ TIMES_PLANE = 3.44
 """The same for a vector in the plane: sqrt(-2 ln(1/370))."""
 FINE = 20
 """A step must be this many tolerances, so that chance fits it once in ten."""
+SHARE = 1e-9
+"""A height that goes into a misclosure by less goes out of it: an instrument's in a walk through its station."""
 MOST = 3
 """Suggestions of a sort that are named."""
 NOT_MET = "not met"
@@ -56,11 +62,23 @@ class Levels:
 
 
 @dataclass(frozen=True)
+class Heights:
+    """What a loop or run with zenith angles is made of: its rises, and how each is walked (+1, or -1 from its end)."""
+
+    rises: tuple[Rise, ...]
+    signs: tuple[float, ...]
+
+
+@dataclass(frozen=True)
 class Walked:
     """What a traverse is made of."""
 
     booked: Booked
     traversed: Traversed
+
+
+Context = Levels | Heights | Walked | None
+"""What a closure is made of; None of triangles."""
 
 
 @dataclass(frozen=True)
@@ -71,7 +89,7 @@ class Hint:
     sentence: str
 
 
-def sentence(job: Job, one: Closure, context: Levels | Walked | None) -> str:
+def sentence(job: Job, one: Closure, context: Context) -> str:
     """Why something cannot be tested, and where to look if something is not met."""
     words = Words(job)
     why = context.traversed.why if isinstance(context, Walked) else ""
@@ -79,6 +97,8 @@ def sentence(job: Job, one: Closure, context: Levels | Walked | None) -> str:
     if one.verdict == NOT_MET:
         if isinstance(context, Levels):
             hints = _levels(words, one, context)
+        elif isinstance(context, Heights):
+            hints = _heights(words, one, context)
         elif isinstance(context, Walked):
             hints = _traverse(words, one, context)
         else:
@@ -138,12 +158,54 @@ def _levels(words: Words, one: Closure, levels: Levels) -> list[Hint]:
              f"column {within}")
         for place, size in changes(words.job, one.rows, levels.rises) if abs(w - size) <= tolerance < abs(size)
     ]  # fmt: skip
-    return [*_steps(words, w, tolerance, within), *_some(turned, len(levels.rises)),
+    cause = "a staff misread by that, on any of its lines"
+    return [*_steps(words, w, tolerance, cause), *_some(turned, len(levels.rises)),
             *_some(exchanged, len(levels.rises))]  # fmt: skip
 
 
-def _steps(words: Words, w: float, tolerance: float, within: str) -> list[Hint]:
+def _heights(words: Words, one: Closure, heights: Heights) -> list[Hint]:
+    """Whole steps, and heights of instrument or target that were counted twice, with the wrong sign, or not at all."""
+    w, tolerance = one.misclosure["height"], TIMES * one.sd["height"]
+    shares = _height_shares(heights)
+    booked = sorted({round(value, 4) for _, _, value in shares if value})
+    found, tried = [], 0
+    for (what, i, j), share, value in shares:
+        slips = [(-share * v, v, "was perhaps not applied") for v in booked]
+        if value:
+            slips = [(share * value, value, "was perhaps applied twice"),
+                     (2 * share * value, value, "may have the wrong sign")]  # fmt: skip
+        at = f"the {what} height at {words.name(i)}" + (f" seen from {words.name(j)}" if j >= 0 else "")
+        for slip, size, text in slips:
+            away, tried = abs(w - slip), tried + 1
+            if away <= tolerance and FINE * tolerance <= abs(slip):
+                found.append(Hint(away / (tolerance or 1.0), f"{at} {text}: that would leave {words.length(slip)} "
+                                  f"({words.length(size)} is booked, within {words.length(tolerance)})"))  # fmt: skip
+    cause = "a height of instrument or target, or a staff, wrong by that"
+    return [*_steps(words, w, tolerance, cause), *_some(found, tried)]
+
+
+_Height = tuple[str, int, int]
+"""instrument and its station, -1; or target, its station and the instrument's."""
+
+
+def _height_shares(heights: Heights) -> list[tuple[_Height, float, float]]:
+    """Heights with their shares in the misclosure and sizes: an instrument's through the set-up, a target's of a
+    line."""
+    shares: dict[tuple[_Height, int, float], float] = {}
+    for rise, sign in zip(heights.rises, heights.signs, strict=True):
+        for of in rise.sightings:
+            share = sign * of.share
+            for key, by in (
+                ((("instrument", of.at, -1), of.setup, of.instrument), share),
+                ((("target", of.to, of.at), of.setup, of.target), -share),
+            ):
+                shares[key] = shares.get(key, 0.0) + by
+    return [(what, share, value) for (what, _, value), share in shares.items() if abs(share) > SHARE]
+
+
+def _steps(words: Words, w: float, tolerance: float, cause: str) -> list[Hint]:
     """A whole number of units or tenths of the staff."""
+    within = f"(within {words.length(tolerance)})"
     unit = words.job.settings.units.length
     for step, what in ((LENGTHS[unit], {"m": "metre"}.get(unit, "foot")),
                        (LENGTHS[unit] / 10, {"m": "decimetre"}.get(unit, "tenth of a foot"))):  # fmt: skip
@@ -152,8 +214,7 @@ def _steps(words: Words, w: float, tolerance: float, within: str) -> list[Hint]:
         if 1 <= n <= 9 and away <= tolerance and FINE * tolerance <= step:
             many = {"metre": "metres", "decimetre": "decimetres", "foot": "feet"}.get(what, "tenths of a foot")
             size = f"a whole {what}" if n == 1 else f"{n} whole {many}"
-            return [Hint(away / tolerance, f"the misclosure is {size}: a staff misread by that, on any of its lines "
-                         f"{within}")]  # fmt: skip
+            return [Hint(away / tolerance, f"the misclosure is {size}: {cause} {within}")]
     return []
 
 
@@ -284,7 +345,7 @@ def _bisector(words: Words, walked: Walked) -> list[Hint]:
 def with_common(job: Job, closures: tuple[Closure, ...]) -> tuple[Closure, ...]:
     """The closures with the lines or legs common to all that fail, and in none that closes, added to those that do."""
     words, out = Words(job), list(closures)
-    for of, what in (("level", "line"), ("traverse", "leg")):
+    for of, what in (("level", "line"), ("height", "line"), ("traverse", "leg")):
         here = [k for k, one in enumerate(closures) if of in one.kind]
         failing = [k for k in here if closures[k].verdict == NOT_MET]
         if len(failing) < 2:

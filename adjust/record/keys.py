@@ -115,7 +115,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("ppm", "number?", "parts per million, in place of the weather"),
     ),
     "closure": _keys(
-        ("kind", "text", "level loop, level run, loop traverse, link traverse, triangle"),
+        ("kind", "text", "level loop, level run, height loop, height run, loop traverse, link traverse, triangle"),
         ("stations", "texts", "stations in the order walked; a loop ends with its first"),
         ("observations", "texts", "ids of all its readings"),
         ("length", "number?", "length walked"),
