@@ -343,7 +343,8 @@ def format_bearing(radians: float, notation: str, places: int = 1) -> str:
 def small_length(metres: float, unit: str) -> str:
     """A small length with its sign in millimetres, or in the job's feet: '+7.2 mm', '-0.024 ft'."""
     name, per_metre = SMALL_LENGTH[unit]
-    return f"{metres * per_metre:+.{1 if name == 'mm' else 3}f} {name}"
+    places = 1 if name == "mm" else 3
+    return f"{round(metres * per_metre, places) + 0.0:+.{places}f} {name}"  # no -0.0
 
 
 def wrap(radians: float) -> float:

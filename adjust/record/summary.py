@@ -15,13 +15,20 @@ from adjust.record.shown import Entry, Shown, count, plain, reading_in_words
 WIDTH = 100
 MOST_LINES = 40
 WORST = 3
+LONG_WAY = 8
 TABLE_ALL, TABLE_WORST, TABLE_LEAST = 12, 8, 4
 
 
 def summary_lines(record: Entry) -> list[str]:
     """The summary of a record as lines without colour, the caution last."""
     shown = Shown.of(record)
-    above = [*_head(record), *_overall(record, shown), *_suspects(record, shown), *_unchecked(record)]
+    above = [
+        *_head(record),
+        *_overall(record, shown),
+        *_closures(record),
+        *_suspects(record, shown),
+        *_unchecked(record),
+    ]
     above += [*_control(record), *_precision(record, shown), *_left_out(record), *_warnings(record)]
     caution = textwrap.wrap(CAUTION, WIDTH)
     room = MOST_LINES - len(above) - len(caution) - 4  # the table's header and pointer, and two blank lines
@@ -75,6 +82,23 @@ def _overall(record: Entry, shown: Shown) -> list[str]:
     lines = ["", *_readings_alone(record, shown)]
     lines += [line for part in parts[:WORST] for line in _overall_part(part, record["settings"], shown)]
     return [*lines, f"  and {count(len(parts) - WORST, 'more part')}: see the record"] if len(parts) > WORST else lines
+
+
+def _closures(record: Entry) -> list[str]:
+    """Whether things close, and the worst of those that do not; `check` tells every one."""
+    closures = record["closures"]
+    if not closures:
+        return []
+    bad = [one for one in closures if one["verdict"] == "not met"]
+    untested = sum(one["verdict"] == "cannot be tested" for one in closures)
+    text = f"Closures: {len(closures) - len(bad) - untested} met"
+    text += f", {untested} cannot be tested" if untested else ""
+    lines = [f"{text}." if not bad else f"{text}, {len(bad)} NOT MET:"]
+    for one in bad[:WORST]:
+        way = one["stations"]
+        shown = "-".join(way) if len(way) <= LONG_WAY else f"{way[0]}-({len(way) - 2} more)-{way[-1]}"
+        lines += _wrapped(plain(f"  {one['kind']} {shown}. {one['sentence']}", 190), indent="    ")
+    return [*lines, f"  and {len(bad) - WORST} more: see brasscap check"] if len(bad) > WORST else lines
 
 
 def _readings_alone(record: Entry, shown: Shown) -> list[str]:

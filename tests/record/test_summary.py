@@ -236,3 +236,22 @@ def test_control_verdicts_agree_in_number() -> None:
     record = plane_record()
     record["control"] = [{**record["control"][0], "part": part} for part in ("east", "north")]
     assert "Control compared (2 coordinates): 2 agree." in text_of(record)
+
+
+def closure(verdict: str, stations: list[str], sentence: str = "") -> dict[str, Any]:
+    return {"kind": "level loop", "stations": stations, "verdict": verdict, "sentence": sentence}
+
+
+def test_closures_are_counted_and_the_worst_told() -> None:
+    record = plane_record()
+    assert "Closures" not in text_of(record)
+    record["closures"] = [closure("met", ["A", "B", "A"])] * 3
+    assert "Closures: 3 met. " in text_of(record)
+    record["closures"].append(closure("cannot be tested", ["A", "C", "A"]))
+    assert "Closures: 3 met, 1 cannot be tested. " in text_of(record)
+    bad = closure("not met", [f"P{k}" for k in range(12)], "The misclosure is a decimetre.")
+    record["closures"] += [bad] * 5
+    text = text_of(record)
+    assert "Closures: 3 met, 1 cannot be tested, 5 NOT MET:" in text
+    assert text.count("level loop P0-(10 more)-P11. The misclosure is a decimetre.") == 3
+    assert "and 2 more: see brasscap check" in text
