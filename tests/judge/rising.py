@@ -95,7 +95,7 @@ def random_net(rng: np.random.Generator) -> Net:
         places, sorted(rng.choice(n, int(rng.integers(1, 4)), replace=False).tolist()), [], bool(rng.random() < 0.4)
     )
     pairs = {(int(rng.integers(0, k)), k) for k in range(1, n)}
-    pairs |= {tuple(sorted(rng.choice(n, 2, replace=False).tolist())) for _ in range(n)}  # type: ignore[misc] # two of them
+    pairs |= {tuple(sorted(rng.choice(n, 2, replace=False).tolist())) for _ in range(n)}
     stands = np.round(rng.uniform(1.4, 1.7, n), 4)
     for i, j in sorted(pairs):
         sort = rng.random()
