@@ -76,7 +76,7 @@ def _sections(judgement: Judgement) -> dict[str, Any]:
         "unchecked": unchecked_entries(judgement),
         "control": mark_entries(judgement),
         "variance_components": [],
-        "ledger": ledger_entries(solution.job),
+        "ledger": ledger_entries(judgement),
         "reductions": reduction_entries(solution.job),
         "left_out": [left_out(aside, with_reason=True) for aside in solution.job.left_out],
         "not_measured": [left_out(aside, with_reason=False) for aside in solution.job.planned],

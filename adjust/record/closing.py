@@ -5,10 +5,14 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
+import numpy as np
+
 from adjust.book.job import Job
+from adjust.book.reductions import LedgerLine
 from adjust.judge.assess import Judgement
 from adjust.judge.balances import Balance
 from adjust.judge.closures import Closure
+from adjust.kinds import KINDS
 from adjust.record.numbers import angle, coordinate, number
 
 _ANGLES = ("angle", "direction")
@@ -63,12 +67,30 @@ def _balance(names: tuple[str, ...], one: Balance) -> dict[str, Any]:
     }
 
 
-def ledger_entries(job: Job) -> list[dict[str, Any]]:
-    """Corrections of distances, one line each."""
+def ledger_entries(judgement: Judgement) -> list[dict[str, Any]]:
+    """Corrections of distances, one line each, and at the end of each distance its way to the plane."""
+    lines = [*judgement.solution.job.ledger, *_to_the_plane(judgement)]
+    order = {name: k for k, name in enumerate(dict.fromkeys(line.observation for line in lines))}
     return [
         {"observation": x.observation, "name": x.name, "amount": coordinate(x.amount), "how": x.how, "source": x.source}
-        for x in job.ledger
+        for x in sorted(lines, key=lambda line: order[line.observation])
     ]
+
+
+def _to_the_plane(judgement: Judgement) -> list[LedgerLine]:
+    """What brings each adjusted length from its surface to the plane of the coordinates, from the adjusted places."""
+    solution = judgement.solution
+    network, lines = solution.network, []
+    height = f"plane at {solution.design.frame.plane_height:.3f} m, adjusted places and heights"
+    for r, (b, i) in enumerate(zip(network.rows.block.tolist(), network.rows.row.tolist(), strict=True)):
+        block = network.blocks[b]
+        if KINDS[block.kind].says != "length" or not block.surface:
+            continue
+        start, end = solution.positions[block.stations[i]]
+        plane = float(np.hypot(*(end - start)[:2]))
+        amount = plane - float(solution.adjusted[r])
+        lines.append(LedgerLine(block.name(i), f"{block.surface} to the plane", amount, "here", height))
+    return lines
 
 
 def reduction_entries(job: Job) -> list[dict[str, Any]]:

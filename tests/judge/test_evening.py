@@ -66,8 +66,29 @@ def test_the_record_holds_what_check_says(name: str, count: int) -> None:
     assert len(record["closures"]) == count
     assert {one["verdict"] for one in record["closures"]} == {"met"}
     assert len(record["reductions"]) == len(job.reductions) > 100
-    assert len(record["ledger"]) == len(job.ledger)
+    own = [one for one in record["ledger"] if not one["name"].endswith("to the plane")]
+    assert len(own) == len(job.ledger)
     ids = {one["id"] for one in record["observations"]}
     assert {i for one in record["closures"] for i in one["observations"]} <= ids
     if name == "river-levels":
         assert {one["method"] for one in record["balances"]} == {"levels by length"} or record["balances"]
+
+
+def test_the_ledger_of_a_distance_leads_from_the_book_to_the_plane() -> None:
+    """Booked, corrected, adjusted, and on the plane between the marks: every step is a line or the residual."""
+    from adjust.record.build import build
+
+    job = adjust.read(NETWORKS / "spillway-pillars")
+    record = build(adjust.assess(adjust.solve(job)))
+    place = {one["station"]: (one["east"], one["north"]) for one in record["stations"]}
+    distances = [one for one in record["observations"] if one["kind"] == "distance"]
+    assert len(distances) == 108
+    for one in distances[::9]:
+        texts = [float(text) for text in one["booked"].split(" / ")]
+        amounts = [x["amount"] for x in record["ledger"] if x["observation"] == one["id"]]
+        assert [x["name"] for x in record["ledger"] if x["observation"] == one["id"]] == [
+            "reflector constant", "atmosphere", "slope to the plane"
+        ]  # fmt: skip
+        plane = sum(texts) / len(texts) + sum(amounts) + one["residual"]
+        (e0, n0), (e1, n1) = place[one["from"]], place[one["to"]]
+        assert abs(plane - ((e1 - e0) ** 2 + (n1 - n0) ** 2) ** 0.5) < 1e-7
