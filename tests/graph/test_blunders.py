@@ -87,17 +87,17 @@ def test_wrong_coordinates_of_one_of_four_weighted_marks_are_outvoted() -> None:
 
 
 def test_clean_random_networks_all_start() -> None:
-    """40 networks; the figures of larger samples come from tests/graph/starts_study.py."""
-    words = [verdict(made(seed, blunder=False)) for seed in range(40)]
+    """30 networks; the figures of larger samples come from tests/graph/starts_study.py."""
+    words = [verdict(made(seed, blunder=False)) for seed in range(30)]
     bad = [(seed, word) for seed, word in enumerate(words) if word.startswith("FAILS")]
     assert not bad
-    assert sum(word == "same" for word in words) > 25
+    assert sum(word == "same" for word in words) > 18
 
 
 def test_random_networks_with_one_gross_error_start_in_at_least_98_of_100() -> None:
-    words = [verdict(made(seed, blunder=True)) for seed in range(40)]
+    words = [verdict(made(seed, blunder=True)) for seed in range(30)]
     able = [word for word in words if word == "same" or word.startswith("FAILS")]
-    assert len(able) > 22
+    assert len(able) > 16
     assert sum(word == "same" for word in able) >= 0.98 * len(able), [w for w in able if w != "same"]
 
 
@@ -125,6 +125,6 @@ def test_traverses_start_from_their_readings(shape: str) -> None:
 @pytest.mark.parametrize("shape", ["closed", "link"])
 def test_traverses_with_one_gross_error_start_where_the_truth_leads(shape: str) -> None:
     """Three readings to spare. Where only one is, a gross error cannot be told from others and is not asked for."""
-    words = [verdict(traverse(seed, shape, blunder=True)) for seed in range(20)]
+    words = [verdict(traverse(seed, shape, blunder=True)) for seed in range(12)]
     assert not [word for word in words if word.startswith("FAILS")]
-    assert words.count("same") > 10
+    assert words.count("same") > 6

@@ -58,8 +58,8 @@ def test_figures_and_readings(place: Path, name: str, mode: str) -> None:
 
 @pytest.mark.parametrize(
     ("name", "mode"),
-    [("plane, held, centring", "given"), ("plane, held, centring", "from-residuals"),
-     ("plane, weighted", "from-residuals"), ("two halves on one common mark", "from-residuals")],
+    [("plane, held, centring", "given"), ("plane, weighted", "from-residuals"),
+     ("two halves on one common mark", "from-residuals")],
 )  # fmt: skip
 def test_whole_jobs_and_marks(place: Path, name: str, mode: str) -> None:
     """Overall tests, marks and exit 1; rare ones need the full study for their controls."""
