@@ -213,6 +213,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("station", "text", "name"),
         ("role", "text", "new, held, weighted or check, in the plane where it has one"),
         ("role_height", "text", "role of the height"),
+        ("change_point", "flag", "true: a change point of a level book, private to its line"),
         ("east", "number?", "east"),
         ("north", "number?", "north"),
         ("height", "number?", "height"),

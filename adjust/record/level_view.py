@@ -16,6 +16,7 @@ from statistics import NormalDist
 import numpy as np
 
 from adjust.record.labels import Labels
+from adjust.record.lasting import between_marks
 from adjust.record.net import (
     HEIGHT_KINDS,
     ROLES,
@@ -251,6 +252,7 @@ def draw_bar(sheet: Sheet, at: Point, half: float, reach: float, gid: str | None
 
 def draw_levels(sheet: Sheet, record: Entry, layout: Layout) -> LevelView:
     """Draw the schematic into the layout's frame and say what it shows; at least one station has a height."""
+    whole, record = record, between_marks(record)
     s, frame, writing = _Schematic(sheet, record, layout), layout.frame, Writing.of(record)
     size = (7.5 if s.size == 1 else 5.5) if layout.name != SCREEN else 6.5 if len(s.stations) <= 40 else 5.0
     labels = Labels(sheet, (frame[0] + s.axis_mm, frame[1] + 7, frame[2] - 1, frame[3] - 1), size)
@@ -266,6 +268,8 @@ def draw_levels(sheet: Sheet, record: Entry, layout: Layout) -> LevelView:
     view.suspects = "suspects" in s.wanted.layers
     if without := len(record["stations"]) - len(s.stations):
         view.notes.append(f"Not drawn: {count(without, 'station')} without a height.")
+    if hidden := len(whole["stations"]) - len(record["stations"]):
+        view.notes.append(f"Not drawn: {count(hidden, 'change point')} between the marks.")
     for one in s.stations:
         draw_symbol(sheet, s.symbol(one), s.at[one["station"]], s.size, mark_id("station", one["station"]))
         labels.keep_off(s.at[one["station"]], 1.8 * s.size)
@@ -276,7 +280,7 @@ def draw_levels(sheet: Sheet, record: Entry, layout: Layout) -> LevelView:
     names = [one["station"] for one in named] if "names" in s.wanted.layers else []
     lost = labels.place([(s.at[name], writing.name(name, 14), mark_id("label", name)) for name in names])
     if every > 1:
-        view.notes.append(f"Named: control, and every {every}th station along the lines as room allows.")
+        view.notes.append(f"Named: control, and one station of {every} along the lines as room allows.")
     elif lost:
         view.notes.append(f"{count(lost, 'name')} left out for want of room; see stations.csv.")
     return view

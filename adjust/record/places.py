@@ -28,7 +28,12 @@ def station_entries(judgement: Judgement) -> list[dict[str, Any]]:
             continue
         role, role_height = _roles(solution, i)
         entries.append(
-            {"station": solution.names[i], "role": role, "role_height": role_height}
+            {
+                "station": solution.names[i],
+                "role": role,
+                "role_height": role_height,
+                "change_point": solution.names[i] in solution.job.private,
+            }
             | {key: coordinate(x) for key, x in zip(("east", "north", "height"), solution.positions[i], strict=True)}
             | {key: number(x) for key, x in zip(("sd_east", "sd_north", "sd_height"), sd[i], strict=True)}
             | {"covariance": [[number(x) for x in row] for row in cov[i].tolist()]}

@@ -33,7 +33,7 @@ def station(name: str, plane: tuple[float, float] | None, height: float | None =
     see, snn, sen = (se * se, sn * sn, rho * se * sn) if plane else (None, None, None)
     shh = None if sh is None else sh * sh
     return {
-        "station": name, "role": role, "role_height": role_height,
+        "station": name, "role": role, "role_height": role_height, "change_point": False,
         "east": plane[0] if plane else None, "north": plane[1] if plane else None, "height": height,
         "sd_east": se if plane else None, "sd_north": sn if plane else None, "sd_height": sh,
         "covariance": [[see, sen, None], [sen, snn, None], [None, None, shh]],
