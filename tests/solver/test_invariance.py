@@ -30,7 +30,7 @@ KINDS = {
     "both": ("distances", "directions", "levelled_lengths"),
 }
 FIGURE_M, SHARE = 1e-9, 1e-6
-few = settings(derandomize=True, max_examples=40, deadline=None, database=None)
+few = settings(derandomize=True, max_examples=25, deadline=None, database=None)
 jobs = st.tuples(st.integers(0, 10**6), st.sampled_from(sorted(KINDS)), st.sampled_from(["held", "weighted", "free"]))
 Job = tuple[int, str, str]
 
