@@ -283,7 +283,7 @@ def test_nothing_in_a_cell_is_an_internal_error(kind: str, tmp_path: Path, capsy
     columns = range(len(row.split(",")) + 1)
     codes = set()
     for k, odd in enumerate(ODD):
-        for column in columns[k % 3 :: 3]:  # every text in every third column: a third of the time
+        for column in columns[k % 9 :: 9]:  # every text in every ninth column, or the tests would take minutes
             cells = [*row.split(","), ""]
             cells[column] = f'"{odd}"'
             more = "" if "sd" in header else ",sd" if kind in TABLES else ",note"
