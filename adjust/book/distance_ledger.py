@@ -11,6 +11,7 @@ instrument has already made; with a reflector, weather, constant or scale in the
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -45,8 +46,12 @@ class Corrected:
     lines: list[LedgerLine] = field(default_factory=list)
 
 
-def correct(settings: Settings, cells: Cells, names: list[str], booked: Array, use: list[int]) -> Corrected:
-    """Correct the distances ``booked`` (n,) of the rows ``use``; ``names`` are those of the readings."""
+Named = Callable[[], list[str]]
+"""Gives the names of the readings of all rows."""
+
+
+def correct(settings: Settings, cells: Cells, named: Named, booked: Array, use: list[int]) -> Corrected:
+    """Correct the distances ``booked`` (n,) of the rows ``use``."""
     out = Corrected(booked)
     if not _anything(settings, cells):
         return out
@@ -59,6 +64,7 @@ def correct(settings: Settings, cells: Cells, names: list[str], booked: Array, u
             f"{', '.join(NAMES)} to the [[book]] block of {cells.rows.file}"
         )  # fmt: skip
         return out
+    names = named()
     for key, name in NAMES.items():
         amount = np.zeros(len(booked))
         for i in use:
@@ -186,9 +192,11 @@ class _Givers:
         return (only[0], self.settings.meters[only[0]]) if len(only) == 1 else ("", Meter())
 
 
-def ledger_in_order(corrected: Corrected, lay: Lay, names: list[str], use: list[int]) -> list[LedgerLine]:
+def ledger_in_order(corrected: Corrected, lay: Lay, named: Named, use: list[int]) -> list[LedgerLine]:
     """The lines of a table distance by distance, with what brought slopes to level at the end."""
-    lines = list(corrected.lines)
+    if not corrected.lines and not lay.corrections:
+        return []
+    lines, names = list(corrected.lines), named()
     for name, amount in lay.corrections:
         lines += [LedgerLine(names[i], name, float(amount[i]), HERE, "the zenith angle of the row") for i in use]
     order = {names[i]: i for i in use}

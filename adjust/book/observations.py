@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable
+from functools import partial
 
 import numpy as np
 
@@ -60,9 +61,9 @@ class Observations:
         kind = sheet.kind
         names = sheet.names or tuple(cells.names(column, use, self.booked) for column in sheet.stations)
         use = self._distinct(cells, sheet, names, use)
-        ids = self._row_names(cells, sheet)
-        measured = values(use)
-        corrected = correct(self.settings, cells, ids, measured, use) if kind.says == "length" else Corrected(measured)
+        named = partial(self._row_names, cells, sheet)  # most tables have no ledger and need no names
+        raw = values(use)
+        corrected = correct(self.settings, cells, named, raw, use) if kind.says == "length" else Corrected(raw)
         lay = lay_of(cells, kind, corrected.values, use, self.settings.frame.refraction.value)
         sd, precision = stated_sds(self.settings, cells, sheet, lay, held, use)
         group = self._groups(cells, kind, names, use)
@@ -74,7 +75,7 @@ class Observations:
                     self.marks.number(column[i])
         if self.faults.all:
             return
-        self.ledger += ledger_in_order(corrected, lay, ids, use)
+        self.ledger += ledger_in_order(corrected, lay, named, use)
         chosen = np.array(use, dtype=np.int64)
         setting = self.settings.frame.refraction if kind.group and kind.group.setting else None
         self.blocks.append(
