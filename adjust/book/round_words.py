@@ -55,7 +55,7 @@ def _means(station: Station, instrument: dict[str, float]) -> list[Reduction]:
         for target, mean in found.means.items():
             mine = [p for p in station.pointings if p.to == target and (p.set, target) in found.residuals]
             residuals = [found.residuals[p.set, target] for p in mine]
-            pairs = math.fsum(p.lengths if key == "distance" else p.pairs for p in mine)
+            pairs = math.fsum(p.behind(key) for p in mine)
             sd = instrument.get(key)
             values = {
                 "mean": (mean - first) % (2 * math.pi) if key == "direction" else mean,

@@ -44,8 +44,10 @@ class Pointing:
     to: str
     rows: tuple[int, ...]
     lines: tuple[int, ...]
-    faces: tuple[int, ...]
-    """Number of readings in face 1 and in face 2."""
+    circle: tuple[int, int]
+    """Readings of the horizontal circle in face 1 and in face 2."""
+    vertical: tuple[int, int]
+    """Likewise of the vertical circle, which may be blank in a face where the other is not."""
     direction: float | None = None
     two_c: float | None = None
     zenith: float | None = None
@@ -56,12 +58,17 @@ class Pointing:
     distance_spread: float | None = None
     closure: float | None = None
     """Last minus first reading of the target in one face of the set: the horizon closure."""
-    one_face: bool = False
 
     @property
-    def pairs(self) -> float:
-        """Readings in both faces; a single face counts half."""
-        low, high = min(self.faces), max(self.faces)
+    def one_face(self) -> bool:
+        """Whether a circle was read in one face only."""
+        return any(max(counts) and not min(counts) for counts in (self.circle, self.vertical))
+
+    def behind(self, key: str) -> float:
+        """Readings behind a direction, zenith angle or distance: pairs of both faces, of which one face is a half."""
+        if key == "distance":
+            return float(self.lengths)
+        low, high = sorted(self.circle if key == "direction" else self.vertical)
         return float(low) if low else high / 2
 
 
@@ -183,8 +190,7 @@ class _Table:
         h1, h2, v1, v2 = (_given(x) for x in (*h, *v))
         lengths = _given([*d[0], *d[1]])
         lines = tuple(self.cells.rows.lines[i] for i in rows)
-        counts = (len(h1) or len(v1), len(h2) or len(v2)) if (h1 or h2 or v1 or v2) else (1, 1)
-        found = Pointing(at, in_set, to, tuple(rows), lines, counts, one_face=not all(counts))
+        found = Pointing(at, in_set, to, tuple(rows), lines, (len(h1), len(h2)), (len(v1), len(v2)))
         if h1 and h2:
             one, two = faces.circle_mean(h1), faces.circle_mean(h2)
             found = replace(found, direction=faces.direction(one, two), two_c=faces.two_c(one, two))
@@ -219,11 +225,10 @@ def _with_missing_faces(pointings: list[Pointing]) -> list[Pointing]:
     i = [p.index for p in pointings if p.index is not None]
     out = []
     for p in pointings:
-        first = p.faces[0] > 0
-        if p.one_face and p.two_c is None and p.direction is not None and c:
-            p = replace(p, direction=(p.direction - (1 if first else -1) * sum(c) / len(c) / 2) % TURN)
-        if p.one_face and p.index is None and p.zenith is not None and i:
-            p = replace(p, zenith=p.zenith - (1 if first else -1) * sum(i) / len(i))
+        if p.two_c is None and p.direction is not None and c:
+            p = replace(p, direction=(p.direction - (1 if p.circle[0] else -1) * sum(c) / len(c) / 2) % TURN)
+        if p.index is None and p.zenith is not None and i:
+            p = replace(p, zenith=p.zenith - (1 if p.vertical[0] else -1) * sum(i) / len(i))
         out.append(p)
     return out
 
@@ -261,7 +266,7 @@ def _instrument_sds(observations: Observations, cells: Cells, station: Station) 
 
 def _leave_out(observations: Observations, cells: Cells, station: Station) -> None:
     """List what the declared limits reject."""
-    of = {(p.set, p.to): p for p in station.pointings}
+    of, ids = {(p.set, p.to): p for p in station.pointings}, cells.text("id")
     for key, found in station.out.items():
         for one in found:
             if one.sure:
@@ -269,7 +274,7 @@ def _leave_out(observations: Observations, cells: Cells, station: Station) -> No
                 what = SHEETS[key].what
                 limit = observations.settings.rejection[key].text
                 reason = f"outside the limit of {limit} declared in [rejection]"
-                name = f"{cells.rows.file}:{p.lines[0]} {what}"
+                name = f"{ids[p.rows[0]] or f'{cells.rows.file}:{p.lines[0]}'} {what}"
                 observations.left_out.append(
                     Aside(name, cells.rows.file, p.lines[0], SHEETS[key].kind.name, reason)
                 )  # fmt: skip
@@ -285,7 +290,7 @@ def _take(observations: Observations, cells: Cells, sheet: Sheet, key: str, stat
             x = getattr(p, key)
             if x is not None and (p.set, p.to) not in rejected:
                 values[p.rows[0]] = x
-                count[p.rows[0]] = p.lengths if key == "distance" else p.pairs
+                count[p.rows[0]] = p.behind(key)
     use = np.flatnonzero(~np.isnan(values)).tolist()
     if not use:
         return

@@ -119,6 +119,30 @@ def test_a_missing_face_is_corrected_said_and_counts_half(tmp_path: Path) -> Non
     assert any("read in one face only" in r.sentence for r in job.reductions)
 
 
+def test_a_zenith_circle_missing_in_one_face_alone_is_corrected_too(tmp_path: Path) -> None:
+    """The horizontal circle was read in both faces, the vertical one in one: the index of the others is taken off."""
+    book = Book(np.random.default_rng(16), pointing=0.0, index=40 * SEC, reopen=False)
+    row = next(row for row in book.rows if row["set"] == "2" and row["to"] == "P4" and row["face"] == "2")
+    row["zenith_circle"] = ""
+    job = read(tmp_path, book.csv())
+    zenith, direction = block(job, "zenith_angle"), block(job, "direction")
+    i = [job.network.stations.names[s] for s in zenith.stations[:, 1]].index("P4", 6)
+    assert abs(zenith.values[i, 0] - book.zenith[3]) < 0.2 * SEC  # uncorrected it would be 40 seconds
+    close(zenith.sd[i, 0], math.sqrt(2) * SEC, atol=1e-12)
+    close(direction.sd[i, 0], SEC, atol=1e-12)
+    assert [r.of for r in job.reductions if "read in one face only" in r.sentence] == ["S set 2 to P4"]
+
+
+def test_what_is_rejected_is_called_by_its_id(tmp_path: Path) -> None:
+    book = Book(np.random.default_rng(10), sets=3, reopen=False)
+    for k, row in enumerate(book.rows):
+        row["id"] = f"shot-{k}"
+    k = next(k for k, row in enumerate(book.rows) if row["set"] == "2" and row["to"] == "P4" and row["face"] == "1")
+    moved(book, k, "horizontal_circle", 60 * SEC)
+    job = read(tmp_path, book.csv(), '[rejection]\ndirection = "6 sec"\n' + TABLE)
+    assert [a.observation for a in job.left_out] == [f"shot-{k} direction"]
+
+
 def test_limits_declared_beforehand_leave_out_what_lies_outside(tmp_path: Path) -> None:
     book = Book(np.random.default_rng(10), sets=3, reopen=False)
     k = next(k for k, row in enumerate(book.rows) if row["set"] == "2" and row["to"] == "P4" and row["face"] == "1")
