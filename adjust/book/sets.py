@@ -11,7 +11,7 @@ from __future__ import annotations
 
 import math
 from collections import defaultdict
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from statistics import median
 
@@ -34,15 +34,21 @@ class SetMeans:
     """Standard deviation of one value in one set, from the spread; None without redundancy."""
 
 
+def difference(turning: bool) -> Callable[[float], float]:
+    """Differences of directions are taken on the circle, those of zenith angles and distances as they are."""
+    return wrap if turning else float
+
+
 def set_means(values: Mapping[Key, float], turning: bool) -> SetMeans:
     """Means of ``values`` over the sets; ``turning``: every set has an orientation of its own (directions)."""
     sets, targets = list(dict.fromkeys(s for s, _ in values)), list(dict.fromkeys(t for _, t in values))
+    less = difference(turning)
     o, m = _robust(values, sets, turning)
     for _ in range(SWEEPS if turning else 1):
-        m = _means(values, o, m)
+        m = _means(values, o, m, less)
         if turning:
-            o = {s: o[s] + _mean([wrap(v - m[t] - o[s]) for (k, t), v in values.items() if k == s]) for s in sets}
-    residuals = {key: wrap(v - m[key[1]] - o[key[0]]) for key, v in values.items()}
+            o = {s: o[s] + _mean([less(v - m[t] - o[s]) for (k, t), v in values.items() if k == s]) for s in sets}
+    residuals = {key: less(v - m[key[1]] - o[key[0]]) for key, v in values.items()}
     f = len(values) - len(targets) - (len(sets) - 1 if turning else 0)
     sd = math.sqrt(math.fsum(e * e for e in residuals.values()) / f) if f > 0 else None
     return SetMeans(m, o, residuals, sd)
@@ -50,6 +56,7 @@ def set_means(values: Mapping[Key, float], turning: bool) -> SetMeans:
 
 def _robust(values: Mapping[Key, float], sets: list[str], turning: bool) -> tuple[dict[str, float], dict[str, float]]:
     """Orientations and means by medians, the first set turned by nothing; each set is joined by common targets."""
+    less = difference(turning)
     o: dict[str, float] = {}
     by_set: dict[str, dict[str, float]] = defaultdict(dict)
     for (s, t), v in values.items():
@@ -58,17 +65,19 @@ def _robust(values: Mapping[Key, float], sets: list[str], turning: bool) -> tupl
     for s in sets:
         turns = [v - median(found[t]) for t, v in by_set[s].items() if found[t]]
         base = turns[0] if turns else 0.0
-        o[s] = base + median([wrap(x - base) for x in turns]) if turning and turns else 0.0
+        o[s] = base + median([less(x - base) for x in turns]) if turning and turns else 0.0
         for t, v in by_set[s].items():
             first = found[t][0] if found[t] else v - o[s]
-            found[t].append(first + wrap(v - o[s] - first))
+            found[t].append(first + less(v - o[s] - first))
     return o, {t: median(all_) for t, all_ in found.items()}
 
 
-def _means(values: Mapping[Key, float], o: Mapping[str, float], near: Mapping[str, float]) -> dict[str, float]:
+def _means(
+    values: Mapping[Key, float], o: Mapping[str, float], near: Mapping[str, float], less: Callable[[float], float]
+) -> dict[str, float]:
     by_target: dict[str, list[float]] = defaultdict(list)
     for (s, t), v in values.items():
-        by_target[t].append(wrap(v - o[s] - near[t]))
+        by_target[t].append(less(v - o[s] - near[t]))
     return {t: near[t] + _mean(off) for t, off in by_target.items()}
 
 
@@ -109,7 +118,8 @@ def against_others(values: Mapping[Key, float], key: Key, turning: bool) -> Outs
     others = [k for k in values if k[1] == t and k != key]
     if not others:
         return None
+    less = difference(turning)
     o, _ = _robust(values, list(dict.fromkeys(k for k, _ in values)), turning)
     base = values[others[0]] - o[others[0][0]]
-    mean = base + _mean([wrap(values[k] - o[k[0]] - base) for k in others])
-    return Outside(key, wrap(values[key] - o[s] - mean), len(others) > 1)
+    mean = base + _mean([less(values[k] - o[k[0]] - base) for k in others])
+    return Outside(key, less(values[key] - o[s] - mean), len(others) > 1)

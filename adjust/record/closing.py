@@ -9,7 +9,7 @@ import numpy as np
 
 from adjust.book.job import Job
 from adjust.book.reductions import LedgerLine
-from adjust.judge.assess import Judgement
+from adjust.judge.assess import CLOSURES_MOST, Judgement
 from adjust.judge.balances import Balance
 from adjust.judge.closures import Closure
 from adjust.kinds import KINDS
@@ -81,6 +81,8 @@ def _to_the_plane(judgement: Judgement) -> list[LedgerLine]:
     """What brings each adjusted length from its surface to the plane of the coordinates, from the adjusted places."""
     solution = judgement.solution
     network, lines = solution.network, []
+    if len(network.rows) > CLOSURES_MOST:  # the record of such a job is cut, as its observations are
+        return []
     height = f"plane at {solution.design.frame.plane_height:.3f} m, adjusted places and heights"
     for r, (b, i) in enumerate(zip(network.rows.block.tolist(), network.rows.row.tolist(), strict=True)):
         block = network.blocks[b]

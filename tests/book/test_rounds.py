@@ -161,6 +161,20 @@ def test_limits_declared_beforehand_leave_out_what_lies_outside(tmp_path: Path) 
     assert {r.verdict for r in closures} == {"met"}
 
 
+@pytest.mark.parametrize("by", [2 * math.pi, 10.0])
+def test_a_distance_misread_by_metres_is_no_angle(tmp_path: Path, by: float) -> None:
+    """Distances were once compared on the circle, where 6.283 m is nothing and 10 m are 2.6 m the other way."""
+    book = Book(np.random.default_rng(17), sets=3, reopen=False)
+    for row in book.rows:
+        if row["set"] == "2" and row["to"] == "P4":
+            row["slope_distance"] = f"{float(row['slope_distance']) + by:.4f}"
+    job = read(tmp_path, book.csv(), '[rejection]\ndistance = "6 mm"\n' + TABLE)
+    assert [a.kind for a in job.left_out] == ["distance"]
+    close(float(mean_of(job, "mean of distances", "S to P4")["mean"] or 0.0), book.slope[3], atol=0.003)
+    unlimited = mean_of(read(tmp_path, book.csv()), "mean of distances", "S to P4")
+    close(float(unlimited["spread"] or 0.0), by, atol=0.01)
+
+
 def test_of_two_sets_none_is_left_out(tmp_path: Path) -> None:
     book = Book(np.random.default_rng(11), sets=2, reopen=False)
     moved(book, 3, "horizontal_circle", 60 * SEC)
