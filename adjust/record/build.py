@@ -127,7 +127,7 @@ def _settings(solution: Solution) -> dict[str, Any]:
         "rejection": {key: limit.text for key, limit in settings.rejection.items()},
         "weather": _weather(settings.weather),
         "reflectors": {name: coordinate(constant) for name, constant in settings.reflectors.items()},
-        "meters": {
+        "distance_meters": {
             name: {"constant": coordinate(m.constant), "scale_ppm": number(m.scale_ppm),
                    "wavelength_um": number(m.wavelength_um),
                    "zero_weather": _weather(m.zero_weather) if m.zero_weather else None}

@@ -93,7 +93,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("rejection", "object any", "limits of rounds as declared"),
         ("weather", "object weather", "weather of the job"),
         ("reflectors", "object any", "constants of the reflectors by name, metres"),
-        ("meters", "object any", "constant, scale, wavelength and weather of zero correction of distance meters"),
+        ("distance_meters", "object any", "their constant, scale, wavelength and weather of zero correction"),
         ("books", "list book", "tables in their order"),
         ("drawing", "object drawing", "drawing as declared"),
     ),
