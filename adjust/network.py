@@ -7,6 +7,7 @@ through all blocks in the order of the book.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from functools import cached_property
 
@@ -104,9 +105,15 @@ class Block:
     a column takes no part; None: all stand in the line of the row."""
     booked_join: str = " - "
     """Between these texts: a level's set-up is back - fore, a pointing is the readings of both faces."""
+    labels: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+    """(m) names by what they are of: instrument, reflector, day, crew; '' where not told, no key where none is."""
 
     def __len__(self) -> int:
         return len(self.line)
+
+    def label(self, of: str, i: int) -> str:
+        """Name of the instrument, reflector, day or crew of row ``i``; '' where not told."""
+        return self.labels[of][i] if of in self.labels else ""
 
     def take(self, rows: Ints) -> Block:
         """The block with ``rows`` alone, any number of times, for a closer look at their geometry."""

@@ -101,6 +101,7 @@ class Observations:
                 setup=np.array([setup[i] for i in use], dtype=np.int64),
                 eccentric=self._eccentric(kind, [precision[i] for i in use]),
                 walked=_walked(cells, sheet, use),
+                labels=self._labels(cells, kind, [precision[i] for i in use], use),
             )
         )
 
@@ -226,6 +227,20 @@ class Observations:
         out = np.array([sizes[label] for label in labels], dtype=float).reshape(len(labels), 3)
         return out if out.any() else None
 
+    def _labels(self, cells: Cells, kind: Kind, precision: list[str], use: list[int]) -> dict[str, tuple[str, ...]]:
+        """Names of instrument, reflector, day and crew: the row's own, its table's, or the only one."""
+        table, only = cells.table, self.settings.reflectors if len(self.settings.reflectors) == 1 else {}
+        model = ["" if label == "sd" else label for label in precision]
+        found = {
+            "instrument": [own or table.instrument or m for own, m in zip(_of(cells, "instrument", use), model,
+                                                                          strict=True)],
+            "day": _of(cells, "day", use), "crew": _of(cells, "crew", use),
+        }  # fmt: skip
+        if kind.says == "length":
+            found["reflector"] = [own or table.reflector or next(iter(only), "")
+                                  for own in _of(cells, "reflector", use)]  # fmt: skip
+        return {of: tuple(names) for of, names in found.items() if any(names)}
+
     def _groups(self, cells: Cells, kind: Kind, names: tuple[list[str], ...], use: list[int]) -> Ints:
         """Number of each row's group unknown; groups are told apart by file and the kind's columns."""
         out = np.full(len(cells), -1, dtype=np.int64)
@@ -265,6 +280,11 @@ class Observations:
             x for x in (stations, f"set {name}" if name else "", "" if stations else f"of {cells.rows.file}") if x
         )
         return Group(kind.group.what, of, kind.group.shared, name, "turn" in kind.group.absorbs)
+
+
+def _of(cells: Cells, column: str, use: list[int]) -> list[str]:
+    texts = cells.text(column)
+    return [texts[i] for i in use]
 
 
 def _offsets(cells: Cells, kind: Kind, use: list[int]) -> Array | None:

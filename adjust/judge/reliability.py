@@ -22,6 +22,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from adjust.network import Array, Bools, Ints
+from adjust.solver.cofactors import Cofactors
 from adjust.solver.elements import Whitened
 from adjust.solver.solution import Solution
 
@@ -66,14 +67,17 @@ class Reliability:
 
 def reliability(solution: Solution) -> Reliability:
     """The one-reading figures of a solution."""
-    count = len(solution.residuals)
-    out = {name: np.full(count, np.nan) for name in ("redundancy", "checked_share", "pv", "m", "sd_adjusted")}
-    for w in solution.whitened:
-        blocks = solution.cofactors.blocks(w.batch.columns)
+    return figures(solution.whitened, solution.cofactors, solution.design.held)
+
+
+def figures(whitened: list[Whitened], cofactors: Cofactors, held: Bools) -> Reliability:
+    """The same for elements at rest, whose l~ are the residuals with changed sign; ``held`` (R,) are conditions."""
+    out = {name: np.full(len(held), np.nan) for name in ("redundancy", "checked_share", "pv", "m", "sd_adjusted")}
+    for w in whitened:
+        blocks = cofactors.blocks(w.batch.columns)
         hat = w.reduced @ blocks @ w.reduced.transpose(0, 2, 1) + w.q @ w.q.transpose(0, 2, 1)
         for name, values in _element(w, hat).items():
             out[name][w.batch.rows] = values
-    held = solution.design.held
     for values in out.values():
         values[held] = np.nan
     share = np.clip(out["checked_share"], 0.0, 1.0)

@@ -18,6 +18,7 @@ or a itself over the distance to the nearest station, if that is more (sights al
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 from scipy.sparse.linalg import splu
@@ -29,7 +30,9 @@ from adjust.solver.datum import PartDatum
 from adjust.solver.design import Design, State, Unknowns
 from adjust.solver.elements import Batch, Whitened, whiten
 from adjust.solver.engine import Pattern
-from adjust.solver.solution import Solution
+
+if TYPE_CHECKING:
+    from adjust.solver.solution import Solution
 
 DENSE_MOST = 300
 """Unknowns up to which all singular vectors are formed."""

@@ -14,6 +14,7 @@ from adjust.solver.cofactors import Cofactors
 from adjust.solver.datum import PartDatum
 from adjust.solver.design import Design
 from adjust.solver.elements import Whitened
+from adjust.solver.settle import Setting
 
 
 @dataclass(frozen=True)
@@ -47,9 +48,8 @@ class Solution:
     """An adjusted network."""
 
     job: Job
-    network: Network
-    """The network as adjusted (without control that a free datum sets aside)."""
-    design: Design
+    setting: Setting
+    """What the iteration was made of: network, design, datum and starting values."""
     positions: Array
     """(n, 3) adjusted east, north, height, metres; NaN where nothing was observed."""
     groups: Array
@@ -65,12 +65,29 @@ class Solution:
     parts: tuple[PartResult, ...]
     total: PartResult
     iterations: int
-    assumed: tuple[str, ...]
-    """Sentences on what the program chose where nothing was given: origin, north, scale, height."""
-    doubtful: tuple[tuple[tuple[int, int], float], ...] = ()
-    """((block, row), computed minus observed in metres or radians) of readings that starting routes disagreed about."""
     free: Solution | None = None
     """The free stage before this one: the readings alone, fitted to the control; None where it adds nothing."""
+
+    @property
+    def network(self) -> Network:
+        """The network as adjusted (without control that a free datum sets aside)."""
+        return self.setting.network
+
+    @property
+    def design(self) -> Design:
+        """The pattern of its observation equations."""
+        return self.setting.design
+
+    @property
+    def assumed(self) -> tuple[str, ...]:
+        """Sentences on what the program chose where nothing was given: origin, north, scale, height."""
+        return self.setting.start.assumed
+
+    @property
+    def doubtful(self) -> tuple[tuple[tuple[int, int], float], ...]:
+        """((block, row), computed minus observed in metres or radians) of readings that starting routes disagreed
+        about."""
+        return self.setting.start.doubtful
 
     @property
     def names(self) -> tuple[str, ...]:

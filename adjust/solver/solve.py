@@ -159,9 +159,8 @@ def solution_at(job: Job, ready: Setting, last: Linear, cofactors: Cofactors, it
         square_sum=float(squares.sum()),
     )
     return Solution(
-        job, ready.network, design, last.state.positions, last.state.groups, last.whitened, cofactors,
+        job, ready, last.state.positions, last.state.groups, last.whitened, cofactors,
         last.numbers.coefficients, residuals, design.observed + residuals, parts, total, iterations,
-        ready.start.assumed, ready.start.doubtful,
     )  # fmt: skip
 
 

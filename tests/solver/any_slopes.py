@@ -66,7 +66,17 @@ def random_slopes(rng: np.random.Generator) -> Space:
     value = model(kind, ends, above_all, truth, 0.13) - np.where(group >= 0, zero[group], 0.0)
     value = value + rng.normal(0, [SDS[k] for k in kind])
     rows.value = np.where(kind == "direction", value % (2 * np.pi), value).tolist()
-    return Space([f"P{i}" for i in range(n)], truth, truth.copy(), known, rows, sets, (0.13, None))
+    return Space(
+        [f"P{i}" for i in range(n)],
+        truth,
+        truth.copy(),
+        known,
+        rows,
+        sets,
+        (0.13, None),
+        truth.copy(),
+        np.zeros((n, 3)),
+    )
 
 
 def with_blunder(space: Space, rng: np.random.Generator) -> None:
