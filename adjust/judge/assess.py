@@ -22,6 +22,7 @@ from adjust.solver.threads import one_thread
 
 if TYPE_CHECKING:
     from adjust.judge.balances import Balance
+    from adjust.judge.blunders import Found
     from adjust.judge.closures import Closure
     from adjust.judge.unchecked import Unchecked
 
@@ -91,6 +92,20 @@ class Judgement:
     def all_checked(self) -> bool:
         """Whether every reading is checked by others."""
         return bool((self.reliability.tested | self.solution.design.held).all())
+
+    @cached_property
+    def blunders(self) -> Found:
+        """The readings that are in error at the level of the whole job, and the network without them."""
+        from adjust.judge.blunders import find_blunders
+
+        with one_thread():
+            return find_blunders(self.solution, self.reliability, self.tests)
+
+    def confusable(self, row: int) -> dict[int, float]:
+        """Rows that no test here can tell from a suspect, with the correlation of the statistics."""
+        from adjust.judge.separable import confusable
+
+        return confusable(self.blunders, row)
 
     @property
     def blame(self) -> Ints:
