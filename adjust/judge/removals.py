@@ -84,7 +84,7 @@ def _removal(
             _scaled(float(alone.statistic[rows[0]]), alone, levels),
             levels.limit(levels.job, alone.degrees),
         )
-    moved = _movement(model, before) - _movement(model, after)
+    moved = _movement(model, after) - _movement(model, before)
     return Removal(action, rows, min(back) if gone and back else -1, statistic, limit, fit(one, levels),
                    fit(other, levels), largest_shift(solution, moved))  # fmt: skip
 

@@ -24,6 +24,7 @@ import adjust
 from adjust.book.job import Job
 from adjust.errors import BrasscapError
 from adjust.judge.assess import Judgement
+from adjust.judge.separable import confusable
 from tests.networks import random_job
 
 SEED = 20261206
@@ -86,7 +87,7 @@ def named(judgement: Judgement, rows: list[int]) -> str:
     found = list(judgement.blunders.rows)
     if set(found) == set(rows):
         return "found" if rows else "quiet"
-    groups = {r: {r, *judgement.confusable(r)} for r in found}
+    groups = {r: {r, *confusable(judgement.blunders, r)} for r in found}
     if rows and all(any(r in groups[f] for f in found) for r in rows) and len(found) <= len(rows):
         return "in the groups"
     if judgement.blunders.too_many:
