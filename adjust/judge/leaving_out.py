@@ -114,7 +114,7 @@ class Model:
         b = covariance @ (columns.T @ self.misclosure)
         pv = self.pv + columns @ b
         pv[chosen] = 0.0
-        m = self.m - np.einsum("rk,kj,rj->r", columns, covariance, columns)
+        m = self.m - ((columns @ covariance) * columns).sum(axis=1)
         tested = m >= UNCHECKED_BELOW * self.p
         tested[chosen] = False
         square_sum = max(float(-(self.misclosure @ pv)), 0.0)
@@ -122,12 +122,15 @@ class Model:
 
     def independent(self, rows: Sequence[int]) -> list[int]:
         """Those of the rows, in their order, whose errors the readings kept can still tell apart."""
+        k = self.columns(rows)[list(rows)]
         kept: list[int] = []
-        for r in rows:
-            m = self.without(kept).m[r] if kept else self.m[r]
-            if m >= UNCHECKED_BELOW * self.p[r]:
-                kept.append(int(r))
-        return kept
+        for i, r in enumerate(rows):
+            left = k[i, i]
+            if kept:
+                left -= k[i, kept] @ np.linalg.solve(k[np.ix_(kept, kept)], k[kept, i])
+            if left >= UNCHECKED_BELOW * self.p[r]:
+                kept.append(i)
+        return [int(rows[i]) for i in kept]
 
     def correlation(self, row: int, others: Sequence[int] = ()) -> Array:
         """(R,) correlation of a row's statistic with those of all rows, ``others`` being left out; 0 where none."""
