@@ -16,7 +16,7 @@ is taken, k the larger of the limits of one reading and of the job: a set has to
 
 Gross errors bend the geometry at which all this is linear. So the network is adjusted again without the set, all
 readings are linearised there, and the steps go on from the set until it stays as it is. Where more than a tenth of the
-readings would have to go, blunders are no explanation and nothing is set apart.
+readings (above 500: fifty and one in a thousand) would have to go, blunders are no explanation and nothing is set apart.
 """
 
 from __future__ import annotations
@@ -30,7 +30,7 @@ import numpy as np
 from adjust.book.settings import Tests
 from adjust.errors import NotConverged, Unsolvable
 from adjust.judge import critical
-from adjust.judge.leaving_out import Model
+from adjust.judge.leaving_out import Model, Without
 from adjust.judge.reliability import Reliability
 from adjust.network import Array
 from adjust.solver.design import State
@@ -44,9 +44,10 @@ GONE = 1e7
 rest by less than 1e-9 m."""
 ROUNDS = 6
 """Adjustments without the set; in the study of tests/judge/blunders_study.py the set stayed after two or three."""
-STEPS = 200
-LEAST_MOST, SHARE_MOST = 3, 10
-"""At most one reading in ten is set apart, but three in any job."""
+STEPS = 10
+"""Steps for each reading that could be set apart, before the search ends as it is."""
+LEAST_MOST, SHARE_MOST, MANY, MORE = 3, 10, 50, 1000
+"""At most one reading in ten is set apart, and at most fifty and one in a thousand, but three in any job."""
 NEARLY_L1, REDESCENDING = 6, 8
 WELSCH = 3.0
 """c of the weights: readings beyond three of their standard deviations lose most of their weight."""
@@ -172,7 +173,7 @@ def adjusted_without(solution: Solution, rows: Sequence[int]) -> Outcome | None:
 def improved(model: Model, levels: Levels, begin: Sequence[int]) -> Path | None:
     """The steps from a set until none is left to make; None where too many readings would have to go."""
     sets = [tuple(begin)]
-    for _ in range(STEPS):
+    for _ in range(STEPS * _most(model)):
         after = _step(model, levels, list(sets[-1]))
         if after is None or any(set(after) == set(one) for one in sets):
             break
@@ -182,18 +183,24 @@ def improved(model: Model, levels: Levels, begin: Sequence[int]) -> Path | None:
     return Path(model, tuple(sets))
 
 
+def _most(model: Model) -> int:
+    """How many readings can be set apart."""
+    tested = int((model.m > 0).sum())
+    return max(LEAST_MOST, min(tested // SHARE_MOST, MANY + tested // MORE))
+
+
 def _too_many(model: Model, count: int) -> bool:
-    return count > max(LEAST_MOST, int((model.m > 0).sum()) // SHARE_MOST) or count >= model.degrees
+    return count > _most(model) or count >= model.degrees
 
 
 def _step(model: Model, levels: Levels, rows: list[int]) -> list[int] | None:
     """The set after one step: a reading back, one exchanged, or one more; None where nothing is to be done."""
     now = model.without(rows)
     if rows:
-        least, size = _weakest(model, levels, rows)
+        least, size = _weakest(now, levels)
         if size <= levels.limit(levels.job, now.degrees + 1):
             return [r for r in rows if r != least]
-        exchanged = _exchanged(model, rows)
+        exchanged = _exchanged(now)
         if exchanged:
             return exchanged
     r = now.largest()
@@ -203,23 +210,20 @@ def _step(model: Model, levels: Levels, rows: list[int]) -> list[int] | None:
     return [*rows, r] if size > levels.limit(levels.job, now.degrees) else None
 
 
-def _weakest(model: Model, levels: Levels, rows: list[int]) -> tuple[int, float]:
+def _weakest(now: Without, levels: Levels) -> tuple[int, float]:
     """The row of a set with the smallest statistic when it is tried back alone, and that statistic, scaled."""
-    now = model.without(rows)
     k = int(np.argmin(np.abs(now.tried_back)))
     w = float(now.tried_back[k])
     scale = 1.0 if levels.given else (now.square_sum + w * w) / (now.degrees + 1)
-    return rows[k], abs(w) / math.sqrt(max(scale, 1e-300))
+    return now.rows[k], abs(w) / math.sqrt(max(scale, 1e-300))
 
 
-def _exchanged(model: Model, rows: list[int]) -> list[int] | None:
+def _exchanged(now: Without) -> list[int] | None:
     """The set with a row exchanged for one of a larger statistic without the others; None where there is none."""
-    for r in rows:
-        others = [s for s in rows if s != r]
-        without = model.without(others)
-        better = without.largest()
-        if better not in (r, -1) and abs(without.statistic[better]) > abs(without.statistic[r]) * (1 + 1e-9):
-            return [*others, better]
+    for k, r in enumerate(now.rows):
+        better = now.better_than(k)
+        if better != r:
+            return [*(s for s in now.rows if s != r), better]
     return None
 
 
@@ -259,8 +263,7 @@ def set_apart(solution: Solution, model: Model) -> list[int]:
         factor = _factor(np.maximum(np.minimum(weight, 1.0), NEVER_BELOW), sd, centred)
         z = _residuals(iteration.reweighted(factor), here) / own
     found = np.flatnonzero((np.abs(z) > SET_APART) & (model.m > 0))
-    most = max(LEAST_MOST, int((model.m > 0).sum()) // SHARE_MOST)
-    return [int(r) for r in found[np.argsort(-np.abs(z[found]), kind="stable")][:most]]
+    return [int(r) for r in found[np.argsort(-np.abs(z[found]), kind="stable")][: _most(model)]]
 
 
 def _factor(weight: Array, sd: Array, centred: Array) -> Array:

@@ -42,6 +42,8 @@ class Without:
     """(R,) rows that are kept and whose statistic can be formed."""
     square_sum: float
     degrees: int
+    gains: Array
+    """(R, k) M E_S K^-1."""
 
     def scale(self, given: bool) -> float:
         """Variance factor by which statistics are scaled: 1 where the standard deviations are trusted."""
@@ -59,8 +61,20 @@ class Without:
 
     def largest(self) -> int:
         """The row kept with the largest statistic; -1 where none can be formed."""
-        sizes = np.abs(self.statistic)
-        return -1 if np.isnan(sizes).all() else int(np.nanargmax(sizes))
+        return _largest(self.statistic)
+
+    def better_than(self, k: int) -> int:
+        """The row with the largest statistic where the k-th row left out is back in: another one beats it there.
+
+        With g its column of ``gains`` and c = (K^-1)_kk, putting it back makes Pv to Pv - g b_k / c and m to m + g^2/c.
+        """
+        g, c = self.gains[:, k], self.covariance[k, k]
+        m = self.m + g**2 / c
+        back = self.tested.copy()
+        back[self.rows[k]] = True
+        statistic = (self.pv - g * (self.blunder[k] / c)) / np.sqrt(np.where(back, m, np.nan))
+        best = _largest(statistic)
+        return best if abs(statistic[best]) > abs(statistic[self.rows[k]]) * (1 + 1e-9) else self.rows[k]
 
 
 @dataclass(frozen=True)
@@ -114,11 +128,13 @@ class Model:
         b = covariance @ (columns.T @ self.misclosure)
         pv = self.pv + columns @ b
         pv[chosen] = 0.0
-        m = self.m - ((columns @ covariance) * columns).sum(axis=1)
+        gains = columns @ covariance
+        m = self.m - (gains * columns).sum(axis=1)
         tested = m >= UNCHECKED_BELOW * self.p
         tested[chosen] = False
         square_sum = max(float(-(self.misclosure @ pv)), 0.0)
-        return Without(tuple(chosen), b, covariance, pv, m, tested, square_sum, self.degrees - len(chosen))
+        return Without(tuple(chosen), b, covariance, pv, m, tested, square_sum, self.degrees - len(chosen),
+                       gains)  # fmt: skip
 
     def independent(self, rows: Sequence[int]) -> list[int]:
         """Those of the rows, in their order, whose errors the readings kept can still tell apart."""
@@ -154,6 +170,11 @@ class Model:
             z = np.linalg.solve(w.factor, errors[w.batch.rows][:, :, None])
             np.add.at(load, w.batch.columns, (w.reduced.transpose(0, 2, 1) @ z)[:, :, 0])
         return np.asarray(self.influence.cofactors.times(load[:-1, None])[:, 0])
+
+
+def _largest(statistic: Array) -> int:
+    sizes = np.abs(statistic)
+    return -1 if np.isnan(sizes).all() else int(np.nanargmax(sizes))
 
 
 def _weights(known: Reliability) -> tuple[Array, Array]:
