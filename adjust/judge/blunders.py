@@ -16,7 +16,7 @@ is taken, k the larger of the limits of one reading and of the job: a set has to
 
 Gross errors bend the geometry at which all this is linear. So the network is adjusted again without the set, all
 readings are linearised there, and the steps go on from the set until it stays as it is. Where more than a tenth of the
-readings (above 500: fifty and one in a thousand) would have to go, blunders are no explanation and nothing is set apart.
+readings (above 500: fifty and one in a thousand) would have to go, blunders are no explanation: nothing is set apart.
 """
 
 from __future__ import annotations
