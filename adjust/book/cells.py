@@ -9,7 +9,7 @@ import numpy as np
 from adjust.book import schema
 from adjust.book.csv_rows import Rows
 from adjust.book.faults import Faults
-from adjust.book.settings import Table
+from adjust.book.settings import Table, Units
 from adjust.book.weather import AIR_TYPES, parse_air
 from adjust.errors import nearest
 from adjust.fields import Field
@@ -100,7 +100,7 @@ class Cells:
         out = np.full(len(self), np.nan)
         if not self.has(name) or not self.known_units:
             return out
-        parse = self._parser(self.fields[name])
+        parse = cell_parser(self.fields[name], self.table.units)
         texts = self.text(name)
         for i in use:
             if not texts[i]:
@@ -110,20 +110,6 @@ class Cells:
             except BadValue as bad:
                 self.fault(i, name, texts[i], str(bad))
         return out
-
-    def _parser(self, field: Field) -> Callable[[str], float]:
-        units = self.table.units
-        if field.type == "length":
-            return lambda text: _bounded(parse_length(text, units.length, units.decimal), field)
-        if field.type == "circle":
-            return lambda text: parse_circle(text, units.angle, units.decimal)
-        if field.type == "bearing":
-            return lambda text: parse_bearing(text, units.angle, units.decimal)
-        if field.type in AIR_TYPES:
-            return lambda text: parse_air(field.type, text, units.decimal)
-        if field.type in _ANGULAR:
-            return lambda text: _ANGULAR[field.type](text, units.angle, units.decimal)
-        return lambda text: _bounded(parse_number(text, units.decimal), field)
 
     def sds(self, name: str, dimension: str, use: Sequence[int]) -> Array:
         """Standard deviations (n,) in metres or radians of the rows ``use``; NaN where blank or faulty."""
@@ -138,6 +124,21 @@ class Cells:
                 except BadValue as bad:
                     self.fault(i, name, texts[i], str(bad))
         return out
+
+
+def cell_parser(field: Field, units: Units) -> Callable[[str], float]:
+    """What turns a cell of a column into SI units; it raises BadValue."""
+    if field.type == "length":
+        return lambda text: _bounded(parse_length(text, units.length, units.decimal), field)
+    if field.type == "circle":
+        return lambda text: parse_circle(text, units.angle, units.decimal)
+    if field.type == "bearing":
+        return lambda text: parse_bearing(text, units.angle, units.decimal)
+    if field.type in AIR_TYPES:
+        return lambda text: parse_air(field.type, text, units.decimal)
+    if field.type in _ANGULAR:
+        return lambda text: _ANGULAR[field.type](text, units.angle, units.decimal)
+    return lambda text: _bounded(parse_number(text, units.decimal), field)
 
 
 def _bounded(value: float, field: Field) -> float:

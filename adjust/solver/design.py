@@ -130,7 +130,7 @@ class Design:
         """Unknown of every slot (R, e), -1 where there is none."""
         rows, found = self.network.rows, []
         for b, block in enumerate(self.network.blocks):
-            per_row = self._block_columns(block)
+            per_row = self.block_columns(block)
             here = rows.block == b
             found.append(per_row[rows.row[here]])
         width = max((f.shape[1] for f in found), default=0) + 1
@@ -161,7 +161,7 @@ class Design:
             out[here, : per_row.shape[1]] = per_row[rows.row[here]]
         return out
 
-    def _block_columns(self, block: Block) -> Ints:
+    def block_columns(self, block: Block) -> Ints:
         """(m, slots) unknowns in the order of sights, ends, components."""
         kind = KINDS[block.kind]
         columns = [np.empty((len(block), 0), dtype=np.int64)]
@@ -219,6 +219,10 @@ class Design:
         l = self.observed - computed
         l[self.wraps] -= TURN * np.round(l[self.wraps] / TURN)
         return Linearised(coefficients, np.where(self.local >= 0, by_group, 0.0), l, computed, self.local, by_vector)
+
+    def values(self, block: Block, positions: Array, groups: Array) -> Array:
+        """Computed values (m, p) of a block at positions (n, 3) without NaN; angles as they come, not on one circle."""
+        return self._block(block, positions, groups)[0]
 
     def partials(self, block: Block, positions: Array, groups: Array) -> Array:
         """Partials (m, p, slots) of a block's values by its slots at positions (n, 3) without NaN."""

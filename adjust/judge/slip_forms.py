@@ -1,0 +1,47 @@
+"""What the slips are asked with and what they answer."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from adjust.book.raw_texts import RawText
+from adjust.network import Block
+from adjust.solver.design import State
+from adjust.solver.solution import Solution
+
+
+@dataclass(frozen=True)
+class Slipped:
+    """One suspect reading, and the network without the blunders."""
+
+    solution: Solution
+    state: State
+    """Where the network lies without the blunders."""
+    block: Block
+    i: int
+    raws: tuple[RawText, ...]
+    kind: str
+    noun: str
+    """'distance', 'rise', 'angle', ... as a surveyor calls the reading."""
+    wraps: bool
+    blunder: float
+    sd: float
+
+    @property
+    def stations(self) -> tuple[str, ...]:
+        """Names of its stations."""
+        return tuple(self.solution.names[int(s)] for s in self.block.stations[self.i])
+
+
+@dataclass(frozen=True)
+class Form:
+    """One form that a slip can take in a reading."""
+
+    would: str
+    """What the book would read; '' where the slip is none of the text."""
+    change: float
+    """How much larger the reading is as booked, metres or radians."""
+    told: str
+    """The form in words, where the sentence of the slip asks for them."""
+    line: int
+    booked: str = ""
