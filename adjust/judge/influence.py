@@ -59,6 +59,14 @@ class Influence:
         out[self.held] = 0.0
         return out
 
+    def weights(self, errors: Array) -> Array:
+        """E_j'P E_j (p,) of every column alone: what would be left in E_j'M E_j if no unknown took anything up."""
+        errors = np.where(self.held[:, None], 0.0, errors)
+        return np.asarray(sum(
+            ((_whitened(w, errors[w.batch.rows]) ** 2).sum(axis=(0, 1)) for w in self.whitened),
+            np.zeros(errors.shape[1]),
+        ))  # fmt: skip
+
     def columns(self, rows: Ints) -> Array:
         """Columns of M (R, k) of the rows (k,)."""
         errors = np.zeros((len(self.held), len(rows)))
