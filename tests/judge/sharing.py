@@ -110,6 +110,12 @@ def readings(rng: np.random.Generator, truth: Array) -> list[Reading]:
     return out
 
 
+def booked(seed: int) -> list[Reading]:
+    """The readings of a job without errors, in the order of their numbers."""
+    rng = np.random.default_rng([20261214, seed])
+    return readings(rng, places(rng))
+
+
 def job(folder: Path, seed: int, *wrong: Wrong, noise: float = 1.0, blunders: dict[int, float] | None = None,
         known: int = 3, head: str = "", applied: str = "", without: tuple[str, ...] = ()) -> Path:  # fmt: skip
     """Write a job; ``wrong`` are its effects, ``blunders`` errors of single readings by their number, ``known`` the
