@@ -104,6 +104,39 @@ def test_with_others_in_it_is_that_of_an_adjustment_with_all(tmp_path: Path) -> 
     close(problem.square_sum - stage.square_sum, fall, atol=1e-5 * max(fall, 1.0))
 
 
+def test_from_residuals_it_is_student_s_t_of_an_adjustment_with_it(tmp_path: Path) -> None:
+    """s^2 from the square sum with the effect in, over one degree less."""
+    p = linear(0, ("distances", "directions", "angles"), "held", False, tmp_path)
+    problem = problem_of(p.judgement)
+    r = problem.degrees
+    tests = Tests(variance_factor="from-residuals")
+    for c, f in enumerate(search(problem, tests)):
+        b, Q = unknowns(p, column(p, problem, c))
+        w = float(b[0] / np.sqrt(Q[0, 0]))
+        assert f.verdict == "none seen"
+        assert f.statistic is not None
+        close(f.statistic, w / math.sqrt((problem.square_sum - w * w) / (r - 1)), atol=1e-5 * abs(w))
+
+
+def test_the_limit_from_residuals_is_pope_s_tau(tmp_path: Path) -> None:
+    """Of errors drawn anew a third are called significant by tau at this level, and just these by t."""
+    p = linear(0, ("distances", "directions", "angles"), "held", False, tmp_path)
+    problem, r = problem_of(p.judgement), problem_of(p.judgement).degrees
+    tests, limit = Tests(variance_factor="from-residuals", outlier=0.3), tau_critical(0.3, r)
+    assert limit is not None
+    rng, seen = np.random.default_rng([20261217, 1]), set()
+    for _ in range(40):
+        drawn = problem.with_errors(rng.normal(size=len(p.l)) * np.sqrt(np.diagonal(p.C)))
+        stage = Stage.of(drawn, [])
+        for c, e in enumerate(drawn.effects):
+            g, m = stage.effect(e, float(drawn.m[c]))
+            tau = g / math.sqrt(m) / math.sqrt(drawn.square_sum / r)
+            above = finding(stage, c, tests).above
+            assert above == (abs(tau) > limit)
+            seen.add(above)
+    assert seen == {True, False}
+
+
 def test_the_comparison_sees_a_column_that_is_one_per_cent_off(tmp_path: Path) -> None:
     p = linear(0, ("distances", "directions", "angles"), "held", False, tmp_path)
     problem = problem_of(p.judgement)
