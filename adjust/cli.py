@@ -52,6 +52,8 @@ def parser() -> argparse.ArgumentParser:
         command.add_argument("--verbose", action="store_true", help="also print the time of each phase")
     adjust.add_argument("--json", action="store_true", help="print the record and write nothing unless --out is given")
     adjust.add_argument("--out", metavar="DIR", help="folder of the record (default JOB/record)")
+    adjust.add_argument("--without-suspects", action="store_true",
+                        help="leave out the suspects at the level of the whole job, each with its reason")  # fmt: skip
     return top
 
 
@@ -148,6 +150,10 @@ def _adjust(given: argparse.Namespace) -> int:
     solution = solve(job)
     clock.phase("adjust")
     judgement = assess(solution)
+    if given.without_suspects:
+        from adjust.judge.set_aside import without_suspects
+
+        judgement = assess(solve(without_suspects(judgement)))
     clock.phase("test")
     _deliver(given, judgement, out)
     clock.phase("write")

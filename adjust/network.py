@@ -127,9 +127,29 @@ class Block:
             constant=cut(self.constant), eccentric=None, walked=cut(self.walked),
         )  # fmt: skip
 
+    def kept(self, rows: Ints) -> Block:
+        """The block with ``rows`` alone, everything they carry included."""
+
+        def cut(values: Array | None) -> Array | None:
+            return None if values is None else values[rows]
+
+        return replace(
+            self, stations=self.stations[rows], values=self.values[rows], sd=self.sd[rows], group=self.group[rows],
+            held=self.held[rows], line=self.line[rows], ids=_taken(self.ids, rows),
+            precision=_taken(self.precision, rows), setup=self.setup[rows] if len(self.setup) else self.setup,
+            eccentric=cut(self.eccentric), above=cut(self.above), offset=cut(self.offset), constant=cut(self.constant),
+            walked=cut(self.walked), corrections=tuple((name, amount[rows]) for name, amount in self.corrections),
+            booked_at=None if self.booked_at is None else self.booked_at[rows],
+            labels={of: _taken(names, rows) for of, names in self.labels.items()},
+        )  # fmt: skip
+
     def name(self, i: int) -> str:
         """Identification of row ``i``: the given one, else FILE:LINE."""
         return (self.ids[i] if self.ids else "") or f"{self.file}:{self.line[i]}"
+
+
+def _taken(names: tuple[str, ...], rows: Ints) -> tuple[str, ...]:
+    return tuple(names[i] for i in rows.tolist()) if names else names
 
 
 @dataclass(frozen=True)
@@ -155,6 +175,17 @@ class Network:
     def rows(self) -> Rows:
         """The numbering of the scalar rows."""
         return Rows.of(self.blocks)
+
+
+def renumbered(clusters: tuple[Cluster, ...], kept: Bools) -> tuple[Cluster, ...]:
+    """Clusters on the numbers that the kept scalar rows have once the others are gone."""
+    number = np.cumsum(kept) - 1
+    out = []
+    for cluster in clusters:
+        here = kept[cluster.rows]
+        if here.any():
+            out.append(Cluster(number[cluster.rows[here]], cluster.covariance[np.ix_(here, here)]))
+    return tuple(out)
 
 
 @dataclass(frozen=True)

@@ -50,6 +50,8 @@ class Job:
     private: frozenset[str] = frozenset()
     """Names of change points that belong to one line of a level book."""
     tolerance: Tolerance = field(default_factory=Tolerance)
+    without_suspects: bool = False
+    """Whether readings that were found in error were left out because it was asked for."""
 
     def booked(self, file: str, columns: tuple[str, ...] = ()) -> dict[int, tuple[str, ...]]:
         """The value cells of a table of observations by line, read again from the file.

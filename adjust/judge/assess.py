@@ -22,8 +22,11 @@ from adjust.solver.threads import one_thread
 
 if TYPE_CHECKING:
     from adjust.judge.balances import Balance
+    from adjust.judge.blunders import Found
     from adjust.judge.closures import Closure
     from adjust.judge.effect_words import Systematic
+    from adjust.judge.separable import Group
+    from adjust.judge.suspects import Suspect
     from adjust.judge.unchecked import Unchecked
 
 CLOSURES_MOST = 20_000
@@ -93,11 +96,42 @@ class Judgement:
         """Whether every reading is checked by others."""
         return bool((self.reliability.tested | self.solution.design.held).all())
 
+    @cached_property
+    def blunders(self) -> Found:
+        """The readings that are in error at the level of the whole job, and the network without them."""
+        from adjust.judge.blunders import find_blunders
+
+        with one_thread():
+            return find_blunders(self.solution, self.reliability, self.tests)
+
+    def confusable(self, suspect: Suspect) -> list[tuple[int, float, float]]:
+        """Rows that no test here can tell from a suspect: row, correlation of the statistics, and the chance that the
+        wrong one of the two is blamed for an error of this size."""
+        from adjust.judge.separable import confusable, wrong_of_two
+
+        found = confusable(self.blunders, suspect.row)
+        return [(r, rho, wrong_of_two(rho, abs(suspect.statistic))) for r, rho in found.items()]
+
     @property
     def blame(self) -> Ints:
-        """Suspects of either level in order of blame, the largest statistic first."""
-        found = np.flatnonzero(self.suspect | self.suspect_of_job)
-        return found[np.argsort(-np.abs(self.statistic[found]), kind="stable")]
+        """Rows of the suspects of either level in order of blame."""
+        return np.array([s.row for s in self.suspects], dtype=np.int64)
+
+    @cached_property
+    def suspects(self) -> tuple[Suspect, ...]:
+        """The blunders found together, then what still fails the test of one reading without them."""
+        from adjust.judge.suspects import suspects
+
+        return suspects(self)
+
+    @cached_property
+    def separability(self) -> tuple[Group, ...]:
+        """Groups of readings that no test can tell apart; none looked for in large jobs."""
+        from adjust.judge.influence import Influence
+        from adjust.judge.separable import groups
+
+        with one_thread():
+            return groups(Influence.of(self.solution), self.reliability, self.shift or np.nan)
 
     @property
     def expected_by_chance(self) -> float:
@@ -167,6 +201,7 @@ class Judgement:
         return (
             any(test.verdict == NOT_MET for test in (*self.overall, *self.overall_free))
             or bool(self.suspect_of_job.any())
+            or any(one.at_job_level for one in self.suspects)
             or any(mark.verdict == "disagrees" for mark in self.control)
             or any(one.verdicts[key] == NOT_MET for one in self.closures for key in one.declared)
             or any(one.verdict == NOT_MET for one in self.solution.job.reductions)

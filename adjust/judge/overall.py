@@ -30,8 +30,13 @@ def overall_tests(solution: Solution, tests: Tests) -> tuple[OverallTest, ...]:
 
 
 def _overall(part: PartResult, tests: Tests) -> OverallTest:
-    interval = variance_factor_interval(tests.significance, part.degrees_of_freedom)
-    if interval is None or tests.variance_factor != "given" or part.variance_factor is None:
+    return overall_of(part.square_sum, part.degrees_of_freedom, tests)
+
+
+def overall_of(square_sum: float, degrees: int, tests: Tests) -> OverallTest:
+    """The test of a weighted square sum with so many degrees of freedom."""
+    interval = variance_factor_interval(tests.significance, degrees)
+    if interval is None or tests.variance_factor != "given":
         return OverallTest(interval, UNTESTED, False)
-    verdict = NOT_MET if part.variance_factor > interval[1] else MET
-    return OverallTest(interval, verdict, part.variance_factor < interval[0])
+    factor = square_sum / degrees
+    return OverallTest(interval, NOT_MET if factor > interval[1] else MET, factor < interval[0])

@@ -28,6 +28,7 @@ from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
 from adjust.record.paper import drawing_warnings
 from adjust.record.places import line_entries, mark_entries, parameter_entries, side_shot_entries, station_entries
+from adjust.record.search import overall_entry, search_entries
 from adjust.solver.defects import thin_of
 from adjust.solver.solution import PartResult, Solution
 from adjust.solver.threads import one_thread
@@ -72,6 +73,7 @@ def _sections(judgement: Judgement) -> dict[str, Any]:
         "closures": closure_entries(judgement),
         "balances": balance_entries(judgement),
         "suspects": suspect_entries(judgement),
+        **search_entries(judgement),
         "expected_by_chance": number(judgement.expected_by_chance),
         "unchecked": unchecked_entries(judgement),
         "control": mark_entries(judgement),
@@ -122,6 +124,7 @@ def _settings(solution: Solution) -> dict[str, Any]:
         "instruments": {
             name: {key: model.text for key, model in keys.items()} for name, keys in settings.instruments.items()
         },
+        "without_suspects": solution.job.without_suspects,
         "loops": METHOD,
         "tolerance": tolerance_settings(solution.job),
         "rejection": {key: limit.text for key, limit in settings.rejection.items()},
@@ -214,11 +217,7 @@ def _figures(solution: Solution, one: PartResult, parts: tuple[PartResult, ...],
         "degrees_of_freedom": one.degrees_of_freedom,
         "weighted_square_sum": number(one.square_sum),
         "variance_factor": number(one.variance_factor),
-        "overall_test": {
-            "interval": [number(x) for x in test.interval] if test.interval else None,
-            "verdict": test.verdict,
-            "better_than_stated": test.better_than_stated,
-        },
+        "overall_test": overall_entry(test),
         "datum": "; ".join(dict.fromkeys(_datum_words(solution, p) for p in parts)),
     }
 

@@ -97,19 +97,21 @@ def _effect(judgement: Judgement, r: int) -> dict[str, Any] | None:
 
 def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """Suspects in order of blame."""
-    rel = judgement.reliability
-    root, ids = rel.root * np.sqrt(judgement.scale), judgement.ids
+    ids = judgement.ids
     return [
         {
-            "observation": ids[r],
-            "estimated_blunder": number(rel.blunder[r]),
-            "sd": number(root[r]),
-            "statistic": number(judgement.statistic[r]),
-            "at_job_level": bool(judgement.suspect_of_job[r]),
+            "observation": ids[s.row],
+            "estimated_blunder": number(s.blunder),
+            "sd": number(s.sd),
+            "statistic": number(s.statistic),
+            "at_job_level": s.at_job_level,
             "likely_causes": [],
-            "cannot_be_told_from": [],
+            "cannot_be_told_from": [
+                {"observation": ids[r], "correlation": number(rho), "chance_of_wrong": number(wrong)}
+                for r, rho, wrong in judgement.confusable(s)
+            ],
         }
-        for r in judgement.blame.tolist()
+        for s in judgement.suspects
     ]
 
 

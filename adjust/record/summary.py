@@ -6,6 +6,7 @@ table of stations gives way first.
 
 from __future__ import annotations
 
+import math
 import textwrap
 from collections.abc import Iterable, Sequence
 
@@ -147,7 +148,30 @@ def _suspects(record: Entry, shown: Shown) -> list[str]:
     lines = ["", f"SUSPECT: {count(len(suspects), 'reading')}{grave}" + (f" ({chance})." if chance else ".")]
     for one in suspects[:WORST]:
         lines += _suspect(one, by_id.get(one["observation"]), shown)
-    return lines + _more(len(suspects) - WORST, "suspect")
+    return [*lines, *_more(len(suspects) - WORST, "suspect"), *_without(record, shown)]
+
+
+def _without(record: Entry, shown: Shown) -> list[str]:
+    """What the adjustment would be without the blunders."""
+    one = record["without_suspects"]
+    if not one:
+        return []
+    n, every = len(one["observations"]), len(record["suspects"])
+    which = "it" if n == every == 1 else "them" if n == every else f"the {count(n, 'worst', 'worst')}"
+    factor, moved = one["variance_factor"], _most_moved(one["shifts"], shown)
+    text = f"  Without {which} (--without-suspects)"
+    text += f" the variance factor would be {shown.mark(f'{factor:.2f}')}" if factor is not None else ""
+    text += {"met": ": met", "not met": ": NOT MET"}.get(one["overall_test"]["verdict"], "")
+    return _wrapped(f"{text}; {moved}." if moved else f"{text}.")
+
+
+def _most_moved(shifts: Sequence[Entry], shown: Shown) -> str:
+    """'P12 would move by 4.2 mm', of the station that would move most."""
+    sizes = [(math.hypot(*(one[part] or 0.0 for part in ("east", "north", "height"))), one) for one in shifts]
+    if not sizes:
+        return ""
+    size, one = max(sizes, key=lambda pair: pair[0])
+    return f"{plain(one['station'])} would move by {shown.amount(size, None, 'distance').removeprefix('+')}, the most"
 
 
 def _more(rest: int, what: str) -> list[str]:
@@ -165,7 +189,7 @@ def _suspect(suspect: Entry, observation: Entry | None, shown: Shown) -> list[st
         text += f"; statistic {shown.mark(format(abs(suspect['statistic']), '.1f'))}"
         text += f" (limit {shown.mark(f'{critical:.2f}')})" if critical else ""
     if suspect["cannot_be_told_from"]:
-        text += f"; cannot be told from {_some([plain(name) for name in suspect['cannot_be_told_from']])}"
+        text += f"; cannot be told from {_some([plain(o['observation']) for o in suspect['cannot_be_told_from']])}"
     lines = _wrapped(text, 2, "      ")
     causes = suspect["likely_causes"]
     return lines + (_wrapped(f"      {plain(causes[0]['sentence'], 180)}", 1) if causes else [])

@@ -15,7 +15,7 @@ import numpy as np
 from adjust.frames import LocalPlane, beside
 from adjust.graph.parts import HEIGHT, PLANE, Part, row_groups
 from adjust.kinds import KINDS
-from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Cluster, Ints, Network
+from adjust.network import HELD, WEIGHTED, Array, Block, Bools, Ints, Network, renumbered
 from adjust.solver.centring import Vectors
 from adjust.units import TURN
 
@@ -270,15 +270,4 @@ def control_as_new(network: Network, free: Bools) -> Network:
         kept[here] = ~np.isnan(sd[network.rows.row[here], network.rows.part[here]])
         if not np.isnan(sd).all():
             blocks.append(replace(block, sd=sd))
-    return replace(network, blocks=tuple(blocks), clusters=_renumbered(network.clusters, kept))
-
-
-def _renumbered(clusters: tuple[Cluster, ...], kept: Bools) -> tuple[Cluster, ...]:
-    """Clusters on the numbers that the kept scalar rows have once the others are gone."""
-    number = np.cumsum(kept) - 1
-    out = []
-    for cluster in clusters:
-        here = kept[cluster.rows]
-        if here.any():
-            out.append(Cluster(number[cluster.rows[here]], cluster.covariance[np.ix_(here, here)]))
-    return tuple(out)
+    return replace(network, blocks=tuple(blocks), clusters=renumbered(network.clusters, kept))

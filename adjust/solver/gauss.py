@@ -8,7 +8,8 @@ again by the next full one. The last linearisation is made at the answer, so tha
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from copy import copy
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.sparse import csc_array, diags_array
@@ -93,6 +94,16 @@ class GaussNewton:
         self.held = np.flatnonzero(design.held)
         self.latest: Linear | None = None
         """The last linearisation made, for whoever has to explain a failure."""
+
+    def reweighted(self, factor: Array) -> GaussNewton:
+        """The same with the standard deviations of the rows, centring apart, multiplied by factors (R,)."""
+        other = copy(self)
+        other.batches = [
+            replace(b, covariance=b.covariance * factor[b.rows][:, :, None] * factor[b.rows][:, None, :])
+            for b in self.batches
+        ]
+        other.latest = None
+        return other
 
     def at(self, state: State) -> Linear:
         """Linearise at a state."""

@@ -10,11 +10,14 @@ import numpy as np
 import pytest
 
 import adjust
+from adjust.book.settings import Tests as Levels
 from adjust.judge.assess import Judgement
+from adjust.judge.critical import tau_critical
 from adjust.judge.effect_columns import MOST, effects
 from adjust.judge.effect_words import Systematic
 from adjust.judge.influence import Influence
-from adjust.judge.systematic import Problem, Stage, constants_twice, expected_by_chance, systematic
+from adjust.judge.systematic import Problem, Stage, constants_twice, expected_by_chance, search, systematic
+from adjust.judge.systematic import _finding as finding
 from tests.helpers import close
 from tests.judge import systematic_study
 from tests.judge.sharing import DAYS, EFFECTS, booked, job, judged, planted, shared
@@ -109,7 +112,7 @@ def test_from_residuals_it_is_student_s_t_of_an_adjustment_with_it(tmp_path: Pat
     p = linear(0, ("distances", "directions", "angles"), "held", False, tmp_path)
     problem = problem_of(p.judgement)
     r = problem.degrees
-    tests = Tests(variance_factor="from-residuals")
+    tests = Levels(variance_factor="from-residuals")
     for c, f in enumerate(search(problem, tests)):
         b, Q = unknowns(p, column(p, problem, c))
         w = float(b[0] / np.sqrt(Q[0, 0]))
@@ -122,7 +125,7 @@ def test_the_limit_from_residuals_is_pope_s_tau(tmp_path: Path) -> None:
     """Of errors drawn anew a third are called significant by tau at this level, and just these by t."""
     p = linear(0, ("distances", "directions", "angles"), "held", False, tmp_path)
     problem, r = problem_of(p.judgement), problem_of(p.judgement).degrees
-    tests, limit = Tests(variance_factor="from-residuals", outlier=0.3), tau_critical(0.3, r)
+    tests, limit = Levels(variance_factor="from-residuals", outlier=0.3), tau_critical(0.3, r)
     assert limit is not None
     rng, seen = np.random.default_rng([20261217, 1]), set()
     for _ in range(40):
