@@ -31,6 +31,7 @@ from adjust.judge.effect_columns import (
 from adjust.solver.solution import Solution
 from adjust.units import ANGLES, small_angle_unit, small_length
 
+NONE_SEEN = "none seen"
 TWICE, SIGN, NOT_DONE = "constant applied twice", "constant with the wrong sign", "constant not applied"
 TIMES = 3.0
 """Standard deviations, and at the least the share below, within which an effect must be the declared one."""
@@ -125,7 +126,7 @@ class Finding:
             return f"explained by {title(self.by)}"
         if self.single:
             return "rests on one reading" if len(self.single) == 1 else "rests on single readings"
-        return "none seen"
+        return NONE_SEEN
 
     def because(self, by: Effect | None = None, single: tuple[int, ...] = ()) -> Finding:
         """The same, explained by another effect or by the errors of single readings (scalar rows)."""
@@ -210,7 +211,7 @@ def _sentence(solution: Solution, f: Finding, question: str, names: tuple[str, .
         return f"{e.what[0].upper()}{e.what[1:]} of {who}: cannot be told; {why}."
     sizes = Sizes(solution, e)
     sure = f"standard deviation {sizes.plain(f.sd)}"
-    if f.verdict == "none seen":
+    if f.verdict == NONE_SEEN:
         return f"{e.what[0].upper()}{e.what[1:]} of {who}: none seen ({sizes.signed(f.value)}, {sure})."
     sure += f", {abs(f.statistic):.1f} times"
     if f.is_significant:
@@ -218,8 +219,8 @@ def _sentence(solution: Solution, f: Finding, question: str, names: tuple[str, .
     would = f"The {who} would {_by_how_much(solution, f, sizes, 'be', 'ask for')} ({sure})"
     if f.by is not None:
         return f"{would}, but not with the {title(f.by)} taken into account."
-    alone = "one reading" if len(names) == 1 else "single readings"
-    return f"{would}, but this rests on {alone}, {', '.join(names)}: without {'it' if len(names) == 1 else 'them'} no."
+    alone, it = ("one reading", "it") if len(names) == 1 else ("single readings", "them")
+    return f"{would}, but this rests on {alone}, {', '.join(names)}: without {it} nothing is seen."
 
 
 def _by_how_much(solution: Solution, f: Finding, sizes: Sizes, be: str, ask: str) -> str:

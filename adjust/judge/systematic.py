@@ -30,7 +30,7 @@ import numpy as np
 from adjust.book.settings import Tests
 from adjust.judge.critical import normal_critical, student_critical
 from adjust.judge.effect_columns import MOST, Effect, effects
-from adjust.judge.effect_words import Finding, Systematic, sentence_of_more, told
+from adjust.judge.effect_words import NONE_SEEN, TWICE, Finding, Systematic, sentence_of_more, told
 from adjust.judge.influence import Influence
 from adjust.judge.reliability import Reliability
 from adjust.network import Array, Bools, Ints
@@ -69,7 +69,7 @@ def expected_by_chance(found: Sequence[Systematic], tests: Tests) -> float:
 
 def constants_twice(found: Sequence[Systematic]) -> list[str]:
     """The sentences on constants that the distances seem to have had already."""
-    return [one.sentence for one in found if one.cause == "constant applied twice"]
+    return [one.sentence for one in found if one.cause == TWICE]
 
 
 @dataclass(frozen=True)
@@ -294,6 +294,6 @@ def _at_the_end(problem: Problem, tests: Tests, course: _Course, taken: list[_Ta
         course.findings[c] = f.significant(course.findings[c].alike)
     final = Stage.of(problem, kept)
     for c, f in course.findings.items():
-        if f.verdict == "none seen" and c not in joint:
+        if f.verdict == NONE_SEEN and c not in joint:
             beside = _finding(final, c, tests)
-            course.findings[c] = f if beside.value is None else beside
+            course.findings[c] = f if beside.value is None or beside.above else beside
