@@ -24,6 +24,7 @@ if TYPE_CHECKING:
     from adjust.judge.balances import Balance
     from adjust.judge.blunders import Found
     from adjust.judge.closures import Closure
+    from adjust.judge.effect_words import Systematic
     from adjust.judge.separable import Group
     from adjust.judge.suspects import Suspect
     from adjust.judge.unchecked import Unchecked
@@ -169,11 +170,18 @@ class Judgement:
         return balances(self.solution) if self.closures else ()
 
     @cached_property
+    def systematic(self) -> tuple[Systematic, ...]:
+        """Effects that many readings could share, each tested as one more unknown."""
+        from adjust.judge.systematic import systematic
+
+        return systematic(self.solution, self.reliability, self.tests)
+
+    @property
     def constants(self) -> list[str]:
         """Sentences on constants of reflector or instrument that the distances seem to have had already."""
-        from adjust.judge.constants import twice
+        from adjust.judge.systematic import constants_twice
 
-        return twice(self.solution)
+        return constants_twice(self.systematic)
 
     @cached_property
     def booked_ids(self) -> list[str]:

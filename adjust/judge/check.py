@@ -12,10 +12,10 @@ from adjust.errors import Unsolvable
 from adjust.graph.parts import listed
 from adjust.judge import unfixed
 from adjust.judge.closures import closures
-from adjust.judge.constants import twice
 from adjust.judge.evening import book_lines, closure_lines, ledger_lines, not_closed
 from adjust.judge.readings import Readings
-from adjust.judge.reliability import reliability
+from adjust.judge.reliability import Reliability, reliability
+from adjust.judge.systematic import constants_twice, systematic
 from adjust.judge.tolerances import declared_rule
 from adjust.judge.unchecked import Unchecked
 from adjust.network import HELD, WEIGHTED
@@ -60,8 +60,10 @@ def look(job: Job) -> Look:
         except Loose as loose:
             raise Unsolvable(unfixed.words(loose)) from None
         at_start = solution_at(job, ready, here, cofactors, 0)
-        lines = [*_contents(job), *evening, *_parts(at_start), *_islands(at_start), *_unchecked(at_start),
-                 *unfixed.warnings(at_start), *twice(at_start), *job.warnings]  # fmt: skip
+        figures = reliability(at_start)
+        shared = systematic(at_start, figures, job.settings.tests)
+        lines = [*_contents(job), *evening, *_parts(at_start), *_islands(at_start), *_unchecked(at_start, figures),
+                 *unfixed.warnings(at_start), *constants_twice(shared), *job.warnings]  # fmt: skip
         return Look(lines, failed)
 
 
@@ -103,9 +105,9 @@ def _islands(solution: Solution) -> list[str]:
     return [f"{one[0].upper()}{one[1:]}." for one in figure.islands()]
 
 
-def _unchecked(solution: Solution) -> list[str]:
+def _unchecked(solution: Solution, figures: Reliability) -> list[str]:
     """Readings that no other reading checks, with the reason, and the stations that hang on such readings only."""
-    found = Unchecked(solution, reliability(solution))
+    found = Unchecked(solution, figures)
     if not found.rows:
         return ["Every reading is checked by others."]
     readings = Readings(solution.network)

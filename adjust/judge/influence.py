@@ -59,6 +59,21 @@ class Influence:
         out[self.held] = 0.0
         return out
 
+    def weights(self, errors: Array) -> Array:
+        """E_j'P E_j (p,) of every column alone: what would be left in E_j'M E_j if no unknown took anything up."""
+        errors = np.where(self.held[:, None], 0.0, errors)
+        return np.asarray(sum(
+            ((_whitened(w, errors[w.batch.rows]) ** 2).sum(axis=(0, 1)) for w in self.whitened),
+            np.zeros(errors.shape[1]),
+        ))  # fmt: skip
+
+    def variances(self, values: Array) -> Array:
+        """z_j'C z_j (p,) of every column (R, p); of M E it is E_j'M C M E_j, which must be E_j'M E_j again."""
+        return np.asarray(sum(
+            (((w.factor.transpose(0, 2, 1) @ values[w.batch.rows]) ** 2).sum(axis=(0, 1)) for w in self.whitened),
+            np.zeros(values.shape[1]),
+        ))  # fmt: skip
+
     def columns(self, rows: Ints) -> Array:
         """Columns of M (R, k) of the rows (k,)."""
         errors = np.zeros((len(self.held), len(rows)))

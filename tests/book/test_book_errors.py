@@ -8,8 +8,9 @@ import numpy as np
 import pytest
 
 import adjust
+from adjust.judge.assess import Judgement
 from adjust.judge.check import look
-from adjust.judge.constants import common_error, twice
+from adjust.judge.systematic import constants_twice
 from tests.book.book_errors import SORTS, Book, levels, rounds, sound_book, wrong_book
 from tests.book.book_errors_study import Said, listen, verdict
 from tests.helpers import close
@@ -63,10 +64,11 @@ def test_sights_in_each_others_column_of_a_page(tmp_path: Path) -> None:
 
 def test_the_common_error_is_that_of_an_adjustment_with_it(tmp_path: Path) -> None:
     """Taking it out of the distances makes v'Pv smaller by (b/sd)^2 and leaves none; a sound book is told nothing."""
-    solution = adjust.solve(adjust.read(rounds(np.random.default_rng(6), twice=True).put(tmp_path / "job")))
-    assert len(twice(solution)) == 1
-    lengths = np.array([solution.network.blocks[b].kind == "distance" for b in solution.network.rows.block])
-    b, sd = common_error(solution, lengths)
+    folder = rounds(np.random.default_rng(6), twice=True).put(tmp_path / "job")
+    judged = adjust.assess(adjust.solve(adjust.read(folder)))
+    solution = judged.solution
+    assert len(constants_twice(judged.systematic)) == len(judged.constants) == 1
+    b, sd = constant_of(judged)
     (amount,) = {line.amount for line in solution.job.ledger}
     assert abs(b - amount) < 3 * sd
     text = (tmp_path / "job" / "job.toml").read_text("utf-8")
@@ -76,8 +78,16 @@ def test_the_common_error_is_that_of_an_adjustment_with_it(tmp_path: Path) -> No
     job = adjust.read(tmp_path / "job")
     cured = adjust.solve(job)
     close(solution.total.square_sum - cured.total.square_sum, (b / sd) ** 2, atol=1e-3 * (b / sd) ** 2)
-    left, same = common_error(cured, lengths)
+    left, same = constant_of(adjust.assess(cured))
     assert abs(left) < 1e-3 * sd
     close(same, sd, atol=1e-4 * sd)
-    assert twice(cured) == []
+    assert adjust.assess(cured).constants == []
     assert not any("applied twice" in line for line in look(job).lines)
+
+
+def constant_of(judged: Judgement) -> tuple[float, float]:
+    """Common error of all distances and its standard deviation, metres."""
+    (one,) = (s for s in judged.systematic if s.what == "constant")
+    assert one.value is not None
+    assert one.sd is not None
+    return one.value, one.sd

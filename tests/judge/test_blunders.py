@@ -118,7 +118,7 @@ def test_readings_that_only_the_blunders_made_look_bad_are_cleared(tmp_path: Pat
 
 def test_two_equal_blunders_that_hide_each_other_are_found_together(tmp_path: Path) -> None:
     """From residuals two equal blunders among ten spoil the scale so much that no tau is large: a robust start sees."""
-    values = [10.0003, 9.9998, 10.0001, 9.9996, 10.0002, 10.0005, 9.9997, 10.0000, 10.21, 10.2104]
+    values = [10.0003, 9.9998, 10.0001, 9.9996, 10.0002, 10.0005, 9.9997, 10.0000, 10.051, 10.0514]
     judgement = repeated(tmp_path, values, "from-residuals")
     assert not judgement.suspect_of_job.any()
     assert set(judgement.blunders.rows) == {8, 9}
@@ -136,6 +136,23 @@ def test_the_published_planted_blunder_is_found_and_alone(tmp_path: Path) -> Non
     close(abs(judgement.statistic[7]) * np.sqrt(7 / 8), 2.4687, atol=0.00011)
     (suspect,) = judgement.suspects
     close(suspect.blunder, 245.57 - np.mean(values[:7]), atol=1e-9)
+
+
+def test_a_gross_error_that_bends_the_figure_hides_no_second_one(tmp_path: Path) -> None:
+    """A distance in feet among metres, and a pointing a minute off: at the bent figure nothing would be found."""
+    job = clean(0, tmp_path)
+    before = adjust.assess(adjust.solve(job))
+    kinds = [job.network.blocks[b].kind for b in job.network.rows.block]
+    share = before.reliability.checked_share
+    distance = next(r for r, k in enumerate(kinds) if k == "distance" and share[r] > 0.5)
+    pointing = next(r for r, k in enumerate(kinds) if k == "direction" and share[r] > 0.5)
+    metres = float(before.solution.design.observed[distance])
+    bad = shifted(job, np.array([distance, pointing]), np.array([metres * (1 / 0.3048 - 1), np.radians(1 / 60)]))
+    judgement = adjust.assess(adjust.solve(bad))
+    assert np.abs(judgement.solution.positions - before.solution.positions)[:, :2].max() > 1
+    assert set(judgement.blunders.rows) == {distance, pointing}
+    close(judgement.suspects[0].blunder, metres * (1 / 0.3048 - 1), atol=0.02)
+    assert log(judgement)[0].rows == (distance,)
 
 
 def test_a_first_choice_that_two_blunders_forced_is_taken_back(tmp_path: Path) -> None:
