@@ -71,8 +71,8 @@ def _scatter(record: Entry, shown: Shown) -> Iterator[str]:
     for part in record["solution"]["parts"]:
         if part["overall_test"]["verdict"] == "not met":
             factor = shown.mark(format(part["variance_factor"], ".2f"))
-            yield (f"The readings of the {plain(part['what'], 60)} scatter more than stated (variance factor {factor}), "
-                   "and no few blunders explain it.")  # fmt: skip
+            yield (f"The readings of the {plain(part['what'], 60)} scatter more than stated (variance factor "
+                   f"{factor}), and no few blunders explain it.")  # fmt: skip
 
 
 def _control(record: Entry) -> list[str]:
