@@ -28,7 +28,7 @@ from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
 from adjust.record.paper import drawing_warnings
 from adjust.record.places import line_entries, mark_entries, parameter_entries, side_shot_entries, station_entries
-from adjust.record.search import overall_entry, search_entries
+from adjust.record.search import effect_entries, overall_entry, search_entries
 from adjust.solver.defects import thin_of
 from adjust.solver.solution import PartResult, Solution
 from adjust.solver.threads import one_thread
@@ -78,6 +78,7 @@ def _sections(judgement: Judgement) -> dict[str, Any]:
         "unchecked": unchecked_entries(judgement),
         "control": mark_entries(judgement),
         "variance_components": [],
+        **effect_entries(judgement),
         "ledger": ledger_entries(judgement),
         "reductions": reduction_entries(solution.job),
         "left_out": [left_out(aside, with_reason=True) for aside in solution.job.left_out],

@@ -10,6 +10,7 @@ from adjust.judge.assess import Judgement
 from adjust.judge.overall import OverallTest
 from adjust.judge.removals import Fit, Removal
 from adjust.judge.suspects import cleared, log, mended
+from adjust.judge.systematic import expected_by_chance
 from adjust.network import PARTS
 from adjust.record.numbers import coordinate, number
 
@@ -32,6 +33,20 @@ def search_entries(judgement: Judgement) -> dict[str, Any]:
              "chance_of_wrong": number(g.wrong)}
             for g in judgement.separability
         ],
+    }  # fmt: skip
+
+
+def effect_entries(judgement: Judgement) -> dict[str, Any]:
+    """The keys systematic and systematic_by_chance."""
+    found = judgement.systematic
+    return {
+        "systematic": [
+            {"what": e.what, "of": e.of, "readings": e.readings, "dimension": e.dimension, "value": number(e.value),
+             "sd": number(e.sd), "statistic": number(e.statistic), "critical": number(e.critical),
+             "verdict": e.verdict, "cause": e.cause, "rests_on": list(e.rests_on), "sentence": e.sentence}
+            for e in found
+        ],
+        "systematic_by_chance": number(expected_by_chance(found, judgement.tests)),
     }  # fmt: skip
 
 
