@@ -1,16 +1,16 @@
 """The likely cause of a blunder: everyday slips weighed against "some other amount".
 
 The reading as booked exceeds its estimate from all others by b, with the standard deviation s of that difference
-(adjust.judge.leaving_out). A form h of a slip says that the reading is larger by c_h as booked than as it was read; then
-b - c_h is an ordinary error. With prior weights p_h (adjust/judge/slips.toml, those of a slip divided among the n forms
-it can take in this reading) and L_h the density of b,
+(adjust.judge.leaving_out). A form h of a slip says that the reading is larger by c_h as booked than as it was read;
+then b - c_h is an ordinary error. With prior weights p_h (adjust/judge/slips.toml, those of a slip divided among the
+forms it can take in this reading) and L_h the density of b,
 
-    L_h = phi((b - c_h)/s) / s        L_0 = 1 / (2 |b| ln(b_max / b_min))        support_h = p_h L_h / (p_0 L_0 + sum p L)
+    L_h = phi((b - c_h)/s) / s      L_0 = 1 / (2 |b| ln(b_max / s))      support_h = p_h L_h / (p_0 L_0 + sum p L)
 
-where L_0 spreads some other amount evenly over its orders of magnitude, from one s to b_max. A form that misses b by more
-than FARTHEST standard deviations is none. This is Bayes' rule for a closed list of explanations (Jeffreys 1961, chapter
-5); whether the support deserves its name is measured (docs/measured.md): of the causes given with 0.9 about nine in ten
-are right.
+where L_0 spreads some other amount evenly over its orders of magnitude, from one s to b_max. A form that misses b by
+more than FARTHEST standard deviations is none. This is Bayes' rule for a closed list of explanations (Jeffreys 1961,
+chapter 5); whether the support deserves its name is measured (docs/measured.md): of the causes given with 0.9 about
+nine in ten are right.
 """
 
 from __future__ import annotations
@@ -27,7 +27,7 @@ from adjust.book.raw_texts import raw_texts
 from adjust.judge import slips_of_place, slips_of_text
 from adjust.judge.slip_forms import Form, Slipped
 from adjust.kinds import KINDS
-from adjust.units import TURN
+from adjust.units import TURN, wrap
 
 if TYPE_CHECKING:
     from adjust.judge.assess import Judgement
@@ -110,14 +110,15 @@ def _different(forms: Iterator[Form]) -> Iterator[Form]:
     """Forms of one slip that come to the same text count once."""
     seen = set()
     for form in forms:
-        key = (form.would or form.told, form.line)
+        key = (form.would or f"{form.change:.9g}", form.line)
         if key not in seen:
             seen.add(key)
             yield form
 
 
 def _likelihood(case: Slipped, form: Form) -> float:
-    t = (case.blunder - form.change) / case.sd
+    miss = case.blunder - form.change
+    t = (wrap(miss) if case.wraps else miss) / case.sd
     return math.exp(-t * t / 2) / (math.sqrt(TURN) * case.sd) if abs(t) <= FARTHEST else 0.0
 
 

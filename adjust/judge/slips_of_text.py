@@ -32,6 +32,8 @@ def digits_swapped(case: Slipped) -> Iterator[Form]:
             a, mark, b = match.groups()
             if a != b:
                 at = match.start()
+                if b == "0" and not mark and not re.search(r"\d$", text[:at]) and text[at + 2 : at + 3].isdigit():
+                    continue  # nobody books 021 for 201
                 yield from _form(case, raw, text[:at] + b + mark + a + text[at + 2 + len(mark) :])
 
 
