@@ -61,6 +61,22 @@ class Group:
 
 
 @dataclass(frozen=True)
+class Makeup:
+    """What the standard deviations of m rows are made of: s^2 = (sum of the linear parts)^2 + squares of the others."""
+
+    parts: tuple[tuple[str, Array, bool], ...]
+    """What it is, its own standard deviations (m,), and whether it is one of the linear ones; zero in other rows."""
+    count: Array
+    """(m,) readings meaned, NaN where not told; the parts have its root in them, as the following."""
+    factor: float = 1.0
+    """sd_factor of the table."""
+
+    def cut(self, rows: Ints) -> Makeup:
+        """That of ``rows`` alone."""
+        return Makeup(tuple((what, sd[rows], linear) for what, sd, linear in self.parts), self.count[rows], self.factor)
+
+
+@dataclass(frozen=True)
 class Block:
     """The used rows of one table of one kind; m rows of p parts."""
 
@@ -105,6 +121,8 @@ class Block:
     a column takes no part; None: all stand in the line of the row."""
     booked_join: str = " - "
     """Between these texts: a level's set-up is back - fore, a pointing is the readings of both faces."""
+    makeup: Makeup | None = None
+    """What ``sd`` is made of; None for coordinates and settings, which tell it themselves."""
     labels: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     """(m) names by what they are of: instrument, reflector, day, crew; '' where not told, no key where none is."""
 
@@ -125,6 +143,7 @@ class Block:
             self, stations=self.stations[rows], values=self.values[rows], sd=self.sd[rows], group=self.group[rows],
             held=self.held[rows], line=self.line[rows], above=cut(self.above), offset=cut(self.offset),
             constant=cut(self.constant), eccentric=None, walked=cut(self.walked),
+            makeup=self.makeup.cut(rows) if self.makeup else None,
         )  # fmt: skip
 
     def name(self, i: int) -> str:
