@@ -1,0 +1,231 @@
+"""Variance components: how much larger than stated the errors of a group of readings are, by the readings themselves.
+
+With C = V_0 + sum_g theta_g V_g and the sums of adjust.judge.moments at the present theta, one round is
+
+    theta <- theta (1 + S^-1 (q - t))
+
+each V_g taken in its present size: iterated best invariant quadratic unbiased estimation (Koch 1999, section 3.6), the
+same as Fisher's scoring of the restricted likelihood (Patterson and Thompson 1971); it rests where q_g = t_g, the
+condition of Helmert (1907) and Foerstner (1979), and then cov theta = 2 theta S^-1 theta'. S chooses the way and tells
+the standard deviation; where it rests does not depend on it. The readings stay linearised at the solution.
+What would fall below nothing is held at LEAST as long as q_g < t_g there.
+
+Test of theta_g = 1: nu theta_g has about the chi-square distribution with nu = 2 theta_g^2 / var theta_g degrees of
+freedom (Satterthwaite 1946), exactly so for one group, nu being the redundancy.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from scipy import special
+
+from adjust.judge.critical import job_level
+from adjust.judge.groupings import Grouping, groupings
+from adjust.judge.moments import Moments, Problem
+from adjust.judge.paste import lines_to_paste
+from adjust.network import Array, Bools
+from adjust.solver.solution import Solution
+from adjust.solver.threads import one_thread
+
+REDUNDANCY_LEAST = 5.0
+ROWS_MOST = 20_000
+APART_LEAST = 0.02
+ROUNDS_MOST = 60
+SETTLED = 1e-3
+"""Rounds end where no component moves by more than this share of its standard deviation."""
+LEAST = 1e-4
+"""A component below this, a hundredth of the stated standard deviation, cannot be told from nothing."""
+AS_STATED, WORSE, BETTER, UNTOLD = "as stated", "worse than stated", "better than stated", "cannot be told"
+
+
+@dataclass(frozen=True)
+class Component:
+    """One group's component; lengths and angles play no part, all is relative to the stated standard deviations."""
+
+    by: str
+    """instrument, day, crew, or centring (the instruments' groups and the centring vectors together)."""
+    group: str
+    readings: int
+    redundancy: float
+    factor: float
+    """theta: variance over the stated one; 1 where it is not estimated."""
+    sd_factor: float
+    sd: float | None
+    """Of ``sd_factor``; None where it is not estimated."""
+    interval: tuple[float, float] | None
+    """Of ``sd_factor`` at the job's confidence."""
+    verdict: str
+    sentence: str
+    paste: tuple[str, ...]
+    """Lines for job.toml, () where the verdict asks for none or no line says it."""
+
+
+@dataclass(frozen=True)
+class Estimate:
+    """Components of one grouping: theta (G,), which groups are estimated, and the sums where it rests."""
+
+    grouping: Grouping
+    theta: Array
+    estimated: Bools
+    moments: Moments
+    stated: Moments
+    """The sums at the stated sizes."""
+    rounds: tuple[Array, ...]
+    """theta after every round."""
+    reasons: dict[int, str] = field(default_factory=dict)
+    """Why a group is not estimated."""
+
+    @property
+    def factors(self) -> tuple[Array, ...]:
+        """By what every round multiplied theta."""
+        before = (np.ones_like(self.theta), *self.rounds[:-1])
+        return tuple(now / was for now, was in zip(self.rounds, before, strict=True))
+
+    @property
+    def vanished(self) -> Bools:
+        """(G,) components that ran to nothing."""
+        return np.asarray(self.estimated & (self.theta <= LEAST))
+
+    @property
+    def covariance(self) -> Array:
+        """(G, G) covariance of theta, NaN where it has none."""
+        out = np.full((len(self.theta),) * 2, np.nan)
+        here = np.flatnonzero(self.estimated & ~self.vanished)
+        if len(here):
+            out[np.ix_(here, here)] = 2 * np.linalg.inv(self.moments.s[np.ix_(here, here)])
+        return np.asarray(out * self.theta[:, None] * self.theta)
+
+
+def components(solution: Solution) -> tuple[Component, ...]:
+    """Every grouping's components, each grouping estimated on its own; () above ROWS_MOST scalar rows."""
+    if len(solution.residuals) > ROWS_MOST:
+        return ()
+    with one_thread():
+        return tuple(one for g in groupings(solution.design) for one in _told(solution, estimate(solution, g)))
+
+
+def estimate(
+    solution: Solution, grouping: Grouping, least: float = REDUNDANCY_LEAST, settled: float = SETTLED
+) -> Estimate:
+    """The components of a grouping; groups with a redundancy below ``least`` keep their stated sizes."""
+    problem = Problem.of(solution, grouping)
+    stated = problem.moments(np.ones(grouping.count))
+    reasons = _too_few(grouping, stated, least)
+    reasons |= _not_apart(grouping, stated, reasons)
+    estimated = np.array([g not in reasons for g in range(grouping.count)], dtype=bool)
+    theta, moments, rounds = np.ones(grouping.count), stated, []
+    while estimated.any() and len(rounds) < ROUNDS_MOST:
+        step = _round(theta, moments, estimated)
+        moved = np.abs(step - theta) / theta
+        theta = step
+        rounds.append(theta)
+        moments = problem.moments(theta)
+        if (moved <= settled * np.sqrt(2 / np.maximum(np.diagonal(moments.s), 1e-12)))[theta > LEAST].all() and (
+            _resting(theta, moments, estimated)
+        ):
+            break
+    return Estimate(grouping, theta, estimated, moments, stated, tuple(rounds), reasons)
+
+
+def _round(theta: Array, moments: Moments, estimated: Bools) -> Array:
+    """theta after one round; nothing falls below a tenth of itself in one round, nor below LEAST."""
+    rest = moments.q - moments.t
+    here = np.flatnonzero(estimated & ((theta > LEAST) | (rest > 0)))
+    factor = np.ones_like(theta)
+    if len(here):
+        factor[here] += np.linalg.solve(moments.s[np.ix_(here, here)], rest[here])
+    return np.maximum(theta * np.maximum(factor, 0.1), np.where(estimated, LEAST, 0.0))
+
+
+def _resting(theta: Array, moments: Moments, estimated: Bools) -> bool:
+    """Whether what is held at nothing belongs there."""
+    return not (estimated & (theta <= LEAST) & (moments.q > moments.t)).any()
+
+
+def _too_few(grouping: Grouping, stated: Moments, least: float) -> dict[int, str]:
+    return {
+        g: f"a redundancy of {max(t, 0.0):.1f} is too little to tell; {least:g} is the least"
+        for g, t in enumerate(stated.t.tolist()) if not t >= max(least, 1e-6)
+    }  # fmt: skip
+
+
+def _not_apart(grouping: Grouping, stated: Moments, known: dict[int, str]) -> dict[int, str]:
+    """Groups whose readings enter the residuals in one and the same way, worst first, until the rest can be told."""
+    found: dict[int, str] = {}
+    while True:
+        here = np.array([g for g in range(grouping.count) if g not in known and g not in found], dtype=int)
+        if len(here) < 2:
+            return found
+        s = stated.s[np.ix_(here, here)]
+        scale = 1 / np.sqrt(np.diagonal(s))
+        size, vector = np.linalg.eigh(s * scale[:, None] * scale)
+        if size[0] >= APART_LEAST:
+            return found
+        together = here[np.abs(vector[:, 0]) > 0.3]
+        names = [grouping.labels[g] for g in together]
+        for g in together:
+            others = " and ".join(n for n in names if n != grouping.labels[g])
+            found[int(g)] = f"cannot be told apart from {others}, which the residuals show in the same way"
+
+
+def _told(solution: Solution, found: Estimate) -> list[Component]:
+    tested = int((found.estimated & ~found.vanished).sum())
+    level = job_level(solution.job.settings.tests.significance, max(tested, 1))
+    return [_component(solution, found, g, level) for g in range(found.grouping.count)]
+
+
+def _component(solution: Solution, found: Estimate, g: int, level: float) -> Component:
+    grouping = found.grouping
+    readings = _readings(solution, grouping, g)
+    theta = float(found.theta[g])
+    redundancy = max(float(found.moments.t[g]), 0.0)
+    sd = interval = None
+    variance = found.covariance[g, g]
+    verdict = UNTOLD
+    if np.isfinite(variance):
+        nu = 2 * theta**2 / variance
+        sd = float(np.sqrt(variance / theta) / 2)
+        interval = _interval(theta, nu, solution.job.settings.tests.confidence)
+        verdict = _verdict(theta, nu, level)
+    paste = lines_to_paste(solution, grouping, g, theta**0.5) if verdict in (WORSE, BETTER) else ()
+    sentence = _sentence(grouping.labels[g], readings, redundancy, theta**0.5, interval, verdict, found.reasons.get(g))
+    return Component(grouping.by, grouping.labels[g], readings, redundancy, theta, theta**0.5, sd, interval, verdict,
+                     sentence, paste)  # fmt: skip
+
+
+def _readings(solution: Solution, grouping: Grouping, g: int) -> int:
+    if g < len(grouping.names):
+        return int((grouping.of_row == g).sum())
+    return int((solution.design.vectors.of_row >= 0).any(axis=1).sum())
+
+
+def _interval(theta: float, nu: float, confidence: float) -> tuple[float, float]:
+    tail = (1 - confidence) / 2
+    low, high = (float(special.gammainccinv(nu / 2, t)) * 2 / nu for t in (tail, 1 - tail))
+    return float(np.sqrt(theta / low)), float(np.sqrt(theta / high))
+
+
+def _verdict(theta: float, nu: float, level: float) -> str:
+    if special.gammaincc(nu / 2, nu * theta / 2) < level / 2:
+        return WORSE
+    return BETTER if special.gammainc(nu / 2, nu * theta / 2) < level / 2 else AS_STATED
+
+
+def _sentence(
+    name: str, readings: int, redundancy: float, factor: float, interval: tuple[float, float] | None, verdict: str,
+    reason: str | None,
+) -> str:  # fmt: skip
+    behind = f"from {readings} reading{'s' * (readings != 1)} with a redundancy of {redundancy:.1f}"
+    if reason:
+        return f"{name}: {reason} ({readings} reading{'s' * (readings != 1)}); the stated size is kept"
+    if interval is None:
+        return f"{name} cannot be told from nothing ({behind}): the residuals show no share of it"
+    low, high = interval
+    span = f"{low:.2g} to {high:.2g}, {behind}"
+    if verdict == AS_STATED:
+        return f"{name} fit as stated: {factor:.2g} times ({span})"
+    if verdict == WORSE:
+        return f"{name} fit {factor:.2g} times worse than stated ({span})"
+    return f"{name} fit better than stated: {factor:.2g} times ({span})"
