@@ -82,7 +82,7 @@ class Problem:
     def moments(self, theta: Array) -> Moments:
         """The sums for variances theta (G,) times the stated ones, each V_g taken in its present size."""
         whitened = self.whitened(theta)
-        cofactors = self._cofactors(whitened)
+        cofactors = self.cofactors(whitened)
         dx = self._step(whitened, cofactors)
         q_of = _Inverse.of(cofactors, self.dense_most)
         count = self.grouping.count
@@ -104,7 +104,7 @@ class Problem:
                     total.s[j, i] += both
         return total
 
-    def _cofactors(self, whitened: list[Whitened]) -> Cofactors:
+    def cofactors(self, whitened: list[Whitened]) -> Cofactors:
         """Q on the minimal constraints with the conditions: M does not depend on the datum."""
         iteration = self.iteration
         factor = iteration.pattern.factor(whitened) if len(iteration.kept) else None
