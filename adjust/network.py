@@ -61,19 +61,31 @@ class Group:
 
 
 @dataclass(frozen=True)
-class Makeup:
-    """What the standard deviations of m rows are made of: s^2 = (sum of the linear parts)^2 + squares of the others."""
+class Source:
+    """One thing that the standard deviations of m rows are made of."""
 
-    parts: tuple[tuple[str, Array, bool], ...]
-    """What it is, its own standard deviations (m,), and whether it is one of the linear ones; zero in other rows."""
+    what: str
+    sd: Array
+    """(m,) its own, zero in rows without it."""
+    linear: bool = False
+    """Whether it adds to the other linear ones of its row before the squares are added."""
+    counted: bool = False
+    """Whether it becomes smaller with the number of readings meaned."""
+
+
+@dataclass(frozen=True)
+class Makeup:
+    """What the standard deviations of m rows are made of: s^2 = (sum of the linear ones)^2 + squares of the others."""
+
+    sources: tuple[Source, ...]
     count: Array
-    """(m,) readings meaned, NaN where not told; the parts have its root in them, as the following."""
+    """(m,) readings meaned, NaN where not told; the sources have it in them, as the following."""
     factor: float = 1.0
     """sd_factor of the table."""
 
     def cut(self, rows: Ints) -> Makeup:
         """That of ``rows`` alone."""
-        return Makeup(tuple((what, sd[rows], linear) for what, sd, linear in self.parts), self.count[rows], self.factor)
+        return Makeup(tuple(replace(s, sd=s.sd[rows]) for s in self.sources), self.count[rows], self.factor)
 
 
 @dataclass(frozen=True)

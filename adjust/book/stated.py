@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from adjust.book.cells import Cells
@@ -10,7 +12,7 @@ from adjust.book.settings import Settings
 from adjust.book.sheet import Sheet
 from adjust.book.toml_lines import line_of
 from adjust.errors import nearest
-from adjust.network import Array, Bools, Makeup
+from adjust.network import Array, Bools, Makeup, Source
 from adjust.sigmas import EXAMPLES, Precision
 from adjust.units import LONGEST_M, SMALLEST_SD
 
@@ -32,7 +34,7 @@ def stated_sds(
     sizes = {c: cells.values(c, use) for c in (kind.length_column, kind.setup_column, "count") if c} | sheet.sizes
     blank = cells.text(sheet.sd)
     lacking = [i for i in use if not blank[i] and not held[i]]
-    parts = [(AS_BOOKED, np.nan_to_num(own), False)]
+    sources = [Source(AS_BOOKED, np.nan_to_num(own))]
     by_model: dict[str, list[int]] = {}
     for i in lacking:
         name = cells.text("instrument")[i] or cells.table.instrument
@@ -44,7 +46,7 @@ def stated_sds(
             given, root = _given(cells, sheet, model, lay.values, sizes, rows)
             zenith = settings.instruments[label].get(ZENITH_SD)
             sd[rows] = lay.sd(rows, model.sd(len(rows), **given) * root, zenith.sd(len(rows)) if zenith else 0.0)
-            parts += _parts(label, model, zenith, lay, (len(cells), rows), given, root)
+            sources += _sources(label, model, zenith, lay, (len(cells), rows), given, root)
             for i in rows:
                 labels[i] = label
     factor = cells.table.sd_factor
@@ -54,30 +56,31 @@ def stated_sds(
             hint = f"the standard deviation comes to {sd[i]:g} m or rad; look at the instrument, count and sd_factor"
             cells.fault(i, sheet.sd, blank[i], hint)
     sd[held] = 0.0
-    made = tuple((what, part * factor, linear) for what, part, linear in parts if part.any())
+    made = tuple(replace(source, sd=source.sd * factor) for source in sources if source.sd.any())
     return sd, labels, Makeup(made, np.where(np.isin(np.arange(len(sd)), lacking), sizes["count"], np.nan), factor)
 
 
-def _parts(
+def _sources(
     label: str, model: Precision, zenith: Precision | None, lay: Lay, at: tuple[int, list[int]],
     given: dict[str, Array], root: Array,
-) -> list[tuple[str, Array, bool]]:  # fmt: skip
+) -> list[Source]:  # fmt: skip
     """The terms of an instrument's model in its rows, ``at`` = (n, rows), and the zenith angle's where one reduced."""
     n, rows = at
+
+    def everywhere(sizes: Array) -> Array:
+        whole = np.zeros(n)
+        whole[rows] = sizes
+        return whole
+
     slope = 1.0 if lay.by_slope is None else lay.by_slope[rows]
     found = [
-        (f'"{term.text}" of {label}', size * root * slope, model.linear)
+        Source(f'"{term.text}" of {label}', everywhere(size * root * slope), model.linear, counted=True)
         for term, size in model.parts(len(rows), **given)
     ]
     if zenith and lay.by_zenith is not None:
         across = np.abs(lay.by_zenith[rows]) * zenith.sd(len(rows))
-        found.append((f'zenith angle, "{zenith.text}" of {label}', across, False))
-    out = []
-    for what, size, linear in found:
-        whole = np.zeros(n)
-        whole[rows] = size
-        out.append((what, whole, linear))
-    return out
+        found.append(Source(f'zenith angle, "{zenith.text}" of {label}', everywhere(across)))
+    return found
 
 
 def _model(settings: Settings, cells: Cells, sheet: Sheet, name: str, rows: list[int]) -> tuple[str, Precision] | None:

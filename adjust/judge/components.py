@@ -35,6 +35,8 @@ APART_LEAST = 0.02
 ROUNDS_MOST = 60
 SETTLED = 1e-3
 """Rounds end where no component moves by more than this share of its standard deviation."""
+SHARE_LEAST = 0.25
+"""Smallest share of a round that is taken where full ones go to and fro."""
 LEAST = 1e-4
 """A component below this, a hundredth of the stated standard deviation, cannot be told from nothing."""
 AS_STATED, WORSE, BETTER, UNTOLD = "as stated", "worse than stated", "better than stated", "cannot be told"
@@ -110,32 +112,47 @@ def estimate(
     solution: Solution, grouping: Grouping, least: float = REDUNDANCY_LEAST, settled: float = SETTLED
 ) -> Estimate:
     """The components of a grouping; groups with a redundancy below ``least`` keep their stated sizes."""
-    problem = Problem.of(solution, grouping)
+    return estimated_for(Problem.of(solution, grouping), least, settled)
+
+
+def estimated_for(problem: Problem, least: float = REDUNDANCY_LEAST, settled: float = SETTLED) -> Estimate:
+    """The same for a problem set up."""
+    grouping = problem.grouping
     stated = problem.moments(np.ones(grouping.count))
     reasons = _too_few(grouping, stated, least)
     reasons |= _not_apart(grouping, stated, reasons)
     estimated = np.array([g not in reasons for g in range(grouping.count)], dtype=bool)
-    theta, moments, rounds = np.ones(grouping.count), stated, []
+    theta, moments, rounds = at_rest(problem, stated, estimated, settled)
+    return Estimate(grouping, theta, estimated, moments, stated, rounds, reasons)
+
+
+def at_rest(
+    problem: Problem, stated: Moments, estimated: Bools, settled: float = SETTLED
+) -> tuple[Array, Moments, tuple[Array, ...]]:
+    """theta (G,) where the rounds end that move the groups ``estimated`` (G,), the sums there, and the rounds."""
+    theta, moments, rounds = np.ones(len(estimated)), stated, []
+    share, last = 1.0, np.zeros(len(estimated))
     while estimated.any() and len(rounds) < ROUNDS_MOST:
-        step = _round(theta, moments, estimated)
-        moved = np.abs(step - theta) / theta
-        theta = step
+        step = _round(theta, moments, estimated, share)
+        move = np.log(step / theta)
+        if move @ last < 0 and np.abs(move).max() > np.abs(last).max() / 2:
+            share = max(share / 2, SHARE_LEAST)  # to and fro without coming closer
+        last, theta = move, step
         rounds.append(theta)
         moments = problem.moments(theta)
-        if (moved <= settled * np.sqrt(2 / np.maximum(np.diagonal(moments.s), 1e-12)))[theta > LEAST].all() and (
-            _resting(theta, moments, estimated)
-        ):
+        sd = np.sqrt(2 / np.maximum(np.diagonal(moments.s), 1e-12))
+        if (np.abs(move) <= settled * sd).all() and _resting(theta, moments, estimated):
             break
-    return Estimate(grouping, theta, estimated, moments, stated, tuple(rounds), reasons)
+    return theta, moments, tuple(rounds)
 
 
-def _round(theta: Array, moments: Moments, estimated: Bools) -> Array:
+def _round(theta: Array, moments: Moments, estimated: Bools, share: float) -> Array:
     """theta after one round; nothing falls below a tenth of itself in one round, nor below LEAST."""
     rest = moments.q - moments.t
     here = np.flatnonzero(estimated & ((theta > LEAST) | (rest > 0)))
     factor = np.ones_like(theta)
     if len(here):
-        factor[here] += np.linalg.solve(moments.s[np.ix_(here, here)], rest[here])
+        factor[here] += share * np.linalg.solve(moments.s[np.ix_(here, here)], rest[here])
     return np.maximum(theta * np.maximum(factor, 0.1), np.where(estimated, LEAST, 0.0))
 
 

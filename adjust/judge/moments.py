@@ -29,6 +29,7 @@ from adjust.network import Array, Ints
 from adjust.solver.cofactors import Cofactors
 from adjust.solver.design import Linearised, State
 from adjust.solver.elements import Whitened, gather, whiten
+from adjust.solver.engine import Pattern
 from adjust.solver.gauss import GaussNewton, Linear
 from adjust.solver.solution import Solution
 
@@ -95,7 +96,8 @@ class Problem:
         if q_of.dense is None:
             return replace(total, s=_probed(whitened, parts, cofactors, count))
         inside = self.iteration.kept
-        y = [n @ q_of.dense[np.ix_(inside, inside)] for n in self._normals(whitened, parts)]
+        q = q_of.dense[np.ix_(inside, inside)]
+        y = [n @ q for n in normals(self.iteration.pattern, whitened, parts, count)]
         for i in range(count):
             for j in range(i + 1):
                 both = float((y[i].T * y[j]).sum())
@@ -121,24 +123,18 @@ class Problem:
             dx -= cofactors.f @ (cofactors.m @ self.numbers.misclosure[iteration.held])
         return dx
 
-    def _normals(self, whitened: list[Whitened], parts: list[tuple[Ints, Array]]) -> list[csc_array]:
-        """N_g of every group on the kept unknowns."""
-        return normals(self.iteration, whitened, parts, self.grouping.count)
-
 
 def normals(
-    iteration: GaussNewton, whitened: list[Whitened], parts: list[tuple[Ints, Array]], count: int
-) -> list[csc_array]:
-    """N_g = sum A*'G_g A* on the kept unknowns."""
-    pattern, out = iteration.pattern, []
+    pattern: Pattern, whitened: list[Whitened], parts: list[tuple[Ints, Array]], count: int
+) -> list[csc_array]:  # fmt: skip
+    """N_g = sum A*'G_g A* of every group on the unknowns of a pattern."""
+    out = []
     for group in range(count):
         products = [np.empty(0)]
         for w, (present, g) in zip(whitened, parts, strict=True):
             at = np.flatnonzero(present == group)
-            size = (len(w.l), w.reduced.shape[2], w.reduced.shape[2])
-            products.append(
-                (w.reduced.transpose(0, 2, 1) @ g[at[0]] @ w.reduced).ravel() if len(at) else np.zeros(np.prod(size))
-            )
+            size = len(w.l) * w.reduced.shape[2] ** 2
+            products.append((w.reduced.transpose(0, 2, 1) @ g[at[0]] @ w.reduced).ravel() if len(at) else np.zeros(size))
         data = np.bincount(pattern.target, np.concatenate(products), minlength=len(pattern.indices) + 1)[:-1]
         out.append(csc_array((data, pattern.indices, pattern.indptr), shape=(pattern.count, pattern.count)))
     return out
