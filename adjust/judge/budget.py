@@ -46,7 +46,7 @@ class Share:
     share: float
     """Of the variance of the reading."""
     linear: bool = False
-    """Whether it adds to the other linear ones before the squares are added."""
+    """Whether it adds to the row's other linear ones before the squares are added."""
 
 
 @dataclass(frozen=True)
@@ -90,11 +90,12 @@ def _stated(block: Block, i: int, p: int) -> list[Piece]:
         sd = float(block.sd[i, p])
         return [(AS_BOOKED, sd, sd * sd, False)]
     here = [(s, float(s.sd[i])) for s in made.sources if s.sd[i]]
+    several = sum(s.linear for s, _ in here) > 1
     linear = sum(sd for s, sd in here if s.linear)
     factor = f", times {made.factor:g}" if made.factor != 1 else ""
     counted = (", two pointings" if KINDS[block.kind].pointings == 2 else "") + _mean_of(float(made.count[i]))
     return [
-        (s.what + (counted if s.counted else "") + factor, sd, sd * (linear if s.linear else sd), s.linear)
+        (s.what + (counted if s.counted else "") + factor, sd, sd * (linear if s.linear else sd), s.linear and several)
         for s, sd in here
     ]
 
