@@ -59,7 +59,8 @@ class CoordinateBudget:
     sd: float
     """Standard deviation in metres, scaled."""
     shares: tuple[tuple[str, float], ...]
-    """Group of readings and its share of the variance, the largest first."""
+    """Group of readings and its share of the variance, the largest first; where readings of two groups share a given
+    covariance each has half of it, and a share may be negative."""
 
 
 def budget(solution: Solution) -> list[tuple[Share, ...]]:
@@ -120,9 +121,10 @@ def _centring(solution: Solution) -> dict[int, list[Piece]]:
     design = solution.design
     if not design.vectors.any:
         return {}
-    effect = design.linearise(State(solution.positions, solution.groups)).by_vector * design.vectors.sd[
-        design.vectors.of_row
-    ]
+    effect = (
+        design.linearise(State(solution.positions, solution.groups)).by_vector
+        * design.vectors.sd[design.vectors.of_row]
+    )
     across, up = (effect[:, :, :2] ** 2).sum(axis=2), effect[:, :, 2] ** 2
     found: dict[int, list[Piece]] = {}
     rows, blocks, names = solution.network.rows, solution.network.blocks, solution.names
@@ -154,7 +156,7 @@ def station_budget(solution: Solution, scale: float = 1.0) -> tuple[CoordinateBu
         number = numbers[station, part]
         total = float(variance[number])
         of = carried[:, number] / total if total > 0 else carried[:, number] * 0
-        shares = tuple((grouping.labels[g], float(of[g])) for g in np.argsort(-of, kind="stable") if of[g] > 0)
+        shares = tuple((grouping.labels[g], float(of[g])) for g in np.argsort(-of, kind="stable") if of[g])
         sd = float(np.sqrt(max(total, 0.0) * scale))
         out.append(CoordinateBudget(solution.names[station], PARTS[part], sd, shares))
     return tuple(out)
@@ -167,4 +169,4 @@ def _carried(solution: Solution, grouping: Grouping) -> Array:
     pattern = Pattern.of([w.batch.columns for w in solution.whitened], count)
     parts = [group_parts(w, grouping) for w in solution.whitened]
     every = normals(pattern, solution.whitened, parts, grouping.count)
-    return np.array([((n @ q) * q).sum(axis=0) for n in every])
+    return np.array([((n.T @ q) * q).sum(axis=0) for n in every])  # N_g = N_g', faster by rows

@@ -145,7 +145,8 @@ def estimated_for(problem: Problem, least: float = REDUNDANCY_LEAST, settled: fl
 def at_rest(
     problem: Problem, stated: Moments, estimated: Bools, settled: float = SETTLED
 ) -> tuple[Array, Moments, tuple[Array, ...]]:
-    """theta (G,) where the rounds end that move the groups ``estimated`` (G,), the sums there, and the rounds."""
+    """theta (G,) where the rounds end that move the groups ``estimated`` (G,), the sums before the last of them, which
+    moved nothing to speak of, and all rounds."""
     theta, moments, rounds = np.ones(len(estimated)), stated, []
     share, last = 1.0, np.zeros(len(estimated))
     while estimated.any() and len(rounds) < ROUNDS_MOST:
@@ -155,21 +156,21 @@ def at_rest(
             share = max(share / 2, SHARE_LEAST)  # to and fro without coming closer
         last, theta = move, step
         rounds.append(theta)
-        moments = problem.moments(theta)
         sd = np.sqrt(2 / np.maximum(np.diagonal(moments.s), 1e-12))
         if (np.abs(move) <= settled * sd).all() and _resting(theta, moments, estimated):
             break
+        moments = problem.moments(theta)
     return theta, moments, tuple(rounds)
 
 
 def _round(theta: Array, moments: Moments, estimated: Bools, share: float) -> Array:
-    """theta after one round; nothing falls below a tenth of itself in one round, nor below LEAST."""
+    """theta after one round; nothing falls below a hundredth of itself in one round, nor below LEAST."""
     rest = moments.q - moments.t
     here = np.flatnonzero(estimated & ((theta > NOTHING) | (rest > 0)))
     factor = np.ones_like(theta)
     if len(here):
         factor[here] += share * np.linalg.solve(moments.s[np.ix_(here, here)], rest[here])
-    return np.maximum(theta * np.maximum(factor, 0.1), np.where(estimated, LEAST, 0.0))
+    return np.maximum(theta * np.maximum(factor, 0.01), np.where(estimated, LEAST, 0.0))
 
 
 def _resting(theta: Array, moments: Moments, estimated: Bools) -> bool:

@@ -11,7 +11,11 @@ from adjust.network import Block, Ints
 from adjust.solver.design import Design
 
 INSTRUMENT, DAY, CREW, CENTRING = "instrument", "day", "crew", "centring"
-PLURALS = {"levelled": "levelled lines", "control": "control coordinates", "refraction": "the coefficient of refraction"}
+PLURALS = {
+    "levelled": "levelled lines",
+    "control": "control coordinates",
+    "refraction": "the coefficient of refraction",
+}
 """Kinds whose plural is not their name with an s."""
 
 

@@ -177,7 +177,9 @@ def test_a_share_of_nothing_is_said(tmp_path: Path) -> None:
 
 def test_groups_that_look_alike_are_refused(tmp_path: Path) -> None:
     """With a set-up for every distance its centring and the distance cannot be told apart."""
-    rows = "".join(f"A,B,{100 + e},{i}\n" for i, e in enumerate([0.001, -0.002, 0.003, 0.0, -0.001, 0.002, 0.001, 0, 0]))
+    rows = "".join(
+        f"A,B,{100 + e},{i}\n" for i, e in enumerate([0.001, -0.002, 0.003, 0.0, -0.001, 0.002, 0.001, 0, 0])
+    )
     toml = 'instruments.e = { distance = "2 mm", centring = "2 mm" }\n'
     tables = {"distances.csv": f"from,to,distance,setup\n{rows}", "control.csv": "station,east,north\nA,0,0\n",
               "azimuths.csv": "from,to,azimuth,role\nA,B,90,held\n"}  # fmt: skip
