@@ -147,7 +147,8 @@ def at_rest(
 ) -> tuple[Array, Moments, tuple[Array, ...]]:
     """theta (G,) where the rounds end that move the groups ``estimated`` (G,), the sums before the last of them, which
     moved nothing to speak of, and all rounds."""
-    theta, moments, rounds = np.ones(len(estimated)), stated, []
+    theta, moments = np.ones(len(estimated)), stated
+    rounds: list[Array] = []
     share, last = 1.0, np.zeros(len(estimated))
     while estimated.any() and len(rounds) < ROUNDS_MOST:
         step = _round(theta, moments, estimated, share)

@@ -1,4 +1,4 @@
-"""Variance components against many draws of errors: is the mean right, the standard deviation, the level of the verdict?
+"""Variance components against many draws of errors: their mean, their standard deviation, the level of the verdict.
 
     python -m tests.judge.components_study [DRAWS]     full study, 2,000 draws a line
     python -m tests.judge.components_study time        a network of 300 stations: components and budgets in adjustments

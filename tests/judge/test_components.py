@@ -19,6 +19,7 @@ from adjust.judge.moments import Problem
 from adjust.solver.solution import Solution
 from tests.cases.worked import Case, Result
 from tests.helpers import close
+from tests.judge import components_study as study
 from tests.judge.dense_components import Dense
 from tests.networks import random_job
 from tests.statistics.jobs import Clean, network
@@ -136,7 +137,8 @@ def test_too_little_redundancy_keeps_the_stated_size(tmp_path: Path) -> None:
     assert [c.sentence for c in components(solution)] == [
         "distances of i keep their stated size (6 readings): a redundancy of 3.9 is too little to judge by; 5 is the "
         "least",
-        "angles of i keep their stated size (5 readings): a redundancy of 3.1 is too little to judge by; 5 is the least",
+        "angles of i keep their stated size (5 readings): a redundancy of 3.1 is too little to judge by; 5 is the "
+        "least",
     ]
 
 
@@ -356,3 +358,37 @@ def test_a_case_through_the_record_has_no_component_of_its_own(tmp_path: Path) -
     assert np.array_equal(before[0], solution.residuals)
     assert np.array_equal(before[1], solution.sd_readings)
     assert Result.of(solution.job).solution.total.square_sum == solution.total.square_sum
+
+
+DRAWS = 120
+
+
+@pytest.fixture(scope="module")
+def levels(tmp_path_factory: pytest.TempPathFactory) -> tuple[Clean, Grouping, study.Drawn]:
+    """A level net, its two levels, and the components of many draws."""
+    print("seed", study.SEED)
+    law, grouping = study.two_levels(tmp_path_factory.mktemp("levels"))
+    return law, grouping, study.draws(law, grouping, {}, DRAWS)
+
+
+def test_components_of_many_draws_are_right_on_the_average(levels: tuple[Clean, Grouping, study.Drawn]) -> None:
+    """The study in small: mean, standard deviation, level of the verdict."""
+    law, grouping, found = levels
+    assert found.estimated.all()
+    assert found.faults() == []
+    assert found.rate[0] > 0
+    worse = study.draws(law, grouping, {"second level": 4.0}, DRAWS)
+    assert worse.faults() == []
+    assert worse.flagged[:, 1].all()
+
+
+def test_the_study_sees_a_sigma_wrong_by_5_per_cent_and_a_biased_estimate(
+    levels: tuple[Clean, Grouping, study.Drawn],
+) -> None:
+    law, grouping, right = levels
+    assert any("mean" in fault for fault in study.draws(law, grouping, {}, DRAWS, larger=1.05).faults())
+    # plain maximum likelihood divides by the number of readings where the redundancy belongs
+    share = Problem.of(adjust.solve(law.job), grouping).moments(np.ones(2)).t / np.bincount(grouping.of_row)
+    assert any("mean" in fault for fault in replace(right, theta=right.theta * share).faults())
+    assert any("stated" in fault for fault in replace(right, sd=right.sd * 1.5).faults())
+    assert any("verdicts" in fault for fault in replace(right, flagged=right.sd > 0).faults())
