@@ -10,8 +10,10 @@ condition of Helmert (1907) and Foerstner (1979), and then cov theta = 2 theta S
 the standard deviation; where it rests does not depend on it. The readings stay linearised at the solution.
 What would fall below nothing is held at LEAST as long as q_g < t_g there.
 
-Test of theta_g = 1: nu theta_g has about the chi-square distribution with nu = 2 theta_g^2 / var theta_g degrees of
-freedom (Satterthwaite 1946), exactly so for one group, nu being the redundancy.
+nu theta_g / E theta_g has about the chi-square distribution with nu = 2 theta_g^2 / var theta_g degrees of freedom
+(Satterthwaite 1946), exactly so for one group, nu being the redundancy: that gives the interval, and the test of
+theta_g = 1 with nu no larger than it would be if all were as stated. What is small by chance seems less sure than it
+is, what is large surer; so the test keeps its level where groups are hard to tell apart (docs/measured.md).
 """
 
 from __future__ import annotations
@@ -37,7 +39,7 @@ APART_LEAST = 0.02
 """Smallest eigenvalue of S, scaled to a unit diagonal, at which groups can be told apart; two of them would then have
 seven times the standard deviation that each has alone."""
 ROUNDS_MOST = 60
-SETTLED = 1e-3
+SETTLED = 5e-3
 """Rounds end where no component moves by more than this share of its standard deviation."""
 SHARE_LEAST = 0.25
 """Smallest share of a round that is taken where full ones go to and fro."""
@@ -103,8 +105,12 @@ class Estimate:
     @property
     def degrees(self) -> Array:
         """(G,) nu = 2 theta^2 / var theta; 0 where theta is not estimated or nothing."""
-        variance = np.diagonal(self.covariance)
-        return np.where(np.isnan(variance), 0.0, 2 * self.theta**2 / np.where(np.isnan(variance), 1.0, variance))
+        return _degrees(self.moments, self.estimated & ~self.vanished)
+
+    @property
+    def degrees_tested(self) -> Array:
+        """(G,) nu of the test: no more than there would be if all were as stated."""
+        return np.minimum(self.degrees, _degrees(self.stated, self.estimated))
 
     @property
     def covariance(self) -> Array:
@@ -114,6 +120,14 @@ class Estimate:
         if len(here):
             out[np.ix_(here, here)] = 2 * np.linalg.inv(self.moments.s[np.ix_(here, here)])
         return np.asarray(out * self.theta[:, None] * self.theta)
+
+
+def _degrees(moments: Moments, here: Bools) -> Array:
+    """nu (G,) = 1 / (S^-1)_gg of the groups ``here`` (G,), each V_g in its present size; 0 elsewhere."""
+    out, at = np.zeros(len(here)), np.flatnonzero(here)
+    if len(at):
+        out[at] = 1 / np.diagonal(np.linalg.inv(moments.s[np.ix_(at, at)]))
+    return out
 
 
 def components(solution: Solution) -> tuple[Component, ...]:
@@ -222,7 +236,7 @@ def _component(solution: Solution, found: Estimate, g: int, level: float) -> Com
     if nu >= DEGREES_LEAST:
         sd = float(np.sqrt(theta / (2 * nu)))
         interval = _interval(theta, nu, solution.job.settings.tests.confidence)
-        verdict = verdict_of(theta, nu, level)
+        verdict = verdict_of(theta, found.degrees_tested[g], level)
     paste = lines_to_paste(solution, grouping, g, theta**0.5) if verdict in (WORSE, BETTER) else ()
     sentence = _sentence(grouping.labels[g], readings, redundancy, theta**0.5, interval, verdict, found.reasons.get(g))
     if verdict in (WORSE, BETTER) and not paste:

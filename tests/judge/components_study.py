@@ -60,14 +60,17 @@ class Drawn:
     @property
     def mean_error(self) -> Array:
         """(G,) mean less truth, in standard errors of the study."""
-        return np.asarray((self.theta.mean(axis=0) - self.truth) / (self.theta.std(axis=0) / len(self.theta) ** 0.5))
+        scatter = np.where(self.estimated, self.theta.std(axis=0), np.nan)
+        return np.asarray((self.theta.mean(axis=0) - self.truth) / (scatter / len(self.theta) ** 0.5))
 
     @property
     def sd_ratio(self) -> tuple[Array, Array]:
         """(G,) stated over scatter, both as shares of theta, and the standard error of that."""
-        share = np.nanmean(self.sd / self.theta, axis=0) * self.truth
+        told = ~np.isnan(self.sd)
+        shares = np.where(told, self.sd, 0.0) / np.where(told, self.theta, 1.0)
+        share = shares.sum(axis=0) / np.maximum(told.sum(axis=0), 1) * self.truth
         off = self.theta - self.theta.mean(axis=0)
-        scatter = np.sqrt((off**2).mean(axis=0))
+        scatter = np.where(self.estimated, np.sqrt((off**2).mean(axis=0)), np.nan)
         kurtosis = (off**4).mean(axis=0) / scatter**4
         return share / scatter, share / scatter * np.sqrt((kurtosis - 1) / (4 * len(off)))
 
@@ -119,7 +122,7 @@ def draws(law: Clean, grouping: Grouping | None, truth: dict[str, float], count:
             theta.append(np.where(found.vanished, 0.0, found.theta))
             sd.append(np.where(told, found.theta * np.sqrt(2 / np.maximum(degrees, 1e-9)), np.nan))
             flagged.append([bool(t) and verdict_of(x, nu, level) in (WORSE, BETTER)
-                            for x, nu, t in zip(found.theta, degrees, told, strict=True)])  # fmt: skip
+                            for x, nu, t in zip(found.theta, found.degrees_tested, told, strict=True)])  # fmt: skip
     return Drawn(grouping.labels, size, np.array(theta), np.array(sd), np.array(flagged), found.estimated)
 
 
