@@ -25,14 +25,13 @@ import numpy as np
 from adjust.book.settings import Tests
 from adjust.judge import critical
 from adjust.judge.consistent import Found, Levels, find_consistent
-from adjust.judge.control_words import findings, size_words, unit_name
+from adjust.judge.control_words import findings, length_words, size_words, unit_name
 from adjust.judge.held_marks import HeldMarks, at_free_stage, control_places, judge_held_marks
 from adjust.judge.reliability import Reliability
 from adjust.judge.scale_words import ScaleFinding, feet_cause, scale_finding
 from adjust.judge.shifts import Shifts, parts_of
-from adjust.network import CHECK, PARTS, Array, Ints
+from adjust.network import CHECK, PARTS
 from adjust.solver.solution import Solution
-from adjust.units import small_length
 
 AGREES, DISAGREES, UNJUDGED = "agrees", "disagrees", "cannot be judged"
 JOINT_MOST = 300
@@ -127,7 +126,9 @@ def compare_control(
     """Verdicts on held, check and weighted marks; ``held``: K and g of the marks where they are known already."""
     groups = [held] if held else _groups(solution, by, tests)
     groups = [_with_pv(marks, figures) for marks in groups]
-    judged = [_judge(solution, marks, by, tests, _count(solution, groups)) for marks in groups]
+    parts = [_parts(solution, marks) for marks in groups]
+    levels = _levels(by, tests, *_count([one for some in parts for one in some]))
+    judged = [_judge(solution, marks, some, by, levels) for marks, some in zip(groups, parts, strict=True)]
     told = [pair for one in judged for pair in _told(solution, one, by)]
     told.sort(key=lambda pair: pair[0])
     checks = _check_marks(solution, by, tests)
@@ -174,17 +175,16 @@ def _parts(solution: Solution, marks: HeldMarks) -> list[Shifts]:
         movement[here] = known[here] - known[here].mean() if here.any() else 0.0
     if (marks.own[marks.part < 2] == 0).any():
         movement[marks.part < 2] = 0.0
-    heights = [_of_heights(s, marks) for s in parts_of(marks, movement)]
-    plane = parts_of(marks, np.where(marks.part < 2, movement, 0.0))
-    return [s if s else p for s, p in zip(heights, plane, strict=True)]
+    return [_without_scale_of_heights(s, marks) for s in parts_of(marks, movement)]
 
 
-def _of_heights(shifts: Shifts, marks: HeldMarks) -> Shifts | None:
-    """The part with its scale, where it has heights alone and the scale is that of feet."""
-    if not shifts.scaled or shifts.rank < 2 or (marks.part[np.concatenate(shifts.units)] < 2).any():
-        return None
-    ppm, sd = _scale(shifts, (), 1.0)
-    return shifts if feet_cause(ppm, sd) else None
+def _without_scale_of_heights(shifts: Shifts, marks: HeldMarks) -> Shifts:
+    """The part without its scale where it has heights alone, unless the scale is that of feet."""
+    if not shifts.scaled or (marks.part[np.concatenate(shifts.units)] < 2).any():
+        return shifts
+    if shifts.rank > 1 and feet_cause(*_scale(shifts, (), 1.0)):
+        return shifts
+    return replace(shifts, rows=shifts.rows[:-1], root=shifts.root[:-1], scaled=False)
 
 
 def _scale(shifts: Shifts, released: tuple[int, ...], factor: float) -> tuple[float, float]:
@@ -192,18 +192,16 @@ def _scale(shifts: Shifts, released: tuple[int, ...], factor: float) -> tuple[fl
     told = shifts.shift(len(shifts.rows) - 1, shifts.basis(released))
     if told is None:
         return math.nan, math.nan
-    return -float(told[0][0]) * 1e6, math.sqrt(float(told[1][0, 0]) * factor) * 1e6
+    m = 1 / (1 + float(told[0][0]))  # the shift is measured minus known, as a share of known
+    return (m - 1) * 1e6, m * m * math.sqrt(float(told[1][0, 0]) * factor) * 1e6
 
 
-def _count(solution: Solution, groups: list[HeldMarks]) -> tuple[int, int]:
-    """Units tested one by one, and parts, of all marks; two marks with nothing but each other are one test."""
-    parts = [shifts for marks in groups for shifts in _parts(solution, marks)]
+def _count(parts: list[Shifts]) -> tuple[int, int]:
+    """Units tested one by one, and parts; two marks with nothing but each other are one test."""
     return sum(1 if s.rank == 1 else len(s.rows) for s in parts), len(parts)
 
 
-def _judge(solution: Solution, marks: HeldMarks, by: Yardstick, tests: Tests, count: tuple[int, int]) -> Judged:
-    levels = _levels(by, tests, *count)
-    parts = _parts(solution, marks)
+def _judge(solution: Solution, marks: HeldMarks, parts: list[Shifts], by: Yardstick, levels: Levels) -> Judged:
     judged = Judged(marks, parts, [find_consistent(p, levels) for p in parts], levels)
     free, kept = solution.free, np.arange(len(marks.station))
     if free is None or not (by.degrees is None or by.apart) or not _bent(solution, judged):
@@ -270,13 +268,14 @@ def _place(marks: HeldMarks, i: int) -> Place:
     return row >= 0, row, int(marks.station[i]), int(marks.part[i])
 
 
-def _unjudged(solution: Solution, marks: HeldMarks, i: int) -> tuple[Place, Mark]:
+def _unjudged(solution: Solution, marks: HeldMarks, i: int, without: str = "") -> tuple[Place, Mark]:
     name, part, row = solution.names[marks.station[i]], PARTS[marks.part[i]], int(marks.row[i])
     if row < 0:
-        sentence = f"{name} {part}: nothing here can judge it, because the datum needs it"
+        why = f"without {without} the datum needs it" if without else "because the datum needs it"
+        sentence = f"{name} {part}: nothing here can judge it, {why}"
         return _place(marks, i), Mark(name, part, None, None, UNJUDGED, sentence)
     misfit = float(solution.residuals[row])
-    size = small_length(misfit, solution.job.settings.units.length)
+    size = length_words(solution, misfit)
     sentence = f"{name} {part}: nothing here can judge it (adjusted minus known {size})"
     return _place(marks, i), Mark(name, part, misfit, None, UNJUDGED, sentence)
 
@@ -290,11 +289,11 @@ def _of_unit(
     q = shifts.basis(tuple(u for u in free if u != unit))
     told = shifts.shift(unit, q)
     if told is None:
-        return [_unjudged(solution, marks, int(i)) for i in places]
+        without = " and ".join(unit_name(solution, marks, shifts, u) for u in free if u != unit)
+        return [_unjudged(solution, marks, int(i), without) for i in places]
     sd = np.sqrt(np.diagonal(told[1]) * by.scale)
-    t, p = shifts.beyond(unit, q)
-    known = shifts.explained(tuple(u for u in free if u != unit))
-    testable = judged.levels.probability(t, p, known) is not None
+    known = float(((shifts.z @ q) ** 2).sum()), q.shape[1]
+    testable = judged.levels.probability(0.0, len(places), known) is not None
     worst = int(np.argmax(np.abs(told[0]) / sd)) if (sd > 0).all() else 0
     limit = by.limit(critical.job_level(judged.levels.of_unit, len(places)))
     out = []
@@ -349,7 +348,7 @@ def _check_marks(solution: Solution, by: Yardstick, tests: Tests) -> list[Mark]:
 def _check(solution: Solution, station: str, part: int, misfit: float, sd: float, limit: float | None) -> Mark:
     """Verdict and sentence; without a limit or a standard deviation the mark cannot be judged."""
     if limit is None or not sd or math.isnan(sd):
-        size = small_length(misfit, solution.job.settings.units.length)
+        size = length_words(solution, misfit)
         sentence = f"{station} {PARTS[part]}: nothing here can judge it (adjusted minus known {size})"
         return Mark(station, PARTS[part], misfit, sd, UNJUDGED, sentence)
     verdict = DISAGREES if abs(misfit) / sd > limit else AGREES
@@ -367,7 +366,7 @@ def _report(solution: Solution, judged: list[Judged], marks: tuple[Mark, ...], b
         for shifts, found in zip(one.parts, one.found, strict=True):
             names = [unit_name(solution, one.marks, shifts, u) for u in range(len(shifts.rows))]
             out = {*found.released, *found.blamed, *found.doubtful, len(shifts.units)}
-            consistent += [names[u] for u in range(len(names)) if u not in out and shifts.beyond(u, shifts.basis(()))[1]]
+            consistent += [names[u] for u in range(len(names)) if u not in out and shifts.seen(u)]
             released += [names[u] for u in found.blamed if u < len(shifts.units)]
             if found.doubtful:
                 doubtful.append(tuple(names[u] for u in found.doubtful))
@@ -385,7 +384,3 @@ def _scale_of(marks: HeldMarks, shifts: Shifts, found: Found, by: Yardstick) -> 
     agree = ("the other marks agree" if others else "the known heights agree with the readings" if heights
              else "the marks agree with the readings and each other")  # fmt: skip
     return scale_finding(ppm, sd, agree)
-
-
-__all__ = ["AGREES", "DISAGREES", "UNJUDGED", "Array", "ControlReport", "Ints", "Judged", "Mark", "Yardstick",
-           "compare_control", "yardstick"]  # fmt: skip

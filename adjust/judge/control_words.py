@@ -27,9 +27,15 @@ def unit_name(solution: Solution, marks: HeldMarks, shifts: Shifts, unit: int) -
     return solution.names[marks.station[i]] + (" height" if marks.part[i] == 2 else "")
 
 
+def length_words(solution: Solution, metres: float) -> str:
+    """'+43.0 mm', '+3.004 m', '-0.141 ft': small lengths in millimetres where the job is in metres."""
+    unit = solution.job.settings.units.length
+    return f"{metres:+.3f} m" if unit == "m" and abs(metres) >= 1 else small_length(metres, unit)
+
+
 def size_words(solution: Solution, misfit: float, sd: float, what: str) -> str:
     """'estimate of all others minus known +43.0 mm, 3.6 times its uncertainty'."""
-    size = small_length(misfit, solution.job.settings.units.length)
+    size = length_words(solution, misfit)
     return f"{what} {size}, {abs(misfit) / sd:.1f} times its uncertainty" if sd > 0 else f"{what} {size}"
 
 
@@ -79,8 +85,8 @@ def _count(n: int, what: str) -> str:
 
 def _where(solution: Solution, marks: HeldMarks, shifts: Shifts, unit: int, shift: Array) -> str:
     """'43.0 mm to the east of its known place', '12.0 mm above its known height'."""
-    parts, unit_of = marks.part[shifts.units[unit]], solution.job.settings.units.length
-    length = small_length(float(np.linalg.norm(shift)), unit_of).lstrip("+")
+    parts = marks.part[shifts.units[unit]]
+    length = length_words(solution, float(np.linalg.norm(shift))).lstrip("+")
     if (parts == 2).all():
         return f"{length} {'above' if shift[0] > 0 else 'below'} its known height"
     east = float(shift[parts == 0].sum())
@@ -109,9 +115,11 @@ def _pair(solution: Solution, marks: HeldMarks, shifts: Shifts, found: Found, fa
     if told is None:
         return ""
     known = solution.network.stations.known
-    off = float(told[0][0]) * math.dist(known[a, :2], known[b, :2])
-    ppm, sd = -float(told[0][0]) * 1e6, math.sqrt(float(told[1][0, 0]) * factor) * 1e6
-    size = small_length(abs(off), solution.job.settings.units.length).lstrip("+")
+    share, sd_share = float(told[0][0]), math.sqrt(float(told[1][0, 0]) * factor)
+    off = share * math.dist(known[a, :2], known[b, :2])
+    m = 1 / (1 + share)
+    ppm, sd = (m - 1) * 1e6, m * m * sd_share * 1e6
+    size = length_words(solution, abs(off)).lstrip("+")
     return (f"Control: the distance between {solution.names[a]} and {solution.names[b]} is {size} "
             f"{'longer' if off > 0 else 'shorter'} by the readings than by the known coordinates, {abs(ppm) / sd:.1f} times "
             f"its uncertainty: one of the two marks is wrong, or there is {scale_size(ppm, sd)}; nothing here tells "

@@ -20,10 +20,9 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-from scipy.sparse.csgraph import connected_components
 
 from adjust.judge.held_marks import JUDGED_ABOVE, HeldMarks
-from adjust.network import Array, Ints
+from adjust.network import Array, Bools, Ints
 
 COUPLED_ABOVE = 1e-12
 """Share of the own weights from which two marks hang together; rounding between plane and heights leaves 1e-16."""
@@ -67,6 +66,10 @@ class Shifts:
         own = _basis(self.rows[unit] - (self.rows[unit] @ q) @ q.T)
         return float(((self.z @ own) ** 2).sum()), own.shape[1]
 
+    def seen(self, unit: int) -> bool:
+        """Whether anything is said of a unit at all."""
+        return bool((self.rows[unit] ** 2).sum() > JUDGED_ABOVE)
+
     def shift(self, unit: int, q: Array) -> tuple[Array, Array] | None:
         """Shift (p,) in metres (of a scale: as a ratio) and its covariance (p, p); None where not determined."""
         rest = self.rows[unit] - (self.rows[unit] @ q) @ q.T
@@ -98,13 +101,29 @@ def parts_of(marks: HeldMarks, movement: Array | None = None) -> list[Shifts]:
     of = np.repeat(np.arange(len(units)), [len(u) for u in units])
     joined = np.zeros((len(units),) * 2)
     np.maximum.at(joined, (of[:, None], of[None, :]), np.abs(k))
-    _, label = connected_components(joined > COUPLED_ABOVE, directed=False)
+    label = _labels(joined > COUPLED_ABOVE)
     out = []
-    for one in range(label.max() + 1):
+    for one in np.unique(label):
         here = np.flatnonzero(label[of] == one)
-        part = _part(units, of, here, k, root, marks.g[at] / root, None if movement is None else movement[at])
+        moved = None if movement is None else movement[at] * _scaled_here(marks.part[at], here)
+        part = _part(units, of, here, k, root, marks.g[at] / root, moved)
         out += [part] if part.rank else []
     return out
+
+
+def _scaled_here(part: Ints, here: Ints) -> Array:
+    """1 where a common scale moves the coordinates ``here``: the plane, or heights where they are alone."""
+    return np.where(part < 2, 1.0, 0.0) if (part[here] < 2).any() else np.ones(len(part))
+
+
+def _labels(joined: Bools) -> Ints:
+    """The smallest unit (u,) that each hangs together with."""
+    label = np.arange(len(joined))
+    while True:
+        least = np.where(joined, label, len(joined)).min(axis=1)
+        if np.array_equal(least, label):
+            return label
+        label = least
 
 
 def _part(units: list[Ints], of: Ints, here: Ints, k: Array, root: Array, g: Array, movement: Array | None) -> Shifts:

@@ -54,8 +54,8 @@ def test_leaving_a_mark_out_by_doing_it(tmp_path: Path, mark: str) -> None:
 
     The tolerance is that of two linearisations a millimetre or two apart.
     """
-    judged = marks_of(adjust.assess(adjust.solve(plane_job(tmp_path / "all", 7))))
-    without = adjust.solve(plane_job(tmp_path / "without", 7, roles={mark: "check"}))
+    judged = marks_of(adjust.assess(adjust.solve(plane_job(tmp_path / "all", 8))))
+    without = adjust.solve(plane_job(tmp_path / "without", 8, roles={mark: "check"}))
     i = without.names.index(mark)
     for part, component in (("east", 0), ("north", 1)):
         misfit, sd, _ = judged[mark, part]
