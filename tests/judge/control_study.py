@@ -2,11 +2,11 @@
 
     PYTHONPATH=. OPENBLAS_NUM_THREADS=1 python -m tests.judge.control_study [COUNT] [WHAT ...]
 
-draws COUNT (480) networks for each of WHAT (clean, one, two, scale; default all): 8 to 40 stations on a grid, along a road, around a
-ring or strewn about, tied to what stands within sight by distances and directions, some with levelling; 4 to 8 of them
-marks, held or weighted. One mark or two are then moved by MOVED standard deviations of their own misfit, plane ones in
+draws COUNT (480) networks for each of WHAT (clean, one, two, scale, drawn; default all): 8 to 40 stations on a grid, along a
+road, around a ring or strewn about, tied to their nearest by distances and directions, some with levelling; 4 to 8 of
+them marks, held or weighted. One mark or two are then moved by MOVED standard deviations of their own misfit, plane ones in
 a random direction in the metric of their covariance, or all distances get a scale. Every case is adjusted and judged as
-``brasscap adjust`` does.
+``brasscap adjust`` does; `drawn` draws the shifts themselves, 20 times a network.
 """
 
 from __future__ import annotations
@@ -22,9 +22,11 @@ from pathlib import Path
 import numpy as np
 
 import adjust
+from adjust.errors import BrasscapError
+from adjust.judge import consistent, control
 from adjust.judge.control_words import SCALE, unit_name
 from adjust.judge.held_marks import judge_held_marks
-from adjust.judge.shifts import parts_of
+from adjust.judge.shifts import Shifts, parts_of
 from tests.networks import SEC, Array, Row, Table, write_job
 
 SHAPES = ("grid", "road", "ring", "strewn")
@@ -182,7 +184,10 @@ def scale_case(seed: int, ratio: float, cause: str) -> str | None:
     net = replace(net, scale=ratio, ppm=2e-7 if small else PPM)
     if small:
         net = replace(net, weighted=False, known=net.truth)
-    judgement = judged(net)
+    try:
+        judgement = judged(net)
+    except BrasscapError as refused:
+        return "recognised in the refusal" if any("feet" in s for s in refused.sentences) else "refused for another reason"
     report, fit = judgement.control_report, judgement.similarity
     if small and (fit is None or fit.sd_scale_ppm is None or fit.sd_scale_ppm > 0.35):
         return None
@@ -191,6 +196,39 @@ def scale_case(seed: int, ratio: float, cause: str) -> str | None:
     if report.released:
         return "scale and a mark"
     return "recognised" if report.scale.cause == cause else f"scale of {report.scale.ppm:.1f} ppm, not recognised"
+
+
+def prepared(seed: int) -> list[Shifts]:
+    """The parts of the control of a network, to be drawn again and again at one linearisation."""
+    with tempfile.TemporaryDirectory() as folder:
+        solution = adjust.solve(network(np.random.default_rng([SEED, seed])).write(Path(folder)))
+    return control._parts(solution, judge_held_marks(solution))
+
+
+def drawn(parts: list[Shifts], rng: np.random.Generator, size: float, sigma: float = 1.0) -> str:
+    """One draw of the shifts themselves: z ~ N(A'D^1/2 b, I) with a unit moved by ``size`` of its standard deviations.
+
+    ``sigma`` is by how much larger the errors are than stated.
+    """
+    can = [(s, u) for s in range(len(parts)) for u in range(len(parts[s].units)) if parts[s].shift(u, NOTHING[:parts[s].rank])]
+    where, unit = can[rng.integers(len(can))]
+    z = [sigma * rng.standard_normal(s.rank) for s in parts]
+    rows = parts[where].rows[unit]
+    b = rng.standard_normal(len(rows))
+    z[where] += size * np.linalg.cholesky(np.linalg.inv(rows @ rows.T)) @ (b / np.linalg.norm(b)) @ rows
+    levels = consistent.Levels(1.0, None, False, 0.05, *control._count(parts))
+    found = [consistent.find_consistent(replace(s, z=one), levels) for s, one in zip(parts, z, strict=True)]
+    blamed = {(k, u) for k, f in enumerate(found) for u in f.blamed}
+    doubtful = {(k, u) for k, f in enumerate(found) for u in f.doubtful}
+    if not size:
+        return "quiet" if not blamed | doubtful else "not quiet"
+    others = any(u < len(parts[k].units) and (k, u) != (where, unit) for k, u in blamed)
+    said = "named alone" if (where, unit) in blamed else "named among doubtful" if (where, unit) in doubtful else "not named"
+    return said + (", another blamed" if others else "")
+
+
+NOTHING = np.zeros((1000, 0))
+"""The basis of nothing released."""
 
 
 def table(title: str, words: list[str | None]) -> None:
@@ -210,6 +248,10 @@ def main(count: int, what: list[str]) -> None:
     for k, word in ((1, "one"), (2, "two")):
         if word in what:
             table(f"{word} moved", [one_case(1000 * k + s, k) for s in range(count)])
+    if "drawn" in what:
+        rng, some = np.random.default_rng(SEED), [prepared(s) for s in range(count)]
+        for size in (0.0, 4.0, MOVED, 6.0, 8.0):
+            table(f"drawn at one linearisation, moved by {size:g}", [drawn(p, rng, size) for p in some for _ in range(20)])
     if "scale" in what:
         for ratio, cause in ((1 - 2e-6, "foot-and-us-foot"), (1 + 80e-6, "ground-and-grid"), (1 - 80e-6, "ground-and-grid"),
                              (0.3048, "feet-and-metres"), (1 / 0.3048, "feet-and-metres")):  # fmt: skip
@@ -217,4 +259,4 @@ def main(count: int, what: list[str]) -> None:
 
 
 if __name__ == "__main__":
-    main(int(sys.argv[1]) if len(sys.argv) > 1 else 480, sys.argv[2:] or ["clean", "one", "two", "scale"])
+    main(int(sys.argv[1]) if len(sys.argv) > 1 else 480, sys.argv[2:] or ["clean", "one", "two", "scale", "drawn"])
