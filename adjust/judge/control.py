@@ -158,7 +158,7 @@ def _groups(solution: Solution, by: Yardstick, tests: Tests) -> list[HeldMarks]:
             one = marks.take(unit)
             bad = any(find_consistent(p, _levels(by, tests, len(names), 1)).released for p in parts_of(one))
             (failing if bad else alone).append(some[unit] if bad else one)
-    worst = failing[:JOINT_MOST // 2]
+    worst = failing[: JOINT_MOST // 2]
     return [*alone, *([judge_held_marks(solution, np.sort(np.concatenate(worst)))] if worst else [])]  # type: ignore[list-item,arg-type]  # by `bad`
 
 

@@ -80,8 +80,6 @@ class Shifts:
         return inverse @ (rest @ self.z) / root, inverse / root / root[:, None]
 
 
-
-
 def _basis(rows: Array) -> Array:
     """Orthonormal basis (rank, s) of the span of rows; what is left of less than JUDGED_ABOVE of a weight is none."""
     if not len(rows):

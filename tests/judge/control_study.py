@@ -187,7 +187,9 @@ def scale_case(seed: int, ratio: float, cause: str) -> str | None:
     try:
         judgement = judged(net)
     except BrasscapError as refused:
-        return "recognised in the refusal" if any("feet" in s for s in refused.sentences) else "refused for another reason"
+        return (
+            "recognised in the refusal" if any("feet" in s for s in refused.sentences) else "refused for another reason"
+        )
     report, fit = judgement.control_report, judgement.similarity
     if small and (fit is None or fit.sd_scale_ppm is None or fit.sd_scale_ppm > 0.35):
         return None
@@ -210,7 +212,12 @@ def drawn(parts: list[Shifts], rng: np.random.Generator, size: float, sigma: flo
 
     ``sigma`` is by how much larger the errors are than stated.
     """
-    can = [(s, u) for s in range(len(parts)) for u in range(len(parts[s].units)) if parts[s].shift(u, NOTHING[:parts[s].rank])]
+    can = [
+        (s, u)
+        for s in range(len(parts))
+        for u in range(len(parts[s].units))
+        if parts[s].shift(u, NOTHING[: parts[s].rank])
+    ]
     where, unit = can[rng.integers(len(can))]
     z = [sigma * rng.standard_normal(s.rank) for s in parts]
     rows = parts[where].rows[unit]
@@ -223,7 +230,13 @@ def drawn(parts: list[Shifts], rng: np.random.Generator, size: float, sigma: flo
     if not size:
         return "quiet" if not blamed | doubtful else "not quiet"
     others = any(u < len(parts[k].units) and (k, u) != (where, unit) for k, u in blamed)
-    said = "named alone" if (where, unit) in blamed else "named among doubtful" if (where, unit) in doubtful else "not named"
+    said = (
+        "named alone"
+        if (where, unit) in blamed
+        else "named among doubtful"
+        if (where, unit) in doubtful
+        else "not named"
+    )
     return said + (", another blamed" if others else "")
 
 
@@ -251,11 +264,15 @@ def main(count: int, what: list[str]) -> None:
     if "drawn" in what:
         rng, some = np.random.default_rng(SEED), [prepared(s) for s in range(count)]
         for size in (0.0, 4.0, MOVED, 6.0, 8.0):
-            table(f"drawn at one linearisation, moved by {size:g}", [drawn(p, rng, size) for p in some for _ in range(20)])
+            table(
+                f"drawn at one linearisation, moved by {size:g}", [drawn(p, rng, size) for p in some for _ in range(20)]
+            )
     if "scale" in what:
         for ratio, cause in ((1 - 2e-6, "foot-and-us-foot"), (1 + 80e-6, "ground-and-grid"), (1 - 80e-6, "ground-and-grid"),
                              (0.3048, "feet-and-metres"), (1 / 0.3048, "feet-and-metres")):  # fmt: skip
-            table(f"measured lengths times {ratio:.6g}", [scale_case(5000 + s, ratio, cause) for s in range(count // 4)])
+            table(
+                f"measured lengths times {ratio:.6g}", [scale_case(5000 + s, ratio, cause) for s in range(count // 4)]
+            )
 
 
 if __name__ == "__main__":

@@ -189,7 +189,7 @@ def _checks(bench: Bench, mode: str, verdict: NDArray[np.int64], times: Array) -
 
 
 def _left_out(bench: Bench, mode: str, g: Array, scale: Array, found: Bools) -> Rates:
-    """Held and weighted marks: each left out alone at 0.05, from g (d, h) and scales (d,), and any finding (d,) at all."""
+    """Held and weighted marks: each left out alone at 0.05, from g (d, h) and scales (d,), and any finding (d,)."""
     base, marks, out = bench.base[mode], bench.response.marks[0], Rates()
     limit, times = yardstick(base.solution, mode == "given").limit(FIVE), np.full(g.shape, np.nan)
     assert limit is not None
