@@ -162,7 +162,7 @@ def _strength(t: float, p: int) -> float:
     """Square of the normal statistic as unlikely as T with p degrees, near enough (Wilson and Hilferty 1931)."""
     if p == 0:
         return -math.inf
-    return ((t / p) ** (1 / 3) - 1 + 2 / (9 * p)) / math.sqrt(2 / (9 * p))
+    return float((t / p) ** (1 / 3) - 1 + 2 / (9 * p)) / math.sqrt(2 / (9 * p))
 
 
 def _exchanged(released: Set, count: int) -> Iterator[Set]:

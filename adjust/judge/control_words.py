@@ -24,7 +24,8 @@ def unit_name(solution: Solution, marks: HeldMarks, shifts: Shifts, unit: int) -
     if unit == len(shifts.units):
         return SCALE
     i = shifts.units[unit][0]
-    return solution.names[marks.station[i]] + (" height" if marks.part[i] == 2 else "")
+    name = solution.names[marks.station[i]]
+    return f"{name} height" if marks.part[i] == 2 else name
 
 
 def length_words(solution: Solution, metres: float) -> str:
@@ -121,6 +122,6 @@ def _pair(solution: Solution, marks: HeldMarks, shifts: Shifts, found: Found, fa
     ppm, sd = (m - 1) * 1e6, m * m * sd_share * 1e6
     size = length_words(solution, abs(off)).lstrip("+")
     return (f"Control: the distance between {solution.names[a]} and {solution.names[b]} is {size} "
-            f"{'longer' if off > 0 else 'shorter'} by the readings than by the known coordinates, {abs(ppm) / sd:.1f} times "
-            f"its uncertainty: one of the two marks is wrong, or there is {scale_size(ppm, sd)}; nothing here tells "
-            "which")  # fmt: skip
+            f"{'longer' if off > 0 else 'shorter'} by the readings than by the known coordinates, {abs(ppm) / sd:.1f} "
+            f"times its uncertainty: one of the two marks is wrong, or there is {scale_size(ppm, sd)}; nothing here "
+            "tells which")  # fmt: skip

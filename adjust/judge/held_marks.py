@@ -29,7 +29,7 @@ from scipy.linalg import null_space
 from scipy.sparse import csc_array
 
 from adjust.kinds import KINDS
-from adjust.network import HELD, WEIGHTED, Array, Ints
+from adjust.network import HELD, Array, Bools, Ints
 from adjust.solver.datum import movements
 from adjust.solver.elements import Whitened
 from adjust.solver.solution import Solution
@@ -139,7 +139,7 @@ def known_variance(solution: Solution, station: Ints, part: Ints) -> Array:
     return np.asarray(np.nan_to_num(solution.network.stations.known_sd[station, part]) ** 2)
 
 
-def _turn(positions: Array, turned: Array, nodes: Array, known: Array, where: tuple[Ints, Ints], kept: Array) -> None:
+def _turn(positions: Array, turned: Array, nodes: Bools, known: Array, where: tuple[Ints, Ints], kept: Bools) -> None:
     """Turn the plane of a part about its middle to the kept marks, and the matrix that does it to their coordinates."""
     station, part = where
     east = [i for i in np.flatnonzero((part == 0) & nodes[station]).tolist()

@@ -1,7 +1,7 @@
 """A common scale between control and readings, and what figures of the trade it may be.
 
-With m = known / measured length, ppm = (m - 1) 10^6, and its standard deviation, a figure is recognised if it lies within
-NEAR standard deviations and no other figure of the list does:
+With m = known / measured length, ppm = (m - 1) 10^6, and its standard deviation, a figure is recognised if it lies
+within NEAR standard deviations and no other figure of the list does:
 
     m = 0.3048, 1200/3937, or one over these   metres against feet (international 1959; US survey, Mendenhall 1893)
     ppm = -2.0 or +2.0                         international against US survey foot, 0.3048 * 3937/1200 = 1 - 2.0e-6
@@ -90,8 +90,8 @@ def recognise(ppm: float, sd_ppm: float) -> tuple[str, str]:
 def _ground(ppm: float) -> str:
     factor = f"a scale factor of {1 + ppm * 1e-6:.6f}"
     height = f" or lengths not reduced from a height of about {abs(ppm) / PPM_PER_KM * 1000:.0f} m" if ppm < 0 else ""
-    return (f"as between lengths on the ground and on a grid or at sea level ({factor}{height}); check the surface of the "
-            "distances and what plane the known coordinates are on")  # fmt: skip
+    return (f"as between lengths on the ground and on a grid or at sea level ({factor}{height}); check the surface of "
+            "the distances and what plane the known coordinates are on")  # fmt: skip
 
 
 def feet_cause(ppm: float, sd_ppm: float) -> str:

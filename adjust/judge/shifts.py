@@ -10,7 +10,8 @@ S, with the orthonormal basis Q_S of that span:
     T_S = |Q_S'z|^2        chi-square with rank(S) degrees of freedom if the coordinates of S are right
     T - T_S = |z|^2 - T_S  what then still contradicts the other marks, chi-square with rank(all) - rank(S)
 
-and with S released a mark j has N = A_j (I - Q_S Q_S') A_j', shift N^-1 A_j (I - Q_S Q_S') z, T_j|S = T_(S and j) - T_S.
+and with S released a mark j has N = A_j (I - Q_S Q_S') A_j', the shift N^-1 A_j (I - Q_S Q_S') z and
+T_j|S = T_(S and j) - T_S.
 A common scale k about the middle of the marks shifts them by s k: one more row a = A'D^1/2 s, treated like a mark.
 """
 

@@ -2,11 +2,11 @@
 
     PYTHONPATH=. OPENBLAS_NUM_THREADS=1 python -m tests.judge.control_study [COUNT] [WHAT ...]
 
-draws COUNT (480) networks for each of WHAT (clean, one, two, scale, drawn; default all): 8 to 40 stations on a grid, along a
-road, around a ring or strewn about, tied to their nearest by distances and directions, some with levelling; 4 to 8 of
-them marks, held or weighted. One mark or two are then moved by MOVED standard deviations of their own misfit, plane ones in
-a random direction in the metric of their covariance, or all distances get a scale. Every case is adjusted and judged as
-``brasscap adjust`` does; `drawn` draws the shifts themselves, 20 times a network.
+draws COUNT (480) networks for each of WHAT (clean, one, two, scale, drawn; default all): 8 to 40 stations on a grid,
+along a road, around a ring or strewn about, tied to their nearest by distances and directions, some with levelling; 4
+to 8 of them marks, held or weighted. One mark or two are then moved by MOVED standard deviations of their own misfit,
+plane ones in a random direction in the metric of their covariance, or all distances get a scale. Every case is
+adjusted and judged as ``brasscap adjust`` does; `drawn` draws the shifts themselves, 20 times a network.
 """
 
 from __future__ import annotations
@@ -33,6 +33,10 @@ SHAPES = ("grid", "road", "ring", "strewn")
 MOVED = 5.0
 SD_M, PPM, SD_SEC, SD_KM = 0.0015, 2e-6, 2.0, 0.0012
 SEED = 20
+SCALES = {1 - 2e-6: "foot-and-us-foot", 1 + 80e-6: "ground-and-grid", 1 - 80e-6: "ground-and-grid",
+          0.3048: "feet-and-metres", 1 / 0.3048: "feet-and-metres"}  # fmt: skip
+"""Measured lengths by true ones, and what that is to be recognised as."""
+DEFAULT = ["clean", "one", "two", "scale", "drawn"]
 
 
 @dataclass(frozen=True)
@@ -59,7 +63,7 @@ class Net:
         control: list[Row] = []
         for i in self.marks:
             row: Row = {"station": names[i], "role": "weighted" if self.weighted else "held"}
-            for part, p in enumerate(("east", "north", "height")[: 3 if self.levelled else 2]):
+            for part, p in enumerate(["east", "north", "height"][: 3 if self.levelled else 2]):
                 row |= {p: float(self.known[i, part])} | ({f"sd_{p}": float(self.sd[i, part])} if self.weighted else {})
             control.append(row)
         tables = [Table("control.csv", "control", control), *self._readings(names)]
@@ -103,8 +107,10 @@ def network(rng: np.random.Generator, size: float = 1.0) -> Net:
     """A random network with clean control."""
     shape = str(rng.choice(SHAPES))
     n = int(rng.integers(8, 41))
-    truth = np.column_stack([places(rng, shape, n) * size, rng.uniform(40, 60, n)]) + [3000.0, 5000.0, 0.0]
-    d = np.hypot(*(truth[:, None, :2] - truth[None, :, :2]).transpose(2, 0, 1))
+    plane = places(rng, shape, n) * size + [3000.0, 5000.0]
+    truth = np.column_stack([plane, rng.uniform(40, 60, n)])
+    east, north = truth[:, None, 0] - truth[:, 0], truth[:, None, 1] - truth[:, 1]
+    d = np.hypot(east, north)
     nearest = np.argsort(d, axis=1)[:, 1:5]
     lines = sorted({(min(i, j), max(i, j)) for i in range(n) for j in nearest[i].tolist()}
                    | {(i, i + 1) for i in range(n - 1) if shape in ("ring", "road")})  # fmt: skip
@@ -268,12 +274,11 @@ def main(count: int, what: list[str]) -> None:
                 f"drawn at one linearisation, moved by {size:g}", [drawn(p, rng, size) for p in some for _ in range(20)]
             )
     if "scale" in what:
-        for ratio, cause in ((1 - 2e-6, "foot-and-us-foot"), (1 + 80e-6, "ground-and-grid"), (1 - 80e-6, "ground-and-grid"),
-                             (0.3048, "feet-and-metres"), (1 / 0.3048, "feet-and-metres")):  # fmt: skip
+        for ratio, cause in SCALES.items():
             table(
                 f"measured lengths times {ratio:.6g}", [scale_case(5000 + s, ratio, cause) for s in range(count // 4)]
             )
 
 
 if __name__ == "__main__":
-    main(int(sys.argv[1]) if len(sys.argv) > 1 else 480, sys.argv[2:] or ["clean", "one", "two", "scale", "drawn"])
+    main(int(sys.argv[1]) if len(sys.argv) > 1 else 480, sys.argv[2:] or DEFAULT)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from collections import Counter
+from functools import cache
 from dataclasses import replace
 from pathlib import Path
 
@@ -14,6 +15,7 @@ import adjust
 from adjust.errors import NotConverged, Unsolvable
 from adjust.judge import consistent, control
 from adjust.judge.scale_words import FOOT, recognise, scale_finding, scale_sentence, size_words
+from adjust.judge.shifts import Shifts
 from adjust.units import US_FOOT
 from tests.helpers import close
 from tests.judge.control_study import drawn, judged, moved, network, prepared
@@ -57,7 +59,7 @@ def test_two_marks_released_at_once_are_where_an_adjustment_without_them_puts_th
 
 
 def test_members_of_the_set_are_judged_without_the_released_mark(tmp_path: Path) -> None:
-    """With M3 wrong by a metre the others are judged as in the job where M3 is a check mark: the free stage is not bent."""
+    """With M3 wrong by a metre the others are judged as if it were a check mark: the free stage is not bent."""
     errors = {"M3": (1.0, -0.4)}
     with_it = marks_of(adjust.assess(adjust.solve(plane_job(tmp_path / "all", 8, moved=errors))))
     without = marks_of(
@@ -223,9 +225,9 @@ def test_a_refusal_names_the_scale(tmp_path: Path) -> None:
         adjust.solve(job)
     assert len(stopped.value.sentences) == 1
     assert stopped.value.sentences[0].startswith(
-        "the readings hold together by themselves, and the known coordinates differ from them by a common scale of 0.3048 "
-        "times (known over measured length; standard deviation 1e-06): the known coordinates are in metres but the lengths "
-        "in feet"
+        "the readings hold together by themselves, and the known coordinates differ from them by a common scale of "
+        "0.3048 times (known over measured length; standard deviation 1e-06): the known coordinates are in metres but "
+        "the lengths in feet"
     )
 
 
@@ -273,11 +275,13 @@ def test_beyond_twelve_units_the_worst_is_released_and_others_tried_back() -> No
 def shares(sigma: float, size: float, draws: int = 60) -> dict[str, float]:
     """Shares of what is said in draws of five networks."""
     rng = np.random.default_rng(77)
-    said = Counter(drawn(parts, rng, size, sigma) for parts in PREPARED for _ in range(draws))
+    said = Counter(drawn(parts, rng, size, sigma) for parts in frames() for _ in range(draws))
     return {word: k / said.total() for word, k in said.items()}
 
 
-PREPARED = [prepared(s) for s in range(5)]
+@cache
+def frames() -> list[list[Shifts]]:
+    return [prepared(s) for s in range(5)]
 
 
 def test_levels_and_names_in_a_reduced_study() -> None:
@@ -286,7 +290,7 @@ def test_levels_and_names_in_a_reduced_study() -> None:
     One mark moved by five of its standard deviations is named in 0.95 (reduced: 0.92), no other is blamed in 0.95.
     """
     print("seed", 77)
-    n = 60 * len(PREPARED)
+    n = 60 * len(frames())
     bound = 4 * np.sqrt(0.05 * 0.95 / n)
     quiet = shares(1.0, 0.0)["quiet"]
     assert abs(quiet - 0.95) < bound or quiet > 0.95
