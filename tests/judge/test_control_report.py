@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import re
 from collections import Counter
-from functools import cache
 from dataclasses import replace
+from functools import cache
 from pathlib import Path
 
 import numpy as np

@@ -20,7 +20,7 @@ from tests.statistics.draws import MODES, Bench
 from tests.statistics.jobs import network
 from tests.statistics.rates import FIVE, Rate, Rates, both_above, coverage, detection, of_jobs, of_readings
 
-DRAWS, JOBS = 10_000, 700
+DRAWS, JOBS = 10_000, 2_000
 """Draws judged as arrays, and draws judged one by one."""
 SEED = 42
 
