@@ -11,7 +11,7 @@ import numpy as np
 
 from adjust.book.settings import Tests
 from adjust.judge import critical
-from adjust.judge.control import Mark, compare_control, yardstick
+from adjust.judge.control import ControlReport, Mark, compare_control, yardstick
 from adjust.judge.lines import Lines, find_lines
 from adjust.judge.overall import NOT_MET, OverallTest, overall_tests
 from adjust.judge.reliability import Reliability, largest_effect, reliability
@@ -54,7 +54,12 @@ class Judgement:
     effect: Array
     """Movement of the coordinate moved most by the smallest detectable blunder (R,), metres."""
     lines: Lines
-    control: tuple[Mark, ...]
+    control_report: ControlReport
+
+    @property
+    def control(self) -> tuple[Mark, ...]:
+        """Verdicts on the coordinates of held, check and weighted marks."""
+        return self.control_report.marks
 
     @cached_property
     def statistic(self) -> Array:
@@ -202,7 +207,7 @@ class Judgement:
             any(test.verdict == NOT_MET for test in (*self.overall, *self.overall_free))
             or bool(self.suspect_of_job.any())
             or any(one.at_job_level for one in self.suspects)
-            or any(mark.verdict == "disagrees" for mark in self.control)
+            or self.control_report.failed
             or any(one.verdicts[key] == NOT_MET for one in self.closures for key in one.declared)
             or any(one.verdict == NOT_MET for one in self.solution.job.reductions)
         )
@@ -282,5 +287,5 @@ def assess(solution: Solution) -> Judgement:
             effect_part=part,
             effect=size * smallest,
             lines=find_lines(solution, scale),
-            control=compare_control(solution, figures, yardstick(solution, given), tests),
+            control_report=compare_control(solution, figures, yardstick(solution, given), tests),
         )
