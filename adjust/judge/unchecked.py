@@ -30,6 +30,16 @@ FAR_SORTED = 200
 """Stations behind a bridge that are put in order; the nearest are told of, so that long chains cost no more."""
 
 
+def known_stations(solution: Solution, component: int) -> Bools:
+    """Stations (n,) with control in a component, where the datum is not free."""
+    role = solution.network.stations.role[:, 2 if component == HEIGHT else 0]
+    known = (role == HELD) | (role == WEIGHTED)
+    for part in solution.parts:
+        if part.datum and part.datum.free:
+            known &= ~part.datum.part.nodes[:, component]
+    return np.asarray(known)
+
+
 @dataclass(frozen=True)
 class Unchecked:
     """The unchecked readings of a solution."""
@@ -99,7 +109,7 @@ class Unchecked:
         if not len(rows):
             return {}
         ends = np.array([self._readings.stations(int(r))[:2] for r in rows])
-        known = np.flatnonzero(self._known(HEIGHT))
+        known = np.flatnonzero(known_stations(self.solution, HEIGHT))
         start = np.concatenate([ends[:, 0], np.full(len(known), n)])
         end = np.concatenate([ends[:, 1], known])
         found = bridges(n + 1, start, end, [n])
@@ -111,15 +121,6 @@ class Unchecked:
         every = np.unique(np.concatenate([start, end]))
         near = np.setdiff1d(every, far)
         return near if len(near) < len(far) else far
-
-    def _known(self, component: int) -> Bools:
-        """Stations (n,) with control in a component, where the datum is not free."""
-        role = self.solution.network.stations.role[:, 2 if component == HEIGHT else 0]
-        known = (role == HELD) | (role == WEIGHTED)
-        for part in self.solution.parts:
-            if part.datum and part.datum.free:
-                known &= ~part.datum.part.nodes[:, component]
-        return np.asarray(known)
 
     def _only_way(self, r: int, far: Ints) -> str:
         i, j = self._readings.stations(r)[:2]
@@ -209,5 +210,6 @@ class Unchecked:
     def _candidates(self) -> list[int]:
         """Stations that an unchecked reading touches, in the order of the book."""
         found = {i for r in self.rows for i in self._readings.stations(r)}
+        known = known_stations(self.solution, PLANE)
         return sorted(i for i in found if (self.solution.network.stations.role[i] == NEW).any()
-                      or not self._known(PLANE)[i])  # fmt: skip
+                      or not known[i])  # fmt: skip
