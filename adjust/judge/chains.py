@@ -20,7 +20,6 @@ from collections import defaultdict
 from dataclasses import dataclass
 from functools import cached_property
 from itertools import accumulate, pairwise
-from typing import Any
 
 import numpy as np
 from scipy.sparse import coo_array
@@ -35,8 +34,6 @@ from adjust.solver.solution import Solution
 BITS = 128
 MOST_SHOWN = 12
 """Stations of a chain that are named; of longer ones the first and the last half of these."""
-NEAR = 16
-"""Neighbours asked for first when the nearest station of a piece is looked for."""
 
 
 @dataclass(frozen=True)
@@ -58,7 +55,10 @@ class Chain:
 
 
 def chains(solution: Solution) -> tuple[Chain, ...]:
-    """All chains of two or more levelled lines of a solution, in the order of their first lines."""
+    """All chains of two or more levelled lines of a solution, in the order of their first lines.
+
+    In linear time but for the nearest station in the plane, which is looked for among all.
+    """
     lines = Lines.of(solution.network)
     if len(lines.row) < 2:
         return ()
@@ -255,16 +255,10 @@ class _Told:
 
     def _nearest(self, station: int, piece: list[tuple[int, int]], ends: list[int]) -> int | None:
         """The lasting mark of a piece that is nearest in the plane, else the first of its ends that lasts."""
-        here = self._plane[station]
-        found, asked = len(self._placed), NEAR
-        while np.isfinite(here).all() and found:
-            _, near = self._tree.query(here, min(asked, found))
-            for k in np.atleast_1d(near).tolist():
-                if self._inside(piece, self._placed[k]):
-                    return int(self._placed[k])
-            if asked >= found:
-                break
-            asked *= NEAR
+        away = np.hypot(*(self._plane[self._placed] - self._plane[station]).T)
+        inside = np.any([(a <= self._placed_at) & (self._placed_at < b) for a, b in piece], axis=0)
+        if np.isfinite(away[inside]).any():
+            return int(self._placed[np.where(inside, away, np.inf).argmin()])
         return next((i for i in ends if self._lasting[i]), None)
 
     @cached_property
@@ -285,10 +279,9 @@ class _Told:
         return np.flatnonzero(np.isfinite(self._plane).all(axis=1) & np.array(self._lasting))
 
     @cached_property
-    def _tree(self) -> Any:
-        from scipy.spatial import KDTree  # levels seldom have places in the plane
-
-        return KDTree(self._plane[self._placed])
+    def _placed_at(self) -> Ints:
+        """Their places in the order of visit."""
+        return self.net.place[self._placed]
 
     # ---- in words
 
