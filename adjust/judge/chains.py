@@ -255,7 +255,7 @@ class _Told:
 
     def _nearest(self, station: int, piece: list[tuple[int, int]], ends: list[int]) -> int | None:
         """The lasting mark of a piece that is nearest in the plane, else the first of its ends that lasts."""
-        away = np.hypot(*(self._plane[self._placed] - self._plane[station]).T)
+        away = ((self._plane[self._placed] - self._plane[station]) ** 2).sum(axis=1)
         inside = np.any([(a <= self._placed_at) & (self._placed_at < b) for a, b in piece], axis=0)
         if np.isfinite(away[inside]).any():
             return int(self._placed[np.where(inside, away, np.inf).argmin()])

@@ -154,7 +154,7 @@ class Unchecked:
     def _moves(self, rows: list[int]) -> Array:
         """Movements (n, 3, m) of the stations for an error in each of the rows, scaled to at most one."""
         moved = self.moved(rows)
-        return moved / np.maximum(np.abs(moved).max(axis=(0, 1), initial=0.0), 1e-300)
+        return np.asarray(moved / np.maximum(np.abs(moved).max(axis=(0, 1), initial=0.0), 1e-300))
 
     def moved(self, rows: list[int]) -> Array:
         """Movements (n, 3, m) of the stations for a unit error in each of the rows, metres per metre or radian."""
