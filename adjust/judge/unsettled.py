@@ -9,24 +9,21 @@ At the most TRIED + 2 + MOST_TOGETHER iterations are run.
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 
 import numpy as np
 
 from adjust.book.job import Job
 from adjust.errors import Unsolvable
+from adjust.judge.naming import amount, called, together
 from adjust.judge.outvoted import GROSS, outvoted
-from adjust.judge.readings import kind_word
 from adjust.judge.unfixed import Figure
-from adjust.kinds import KINDS
-from adjust.network import Array, Ints
+from adjust.network import Array, Block, Ints
 from adjust.solver.defects import Freedom, thin_stations
 from adjust.solver.design import State
 from adjust.solver.elements import make_batches
 from adjust.solver.engine import SingularPattern
 from adjust.solver.gauss import GaussNewton, NotSettled
-from adjust.units import ANGLES, LENGTHS
 
 TRIED, TRIED_LARGE, LARGE = 12, 4, 5000
 """Readings tried, and fewer in jobs of more than LARGE scalar rows, where each trial takes long."""
@@ -78,22 +75,18 @@ def words(job: Job, stopped: NotSettled) -> list[str]:
 
 
 def _alone(job: Job, stopped: NotSettled, trial: _Trial) -> str:
-    (row,), (amount,) = trial.rows, trial.amounts
-    return (f"{_called(job, stopped, row)} disagrees with the others by about {_amount(job, stopped, row, amount)}: "
+    (row,), (size,) = trial.rows, trial.amounts
+    return (f"{_called(job, stopped, row)} disagrees with the others by about {_amount(job, stopped, row, size)}: "
             "without it the adjustment settles, with it it does not; check it in the book")  # fmt: skip
 
 
 def _together(job: Job, stopped: NotSettled, trial: _Trial) -> str:
     if len(trial.rows) == 1:
         return _alone(job, stopped, trial)
-    who = _and([_called(job, stopped, r) for r in trial.rows])
-    by = _and([_amount(job, stopped, r, a) for r, a in zip(trial.rows, trial.amounts, strict=True)])
+    who = together([_called(job, stopped, r) for r in trial.rows])
+    by = together([_amount(job, stopped, r, a) for r, a in zip(trial.rows, trial.amounts, strict=True)])
     return (f"without {who} together the adjustment settles, with them it does not: they differ from the others by "
             f"about {by}; check them in the book")  # fmt: skip
-
-
-def _and(texts: list[str]) -> str:
-    return f"{', '.join(texts[:-1])} and {texts[-1]}"
 
 
 def _thin(stopped: NotSettled) -> list[str]:
@@ -185,34 +178,14 @@ def _start_without(stopped: NotSettled, row: int) -> State:
 
 
 def _called(job: Job, stopped: NotSettled, row: int) -> str:
-    """'distances.csv:7 (distance A to B, 154.203 m)'."""
+    block, i = _booked(stopped, row)
+    return called(job, block, i)
+
+
+def _amount(job: Job, stopped: NotSettled, row: int, size: float) -> str:
+    return amount(job, _booked(stopped, row)[0], size)
+
+
+def _booked(stopped: NotSettled, row: int) -> tuple[Block, int]:
     network = stopped.iteration.design.network
-    block, i = network.blocks[network.rows.block[row]], int(network.rows.row[row])
-    names = [network.stations.names[s] for s in block.stations[i]]
-    kind = KINDS[block.kind]
-    ends = names[0] if len(names) == 1 else " to ".join(names) if len(names) == 2 else (
-        f"{names[1]} to {names[2]} at {names[0]}")  # fmt: skip
-    texts = job.booked(block.file).get(int(block.line[i]), ())
-    booked = next((t for t in texts if t), "")
-    units = next((t.units for t in job.tables if t.file == block.file), job.settings.units)
-    unit = f" {units.length}" if kind.dimension == "length" and booked else ""
-    return f"{block.name(i)} ({kind_word(block.kind)} {ends}{f', {booked}{unit}' if booked else ''})"
-
-
-def _amount(job: Job, stopped: NotSettled, row: int, amount: float) -> str:
-    """The difference in the job's units, two figures."""
-    network = stopped.iteration.design.network
-    block = network.blocks[network.rows.block[row]]
-    units, size = job.settings.units, abs(amount)
-    if KINDS[block.kind].dimension == "length":
-        return f"{_two_figures(size / LENGTHS[units.length])} {units.length}"
-    if units.angle in ("gon", "mil"):
-        return f"{_two_figures(size / ANGLES[units.angle])} {units.angle}"
-    degrees = math.degrees(size)
-    if degrees >= 1:
-        return f"{degrees:.0f} degrees"
-    return f"{degrees * 60:.0f} minutes" if degrees * 60 >= 1 else f"{degrees * 3600:.0f} seconds"
-
-
-def _two_figures(x: float) -> str:
-    return f"{float(f'{x:.2g}'):g}"
+    return network.blocks[network.rows.block[row]], int(network.rows.row[row])
