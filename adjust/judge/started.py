@@ -1,9 +1,9 @@
 """What the starting coordinates found wrong: readings they disagree with, and what contradicts where there are none.
 
 Where the readings lead to no start, three things are looked for. Two lengths r, s to a station from two known ones a
-distance d apart meet only if the longest of r, s, d is no longer than the other two together. Readings that the start
-of the rest disagrees with are named. Else readings are left out, one at a time and then in pairs, until the rest leads
-to a start, and those are named that it disagrees with; at the most TRIED + PAIRED (PAIRED - 1) / 2 starts are made.
+distance d apart meet only if the longest of r, s, d is no longer than the other two together. Readings that the start,
+as far as it goes, disagrees with are named. Else readings are left out one at a time, and those are named without which
+the rest leads to a start that they disagree with; at the most TRIED starts are made.
 """
 
 from __future__ import annotations
@@ -27,10 +27,10 @@ from adjust.network import Block, Network
 from adjust.solver.solution import Solution
 from adjust.units import LENGTHS
 
-TRIED, PAIRED = 24, 7
-"""Readings left out alone, and those of which every two are left out together."""
-LARGE = 2000
-"""Readings in the plane above which nothing is left out: every start takes long."""
+TRIED = 12
+"""Readings left out in turn: a start that fails takes a second in small networks of angles."""
+LARGE = 300
+"""Readings in the plane above which nothing is left out: every start would take long."""
 MOST_NAMED = 5
 
 Place = tuple[int, int]
@@ -132,14 +132,10 @@ class _Contradictions:
     # ---- readings left out
 
     def left_out(self) -> list[str]:
-        """The fewest readings without which the others lead to a start that disagrees with these."""
-        candidates = self._candidates()
-        for sets in ([(c,) for c in candidates[:TRIED]], list(combinations(candidates[:PAIRED], 2))):
-            trials = [t for t in (self._without(one) for one in sets) if t is not None]
-            if trials:
-                fewest = min(left for left, _ in trials)
-                return [words for left, words in trials if left == fewest][:MOST_NAMED]
-        return []
+        """Readings without which the others lead to a start that disagrees with them, and with the fewest others."""
+        trials = [t for t in (self._without(one) for one in self._candidates()[:TRIED]) if t is not None]
+        fewest = min((left for left, _ in trials), default=0)
+        return [words for left, words in trials if left == fewest][:MOST_NAMED]
 
     def _candidates(self) -> list[Place]:
         """Readings in the plane at the stations without a start, then the others; none in large jobs."""
@@ -150,18 +146,15 @@ class _Contradictions:
         sources = list(dict.fromkeys(s for _, _, s in order))
         return [self._clues.sources[s] for s in sources] if len(sources) <= LARGE else []
 
-    def _without(self, places: tuple[Place, ...]) -> tuple[int, str] | None:
-        """(readings still doubtful, sentence) of a start without some readings; None where it fails or they fit it."""
-        start = find_start(_less(self.network, places))
-        if start.failures:
+    def _without(self, place: Place) -> tuple[int, str] | None:
+        """(readings still doubtful, sentence) of a start without a reading; None where it fails or it fits it."""
+        start = find_start(_less(self.network, place))
+        size = None if start.failures else self._misfit(start, place)
+        if size is None:
             return None
-        off = [self._misfit(start, place) for place in places]
-        if any(size is None for size in off):
-            return None
-        by = [_off(self.job, self.network.blocks[b], size or 0.0) for (b, _), size in zip(places, off, strict=True)]
-        who, are = together([self._called(p) for p in places]), "it is" if len(places) == 1 else "they are"
-        return len(start.doubtful), (f"without {who} the other readings lead to starting coordinates, for which {are} "
-                                     f"{together(by)}: check it in the book")  # fmt: skip
+        off = _off(self.job, self.network.blocks[place[0]], size)
+        return len(start.doubtful), (f"without {self._called(place)} the other readings lead to starting coordinates, "
+                                     f"for which it is {off}: check it in the book")  # fmt: skip
 
     def _misfit(self, start: Start, place: Place) -> float | None:
         """Computed minus observed of a reading, metres or radians, if it is grossly off; else None."""
@@ -175,10 +168,8 @@ class _Contradictions:
         return float(size[mine[np.abs(size[mine]).argmax()]]) if len(mine) else None
 
 
-def _less(network: Network, places: tuple[Place, ...]) -> Network:
-    """The network without some readings, for a start."""
-    blocks = list(network.blocks)
-    for b in {b for b, _ in places}:
-        out = [i for block, i in places if block == b]
-        blocks[b] = blocks[b].take(np.setdiff1d(np.arange(len(blocks[b])), out))
-    return replace(network, blocks=tuple(blocks), clusters=())
+def _less(network: Network, place: Place) -> Network:
+    """The network without a reading, for a start."""
+    b, i = place
+    left = network.blocks[b].take(np.delete(np.arange(len(network.blocks[b])), i))
+    return replace(network, blocks=(*network.blocks[:b], left, *network.blocks[b + 1 :]), clusters=())

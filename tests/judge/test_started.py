@@ -12,6 +12,7 @@ from adjust.book.job import Job
 from adjust.errors import Unsolvable
 from adjust.judge.started import doubtful_sentences, start_words
 from adjust.solver.solve import solve
+from tests.judge.unsettled_study import case
 
 PLACES = {"A": (1000.0, 1000.0), "B": (1300.0, 1000.0), "C": (1000.0, 1300.0), "P": (1150.0, 1100.0),
           "Q": (1250.0, 1250.0), "R": (1080.0, 1210.0)}  # fmt: skip
@@ -84,7 +85,8 @@ def test_rows_are_those_of_the_solution_where_a_free_datum_sets_control_aside(tm
     ("wrong", "lacks"), [(-100.0, "39.44 m is lacking"), (500.0, "200.00 m is lacking")], ids=["short", "long"]
 )
 def test_two_lengths_that_do_not_meet_are_told(wrong: float, lacks: str, tmp_path: Path) -> None:
-    """A and B stand 300 m apart, the lengths are 180.28 m, one of them wrong: 300 - 180.278 - 80.278 = 39.444 m; 680.28 - 180.28 - 300 = 200 m."""
+    """A and B stand 300 m apart, the lengths are 180.28 m, one of them wrong: 300 - 180.278 - 80.278 = 39.444 m;
+    680.278 - 180.278 - 300 = 200 m."""
     (said,) = refused(job(tmp_path, "AB", {"A P": wrong, "B P": 0.0}))
     booked = f"{math.dist(PLACES['A'], PLACES['P']) + wrong:.3f}"
     assert said.startswith(
@@ -109,3 +111,17 @@ def test_what_is_refused_for_other_reasons_is_told_as_it_was(tmp_path: Path) -> 
         solve(one)
     assert start_words(one, refusal.value) == refusal.value.sentences
     assert not [line for line in refusal.value.sentences if "disagree" in line or "do not meet" in line]
+
+
+def test_without_a_start_the_reading_left_out_that_gives_one_is_named(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Azimuths and angles of seven stations, one of each wrong: number 307 of the study; it is the fourth one tried."""
+    monkeypatch.setattr("adjust.judge.started.TRIED", 4)
+    wrong = case(307, 2, tmp_path)
+    (said,) = refused(wrong.job)
+    assert said == (
+        "without angles.csv:23 (angle Ga to Ba at Da, 142.78286068127224) the other readings lead to starting "
+        "coordinates, for which it is about 180 degrees off: check it in the book"
+    )
+    assert "angles.csv:23" in wrong.names
