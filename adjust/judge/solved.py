@@ -24,6 +24,11 @@ def solve(job: Job) -> Solution:
 
         with one_thread():
             raise Unsolvable(_by_scale(job) or unfixed.words(loose)) from None
+    except Unsolvable as refused:
+        from adjust.judge.started import start_words
+
+        with one_thread():
+            raise Unsolvable(start_words(job, refused)) from None
     except NotSettled as stopped:
         from adjust.judge import unsettled
 

@@ -188,4 +188,4 @@ class Bench:
                 by = yardstick(solution, given)
                 by = by if given else replace(by, scale=by.scale * shrunk**2)
                 report = compare_control(solution, figures, by, base.tests, replace(marks, g=draws.g[d]))
-            yield replace(base, solution=solution, reliability=figures, control_report=report, scale=scale)
+            yield replace(base, solution=solution, reliability=figures, control_given=report, scale=scale)
