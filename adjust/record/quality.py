@@ -44,7 +44,7 @@ def report_entry(judgement: Judgement) -> dict[str, Any]:
     }  # fmt: skip
     return {
         "consistent": list(report.consistent), "released": list(report.released),
-        "cannot_tell": [list(group) for group in report.cannot_tell], "scale": scale,
+        "cannot_tell": [{"marks": list(group)} for group in report.cannot_tell], "scale": scale,
         "sentences": list(report.sentences),
     }  # fmt: skip
 
