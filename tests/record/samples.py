@@ -79,7 +79,8 @@ def record(title: str, stations: list[Record], observations: list[Record], what:
         "control_report": {"consistent": [], "released": [], "cannot_tell": [], "scale": None, "sentences": []},
         "cleared": [], "removals": [], "without_suspects": None, "inseparable": [], "chains": [], "budgets": [],
         "systematic": [], "systematic_by_chance": 0.0, "variance_components": [],
-        "findings": [{"about": "all", "sentence": "Nothing stands out: the readings fit as stated."}], "ledger": [], "reductions": [], "left_out": [], "not_measured": [], "warnings": [],
+        "findings": [{"about": "all", "sentence": "Nothing stands out: the readings fit as stated."}],
+        "ledger": [], "reductions": [], "left_out": [], "not_measured": [], "warnings": [],
         **more,
     }  # fmt: skip
 
