@@ -61,6 +61,34 @@ class Group:
 
 
 @dataclass(frozen=True)
+class Source:
+    """One thing that the standard deviations of m rows are made of."""
+
+    what: str
+    sd: Array
+    """(m,) its own, zero in rows without it."""
+    linear: bool = False
+    """Whether it adds to the other linear ones of its row before the squares are added."""
+    counted: bool = False
+    """Whether it becomes smaller with the number of readings meaned."""
+
+
+@dataclass(frozen=True)
+class Makeup:
+    """What the standard deviations of m rows are made of: s^2 = (sum of the linear ones)^2 + squares of the others."""
+
+    sources: tuple[Source, ...]
+    count: Array
+    """(m,) readings meaned, NaN where not told; the sources have it in them, as the following."""
+    factor: float = 1.0
+    """sd_factor of the table."""
+
+    def cut(self, rows: Ints) -> Makeup:
+        """That of ``rows`` alone."""
+        return Makeup(tuple(replace(s, sd=s.sd[rows]) for s in self.sources), self.count[rows], self.factor)
+
+
+@dataclass(frozen=True)
 class Block:
     """The used rows of one table of one kind; m rows of p parts."""
 
@@ -105,6 +133,8 @@ class Block:
     a column takes no part; None: all stand in the line of the row."""
     booked_join: str = " - "
     """Between these texts: a level's set-up is back - fore, a pointing is the readings of both faces."""
+    makeup: Makeup | None = None
+    """What ``sd`` is made of; None for coordinates and settings, which tell it themselves."""
     labels: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     """(m) names by what they are of: instrument, reflector, day, crew; '' where not told, no key where none is."""
 
@@ -125,6 +155,7 @@ class Block:
             self, stations=self.stations[rows], values=self.values[rows], sd=self.sd[rows], group=self.group[rows],
             held=self.held[rows], line=self.line[rows], above=cut(self.above), offset=cut(self.offset),
             constant=cut(self.constant), eccentric=None, walked=cut(self.walked),
+            makeup=self.makeup.cut(rows) if self.makeup else None,
         )  # fmt: skip
 
     def kept(self, rows: Ints) -> Block:

@@ -6,8 +6,9 @@ distance meters state their figures (common practice); the root-sum-square is th
 
 from __future__ import annotations
 
+import json
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -34,6 +35,8 @@ class Term:
 
     size: float
     per: str = ""
+    text: str = field(default="", compare=False)
+    """As written: 1.5 mm."""
 
 
 @dataclass(frozen=True)
@@ -52,15 +55,32 @@ class Precision:
     def sd(self, m: int, **given: Array) -> Array:
         """Standard deviations (m,) in metres or radians; ``given`` holds distance, length (metres), setup (count)."""
         total = np.zeros(m)
+        for _, part in self.parts(m, **given):
+            total = total + (part if self.linear else part * part)
+        return total if self.linear else np.sqrt(total)
+
+    def parts(self, m: int, **given: Array) -> list[tuple[Term, Array]]:
+        """Each term with its own standard deviations (m,)."""
+        out = []
         for term in self.terms:
-            factor: Array | float = 1.0
+            factor: Array = np.ones(m)
             if term.per == "ppm":
                 factor = np.abs(given["distance"])
             elif term.per:
                 factor = np.sqrt(given[term.per])
-            part = term.size * factor
-            total = total + (part if self.linear else part * part)
-        return total if self.linear else np.sqrt(total)
+            out.append((term, term.size * factor))
+        return out
+
+    def scaled(self, factor: float) -> str:
+        """The model ``factor`` times as large as a value of job.toml, numbers to three figures."""
+        texts = [TERM.sub(lambda m: three_figures(float(m[1]) * factor) + m[0][len(m[1]) :], t.text)
+                 for t in self.terms]  # fmt: skip
+        return json.dumps(" + ".join(texts) if self.linear else texts, ensure_ascii=False)
+
+
+def three_figures(x: float) -> str:
+    """A number with three figures: 0.0312, 2.1, 1230."""
+    return f"{float(f'{x:.3g}'):.15g}"
 
 
 def parse_precision(value: object, dimension: str, decimal: str = ".") -> Precision:
@@ -90,7 +110,7 @@ def _term(text: str, dimension: str, decimal: str) -> Term:
     if size < 0:
         raise BadValue(f'"{text}" is below zero; give the size of the standard deviation')
     if unit == "ppm" and dimension == "length" and not root:
-        return Term(size * 1e-6, "ppm")
+        return Term(size * 1e-6, "ppm", text)
     table = ANGLES if dimension == "angle" else LENGTHS
     if unit not in table:
         raise BadValue(
@@ -98,11 +118,11 @@ def _term(text: str, dimension: str, decimal: str) -> Term:
         )
     size *= table[unit]
     if not root:
-        return Term(size)
+        return Term(size, "", text)
     if dimension != "rise":
         raise BadValue(f'"{text}": a root belongs to levelling only')
     if root == "setup":
-        return Term(size, "setup")
+        return Term(size, "setup", text)
     if root not in LENGTHS:
         raise BadValue(f"sqrt({root}): use sqrt(km), sqrt(mi) or sqrt(setup)")
-    return Term(size / LENGTHS[root] ** 0.5, "length")
+    return Term(size / LENGTHS[root] ** 0.5, "length", text)

@@ -6,6 +6,7 @@ order, 1893; retired 2022-12-31 but found in the coordinates of many jobs). Angl
 
 from __future__ import annotations
 
+import itertools
 import math
 import re
 
@@ -350,3 +351,39 @@ def small_length(metres: float, unit: str) -> str:
 def wrap(radians: float) -> float:
     """The angle brought to (-pi, pi]."""
     return -((math.pi - radians) % TURN - math.pi)
+
+
+def rough(x: float) -> str:
+    """The size of a number with two figures, without exponents: 0.14, 8.2, 130, 5.0."""
+    size = abs(x)
+    if not size > 0:
+        return "0"
+    places = 1 - math.floor(math.log10(float(f"{size:.1e}")))
+    return f"{size:.{places}f}" if places > 0 else f"{round(size, places):.0f}"
+
+
+SMALL_BELOW_M = 0.1
+"""Lengths below this are told in millimetres where the job is in metres: 82 mm, but 0.14 m."""
+
+
+def rough_length(metres: float, unit: str) -> str:
+    """The size of a length with two figures: '8.2 mm', '0.14 m', '0.027 ft'."""
+    size = abs(metres)
+    if unit == "m" and float(f"{size:.1e}") < SMALL_BELOW_M:
+        return f"{rough(size * 1000)} mm"
+    return f"{rough(size / LENGTHS[unit])} {unit}"
+
+
+def rough_angle(radians: float, notation: str) -> str:
+    """The size of an angle with two figures, in the small unit of the notation or the next larger: '12 sec',
+    '2.3 minutes', '1.4 degrees'; '3.7 mgon', '1.2 gon'."""
+    size = abs(radians)
+    if notation == "gon":
+        steps = [("mgon", "mgon"), ("gon", "gon")]
+    else:
+        steps = [("sec", "sec"), ("min", "minutes"), ("deg", "degrees")]
+    for (unit, name), (larger, _) in itertools.pairwise(steps):
+        if float(f"{size / ANGLES[unit]:.1e}") < round(ANGLES[larger] / ANGLES[unit]):
+            return f"{rough(size / ANGLES[unit])} {name}"
+    unit, name = steps[-1]
+    return f"{rough(size / ANGLES[unit])} {name}"

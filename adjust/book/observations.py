@@ -65,7 +65,7 @@ class Observations:
         raw = values(use)
         corrected = correct(self.settings, cells, named, raw, use) if kind.says == "length" else Corrected(raw)
         lay = lay_of(cells, kind, corrected.values, use, self.settings.frame.refraction.value)
-        sd, precision = stated_sds(self.settings, cells, sheet, lay, held, use)
+        sd, precision, makeup = stated_sds(self.settings, cells, sheet, lay, held, use)
         group = self._groups(cells, kind, names, use)
         setup = self._setups(cells, names[0])
         offset = _offsets(cells, kind, use)
@@ -101,6 +101,7 @@ class Observations:
                 setup=np.array([setup[i] for i in use], dtype=np.int64),
                 eccentric=self._eccentric(kind, [precision[i] for i in use]),
                 walked=_walked(cells, sheet, use),
+                makeup=makeup.cut(chosen),
                 labels=self._labels(cells, kind, [precision[i] for i in use], use),
             )
         )

@@ -11,7 +11,7 @@ import numpy as np
 
 from adjust.book.settings import Tests
 from adjust.judge import critical
-from adjust.judge.control import Mark, compare_control, yardstick
+from adjust.judge.control import ControlReport, Mark
 from adjust.judge.lines import Lines, find_lines
 from adjust.judge.overall import NOT_MET, OverallTest, overall_tests
 from adjust.judge.reliability import Reliability, largest_effect, reliability
@@ -24,8 +24,10 @@ if TYPE_CHECKING:
     from adjust.judge.balances import Balance
     from adjust.judge.blunders import Found
     from adjust.judge.closures import Closure
+    from adjust.judge.components import Component
     from adjust.judge.effect_words import Systematic
     from adjust.judge.separable import Group
+    from adjust.judge.staged import Searched
     from adjust.judge.suspects import Suspect
     from adjust.judge.unchecked import Unchecked
 
@@ -54,7 +56,13 @@ class Judgement:
     effect: Array
     """Movement of the coordinate moved most by the smallest detectable blunder (R,), metres."""
     lines: Lines
-    control: tuple[Mark, ...]
+    control_given: ControlReport | None = None
+    """What is said of the control where that is known already; None: it is compared without the blunders."""
+
+    @property
+    def control(self) -> tuple[Mark, ...]:
+        """Verdicts on the coordinates of held, check and weighted marks."""
+        return self.control_report.marks
 
     @cached_property
     def statistic(self) -> Array:
@@ -97,12 +105,22 @@ class Judgement:
         return bool((self.reliability.tested | self.solution.design.held).all())
 
     @cached_property
-    def blunders(self) -> Found:
-        """The readings that are in error at the level of the whole job, and the network without them."""
-        from adjust.judge.blunders import find_blunders
+    def searched(self) -> Searched:
+        """Blunders, the network without them, and the control compared with that."""
+        from adjust.judge.staged import search
 
         with one_thread():
-            return find_blunders(self.solution, self.reliability, self.tests)
+            return search(self.solution, self.reliability, self.tests)
+
+    @property
+    def blunders(self) -> Found:
+        """The readings that are in error at the level of the whole job, and the network without them."""
+        return self.searched.found
+
+    @property
+    def control_report(self) -> ControlReport:
+        """What is said of the control, compared with the readings without the blunders."""
+        return self.control_given or self.searched.report
 
     def confusable(self, suspect: Suspect) -> list[tuple[int, float, float]]:
         """Rows that no test here can tell from a suspect: row, correlation of the statistics, and the chance that the
@@ -174,7 +192,17 @@ class Judgement:
         """Effects that many readings could share, each tested as one more unknown."""
         from adjust.judge.systematic import systematic
 
-        return systematic(self.solution, self.reliability, self.tests)
+        cleaned = self.searched.cleaned
+        with one_thread():
+            figures = self.reliability if cleaned is self.solution else reliability(cleaned)
+            return systematic(cleaned, figures, self.tests)
+
+    @cached_property
+    def components(self) -> tuple[Component, ...]:
+        """Variance components by groups of readings, the blunders left out."""
+        from adjust.judge.components import components
+
+        return components(self.searched.cleaned)
 
     @property
     def constants(self) -> list[str]:
@@ -202,7 +230,7 @@ class Judgement:
             any(test.verdict == NOT_MET for test in (*self.overall, *self.overall_free))
             or bool(self.suspect_of_job.any())
             or any(one.at_job_level for one in self.suspects)
-            or any(mark.verdict == "disagrees" for mark in self.control)
+            or self.control_report.failed
             or any(one.verdicts[key] == NOT_MET for one in self.closures for key in one.declared)
             or any(one.verdict == NOT_MET for one in self.solution.job.reductions)
         )
@@ -282,5 +310,4 @@ def assess(solution: Solution) -> Judgement:
             effect_part=part,
             effect=size * smallest,
             lines=find_lines(solution, scale),
-            control=compare_control(solution, figures, yardstick(solution, given), tests),
         )

@@ -24,7 +24,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -116,27 +116,41 @@ class Found:
     """Whether only the robust estimate found them."""
     paths: tuple[Path, ...] = ()
     """The steps that led to the set, each path with the model in which it was gone."""
+    first: Model | None = None
+    """All readings linearised at the solution itself."""
     too_many: bool = False
     """Whether more readings fail than blunders could explain; none is set apart then."""
 
 
-def find_blunders(solution: Solution, known: Reliability, tests: Tests) -> Found:
-    """The readings in error at the level of the whole job, and the network without them."""
+def find_blunders(solution: Solution, known: Reliability, tests: Tests, begin: Sequence[int] = ()) -> Found:
+    """The readings in error at the level of the whole job, and the network without them; ``begin``: those known."""
     levels = Levels.of(tests, int(known.tested.sum()))
     model = Model.of(solution, known)
-    nothing = Found((), model, None, False)
+    nothing = Found((), model, None, False, first=model)
     if model.degrees < 2 or not known.tested.any():
         return nothing
+    if begin:
+        return _settled(solution, levels, [], model, False, list(begin))
     way = _gross_first(solution, model, levels)
     here = way[-1].model if way else model
     plain = improved(here, levels, way[-1].last if way else [])
     if plain is None:
-        return Found((), model, None, False, too_many=True)
+        return Found((), model, None, False, first=model, too_many=True)
     robust = _from_robust(solution, here, levels, plain.last)
     chosen = robust or plain
     if not chosen.last:
         return nothing
-    return _settled(solution, levels, [*way[:-1], chosen], model, robust is not None)
+    return _settled(solution, levels, [*way[:-1], chosen], model, robust is not None, chosen.last)
+
+
+def exactly(solution: Solution, known: Reliability, rows: Sequence[int]) -> Found:
+    """The network without given readings, no step further."""
+    model = Model.of(solution, known)
+    outcome = adjusted_without(solution, rows) if rows else None
+    if outcome is None:
+        return Found((), model, None, False, first=model)
+    there = Model.at(solution, outcome.last.state)
+    return Found(_in_order(there, rows), there, outcome, False, (), model)
 
 
 def _gross_first(solution: Solution, model: Model, levels: Levels) -> list[Path]:
@@ -159,24 +173,27 @@ def _gross_first(solution: Solution, model: Model, levels: Levels) -> list[Path]
     return [*ways, Path(model, (tuple(rows),))] if ways else []
 
 
-def _settled(solution: Solution, levels: Levels, paths: list[Path], at_first: Model, together: bool) -> Found:
+def _settled(
+    solution: Solution, levels: Levels, paths: list[Path], at_first: Model, together: bool, rows: list[int]
+) -> Found:
     """Adjust without the set until it stays as it is."""
     seen: set[frozenset[int]] = set()
+    nothing = Found((), at_first, None, False, first=at_first)
     while True:
-        rows = paths[-1].last
         outcome = adjusted_without(solution, rows)
         if outcome is None:
-            return Found((), at_first, None, False)
+            return nothing
         model = Model.at(solution, outcome.last.state)
         again = improved(model, levels, rows)
         if again is None:
-            return Found((), at_first, None, False, too_many=True)
+            return replace(nothing, too_many=True)
         if not again.last:
-            return Found((), at_first, None, False)
+            return nothing
         if set(again.last) == set(rows) or frozenset(again.last) in seen or len(seen) >= ROUNDS:
-            return Found(_in_order(model, rows), model, outcome, together, tuple(paths))
+            return Found(_in_order(model, rows), model, outcome, together, tuple(paths), at_first)
         seen.add(frozenset(rows))
         paths.append(again)
+        rows = again.last
 
 
 def _in_order(model: Model, rows: Sequence[int]) -> tuple[int, ...]:

@@ -126,7 +126,8 @@ def shifts(solution: Solution, found: Found) -> Array:
 
 
 def _adjusted(solution: Solution, found: Found, levels: Levels) -> Removal:
-    at_first = found.paths[0].model.without(())
+    assert found.first is not None
+    at_first = found.first.without(())
     return Removal(ADJUSTED, found.rows, -1, None, None, fit(at_first, levels),
                    fit(found.model.without(found.rows), levels),
                    _largest(np.nan_to_num(shifts(solution, found))))  # fmt: skip

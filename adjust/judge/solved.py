@@ -15,7 +15,7 @@ def solve(job: Job) -> Solution:
     """Adjust a job by least squares.
 
     Raises Unsolvable where the readings leave something free, by station and movement; NotConverged where it does not
-    settle, with the readings that fight.
+    settle, with the readings that fight; either where the control has another scale than the readings, with that scale.
     """
     try:
         return adjusted(job)
@@ -23,9 +23,22 @@ def solve(job: Job) -> Solution:
         from adjust.judge import unfixed
 
         with one_thread():
-            raise Unsolvable(unfixed.words(loose)) from None
+            raise Unsolvable(_by_scale(job) or unfixed.words(loose)) from None
+    except Unsolvable as refused:
+        from adjust.judge.started import start_words
+
+        with one_thread():
+            raise Unsolvable(start_words(job, refused)) from None
     except NotSettled as stopped:
         from adjust.judge import unsettled
 
         with one_thread():
-            raise NotConverged(unsettled.words(job, stopped)) from None
+            raise NotConverged(_by_scale(job) or unsettled.words(job, stopped)) from None
+
+
+def _by_scale(job: Job) -> list[str]:
+    """What a gross scale of the control against the readings has bent needs no other reason."""
+    from adjust.judge.scale_words import scale_sentence
+
+    sentence = scale_sentence(job)
+    return [sentence] if sentence else []

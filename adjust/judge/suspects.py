@@ -11,7 +11,7 @@ import numpy as np
 from adjust.judge.blunders import Levels
 from adjust.judge.leaving_out import Without
 from adjust.judge.overall import OverallTest, overall_of
-from adjust.judge.removals import Fit, Removal, fit, removals, shifts
+from adjust.judge.removals import Fit, Removal, fit, shifts
 from adjust.network import Array
 
 if TYPE_CHECKING:
@@ -125,4 +125,4 @@ def mended(judgement: Judgement) -> Mended | None:
 
 def log(judgement: Judgement) -> tuple[Removal, ...]:
     """The steps of the search."""
-    return removals(judgement.solution, judgement.blunders, levels_of(judgement))
+    return judgement.searched.log

@@ -1,28 +1,29 @@
 """Which readings fight when the iteration does not settle.
 
 The readings that fit worst where it began and where it stopped are tried one by one: the iteration runs again with the
-weight of one of them taken away, and if it settles, that reading is named with what it differs from the others.
+weight of one of them taken away, and if it settles, that reading is named with what it differs from the others. Where
+none mends it, or the rest still fits badly, those that a redescending estimate finds (adjust.judge.outvoted) are left
+out together, and if it settles, each is put back in turn: it is sound if it then fits, else it is named with the rest.
+At the most TRIED + 2 + MOST_TOGETHER iterations are run.
 """
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 
 import numpy as np
 
 from adjust.book.job import Job
 from adjust.errors import Unsolvable
-from adjust.judge.readings import kind_word
+from adjust.judge.naming import amount, called, together
+from adjust.judge.outvoted import GROSS, outvoted
 from adjust.judge.unfixed import Figure
-from adjust.kinds import KINDS
-from adjust.network import Array, Ints
+from adjust.network import Array, Block, Ints
 from adjust.solver.defects import Freedom, thin_stations
 from adjust.solver.design import State
 from adjust.solver.elements import make_batches
 from adjust.solver.engine import SingularPattern
-from adjust.solver.gauss import GaussNewton, NotSettled, Outcome
-from adjust.units import ANGLES, LENGTHS
+from adjust.solver.gauss import GaussNewton, NotSettled
 
 TRIED, TRIED_LARGE, LARGE = 12, 4, 5000
 """Readings tried, and fewer in jobs of more than LARGE scalar rows, where each trial takes long."""
@@ -30,25 +31,37 @@ TRIAL_ITERATIONS = 15
 """Without its gross error a network settles in fewer than ten iterations; more would only make the user wait."""
 WITHOUT = 1e5
 """Factor on the standard deviation of the reading whose weight is taken away."""
-GROSS = 10.0
-"""A reading is blamed only if it differs from the others by this many of its standard deviations."""
 MOST_NAMED = 5
 AS_GOOD = 3.0
 """Others are named too if without them the weighted square sum is within this factor of the best."""
 
 
+MOST_TOGETHER = 6
+"""Readings left out together: more gross errors than that are a mix-up of names or files."""
+FITS = 30.0
+"""The weighted square sum per reading to spare from which what is left counts as badly fitting still: with sound
+readings it is near 1, and one gross error of `GROSS` standard deviations in ten readings gives 10."""
+
+
 @dataclass(frozen=True)
 class _Trial:
-    row: int
+    """An iteration that settled without some rows: what it left, and how far these rows are off."""
+
+    rows: tuple[int, ...]
     square_sum: float
-    amount: float
+    amounts: tuple[float, ...]
+    state: State
 
 
 def words(job: Job, stopped: NotSettled) -> list[str]:
-    """One sentence for every reading without which the iteration settles, else those that fit worst."""
-    design = stopped.iteration.design
+    """One sentence for every reading without which the iteration settles, or for several together, else those that
+    fit worst."""
     rows = _candidates(stopped)
-    trials = sorted((t for t in (_without(stopped, int(r)) for r in rows) if t), key=lambda t: t.square_sum)
+    trials = sorted((t for t in (_one(stopped, int(r)) for r in rows) if t), key=lambda t: t.square_sum)
+    if not trials or trials[0].square_sum > FITS * len(stopped.iteration.design.sd):
+        several = _several(stopped)
+        if several and not (trials and trials[0].square_sum <= AS_GOOD * several.square_sum):
+            return [_together(job, stopped, several)]
     if not trials and (thin := _thin(stopped)):
         return thin
     if not trials:
@@ -57,11 +70,23 @@ def words(job: Job, stopped: NotSettled) -> list[str]:
             "the adjustment does not settle from these starting values, and leaving out any one reading does not mend "
             f"it; those that fit worst are {few}: look there for gross errors, or give better starts"
         ]
-    kept = [t for t in trials if t.square_sum <= AS_GOOD * trials[0].square_sum + len(design.network.rows)]
-    return [
-        f"{_called(job, stopped, t.row)} disagrees with the others by about {_amount(job, stopped, t)}: without it the "
-        "adjustment settles, with it it does not; check it in the book" for t in kept[:MOST_NAMED]
-    ]  # fmt: skip
+    most = AS_GOOD * trials[0].square_sum + len(stopped.iteration.design.sd)
+    return [_alone(job, stopped, t) for t in trials[:MOST_NAMED] if t.square_sum <= most]
+
+
+def _alone(job: Job, stopped: NotSettled, trial: _Trial) -> str:
+    (row,), (size,) = trial.rows, trial.amounts
+    return (f"{_called(job, stopped, row)} disagrees with the others by about {_amount(job, stopped, row, size)}: "
+            "without it the adjustment settles, with it it does not; check it in the book")  # fmt: skip
+
+
+def _together(job: Job, stopped: NotSettled, trial: _Trial) -> str:
+    if len(trial.rows) == 1:
+        return _alone(job, stopped, trial)
+    who = together([_called(job, stopped, r) for r in trial.rows])
+    by = together([_amount(job, stopped, r, a) for r, a in zip(trial.rows, trial.amounts, strict=True)])
+    return (f"without {who} together the adjustment settles, with them it does not: they differ from the others by "
+            f"about {by}; check them in the book")  # fmt: skip
 
 
 def _thin(stopped: NotSettled) -> list[str]:
@@ -93,20 +118,49 @@ def _misfit(stopped: NotSettled, misclosure: Array) -> Array:
     return np.asarray(np.abs(misclosure) / np.where(design.held, np.inf, design.sd))
 
 
-def _without(stopped: NotSettled, row: int) -> _Trial | None:
-    """The trial without one reading; None where it does not settle either."""
+def _one(stopped: NotSettled, row: int) -> _Trial | None:
+    """The trial without one reading; None where it does not settle either, or the reading is not grossly off."""
+    trial = _without(stopped, (row,), _start_without(stopped, row))
+    return trial if trial and abs(trial.amounts[0]) > GROSS * stopped.iteration.design.sd[row] else None
+
+
+def _without(stopped: NotSettled, rows: tuple[int, ...], start: State) -> _Trial | None:
+    """The trial without some readings; None where it does not settle either."""
     iteration = stopped.iteration
-    if iteration.design.held[row]:
+    if iteration.design.held[list(rows)].any():
         return None
     sd = np.where(iteration.design.held, 1e-3, iteration.design.sd)
-    sd[row] *= WITHOUT
+    sd[list(rows)] *= WITHOUT
     try:
         again = GaussNewton(iteration.design, make_batches(iteration.design, sd), iteration.datum)
-        outcome: Outcome = again.run(_start_without(stopped, row), TRIAL_ITERATIONS)
+        last = again.run(start, TRIAL_ITERATIONS).last
     except (SingularPattern, NotSettled, Unsolvable, np.linalg.LinAlgError):
         return None
-    amount = float(outcome.last.numbers.misclosure[row])
-    return _Trial(row, outcome.last.merit, amount) if abs(amount) > GROSS * iteration.design.sd[row] else None
+    amounts = last.numbers.misclosure[list(rows)]
+    return _Trial(rows, last.merit, tuple(amounts.tolist()), last.state)
+
+
+def _several(stopped: NotSettled) -> _Trial | None:
+    """The trial without those that stand out together, less those that are sound."""
+    for first in (stopped.first, stopped.here.state):
+        found = outvoted(stopped.iteration, first)
+        if found is None or len(found.rows) > MOST_TOGETHER:
+            continue
+        trial = _without(stopped, tuple(found.rows.tolist()), found.state)
+        if trial:
+            return _needed(stopped, trial)
+    return None
+
+
+def _needed(stopped: NotSettled, trial: _Trial) -> _Trial:
+    """The trial without those of its rows that fit when they are put back, the least of them first."""
+    sd = stopped.iteration.design.sd
+    for row in sorted(trial.rows, key=lambda r: abs(trial.amounts[trial.rows.index(r)]) / sd[r]):
+        rest = tuple(r for r in trial.rows if r != row)
+        again = _without(stopped, rest, trial.state) if rest else None
+        if again and again.square_sum <= AS_GOOD * trial.square_sum + GROSS**2:
+            trial = again
+    return trial
 
 
 def _start_without(stopped: NotSettled, row: int) -> State:
@@ -124,34 +178,14 @@ def _start_without(stopped: NotSettled, row: int) -> State:
 
 
 def _called(job: Job, stopped: NotSettled, row: int) -> str:
-    """'distances.csv:7 (distance A to B, 154.203 m)'."""
+    block, i = _booked(stopped, row)
+    return called(job, block, i)
+
+
+def _amount(job: Job, stopped: NotSettled, row: int, size: float) -> str:
+    return amount(job, _booked(stopped, row)[0], size)
+
+
+def _booked(stopped: NotSettled, row: int) -> tuple[Block, int]:
     network = stopped.iteration.design.network
-    block, i = network.blocks[network.rows.block[row]], int(network.rows.row[row])
-    names = [network.stations.names[s] for s in block.stations[i]]
-    kind = KINDS[block.kind]
-    ends = names[0] if len(names) == 1 else " to ".join(names) if len(names) == 2 else (
-        f"{names[1]} to {names[2]} at {names[0]}")  # fmt: skip
-    texts = job.booked(block.file).get(int(block.line[i]), ())
-    booked = next((t for t in texts if t), "")
-    units = next((t.units for t in job.tables if t.file == block.file), job.settings.units)
-    unit = f" {units.length}" if kind.dimension == "length" and booked else ""
-    return f"{block.name(i)} ({kind_word(block.kind)} {ends}{f', {booked}{unit}' if booked else ''})"
-
-
-def _amount(job: Job, stopped: NotSettled, trial: _Trial) -> str:
-    """The difference in the job's units, two figures."""
-    network = stopped.iteration.design.network
-    block = network.blocks[network.rows.block[trial.row]]
-    units, size = job.settings.units, abs(trial.amount)
-    if KINDS[block.kind].dimension == "length":
-        return f"{_two_figures(size / LENGTHS[units.length])} {units.length}"
-    if units.angle in ("gon", "mil"):
-        return f"{_two_figures(size / ANGLES[units.angle])} {units.angle}"
-    degrees = math.degrees(size)
-    if degrees >= 1:
-        return f"{degrees:.0f} degrees"
-    return f"{degrees * 60:.0f} minutes" if degrees * 60 >= 1 else f"{degrees * 3600:.0f} seconds"
-
-
-def _two_figures(x: float) -> str:
-    return f"{float(f'{x:.2g}'):g}"
+    return network.blocks[network.rows.block[row]], int(network.rows.row[row])

@@ -24,10 +24,12 @@ from adjust.record.closing import (
     reduction_entries,
     tolerance_settings,
 )
+from adjust.record.findings import findings
 from adjust.record.numbers import angle, coordinate, number
 from adjust.record.observations import left_out, observation_entries, suspect_entries, unchecked_entries
 from adjust.record.paper import drawing_warnings
 from adjust.record.places import line_entries, mark_entries, parameter_entries, side_shot_entries, station_entries
+from adjust.record.quality import add_words, chain_entries, report_entry, weight_entries
 from adjust.record.search import effect_entries, overall_entry, search_entries
 from adjust.solver.defects import thin_of
 from adjust.solver.solution import PartResult, Solution
@@ -47,6 +49,7 @@ def build(judgement: Judgement) -> dict[str, Any]:
 
 def _record(judgement: Judgement) -> dict[str, Any]:
     record = _sections(judgement)
+    record["findings"] = findings(record)
     record["warnings"] += drawing_warnings(record)
     return record
 
@@ -68,7 +71,7 @@ def _sections(judgement: Judgement) -> dict[str, Any]:
         "stations": station_entries(judgement),
         "side_shots": side_shot_entries(judgement),
         "lines": line_entries(judgement),
-        "observations": observation_entries(judgement),
+        "observations": add_words(judgement, observation_entries(judgement)),
         "parameters": parameter_entries(judgement),
         "closures": closure_entries(judgement),
         "balances": balance_entries(judgement),
@@ -76,8 +79,10 @@ def _sections(judgement: Judgement) -> dict[str, Any]:
         **search_entries(judgement),
         "expected_by_chance": number(judgement.expected_by_chance),
         "unchecked": unchecked_entries(judgement),
+        "chains": chain_entries(judgement),
         "control": mark_entries(judgement),
-        "variance_components": [],
+        "control_report": report_entry(judgement),
+        **weight_entries(judgement),
         **effect_entries(judgement),
         "ledger": ledger_entries(judgement),
         "reductions": reduction_entries(solution.job),

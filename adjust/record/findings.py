@@ -10,6 +10,8 @@ from collections.abc import Iterator
 
 from adjust.record.shown import Entry, Shown, count, plain, reading_in_words
 
+MINOR = ("unchecked", "inseparable")
+"""What a sound job has too; where nothing else is said, that all fits comes first."""
 TOLD, NAMED = 3, 4
 """Sentences of one sort, and names in a list."""
 
@@ -18,7 +20,8 @@ def findings(record: Entry) -> list[dict[str, str]]:
     """Sentences with what they are about, the most important first."""
     shown = Shown.of(record)
     out = [{"about": about, "sentence": text} for about, text in _all(record, shown)]
-    return out or [{"about": "all", "sentence": _all_clear(record)}]
+    grave = any(one["about"] not in MINOR for one in out)
+    return out if grave else [{"about": "all", "sentence": _all_clear(record)}, *out]
 
 
 def _all(record: Entry, shown: Shown) -> Iterator[tuple[str, str]]:
@@ -76,7 +79,7 @@ def _scatter(record: Entry, shown: Shown) -> Iterator[str]:
 
 
 def _control(record: Entry) -> list[str]:
-    return [m["sentence"] for m in record["control"] if m["verdict"] == "disagrees"][:TOLD]
+    return list(record["control_report"]["sentences"])[:TOLD]
 
 
 def _off(record: Entry, component: Entry) -> bool:
@@ -103,7 +106,13 @@ def _chains(record: Entry) -> list[str]:
 
 
 def _all_clear(record: Entry) -> str:
-    text = "Nothing stands out: the readings fit as stated"
-    text += ", everything closes" if record["closures"] else ""
-    text += ", the control agrees" if record["control"] else ""
-    return text + ", and every reading is checked by others."
+    """What holds where nothing grave was found; what could not be tested is not claimed."""
+    verdicts = {part["overall_test"]["verdict"] for part in record["solution"]["parts"]}
+    if "met" not in verdicts:
+        return "Nothing here could be tested: no reading is to spare, or the scale is taken from the residuals."
+    held = ["the readings fit as stated"]
+    held += ["everything closes"] if record["closures"] else []
+    held += ["the control agrees"] if any(m["verdict"] == "agrees" for m in record["control"]) else []
+    held += [] if record["unchecked"] else ["every reading is checked by others"]
+    said = held[0] if len(held) == 1 else ", ".join(held[:-1]) + " and " + held[-1]
+    return f"Nothing stands out: {said}."

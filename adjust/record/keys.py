@@ -7,13 +7,9 @@ means null where there is nothing to say. Lengths are metres, angles radians, wh
 from __future__ import annotations
 
 from adjust.fields import Field
+from adjust.record.judged_keys import JUDGED, keys
 
-
-def _keys(*rows: tuple[str, str, str]) -> tuple[Field, ...]:
-    return tuple(Field(name, kind, meaning, required=True) for name, kind, meaning in rows)
-
-
-_FIGURES = _keys(
+_FIGURES = keys(
     ("stage", "text", "held: on control; free: relative to the network's own datum"),
     ("converged", "flag", "always true: a record of an unsettled iteration is never written"),
     ("iterations", "integer", "Gauss-Newton iterations"),
@@ -29,7 +25,7 @@ _FIGURES = _keys(
 )
 
 RECORD: dict[str, tuple[Field, ...]] = {
-    "": _keys(
+    "": keys(
         ("format", "integer", "version of this layout"),
         ("brasscap", "text", "version of the program"),
         ("versions", "object versions", "versions that the numbers depend on"),
@@ -39,6 +35,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
             "flag",
             "false: above 20,000 rows only suspects, worst and unchecked are in observations and lines",
         ),
+        ("findings", "list finding", "what matters most, in sentences, the gravest first"),
         ("job", "object job", "the job and its input files"),
         ("settings", "object settings", "levels of the tests, datum, instruments and tables as declared"),
         ("units", "object units", "the job's units; the record itself is in metres and radians"),
@@ -71,8 +68,11 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ),
         ("inseparable", "list inseparable", "groups of readings that no test can tell apart; not in large jobs"),
         ("unchecked", "list unchecked", "readings whose errors no test here can see"),
+        ("chains", "list chain", "levelled lines that only one closure checks together"),
         ("control", "list mark", "control marks compared with the result"),
-        ("variance_components", "list any", "scale of the standard deviations by group"),
+        ("control_report", "object control_report", "the control as a whole"),
+        ("variance_components", "list component", "scale of the standard deviations by group, the blunders left out"),
+        ("budgets", "list budget", "what the variance of each coordinate comes from; not in large jobs"),
         ("systematic", "list effect", "effects common to many readings, tested as extra unknowns"),
         ("systematic_by_chance", "number", "of them that a clean job is expected to show as significant"),
         ("ledger", "list ledger", "corrections of distances, one line each"),
@@ -81,15 +81,15 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("not_measured", "list not_measured", "rows with use = planned"),
         ("warnings", "texts", "sentences to read before using the result"),
     ),
-    "versions": _keys(("python", "text", "Python"), ("numpy", "text", "numpy"), ("scipy", "text", "scipy")),
-    "job": _keys(
+    "versions": keys(("python", "text", "Python"), ("numpy", "text", "numpy"), ("scipy", "text", "scipy")),
+    "job": keys(
         ("title", "text", "title"),
         ("client", "text", "client"),
         ("surveyed", "text", "day of the fieldwork"),
         ("inputs", "list input", "job.toml and every table read"),
     ),
-    "input": _keys(("file", "text", "file name in the job folder"), ("sha256", "text", "SHA-256 of its bytes")),
-    "settings": _keys(
+    "input": keys(("file", "text", "file name in the job folder"), ("sha256", "text", "SHA-256 of its bytes")),
+    "settings": keys(
         ("confidence", "number", "of ellipses and intervals"),
         ("significance", "number", "of the overall test and of the whole job's false suspects"),
         ("outlier", "number", "of one reading's test"),
@@ -108,7 +108,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("books", "list book", "tables in their order"),
         ("drawing", "object drawing", "drawing as declared"),
     ),
-    "drawing": _keys(
+    "drawing": keys(
         ("paper", "text?", "paper; null: by the unit of length"),
         ("orientation", "text", "auto, landscape or portrait"),
         ("scale", "number?", "N of the scale 1:N asked for; null: by size"),
@@ -116,16 +116,16 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("relative_ellipses", "number?", "the same for relative ellipses"),
         ("layers", "texts", "what is drawn"),
     ),
-    "datum": _keys(
+    "datum": keys(
         ("kind", "text?", "control, free, or null: by what each part has"), ("stations", "texts", "as declared")
     ),
-    "weather": _keys(
+    "weather": keys(
         ("temperature", "number?", "degrees C"),
         ("pressure", "number?", "hPa"),
         ("humidity", "number?", "per cent"),
         ("ppm", "number?", "parts per million, in place of the weather"),
     ),
-    "closure": _keys(
+    "closure": keys(
         ("kind", "text", "level loop, level run, height loop, height run, loop traverse, link traverse, triangle"),
         ("stations", "texts", "stations in the order walked; a loop ends with its first"),
         ("observations", "texts", "ids of all its readings"),
@@ -142,7 +142,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("verdicts", "object any", "by height, angle, linear"),
         ("sentence", "text", "why something cannot be tested, or where to look; empty where nothing is to say"),
     ),
-    "balance": _keys(
+    "balance": keys(
         ("method", "text", "compass rule, transit rule, levels by length, by set-ups or by lines"),
         ("kind", "text", "kind of the traverse or levelled run"),
         ("stations", "texts", "stations in the order walked"),
@@ -150,14 +150,14 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("largest_difference", "number", "from least squares"),
         ("at", "text", "station where it is"),
     ),
-    "ledger": _keys(
+    "ledger": keys(
         ("observation", "text", "id of the distance"),
         ("name", "text", "what was corrected"),
         ("amount", "number", "amount that was added"),
         ("how", "text", "here, or applied in the instrument"),
         ("source", "text", "the figures that it comes from"),
     ),
-    "reduction": _keys(
+    "reduction": keys(
         ("what", "text", "face mean, set mean, collimation, index, horizon closure, set-up, page check, sections, ..."),
         ("of", "text", "station, set, target or line"),
         ("file", "text", "table"),
@@ -167,11 +167,11 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("verdict", "text?", "met, not met, cannot be tested; null where nothing was judged"),
         ("sentence", "text", "what there is to say; empty where nothing is"),
     ),
-    "frame_settings": _keys(
+    "frame_settings": keys(
         ("plane_height", "number?", "height of the plane as declared; null: by the job's heights"),
         ("refraction", "text", "coefficient of refraction, with +- where it is estimated"),
     ),
-    "book": _keys(
+    "book": keys(
         ("file", "text", "file"),
         ("kind", "text", "kind"),
         ("instrument", "text?", "instrument of the table"),
@@ -184,34 +184,34 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("curvature", "text?", "whether they are corrected for curvature and refraction; null: no level book"),
         ("units", "object book_units", "its units"),
     ),
-    "book_units": _keys(("length", "text", "length"), ("angle", "text", "angle"), ("decimal", "text", "decimal mark")),
-    "units": _keys(
+    "book_units": keys(("length", "text", "length"), ("angle", "text", "angle"), ("decimal", "text", "decimal mark")),
+    "units": keys(
         ("length", "text", "m, ft or us-ft"),
         ("angle", "text", "dms, deg, gon, mil or packed"),
         ("decimal", "text", "decimal mark"),
         ("axis_order", "text", "printed order of coordinates"),
         ("bearings", "text", "azimuth or quadrant"),
     ),
-    "frame": _keys(
+    "frame": keys(
         ("kind", "text", "local plane"),
         ("origin", "text?", "sentence where the program chose an origin"),
         ("plane_height", "number", "height of the plane on which coordinates lie; matters only where heights do"),
         ("radius", "number", "radius of the Earth for curvature and for lengths at height"),
     ),
-    "overall_test": _keys(
+    "overall_test": keys(
         ("interval", "numbers?", "limits of the variance factor"),
         ("verdict", "text", "met, not met, cannot be tested"),
         ("better_than_stated", "flag", "below the lower limit: a warning, no failure"),
     ),
-    "solution": (*_FIGURES, *_keys(("parts", "list part", "the same figures per uncoupled part"))),
+    "solution": (*_FIGURES, *keys(("parts", "list part", "the same figures per uncoupled part"))),
     "free": (
         *_FIGURES,
-        *_keys(
+        *keys(
             ("parts", "list part", "the same figures per uncoupled part"),
             ("similarity", "object? similarity", "how the free network lies on its control; null below two marks"),
         ),
     ),
-    "similarity": _keys(
+    "similarity": keys(
         ("marks", "integer", "marks with known east and north"),
         ("shift_east", "number", "middle of the known places minus middle of the free ones"),
         ("shift_north", "number", "the same north"),
@@ -219,8 +219,8 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("scale_ppm", "number", "scale of the control against the readings, parts per million"),
         ("sd_scale_ppm", "number?", "its standard deviation from the readings; null where nothing is left to compare"),
     ),
-    "part": (*_keys(("what", "text", "plane or heights, with stations where there are several")), *_FIGURES),
-    "station": _keys(
+    "part": (*keys(("what", "text", "plane or heights, with stations where there are several")), *_FIGURES),
+    "station": keys(
         ("station", "text", "name"),
         ("role", "text", "new, held, weighted or check, in the plane where it has one"),
         ("role_height", "text", "role of the height"),
@@ -236,18 +236,18 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("ellipse_confidence", "object? ellipse_confidence", "ellipse of the stated confidence"),
         ("circle_confidence", "number?", "radius of the circle of the same confidence, exact"),
     ),
-    "ellipse": _keys(
+    "ellipse": keys(
         ("semi_major", "number", "longer half axis"),
         ("semi_minor", "number", "shorter half axis"),
         ("azimuth", "number", "of the longer axis, clockwise from north, in [0, pi)"),
     ),
-    "ellipse_confidence": _keys(
+    "ellipse_confidence": keys(
         ("semi_major", "number", "longer half axis"),
         ("semi_minor", "number", "shorter half axis"),
         ("azimuth", "number", "of the longer axis, clockwise from north, in [0, pi)"),
         ("confidence", "number", "probability"),
     ),
-    "line": _keys(
+    "line": keys(
         ("from", "text", "one end"),
         ("to", "text", "other end"),
         ("distance", "number?", "adjusted distance"),
@@ -258,7 +258,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("ellipse", "object? ellipse", "standard relative ellipse"),
         ("ellipse_confidence", "object? ellipse_confidence", "relative ellipse of the stated confidence"),
     ),
-    "observation": _keys(
+    "observation": keys(
         ("id", "text", "given identification, else FILE:LINE"),
         ("file", "text", "table"),
         ("line", "integer", "physical line where the row begins"),
@@ -277,6 +277,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("adjusted", "number", "observed plus residual"),
         ("residual", "number", "adjusted minus observed"),
         ("sd", "number?", "stated standard deviation; null for a condition"),
+        ("budget", "list share", "what its variance is made of"),
         ("sd_adjusted", "number?", "standard deviation of the adjusted value"),
         ("redundancy", "number?", "redundancy number; they sum to the degrees of freedom"),
         ("checked_share", "number?", "share of an error that the other readings can see, 0 to 1"),
@@ -285,20 +286,22 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("smallest_detectable", "number?", "smallest blunder the test finds with its power"),
         ("external_effect", "object? external_effect", "coordinate that such a blunder, unseen, moves most"),
         ("suspect", "flag", "fails the plain one-reading test"),
+        ("unseen", "text", "what an error in it could do unseen, in words; empty for a condition"),
+        ("start", "text", "by how much starting coordinates disagreed with it; empty where they did not"),
     ),
-    "correction": _keys(
+    "correction": keys(
         ("name", "text", "what was corrected"), ("value", "number", "amount that was added to the booked value")
     ),
-    "external_effect": _keys(
+    "external_effect": keys(
         ("station", "text", "station"), ("part", "text", "east, north or height"), ("value", "number", "movement")
     ),
-    "parameter": _keys(
+    "parameter": keys(
         ("what", "text", "orientation, turn or refraction"),
         ("of", "text", "station and set, or the job"),
         ("value", "number", "value"),
         ("sd", "number?", "standard deviation"),
     ),
-    "suspect": _keys(
+    "suspect": keys(
         ("observation", "text", "id"),
         ("estimated_blunder", "number", "reading minus its estimate from all others but the other blunders"),
         ("sd", "number", "its standard deviation"),
@@ -307,67 +310,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("likely_causes", "list any", "everyday slips that would explain it"),
         ("cannot_be_told_from", "list confusable", "readings that no test here can tell from it"),
     ),
-    "confusable": _keys(
-        ("observation", "text", "id"),
-        ("correlation", "number", "of the two statistics"),
-        ("chance_of_wrong", "number", "that the wrong one of the two is blamed for an error of the size found"),
-    ),
-    "cleared": _keys(
-        ("observation", "text", "id"),
-        ("statistic", "number", "one-reading statistic with all readings"),
-        ("statistic_without", "number", "the same without the blunders"),
-    ),
-    "removal": _keys(
-        ("action", "text", "left out, taken back, exchanged, set apart by a robust estimate, adjusted without them"),
-        ("observations", "texts", "ids of the readings that the step is about"),
-        ("instead_of", "text?", "reading that returned in exchange"),
-        ("statistic", "number?", "one-reading statistic that decided; null for several readings"),
-        ("critical", "number?", "limit of it, at the level of the whole job"),
-        ("before", "object fit", "fit before the step"),
-        ("after", "object fit", "fit after it"),
-        ("largest_shift", "object? external_effect", "coordinate that the step moved most"),
-    ),
-    "fit": _keys(
-        ("variance_factor", "number?", "weighted square sum over degrees of freedom; null without any"),
-        ("largest", "text?", "id of the reading with the largest statistic"),
-        ("statistic", "number?", "that statistic"),
-    ),
-    "without_suspects": _keys(
-        ("observations", "texts", "ids of the readings left out"),
-        ("degrees_of_freedom", "integer", "what is left of them"),
-        ("weighted_square_sum", "number", "v'Pv"),
-        ("variance_factor", "number?", "weighted_square_sum over degrees_of_freedom"),
-        ("overall_test", "object overall_test", "chi-square test of the weighted square sum"),
-        ("largest", "text?", "id of the reading with the largest statistic"),
-        ("statistic", "number?", "that statistic"),
-        ("shifts", "list shift", "by how much the coordinates would move: without minus with"),
-    ),
-    "shift": _keys(
-        ("station", "text", "station"),
-        ("east", "number?", "shift"),
-        ("north", "number?", "shift"),
-        ("height", "number?", "shift"),
-    ),
-    "effect": _keys(
-        ("what", "text", "constant, scale, refraction, zenith index, staff scale, orientation"),
-        ("of", "text", "reflector, instrument, day or table"),
-        ("readings", "integer", "how many it would be in"),
-        ("dimension", "text", "length, ratio (1e-6 is 1 ppm), angle, number: of value and sd"),
-        ("value", "number?", "its size; null where it cannot be told"),
-        ("sd", "number?", "standard deviation"),
-        ("statistic", "number?", "value over sd; from residuals Student's t"),
-        ("critical", "number?", "limit at the level of one reading"),
-        ("verdict", "text", "none seen, significant, cannot be told, explained by ..., rests on one reading, ..."),
-        ("cause", "text", "correction that the size is exactly that of; empty where none"),
-        ("rests_on", "texts", "ids of the single readings that carry it"),
-        ("sentence", "text", "the same in words"),
-    ),
-    "inseparable": _keys(
-        ("observations", "texts", "ids"),
-        ("correlation", "number", "least correlation of two of their statistics, absolute"),
-        ("chance_of_wrong", "number", "of blaming a wrong one for a smallest detectable error"),
-    ),
-    "side_shot": _keys(
+    "side_shot": keys(
         ("station", "text", "station; it stands in stations too"),
         ("east", "number?", "adjusted east"),
         ("north", "number?", "adjusted north"),
@@ -377,8 +320,8 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("sd_height", "number?", "its standard deviation"),
         ("readings", "texts", "ids of the readings that fix it"),
     ),
-    "unchecked": _keys(("observation", "text", "id"), ("why", "text", "why nothing checks it")),
-    "mark": _keys(
+    "unchecked": keys(("observation", "text", "id"), ("why", "text", "why nothing checks it")),
+    "mark": keys(
         ("station", "text", "mark"),
         ("part", "text", "east, north or height"),
         ("misfit", "number?", "check mark: adjusted minus known; others: estimate of all others minus known"),
@@ -386,7 +329,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("verdict", "text", "agrees, disagrees, cannot be judged"),
         ("sentence", "text", "the same in words"),
     ),
-    "left_out": _keys(
+    "left_out": keys(
         ("observation", "text", "id"),
         ("file", "text", "table"),
         ("line", "integer", "line"),
@@ -394,12 +337,13 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("reason", "text", "reason given"),
         ("stations", "texts", "its stations, the standpoint first"),
     ),
-    "not_measured": _keys(
+    "not_measured": keys(
         ("observation", "text", "id"),
         ("file", "text", "table"),
         ("line", "integer", "line"),
         ("kind", "text", "kind"),
         ("stations", "texts", "its stations, the standpoint first"),
     ),
+    **JUDGED,
 }
 """Sections of record.json by name; '' is the record itself."""

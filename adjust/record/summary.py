@@ -25,6 +25,7 @@ def summary_lines(record: Entry) -> list[str]:
     shown = Shown.of(record)
     above = [
         *_head(record),
+        *_findings(record),
         *_overall(record, shown),
         *_closures(record),
         *_suspects(record, shown),
@@ -45,6 +46,12 @@ def _wrapped(text: str, most: int = 2, indent: str = "  ") -> list[str]:
 def _some(items: Sequence[str], most: int = WORST) -> str:
     rest = len(items) - most
     return ", ".join(items[:most]) + (f" and {rest} more" if rest > 0 else "")
+
+
+def _findings(record: Entry) -> list[str]:
+    """The most important sentences."""
+    told = record["findings"][:WORST]
+    return ["", *(line for one in told for line in _wrapped(f"* {plain(one['sentence'], 290)}", 3))]
 
 
 def _degrees(n: int) -> str:

@@ -23,7 +23,10 @@ import numpy as np
 
 import adjust
 from adjust.judge.assess import Judgement
+from adjust.judge.components import Estimate, estimate
 from adjust.judge.ellipses import ellipses
+from adjust.judge.groupings import groupings
+from adjust.judge.moments import Problem
 from adjust.solver.solution import Solution
 from adjust.units import LENGTHS, RHO_SEC
 from tests.helpers import close
@@ -134,6 +137,25 @@ class Result:
         a, b, azimuth = ellipses(self.judgement.covariance[[self.station(name)], :2, :2])
         return float(a[0]) / self.length, float(b[0]) / self.length, float(np.degrees(azimuth[0]))
 
+    @cached_property
+    def components(self) -> Estimate:
+        """Components of the last grouping, all rounds, however small the redundancy of a group is."""
+        return estimate(self.solution, groupings(self.solution.design)[-1], least=0.0, settled=1e-9)
+
+    def sd_east(self, name: str) -> float:
+        """Standard deviation of an east coordinate by the components, in the job's unit."""
+        found = self.components
+        problem = Problem.of(self.solution, found.grouping)
+        number = self.solution.design.unknowns.coordinate[[self.station(name)], 0]
+        variance = problem.cofactors(problem.whitened(found.theta)).entries(number, number)
+        return float(np.sqrt(variance[0])) / self.length
+
+    def component(self, group: str, of_round: int | None = None) -> float:
+        """Component of a group at rest, or the factor of one round."""
+        found = self.components
+        theta = found.theta if of_round is None else found.factors[of_round - 1]
+        return float(theta[found.grouping.labels.index(group)])
+
     def variance_factor(self) -> float:
         """v'Pv over the degrees of freedom."""
         assert self.solution.total.variance_factor is not None
@@ -155,6 +177,12 @@ QUANTITIES: dict[str, Callable[[Result, str], float]] = {
     "weighted square sum": lambda r, of: r.solution.total.square_sum,
     "degrees of freedom": lambda r, of: r.solution.total.degrees_of_freedom,
     "sum of heights": lambda r, of: float(np.nansum(r.solution.positions[:, 2])) / r.length,
+    "component in round 1": lambda r, of: r.component(of, 1),
+    "component in round 2": lambda r, of: r.component(of, 2),
+    "component in round 3": lambda r, of: r.component(of, 3),
+    "component": lambda r, of: r.component(of),
+    "component times 1000": lambda r, of: r.component(of) * 1000,
+    "sd east with components": lambda r, of: r.sd_east(of),
     "trace of cofactors": lambda r, of: float(np.nansum(r.solution.sd**2)),
 }
 """How each checked quantity is taken from a result, in the units of the case's job."""

@@ -10,7 +10,8 @@ import pytest
 
 import adjust
 from adjust.judge import critical
-from adjust.judge.control import compare_control, yardstick
+from adjust.judge.consistent import Levels
+from adjust.judge.control import yardstick
 from adjust.network import HELD
 from tests.helpers import close
 
@@ -54,8 +55,8 @@ def test_leaving_a_mark_out_by_doing_it(tmp_path: Path, mark: str) -> None:
 
     The tolerance is that of two linearisations a millimetre or two apart.
     """
-    judged = marks_of(adjust.assess(adjust.solve(plane_job(tmp_path / "all", 7))))
-    without = adjust.solve(plane_job(tmp_path / "without", 7, roles={mark: "check"}))
+    judged = marks_of(adjust.assess(adjust.solve(plane_job(tmp_path / "all", 8))))
+    without = adjust.solve(plane_job(tmp_path / "without", 8, roles={mark: "check"}))
     i = without.names.index(mark)
     for part, component in (("east", 0), ("north", 1)):
         misfit, sd, _ = judged[mark, part]
@@ -190,22 +191,23 @@ def test_a_moved_mark_is_found_from_residuals_without_a_free_stage(tmp_path: Pat
 
 
 def test_a_weighted_mark_is_judged_from_residuals_by_student(tmp_path: Path) -> None:
-    """Its scale is that of the free stage, so its limit is Student's with the degrees of the free stage, not tau's.
+    """Its scale is that of the free stage, so what is known of it is Student's with the degrees of the free stage.
 
-    Measured before: 78 of 32,000 coordinates disagreed, where 25 should have by chance (tests/statistics).
+    Measured before: 78 of 32,000 coordinates disagreed, where 25 should have by chance (tests/statistics). Marks are
+    now judged together as F, one coordinate as its square root, and share the job's significance among the marks,
+    not among all readings.
     """
     roles, more = dict.fromkeys(MARKS, "weighted"), '[tests]\nvariance_factor = "from-residuals"'
-    judgement = adjust.assess(adjust.solve(plane_job(tmp_path, 5, roles=roles, more=more)))
-    solution, n = judgement.solution, int(judgement.reliability.tested.sum())
+    solution = adjust.solve(plane_job(tmp_path, 5, roles=roles, more=more))
     assert solution.free is not None
     by = yardstick(solution, given=False)
-    level = critical.job_level(judgement.tests.significance, n)
-    assert by.limit(level) == critical.student_critical(level, solution.free.total.degrees_of_freedom)
-    assert judgement.critical_job is not None
-    limit = by.limit(level)
-    assert limit is not None
-    assert limit > judgement.critical_job + 0.2  # between the two limits a mark agrees now
-    for size, verdict in ((limit - 0.1, "agrees"), (limit + 0.1, "disagrees")):
-        figures = replace(judgement.reliability, pv=np.full(n, size * np.sqrt(by.scale)) / judgement.reliability.root)
-        said = [m.verdict for m in compare_control(solution, figures, by, judgement.tests)]
-        assert said == [verdict] * 8
+    r = solution.free.total.degrees_of_freedom
+    assert by.apart
+    assert by.limit(0.01) == critical.student_critical(0.01, r)
+    levels = Levels(by.scale, by.degrees, by.apart, 0.05, 8, 1)
+    t = critical.student_critical(levels.of_unit, r)
+    close(levels.probability(t**2 * by.scale, 1, (0.0, 0)), levels.of_unit, atol=1e-9)
+    within = replace(levels, apart=False)
+    tau = critical.tau_critical(levels.of_unit, r)
+    assert tau is not None
+    close(within.probability(tau**2 * by.scale, 1, (0.0, 0)), levels.of_unit, atol=1e-9)

@@ -21,7 +21,7 @@ import numpy as np
 import adjust
 from adjust.book.job import Job
 from adjust.judge.assess import Judgement
-from adjust.judge.control import Mark, compare_control, yardstick
+from adjust.judge.control import compare_control, yardstick
 from adjust.judge.held_marks import HeldMarks, judge_held_marks
 from adjust.judge.reliability import reliability
 from adjust.network import Network
@@ -104,8 +104,8 @@ class Response:
 
     @cached_property
     def marks(self) -> tuple[HeldMarks, Array]:
-        """The held marks, and (h, R) their shifts."""
-        shifts = [judge_held_marks(self.drawn(e)).shift for e in np.eye(self.dx.shape[1])]
+        """The marks, and (h, R) their g."""
+        shifts = [judge_held_marks(self.drawn(e)).g for e in np.eye(self.dx.shape[1])]
         return judge_held_marks(self.solution), np.stack(shifts, axis=1)
 
 
@@ -128,7 +128,7 @@ class Draws:
     pv: Array
     moves: Array
     """(d, n, 3)."""
-    shifts: Array
+    g: Array
 
 
 class Bench:
@@ -183,9 +183,9 @@ class Bench:
             free = self.free.with_sums(draws.free_squares[d]) if self.free else None
             solution = replace(plain, parts=parts, total=total, free=free, positions=plain.positions + draws.moves[d])
             scale = 1.0 if given else (total.variance_factor or np.nan) * shrunk**2
-            known: tuple[Mark, ...] = ()
+            report = base.control_report
             if base.control:
                 by = yardstick(solution, given)
                 by = by if given else replace(by, scale=by.scale * shrunk**2)
-                known = compare_control(solution, figures, by, base.tests, replace(marks, shift=draws.shifts[d]))
-            yield replace(base, solution=solution, reliability=figures, control=known, scale=scale)
+                report = compare_control(solution, figures, by, base.tests, replace(marks, g=draws.g[d]))
+            yield replace(base, solution=solution, reliability=figures, control_given=report, scale=scale)

@@ -20,7 +20,8 @@ from adjust.judge.control import AGREES, DISAGREES, UNJUDGED, yardstick
 from adjust.judge.ellipses import ellipses
 from adjust.judge.lines import Lines
 from adjust.judge.overall import NOT_MET
-from adjust.network import CHECK, HELD, PARTS, WEIGHTED
+from adjust.judge.shifts import parts_of
+from adjust.network import CHECK, PARTS
 from tests.statistics.draws import MODES, Array, Bench, Draws
 
 Bools = NDArray[np.bool_]
@@ -145,14 +146,18 @@ def of_readings(bench: Bench, draws: Draws, mode: str, shrunk: float = 1.0) -> R
 def of_jobs(bench: Bench, draws: Draws, mode: str, shrunk: float, most: float) -> Rates:
     """Overall tests, marks, and exit code 1; ``most`` is the share of jobs that may have a suspect."""
     base = bench.base[mode]
-    over, under, verdict, times, failed = [], [], [], [], []
+    over, under, verdict, times, scale, found, failed = [], [], [], [], [], [], []
     for judged in bench.judged(draws, mode, shrunk):
+        report = judged.control_report
+        found.append(bool(report.released or report.cannot_tell or report.scale))
+        scale.append(yardstick(judged.solution, mode == "given").scale * (1.0 if mode == "given" else shrunk**2))
         over.append([test.verdict == NOT_MET for test in (*judged.overall, *judged.overall_free)])
         under.append([test.better_than_stated for test in (*judged.overall, *judged.overall_free)])
         verdict.append([VERDICTS.index(m.verdict) for m in judged.control])
         times.append([abs(m.misfit or 0.0) / (m.sd or np.inf) for m in judged.control])
         failed.append(judged.failed)
-    out = _marks(bench, mode, np.array(verdict, dtype=np.int64), np.array(times))
+    out = _checks(bench, mode, np.array(verdict, dtype=np.int64), np.array(times))
+    out |= _left_out(bench, mode, draws.g, np.array(scale), np.array(found))
     most += sum(rate.high for name, rate in out.items() if name.startswith("any"))
     if mode == "given":
         tail = base.tests.significance / 2
@@ -163,25 +168,41 @@ def of_jobs(bench: Bench, draws: Draws, mode: str, shrunk: float, most: float) -
     return out | {"exit 1": Rate.of(np.array(failed), 0.0, most)}
 
 
-def _marks(bench: Bench, mode: str, verdict: NDArray[np.int64], times: Array) -> Rates:
-    """Marks judged one by one: each at 0.05, each at its share of the job's significance, and any of a kind.
+def _checks(bench: Bench, mode: str, verdict: NDArray[np.int64], times: Array) -> Rates:
+    """Check marks: each at 0.05, each at its share of the job's significance, and any.
 
     ``verdict`` (d, marks) are places in VERDICTS, ``times`` (d, marks) misfits over their standard deviations.
     """
     base = bench.base[mode]
     roles, names = base.solution.network.stations.role, base.solution.names
     role = np.array([roles[names.index(m.station), PARTS.index(m.part)] for m in base.control])
-    by, out = yardstick(base.solution, mode == "given"), Rates()
-    for code, what in ((HELD, "held"), (WEIGHTED, "weighted"), (CHECK, "check")):
-        some = (verdict < 2).all(axis=0) & (role == code) if len(role) else np.zeros(0, dtype=bool)
+    some = (verdict < 2).all(axis=0) & (role == CHECK) if len(role) else np.zeros(0, dtype=bool)
+    if not some.any():
+        return Rates()
+    level = critical.job_level(base.tests.significance, int(some.sum()))
+    limit = yardstick(base.solution, mode == "given").limit(FIVE, checked=True)
+    assert limit is not None
+    hits = verdict[:, some] == 1
+    return {f"check mark at {FIVE:g}": Rate.of(times[:, some] > limit, FIVE),
+            "check mark at its level": Rate.of(hits, level),
+            "any check mark": Rate.of(hits.any(axis=1), 0.0, level * int(some.sum()))}  # fmt: skip
+
+
+def _left_out(bench: Bench, mode: str, g: Array, scale: Array, found: Bools) -> Rates:
+    """Held and weighted marks: each left out alone at 0.05, from g (d, h) and scales (d,), and any finding (d,)."""
+    base, marks, out = bench.base[mode], bench.response.marks[0], Rates()
+    limit, times = yardstick(base.solution, mode == "given").limit(FIVE), np.full(g.shape, np.nan)
+    assert limit is not None
+    for shifts in parts_of(marks):
+        for unit, at in enumerate(shifts.units):
+            if shifts.shift(unit, shifts.basis(())):
+                inverse = np.linalg.inv(marks.k[np.ix_(at, at)])
+                times[:, at] = np.abs(g[:, at] @ inverse) / np.sqrt(np.diagonal(inverse) * scale[:, None])
+    for what, here in (("held", marks.row < 0), ("weighted", marks.row >= 0)):
+        some = here & np.isfinite(times).all(axis=0)
         if some.any():
-            n = int(base.reliability.tested.sum()) if code == WEIGHTED else int(some.sum())
-            level, limit = critical.job_level(base.tests.significance, n), by.limit(FIVE, checked=code == CHECK)
-            assert limit is not None
-            hits = verdict[:, some] == 1
             out[f"{what} mark at {FIVE:g}"] = Rate.of(times[:, some] > limit, FIVE)
-            out[f"{what} mark at its level"] = Rate.of(hits, level)
-            out[f"any {what} mark"] = Rate.of(hits.any(axis=1), 0.0, level * int(some.sum()))
+            out["any held or weighted mark"] = Rate.of(found, 0.0, base.tests.significance)
     return out
 
 
