@@ -23,6 +23,7 @@ from adjust.solver.threads import one_thread
 if TYPE_CHECKING:
     from adjust.judge.balances import Balance
     from adjust.judge.blunders import Found
+    from adjust.judge.causes import Cause
     from adjust.judge.closures import Closure
     from adjust.judge.components import Component
     from adjust.judge.effect_words import Systematic
@@ -129,6 +130,12 @@ class Judgement:
 
         found = confusable(self.blunders, suspect.row)
         return [(r, rho, wrong_of_two(rho, abs(suspect.statistic))) for r, rho in found.items()]
+
+    def causes(self, suspect: Suspect) -> tuple[Cause, ...]:
+        """Everyday slips that would explain a suspect at the job's level, the likeliest first; none where none fits."""
+        from adjust.judge.causes import causes
+
+        return causes(self, suspect) if suspect.at_job_level else ()
 
     @property
     def blame(self) -> Ints:

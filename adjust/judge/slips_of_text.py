@@ -13,11 +13,17 @@ from adjust.book.raw_texts import RawText
 from adjust.judge.slip_forms import Form, Slipped
 from adjust.units import ANGLES, LENGTHS, TURN, US_FOOT, format_angle, parse_angle, parse_number, tidy, wrap
 
-DEGREES = {
+DEGREES: dict[str, tuple[float, ...]] = {
     "dms": (1, 10, 100), "packed": (1, 10, 100), "deg": (1, 10, 100), "gon": (1, 10, 100), "mil": (10, 100, 1000),
 }  # fmt: skip
 """Steps of a misread whole of each notation, in degrees, gon or mil."""
-MINUTES = {"dms": (1, 10, 30), "packed": (1, 10, 30), "deg": (0.1, 0.5), "gon": (0.1, 0.5), "mil": (1, 5)}
+MINUTES: dict[str, tuple[float, ...]] = {
+    "dms": (1, 10, 30),
+    "packed": (1, 10, 30),
+    "deg": (0.1, 0.5),
+    "gon": (0.1, 0.5),
+    "mil": (1, 5),
+}
 """Steps of the next figure: minutes, tenths of a degree or gon, single mil."""
 STEPS = {"m": (0.1, 0.5, 1, 10), "ft": (0.1, 0.5, 1, 10, 100), "us-ft": (0.1, 0.5, 1, 10, 100)}
 """Round steps of a tape, a staff or a display, in the table's unit."""

@@ -60,7 +60,19 @@ def _blunder(suspect: Entry, observation: Entry, shown: Shown) -> str:
     text = f"{_capital(reading_in_words(observation))} {size} ({plain(suspect['observation'], 40)}; {times} times its "
     text += "uncertainty)"
     alike = [o["observation"] for o in suspect["cannot_be_told_from"]]
-    return text + (f", or the error is in {_names(alike)}: no test here can tell." if alike else ".")
+    text += f", or the error is in {_names(alike)}: no test here can tell." if alike else "."
+    return f"{text} {likeliest(suspect)}".rstrip()
+
+
+def likeliest(suspect: Entry) -> str:
+    """'Likeliest slip: the minutes were misread, 43 for 33. Look at angles.csv:14.'; empty where no cause fits."""
+    causes = suspect["likely_causes"]
+    if not causes:
+        return ""
+    if len(causes) == 1:
+        return f"Likeliest slip: {plain(causes[0]['sentence'], 160)}. Look at {plain(causes[0]['place'], 40)}."
+    several = "; or ".join(plain(c["sentence"], 90) for c in causes)
+    return f"Likeliest slips: {several}. Look at {plain(causes[0]['place'], 40)}."
 
 
 def _capital(text: str) -> str:

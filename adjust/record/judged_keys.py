@@ -11,6 +11,13 @@ def keys(*rows: tuple[str, str, str]) -> tuple[Field, ...]:
 
 
 JUDGED: dict[str, tuple[Field, ...]] = {
+    "cause": keys(
+        ("slip", "text", "key of the slip, as in the table of slips"),
+        ("sentence", "text", "the slip in words"),
+        ("would_read", "text?", "what the book would read; null where the slip is none of the text"),
+        ("support", "number", "probability among the slips of the table and some other amount"),
+        ("place", "text", "file and line where to look"),
+    ),
     "confusable": keys(
         ("observation", "text", "id"),
         ("correlation", "number", "of the two statistics"),

@@ -307,7 +307,11 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("sd", "number", "its standard deviation"),
         ("statistic", "number", "one-reading statistic without the other blunders"),
         ("at_job_level", "flag", "fails at the level of the whole job too (exit code 1)"),
-        ("likely_causes", "list any", "everyday slips that would explain it"),
+        (
+            "likely_causes",
+            "list cause",
+            "everyday slips that would explain it, the likeliest first; a hint, nothing is edited",
+        ),
         ("cannot_be_told_from", "list confusable", "readings that no test here can tell from it"),
     ),
     "side_shot": keys(

@@ -105,7 +105,16 @@ def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
             "sd": number(s.sd),
             "statistic": number(s.statistic),
             "at_job_level": s.at_job_level,
-            "likely_causes": [],
+            "likely_causes": [
+                {
+                    "slip": c.slip,
+                    "sentence": c.sentence,
+                    "would_read": c.would_read or None,
+                    "support": round(c.support, 3),
+                    "place": c.place,
+                }
+                for c in judgement.causes(s)
+            ],
             "cannot_be_told_from": [
                 {"observation": ids[r], "correlation": number(rho), "chance_of_wrong": number(wrong)}
                 for r, rho, wrong in judgement.confusable(s)

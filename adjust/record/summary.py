@@ -11,6 +11,7 @@ import textwrap
 from collections.abc import Iterable, Sequence
 
 from adjust.caution import CAUTION
+from adjust.record.findings import likeliest
 from adjust.record.shown import Entry, Shown, count, plain, reading_in_words
 
 WIDTH = 100
@@ -198,8 +199,8 @@ def _suspect(suspect: Entry, observation: Entry | None, shown: Shown) -> list[st
     if suspect["cannot_be_told_from"]:
         text += f"; cannot be told from {_some([plain(o['observation']) for o in suspect['cannot_be_told_from']])}"
     lines = _wrapped(text, 2, "      ")
-    causes = suspect["likely_causes"]
-    return lines + (_wrapped(f"      {plain(causes[0]['sentence'], 180)}", 1) if causes else [])
+    cause = likeliest(suspect)
+    return lines + (_wrapped(f"    {cause}", 2, "      ") if cause else [])
 
 
 def _unchecked(record: Entry) -> list[str]:

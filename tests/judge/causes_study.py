@@ -2,8 +2,9 @@
 
     python -m tests.judge.causes_study [COUNT] [SLIP ...]
 
-makes COUNT networks a slip (braced plane networks, level nets, mixed ones; 8 to 30 stations), plants the slip in a random
-row where it is at least twice the smallest detectable size, adjusts and looks at the first suspect and its causes.
+makes COUNT networks a slip (braced plane networks, level nets, mixed ones; 8 to 30 stations), plants the slip in a
+random row where it is at least twice the smallest detectable size, adjusts and looks at the first suspect and its
+causes.
 "some amount" is an error uniform between 2 and 50 smallest detectable sizes: a cause offered there is an accident.
 """
 
@@ -42,7 +43,8 @@ def outcome(sort: Sort, number: int, folder: Path) -> tuple[str, float, bool] | 
     at = {before.ids[r]: r for r in range(len(before.ids))}
     if sort is SOME:
         rows = np.flatnonzero(before.reliability.tested & (before.reliability.checked_share > 0.2))
-        rows = rows[[before.solution.network.blocks[before.solution.network.rows.block[r]].kind != "control" for r in rows]]
+        block = before.solution.network.rows.block
+        rows = rows[[before.solution.network.blocks[block[r]].kind != "control" for r in rows]]
         if len(before.ids) != len(before.solution.job.network.rows):
             return None
         r = int(rng.choice(rows))
@@ -64,8 +66,9 @@ def outcome(sort: Sort, number: int, folder: Path) -> tuple[str, float, bool] | 
     except BrasscapError as refusal:
         named = any(w in s for w in wrong for s in refusal.sentences)
         return ("refused, naming it" if named else "refused"), 0.0, False
-    after = judged.solution.design.observed
-    size = abs(after[at[wrong[0]]] - before.solution.design.observed[at[wrong[0]]]) if sort.slip != "wrong-station" else None
+    first_row = at[wrong[0]]
+    moved = abs(judged.solution.design.observed[first_row] - before.solution.design.observed[first_row])
+    size = None if sort.slip == "wrong-station" else moved
     if size is not None and size < LEAST * before.smallest_detectable[at[wrong[0]]]:
         return None
     if not judged.suspects:
