@@ -78,7 +78,8 @@ def slipped(judgement: Judgement, suspect: Suspect) -> Slipped:
     if len(kind.parts) > 1:
         raws = tuple(r for r in raws if r.column == kind.parts[int(rows.part[suspect.row])])
     return Slipped(solution, found.model.state, block, i, raws, block.kind, NOUNS.get(block.kind, block.kind),
-                   kind.wraps, suspect.blunder, suspect.sd)  # fmt: skip
+                   kind.wraps, suspect.blunder, suspect.sd,
+                   frozenset(judgement.ids[s.row] for s in judgement.suspects))  # fmt: skip
 
 
 def causes(judgement: Judgement, suspect: Suspect) -> tuple[Cause, ...]:
@@ -100,7 +101,7 @@ def _weighed(case: Slipped) -> list[tuple[dict[str, Any], Form, float]]:
     found = []
     for row in rows:
         forms = list(_different(_function(row["key"])(case)))
-        found += [(row, form, row["prior"] / len(forms) * _likelihood(case, form)) for form in forms]
+        found += [(row, form, row["prior"] / len(forms) * form.weight * _likelihood(case, form)) for form in forms]
     total = other * _other(case) + sum(weight for _, _, weight in found)
     near = [(row, form, weight / total) for row, form, weight in found if weight > 0]
     return sorted(near, key=lambda one: -one[2])

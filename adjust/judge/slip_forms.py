@@ -26,6 +26,8 @@ class Slipped:
     wraps: bool
     blunder: float
     sd: float
+    suspects: frozenset[str] = frozenset()
+    """Identifications of all suspects."""
 
     @property
     def stations(self) -> tuple[str, ...]:
@@ -45,3 +47,5 @@ class Form:
     """The form in words, where the sentence of the slip asks for them."""
     line: int
     booked: str = ""
+    weight: float = 1.0
+    """Factor on the prior weight of this form, for what else speaks for or against it."""

@@ -18,6 +18,9 @@ from adjust.units import small_length, wrap
 
 CONSTANTS_M = (0.0175, 0.030, 0.0344)
 """Differences between the constants of usual reflectors (common practice)."""
+BOTH, ONE_ONLY = 20.0, 0.05
+"""An exchange makes two readings wrong at once: where both are suspect it explains what else would take two slips (each
+of a prior weight of some 0.05), where only one is it explains too much."""
 STATIONS_MOST = 2000
 """Other stations tried for each column of a reading."""
 
@@ -58,7 +61,9 @@ def pointings_swapped(case: Slipped) -> Iterator[Form]:
         if j != i and block.stations[j, to] != block.stations[i, to]:
             names = [case.solution.names[int(block.stations[k, to])] for k in (i, int(j))]
             told = f"the readings to {names[0]} and {names[1]} were exchanged ({block.name(int(j))})"
-            yield Form("", wrap(float(block.values[i, 0] - block.values[j, 0])), told, 0)
+            both = block.name(int(j)) in case.suspects
+            change = wrap(float(block.values[i, 0] - block.values[j, 0]))
+            yield Form("", change, told, 0, weight=BOTH if both else ONE_ONLY)
 
 
 def reflector_constant(case: Slipped) -> Iterator[Form]:
