@@ -51,6 +51,9 @@ DEGREES_LEAST = 1.0
 standard deviation."""
 SINGULAR = (CENTRING, PLURALS["refraction"])
 """Names of groups that are one thing."""
+BY_ITSELF = "; no line of job.toml scales them alone: give them a table or an instrument of their own"
+BY_COLUMNS = "; their standard deviations stand in the control table: scale its columns sd_east, sd_north, sd_height"
+"""What to do where there are no lines to paste."""
 AS_STATED, WORSE, BETTER, UNTOLD = "as stated", "worse than stated", "better than stated", "cannot be told"
 
 
@@ -216,7 +219,7 @@ def _not_apart(grouping: Grouping, stated: Moments, known: dict[int, str]) -> di
         names = [grouping.labels[g] for g in together]
         for g in together:
             others = " and ".join(n for n in names if n != grouping.labels[g])
-            found[int(g)] = f"the residuals do not tell it apart from {others}"
+            found[int(g)] = f"the residuals cannot tell {grouping.labels[g]} and {others} apart"
 
 
 def _told(solution: Solution, found: Estimate) -> list[Component]:
@@ -240,7 +243,8 @@ def _component(solution: Solution, found: Estimate, g: int, level: float) -> Com
     paste = lines_to_paste(solution, grouping, g, theta**0.5) if verdict in (WORSE, BETTER) else ()
     sentence = _sentence(grouping.labels[g], readings, redundancy, theta**0.5, interval, verdict, found.reasons.get(g))
     if verdict in (WORSE, BETTER) and not paste:
-        sentence += "; no line of job.toml scales them alone: give them a table or an instrument of their own"
+        of_control = grouping.labels[g] == PLURALS["control"]
+        sentence += BY_COLUMNS if of_control else BY_ITSELF
     return Component(grouping.by, grouping.labels[g], readings, redundancy, theta, theta**0.5, sd, interval, verdict,
                      sentence, paste)  # fmt: skip
 

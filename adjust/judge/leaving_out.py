@@ -63,18 +63,22 @@ class Without:
         """The row kept with the largest statistic; -1 where none can be formed."""
         return _largest(self.statistic)
 
-    def better_than(self, k: int) -> int:
-        """The row with the largest statistic where the k-th row left out is back in: another one beats it there.
+    def with_back(self, k: int) -> Array:
+        """(R,) unscaled statistics where the k-th row left out is back in.
 
         With g its column of ``gains`` and c = (K^-1)_kk, putting it back makes Pv to Pv - g b_k / c and m to m + g^2/c.
         """
         g, c = self.gains[:, k], self.covariance[k, k]
-        m = self.m + g**2 / c
         back = self.tested.copy()
         back[self.rows[k]] = True
-        statistic = (self.pv - g * (self.blunder[k] / c)) / np.sqrt(np.where(back, m, np.nan))
-        best = _largest(statistic)
-        return best if abs(statistic[best]) > abs(statistic[self.rows[k]]) * (1 + 1e-9) else self.rows[k]
+        statistic: Array = (self.pv - g * (self.blunder[k] / c)) / np.sqrt(np.where(back, self.m + g**2 / c, np.nan))
+        return statistic
+
+    def better_than(self, k: int, among: Sequence[int] | None = None) -> int:
+        """The row with the largest statistic where the k-th row left out is back in, ``among`` those given."""
+        statistic, r = self.with_back(k), self.rows[k]
+        best = _largest(statistic) if among is None else max(among, key=lambda o: np.nan_to_num(abs(statistic[o])))
+        return best if abs(statistic[best]) > abs(statistic[r]) * (1 + 1e-9) else r
 
 
 @dataclass(frozen=True)

@@ -193,8 +193,8 @@ def test_groups_that_look_alike_are_refused(tmp_path: Path) -> None:
     ]
     again = estimate(adjust.solve(adjust.read(tmp_path)), last(adjust.solve(adjust.read(tmp_path))), least=2.0)
     assert again.reasons == {
-        0: "the residuals do not tell it apart from centring",
-        1: "the residuals do not tell it apart from distances of e",
+        0: "the residuals cannot tell distances of e and centring apart",
+        1: "the residuals cannot tell centring and distances of e apart",
     }
     assert not again.estimated.any()
 
@@ -350,7 +350,16 @@ def test_what_no_line_scales_alone_has_none(tmp_path: Path) -> None:
     )
 
 
-def test_a_case_through_the_record_has_no_component_of_its_own(tmp_path: Path) -> None:
+def test_weighted_control_is_scaled_in_its_table(tmp_path: Path) -> None:
+    _, solution = solution_of("plane, weighted", tmp_path)
+    found = estimate(solution, last(solution), least=0.0)
+    g = found.grouping.labels.index("control coordinates")
+    told = judged._component(solution, found, g, 0.9999)
+    assert told.paste == ()
+    assert told.sentence.endswith("scale its columns sd_east, sd_north, sd_height")
+
+
+def test_what_is_estimated_changes_nothing(tmp_path: Path) -> None:
     """What is estimated is offered: the solution itself is not touched."""
     _, solution = solution_of("plane, held", tmp_path, 3.0)
     before = solution.residuals.copy(), solution.sd_readings.copy()

@@ -76,7 +76,11 @@ def record(title: str, stations: list[Record], observations: list[Record], what:
         "solution": {**figures, "parts": [{"what": what, **figures}]}, "free": None,
         "stations": stations, "side_shots": [], "lines": [], "observations": observations, "parameters": [],
         "closures": [], "suspects": [], "expected_by_chance": 0.001 * len(observations), "unchecked": [], "control": [],
-        "variance_components": [], "ledger": [], "reductions": [], "left_out": [], "not_measured": [], "warnings": [],
+        "control_report": {"consistent": [], "released": [], "cannot_tell": [], "scale": None, "sentences": []},
+        "cleared": [], "removals": [], "without_suspects": None, "inseparable": [], "chains": [], "budgets": [],
+        "systematic": [], "systematic_by_chance": 0.0, "variance_components": [],
+        "findings": [{"about": "all", "sentence": "Nothing stands out: the readings fit as stated."}],
+        "ledger": [], "reductions": [], "left_out": [], "not_measured": [], "warnings": [],
         **more,
     }  # fmt: skip
 
@@ -127,7 +131,9 @@ def plane_record() -> Record:
                             "would_read": "147.111", "support": 0.97}],
          "cannot_be_told_from": [], "at_job_level": True},
         {"observation": "angles.csv:2", "estimated_blunder": -33 * SEC, "sd": 5.4 * SEC, "statistic": -6.1,
-         "likely_causes": [], "cannot_be_told_from": ["directions.csv:8"], "at_job_level": True},
+         "likely_causes": [], "cannot_be_told_from": [
+             {"observation": "directions.csv:8", "correlation": 0.95, "chance_of_wrong": 0.1}],
+         "at_job_level": True},
     ]  # fmt: skip
     made["unchecked"] = [{"observation": "distances.csv:7", "why": "P7 is held by one distance only"}]
     made["control"] = [
