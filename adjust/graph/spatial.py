@@ -17,11 +17,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from adjust.frames import LocalPlane
 from adjust.graph.clues import Clues
 from adjust.graph.fine import worse
+from adjust.graph.images import images
+from adjust.graph.lifted import lifted
 from adjust.graph.parts import HEIGHT, PLANE, listed
 from adjust.graph.space import POINTING, RISE, SLOPE, Space
 from adjust.graph.spheres import Locus, Plane, Sphere, places
+from adjust.graph.valley import BENT, BESIDE, HOLD, SAME, Rest, away, bend, rest, softest
 from adjust.network import HELD, NEW, WEIGHTED, Array, Bools, Ints, Network
 
 STATIONS_MOST = 80
@@ -29,8 +33,10 @@ STATIONS_MOST = 80
 BEAMS, LOTS, POSES = 8, 32, 8
 NUMBERS_MOST = 8_000_000
 ROBUST, PLAIN = 3.0, 1e6
-REFUSED = 1.0
-"""Second over first order of the readings at one standard deviation, as in adjust.solver.defects."""
+GROSS_SD = 20.0
+"""Standard deviations from which a reading counts as gross and solutions are compared with damped misfits."""
+ROUNDS, IMAGES_OF = 3, 4
+"""Rounds of images, and solutions in each whose images are tried."""
 APART = 1e-4
 """Share of the extent by which two solutions differ at least."""
 RANK_LEAST = 1e-7
@@ -46,17 +52,19 @@ class Found:
     misfits: tuple[tuple[int, float], ...]
 
 
-def place_in_space(network: Network, clues: Clues, nodes: Bools, guess: Array) -> Found | None:
+def place_in_space(network: Network, clues: Clues, nodes: Bools, guess: Array,
+                   plane_height: float | None = None) -> Found | None:  # fmt: skip
     """Places of the part with ``nodes`` (n, 2), or None where the readings do not fix it or nothing fits.
 
-    ``guess`` (n, 3) are places found otherwise, NaN where none.
+    ``guess`` (n, 3) are places found otherwise, NaN where none; ``plane_height`` as the job says, None by its heights.
     """
     stations = np.flatnonzero(nodes[:, PLANE] & nodes[:, HEIGHT])
     role, given = network.stations.role, network.stations.start
     known = ((role == HELD) | (role == WEIGHTED)) & ~np.isnan(given)
     if len(stations) > STATIONS_MOST or not known[stations].any(axis=0).all():
         return None
-    space = Space.of(clues, set(stations.tolist()), given, known)
+    plane = LocalPlane.of(network.stations, plane_height).plane_height
+    space = Space.of(clues, set(stations.tolist()), given, known, plane)
     free = space.free(stations)
     fill = _filled(stations, given, known)
     if not len(free) or not _determined(space, fill, free):
@@ -65,21 +73,55 @@ def place_in_space(network: Network, clues: Clues, nodes: Bools, guess: Array) -
     if not np.isnan(guess[stations]).any():
         starts.append(np.where(known, given, guess))
     best = _best(space, free, fill, starts, ROBUST)
-    if not best or best[0][1] > _limit(space):
-        best = _distinct(best + _best(space, free, fill, _figures(space, stations), PLAIN), stations)
-    if not best or best[0][1] > _limit(space):
-        best = _distinct(best + _best(space, free, fill, _by_lot(space, stations, fill), PLAIN), stations)
+    for more in (lifted, _figures, _by_lot):
+        if not best or not _fits(space, free, best[0][0]):
+            best = _distinct(best + _best(space, free, fill, more(space, stations, fill), PLAIN), stations)
     if not best or best[0][1] > 30 * _limit(space):
         return None
-    best = _distinct(best + _best(space, free, fill, _images(space, stations, best[0][0]), ROBUST), stations)
-    best = _by_rows(best, given, role, stations)
-    x = best[0][0]
-    failures = mirror_words(network, stations, x, [y for y, _ in best[1:]])
-    failures = failures or _thin_words(network, space, stations, free, x)
-    r = space.misfits(x[None], space.turns(x[None]))[0]
-    bad = np.flatnonzero(np.abs(r) > 20 * space.rough(x))
-    return Found(x, tuple(failures), tuple(y for y, _ in best[1:]),
+    rests = _solutions(space, free, fill, stations, best)
+    rests = _by_rows(rests, given, role, stations)
+    first, others = rests[0], rests[1:]
+    failures = _flat_words(network, space, stations, free, rests)
+    failures = failures or mirror_words(network, stations, first.x, [one.x for one in others])
+    r = space.misfits(first.x[None], first.turn[None])[0]
+    bad = np.flatnonzero(np.abs(r) > 20 * space.rough(first.x))
+    return Found(first.x, tuple(failures), tuple(one.x for one in others),
                  tuple((int(space.source[k]), float(r[k])) for k in bad.tolist()))  # fmt: skip
+
+
+def _solutions(space: Space, free: Ints, fill: Array, stations: Ints, best: Solutions) -> list[Rest]:
+    """All that fit as well as the best, each at its minimum, the best first; images of those found are tried too."""
+    r = space.misfits(best[0][0][None], space.turns(best[0][0][None]))[0] / space.sd
+    robust = PLAIN if np.abs(r).max() < GROSS_SD else ROBUST
+    kept: list[Rest] = []
+    tried: list[Rest] = []
+    for _ in range(ROUNDS):
+        kept = _apart(kept + [rest(space, x, free, robust) for x, _ in best], free)
+        new = [one for one in kept if not any(one is other for other in tried)][:IMAGES_OF]
+        if not new:
+            break
+        tried += new
+        best = _best(space, free, fill, [y for one in new for y in images(space, stations, one.x)], ROBUST)
+    return kept
+
+
+def _apart(rests: list[Rest], free: Ints) -> list[Rest]:
+    """Best first, without repetitions and without what is clearly worse."""
+    kept: list[Rest] = []
+    for one in sorted(rests, key=lambda one: one.cost):
+        if kept and worse(one.cost, kept[0].cost):
+            break
+        if all(away(one, other, free) > SAME for other in kept):
+            kept.append(one)
+    return kept[:BEAMS]
+
+
+def _fits(space: Space, free: Ints, x: Array) -> bool:
+    """Whether the readings but for the worst one fit as sound ones would: chi-square's mean and seven times its root."""
+    r = space.misfits(x[None], space.turns(x[None]))[0] / space.sd
+    each = ROBUST**2 * np.log1p((r / ROBUST) ** 2)
+    spare = max(len(r) - len(free), 0)
+    return float(each.sum() - each.max()) < spare + 7 * np.sqrt(2 * spare) + 10
 
 
 def _filled(stations: Ints, given: Array, known: Bools) -> Array:
@@ -220,7 +262,7 @@ def _loci(space: Space, rows: list[int], s: int, placed: dict[int, Array], turn:
     return out
 
 
-def _figures(space: Space, stations: Ints) -> list[Array]:
+def _figures(space: Space, stations: Ints, fill: Array) -> list[Array]:
     """The figure of the slope distances, and its mirror image, brought onto the known components in several ways."""
     from scipy.optimize import least_squares  # only where trilateration does not reach
     from scipy.sparse import coo_array
@@ -283,47 +325,19 @@ def _by_lot(space: Space, stations: Ints, fill: Array) -> list[Array]:
     return [np.where(space.known, space.given, fill + spread * rng.normal(size=fill.shape)) for _ in range(LOTS)]
 
 
-def _images(space: Space, stations: Ints, x: Array) -> list[Array]:
-    """Places beyond the plane of the known stations, all together, and beyond that of its neighbours, each alone."""
-    out = []
-    new = np.array([s for s in stations.tolist() if not space.known[s].all()], dtype=np.int64)
-    full = np.array([s for s in stations.tolist() if space.known[s].all()], dtype=np.int64)
-    if len(full) > 2:
-        out.append(_reflected(x, new, x[full]))
-    near = _ties(space)
-    for s in new.tolist():
-        others = sorted({int(space.i[r] + space.j[r] - s) for r in near.get(s, []) if space.sort[r] == SLOPE})
-        if len(others) > 2:
-            out.append(_reflected(x, np.array([s]), x[others]))
-        if others:
-            level = x.copy()
-            level[s, 2] = 2 * x[others, 2].mean() - x[s, 2]
-            out.append(level)
-    return [np.where(space.known, space.given, one) for one in out]
-
-
-def _reflected(x: Array, moved: Ints, plane: Array) -> Array:
-    """Places with some of them beyond the plane that fits some points (k, 3)."""
-    middle = plane.mean(axis=0)
-    normal = np.linalg.svd(plane - middle)[2][-1]
-    out = x.copy()
-    out[moved] -= 2 * np.outer((x[moved] - middle) @ normal, normal)
-    return out
-
-
-def _by_rows(best: Solutions, given: Array, role: Ints, stations: Ints) -> Solutions:
+def _by_rows(rests: list[Rest], given: Array, role: Ints, stations: Ints) -> list[Rest]:
     """The solutions, of which `stations` rows decide where one lies twice as near to them as the others."""
     rows = (role == NEW) & ~np.isnan(given)
     rows[np.setdiff1d(np.arange(len(given)), stations)] = False
     moving = np.zeros_like(rows)
-    for x, _ in best[1:]:
-        moving |= np.abs(x - best[0][0]) > 1e-6
-    if len(best) < 2 or not (rows & moving).any():
-        return best
-    away = [float(np.abs((x - given)[rows]).sum()) for x, _ in best]
-    order = np.argsort(away, kind="stable")
-    first = away[order[0]]
-    return [best[k] for k in order.tolist() if away[k] < 2 * first or k == order[0]]
+    for one in rests[1:]:
+        moving |= np.abs(one.x - rests[0].x) > 1e-6
+    if len(rests) < 2 or not (rows & moving).any():
+        return rests
+    far = [float(np.abs((one.x - given)[rows]).sum()) for one in rests]
+    order = np.argsort(far, kind="stable")
+    first = far[order[0]]
+    return [rests[k] for k in order.tolist() if far[k] < 2 * first or k == order[0]]
 
 
 def mirror_words(network: Network, stations: Ints, x: Array, others: list[Array]) -> list[str]:
@@ -344,37 +358,36 @@ def mirror_words(network: Network, stations: Ints, x: Array, others: list[Array]
     return out
 
 
-def _thin_words(network: Network, space: Space, stations: Ints, free: Ints, x: Array) -> list[str]:
-    """Stations whose place the readings fix only just: within one standard deviation they change more by curvature
-    than by the movement itself."""
-    turn = space.turns(x[None])
-    a = space.partials(x[None])[0][:, free] / space.sd[:, None]
-    scale = 1 / np.maximum(np.linalg.norm(a, axis=0), 1e-300)
-    q = np.linalg.pinv((a * scale).T @ (a * scale), rcond=1e-13) * scale[:, None] * scale
-    n = 3 * len(x)
-    out: list[str] = []
+def _flat_words(network: Network, space: Space, stations: Ints, free: Ints, rests: list[Rest]) -> list[str]:
+    """Stations whose place the readings fix only just (adjust.graph.valley)."""
+    first, n = rests[0], 3 * len(space.known)
+    found: dict[int, float] = {}
     for s in stations.tolist():
         own = np.flatnonzero((free < n) & (free // 3 == s))
-        if not len(own):
-            continue
-        w, v = np.linalg.eigh(q[np.ix_(own, own)])
-        sd = float(np.sqrt(max(w[-1], 0.0)))
-        move = np.zeros(n + space.sets)
-        move[free] = q[:, own] @ v[:, -1] / max(sd, 1e-12)
-        there, here, back = (
-            space.misfits((x.ravel() + t * move[:n]).reshape(1, -1, 3), turn + t * move[n:])[0]
-            for t in (1.0, 0.0, -1.0)
+        bent, sd, _ = bend(space, first, free, own) if len(own) else (0.0, 0.0, 0.0)
+        if bent > BENT:
+            found[s] = sd
+    held, move = softest(first)
+    if held < HOLD:
+        found |= _most_moved(move, free, n, found)
+    for other in rests[1:]:
+        if away(first, other, free) < BESIDE:
+            found |= _most_moved((other.x - first.x).ravel()[free[free < n]], free[free < n], n, found)
+    out = []
+    for s, sd in found.items():
+        own = free[(free < n) & (free // 3 == s)]
+        way = "up and down" if (own % 3 == 2).any() else "in one direction"
+        out.append(
+            f"{network.stations.names[s]} is fixed only just: it lies nearly in one plane with the stations that its "
+            f"slope distances run to, which leave it {sd:.2f} m of play {way}; level to it or measure a zenith angle, "
+            "or give its height"
         )
-        # a part of the curve that a small shift of all takes up does not count
-        curve = (there + back - 2 * here) / (2 * space.sd)
-        curve = curve - a @ (q @ (a.T @ curve[:, None]))[:, 0]
-        if float(np.linalg.norm(curve)) > REFUSED:
-            up = abs(v[-1, -1]) > 0.7 and int(free[own[-1]]) % 3 == 2
-            name = network.stations.names[s]
-            way = "up and down" if up else "in one direction"
-            out.append(
-                f"{name} is fixed only just: it lies nearly in one plane with the stations that its slope distances "
-                f"run to, which leave it {sd:.2f} m of play {way}; level to it or measure a zenith angle, or give its "
-                "height"
-            )
     return out
+
+
+def _most_moved(move: Array, free: Ints, n: int, found: dict[int, float]) -> dict[int, float]:
+    """The station that a movement (u,) of the free unknowns moves most, and how far; none if it is found already."""
+    moved = np.zeros(n)
+    moved[free[free < n]] = np.abs(move[free < n])
+    s = int(np.argmax(moved)) // 3
+    return {} if s in found else {s: float(moved.max())}
