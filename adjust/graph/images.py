@@ -40,7 +40,7 @@ def images(space: Space, stations: Ints, x: Array) -> list[Array]:
     for body, hinge in bodies(space, stations):
         out.append(reflected(x, body, x[hinge]) if len(hinge) > 2 else upright(x, body, x[hinge]))
     for s in new.tolist():
-        others = _neighbours(space, s)
+        others = neighbours(space, s)
         if len(others) > 2:
             out.append(reflected(x, np.array([s]), x[others]))
         if len(others):
@@ -50,7 +50,7 @@ def images(space: Space, stations: Ints, x: Array) -> list[Array]:
     return [np.where(space.known, space.given, one) for one in out]
 
 
-def _neighbours(space: Space, s: int) -> Ints:
+def neighbours(space: Space, s: int) -> Ints:
     """Stations at the other end of the slope distances of one."""
     rows = (space.sort == SLOPE) & ((space.i == s) | (space.j == s))
     return np.unique(space.i[rows] + space.j[rows] - s)

@@ -27,7 +27,7 @@ STEPS = 10
 NUMBERS_MOST = 4_000_000
 
 
-def lifted(space: Space, stations: Ints, fill: Array) -> list[Array]:
+def lifted(space: Space, stations: Ints, fill: Array, turn: int = 0) -> list[Array]:
     """Places (n, 3) by lot in 3 + SPARE dimensions, pressed into space."""
     rows = np.isin(space.sort, (SLOPE, LENGTH, RISE))
     if not (space.sort == SLOPE).any():
@@ -38,7 +38,7 @@ def lifted(space: Space, stations: Ints, fill: Array) -> list[Array]:
     known = space.known[stations]
     still = np.concatenate([known, np.repeat(known[:, :2].all(axis=1, keepdims=True), SPARE, axis=1)], axis=1)
     size = max(float(np.ptp(fill[stations], axis=0).max()), float(np.median(space.value[rows])))
-    rng = np.random.default_rng([9, len(stations)])
+    rng = np.random.default_rng([9, len(stations), turn])
     lots = max(1, min(LOTS, NUMBERS_MOST // (len(i) * still.size)))
     x = np.zeros((lots, len(stations), 3 + SPARE))
     x[..., :3] = fill[stations]
@@ -98,9 +98,9 @@ class _Lines:
             step = np.linalg.solve(normal + extra[:, :, None] * np.eye(len(free)), right[:, :, None])[:, :, 0]
             tried = x.reshape(len(x), -1).copy()
             tried[:, free] -= step
-            tried = tried.reshape(x.shape)
-            after = cost_of(tried)
+            moved = tried.reshape(x.shape)
+            after = cost_of(moved)
             better = after < cost
-            x, cost = np.where(better[:, None, None], tried, x), np.where(better, after, cost)
+            x, cost = np.where(better[:, None, None], moved, x), np.where(better, after, cost)
             damping = np.clip(np.where(better, damping / 5, damping * 4), 1e-8, 1e8)
         return x

@@ -1,9 +1,9 @@
 """Readings of stations in space as arrays, their misfits at many places at once, and damped least squares on them.
 
 Slope distance s^2 = (h2 - h1)^2 + (1 + h1/R + h2/R) D^2 with h above the plane (adjust.frames; h1 h2/R^2 left out), so
-ds = (q D dD + (h2 - h1)(dh2 - dh1) + D^2/2R (dh1 + dh2)) / s with q = 1 + (h1 + h2)/R. Zenith angle of the same triangle
-with u = h2 - h1 - D^2/2R: dz = ((u + D^2/R) dD - D (dh2 - dh1)) / (D^2 + u^2). Lengths on the plane; rises; pointings
-with an orientation a set. A misfit r costs k^2 log(1 + (r/k sd)^2).
+ds = (q D dD + (h2 - h1)(dh2 - dh1) + D^2/2R (dh1 + dh2)) / s with q = 1 + (h1 + h2)/R. Zenith angle in the same
+triangle, with u = h2 - h1 - D^2/2R: dz = ((u + D^2/R) dD - D (dh2 - dh1)) / (D^2 + u^2). Lengths on the plane; rises;
+pointings with an orientation a set. A misfit r costs k^2 log(1 + (r/k sd)^2).
 """
 
 from __future__ import annotations
