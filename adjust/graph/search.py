@@ -41,11 +41,11 @@ Solutions = list[tuple[Array, float]]
 
 
 def fits(space: Space, free: Ints, x: Array, without: int) -> bool:
-    """Whether the readings but for the worst ones fit as sound ones would: chi-square's mean and seven of its sd."""
+    """Whether the readings but for the worst ones fit as sound ones would: chi-square's mean and five of its sd."""
     r = space.misfits(x[None], space.turns(x[None]))[0] / space.sd
     each = np.sort(ROBUST**2 * np.log1p((r / ROBUST) ** 2))
     spare = max(len(r) - len(free), 0)
-    return bool(each[: len(each) - without].sum() < spare + 7 * np.sqrt(2 * spare) + 10)
+    return bool(each[: len(each) - without].sum() < spare + 5 * np.sqrt(2 * spare) + 2)
 
 
 def good_enough(space: Space, free: Ints, x: Array) -> bool:

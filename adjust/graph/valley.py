@@ -9,8 +9,9 @@ does, and Newton's steps by it (with damping by the diagonal of N, Marquardt 196
 central differences of the gradient A'P r. Two places x and y are the same when they lie within a share of a standard
 deviation of each other, (x - y)' N (x - y) < SAME^2, by the larger of both N. A valley is too flat to be trusted
 
-- where along some movement u, H has less than HOLD of what N says: u'H u < HOLD u'N u, so that standard deviations by N
-  mean nothing there, and Gauss-Newton's steps shrink by no more than 1 - HOLD each;
+- where along some movement u, H and N differ by more than a share: |u'H u - u'N u| > STRAINED u'N u, so that standard
+  deviations by N mean nothing there, and each of Gauss-Newton's steps is that share of the last (beyond 1 it never
+  settles);
 - where a station's movement by one of its standard deviations bends the readings more than it moves them (BENT, as in
   adjust.solver.defects);
 - where another solution lies within BESIDE standard deviations, the same valley in fact.
@@ -25,7 +26,7 @@ import numpy as np
 from adjust.graph.space import Space
 from adjust.network import Array, Ints
 
-STEPS = 100
+STEPS = 200
 STEP_LEAST_M = 1e-8
 STEP_OF_DIFFERENCE = 1e-3
 """Metres, for a length of 100 m; radians a hundredth of it over that length. Rounding leaves 1e-13 / 1e-3 of it."""
@@ -33,21 +34,22 @@ DAMPING_MOST = 1e12
 SAME, BESIDE = 0.1, 5.0
 """Standard deviations between solutions that are one, and between those that are two of the same valley: at five, the
 saddle between the images of a station on one slope is 1.6 above them in v'Pv, less than its 95 % point of 3.8."""
-HOLD = 0.3
-"""At which Gauss-Newton's next step is 0.7 of the last."""
+STRAINED = 0.7
+"""At which v'Pv grows by 0.3 or by 1.7 over one standard deviation in place of 1."""
 BENT = 1.0
 """Second over first order of the readings at one standard deviation, as in adjust.solver.defects."""
 
 
 @dataclass(frozen=True)
 class Rest:
-    """A minimum: places (n, 3), orientations (g,), cost, N and H (u, u) by the free unknowns."""
+    """A minimum: places (n, 3), orientations (g,), cost, N and H (u, u) by the free unknowns; whether Newton got there."""
 
     x: Array
     turn: Array
     cost: float
     normal: Array
     hessian: Array
+    reached: bool
 
 
 def _gradients(space: Space, x: Array, turn: Array, free: Ints, robust: float) -> Array:
@@ -80,7 +82,7 @@ def _matrices(space: Space, x: Array, turn: Array, free: Ints, robust: float) ->
 def rest(space: Space, x: Array, free: Ints, robust: float) -> Rest:
     """The minimum that Newton's damped steps lead to from places (n, 3)."""
     x, turn, damping, n = x.copy(), space.turns(x[None])[0], 1e-6, x.size
-    cost = _cost(space, x, turn, robust)
+    cost, reached = _cost(space, x, turn, robust), False
     normal, hessian = _matrices(space, x, turn, free, robust)
     for _ in range(STEPS):
         right = -_gradients(space, x[None], turn[None], free, robust)[0]
@@ -95,12 +97,14 @@ def rest(space: Space, x: Array, free: Ints, robust: float) -> Rest:
                 moved = after <= cost * (1 + 1e-13) + 1e-12
             damping = max(damping / 10, 1e-12) if moved else damping * 10
         if not moved or step is None:
+            reached = bool(np.linalg.norm(right) < 1e-6)
             break
         x, turn, cost = tried, turned, after
         normal, hessian = _matrices(space, x, turn, free, robust)
-        if float(np.abs(step).max(initial=0.0)) < STEP_LEAST_M:
+        reached = float(np.abs(step).max(initial=0.0)) < STEP_LEAST_M
+        if reached:
             break
-    return Rest(x, turn, cost, normal, hessian)
+    return Rest(x, turn, cost, normal, hessian, reached)
 
 
 def _step(hessian: Array, normal: Array, damping: float, right: Array) -> Array | None:
@@ -122,13 +126,14 @@ def away(a: Rest, b: Rest, free: Ints) -> float:
     return float(np.sqrt(max(max(d @ one.normal @ d for one in (a, b)), 0.0)))
 
 
-def softest(one: Rest) -> tuple[float, Array]:
-    """The least u'H u / u'N u, and the movement u (of one standard deviation) at which it is reached."""
+def strain(one: Rest) -> tuple[float, Array]:
+    """The largest |u'H u - u'N u| / u'N u, and the movement u (of one standard deviation) at which it is reached."""
     scale = 1 / np.sqrt(np.maximum(np.diag(one.normal), 1e-300))
     w, v = np.linalg.eigh(one.normal * scale[:, None] * scale)
     root = v / np.sqrt(np.maximum(w, 1e-13 * w.max(initial=1e-300)))
     held, u = np.linalg.eigh(root.T @ (one.hessian * scale[:, None] * scale) @ root)
-    return float(held[0]), (root @ u[:, 0]) * scale
+    k = int(np.argmax(np.abs(held - 1)))
+    return float(abs(held[k] - 1)), (root @ u[:, k]) * scale
 
 
 def bend(space: Space, one: Rest, free: Ints, own: Ints) -> tuple[float, float, Array]:
