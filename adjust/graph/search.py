@@ -25,6 +25,7 @@ from adjust.network import Array, Ints
 
 BEAMS, LOTS, POSES = 8, 32, 8
 POOL, HOPS, NEW_OF_HOP = 8, 12, 4
+STEPS_OF_HOP, MORE_OF_HOP = 20, 12
 TURNS, TURNS_CLEAN = 5, 2
 """Turns with fresh lots, and how many of them go on where all readings but one fit."""
 WORK_MOST = 5e8
@@ -72,20 +73,33 @@ def searched(space: Space, stations: Ints, free: Ints, fill: Array, first: Solut
             done.append(todo[0][1])
             jumps = _jumps(space, stations, todo[0][0])
             work += len(jumps) * each
-            pool = _varied(pool + _varied(_adjusted(space, free, fill, jumps, ROBUST))[:NEW_OF_HOP])
+            pool = _varied(pool + _varied(_after_jumps(space, free, jumps))[:NEW_OF_HOP])
         every = sorted([*every, *pool], key=lambda one: one[1])
         if work > WORK_MOST or (every and fits(space, free, every[0][0], 0 if turn < TURNS_CLEAN - 1 else 1)):
             break
     return _distinct(every, stations)
 
 
-def _varied(found: Solutions) -> Solutions:
+def _after_jumps(space: Space, free: Ints, jumps: list[Array]) -> Solutions:
+    """Adjusted places after jumps: few steps for all of them, more for the best that differ."""
+    found: Solutions = []
+    side = max(1, NUMBERS_MOST // (len(space.sort) * len(free)))
+    for k in range(0, len(jumps), side):
+        x = np.array(jumps[k : k + side])
+        x, cost = space.settled(x, free, space.rough(x[0]), ROBUST, STEPS_OF_HOP)
+        found += [(one, float(c)) for one, c in zip(x, cost, strict=True)]
+    x = np.array([one for one, _ in _varied(found, MORE_OF_HOP)])
+    x, cost = space.settled(x, free, space.sd, ROBUST)
+    return [(one, float(c)) for one, c in zip(x, cost, strict=True)]
+
+
+def _varied(found: Solutions, most: int = POOL) -> Solutions:
     """The best of each cost."""
     kept: Solutions = []
     for x, cost in sorted((one for one in found if np.isfinite(one[1])), key=lambda one: one[1]):
         if all(abs(cost - other) > ALIKE * cost for _, other in kept):
             kept.append((x, cost))
-    return kept[:POOL]
+    return kept[:most]
 
 
 def _jumps(space: Space, stations: Ints, x: Array) -> list[Array]:
@@ -160,7 +174,7 @@ def _figures(space: Space, stations: Ints, fill: Array) -> list[Array]:
     figure = v[:, -3:] * np.sqrt(np.maximum(w[-3:], 0.0))
     alone = Space(**{**vars(space), "known": np.zeros_like(space.known)})
     keep = lines
-    for name in ("sort", "i", "j", "value", "up", "sd", "of_set", "source"):
+    for name in ("sort", "i", "j", "value", "up", "over", "sd", "of_set", "source"):
         setattr(alone, name, getattr(space, name)[keep])
     alone.sets, alone.plane = 0, 0.0
     x = np.zeros((1, *space.known.shape))

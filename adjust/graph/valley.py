@@ -42,7 +42,7 @@ BENT = 1.0
 
 @dataclass(frozen=True)
 class Rest:
-    """A minimum: places (n, 3), orientations (g,), cost, N and H (u, u) by the free unknowns; whether Newton got there."""
+    """A minimum: places (n, 3), orientations (g,), cost, N and H (u, u) by the free unknowns; if it was reached."""
 
     x: Array
     turn: Array

@@ -5,10 +5,10 @@
 makes COUNT random networks of 6 to 20 stations in space: slope distances between near stations, no zenith angle, no
 levelled line, a third of them with directions from some stations; three to five known stations, of which some are known
 in the plane or in height only; from hilly (300 m) to flat (1 m). Their starting coordinates are taken away. Each must
-agree with the reference, which must not know another solution then, or be said to have two solutions, which the
-reference confirms from both places, or be said to be fixed only just, which is so if v'Pv of the reference does not grow
-by 1 within a standard deviation of the height, or not fixed at all. With --blunder one distance is wrong by 0.1 m to 10 km, and what counts is whether
-it settles where it should.
+agree with the reference, which must not know another solution then; or be said to have two solutions, which the
+reference confirms from both places; or be said to be fixed only just, which is so if v'Pv of the reference does not
+grow by 1 within a standard deviation of the height; or not to be fixed at all. With --blunder one distance is wrong by
+0.1 m to 10 km, and what counts is whether it settles where it should.
 """
 
 from __future__ import annotations
@@ -26,14 +26,15 @@ import numpy as np
 import adjust
 from adjust.errors import BrasscapError
 from adjust.graph.starts import find_start
-from tests.solver.space import SD as SDS
 from tests.solver.space import PLANE, Array, Rows, Space, _fit, arrays, model, reference, write
+from tests.solver.space import SD as SDS
 
 SEED = 20261205
 COORDINATES_M, SHARE_OF_SD, SQUARE_SUM = 1e-6, 1e-4, 1e-6
-"""Differences that count as none: a micrometre, or where a flat network leaves metres of play in height a ten-thousandth
-of the standard deviation. The derivatives of the reference are differences of readings over a millimetre; with thirty
-times that step its differences from the adjustment in networks 14 and 22 fall from 6.1 and 1.6 to 0.9 and 0.4 um."""
+"""Differences that count as none: a micrometre, or where a flat network leaves metres of play in height a
+ten-thousandth of the standard deviation. The derivatives of the reference are differences of readings over a
+millimetre; with thirty times that step its differences from the adjustment in networks 14 and 22 fall from 6.1 and 1.6
+to 0.9 and 0.4 um."""
 BAD = ("differs", "refused wrongly", "refused wrongly, two solutions", "refused wrongly, fixed only just",
        "chosen silently", "settled elsewhere")  # fmt: skip
 TRUSTED = (0.67, 1.5)
