@@ -25,7 +25,7 @@ def test_any_network_of_slope_distances(number: int, expected: str, tmp_path: Pa
 
 
 def test_a_gross_slope_distance_settles(tmp_path: Path) -> None:
-    assert outcome(14, tmp_path / "job", blunder=True)[0] == "settled at the least"
+    assert outcome(8, tmp_path / "job", blunder=True)[0] == "settled at the least"
 
 
 @pytest.mark.parametrize(("number", "twofold"), [(14, False), (23, True)])
