@@ -11,8 +11,6 @@ from adjust.network import Array, Ints, Network
 
 APART = 1e-4
 """Share of the extent by which a station is named as moving between two solutions."""
-LEVEL = 4.0
-"""Growth of v'Pv, its 95 % point, within which a valley whose bottom Newton's steps do not reach is level."""
 
 
 def mirror_words(network: Network, stations: Ints, x: Array, others: list[Array]) -> list[str]:
@@ -45,9 +43,8 @@ def flat_words(network: Network, space: Space, stations: Ints, free: Ints, rests
     share, move = strain(first)
     if share > STRAINED:
         found |= _most_moved(move, free, n, found)
-    for one in rests:
-        if not one.reached and one.cost < first.cost + LEVEL:
-            found |= _most_moved(strain(one)[1], free, n, found)
+    if not first.reached:
+        found |= _most_moved(move, free, n, found)
     for other in rests[1:]:
         if away(first, other, free) < BESIDE:
             found |= _most_moved((other.x - first.x).ravel()[free[free < n]], free[free < n], n, found)

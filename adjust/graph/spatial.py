@@ -91,11 +91,13 @@ def _solutions(space: Space, free: Ints, fill: Array, stations: Ints, best: Solu
     for _ in range(ROUNDS):
         kept = _apart(kept + [rest(space, x, free, robust) for x, _ in best], free)
         new = [one for one in kept if not any(one is other for other in tried)][:IMAGES_OF]
-        if not new:
-            break
+        if not new or not kept[0].reached:
+            break  # a valley without a bottom is refused as it is
         tried += new
         best = settled(space, free, fill, [y for one in new for y in images(space, stations, one.x)], ROBUST)
-    return kept
+    # ways along a valley that are not at its end yet say no more where two bottoms are reached; alone they stay
+    bottoms = [one for one in kept if one.reached]
+    return bottoms if len(bottoms) > 1 and kept[0].reached else kept
 
 
 def _apart(rests: list[Rest], free: Ints) -> list[Rest]:

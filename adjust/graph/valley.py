@@ -26,7 +26,7 @@ import numpy as np
 from adjust.graph.space import Space
 from adjust.network import Array, Ints
 
-STEPS = 200
+STEPS = 120
 STEP_LEAST_M = 1e-8
 STEP_OF_DIFFERENCE = 1e-3
 """Metres, for a length of 100 m; radians a hundredth of it over that length. Rounding leaves 1e-13 / 1e-3 of it."""

@@ -38,8 +38,9 @@ to 0.9 and 0.4 um."""
 BAD = ("differs", "refused wrongly", "refused wrongly, two solutions", "refused wrongly, fixed only just",
        "chosen silently", "settled elsewhere")  # fmt: skip
 TRUSTED = (0.67, 1.5)
-EQUAL, BESIDE = 10.0, 5.0
-"""v'Pv by which another solution of the study is no worse, and standard deviations by which it is another."""
+EQUAL, BESIDE, SMALL = 10.0, 5.0, 12
+"""v'Pv by which another solution of the study is no worse, standard deviations by which it is another,
+and stations of a small network."""
 RELIEF = (300.0, 100.0, 30.0, 5.0, 1.0)
 
 
@@ -171,7 +172,8 @@ def only_just(space: Space, text: str) -> bool:
 
 def elsewhere(space: Space, xyz: Array, sd: Array, square_sum: float) -> bool:
     """Whether the reference has an equal solution elsewhere: the image in plan beyond the line through two stations
-    known there, or all heights the other way up. A silent choice between two would show here."""
+    known there, or in small networks all heights the other way up (in large ones scipy takes minutes from there). A
+    silent choice between two would show here."""
     new, plan = ~space.known.all(axis=1), np.flatnonzero(space.known[:, :2].all(axis=1))
     plan_image, height_image = xyz.copy(), xyz.copy()
     a, b = (complex(*xyz[k, :2]) for k in plan[:2])
@@ -179,7 +181,8 @@ def elsewhere(space: Space, xyz: Array, sd: Array, square_sum: float) -> bool:
     z = a + turn * ((xyz[:, 0] + 1j * xyz[:, 1] - a) / turn).conj()
     plan_image[new, :2] = np.stack([z.real, z.imag], axis=1)[new]
     height_image[new, 2] = 2 * space.truth[space.known[:, 2], 2].mean() - xyz[new, 2]
-    for start in (plan_image, height_image):
+    small = len(space.names) <= SMALL
+    for start in (plan_image, height_image) if small else (plan_image,):
         other, _, another = reference(replace(space, start=np.where(space.known, space.truth, start)))
         if another < square_sum + EQUAL and float((np.abs(other - xyz) / np.maximum(sd, 0.002)).max()) > BESIDE:
             return True
