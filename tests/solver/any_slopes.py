@@ -181,8 +181,9 @@ def elsewhere(space: Space, xyz: Array, sd: Array, square_sum: float) -> bool:
     z = a + turn * ((xyz[:, 0] + 1j * xyz[:, 1] - a) / turn).conj()
     plan_image[new, :2] = np.stack([z.real, z.imag], axis=1)[new]
     height_image[new, 2] = 2 * space.truth[space.known[:, 2], 2].mean() - xyz[new, 2]
-    small = len(space.names) <= SMALL
-    for start in (plan_image, height_image) if small else (plan_image,):
+    starts = [plan_image] if not space.sets else []  # directions know their hand
+    starts += [height_image] if len(space.names) <= SMALL else []
+    for start in starts:
         other, _, another = reference(replace(space, start=np.where(space.known, space.truth, start)))
         if another < square_sum + EQUAL and float((np.abs(other - xyz) / np.maximum(sd, 0.002)).max()) > BESIDE:
             return True
