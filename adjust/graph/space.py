@@ -1,7 +1,9 @@
 """Readings of stations in space as arrays, their misfits at many places at once, and damped least squares on them.
 
-Slope distance s^2 = (h2 - h1)^2 + (1 + h1/R)(1 + h2/R) D^2 with h above the plane (adjust.frames); zenith angle of the
-same triangle, curvature D^2/2R; lengths on the plane; rises; pointings with an orientation a set.
+Slope distance s^2 = (h2 - h1)^2 + (1 + h1/R + h2/R) D^2 with h above the plane (adjust.frames; h1 h2/R^2 left out), so
+ds = (q D dD + (h2 - h1)(dh2 - dh1) + D^2/2R (dh1 + dh2)) / s with q = 1 + (h1 + h2)/R. Zenith angle in the same
+triangle, with u = h2 - h1 - D^2/2R: dz = ((u + D^2/R) dD - D (dh2 - dh1)) / (D^2 + u^2). Lengths on the plane; rises;
+pointings with an orientation a set. A misfit r costs k^2 log(1 + (r/k sd)^2).
 """
 
 from __future__ import annotations
@@ -27,6 +29,8 @@ class Space:
     j: Ints
     value: Array
     up: Array
+    over: Array
+    """Sum of instrument and target height."""
     sd: Array
     of_set: Ints
     source: Ints
@@ -38,7 +42,7 @@ class Space:
     """Height of the plane."""
 
     @classmethod
-    def of(cls, clues: Clues, inside: set[int], given: Array, known: Bools) -> Space:
+    def of(cls, clues: Clues, inside: set[int], given: Array, known: Bools, plane: float) -> Space:
         """The readings whose ends are all ``inside``."""
         rows: list[tuple[int, int, int, float, float, int, int]] = []
         slopes = {s[4] for s in clues.slopes}
@@ -54,24 +58,25 @@ class Space:
         rows = [r for r in rows if r[1] in inside and r[2] in inside]
         blocks, sources = clues.network.blocks, clues.sources
         sd = [float(blocks[b].sd[row, 0]) for b, row in (sources[r[6]] for r in rows)]
+        above = [blocks[b].above for b, _ in sources]
+        over = [0.0 if a is None else float(np.nan_to_num(a[sources[r[6]][1]]).sum())
+                for r, a in ((r, above[r[6]]) for r in rows)]  # fmt: skip
         columns = list(zip(*rows, strict=True))
 
         def ints(k: int) -> Ints:
             return np.array(columns[k], dtype=np.int64)
 
-        heights = given[known[:, 2], 2]
         return cls(
             ints(0), ints(1), ints(2), np.array(columns[3], dtype=float), np.array(columns[4], dtype=float),
-            np.maximum(np.nan_to_num(np.array(sd, dtype=float), nan=1e-3), 1e-7), ints(5), ints(6), len(numbers) - 1,
-            known, given, float(heights.mean()) if len(heights) else 0.0,
+            np.array(over, dtype=float), np.maximum(np.nan_to_num(np.array(sd, dtype=float), nan=1e-3), 1e-7),
+            ints(5), ints(6), len(numbers) - 1, known, given, plane,
         )  # fmt: skip
 
     def misfits(self, x: Array, turn: Array) -> Array:
         """Computed minus observed (S, R) in metres or radians at places (S, n, 3), orientations (S, g)."""
         d = x[:, self.j] - x[:, self.i]
         flat = np.maximum(np.hypot(d[..., 0], d[..., 1]), 1e-9)
-        rise = d[..., 2] - self.up
-        grow = 1 + (x[:, self.i, 2] + x[:, self.j, 2] - 2 * self.plane) / RADIUS_M
+        rise, grow = d[..., 2] - self.up, self._grow(x)
         turned = np.concatenate([turn, np.zeros((len(x), 1))], axis=1)[:, self.of_set]
         computed = np.select(
             [self.sort == SLOPE, self.sort == LENGTH, self.sort == RISE, self.sort == ZENITH],
@@ -81,26 +86,36 @@ class Space:
         r = computed - self.value
         return np.asarray(np.where(self.sort == POINTING, r - 2 * np.pi * np.round(r / (2 * np.pi)), r))
 
+    def _grow(self, x: Array) -> Array:
+        """q (S, R): the square of a length at the heights of its ends as a share of that on the plane."""
+        return np.asarray(1 + (x[:, self.i, 2] + x[:, self.j, 2] + self.over - 2 * self.plane) / RADIUS_M)
+
     def partials(self, x: Array) -> Array:
         """Partials (S, R, 3 n + g) of the misfits."""
         count, n = x.shape[:2]
         d = x[:, self.j] - x[:, self.i]
         flat = np.maximum(np.hypot(d[..., 0], d[..., 1]), 1e-9)
-        rise = d[..., 2] - self.up
-        slope = np.sqrt(rise**2 + flat**2)
+        rise, grow = d[..., 2] - self.up, self._grow(x)
+        slope = np.sqrt(rise**2 + grow * flat**2)
         zero, one = np.zeros_like(flat), np.ones_like(flat)
         sorts = [self.sort == SLOPE, self.sort == LENGTH, self.sort == RISE, self.sort == ZENITH]
         e, m = d[..., 0], d[..., 1]
+        up = rise - flat**2 / (2 * RADIUS_M)
+        away = flat**2 + up**2
+        by_flat = (up + flat**2 / RADIUS_M) / away / flat
         by = np.stack([
-            np.select(sorts, [e / slope, e / flat, zero, rise * e / flat / slope**2], m / flat**2),
-            np.select(sorts, [m / slope, m / flat, zero, rise * m / flat / slope**2], -e / flat**2),
-            np.select(sorts, [rise / slope, zero, one, -flat / slope**2], zero),
+            np.select(sorts, [grow * e / slope, e / flat, zero, by_flat * e], m / flat**2),
+            np.select(sorts, [grow * m / slope, m / flat, zero, by_flat * m], -e / flat**2),
+            np.select(sorts, [rise / slope, zero, one, -flat / away], zero),
         ], axis=-1)  # fmt: skip
+        both = np.where(self.sort == SLOPE, flat**2 / (2 * RADIUS_M) / slope, 0.0)
         out = np.zeros((count, len(self.sort), 3 * n + self.sets))
         rows = np.arange(len(self.sort))
         for c in range(3):
             out[:, rows, 3 * self.i + c] -= by[..., c]
             out[:, rows, 3 * self.j + c] += by[..., c]
+        for ends in (self.i, self.j):
+            out[:, rows, 3 * ends + 2] += both
         turned = np.flatnonzero(self.of_set >= 0)
         out[:, turned, 3 * n + self.of_set[turned]] = -1.0
         return out
@@ -128,33 +143,36 @@ class Space:
 
     def settled(self, x: Array, free: Ints, sd: Array, robust: float, steps: int = STEPS) -> tuple[Array, Array]:
         """Places (S, n, 3) and costs (S,) after damped steps; a misfit r costs k^2 log(1 + (r / k sd)^2), k robust."""
-        n = x.shape[1]
         x, turn, damping = x.copy(), self.turns(x), np.full(len(x), 1e-3)
-        eye, stalled = np.eye(len(free)), np.zeros(len(x), dtype=np.int64)
+        n, stalled = x.shape[1], np.zeros(len(x), dtype=np.int64)
 
         def cost_of(r: Array) -> Array:
             return np.asarray((robust**2 * np.log1p((r / robust) ** 2)).sum(axis=1))
 
-        r = self.misfits(x, turn) / sd
-        cost = cost_of(r)
+        cost = cost_of(self.misfits(x, turn) / sd)
         for _ in range(steps):
-            a = self.partials(x)[:, :, free] / sd[:, None]
-            w = 1 / (1 + (r / robust) ** 2)
-            weighted = a.transpose(0, 2, 1) * w[:, None, :]
-            normal = weighted @ a
-            diagonal = np.einsum("suu->su", normal)
-            extra = damping[:, None] * diagonal + 1e-12 * diagonal.max(axis=1, keepdims=True) + 1e-300
-            step = -np.linalg.solve(normal + extra[:, :, None] * eye, weighted @ r[:, :, None])[:, :, 0]
-            full = np.zeros((len(x), 3 * n + self.sets))
-            full[:, free] = step
-            tried, turned = x + full[:, : 3 * n].reshape(x.shape), turn + full[:, 3 * n :]
-            r_tried = self.misfits(tried, turned) / sd
-            after = cost_of(r_tried)
-            better = after < cost
-            stalled = np.where(better & (cost - after > 1e-7 * (1 + cost)), 0, stalled + 1)
-            x, turn = np.where(better[:, None, None], tried, x), np.where(better[:, None], turned, turn)
-            r, cost = np.where(better[:, None], r_tried, r), np.where(better, after, cost)
-            damping = np.clip(np.where(better, damping / 8, damping * 5), 1e-10, 1e9)
-            if (stalled >= STALLED).all():
+            on = np.flatnonzero(stalled < STALLED)
+            if not len(on):
                 break
+            step = self._step(x[on], turn[on], free, sd, robust, damping[on])
+            tried, turned = x[on] + step[:, : 3 * n].reshape(-1, n, 3), turn[on] + step[:, 3 * n :]
+            after = cost_of(self.misfits(tried, turned) / sd)
+            better = after < cost[on]
+            gained = better & (cost[on] - after > 1e-7 * (1 + cost[on]))
+            stalled[on] = np.where(gained, 0, stalled[on] + 1)
+            x[on[better]], turn[on[better]], cost[on[better]] = tried[better], turned[better], after[better]
+            damping[on] = np.clip(np.where(better, damping[on] / 8, damping[on] * 5), 1e-10, 1e9)
         return x, cost
+
+    def _step(self, x: Array, turn: Array, free: Ints, sd: Array, robust: float, damping: Array) -> Array:
+        """Damped steps (S, 3 n + g)."""
+        r = self.misfits(x, turn) / sd
+        a = self.partials(x)[:, :, free] / sd[:, None]
+        weighted = a.transpose(0, 2, 1) * (1 / (1 + (r / robust) ** 2))[:, None, :]
+        normal = weighted @ a
+        diagonal = np.einsum("suu->su", normal)
+        extra = damping[:, None] * diagonal + 1e-12 * diagonal.max(axis=1, keepdims=True) + 1e-300
+        out = np.zeros((len(x), 3 * x.shape[1] + self.sets))
+        matrix = normal + extra[:, :, None] * np.eye(len(free))
+        out[:, free] = -np.linalg.solve(matrix, weighted @ r[:, :, None])[:, :, 0]
+        return out

@@ -69,8 +69,11 @@ class _Plane:
     mirrors: list[Places]
 
 
-def find_start(network: Network) -> Start:
-    """Starting values for every component that a reading asks for, from control, `stations` and the readings."""
+def find_start(network: Network, plane_height: float | None = None) -> Start:
+    """Starting values for every component that a reading asks for, from control, `stations` and the readings.
+
+    ``plane_height`` (m) is the job's, if it says one: slope distances of sound readings may differ by it.
+    """
     parts = find_parts(network)
     asked = np.zeros((len(network.stations), 2), dtype=bool)
     for part in parts:
@@ -80,7 +83,7 @@ def find_start(network: Network) -> Start:
     height = _heights(network, clues, asked[:, HEIGHT], None)
     # before the plane: slope distances that nothing reduces would only mislead it
     hung = _hung(network, clues, parts, height) if clues.slopes else []
-    found = _in_space(network, clues, hung, np.full((len(asked), 3), np.nan))
+    found = _in_space(network, clues, hung, np.full((len(asked), 3), np.nan), plane_height)
     rest = [part for k, part in enumerate(parts) if k not in found]
     plane = _find_plane(network, clues, rest)
     if (clues.zeniths or clues.slopes) and rest:
@@ -93,7 +96,7 @@ def find_start(network: Network) -> Start:
         # a rough start in the plane may still lead to the right heights
         guess = positions.copy()
         guess[list(height.origins), 2] = np.nan
-        found |= _in_space(network, clues, [k for k in hung if k not in found], guess)
+        found |= _in_space(network, clues, [k for k in hung if k not in found], guess, plane_height)
     if found:
         return _joined(
             network, clues, {k: (parts[k], one) for k, one in found.items()}, positions, plane, height, asked
@@ -120,14 +123,15 @@ def _hung(network: Network, clues: Clues, parts: list[Part], height: Heights) ->
             if (p.nodes[:, HEIGHT] & hanging).any() and (p.nodes[:, HEIGHT] & fixed).any()]  # fmt: skip
 
 
-def _in_space(network: Network, clues: Clues, parts: list[int], guess: Array) -> dict[int, Found]:
+def _in_space(network: Network, clues: Clues, parts: list[int], guess: Array,
+              plane_height: float | None) -> dict[int, Found]:  # fmt: skip
     """The parts that are placed in space."""
     if not parts:
         return {}
     from adjust.graph.spatial import place_in_space  # only where heights hang on slope distances
 
     every = find_parts(network)
-    tried = {k: place_in_space(network, clues, every[k].nodes, guess) for k in parts}
+    tried = {k: place_in_space(network, clues, every[k].nodes, guess, plane_height) for k in parts}
     return {k: found for k, found in tried.items() if found is not None}
 
 

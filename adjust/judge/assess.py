@@ -283,7 +283,8 @@ class Judgement:
         return html_table(f"{self!r}, largest statistics first", head, rows)
 
     def __repr__(self) -> str:
-        return f"<Judgement: overall test {self.overall[-1].verdict}, {len(self.blame)} suspects>"
+        n = len(self.blame)
+        return f"<Judgement: overall test {self.overall[-1].verdict}, {n} suspect{'s' if n != 1 else ''}>"
 
 
 def assess(solution: Solution) -> Judgement:

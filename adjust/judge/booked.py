@@ -90,7 +90,7 @@ class Booked:
     def of(cls, what: Job | Solution) -> Booked:
         """Of a job, at its starting values; of a solution, at the adjusted places."""
         if isinstance(what, Job):
-            start = find_start(what.network)
+            start = find_start(what.network, what.settings.frame.plane_height)
             return cls(what, what.network, start.positions, start.groups)
         return cls(what.job, what.job.network, what.positions, what.groups)
 

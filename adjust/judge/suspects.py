@@ -11,7 +11,9 @@ import numpy as np
 from adjust.judge.blunders import Levels
 from adjust.judge.leaving_out import Without
 from adjust.judge.overall import OverallTest, overall_of
+from adjust.judge.reliability import reliability
 from adjust.judge.removals import Fit, Removal, fit, shifts
+from adjust.judge.rows import rows_in
 from adjust.network import Array
 
 if TYPE_CHECKING:
@@ -61,7 +63,7 @@ def suspects(judgement: Judgement) -> tuple[Suspect, ...]:
     """Suspects of either level in order of blame."""
     found = judgement.blunders
     if not found.rows:
-        return _plain(judgement)
+        return _readings_alone(judgement) if judgement.control_report.failed else _plain(judgement)
     without = found.model.without(found.rows)
     scale = math.sqrt(without.scale(levels_of(judgement).given))
     sd = np.sqrt(np.diagonal(without.covariance)) * scale
@@ -69,7 +71,28 @@ def suspects(judgement: Judgement) -> tuple[Suspect, ...]:
         Suspect(r, float(b), float(s), float(-b / s), True)
         for r, b, s in zip(found.rows, without.blunder, sd, strict=True)
     ]
-    return (*first, *_left(judgement, without, scale))
+    # what still fails where control is wrong is the control's doing
+    return tuple(first) if judgement.control_report.failed else (*first, *_left(judgement, without, scale))
+
+
+def _readings_alone(judgement: Judgement) -> tuple[Suspect, ...]:
+    """One reading at a time where control is wrong: in the free stage, which knows nothing of it; none without one."""
+    free = judgement.solution.free
+    if free is None:
+        return ()
+    alone, levels = reliability(free), levels_of(judgement)
+    degrees = free.total.degrees_of_freedom
+    scale = 1.0 if levels.given else (free.total.variance_factor or np.nan)
+    statistic = alone.statistic / math.sqrt(scale)
+    rows = np.flatnonzero(np.abs(np.nan_to_num(statistic)) > levels.limit(levels.reading, degrees))
+    rows = rows[np.argsort(-np.abs(statistic[rows]), kind="stable")]
+    place, root = rows_in(free.network, judgement.solution.network), alone.root * math.sqrt(scale)
+    return tuple(
+        Suspect(
+            int(place[r]), float(alone.blunder[r]), float(root[r]), float(statistic[r]), judgement.blunders.too_many
+        )
+        for r in rows
+    )
 
 
 def _plain(judgement: Judgement) -> tuple[Suspect, ...]:

@@ -127,4 +127,7 @@ def _all_clear(record: Entry) -> str:
     held += ["the control agrees"] if any(m["verdict"] == "agrees" for m in record["control"]) else []
     held += [] if record["unchecked"] else ["every reading is checked by others"]
     said = held[0] if len(held) == 1 else ", ".join(held[:-1]) + " and " + held[-1]
-    return f"Nothing stands out: {said}."
+    out = sum("--without-suspects" in one["reason"] for one in record["left_out"])
+    return (
+        f"With {count(out, 'suspect')} left out nothing stands out: {said}." if out else f"Nothing stands out: {said}."
+    )

@@ -68,9 +68,9 @@ All faults come at once on standard error, one a line, and nothing is written (e
 FILE:LINE: column NAME: "what was found": what to do
 ```
 
-Exit codes: 0 done; 1 done, but a test failed, a suspect stands at the job's level, a check mark disagrees, or something
-does not close or meet its limit; 2 could not be done; 70 internal error; 130 interrupted. Every message is explained in
-[messages](messages.md).
+Exit codes: 0 done; 1 done, but a test failed, a suspect stands at the job's level, control disagrees with the
+readings (a mark, one of several, or all by a common scale), or something does not close or meet its limit; 2 could
+not be done; 70 internal error; 130 interrupted. Every message is explained in [messages](messages.md).
 
 What comes out is explained in [the record, key by key](record.md).
 """

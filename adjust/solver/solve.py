@@ -65,7 +65,7 @@ def _free_stage(job: Job, ready: Setting) -> Solution | None:
 def prepare(job: Job, start: Start | None = None) -> Setting:
     """Parts, datum, starting values and pattern of a job; raises Unsolvable."""
     parts = find_parts(job.network)
-    start = start or find_start(job.network)
+    start = start or find_start(job.network, job.settings.frame.plane_height)
     filled = replace(start, positions=_filled(start.positions, parts))
     settings = job.settings
     try:

@@ -28,6 +28,7 @@ HOLE = "‹›"
 OTHER_PAGES = {
     "adjust/book/schema.py": "meanings of keys and columns: docs/formats.md",
     "adjust/record/keys.py": "meanings of the record's keys: docs/record.md",
+    "adjust/record/judged_keys.py": "meanings of the record's keys: docs/record.md",
     "adjust/record/format_pages.py": "the text of docs/formats.md itself",
     "adjust/record/schemas.py": "titles of the JSON Schemas",
 }
@@ -46,6 +47,7 @@ NOT_SHOWN = {
     "cannot declare": "the TOML reader's words, recognised and replaced",
     "unterminated string": "the TOML reader's words, recognised and replaced",
     "invalid date": "the TOML reader's words, recognised and replaced",
+    "with everything released nothing is contradicted": "an assertion, for programmers",
     "no inverse": "caught and replaced by sentences about stations",
     "east, north": "a choice of a key, not a message",
     "shift east": "name of a freedom inside the program",

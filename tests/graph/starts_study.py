@@ -115,8 +115,8 @@ def spoilt(network: Network, rng: np.random.Generator) -> tuple[Network, str]:
 def solved(trial: Trial, places: Array | None) -> Solution | str:
     """The solution from given places (n, 3), else from the readings alone; or in a word why there is none."""
 
-    def given(network: Network) -> Start:
-        found = find_start(network)
+    def given(network: Network, plane_height: float | None = None) -> Start:
+        found = find_start(network, plane_height)
         known = network.stations.start
         assert places is not None
         positions = np.where(np.isnan(known), places, known)

@@ -8,6 +8,10 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from adjust.graph.clues import Clues
+from adjust.graph.images import bodies, reflected, upright
+from adjust.graph.lifted import lifted
+from adjust.graph.space import Space
 from adjust.graph.spheres import Plane, Sphere, meet, places
 from adjust.graph.starts import find_start
 from tests.graph.sketch import Sketch
@@ -101,3 +105,66 @@ def test_a_flat_network_is_refused_or_right_never_wrong() -> None:
     assert start.failures
     assert "X" in start.failures[0]
     assert "fixed only just" in start.failures[0] or "equally well" in start.failures[0]
+
+
+def space_of(one: Sketch, known: str) -> tuple[Space, np.ndarray]:
+    """The readings of a sketch as arrays, the stations."""
+    net = one.network(known, heights=known)
+    given = net.stations.start
+    stations = np.arange(len(given))
+    return Space.of(Clues.of(net), set(stations.tolist()), given, ~np.isnan(given), 50.0), stations
+
+
+def test_partials_of_slopes_are_their_differences() -> None:
+    """In a flat network the height at which a length is measured moves it by as much as the rise does."""
+    space, stations = space_of(slopes("AX BX CX XY AY"), "A B C")
+    x = np.random.default_rng(2).normal(size=(len(stations), 3)) * [200, 200, 1]
+    turn = space.turns(x[None])
+    a = space.partials(x[None])[0]
+    for c in range(x.size):
+        step = np.zeros(x.size)
+        step[c] = 1e-3
+        there, back = (space.misfits((x.ravel() + t * step).reshape(1, -1, 3), turn)[0] for t in (1.0, -1.0))
+        close((there - back) / 2e-3, a[:, c], atol=1e-8)
+
+
+def test_what_hangs_on_three_or_two_stations_is_found() -> None:
+    """X and Y hang on B, C, D; Z hangs on X and Y besides, and so on both of them alone."""
+    z = {k: HILLS[k] for k in "ABCDXY"} | {"Z": (1300.0, 2000.0, 80.0)}
+    space, stations = space_of(slopes("AB AC AD BX CX DX BY CY DY XY XZ YZ", **z), "A B C D")
+    names = list(z)
+    found = {
+        ("".join(names[s] for s in body), "".join(names[s] for s in hinge)) for body, hinge in bodies(space, stations)
+    }
+    assert ("XYZ", "BCD") in found
+    assert ("Z", "XY") in found
+    assert not any("A" in body for body, _ in found)
+
+
+def test_images_keep_the_distances_to_their_hinge() -> None:
+    x = np.array([HILLS[k] for k in "ABCX"])
+    far = np.linalg.norm(x[3] - x[:3], axis=1)
+    moved = np.array([3])
+    close(np.linalg.norm(reflected(x, moved, x[:3])[3] - x[:3], axis=1), far, atol=1e-9)
+    image = upright(x, moved, x[:2])
+    close(np.linalg.norm(image[3] - x[:2], axis=1), far[:2], atol=1e-9)
+    close(image[3, 2], x[3, 2], atol=1e-12)
+    assert np.hypot(*(image[3] - x[3])[:2]) > 1.0
+
+
+def test_two_stations_known_in_the_plane_leave_the_whole_network_its_image() -> None:
+    """Heights do not tell the two sides of the vertical plane through A and E apart."""
+    one = slopes(" ".join(a + b for a, b in itertools.combinations("ABCDEXY", 2)))
+    start = find_start(one.network("A E", heights="A C E"))
+    (sentence,) = start.failures
+    assert "mirror images fit all readings equally well" in sentence
+    close(start.images[0][:, 2], start.positions[:, 2], atol=1e-3)
+
+
+def test_dimensions_to_spare_let_lots_find_the_figure() -> None:
+    space, stations = space_of(slopes(" ".join(a + b for a, b in itertools.combinations("ABCDEXY", 2))), "A B C D")
+    truth = np.array(list(HILLS.values()))
+    fill = np.where(space.known, truth, truth[:4].mean(axis=0))
+    off = [float(np.abs(x - truth).max()) for x in lifted(space, stations, fill)]
+    assert min(off) < 0.5
+    assert max(np.abs(fill - truth).max(), 1.0) > 50.0
