@@ -23,11 +23,11 @@ from functools import cache
 from importlib.resources import files
 from typing import TYPE_CHECKING, Any
 
-from adjust.book.raw_texts import raw_texts
+from adjust.book.raw_texts import RawText, raw_texts
 from adjust.judge import slips_of_place, slips_of_text
 from adjust.judge.slip_forms import Form, Slipped
 from adjust.kinds import KINDS
-from adjust.units import TURN, wrap
+from adjust.units import TURN, BadValue, wrap
 
 if TYPE_CHECKING:
     from adjust.judge.assess import Judgement
@@ -35,6 +35,8 @@ if TYPE_CHECKING:
 
 FARTHEST = 2.5
 """Standard deviations by which a form may miss the blunder; 1 in 80 right ones misses by more."""
+APART = 0.01
+"""Weight of a slip in one face that would leave the faces further apart than half of what they are."""
 LARGEST_M = 1e5
 SILENT_BELOW = 0.5
 AS_GOOD = 0.5
@@ -101,7 +103,10 @@ def _weighed(case: Slipped) -> list[tuple[dict[str, Any], Form, float]]:
     found = []
     for row in rows:
         forms = list(_different(_function(row["key"])(case)))
-        found += [(row, form, row["prior"] / len(forms) * form.weight * _likelihood(case, form)) for form in forms]
+        found += [
+            (row, form, row["prior"] / len(forms) * form.weight * _faces_agree(case, form) * _likelihood(case, form))
+            for form in forms
+        ]
     total = other * _other(case) + sum(weight for _, _, weight in found)
     near = [(row, form, weight / total) for row, form, weight in found if weight > 0]
     return sorted(near, key=lambda one: -one[2])
@@ -117,10 +122,31 @@ def _different(forms: Iterator[Form]) -> Iterator[Form]:
             yield form
 
 
+def _faces_agree(case: Slipped, form: Form) -> float:
+    """Weight of a form that changes one of two faces: little unless it brings them together."""
+    if len(case.raws) != 2 or not form.booked or any(abs(abs(r.factor) - 0.5) > 1e-9 for r in case.raws):
+        return 1.0
+    mine, other = sorted(case.raws, key=lambda r: r.line != form.line)
+    try:
+        was, now = _apart(case, mine, mine.text, other), _apart(case, mine, form.would, other)
+    except BadValue:
+        return 1.0
+    return 1.0 if now < was / 2 else APART
+
+
+def _apart(case: Slipped, mine: RawText, text: str, other: RawText) -> float:
+    """How far two faces are apart: half a circle between pointings, a whole one of both zenith circles together."""
+    one, two = mine.parse(text), other.parse(other.text)
+    if not case.wraps:
+        return abs(one - two)
+    return abs(wrap(one + two if case.kind == "zenith_angle" else one - two - TURN / 2))
+
+
 def _likelihood(case: Slipped, form: Form) -> float:
     miss = case.blunder - form.change
-    t = (wrap(miss) if case.wraps else miss) / case.sd
-    return math.exp(-t * t / 2) / (math.sqrt(TURN) * case.sd) if abs(t) <= FARTHEST else 0.0
+    sd = math.hypot(case.sd, form.sd)
+    t = (wrap(miss) if case.wraps else miss) / sd
+    return math.exp(-t * t / 2) / (math.sqrt(TURN) * sd) if abs(t) <= FARTHEST else 0.0
 
 
 def _other(case: Slipped) -> float:

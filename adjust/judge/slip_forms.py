@@ -49,3 +49,5 @@ class Form:
     booked: str = ""
     weight: float = 1.0
     """Factor on the prior weight of this form, for what else speaks for or against it."""
+    sd: float = 0.0
+    """Standard deviation of ``change``, where it comes from another reading."""

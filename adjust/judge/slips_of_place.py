@@ -63,7 +63,7 @@ def pointings_swapped(case: Slipped) -> Iterator[Form]:
             told = f"the readings to {names[0]} and {names[1]} were exchanged ({block.name(int(j))})"
             both = block.name(int(j)) in case.suspects
             change = wrap(float(block.values[i, 0] - block.values[j, 0]))
-            yield Form("", change, told, 0, weight=BOTH if both else ONE_ONLY)
+            yield Form("", change, told, 0, weight=BOTH if both else ONE_ONLY, sd=float(block.sd[j, 0]))
 
 
 def reflector_constant(case: Slipped) -> Iterator[Form]:
