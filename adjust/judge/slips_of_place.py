@@ -88,6 +88,8 @@ def slope_for_horizontal(case: Slipped) -> Iterator[Form]:
         return
     a, b = case.block.stations[case.i]
     rise = case.state.positions[b, 2] - case.state.positions[a, 2]
+    if case.block.above is not None:
+        rise += float(case.block.above[case.i, 1] - case.block.above[case.i, 0])
     if not math.isfinite(rise):
         return
     booked = float(case.block.values[case.i, 0])

@@ -2,9 +2,9 @@
 
     python -m tests.judge.causes_study [COUNT] [SLIP ...]
 
-makes COUNT networks a slip (braced plane networks, level nets, mixed ones; 8 to 30 stations), plants the slip in a
-random row where it is at least twice the smallest detectable size, adjusts and looks at the first suspect and its
-causes.
+makes COUNT networks a slip (braced plane networks, level nets, mixed ones; 8 to 30 stations, in space 6 to 12), plants
+the slip in a random row where it is at least twice the smallest detectable size, adjusts and looks at the first suspect
+and its causes.
 "some amount" is an error uniform between 2 and 50 smallest detectable sizes: a cause offered there is an accident.
 """
 
@@ -22,7 +22,8 @@ import adjust
 from adjust.errors import BrasscapError, InputError
 from adjust.judge.causes import causes
 from tests.judge.blunders_study import shifted
-from tests.judge.slipped import SORTS, Sort, booked_job, plant
+from tests.judge.slipped import IN_SPACE, SORTS, Sort, booked_job, plant
+from tests.solver.space import random_space, write
 
 SEED = 20261207
 KIND_SETS = (
@@ -38,7 +39,11 @@ def outcome(sort: Sort, number: int, folder: Path) -> tuple[str, float, bool] | 
     """Verdict, support of the first cause, and whether it is right; None where the slip cannot be planted there."""
     rng = np.random.default_rng([SEED, number, len(sort.slip)])
     kinds = KIND_SETS[number % len(KIND_SETS)]
-    job = booked_job(rng, folder, int(rng.integers(8, 31)), kinds, CONTROL[number // len(KIND_SETS) % 3])
+    if sort.slip in IN_SPACE:
+        mixture = "ground" if sort.slip == "slope-for-horizontal" else "rich"
+        job = write(random_space(rng, n=int(rng.integers(6, 13)), mixture=mixture), folder)
+    else:
+        job = booked_job(rng, folder, int(rng.integers(8, 31)), kinds, CONTROL[number // len(KIND_SETS) % 3])
     before = adjust.assess(adjust.solve(adjust.read(job)))
     at = {before.ids[r]: r for r in range(len(before.ids))}
     if sort is SOME:
@@ -68,7 +73,7 @@ def outcome(sort: Sort, number: int, folder: Path) -> tuple[str, float, bool] | 
         return ("refused, naming it" if named else "refused"), 0.0, False
     first_row = at[wrong[0]]
     moved = abs(judged.solution.design.observed[first_row] - before.solution.design.observed[first_row])
-    size = None if sort.slip == "wrong-station" else moved
+    size = None if sort.slip in ("wrong-station", *IN_SPACE[:1]) else moved
     if size is not None and size < LEAST * before.smallest_detectable[at[wrong[0]]]:
         return None
     if not judged.suspects:

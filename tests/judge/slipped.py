@@ -146,7 +146,10 @@ SORTS = (
     Sort("reflector-constant", ("distance",), _constant),
     Sort("feet-for-metres", ("distance",), _feet),
     Sort("pointings-swapped", ("direction",), None),
+    Sort("height-forgotten", ("zenith_angle",), None),
+    Sort("slope-for-horizontal", ("distance",), None),
 )
+IN_SPACE = ("height-forgotten", "slope-for-horizontal")
 TABLE = {"distance": "distances", "direction": "directions", "angle": "angles"}
 
 
@@ -157,6 +160,8 @@ def tables(folder: Path, column: str) -> list[Sheet]:
 
 def plant(rng: np.random.Generator, folder: Path, sort: Sort) -> list[tuple[str, int]] | None:
     """Make the slip in one random row; places of the rows that are wrong now."""
+    if sort.slip in IN_SPACE:
+        return _in_space(rng, folder, sort)
     choices = [(sheet, column) for column in sort.columns for sheet in tables(folder, column)]
     if not choices:
         return None
@@ -186,3 +191,22 @@ def plant(rng: np.random.Generator, folder: Path, sort: Sort) -> list[tuple[str,
         return None
     sheet.put(i, column, wrong)
     return [(name, i + 2)]
+
+
+def _in_space(rng: np.random.Generator, folder: Path, sort: Sort) -> list[tuple[str, int]] | None:
+    """The target's height left out of a zenith angle; the display's slope distance booked as the horizontal one."""
+    zeniths = Sheet.of(folder / "zenith_angle.csv")
+    if sort.slip == "height-forgotten":
+        i = int(rng.integers(len(zeniths.rows)))
+        zeniths.put(i, "target_height", "0")
+        return [("zenith_angle.csv", i + 2)]
+    if not (folder / "ground.csv").exists():
+        return None
+    ground = Sheet.of(folder / "ground.csv")
+    i = int(rng.integers(len(ground.rows)))
+    angle = {(row[0], row[1]): float(row[zeniths.header.index("zenith_angle")]) for row in zeniths.rows}
+    z = angle.get((ground.rows[i][0], ground.rows[i][1]))
+    if z is None:
+        return None
+    ground.put(i, "distance", f"{float(ground.get(i, 'distance')) / math.sin(math.radians(z)):.4f}")
+    return [("ground.csv", i + 2)]
