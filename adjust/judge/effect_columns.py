@@ -6,6 +6,8 @@ refraction                 dz/dk     of all zenith angles or of a day's (adjust.
 zenith index               1         of an instrument or of one of its days, radians
 staff scale                rise      of a level or a table, a pure number
 orientation                1         of a table of azimuths without a turn of their own, radians
+instrument height          dr/dh     of all sights from a station with one booked height, metres (common_heights)
+target height              dr/dh     of all sights to a station with one booked height, metres
 """
 
 from __future__ import annotations
@@ -17,6 +19,7 @@ import numpy as np
 
 from adjust.kinds import KINDS
 from adjust.network import Array, Bools, Ints, Network
+from adjust.solver.solution import Solution
 
 FEWEST = 3
 """Readings below which nothing is called common to them: of two that differ either may be wrong."""
@@ -25,9 +28,16 @@ MOST = 60
 one more right-hand side of a solved system, and each is one more chance of a false one."""
 CONSTANT, SCALE, REFRACTION = "constant", "scale", "refraction"
 INDEX, STAFF, ORIENTATION = "zenith index", "staff scale", "orientation"
+INSTRUMENT_HEIGHT, TARGET_HEIGHT = "instrument height", "target height"
 DIMENSION = {CONSTANT: "length", SCALE: "ratio", REFRACTION: "number", INDEX: "angle", STAFF: "ratio",
-             ORIENTATION: "angle"}  # fmt: skip
+             ORIENTATION: "angle", INSTRUMENT_HEIGHT: "length", TARGET_HEIGHT: "length"}  # fmt: skip
 REFLECTOR, INSTRUMENT, TABLE, DAY, ALL = "reflector", "instrument", "table", "day", "all"
+SET_UP = "set-up"
+STEP_M = 1e-3
+"""Metres over which a reading is differenced by a height: the second derivative is below 1e-2 per metre at 10 m."""
+FAILING = 2
+"""Readings of a set-up that must fail before its heights are looked at: every set-up has two, and each is one more
+chance of a false one."""
 
 
 @dataclass(frozen=True)
@@ -55,6 +65,31 @@ def effects(network: Network, by_group: Array) -> tuple[list[Effect], int]:
     ranked = sorted(range(len(found)), key=lambda k: (found[k].by == DAY, -len(found[k].rows), k))
     kept = sorted(ranked[:MOST])
     return [found[k] for k in kept], len(found) - len(kept)
+
+
+def common_heights(solution: Solution, failing: Bools) -> list[Effect]:
+    """Heights of instruments and targets, of the set-ups of which two readings fail their own tests; ``failing`` (R,)."""
+    network, design = solution.network, solution.design
+    positions = np.where(np.isnan(solution.positions), design.unasked, solution.positions)
+    found: dict[tuple[str, int, float], list[tuple[int, float]]] = {}
+    for b, block in enumerate(network.blocks):
+        if block.above is None or "both" not in KINDS[block.kind].touched(block.surface):
+            continue
+        rows = network.rows.of_block(b, len(block))
+        for end, what in enumerate((INSTRUMENT_HEIGHT, TARGET_HEIGHT)):
+            higher = block.above.copy()
+            higher[:, end] += STEP_M
+            by = (design.values(replace(block, above=higher), positions, solution.groups)
+                  - design.values(block, positions, solution.groups))[:, 0] / STEP_M  # fmt: skip
+            for i in np.flatnonzero(rows >= 0).tolist():
+                key = (what, int(block.stations[i, end]), round(float(block.above[i, end]), 4))
+                found.setdefault(key, []).append((int(rows[i]), float(by[i])))
+    out = []
+    for (what, station, _), pairs in found.items():
+        rows, values = (np.array(column) for column in zip(*sorted(pairs), strict=True))
+        if len(rows) >= FEWEST and failing[rows].sum() >= FAILING:
+            out.append(Effect(what, SET_UP, solution.names[station], rows.astype(np.int64), values.astype(float)))
+    return out
 
 
 def _joined(found: Iterator[Effect]) -> list[Effect]:

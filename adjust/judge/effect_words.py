@@ -21,11 +21,14 @@ from adjust.judge.effect_columns import (
     DIMENSION,
     INDEX,
     INSTRUMENT,
+    INSTRUMENT_HEIGHT,
     ORIENTATION,
     REFLECTOR,
     REFRACTION,
+    SET_UP,
     STAFF,
     TABLE,
+    TARGET_HEIGHT,
     Effect,
 )
 from adjust.solver.solution import Solution
@@ -46,7 +49,8 @@ FEET_SURE = 0.5e-6
 LEVELS = (30e-6, 400e-6)
 
 NOUN = {CONSTANT: "distances", "scale": "distances", REFRACTION: "zenith angles", INDEX: "zenith angles",
-        STAFF: "levelled rises", ORIENTATION: "azimuths"}  # fmt: skip
+        STAFF: "levelled rises", ORIENTATION: "azimuths", INSTRUMENT_HEIGHT: "sights", TARGET_HEIGHT: "sights",
+        }  # fmt: skip
 TAKEN_UP = {
     CONSTANT: "the coordinates take it up; known points, or one line measured whole and in parts, would tell",
     "scale": "the size of the network takes it up; known points, or distances of another instrument, would tell",
@@ -54,6 +58,8 @@ TAKEN_UP = {
     INDEX: "the heights take it up; sights from both ends, known heights or levelling would tell",
     STAFF: "the heights take it up; known heights that differ, or rises of another staff, would tell",
     ORIENTATION: "the network turns with them; known points or other azimuths would tell",
+    INSTRUMENT_HEIGHT: "the height of the station takes it up; sights to it from elsewhere would tell",
+    TARGET_HEIGHT: "the height of the station takes it up; sights from it, or another target, would tell",
 }
 MORE = {CONSTANT: ("too long", "too short"), "scale": ("too long", "too short"), INDEX: ("too large", "too small"),
         STAFF: ("too large", "too small"), ORIENTATION: ("too large", "too small")}  # fmt: skip
@@ -214,6 +220,8 @@ def _sentence(solution: Solution, f: Finding, question: str, names: tuple[str, .
     if f.verdict == NONE_SEEN:
         return f"{e.what[0].upper()}{e.what[1:]} of {who}: none seen ({sizes.signed(f.value)}, {sure})."
     sure += f", {abs(f.statistic):.1f} times"
+    if e.by == SET_UP:
+        return _height(f, sizes, sure, names)
     if f.is_significant:
         return f"The {who} {_by_how_much(solution, f, sizes, 'are', 'ask for')} ({sure}){_alike(f)}: {question}"
     would = f"The {who} would {_by_how_much(solution, f, sizes, 'be', 'ask for')} ({sure})"
@@ -221,6 +229,19 @@ def _sentence(solution: Solution, f: Finding, question: str, names: tuple[str, .
         return f"{would}, but not with the {title(f.by)} taken into account."
     alone, it = ("one reading", "it") if len(names) == 1 else ("single readings", "them")
     return f"{would}, but this rests on {alone}, {', '.join(names)}: without {it} nothing is seen."
+
+
+def _height(f: Finding, sizes: Sizes, sure: str, names: tuple[str, ...]) -> str:
+    """Of a height of instrument or target."""
+    assert f.value is not None
+    e, way = f.effect, "higher" if f.value > 0 else "lower"
+    who = f"The {'instrument at' if e.what == INSTRUMENT_HEIGHT else 'target on'} {e.of}"
+    if f.is_significant:
+        return (f"{who} stood {sizes.plain(f.value)} {way} than booked ({sure}; {len(e.rows)} sights say so){_alike(f)}: "
+                f"was its height misread, or forgotten?")  # fmt: skip
+    if f.by is not None:
+        return f"{who} would have stood {way} than booked, but not with the {title(f.by)} taken into account."
+    return f"{who} would have stood {way} than booked, but this rests on {', '.join(names)}."
 
 
 def _by_how_much(solution: Solution, f: Finding, sizes: Sizes, be: str, ask: str) -> str:

@@ -29,7 +29,7 @@ import numpy as np
 
 from adjust.book.settings import Tests
 from adjust.judge.critical import normal_critical, student_critical
-from adjust.judge.effect_columns import MOST, Effect, effects
+from adjust.judge.effect_columns import MOST, Effect, common_heights, effects
 from adjust.judge.effect_words import NONE_SEEN, TWICE, Finding, Systematic, sentence_of_more, told
 from adjust.judge.influence import Influence
 from adjust.judge.reliability import Reliability
@@ -54,12 +54,18 @@ TOLD_APART = 0.9
 
 def systematic(solution: Solution, reliability: Reliability, tests: Tests) -> tuple[Systematic, ...]:
     """Every effect with its test, in the order of adjust.judge.effect_columns."""
+    found, left_out = findings(solution, reliability, tests)
+    words = [told(solution, one) for one in found]
+    return (*words, sentence_of_more(left_out, MOST)) if left_out else tuple(words)
+
+
+def findings(solution: Solution, reliability: Reliability, tests: Tests) -> tuple[list[Finding], int]:
+    """The bare figures of every effect, and how many were left out."""
     columns, left_out = effects(solution.network, solution.coefficients[:, -1])
+    columns += common_heights(solution, np.abs(np.nan_to_num(reliability.statistic)) > FAILING_W)
     if not columns:
-        return ()
-    problem = Problem.of(solution, reliability, columns)
-    found = [told(solution, one) for one in search(problem, tests)]
-    return (*found, sentence_of_more(left_out, MOST)) if left_out else tuple(found)
+        return [], left_out
+    return search(Problem.of(solution, reliability, columns), tests), left_out
 
 
 def expected_by_chance(found: Sequence[Systematic], tests: Tests) -> float:
