@@ -49,9 +49,10 @@ class Effect:
         return np.asarray(self.values @ matrix[self.rows])
 
 
-def effects(network: Network, by_group: Array) -> tuple[list[Effect], int]:
-    """The effects to test, and how many are left out; ``by_group`` (R,) partials by the group unknowns."""
-    found = [e for e in _joined(_all(_Rows(network, by_group))) if len(e.rows) >= FEWEST]
+def effects(network: Network, by_group: Array, adjusted: Array) -> tuple[list[Effect], int]:
+    """The effects to test, and how many are left out; ``by_group`` (R,) partials by the group unknowns, ``adjusted``
+    (R,) readings: with those observed a blunder would make a scale of its own."""
+    found = [e for e in _joined(_all(_Rows(network, by_group, adjusted))) if len(e.rows) >= FEWEST]
     ranked = sorted(range(len(found)), key=lambda k: (found[k].by == DAY, -len(found[k].rows), k))
     kept = sorted(ranked[:MOST])
     return [found[k] for k in kept], len(found) - len(kept)
@@ -75,10 +76,9 @@ def _joined(found: Iterator[Effect]) -> list[Effect]:
 class _Rows:
     """Scalar rows by what they say, with their labels as arrays (R,)."""
 
-    def __init__(self, network: Network, by_group: Array) -> None:
+    def __init__(self, network: Network, by_group: Array, adjusted: Array) -> None:
         rows, blocks = network.rows, network.blocks
-        self.by_group = by_group
-        self.values = np.zeros(len(rows))
+        self.by_group, self.values = by_group, adjusted
         self.says = np.array([KINDS[b.kind].says for b in blocks], dtype=object)[rows.block]
         self.turns = np.array(["turn" in KINDS[b.kind].fixes for b in blocks], dtype=bool)[rows.block]
         self.table = np.array([b.file for b in blocks], dtype=object)[rows.block]
@@ -87,7 +87,6 @@ class _Rows:
         for b, block in enumerate(blocks):
             here = np.flatnonzero(rows.block == b)
             i = rows.row[here]
-            self.values[here] = block.values[i, rows.part[here]]
             self.group[here], self.held[here] = block.group[i], block.held[i]
             for of, names in self.labels.items():
                 if of in block.labels:
