@@ -47,14 +47,27 @@ class Searched:
 
 def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
     """Effects common to many readings first, for one cause beats many; then blunders and control besides."""
-    sound = _without(solution, gross_rows(solution, known, tests))
-    found, left_out = findings(sound, known if sound is solution else reliability(sound), tests)
-    words = words_of(sound, found, left_out)
-    shared = [f for f in found if f.is_significant]
-    corrected = _corrected(solution, sound, shared) if shared else None
-    if corrected is None:
-        return replace(_blunders_and_control(solution, known, tests), systematic=words)
-    besides = _blunders_and_control(corrected, reliability(corrected), tests)
+    held = _without(solution, gross_rows(solution, known, tests))
+    stages = [held, held.free] if held.free else [held]
+    found = {id(s): findings(s, known if s is solution else reliability(s), tests) for s in stages}
+    for stage in stages:
+        shared = [f for f in found[id(stage)][0] if f.is_significant]
+        corrected = _corrected(solution, stage, shared) if shared else None
+        if corrected is None:
+            continue
+        besides = _blunders_and_control(corrected, reliability(corrected), tests)
+        if stage is stages[-1] or not besides.report.failed:
+            return _with_effects(solution, known, tests, besides, words_of(stage, *found[id(stage)]))
+        # a wrong mark makes an effect of its own: only what the readings alone show of it counts
+    searched = _blunders_and_control(solution, known, tests)
+    told = stages[-1] if searched.report.failed else held
+    return replace(searched, systematic=words_of(told, *found[id(told)]))
+
+
+def _with_effects(
+    solution: Solution, known: Reliability, tests: Tests, besides: Searched, words: tuple[Systematic, ...]
+) -> Searched:
+    """What was found besides the effects, in the solution that still has them."""
     levels = Levels.of(tests, int(known.tested.sum()))
     rows = exactly(solution, known, besides.found.rows)
     log = (*besides.log[:-1], *removals(solution, rows, levels)) if rows.rows else ()
