@@ -18,12 +18,14 @@ from adjust.book.settings import Tests
 from adjust.errors import NotConverged, Unsolvable
 from adjust.judge.blunders import Found, Levels, exactly, find_blunders, gross_rows
 from adjust.judge.control import ControlReport, compare_control, yardstick
+from adjust.judge.effect_columns import SCALE
 from adjust.judge.effect_words import Finding, Systematic
 from adjust.judge.reliability import Reliability, reliability
 from adjust.judge.removals import Fit, Removal, removals
 from adjust.judge.rows import rows_in, without_rows
 from adjust.judge.separable import confusable
 from adjust.judge.systematic import findings, words_of
+from adjust.kinds import KINDS
 from adjust.network import Ints
 from adjust.solver.solution import Solution
 from adjust.solver.solve import solve
@@ -51,7 +53,7 @@ def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
     stages = [held, held.free] if held.free else [held]
     found = {id(s): findings(s, known if s is solution else reliability(s), tests) for s in stages}
     for stage in stages:
-        shared = [f for f in found[id(stage)][0] if f.is_significant]
+        shared = [f for f in found[id(stage)][0] if f.is_significant and not _of_all_lengths(stage, f)]
         corrected = _corrected(solution, stage, shared) if shared else None
         if corrected is None:
             continue
@@ -60,8 +62,14 @@ def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
             return _with_effects(solution, known, tests, besides, words_of(stage, *found[id(stage)]))
         # a wrong mark makes an effect of its own: only what the readings alone show of it counts
     searched = _blunders_and_control(solution, known, tests)
-    told = stages[-1] if searched.report.failed else held
+    told = stages[-1] if searched.report.failed and searched.report.scale is None else held
     return replace(searched, systematic=words_of(told, *found[id(told)]))
+
+
+def _of_all_lengths(solution: Solution, f: Finding) -> bool:
+    """Whether it is the scale of all distances on control: that of control against them, which its report weighs."""
+    lengths = sum(len(b) for b in solution.network.blocks if KINDS[b.kind].says == "length")
+    return f.effect.what == SCALE and len(f.effect.rows) == lengths and solution.free is not None
 
 
 def _with_effects(
