@@ -18,7 +18,7 @@ from adjust.book.settings import Tests
 from adjust.errors import NotConverged, Unsolvable
 from adjust.judge.blunders import Found, Levels, exactly, find_blunders, gross_rows
 from adjust.judge.control import ControlReport, compare_control, yardstick
-from adjust.judge.effect_columns import SCALE
+from adjust.judge.effect_columns import SCALE, STAFF
 from adjust.judge.effect_words import Finding, Systematic
 from adjust.judge.reliability import Reliability, reliability
 from adjust.judge.removals import Fit, Removal, removals
@@ -53,7 +53,7 @@ def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
     stages = [held, held.free] if held.free else [held]
     found = {id(s): findings(s, known if s is solution else reliability(s), tests) for s in stages}
     for stage in stages:
-        shared = [f for f in found[id(stage)][0] if f.is_significant and not _of_all_lengths(stage, f)]
+        shared = [f for f in found[id(stage)][0] if f.is_significant and not _of_control(stage, f)]
         corrected = _corrected(solution, stage, shared) if shared else None
         if corrected is None:
             continue
@@ -62,14 +62,20 @@ def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
             return _with_effects(solution, known, tests, besides, words_of(stage, *found[id(stage)]))
         # a wrong mark makes an effect of its own: only what the readings alone show of it counts
     searched = _blunders_and_control(solution, known, tests)
-    told = stages[-1] if searched.report.failed and searched.report.scale is None else held
-    return replace(searched, systematic=words_of(told, *found[id(told)]))
+    words = words_of(held, *found[id(held)])
+    if searched.report.failed and stages[-1] is not held:
+        # what a wrong mark feigns is left out, but for scales, which stay as the other explanation of what disagrees
+        whole = {(f.effect.what, f.effect.of) for f in found[id(held)][0] if _of_control(held, f)}
+        on_control = {(w.what, w.of): w for w in words if (w.what, w.of) in whole}
+        words = tuple(on_control.get((w.what, w.of), w) for w in words_of(stages[-1], *found[id(stages[-1])]))
+    return replace(searched, systematic=words)
 
 
-def _of_all_lengths(solution: Solution, f: Finding) -> bool:
-    """Whether it is the scale of all distances on control: that of control against them, which its report weighs."""
-    lengths = sum(len(b) for b in solution.network.blocks if KINDS[b.kind].says == "length")
-    return f.effect.what == SCALE and len(f.effect.rows) == lengths and solution.free is not None
+def _of_control(solution: Solution, f: Finding) -> bool:
+    """Whether it is the scale of all distances or all rises on control: whether marks are wrong, its report weighs."""
+    says = {SCALE: "length", STAFF: "rise"}.get(f.effect.what)
+    count = sum(len(b) for b in solution.network.blocks if KINDS[b.kind].says == says)
+    return len(f.effect.rows) == count and solution.free is not None
 
 
 def _with_effects(
