@@ -57,8 +57,8 @@ class Judgement:
     effect: Array
     """Movement of the coordinate moved most by the smallest detectable blunder (R,), metres."""
     lines: Lines
-    control_given: ControlReport | None = None
-    """What is said of the control where that is known already; None: it is compared without the blunders."""
+    searched_given: Searched | None = None
+    """Blunders and control where they are known already; None: they are looked for."""
 
     @property
     def control(self) -> tuple[Mark, ...]:
@@ -110,6 +110,8 @@ class Judgement:
         """Blunders, the network without them, and the control compared with that."""
         from adjust.judge.staged import search
 
+        if self.searched_given is not None:
+            return self.searched_given
         with one_thread():
             return search(self.solution, self.reliability, self.tests)
 
@@ -121,7 +123,7 @@ class Judgement:
     @property
     def control_report(self) -> ControlReport:
         """What is said of the control, compared with the readings without the blunders."""
-        return self.control_given or self.searched.report
+        return self.searched.report
 
     def confusable(self, suspect: Suspect) -> list[tuple[int, float, float]]:
         """Rows that no test here can tell from a suspect: row, correlation of the statistics, and the chance that the
@@ -194,15 +196,10 @@ class Judgement:
 
         return balances(self.solution) if self.closures else ()
 
-    @cached_property
+    @property
     def systematic(self) -> tuple[Systematic, ...]:
-        """Effects that many readings could share, each tested as one more unknown."""
-        from adjust.judge.systematic import systematic
-
-        cleaned = self.searched.cleaned
-        with one_thread():
-            figures = self.reliability if cleaned is self.solution else reliability(cleaned)
-            return systematic(cleaned, figures, self.tests)
+        """Effects common to many readings, each with its test."""
+        return self.searched.systematic
 
     @cached_property
     def components(self) -> tuple[Component, ...]:
@@ -236,8 +233,8 @@ class Judgement:
         return (
             any(test.verdict == NOT_MET for test in (*self.overall, *self.overall_free))
             or bool(self.suspect_of_job.any())
-            or any(one.at_job_level for one in self.suspects)
             or self.control_report.failed
+            or any(one.at_job_level for one in self.suspects)
             or any(one.verdicts[key] == NOT_MET for one in self.closures for key in one.declared)
             or any(one.verdict == NOT_MET for one in self.solution.job.reductions)
         )

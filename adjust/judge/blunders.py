@@ -153,6 +153,15 @@ def exactly(solution: Solution, known: Reliability, rows: Sequence[int]) -> Foun
     return Found(_in_order(there, rows), there, outcome, False, (), model)
 
 
+def gross_rows(solution: Solution, known: Reliability, tests: Tests) -> list[int]:
+    """Rows in gross error, by which the figure is bent; they have to be out before anything else is judged."""
+    model = Model.of(solution, known)
+    if model.degrees < 2 or not known.tested.any():
+        return []
+    way = _gross_first(solution, model, Levels.of(tests, int(known.tested.sum())))
+    return way[-1].last if way else []
+
+
 def _gross_first(solution: Solution, model: Model, levels: Levels) -> list[Path]:
     """Readings in gross error, left out one by one with a true adjustment after each; the last path has made no step.
 

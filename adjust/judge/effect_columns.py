@@ -59,16 +59,17 @@ class Effect:
         return np.asarray(self.values @ matrix[self.rows])
 
 
-def effects(network: Network, by_group: Array) -> tuple[list[Effect], int]:
-    """The effects to test, and how many are left out; ``by_group`` (R,) partials by the group unknowns."""
-    found = [e for e in _joined(_all(_Rows(network, by_group))) if len(e.rows) >= FEWEST]
+def effects(network: Network, by_group: Array, adjusted: Array) -> tuple[list[Effect], int]:
+    """The effects to test, and how many are left out; ``by_group`` (R,) partials by the group unknowns, ``adjusted``
+    (R,) readings: with those observed a blunder would make a scale of its own."""
+    found = [e for e in _joined(_all(_Rows(network, by_group, adjusted))) if len(e.rows) >= FEWEST]
     ranked = sorted(range(len(found)), key=lambda k: (found[k].by == DAY, -len(found[k].rows), k))
     kept = sorted(ranked[:MOST])
     return [found[k] for k in kept], len(found) - len(kept)
 
 
 def common_heights(solution: Solution, failing: Bools) -> list[Effect]:
-    """Heights of instruments and targets, of the set-ups of which two readings fail their own tests; ``failing`` (R,)."""
+    """Heights of instruments and targets at the set-ups of which two readings fail their own tests (R,)."""
     network, design = solution.network, solution.design
     positions = np.where(np.isnan(solution.positions), design.unasked, solution.positions)
     found: dict[tuple[str, int, float], list[tuple[int, float]]] = {}
@@ -110,10 +111,9 @@ def _joined(found: Iterator[Effect]) -> list[Effect]:
 class _Rows:
     """Scalar rows by what they say, with their labels as arrays (R,)."""
 
-    def __init__(self, network: Network, by_group: Array) -> None:
+    def __init__(self, network: Network, by_group: Array, adjusted: Array) -> None:
         rows, blocks = network.rows, network.blocks
-        self.by_group = by_group
-        self.values = np.zeros(len(rows))
+        self.by_group, self.values = by_group, adjusted
         self.says = np.array([KINDS[b.kind].says for b in blocks], dtype=object)[rows.block]
         self.turns = np.array(["turn" in KINDS[b.kind].fixes for b in blocks], dtype=bool)[rows.block]
         self.table = np.array([b.file for b in blocks], dtype=object)[rows.block]
@@ -122,7 +122,6 @@ class _Rows:
         for b, block in enumerate(blocks):
             here = np.flatnonzero(rows.block == b)
             i = rows.row[here]
-            self.values[here] = block.values[i, rows.part[here]]
             self.group[here], self.held[here] = block.group[i], block.held[i]
             for of, names in self.labels.items():
                 if of in block.labels:
@@ -134,6 +133,12 @@ class _Rows:
         for by, names, here in ((label, self.labels[label], chosen & named), (TABLE, self.table, chosen & ~named)):
             for name in dict.fromkeys(names[here].tolist()):
                 yield _effect(what, by, name, here & (names == name), column)
+
+    def tables(self, what: str, chosen: Bools, column: Array) -> Iterator[Effect]:
+        """An effect for each table where there are several: one of them may be in another unit."""
+        names = list(dict.fromkeys(self.table[chosen].tolist()))
+        for name in names if len(names) > 1 else []:
+            yield _effect(what, TABLE, name, chosen & (self.table == name), column)
 
     def days(self, what: str, chosen: Bools, column: Array, apart: bool) -> Iterator[Effect]:
         """An effect for each day where there are several, of each instrument where ``apart``."""
@@ -161,6 +166,7 @@ def _all(r: _Rows) -> Iterator[Effect]:
     yield from r.split(CONSTANT, length, one, INSTRUMENT)
     yield from r.split(SCALE, length, r.values, INSTRUMENT)
     yield from r.days(SCALE, length, r.values, apart=True)
+    yield from r.tables(SCALE, length, r.values)
     if (zenith & (r.group < 0)).any():
         yield _effect(REFRACTION, ALL, "", zenith & (r.group < 0), r.by_group)
     yield from r.days(REFRACTION, zenith, r.by_group, apart=False)

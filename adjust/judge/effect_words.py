@@ -237,8 +237,8 @@ def _height(f: Finding, sizes: Sizes, sure: str, names: tuple[str, ...]) -> str:
     e, way = f.effect, "higher" if f.value > 0 else "lower"
     who = f"The {'instrument at' if e.what == INSTRUMENT_HEIGHT else 'target on'} {e.of}"
     if f.is_significant:
-        return (f"{who} stood {sizes.plain(f.value)} {way} than booked ({sure}; {len(e.rows)} sights say so){_alike(f)}: "
-                f"was its height misread, or forgotten?")  # fmt: skip
+        return (f"{who} stood {sizes.plain(f.value)} {way} than booked ({sure}; {len(e.rows)} sights say so)"
+                f"{_alike(f)}: was its height misread, or forgotten?")  # fmt: skip
     if f.by is not None:
         return f"{who} would have stood {way} than booked, but not with the {title(f.by)} taken into account."
     return f"{who} would have stood {way} than booked, but this rests on {', '.join(names)}."

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import replace
 
 import numpy as np
@@ -11,14 +12,16 @@ from adjust.network import CHECK, Ints, Network, renumbered
 
 
 def rows_in(one: Network, network: Network) -> Ints:
-    """Number of each scalar row of a network in another one of the same job; a free datum sets control aside."""
-    number = {id(block.line): b for b, block in enumerate(network.blocks)}
-    mine, theirs = one.rows, network.rows
-    place = {(b, i, p): r for r, (b, i, p) in enumerate(zip(theirs.block.tolist(), theirs.row.tolist(),
-                                                            theirs.part.tolist(), strict=True))}  # fmt: skip
-    block = [number[id(one.blocks[b].line)] for b in mine.block.tolist()]
-    return np.array([place[b, i, p] for b, i, p in zip(block, mine.row.tolist(), mine.part.tolist(), strict=True)],
-                    dtype=np.int64)  # fmt: skip
+    """Number of each scalar row of a network in another one of the same job, that may hold more."""
+    place = {key: r for r, key in enumerate(_keys(network))}
+    return np.array([place[key] for key in _keys(one)], dtype=np.int64)
+
+
+def _keys(network: Network) -> Iterator[tuple[str, str, str, int]]:
+    """What tells a scalar row from all others of its job: table, kind, name and part."""
+    rows, blocks = network.rows, network.blocks
+    for b, i, part in zip(rows.block.tolist(), rows.row.tolist(), rows.part.tolist(), strict=True):
+        yield blocks[b].file, blocks[b].kind, blocks[b].name(i), part
 
 
 def without_rows(network: Network, rows: Ints) -> Network:

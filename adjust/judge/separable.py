@@ -18,9 +18,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from scipy import special
-from scipy.cluster.hierarchy import fcluster, linkage
 from scipy.sparse.csgraph import connected_components
-from scipy.spatial.distance import squareform
 
 from adjust.judge.influence import Influence
 from adjust.judge.reliability import Reliability
@@ -106,6 +104,9 @@ def _complete(rho: Array) -> list[Ints]:
     """Places of the members of each group of two or more by complete linkage of absolute correlations (k, k)."""
     if len(rho) == 2:
         return [np.arange(2)]
+    from scipy.cluster.hierarchy import fcluster, linkage  # seldom needed, and slow to load
+    from scipy.spatial.distance import squareform
+
     apart = 1 - rho
     np.fill_diagonal(apart, 0.0)
     apart = np.minimum(apart, apart.T)  # rounding leaves the two halves unlike

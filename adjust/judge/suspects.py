@@ -63,6 +63,8 @@ def suspects(judgement: Judgement) -> tuple[Suspect, ...]:
     """Suspects of either level in order of blame."""
     found = judgement.blunders
     if not found.rows:
+        if judgement.searched.shared:
+            return ()  # what fails is the doing of an effect common to many readings
         return _readings_alone(judgement) if judgement.control_report.failed else _plain(judgement)
     without = found.model.without(found.rows)
     scale = math.sqrt(without.scale(levels_of(judgement).given))
@@ -71,8 +73,9 @@ def suspects(judgement: Judgement) -> tuple[Suspect, ...]:
         Suspect(r, float(b), float(s), float(-b / s), True)
         for r, b, s in zip(found.rows, without.blunder, sd, strict=True)
     ]
-    # what still fails where control is wrong is the control's doing
-    return tuple(first) if judgement.control_report.failed else (*first, *_left(judgement, without, scale))
+    # what still fails where control is wrong, or many readings share an error, is the doing of that
+    elsewhere = judgement.control_report.failed or judgement.searched.shared
+    return tuple(first) if elsewhere else (*first, *_left(judgement, without, scale))
 
 
 def _readings_alone(judgement: Judgement) -> tuple[Suspect, ...]:

@@ -54,18 +54,21 @@ TOLD_APART = 0.9
 
 def systematic(solution: Solution, reliability: Reliability, tests: Tests) -> tuple[Systematic, ...]:
     """Every effect with its test, in the order of adjust.judge.effect_columns."""
-    found, left_out = findings(solution, reliability, tests)
-    words = [told(solution, one) for one in found]
-    return (*words, sentence_of_more(left_out, MOST)) if left_out else tuple(words)
+    return words_of(solution, *findings(solution, reliability, tests))
 
 
 def findings(solution: Solution, reliability: Reliability, tests: Tests) -> tuple[list[Finding], int]:
-    """The bare figures of every effect, and how many were left out."""
-    columns, left_out = effects(solution.network, solution.coefficients[:, -1])
-    columns += common_heights(solution, np.abs(np.nan_to_num(reliability.statistic)) > FAILING_W)
-    if not columns:
-        return [], left_out
-    return search(Problem.of(solution, reliability, columns), tests), left_out
+    """The bare figures of every effect, and how many effects were left out."""
+    columns, left_out = effects(solution.network, solution.coefficients[:, -1], solution.adjusted)
+    failing = np.abs(np.nan_to_num(reliability.statistic)) > normal_critical(tests.outlier)
+    columns += common_heights(solution, failing)
+    return (search(Problem.of(solution, reliability, columns), tests) if columns else []), left_out
+
+
+def words_of(solution: Solution, found: list[Finding], left_out: int) -> tuple[Systematic, ...]:
+    """Findings with their sentences."""
+    words = [told(solution, one) for one in found]
+    return (*words, sentence_of_more(left_out, MOST)) if left_out else tuple(words)
 
 
 def expected_by_chance(found: Sequence[Systematic], tests: Tests) -> float:

@@ -57,7 +57,9 @@ def problems(folder: Path, count: int) -> Iterator[tuple[Problem, Array]]:
     """Jobs without effects, and the standard deviations (R,) of their readings."""
     for seed in range(count):
         judgement = judged(job(folder / str(seed), seed, applied="applied = []"))
-        columns, _ = effects(judgement.solution.network, judgement.solution.coefficients[:, -1])
+        columns, _ = effects(
+            judgement.solution.network, judgement.solution.coefficients[:, -1], judgement.solution.adjusted
+        )
         problem = Problem.of(judgement.solution, judgement.reliability, columns)
         yield problem, np.where(judgement.solution.design.held, 0.0, judgement.solution.design.sd)
 

@@ -50,13 +50,15 @@ def unknowns(p: Linear, columns: Array) -> tuple[Array, Array]:
 
 def problem_of(judgement: Judgement) -> Problem:
     """What the tests of a judgement are made of."""
-    columns, _ = effects(judgement.solution.network, judgement.solution.coefficients[:, -1])
+    columns, _ = effects(
+        judgement.solution.network, judgement.solution.coefficients[:, -1], judgement.solution.adjusted
+    )
     return Problem.of(judgement.solution, judgement.reliability, columns)
 
 
 def column(p: Linear, problem: Problem, c: int) -> Array:
     """(R, 1) the column of an effect from the dense job's own readings."""
-    e, values = problem.effects[c], p.made.readings.value
+    e, values = problem.effects[c], p.judgement.solution.adjusted
     out = np.zeros((len(p.l), 1))
     out[e.rows, 0] = values[e.rows] if e.what in ("scale", "staff scale") else 1.0
     return out
@@ -283,11 +285,11 @@ def test_the_same_readings_are_one_effect_named_together(tmp_path: Path) -> None
 
 
 def test_one_wrong_reading_is_no_common_effect(tmp_path: Path) -> None:
-    """A slope to round is half a metre off: what it makes significant rests on it, and nothing is called systematic."""
+    """A slope to round is 60 mm off: what it makes significant rests on it, and nothing is called systematic."""
     found = booked(SEED)
     row = next(n for n, r in enumerate(found) if r.kind == "slope" and r.labels["reflector"] == "round")
     line = 2 + [n for n, r in enumerate(found) if r.kind == "slope"].index(row)
-    got = judged(job(tmp_path / "job", SEED, blunders={row: 0.5}, applied=APPLIED)).systematic
+    got = judged(job(tmp_path / "job", SEED, blunders={row: 0.06}, applied=APPLIED)).systematic
     resting = [s for s in got if s.verdict == "rests on one reading"]
     assert one(got, "constant", "reflector round") in resting
     assert {s.rests_on for s in resting} == {(f"slope.csv:{line}",)}
@@ -300,7 +302,7 @@ def test_one_wrong_reading_is_no_common_effect(tmp_path: Path) -> None:
 def test_two_wrong_readings_and_a_real_effect_are_told_apart(tmp_path: Path) -> None:
     found = booked(SEED)
     slopes = [n for n, r in enumerate(found) if r.kind == "slope" and r.labels["reflector"] == "small"][:2]
-    wrong = dict(zip(slopes, (0.4, 0.3), strict=True))
+    wrong = dict(zip(slopes, (0.06, 0.05), strict=True))
     got = judged(job(tmp_path / "job", SEED, planted("constant of a reflector", 0.02), blunders=wrong,
                      applied=APPLIED)).systematic  # fmt: skip
     assert [(s.what, s.of) for s in got if s.verdict == "significant"] == [("constant", "reflector round")]

@@ -25,6 +25,7 @@ import numpy as np
 
 import adjust
 from adjust.judge.assess import Judgement
+from adjust.judge.staged import unsearched
 from adjust.record.places import line_entries, station_entries
 from adjust.solver.threads import one_thread
 from tests.statistics.draws import MODES, Array, Bench
@@ -107,11 +108,16 @@ def compare(bench: Bench, count: int, seed: int) -> Differences:
     for e in errors:
         solution = adjust.solve(bench.clean.with_errors(e))
         for mode, judged in zip(MODES, fast, strict=True):
-            whole, drawn = adjust.assess(replace(solution, job=bench.job[mode])), next(judged)
+            whole, drawn = _unsearched(adjust.assess(replace(solution, job=bench.job[mode]))), next(judged)
             most = np.maximum(most, _differences(whole, drawn))
             said, again = _statements(whole), _statements(drawn)
             differ, of = differ + sum(a != b for a, b in zip(said, again, strict=True)), of + len(said)
     return Differences(*most.tolist(), differ, of)
+
+
+def _unsearched(whole: Judgement) -> Judgement:
+    """The judgement with no blunder looked for, as the draws are judged."""
+    return replace(whole, searched_given=unsearched(whole.solution, whole.reliability, whole.tests))
 
 
 def _differences(whole: Judgement, drawn: Judgement) -> Array:

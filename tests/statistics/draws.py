@@ -24,6 +24,7 @@ from adjust.judge.assess import Judgement
 from adjust.judge.control import compare_control, yardstick
 from adjust.judge.held_marks import HeldMarks, judge_held_marks
 from adjust.judge.reliability import reliability
+from adjust.judge.staged import unsearched
 from adjust.network import Network
 from adjust.solver.solution import PartResult, Solution
 from tests.statistics.jobs import Array, Clean
@@ -139,6 +140,7 @@ class Bench:
         self.job = {mode: with_tests(clean.job, variance_factor=mode) for mode in MODES}
         self.solution = adjust.solve(clean.job)
         self.base = {mode: adjust.assess(replace(self.solution, job=self.job[mode])) for mode in MODES}
+        self.nothing = {mode: unsearched(j.solution, j.reliability, j.tests) for mode, j in self.base.items()}
         self.response = Response.of(self.solution)
         free = self.solution.free
         self.free = Response.of(free) if free else None
@@ -183,9 +185,11 @@ class Bench:
             free = self.free.with_sums(draws.free_squares[d]) if self.free else None
             solution = replace(plain, parts=parts, total=total, free=free, positions=plain.positions + draws.moves[d])
             scale = 1.0 if given else (total.variance_factor or np.nan) * shrunk**2
-            report = base.control_report
-            if base.control:
+            report = self.nothing[mode].report
+            if report.marks:
                 by = yardstick(solution, given)
                 by = by if given else replace(by, scale=by.scale * shrunk**2)
                 report = compare_control(solution, figures, by, base.tests, replace(marks, g=draws.g[d]))
-            yield replace(base, solution=solution, reliability=figures, control_given=report, scale=scale)
+            # the search for blunders is not drawn: its rates are measured on complete jobs (tests.judge.blunders_study)
+            nothing = replace(self.nothing[mode], cleaned=solution, report=report)
+            yield replace(base, solution=solution, reliability=figures, searched_given=nothing, scale=scale)
