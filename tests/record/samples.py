@@ -128,7 +128,7 @@ def plane_record() -> Record:
     made["suspects"] = [
         {"observation": "distances.csv:4", "estimated_blunder": 0.0382, "sd": 0.0027, "statistic": 14.2,
          "likely_causes": [{"slip": "digits-swapped", "sentence": "147.111 would fit: two digits changed places.",
-                            "would_read": "147.111", "support": 0.97}],
+                            "would_read": "147.111", "support": 0.97, "place": "distances.csv:4"}],
          "cannot_be_told_from": [], "at_job_level": True},
         {"observation": "angles.csv:2", "estimated_blunder": -33 * SEC, "sd": 5.4 * SEC, "statistic": -6.1,
          "likely_causes": [], "cannot_be_told_from": [
