@@ -58,6 +58,8 @@ def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
         if corrected is None:
             continue
         besides = _blunders_and_control(corrected, reliability(corrected), tests)
+        if besides.found.too_many:
+            continue  # the rest does not fit without it either, so it explains nothing
         if stage is stages[-1] or not besides.report.failed:
             return _with_effects(solution, known, tests, besides, words_of(stage, *found[id(stage)]))
         # a wrong mark makes an effect of its own: only what the readings alone show of it counts

@@ -175,6 +175,26 @@ def test_a_scatter_larger_than_stated_is_not_taken_for_blunders(tmp_path: Path) 
     assert log(judgement) == cleared(judgement) == ()
 
 
+def test_an_effect_that_leaves_the_rest_unfitting_explains_nothing(tmp_path: Path) -> None:
+    """Five distances and angles of two different figures: the constant that fits best hid every suspect."""
+    (tmp_path / "job.toml").write_text(
+        '[units]\nlength = "m"\nangle = "deg"\n[instruments.t]\ndistance = "2 mm"\ndirection = "3 sec"\n'
+    )
+    (tmp_path / "control.csv").write_text("station,east,north\nA,100,100\nB,220,100\n")
+    (tmp_path / "distances.csv").write_text(
+        "from,to,distance\nA,P,86.602\nB,P,103.235\nA,Q,111.803\nB,Q,86.023\nP,Q,55.109\n"
+    )
+    (tmp_path / "angles.csv").write_text(
+        "at,first,second,angle\nA,P,B,54.7356\nB,A,P,43.2333\nA,Q,B,26.565\nB,A,Q,35.5378\nP,A,Q,101\n"
+    )
+    judgement = adjust.assess(adjust.solve(adjust.read(tmp_path)))
+    assert any(e.verdict == "significant" for e in judgement.systematic)
+    assert not judgement.searched.shared
+    assert judgement.blunders.too_many
+    assert judgement.suspects
+    assert judgement.failed
+
+
 def test_nothing_is_found_where_nothing_can_be_tested(tmp_path: Path) -> None:
     judgement = repeated(tmp_path, [10.0, 10.1])
     assert {s.row for s in judgement.suspects} == {0, 1}  # one degree of freedom: either could be it
