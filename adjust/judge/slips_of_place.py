@@ -11,13 +11,12 @@ from dataclasses import replace
 
 import numpy as np
 
+from adjust.judge.effect_words import KNOWN
 from adjust.judge.slip_forms import Form, Slipped
 from adjust.kinds import KINDS
 from adjust.network import Array, Block
 from adjust.units import small_length, wrap
 
-CONSTANTS_M = (0.0175, 0.030, 0.0344)
-"""Differences between the constants of usual reflectors (common practice)."""
 BOTH, ONE_ONLY = 20.0, 0.05
 """An exchange makes two readings wrong at once: where both are suspect it explains what else would take two slips (each
 of a prior weight of some 0.05), where only one is it explains too much."""
@@ -75,7 +74,7 @@ def reflector_constant(case: Slipped) -> Iterator[Form]:
     known = {abs(c - own): f"the constant of reflector {name}" for name, c in settings.reflectors.items() if c != own}
     if own:
         known[abs(own)] = "its reflector's constant forgotten or taken twice"
-    for size in CONSTANTS_M:
+    for size in KNOWN:
         known.setdefault(size, "the constant of another reflector")
     for size, told in known.items():
         for way in (1, -1):
