@@ -70,6 +70,11 @@ def variance_factor_interval(significance: float, r: int) -> tuple[float, float]
     )
 
 
+def chi_square(probability: float, r: int) -> float:
+    """Value that chi-square with r degrees of freedom stays below with a probability."""
+    return float(special.gammaincinv(r / 2, probability)) * 2
+
+
 def job_level(significance: float, n: int) -> float:
     """Significance of one of n tests that together give a false alarm with ``significance`` (Sidak 1967)."""
     return -math.expm1(math.log1p(-significance) / n) if n else significance

@@ -6,13 +6,13 @@ refraction                 dz/dk     of all zenith angles or of a day's (adjust.
 zenith index               1         of an instrument or of one of its days, radians
 staff scale                rise      of a level or a table, a pure number
 orientation                1         of a table of azimuths without a turn of their own, radians
-instrument height          dr/dh     of all sights from a station with one booked height, metres (common_heights)
-target height              dr/dh     of all sights to a station with one booked height, metres
+instrument height          dr/dh     of all sights from a station, and of those with one booked height (common_heights)
+target height              dr/dh     of all sights to a station, and of those with one booked height
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -72,7 +72,7 @@ def common_heights(solution: Solution, failing: Bools) -> list[Effect]:
     """Heights of instruments and targets at the set-ups of which two readings fail their own tests (R,)."""
     network, design = solution.network, solution.design
     positions = np.where(np.isnan(solution.positions), design.unasked, solution.positions)
-    found: dict[tuple[str, int, float], list[tuple[int, float]]] = {}
+    found: dict[tuple[str, int, float | None], list[tuple[int, float]]] = {}
     for b, block in enumerate(network.blocks):
         if block.above is None or "both" not in KINDS[block.kind].touched(block.surface):
             continue
@@ -83,17 +83,18 @@ def common_heights(solution: Solution, failing: Bools) -> list[Effect]:
             by = (design.values(replace(block, above=higher), positions, solution.groups)
                   - design.values(block, positions, solution.groups))[:, 0] / STEP_M  # fmt: skip
             for i in np.flatnonzero(rows >= 0).tolist():
-                key = (what, int(block.stations[i, end]), round(float(block.above[i, end]), 4))
-                found.setdefault(key, []).append((int(rows[i]), float(by[i])))
+                for height in (None, round(float(block.above[i, end]), 4)):
+                    key = (what, int(block.stations[i, end]), height)
+                    found.setdefault(key, []).append((int(rows[i]), float(by[i])))
     out = []
     for (what, station, _), pairs in found.items():
         rows, values = (np.array(column) for column in zip(*sorted(pairs), strict=True))
         if len(rows) >= FEWEST and failing[rows].sum() >= FAILING:
             out.append(Effect(what, SET_UP, solution.names[station], rows.astype(np.int64), values.astype(float)))
-    return out
+    return list(_joined(out))
 
 
-def _joined(found: Iterator[Effect]) -> list[Effect]:
+def _joined(found: Iterable[Effect]) -> list[Effect]:
     """Columns with the same readings and numbers are one; the name of a reflector leads, then that of an instrument."""
     out: dict[tuple[str, bytes, bytes], Effect] = {}
     for one in found:

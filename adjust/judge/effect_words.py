@@ -34,7 +34,7 @@ from adjust.judge.effect_columns import (
 from adjust.solver.solution import Solution
 from adjust.units import ANGLES, small_angle_unit, small_length
 
-NONE_SEEN = "none seen"
+NONE_SEEN, SIGNIFICANT = "none seen", "significant"
 TWICE, SIGN, NOT_DONE = "constant applied twice", "constant with the wrong sign", "constant not applied"
 TIMES = 3.0
 """Standard deviations, and at the least the share below, within which an effect must be the declared one."""
@@ -127,7 +127,7 @@ class Finding:
         if self.value is None:
             return "cannot be told"
         if self.is_significant:
-            return "significant"
+            return SIGNIFICANT
         if self.by is not None:
             return f"explained by {title(self.by)}"
         if self.single:

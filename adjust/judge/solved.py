@@ -28,12 +28,12 @@ def solve(job: Job) -> Solution:
         from adjust.judge.started import start_words
 
         with one_thread():
-            raise Unsolvable(start_words(job, refused)) from None
+            raise Unsolvable(_by_mix_up(job) or start_words(job, refused)) from None
     except NotSettled as stopped:
         from adjust.judge import unsettled
 
         with one_thread():
-            raise NotConverged(_by_scale(job) or unsettled.words(job, stopped)) from None
+            raise NotConverged(_by_scale(job) or _by_mix_up(job) or unsettled.words(job, stopped)) from None
 
 
 def _by_scale(job: Job) -> list[str]:
@@ -42,3 +42,11 @@ def _by_scale(job: Job) -> list[str]:
 
     sentence = scale_sentence(job)
     return [sentence] if sentence else []
+
+
+def _by_mix_up(job: Job) -> list[str]:
+    """One wrong unit or name with which the job can be adjusted."""
+    from adjust.judge.mix_ups import mix_up_of_refused
+
+    found = mix_up_of_refused(job)
+    return [f"As booked this cannot be adjusted. {found.sentence}"] if found else []

@@ -20,6 +20,7 @@ from adjust.judge.blunders import Found, Levels, exactly, find_blunders, gross_r
 from adjust.judge.control import ControlReport, compare_control, yardstick
 from adjust.judge.effect_columns import SCALE, STAFF
 from adjust.judge.effect_words import Finding, Systematic
+from adjust.judge.mix_ups import MixUp, name_mixed_up, unit_mixed_up
 from adjust.judge.reliability import Reliability, reliability
 from adjust.judge.removals import Fit, Removal, removals
 from adjust.judge.rows import rows_in, without_rows
@@ -49,7 +50,12 @@ class Searched:
 
 def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
     """Effects common to many readings first, for one cause beats many; then blunders and control besides."""
-    held = _without(solution, gross_rows(solution, known, tests))
+    mixed = unit_mixed_up(solution, known)
+    gross = [] if mixed else gross_rows(solution, known, tests)
+    mixed = mixed or name_mixed_up(solution, gross)
+    if mixed:
+        return _without_mix_up(solution, known, tests, mixed)
+    held = _without(solution, gross)
     stages = [held, held.free] if held.free else [held]
     found = {id(s): findings(s, known if s is solution else reliability(s), tests) for s in stages}
     for stage in stages:
@@ -71,6 +77,13 @@ def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
         on_control = {(w.what, w.of): w for w in words if (w.what, w.of) in whole}
         words = tuple(on_control.get((w.what, w.of), w) for w in words_of(stages[-1], *found[id(stages[-1])]))
     return replace(searched, systematic=words)
+
+
+def _without_mix_up(solution: Solution, known: Reliability, tests: Tests, mixed: MixUp) -> Searched:
+    """The effects and the control as they are once a unit or a name is put right; single readings are judged then."""
+    besides = search(mixed.solution, reliability(mixed.solution), tests)
+    return Searched(exactly(solution, known, ()), besides.cleaned, besides.report, (),
+                    (mixed.as_effect, *besides.systematic), shared=True)  # fmt: skip
 
 
 def _of_control(solution: Solution, f: Finding) -> bool:
