@@ -6,6 +6,7 @@ from collections import defaultdict
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 from functools import cached_property
+from itertools import islice, product
 
 from adjust.book.job import Job
 from adjust.judge.naming import together
@@ -19,8 +20,12 @@ STANDING = {"pointings", "length", "zenith"}
 FOOT = LENGTHS["ft"]
 FEWEST = 3
 """Readings of a unit of their own below which single slips say the same."""
-TRIED = 8
+TRIED = 16
 """Occupations, and sights, that are tried: every trial takes up to four adjustments."""
+SOUND = 0.25
+"""A reading that is in no doubt counts a quarter against those that are: not all of the wrong ones show."""
+MOST_CHOICES = 200
+"""Ways in which the runs of a station in several tables are put together."""
 
 
 @dataclass(frozen=True)
@@ -98,22 +103,21 @@ class RowsInCommon:
         return block, stations.index("to") if "to" in stations else -1
 
     def _most_doubtful(self, shared: Iterable[Shared]) -> list[Shared]:
-        """Those with two readings in doubt, the most of them first; where none is known, the most readings first."""
+        """Those with two readings in doubt that make up most of them; where none is known, the most readings first."""
         doubt = [(len(self.doubtful.intersection(one.rows)), one) for one in shared]
         if self.doubtful:
             doubt = [(n, one) for n, one in doubt if n >= 2]
-        ranked = sorted(doubt, key=lambda d: (-d[0], -d[0] / len(d[1].rows), d[1].rows))
+        ranked = sorted(doubt, key=lambda d: (-d[0] + SOUND * (len(d[1].rows) - d[0]), -len(d[1].rows), d[1].rows))
         return [one for _, one in ranked[:TRIED]]
 
     @cached_property
     def _runs(self) -> dict[int, dict[int, list[list[int]]]]:
-        """By station and block the runs of rows one below the other that were read there in one set-up and set."""
+        """By station and block the runs of rows one below the other that were read there in one set-up."""
         out: dict[int, dict[int, list[list[int]]]] = defaultdict(lambda: defaultdict(list))
-        last: dict[int, tuple[int, int, int]] = {}
+        last: dict[int, tuple[int, int]] = {}
         for block, i, row in self._rows(STANDING):
             b = self.at(row)[0]
-            group = int(block.group[i]) if KINDS[block.kind].name == "direction" else -1
-            key = (int(block.stations[i, 0]), int(block.setup[i]) if len(block.setup) else -1, group)
+            key = (int(block.stations[i, 0]), int(block.setup[i]) if len(block.setup) else -1)
             runs = out[key[0]][b]
             if last.get(b) == key:
                 runs[-1].append(row)
@@ -153,9 +157,10 @@ class RowsInCommon:
 
 
 def _joined(tables: dict[int, list[list[int]]]) -> Iterator[tuple[int, ...]]:
-    """All runs of a station together; those of one number in all tables; single ones."""
-    runs: list[list[list[int]]] = list(tables.values())
-    yield tuple(sorted(r for one in runs for run in one for r in run))
-    if len({len(one) for one in runs}) == 1:
-        yield from (tuple(sorted(r for run in same for r in run)) for same in zip(*runs, strict=True))
-    yield from (tuple(run) for one in runs for run in one)
+    """All runs of a station together; of every table all, one or none of its runs."""
+    yield tuple(sorted(r for runs in tables.values() for run in runs for r in run))
+    choices = [
+        [*runs, [r for run in runs for r in run], []] if len(runs) > 1 else [*runs, []] for runs in tables.values()
+    ]
+    for chosen in islice(product(*choices), MOST_CHOICES):
+        yield tuple(sorted(r for run in chosen for r in run))

@@ -25,6 +25,7 @@ import numpy as np
 from adjust.book.distance_ledger import CONSTANT, NAMES, REFLECTOR
 from adjust.book.job import Job
 from adjust.errors import BrasscapError
+from adjust.judge.blunders import adjusted_without
 from adjust.judge.critical import chi_square
 from adjust.judge.effect_words import SIGNIFICANT, Systematic
 from adjust.judge.mix_up_rows import OCCUPIED, UNIT, RowsInCommon, Shared
@@ -32,6 +33,7 @@ from adjust.judge.reliability import Reliability
 from adjust.judge.rows import without_rows
 from adjust.kinds import KINDS
 from adjust.network import Array, Block, Ints
+from adjust.solver.design import Design
 from adjust.solver.solution import Solution
 from adjust.solver.solve import solve
 
@@ -46,6 +48,11 @@ BENT = 0.05
 two tables in another unit shows a good part of the factor 3.28, and single blunders do not move a median so far."""
 NEAREST = 3
 """Stations adjusted for each occupation or sight."""
+NEAR = 300.0
+"""Standard deviations within which the readings must be, root mean square, of those from another station, before it is
+tried: the places without them may be off by some, and wrong stations are thousands away."""
+EXPLAINED = 0.01
+"""Share of the weighted square sum that may be left without the readings, where it is known with them."""
 LARGE = 20_000
 """Scalar rows above which nothing is tried: every trial takes long, and large jobs have their names from a list."""
 
@@ -86,16 +93,17 @@ def _trials(solution: Solution, gross: Sequence[int]) -> _Trials | None:
     network = solution.job.network
     if len(network.rows) != len(solution.network.rows) or len(network.rows) > LARGE:
         return None
-    return _Trials(RowsInCommon(solution.job, frozenset(gross)))
+    return _Trials(RowsInCommon(solution.job, frozenset(gross)), solution)
 
 
-def mix_up_of_refused(job: Job, doubtful: Iterable[int] = ()) -> MixUp | None:
+def mix_up_of_refused(job: Job, doubtful: Sequence[int] = ()) -> MixUp | None:
     """The one change with which a refused job can be adjusted and fits; ``doubtful``: scalar rows in doubt."""
     if len(job.network.rows) > LARGE:
         return None
     trials = _Trials(RowsInCommon(job, frozenset(doubtful)))
     common = trials.common
-    return trials.first([*sorted(common.units(), key=lambda u: len(u.rows)), *common.occupations(), *common.sights()])
+    units = sorted(common.units(), key=lambda one: len(one.rows))
+    return trials.first([*units, *common.occupations(), *common.sights()])
 
 
 def _most_bent(solution: Solution, units: list[Shared]) -> list[Shared]:
@@ -115,10 +123,23 @@ def _most_bent(solution: Solution, units: list[Shared]) -> list[Shared]:
 
 
 @dataclass(frozen=True)
+class _Rest:
+    """The network without the readings concerned."""
+
+    positions: Array
+    groups: Array
+    design: Design
+    square_sum: float
+    degrees: int
+
+
+@dataclass(frozen=True)
 class _Trials:
     """Changes of a job, tried."""
 
     common: RowsInCommon
+    as_booked: Solution | None = None
+    """None where the job as booked was refused."""
 
     @property
     def _job(self) -> Job:
@@ -158,10 +179,10 @@ class _Trials:
 
     def _names(self, one: Shared) -> MixUp | None:
         """Another station in place of the one booked."""
-        without = self._without(one)
-        if without is None:
+        rest = self._without(one)
+        if rest is None:
             return None
-        tried = [(s, self._explains(one, self._renamed(one, s), without)) for s in self._nearest(one, without)]
+        tried = [(s, self._explains(one, self._renamed(one, s), rest)) for s in self._nearest(one, rest)]
         fits = [(s, solution) for s, solution in tried if solution]
         if not fits:
             return None
@@ -177,53 +198,72 @@ class _Trials:
         return (f"Likeliest slip: the {count} readings booked from {standing} to {target} were made to {other}. To "
                 f"{other} they fit the others, to {target} they do not. Look at {where}.")  # fmt: skip
 
-    def _nearest(self, one: Shared, without: Solution) -> list[int]:
+    def _nearest(self, one: Shared, rest: _Rest) -> list[int]:
         """The stations from which, or to which, the readings would be most like those booked."""
-        placed = np.isfinite(without.positions).any(axis=1)
+        placed = np.isfinite(rest.positions).any(axis=1)
         used = {int(s) for r in one.rows for s in self._block(r).stations[self.common.at(r)[1]]}
-        scores = [(self._misfit(one, s, without), s) for s in np.flatnonzero(placed).tolist() if s not in used]
-        return [s for _, s in sorted(scores)[:NEAREST]]
+        scores = [(self._misfit(one, s, rest), s) for s in np.flatnonzero(placed).tolist() if s not in used]
+        return [s for score, s in sorted(scores)[:NEAREST] if score <= NEAR**2 * len(one.rows)]
 
-    def _misfit(self, one: Shared, station: int, without: Solution) -> float:
+    def _misfit(self, one: Shared, station: int, rest: _Rest) -> float:
         """Squares of the differences in standard deviations, with an orientation of its own for every set."""
-        positions = np.where(np.isnan(without.positions), 0.0, without.positions)
+        positions = np.where(np.isnan(rest.positions), 0.0, rest.positions)
         total = 0.0
         for b, column in one.column:
-            rows = [self.common.at(r)[1] for r in one.rows if self.common.at(r)[0] == b]
-            block = self._job.network.blocks[b].take(np.array(rows))
+            block = self._job.network.blocks[b].take(self._in_block(one, b))
             stations = block.stations.copy()
             stations[:, column] = station
             with np.errstate(divide="ignore", invalid="ignore"):
-                computed = without.design.values(replace(block, stations=stations), positions, without.groups)
+                computed = rest.design.values(replace(block, stations=stations), positions, rest.groups)
             off = block.values - computed
             if KINDS[block.kind].wraps:
                 off = _on_circle(off, block.group if one.what == OCCUPIED else np.full(len(block), -1))
             total += float(np.nansum((off / block.sd) ** 2))
         return total
 
+    def _in_block(self, one: Shared, b: int) -> Ints:
+        return np.array([self.common.at(r)[1] for r in one.rows if self.common.at(r)[0] == b])
+
     def _renamed(self, one: Shared, station: int) -> Job:
-        blocks = list(self._job.network.blocks)
+        """The job with another station in the column; sets that this tears apart have an orientation each."""
+        network = self._job.network
+        blocks, groups = list(network.blocks), list(network.groups)
         for b, column in one.column:
-            stations = blocks[b].stations.copy()
-            stations[[self.common.at(r)[1] for r in one.rows if self.common.at(r)[0] == b], column] = station
-            blocks[b] = replace(blocks[b], stations=stations)
-        return self._with(blocks)
+            moved, stations, group = self._in_block(one, b), blocks[b].stations.copy(), blocks[b].group.copy()
+            stations[moved, column] = station
+            kept = np.delete(group, moved)
+            for g in np.unique(group[moved][group[moved] >= 0]) if one.what == OCCUPIED else ():
+                if g in kept and not groups[g].shared:
+                    group[moved[group[moved] == g]] = len(groups)
+                    groups.append(groups[g])
+            blocks[b] = replace(blocks[b], stations=stations, group=group)
+        return replace(self._job, network=replace(network, blocks=tuple(blocks), groups=tuple(groups)))
 
     # ---- trials
 
-    def _explains(self, one: Shared, changed: Job, without: Solution | None) -> Solution | None:
+    def _explains(self, one: Shared, changed: Job, rest: _Rest | None) -> Solution | None:
         """The solution of the changed job, if the readings concerned then fit."""
         solution = _solved(changed)
         if solution is None:
             return None
         total = solution.total
-        if without is None:
+        if rest is None:
             return solution if total.square_sum <= FITS * max(total.degrees_of_freedom, 1) else None
-        most = chi_square(LEVEL, len(one.rows)) * max(1.0, without.total.variance_factor or 1.0)
-        return solution if total.square_sum - without.total.square_sum <= most else None
+        most = chi_square(LEVEL, len(one.rows)) * max(1.0, rest.square_sum / max(rest.degrees, 1))
+        return solution if total.square_sum - rest.square_sum <= most else None
 
-    def _without(self, one: Shared) -> Solution | None:
-        return _solved(replace(self._job, network=without_rows(self._job.network, np.array(one.rows))))
+    def _without(self, one: Shared) -> _Rest | None:
+        """The network without the readings; None where it does not settle, or fits as badly."""
+        if self.as_booked is None:
+            found = _solved(replace(self._job, network=without_rows(self._job.network, np.array(one.rows))))
+            return None if found is None else _Rest(found.positions, found.groups, found.design, found.total.square_sum,
+                                                    found.total.degrees_of_freedom)  # fmt: skip
+        outcome, total = adjusted_without(self.as_booked, one.rows), self.as_booked.total
+        if outcome is None or outcome.last.merit > EXPLAINED * total.square_sum:
+            return None
+        state = outcome.last.state
+        return _Rest(state.positions, state.groups, self.as_booked.design, outcome.last.merit,
+                     max(total.degrees_of_freedom - len(one.rows), 1))  # fmt: skip
 
     def _block(self, row: int) -> Block:
         return self._job.network.blocks[self.common.at(row)[0]]

@@ -105,6 +105,8 @@ def occupied(rng: np.random.Generator, number: int, folder: Path) -> tuple[Path,
     kinds = (("distances", "directions"), ("distances", "angles"))[number % 2]
     job = booked_job(rng, folder, int(rng.integers(8, 31)), kinds, CONTROL[number % 3])
     sheets = {name: Sheet.of(job / f"{name}.csv") for name in kinds}
+    order = {at: k for k, at in enumerate(dict.fromkeys(row[0] for row in sheets[kinds[1]].rows))}
+    sheets["distances"].rows.sort(key=lambda row: order.get(row[0], len(order)))  # as the evening's book has them
     standing = {name: "at" if "at" in sheet.header else "from" for name, sheet in sheets.items()}
     rows = [(name, i) for name, sheet in sheets.items() for i in range(len(sheet.rows))]
     names = sorted({sheets[name].get(i, standing[name]) for name, i in rows})
