@@ -37,6 +37,8 @@ class Shared:
     of: str
     """The name of what they share: more_distances.csv, A, A to B."""
     rows: tuple[int, ...]
+    against: frozenset[int] = frozenset()
+    """The other readings at the station, and those to it: where they are fewer it is them that look wrong."""
     factor: float = 1.0
     """From the unit booked to the other."""
     column: tuple[tuple[int, int], ...] = ()
@@ -65,17 +67,20 @@ class RowsInCommon:
             for (_, name), rows in groups.items():
                 if FEWEST <= len(rows) < every:
                     factor = FOOT if self.unit(rows[0]) == "m" else 1 / FOOT
-                    found.setdefault(tuple(rows), Shared(UNIT, name, tuple(rows), factor))
+                    found.setdefault(tuple(rows), Shared(UNIT, name, tuple(rows), factor=factor))
         return list(found.values())
 
     def occupations(self) -> list[Shared]:
         """What was read in one go at a station, those with the most readings in doubt first."""
-        found = {}
+        found, names = {}, self.job.network.stations.names
         for station, tables in self._runs.items():
+            every = {r for runs in tables.values() for run in runs for r in run} | set(self._to.get(station, ()))
             for rows in _joined(tables):
                 if len(rows) >= 2:
                     column = tuple((b, 0) for b in sorted({self.at(r)[0] for r in rows}))
-                    found[rows] = Shared(OCCUPIED, self.job.network.stations.names[station], rows, column=column)
+                    found[rows] = Shared(
+                        OCCUPIED, names[station], rows, frozenset(every.difference(rows)), column=column
+                    )
         return self._most_doubtful(found.values())
 
     def sights(self) -> list[Shared]:
@@ -103,12 +108,24 @@ class RowsInCommon:
         return block, stations.index("to") if "to" in stations else -1
 
     def _most_doubtful(self, shared: Iterable[Shared]) -> list[Shared]:
-        """Those with two readings in doubt that make up most of them; where none is known, the most readings first."""
-        doubt = [(len(self.doubtful.intersection(one.rows)), one) for one in shared]
-        if self.doubtful:
-            doubt = [(n, one) for n, one in doubt if n >= 2]
-        ranked = sorted(doubt, key=lambda d: (-d[0] + SOUND * (len(d[1].rows) - d[0]), -len(d[1].rows), d[1].rows))
-        return [one for _, one in ranked[:TRIED]]
+        """Those that the readings in doubt make up best, or leave out best; where none is known, the largest."""
+        ranked = []
+        for one in shared:
+            within, beyond = (len(self.doubtful.intersection(rows)) for rows in (one.rows, one.against))
+            if not self.doubtful or max(within, beyond) >= 2:
+                score = max(n - SOUND * (len(rows) - n) for n, rows in ((within, one.rows), (beyond, one.against)))
+                ranked.append((-score, -len(one.rows), one.rows, one))
+        return [one for *_, one in sorted(ranked, key=lambda r: r[:3])[:TRIED]]
+
+    @cached_property
+    def _to(self) -> dict[int, list[int]]:
+        """By station the rows that are sights to it."""
+        out: dict[int, list[int]] = defaultdict(list)
+        for block, i, row in self._rows(STANDING):
+            to = self._target(row)[1]
+            if to >= 0:
+                out[int(block.stations[i, to])].append(row)
+        return out
 
     @cached_property
     def _runs(self) -> dict[int, dict[int, list[list[int]]]]:

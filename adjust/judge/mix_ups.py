@@ -254,16 +254,18 @@ class _Trials:
 
     def _without(self, one: Shared) -> _Rest | None:
         """The network without the readings; None where it does not settle, or fits as badly."""
-        if self.as_booked is None:
+        outcome = adjusted_without(self.as_booked, one.rows) if self.as_booked else None
+        most = EXPLAINED * self.as_booked.total.square_sum if self.as_booked else np.inf
+        if self.as_booked and outcome:
+            state, degrees = outcome.last.state, self.as_booked.total.degrees_of_freedom - len(one.rows)
+            rest = _Rest(state.positions, state.groups, self.as_booked.design, outcome.last.merit, degrees)
+        else:  # where wrong readings have bent the figure too far, the others begin anew
             found = _solved(replace(self._job, network=without_rows(self._job.network, np.array(one.rows))))
-            return None if found is None else _Rest(found.positions, found.groups, found.design, found.total.square_sum,
-                                                    found.total.degrees_of_freedom)  # fmt: skip
-        outcome, total = adjusted_without(self.as_booked, one.rows), self.as_booked.total
-        if outcome is None or outcome.last.merit > EXPLAINED * total.square_sum:
-            return None
-        state = outcome.last.state
-        return _Rest(state.positions, state.groups, self.as_booked.design, outcome.last.merit,
-                     max(total.degrees_of_freedom - len(one.rows), 1))  # fmt: skip
+            if found is None:
+                return None
+            rest = _Rest(found.positions, found.groups, found.design, found.total.square_sum,
+                         found.total.degrees_of_freedom)  # fmt: skip
+        return rest if rest.square_sum <= most else None
 
     def _block(self, row: int) -> Block:
         return self._job.network.blocks[self.common.at(row)[0]]
