@@ -32,6 +32,7 @@ from adjust.units import TURN, BadValue, wrap
 if TYPE_CHECKING:
     from adjust.judge.assess import Judgement
     from adjust.judge.suspects import Suspect
+    from adjust.network import Network
 
 FARTHEST = 2.5
 """Standard deviations by which a form may miss the blunder; 1 in 80 right ones misses by more."""
@@ -79,9 +80,34 @@ def slipped(judgement: Judgement, suspect: Suspect) -> Slipped:
     raws = raw_texts(solution.job, block, i)
     if len(kind.parts) > 1:
         raws = tuple(r for r in raws if r.column == kind.parts[int(rows.part[suspect.row])])
+    others = tuple(r for r in found.rows if r != suspect.row) if suspect.row in found.rows else ()
+    ids = judgement.ids
+    named = frozenset(ids[s.row] for s in judgement.suspects)
     return Slipped(solution, found.model.state, block, i, raws, block.kind, NOUNS.get(block.kind, block.kind),
-                   kind.wraps, suspect.blunder, suspect.sd,
-                   frozenset(judgement.ids[s.row] for s in judgement.suspects))  # fmt: skip
+                   kind.wraps, suspect.blunder, suspect.sd, named, found.model, (suspect.row, *others),
+                   _sight(judgement, suspect.row, ids))  # fmt: skip
+
+
+def _sight(judgement: Judgement, row: int, ids: list[str]) -> tuple[str, ...]:
+    """The other readings from the same set-up to the same target, if there are some and all that are checked fail."""
+    network, rows = judgement.solution.network, judgement.solution.network.rows
+    own = _ends(network, row)
+    if own is None:
+        return ()
+    blamed = {s.row for s in judgement.suspects if s.at_job_level}
+    beside = [r for r in range(len(rows)) if r != row and _ends(network, r) == own and judgement.reliability.tested[r]]
+    return tuple(ids[r] for r in beside) if beside and blamed >= set(beside) else ()
+
+
+def _ends(network: Network, row: int) -> tuple[int, int, int] | None:
+    """Standing station, target and set-up of a sight; None where a reading is none."""
+    rows = network.rows
+    block, i = network.blocks[rows.block[row]], int(rows.row[row])
+    columns = KINDS[block.kind].stations
+    if block.kind not in ("distance", "direction", "angle", "zenith_angle") or not len(block.setup):
+        return None
+    to = columns.index("second") if "second" in columns else 1
+    return int(block.stations[i, 0]), int(block.stations[i, to]), int(block.setup[i])
 
 
 def causes(judgement: Judgement, suspect: Suspect) -> tuple[Cause, ...]:
@@ -143,8 +169,10 @@ def _apart(case: Slipped, mine: RawText, text: str, other: RawText) -> float:
 
 
 def _likelihood(case: Slipped, form: Form) -> float:
+    if form.any_amount:
+        return _other(case)
     miss = case.blunder - form.change
-    sd = math.hypot(case.sd, form.sd)
+    sd = form.miss_sd or math.hypot(case.sd, form.sd)
     t = (wrap(miss) if case.wraps else miss) / sd
     return math.exp(-t * t / 2) / (math.sqrt(TURN) * sd) if abs(t) <= FARTHEST else 0.0
 

@@ -251,15 +251,18 @@ def tasks(count: int, names: Iterable[str], seed: int = SEED) -> list[tuple[str,
         for k in range(count):
             mine = shapes[name]
             wanted[mine[k % len(mine)], k // len(mine)].append(name)
-    return [(shape, number, tuple(of), seed) for (shape, number), of in sorted(wanted.items())]
+    order = sorted(wanted.items(), key=lambda one: (one[0][1], one[0][0]))  # so that a part of them is a fair one
+    return [(shape, number, tuple(of), seed) for (shape, number), of in order]
 
 
-def run(count: int, names: Iterable[str], workers: int, seed: int) -> list[Outcome]:
-    """All outcomes, in the order of the networks."""
+def run(count: int, names: Iterable[str], workers: int, seed: int, save: Path | None = None) -> list[Outcome]:
+    """All outcomes, in the order of the networks; one a line in the file ``save`` as they come."""
     todo, out = tasks(count, names, seed), []
-    with Pool(workers) as pool:
+    with Pool(workers) as pool, open(save or os.devnull, "w", encoding="utf-8") as lines:
         for k, found in enumerate(pool.imap(outcomes, todo)):
             out += found
+            lines.writelines(json.dumps(asdict(o)) + "\n" for o in found)
+            lines.flush()
             if k % 50 == 49:
                 print(f"{k + 1} of {len(todo)} networks", file=sys.stderr, flush=True)
     return out
@@ -308,11 +311,14 @@ def main() -> None:
     count = next((int(a) for a in sys.argv[1:] if a.isdigit()), 200)
     names = [n for n in NAMES if n in sys.argv] or NAMES
     seed = int(options.get("seed", SEED))
-    found = run(count, names, int(options.get("workers", 2)), seed)
+    if "load" in options:
+        lines = Path(options["load"]).read_text("utf-8").splitlines()
+        found = [Outcome(**json.loads(line)) for line in lines]
+    else:
+        save = Path(options["save"]) if "save" in options else None
+        found = run(count, names, int(options.get("workers", 2)), seed, save)
     print(f"seed {seed}, {count} networks a slip: {', '.join(names)}")
     report(found)
-    if "save" in options:
-        Path(options["save"]).write_text(json.dumps([asdict(o) for o in found]), "utf-8")
     for o in found:
         if "all" in sys.argv and (o.reading in ("other", "none", "refused") or o.cause in ("wrong", "offered", "silent")):
             print(o)

@@ -20,7 +20,7 @@ from pathlib import Path
 import numpy as np
 
 from tests.networks import random_job
-from tests.solver.space import PLANE, model, random_space, write
+from tests.solver.space import PLANE, Space, arrays, model, random_space, write
 
 SEC = math.pi / 648000
 TAU = 2 * math.pi
@@ -110,7 +110,9 @@ def space(rng: np.random.Generator, folder: Path, number: int) -> None:
     """A network in space; every other one with elevations in place of zenith angles, every third with ground lengths
     in place of slopes."""
     mixture = ("rich", "ground", "not levelled")[number % 3]
-    write(random_space(rng, n=int(rng.integers(5, 9)), mixture=mixture), folder)
+    made = random_space(rng, n=int(rng.integers(5, 9)), mixture=mixture)
+    write(made, folder)
+    _displayed(made, folder)
     if number // 3 % 2:
         sheet = Sheet.of(folder / "zenith_angle.csv")
         at = sheet.header.index("zenith_angle")
@@ -119,6 +121,15 @@ def space(rng: np.random.Generator, folder: Path, number: int) -> None:
             row[at] = repr(90.0 - float(row[at]))
         sheet.save()
     as_booked(folder)
+
+
+def _displayed(made: Space, folder: Path) -> None:
+    """What the display showed for every row of ground.csv before it was reduced: its slope, with the same error."""
+    kind, ends, above, value, _ = arrays(made.rows)
+    here = kind == "ground"
+    true = {k: model(np.full(here.sum(), k), ends[here], above[here], made.truth, 0.13) for k in ("ground", "slope")}
+    shown = true["slope"] + value[here] - true["ground"]
+    (folder / "displayed.txt").write_text("\n".join(f"{x:.4f}" for x in shown), "utf-8")
 
 
 def traverse(rng: np.random.Generator, folder: Path, number: int) -> None:

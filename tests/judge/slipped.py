@@ -167,6 +167,10 @@ def plant(rng: Rng, folder: Path, sort: Sort) -> Planted | None:
     if wrong is None or wrong == right:
         return None
     sheet.put(i, column, wrong)
+    if sort.slip == "reflector-constant":  # the same reflector in both faces
+        for j in _pointing(sheet, i):
+            if j != i:
+                sheet.put(j, column, _moved(column, sheet.get(j, column), float(wrong) - float(right)))
     return found
 
 
@@ -193,10 +197,11 @@ def _pointing(sheet: Sheet, i: int) -> list[int]:
 
 def _wrong_station(rng: Rng, folder: Path, sheet: Sheet, i: int) -> bool:
     """Another name of the job at the far end; a mark's name at an end of a levelled line."""
-    everyone = {name for name, *_ in [*Sheet.of(folder / "stations.csv").rows, *Sheet.of(folder / "control.csv").rows]
-                } if (folder / "stations.csv").exists() else {row[0] for row in sheet.rows}  # fmt: skip
-    column = next(c for c in ("second", "fore", "to", "station") if c in sheet.header and "line" not in sheet.header
-                  or c == "station")  # fmt: skip
+    marks = [Sheet.of(path) for path in (folder / "stations.csv", folder / "control.csv") if path.exists()]
+    names_in = marks if (folder / "stations.csv").exists() else [*marks, sheet]
+    everyone = {row[0] for one in names_in for row in one.rows}
+    columns = ("station",) if "line" in sheet.header else ("second", "to", "fore")
+    column = next(c for c in columns if c in sheet.header)
     if column == "station" and sheet.get(i, "back") and sheet.get(i, "fore"):
         return False  # a change point: its name is the line's own
     names = sorted(everyone - set(sheet.rows[i]))
@@ -230,14 +235,8 @@ def _horizontal(rng: Rng, folder: Path) -> Planted | None:
     """The display's slope distance booked as the horizontal one."""
     if not (folder / "ground.csv").exists():
         return None
-    ground, zeniths = Sheet.of(folder / "ground.csv"), Sheet.of(folder / "zenith_angle.csv")
-    column = "zenith_angle" if "zenith_angle" in zeniths.header else "elevation"
-    angle = {(row[0], row[1]): radians(row[zeniths.header.index(column)]) for row in zeniths.rows}
+    ground, shown = Sheet.of(folder / "ground.csv"), (folder / "displayed.txt").read_text("utf-8").split()
     i = int(rng.integers(len(ground.rows)))
-    z = angle.get((ground.rows[i][0], ground.rows[i][1]))
-    if z is None:
-        return None
     found = Planted("ground.csv", i, "distance", ground.get(i, "distance"))
-    level = math.sin(z) if column == "zenith_angle" else math.cos(z)
-    ground.put(i, "distance", f"{float(found.right) / level:.4f}")
+    ground.put(i, "distance", shown[i])
     return found
