@@ -37,6 +37,10 @@ class Slipped:
     """All readings linearised at ``state``; None where a network has not been searched."""
     left_out: tuple[int, ...] = ()
     """Scalar rows without which the blunder was estimated, its own first."""
+    weight: float = 1.0
+    """Likelihood of its being the one in error against the suspect's, times the ratio of their standard deviations."""
+    instead: bool = False
+    """Whether it is not the suspect but a reading that cannot be told from it."""
     sight: tuple[str, ...] = ()
     """Identifications of the other readings of its sight, if all of them are suspects too."""
 

@@ -17,7 +17,7 @@ from adjust.judge.effect_words import KNOWN
 from adjust.judge.slip_forms import Form, Slipped
 from adjust.kinds import KINDS
 from adjust.network import Array, Block
-from adjust.units import small_length, wrap
+from adjust.units import LENGTHS, small_length, wrap
 
 if TYPE_CHECKING:
     from adjust.judge.leaving_out import Model
@@ -27,6 +27,9 @@ BOTH, ONE_ONLY = 20.0, 0.05
 of a prior weight of some 0.05), where only one is it explains too much."""
 NOT_IN_JOB = 0.1
 """Share of the weight of a wrong station for a point that is not in the job; common practice."""
+FORGOTTEN = 10.0
+"""Weight of a blank height among booked ones against that of a height booked for a sight that had none, or had that of
+another sight: blanks are what is forgotten; common practice."""
 NEAREST = 50
 """Other stations, those nearest to the reading, whose own uncertainty is computed."""
 LEAST_SHARE = 0.1
@@ -185,28 +188,60 @@ def slope_for_horizontal(case: Slipped) -> Iterator[Form]:
 
 
 def height_forgotten(case: Slipped) -> Iterator[Form]:
-    """The height of instrument or target left out, or another one booked."""
+    """The height of instrument or target left out, or another one booked.
+
+    What was left out is one of the heights that this crew uses: their mean with their spread. Where a height is booked
+    the sight may have had none, or the height is that of another sight.
+    """
     if KINDS[case.kind].on(case.block.surface) is None or not case.block.surface or case.kind == "levelled":
         return
     if "both" not in KINDS[case.kind].touched(case.block.surface):
         return
     used = [b.above for b in case.solution.network.blocks if b.above is not None]
-    if not used:
-        return
     own = np.zeros(2) if case.block.above is None else case.block.above[case.i]
-    unit = case.solution.job.settings.units.length
+    forms: list[Form] = []
     for end, what in enumerate(("instrument", "target")):
-        heights = np.unique(np.round(np.concatenate([a[:, end] for a in used]), 4))
-        heights = heights[np.abs(heights - own[end]) > 1e-4]
-        if not len(heights):
-            continue
-        copies = case.block.take(np.full(len(heights), case.i))
-        above = np.tile(own, (len(heights), 1))
-        above[:, end] = heights
-        for k, change in _changes(case, replace(copies, above=above)):
-            told = f"the height of the {what} was forgotten or is another one" if not own[end] or not heights[k] else (
-                f"the height of the {what} is that of another sight")  # fmt: skip
-            yield Form("", change, f"{told} ({small_length(float(heights[k]), unit).lstrip('+')})", 0)
+        heights = np.unique(np.round(np.concatenate([a[:, end] for a in used]), 4)) if used else np.zeros(0)
+        heights = heights[(np.abs(heights - own[end]) > 1e-4) & (heights != 0)]
+        if own[end]:
+            forms += _another_height(case, end, what, own, heights)
+        elif len(heights):
+            forms += _no_height(case, end, what, own, heights)
+    weights = sum(form.weight for form in forms)
+    yield from (replace(form, weight=form.weight * len(forms) / weights) for form in forms)
+
+
+def _no_height(case: Slipped, end: int, what: str, own: Array, heights: Array) -> Iterator[Form]:
+    """Nothing is booked: the height is one of about ``heights`` (h,), which the blunder tells."""
+    mean, spread = float(heights.mean()), float(heights.std())
+    change = dict(_changes(case, _with_heights(case, end, own, [mean])))
+    if 0 not in change or not change[0]:
+        return
+    by = change[0] / mean
+    height = mean + (case.blunder - change[0]) / by
+    told = f"the height of the {what} was forgotten (about {_height(case, height, 2)})"
+    yield Form("", change[0], told, 0, weight=FORGOTTEN, sd=abs(by) * spread)
+
+
+def _another_height(case: Slipped, end: int, what: str, own: Array, heights: Array) -> Iterator[Form]:
+    """A height is booked where the sight had none, or that of another sight."""
+    for k, change in _changes(case, _with_heights(case, end, own, [0.0, *heights.tolist()])):
+        told = f"the sight had no height of the {what}" if not k else (
+            f"the height of the {what} is that of another sight ({_height(case, float(heights[k - 1]), 4)})")  # fmt: skip
+        yield Form("", change, told, 0, weight=1 / len(heights) if k else 1.0)
+
+
+def _height(case: Slipped, height: float, places: int) -> str:
+    unit = case.solution.job.settings.units.length
+    text = f"{height / LENGTHS[unit]:.{places}f}"
+    return f"{text.rstrip('0') if places > 2 else text} {unit}"
+
+
+def _with_heights(case: Slipped, end: int, own: Array, heights: list[float]) -> Block:
+    """Copies of the reading with other heights at one end."""
+    above = np.tile(own, (len(heights), 1))
+    above[:, end] = heights
+    return replace(case.block.take(np.full(len(heights), case.i)), above=above)
 
 
 def _changes(case: Slipped, copies: Block) -> Iterator[tuple[int, float]]:

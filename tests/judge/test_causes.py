@@ -72,7 +72,7 @@ def test_a_minute_misread_in_one_face_is_found_on_its_line(tmp_path: Path) -> No
 def test_a_staff_misread_by_a_metre_is_a_round_step_of_that_sight(tmp_path: Path) -> None:
     judgement = changed("river-levels", tmp_path, "staff.csv", "0.6082", "1.6082")
     suspect = next(s for s in judgement.suspects if judgement.ids[s.row].startswith("staff.csv:8"))
-    forms = {(f.would, f.line) for _, f, weight in _weighed(slipped(judgement, suspect)) if weight > 0.1}
+    forms = {(f.would, f.line) for w in _weighed(slipped(judgement, suspect)) if w.support > 0.1 for f in (w.form,)}
     assert ("0.6082", 7) in forms
 
 
@@ -131,8 +131,8 @@ def test_support_is_the_rule_of_bayes(tmp_path: Path) -> None:
                 )
                 total += p
                 wanted = p if one["key"] == "round-step" else wanted
-    best = next(w for w in _weighed(case) if w[0]["key"] == "round-step")
-    close(best[2], wanted / total, atol=1e-9)
+    best = next(w for w in _weighed(case) if w.row["key"] == "round-step")
+    close(best.support, wanted / total, atol=1e-9)
     assert judgement.causes(suspect)[0].slip == "round-step"
 
 
