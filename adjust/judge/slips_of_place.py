@@ -30,6 +30,8 @@ NOT_IN_JOB = 0.1
 FORGOTTEN = 10.0
 """Weight of a blank height among booked ones against that of a height booked for a sight that had none, or had that of
 another sight: blanks are what is forgotten; common practice."""
+WIDER, SPREAD_M = 1.5, 0.1
+"""A forgotten height may lie outside those in use: this many times their spread, at least 0.1 m; common practice."""
 NEAREST = 50
 """Other stations, those nearest to the reading, whose own uncertainty is computed."""
 LEAST_SHARE = 0.1
@@ -213,7 +215,7 @@ def height_forgotten(case: Slipped) -> Iterator[Form]:
 
 def _no_height(case: Slipped, end: int, what: str, own: Array, heights: Array) -> Iterator[Form]:
     """Nothing is booked: the height is one of about ``heights`` (h,), which the blunder tells."""
-    mean, spread = float(heights.mean()), float(heights.std())
+    mean, spread = float(heights.mean()), max(WIDER * float(heights.std()), SPREAD_M)
     change = dict(_changes(case, _with_heights(case, end, own, [mean])))
     if 0 not in change or not change[0]:
         return
