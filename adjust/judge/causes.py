@@ -8,9 +8,10 @@ forms it can take in this reading) and L_h the density of b,
     L_h = phi((b - c_h)/s) / s      L_0 = 1 / (2 |b| ln(b_max / s))      support_h = p_h L_h / (p_0 L_0 + sum p L)
 
 where L_0 spreads some other amount evenly over its orders of magnitude, from one s to b_max. A form that misses b by
-more than FARTHEST standard deviations is none. This is Bayes' rule for a closed list of explanations (Jeffreys 1961,
-chapter 5); whether the support deserves its name is measured (docs/measured.md): of the causes given with 0.9 about
-nine in ten are right.
+more than FARTHEST standard deviations is none. Where the suspect cannot be told from other readings, the texts of all
+of them are tried, each weighed with exp((w'^2 - w^2)/2) s'/s against it. This is Bayes' rule for a closed list of
+explanations (Jeffreys 1961, chapter 5); whether the support deserves its name is measured (docs/measured.md): of the
+causes given with 0.9 about nine in ten are right.
 """
 
 from __future__ import annotations
@@ -23,19 +24,18 @@ from functools import cache
 from importlib.resources import files
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
+
 from adjust.book.raw_texts import RawText, raw_texts
 from adjust.judge import slips_of_place, slips_of_text
-from adjust.judge.slip_forms import Form, Slipped
+from adjust.judge.slip_forms import FARTHEST, Form, Slipped
 from adjust.kinds import KINDS
 from adjust.units import TURN, BadValue, wrap
 
 if TYPE_CHECKING:
     from adjust.judge.assess import Judgement
     from adjust.judge.suspects import Suspect
-    from adjust.network import Network
 
-FARTHEST = 2.5
-"""Standard deviations by which a form may miss the blunder; 1 in 80 right ones misses by more."""
 APART = 0.01
 """Weight of a slip in one face that would leave the faces further apart than half of what they are."""
 LARGEST_M = 1e5
@@ -45,6 +45,8 @@ SILENT_BELOW = 0.5
 AS_GOOD = 0.5
 """Other forms with at least this share of the best one's support are listed beside it."""
 LISTED = 3
+SIGHTS = {"distance": 1, "direction": 1, "zenith_angle": 1, "angle": 2}
+"""Station column of the target of the readings that a sight can have; the instrument stands at the first."""
 NOUNS = {"levelled": "rise", "direction": "pointing", "zenith_angle": "zenith angle", "control": "coordinate"}
 
 
@@ -91,25 +93,26 @@ def slipped(judgement: Judgement, suspect: Suspect) -> Slipped:
 
 
 def _sight(judgement: Judgement, row: int, ids: list[str]) -> tuple[str, ...]:
-    """The other readings from the same set-up to the same target, if there are some and all that are checked fail."""
-    network, rows = judgement.solution.network, judgement.solution.network.rows
-    own = _ends(network, row)
-    if own is None:
-        return ()
-    blamed = {s.row for s in judgement.suspects if s.at_job_level}
-    beside = [r for r in range(len(rows)) if r != row and _ends(network, r) == own and judgement.reliability.tested[r]]
-    return tuple(ids[r] for r in beside) if beside and blamed >= set(beside) else ()
+    """The other readings of a sight, if there are some and all that are checked fail.
 
-
-def _ends(network: Network, row: int) -> tuple[int, int, int] | None:
-    """Standing station, target and set-up of a sight; None where a reading is none."""
+    They stand in one line of the book, or in other tables with the same set-up and target.
+    """
+    network = judgement.solution.network
     rows = network.rows
     block, i = network.blocks[rows.block[row]], int(rows.row[row])
-    columns = KINDS[block.kind].stations
-    if block.kind not in ("distance", "direction", "angle", "zenith_angle") or not len(block.setup):
-        return None
-    to = columns.index("second") if "second" in columns else 1
-    return int(block.stations[i, 0]), int(block.stations[i, to]), int(block.setup[i])
+    if block.kind not in SIGHTS or not len(block.setup):
+        return ()
+    wanted = (block.stations[i, 0], block.stations[i, SIGHTS[block.kind]], block.setup[i])
+    beside: list[int] = []
+    for b, other in enumerate(network.blocks):
+        if other is block or other.kind not in SIGHTS or other.kind == block.kind or not len(other.setup):
+            continue
+        own = np.stack([other.stations[:, 0], other.stations[:, SIGHTS[other.kind]], other.setup], axis=1)
+        same = (own == wanted).all(axis=1) & ((other.line == block.line[i]) | (other.file != block.file))
+        beside += np.flatnonzero((rows.block == b) & same[np.where(rows.block == b, rows.row, 0)]).tolist()
+    beside = [r for r in beside if judgement.reliability.tested[r]]
+    blamed = {s.row for s in judgement.suspects if s.at_job_level}
+    return tuple(ids[r] for r in beside) if blamed >= set(beside) else ()
 
 
 def causes(judgement: Judgement, suspect: Suspect) -> tuple[Cause, ...]:
@@ -168,7 +171,7 @@ def _weighed(*cases: Slipped) -> list[Weighed]:
 
 def _weight(case: Slipped, row: dict[str, Any], form: Form, forms: int) -> float:
     """p L of a form, one of so many."""
-    prior = case.weight * row["prior"] / forms * form.weight
+    prior: float = case.weight * row["prior"] / forms * form.weight
     return prior * _faces_agree(case, form) * _likelihood(case, form)
 
 

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-
 from typing import TYPE_CHECKING
 
 from adjust.book.raw_texts import RawText
@@ -13,6 +12,9 @@ from adjust.solver.solution import Solution
 
 if TYPE_CHECKING:
     from adjust.judge.leaving_out import Model
+
+FARTHEST = 2.5
+"""Standard deviations by which a form may miss the blunder; 1 in 80 right ones misses by more."""
 
 
 @dataclass(frozen=True)

@@ -14,7 +14,7 @@ import numpy as np
 
 from adjust.book.raw_texts import raw_texts
 from adjust.judge.effect_words import KNOWN
-from adjust.judge.slip_forms import Form, Slipped
+from adjust.judge.slip_forms import FARTHEST, Form, Slipped
 from adjust.kinds import KINDS
 from adjust.network import Array, Block
 from adjust.units import LENGTHS, small_length, wrap
@@ -35,7 +35,7 @@ WIDER, SPREAD_M = 1.5, 0.1
 NEAREST = 50
 """Other stations, those nearest to the reading, whose own uncertainty is computed."""
 LEAST_SHARE = 0.1
-"""A miss is never surer than this share of the blunder's own standard deviation: rounding cannot feign a perfect fit."""
+"""A miss is never surer than this share of the blunder's own standard deviation: rounding feigns no perfect fit."""
 STATIONS_MOST = 2000
 """Other stations tried for each column of a reading."""
 
@@ -45,10 +45,12 @@ def wrong_station(case: Slipped) -> Iterator[Form]:
 
     How far the other station is from where the reading puts it is as uncertain as the network is there: see ``_miss``.
     A single reading to an unknown point can take any value, so nothing tells it from some other amount. Only where all
-    readings of the sight fail together, one unknown point explains what else would take a slip in each.
+    readings of the sight fail together and no station of the job fits, one unknown point explains what else would take a
+    slip in each.
     """
     solution, own = case.solution, case.block.stations[case.i]
     placed = np.flatnonzero(np.isfinite(case.state.positions).any(axis=1))[:STATIONS_MOST]
+    count, fits = 0, False
     for column, name in enumerate(KINDS[case.kind].stations):
         others = np.setdiff1d(placed, own)
         if not len(others):
@@ -59,14 +61,19 @@ def wrong_station(case: Slipped) -> Iterator[Form]:
         copies = replace(copies, stations=stations)
         found = list(_changes(case, copies))
         sds = _miss(case, copies, found)
+        count += len(found)
         for k, change in found:
             told = (f"the {case.noun} is the one {_with(case, name, solution.names[int(others[k])])}, "
                     f"not {solution.names[int(own[column])]}")  # fmt: skip
+            miss = case.blunder - change
+            fits |= k in sds and abs(wrap(miss) if case.wraps else miss) < FARTHEST * sds[k]
             yield Form("", change, told, 0, miss_sd=sds.get(k))
-    if case.sight:
-        told = (f"no reading of this sight to {solution.names[int(own[-1])]} fits (also {', '.join(case.sight)}): it was "
-                "to another point, one that is not in the job")  # fmt: skip
-        yield Form("", case.blunder, told, 0, weight=NOT_IN_JOB * BOTH ** len(case.sight), any_amount=True)
+    if case.sight and not fits:
+        target = solution.names[int(own[-1])]
+        told = (f"no reading of this sight to {target} fits (also {', '.join(case.sight)}): it was to another point, "
+                "one that is not in the job")  # fmt: skip
+        weight = NOT_IN_JOB * BOTH ** len(case.sight) * (count + 1)  # not divided among the other stations
+        yield Form("", case.blunder, told, 0, weight=weight, any_amount=True)
 
 
 def _with(case: Slipped, column: str, station: str) -> str:
@@ -228,8 +235,9 @@ def _no_height(case: Slipped, end: int, what: str, own: Array, heights: Array) -
 def _another_height(case: Slipped, end: int, what: str, own: Array, heights: Array) -> Iterator[Form]:
     """A height is booked where the sight had none, or that of another sight."""
     for k, change in _changes(case, _with_heights(case, end, own, [0.0, *heights.tolist()])):
-        told = f"the sight had no height of the {what}" if not k else (
-            f"the height of the {what} is that of another sight ({_height(case, float(heights[k - 1]), 4)})")  # fmt: skip
+        told = f"the sight had no height of the {what}"
+        if k:
+            told = f"the height of the {what} is that of another sight ({_height(case, float(heights[k - 1]), 4)})"
         yield Form("", change, told, 0, weight=1 / len(heights) if k else 1.0)
 
 

@@ -2,10 +2,11 @@
 
     OPENBLAS_NUM_THREADS=1 python -m tests.judge.causes_study [COUNT] [workers=2] [seed=20261207] [SLIP ...]
 
-COUNT networks a slip (200), divided evenly among the shapes of networks where it can happen (tests/judge/slip_networks),
-the slip in the text of a random row, where it makes the reading wrong by twice its smallest detectable size or more, as
-the clean network tells. ``some amount`` is an error uniform between 2 and 50 smallest detectable sizes: a cause offered
-there is an accident. ``clean`` asks clean networks for suspects, ``two`` makes two slips at once in different readings.
+COUNT networks a slip (200), divided evenly among the shapes of networks where it can happen
+(tests/judge/slip_networks.py), the slip in the text of a random row, where it makes the reading wrong by twice its
+smallest detectable size or more, as the clean network tells. ``some amount`` is an error uniform between 2 and 50
+smallest detectable sizes: a cause offered there is an accident. ``clean`` asks clean networks for suspects, ``two``
+makes two slips at once in different readings.
 Every network has seeds of its own, so the result does not depend on the number of workers.
 
 Of the first suspect: ``first`` it is a reading that is wrong, or ``group`` one named beside it is; then what its causes
@@ -14,36 +15,33 @@ say: ``right`` the first is the slip, ``listed`` another one is, ``silent`` ther
 
 from __future__ import annotations
 
+import json
 import os
+import shutil
+import sys
+import tempfile
+from collections import Counter, defaultdict
+from collections.abc import Iterable, Iterator
+from dataclasses import asdict, dataclass, replace
+from multiprocessing import Pool
+from pathlib import Path
 
-os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+import numpy as np
 
-import json  # noqa: E402
-import shutil  # noqa: E402 # the number of threads is read when numpy is loaded
-import sys  # noqa: E402
-import tempfile  # noqa: E402
-from collections import Counter, defaultdict  # noqa: E402
-from collections.abc import Iterable, Iterator  # noqa: E402
-from dataclasses import asdict, dataclass, replace  # noqa: E402
-from multiprocessing import Pool  # noqa: E402
-from pathlib import Path  # noqa: E402
-
-import numpy as np  # noqa: E402
-
-import adjust  # noqa: E402
-from adjust.book.job import Job  # noqa: E402
-from adjust.errors import BrasscapError, InputError  # noqa: E402
-from adjust.judge.assess import Judgement  # noqa: E402
-from adjust.solver.design import State  # noqa: E402
-from adjust.units import TURN  # noqa: E402
-from tests.judge.slip_networks import SHAPES  # noqa: E402
-from tests.judge.slipped import EVERYWHERE, SOME, SORTS, Planted, Sort, amount, moved, plant  # noqa: E402
+import adjust
+from adjust.book.job import Job
+from adjust.errors import BrasscapError, InputError
+from adjust.judge.assess import Judgement
+from adjust.solver.design import State
+from adjust.units import TURN
+from tests.judge.slip_networks import SHAPES
+from tests.judge.slipped import EVERYWHERE, SOME, SORTS, UNKNOWN, Planted, Sort, amount, moved, plant
 
 SEED = 20261207
 LEAST, MOST = 2.0, 50.0
 TRIES = 12
 """Rows of a network tried for a slip."""
-ALL = (*SORTS, SOME)
+ALL = (*SORTS, SOME, UNKNOWN)
 NAMES = (*(s.slip for s in ALL), "clean", "two")
 
 
@@ -86,7 +84,8 @@ def wrong_by(before: Judgement, changed: Job) -> np.ndarray | None:
     """How wrong each reading (R,) is in the changed book, in smallest detectable sizes of the clean network; None where
     the books do not have the same readings."""
     design, network = before.solution.design, changed.network
-    same = [len(a) == len(b) and a.kind == b.kind for a, b in zip(before.solution.network.blocks, network.blocks)]
+    pairs = zip(before.solution.network.blocks, network.blocks, strict=False)
+    same = [len(a) == len(b) and a.kind == b.kind for a, b in pairs]
     if len(network.blocks) != len(before.solution.network.blocks) or not all(same):
         return None
     if len(network.rows) != len(design.observed) or len(network.groups) != len(before.solution.groups):
@@ -168,13 +167,13 @@ def judged(sort: Sort, one: Clean, folder: Path, rng: np.random.Generator) -> tu
 
 def _told(made: Outcome, judgement: Judgement, sort: Sort, at: Planted) -> Outcome:
     """The outcome with what the causes of the first suspect say."""
-    found = judgement.causes(judgement.suspects[0])
+    found, slip = judgement.causes(judgement.suspects[0]), "wrong-station" if sort is UNKNOWN else sort.slip
     if not found:
         return replace(made, cause="silent")
     best = found[0]
     text = best.would_read == at.right and best.place == f"{at.file}:{at.row + 2}"
-    what = "offered" if sort is SOME else "right" if best.slip == sort.slip else (
-        "listed" if any(c.slip == sort.slip for c in found) else "wrong")  # fmt: skip
+    what = "offered" if sort is SOME else "right" if best.slip == slip else (
+        "listed" if any(c.slip == slip for c in found) else "wrong")  # fmt: skip
     return replace(made, cause=what, said=best.slip, support=best.support, text_right=text)
 
 
@@ -320,7 +319,8 @@ def main() -> None:
     print(f"seed {seed}, {count} networks a slip: {', '.join(names)}")
     report(found)
     for o in found:
-        if "all" in sys.argv and (o.reading in ("other", "none", "refused") or o.cause in ("wrong", "offered", "silent")):
+        odd = o.reading in ("other", "none", "refused") or o.cause in ("wrong", "offered", "silent")
+        if "all" in sys.argv and odd:
             print(o)
 
 

@@ -15,6 +15,7 @@ import csv
 import math
 from collections.abc import Callable
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -167,7 +168,7 @@ def traverse(rng: np.random.Generator, folder: Path, number: int) -> None:
 
 
 def rounds(rng: np.random.Generator, folder: Path, number: int) -> None:
-    """Five to seven stations in space, four targets each, two sets in both faces with an instrument out of adjustment."""
+    """Five to seven stations in space, four targets each, two sets in both faces, an instrument out of adjustment."""
     n, sets = int(rng.integers(5, 8)), 2
     side = 3
     cells = rng.permutation(side * side)[:n]
@@ -193,9 +194,10 @@ def rounds(rng: np.random.Generator, folder: Path, number: int) -> None:
                     h = true["direction"][k] + zero + (c if face == 1 else math.pi - c)
                     v = (z if face == 1 else TAU - z) + index
                     e = rng.normal(0, 1, 3)
-                    rows.append([f"P{at}", f"P{targets[k]}", str(s + 1), str(face),
-                                 dms(h + e[0] * 2 * math.sqrt(2) * SEC), dms(v + e[1] * 3 * math.sqrt(2) * SEC),
-                                 f"{true['slope'][k] + e[2] * 0.002:.4f}", f"{hi:.3f}", f"{above[k][1]:.3f}"])  # fmt: skip
+                    circles = [dms(h + e[0] * 2 * math.sqrt(2) * SEC), dms(v + e[1] * 3 * math.sqrt(2) * SEC)]
+                    slope = f"{true['slope'][k] + e[2] * 0.002:.4f}"
+                    rows.append([f"P{at}", f"P{targets[k]}", str(s + 1), str(face), *circles, slope, f"{hi:.3f}",
+                                 f"{above[k][1]:.3f}"])  # fmt: skip
     header = ["at", "to", "set", "face", "horizontal_circle", "zenith_circle", "slope_distance", "instrument_height",
               "target_height"]  # fmt: skip
     _table(folder, "rounds", header, rows)
@@ -223,7 +225,7 @@ def staff(rng: np.random.Generator, folder: Path, number: int) -> None:
             names.insert(1, "TP1")
             levels.insert(1, float(np.mean(levels)) + rng.uniform(-0.5, 0.5))
         pending = ""
-        for k, (here, ahead) in enumerate(zip(levels, levels[1:], strict=False)):
+        for k, (here, ahead) in enumerate(pairwise(levels)):
             sight = max(here, ahead) + float(rng.uniform(0.4, 1.5))
             back, fore = (f"{sight - h + rng.normal(0, sd):.4f}" for h in (here, ahead))
             rows.append([f"L{number_of_line + 1}", names[k], back, pending, repr(sd * math.sqrt(2)) if pending else ""])

@@ -109,7 +109,8 @@ SORTS = (
     Sort("slope-for-horizontal", ("distance",), None, ("space",)),
 )
 SOME = Sort("some amount", (*LENGTHS, *ANGLES), None, EVERYWHERE)
-NOT_LISTED = "not in the list"
+UNKNOWN = Sort("a point not in the job", ("horizontal_circle",), None, ("rounds",))
+"""A sight in both faces to a point that no table has: the slip is a wrong station."""
 
 
 @dataclass(frozen=True)
@@ -156,6 +157,13 @@ def plant(rng: Rng, folder: Path, sort: Sort) -> Planted | None:
     found = Planted(sheet.path.name, i, column, right)
     if sort.slip == "wrong-station":
         return found if _wrong_station(rng, folder, sheet, i) else None
+    if sort is UNKNOWN:
+        by = (rng.uniform(0.01, 6), rng.uniform(0.01, 0.2), rng.uniform(5, 100))
+        for j in _pointing(sheet, i):
+            down = by[1] if sheet.get(j, "face") == "1" else -by[1]
+            for c, b in (("horizontal_circle", by[0]), ("zenith_circle", down), ("slope_distance", by[2])):
+                sheet.put(j, c, _moved(c, sheet.get(j, c), float(b)))
+        return found
     if sort.slip == "pointings-swapped":
         return found if _swapped(rng, sheet, i, column) else None
     if sort.slip == "height-forgotten":
@@ -204,7 +212,10 @@ def _wrong_station(rng: Rng, folder: Path, sheet: Sheet, i: int) -> bool:
     column = next(c for c in columns if c in sheet.header)
     if column == "station" and sheet.get(i, "back") and sheet.get(i, "fore"):
         return False  # a change point: its name is the line's own
-    names = sorted(everyone - set(sheet.rows[i]))
+    set_of = [row for j, row in enumerate(sheet.rows) if "set" in sheet.header
+              and all(sheet.get(j, c) == sheet.get(i, c) for c in ("at", "set"))]  # fmt: skip
+    # the same target twice in a set would be seen while reading
+    names = sorted(everyone - {name for row in [sheet.rows[i], *set_of] for name in row})
     if not names:
         return False
     other = str(rng.choice(names))

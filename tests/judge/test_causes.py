@@ -12,15 +12,19 @@ import pytest
 
 import adjust
 from adjust.book.raw_texts import raw_texts
+from adjust.judge import causes as module
 from adjust.judge import slips_of_place, slips_of_text
 from adjust.judge.assess import Judgement
 from adjust.judge.causes import _weighed, slipped, slips
 from adjust.kinds import KINDS
 from tests.helpers import close
-from tests.judge.blunders_study import clean, shifted
-from tests.judge.causes_study import SOME, outcome
-from tests.judge.slipped import SORTS
+from tests.judge.blunders_study import shifted
+from tests.judge.causes_study import Outcome, judged
+from tests.judge.causes_study import clean as clean_of
+from tests.judge.slipped import SOME, SORTS, Sort
 
+SEED = 3
+RAW = (("digits-swapped", "rounds"), ("wrong-station", "staff"))
 NETWORKS = Path(__file__).parents[2] / "networks"
 
 
@@ -34,23 +38,58 @@ def changed(demo: str, folder: Path, file: str, old: str, new: str) -> Judgement
     return adjust.assess(adjust.solve(adjust.read(job)))
 
 
-@pytest.mark.parametrize("sort", SORTS, ids=lambda s: s.slip)
-def test_the_study_in_small(sort: object, tmp_path: Path) -> None:
-    """Of the first three networks of the study the slip is named in all, or stands among those listed."""
+SHAPE = {"digits-swapped": "staff", "degree-slip": "traverse", "minute-slip": "traverse", "round-step": "level",
+         "sign": "level", "other-way": "traverse", "half-circle": "traverse", "wrong-station": "traverse",
+         "reflector-constant": "traverse", "feet-for-metres": "rounds", "pointings-swapped": "rounds",
+         "height-forgotten": "rounds", "slope-for-horizontal": "space"}  # fmt: skip
+CASES = [(sort, SHAPE[sort.slip]) for sort in SORTS] + [
+    (sort, shape) for sort in SORTS for shape in ("staff", "rounds") if (sort.slip, shape) in RAW
+]
+AMOUNTS = ("level", "staff", "traverse") * 2
+
+
+@pytest.fixture(scope="module")
+def small(tmp_path_factory: pytest.TempPathFactory) -> list[tuple[Sort, str, Outcome, Judgement]]:
+    """One network of the study a slip, and some amounts, adjusted once for all tests."""
+    place = tmp_path_factory.mktemp("small")
+    cleans = {shape: clean_of(shape, 0, place, SEED) for shape in sorted({*SHAPE.values()})}
     found = []
-    for number in range(40):
-        one = outcome(sort, number, tmp_path / str(number))  # type: ignore[arg-type] # a Sort, by its own name above
-        if one:
-            found.append(one[0])
-        if len(found) == 3:
-            break
-    assert sum(what in ("right", "right among the listed") for what in found) >= 2, found
-    assert not any(what.startswith("wrong") for what in found), found
+    for k, (sort, shape) in enumerate(CASES + [(SOME, shape) for shape in AMOUNTS]):
+        one = judged(sort, cleans[shape], place / f"job-{k}", np.random.default_rng([SEED, k]))
+        assert one and one[1], (sort.slip, shape, one)
+        found.append((sort, shape, *one))
+    return found  # type: ignore[return-value] # none of the judgements is None
 
 
-def test_an_odd_amount_has_no_cause(tmp_path: Path) -> None:
-    found = [outcome(SOME, number, tmp_path / str(number)) for number in range(6)]
-    assert [one[0] for one in found if one].count("silent") >= sum(one is not None for one in found) - 1
+def test_the_study_in_small(small: list[tuple[Sort, str, Outcome, Judgement]]) -> None:
+    """The reading that is wrong comes first, or in its group, and its slip is told; one may be silent."""
+    planted = [(sort.slip, shape, told.reading, told.cause, told.said) for sort, shape, told, _ in small
+               if sort is not SOME]  # fmt: skip
+    assert len(planted) == len(CASES)
+    assert all(reading in ("first", "group") for _, _, reading, _, _ in planted), planted
+    assert sum(cause == "right" for *_, cause, _ in planted) >= len(CASES) - 1, planted
+    assert not any(cause == "wrong" for *_, cause, _ in planted), planted
+
+
+def test_an_odd_amount_has_no_cause(small: list[tuple[Sort, str, Outcome, Judgement]]) -> None:
+    told = [o.cause for sort, _, o, _ in small if sort is SOME]
+    assert len(told) == len(AMOUNTS)
+    assert told.count("silent") >= len(told) - 1
+
+
+def test_other_weights_would_show(
+    small: list[tuple[Sort, str, Outcome, Judgement]], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The two tests above would fail if some other amount had far too much or far too little weight."""
+    rows = slips()[1]
+
+    def given(other: float, some: bool) -> int:
+        monkeypatch.setattr(module, "slips", lambda: (other, rows))
+        return sum(bool(j.causes(j.suspects[0])) for sort, _, _, j in small if (sort is SOME) == some)
+
+    assert given(slips()[0], some=False) >= len(CASES) - 1
+    assert given(1e4 * slips()[0], some=False) < len(CASES) - 1
+    assert given(slips()[0], some=True) <= 1 < given(1e-9 * slips()[0], some=True)
 
 
 def test_a_minute_misread_in_one_face_is_found_on_its_line(tmp_path: Path) -> None:
@@ -104,8 +143,8 @@ def test_the_texts_behind_a_reading_give_its_value_by_their_factors(demo: str) -
 
 def test_support_is_the_rule_of_bayes(tmp_path: Path) -> None:
     """A metre in a distance, by hand: every form that could explain it, and some other amount."""
-    job = clean(0, tmp_path)
-    before = adjust.assess(adjust.solve(job))
+    before = clean_of("traverse", 0, tmp_path, SEED).judgement
+    job = before.solution.job
     row = next(r for r, b in enumerate(job.network.rows.block) if job.network.blocks[b].kind == "distance"
                and before.reliability.checked_share[r] > 0.5)  # fmt: skip
     judgement = adjust.assess(adjust.solve(shifted(job, np.array([row]), np.array([1.0]))))
