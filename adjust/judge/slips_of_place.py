@@ -45,8 +45,7 @@ def wrong_station(case: Slipped) -> Iterator[Form]:
 
     How far the other station is from where the reading puts it is as uncertain as the network is there: see ``_miss``.
     A single reading to an unknown point can take any value, so nothing tells it from some other amount. Only where all
-    readings of the sight fail together and no station of the job fits, one unknown point explains what else would take a
-    slip in each.
+    readings of the sight fail together and no station fits, one unknown point explains what else takes a slip in each.
     """
     solution, own = case.solution, case.block.stations[case.i]
     placed = np.flatnonzero(np.isfinite(case.state.positions).any(axis=1))[:STATIONS_MOST]
