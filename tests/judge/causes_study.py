@@ -32,6 +32,7 @@ import adjust
 from adjust.book.job import Job
 from adjust.errors import BrasscapError, InputError
 from adjust.judge.assess import Judgement
+from adjust.judge.causes import slips
 from adjust.solver.design import State
 from adjust.units import TURN
 from tests.judge.slip_networks import SHAPES
@@ -270,19 +271,37 @@ def run(count: int, names: Iterable[str], workers: int, seed: int, save: Path | 
 def report(found: list[Outcome]) -> None:
     """Print the tables."""
     _table("slip", found, lambda o: o.slip)
+    print("all slips: " + ", ".join(f"{n} {w}" for w, n in _all(found).most_common()))
     _table("shape", [o for o in found if o.slip in {s.slip for s in SORTS}], lambda o: o.shape)
     for name in (SOME.slip, "clean", "two"):
         here = [o for o in found if o.slip == name]
         if here:
             _table(f"{name}, by shape", here, lambda o: o.shape)
-    print("\n| support | causes | the slip is right | the text too |\n|---|---:|---:|---:|")
-    given = [o for o in found if o.support > 0 and o.slip in {s.slip for s in SORTS}]
+    _reliability(found)
+
+
+def _all(found: list[Outcome]) -> Counter[str]:
+    here = [o for o in found if o.slip in {s.slip for s in SORTS}]
+    return Counter([f"reading {o.reading}" for o in here] + [f"slip {o.cause}" for o in here if o.cause])
+
+
+def _reliability(found: list[Outcome]) -> None:
+    """Share of the causes of a support that are right: as planted, and with every slip and some amount as frequent as
+    their prior weights say."""
+    other, rows = slips()
+    prior = {row["key"]: row["prior"] for row in rows} | {SOME.slip: other}
+    count = Counter(o.slip for o in found)
+    given = [o for o in found if o.support > 0 and o.slip in prior]
+    print("\n| support | causes | right | the text too | accidents | right, by prior weights |\n|---|" + "---:|" * 5)
     for low, high in ((0.5, 0.6), (0.6, 0.7), (0.7, 0.8), (0.8, 0.9), (0.9, 0.95), (0.95, 0.99), (0.99, 1.01)):
         here = [o for o in given if low <= o.support < high]
-        if here:
-            right = np.mean([o.cause == "right" for o in here])
-            print(f"| {low:.2f} to {min(high, 1):.2f} | {len(here)} | {right:.3f} | "
-                  f"{np.mean([o.text_right for o in here]):.3f} |")  # fmt: skip
+        told = [o for o in here if o.slip != SOME.slip]
+        if told:
+            right, text = np.mean([o.cause == "right" for o in told]), np.mean([o.text_right for o in told])
+            weights = [prior[o.slip] / count[o.slip] for o in here]
+            by_weight = np.average([o.cause == "right" for o in here], weights=weights)
+            print(f"| {low:.2f} to {min(high, 1):.2f} | {len(told)} | {right:.3f} | {text:.3f} | "
+                  f"{len(here) - len(told)} | {by_weight:.3f} |")  # fmt: skip
 
 
 def _table(what: str, found: list[Outcome], key: object) -> None:
@@ -319,8 +338,8 @@ def main() -> None:
     print(f"seed {seed}, {count} networks a slip: {', '.join(names)}")
     report(found)
     for o in found:
-        odd = o.reading in ("other", "none", "refused") or o.cause in ("wrong", "offered", "silent")
-        if "all" in sys.argv and odd:
+        odd = o.reading in ("other", "none", "refused") or o.cause in ("wrong", "silent")
+        if "all" in sys.argv and odd and o.slip not in (SOME.slip, "clean"):
             print(o)
 
 
