@@ -59,7 +59,8 @@ def _angle(steps: tuple[float, ...]) -> Change:
 
 def _length(steps: tuple[float, ...]) -> Change:
     def change(rng: Rng, column: str, text: str) -> str | None:
-        return _moved(column, text, float(rng.choice(steps)) * int(rng.choice([-1, 1])))
+        possible = steps if column in DISTANCES else [step for step in steps if step <= 10]
+        return _moved(column, text, float(rng.choice(possible)) * int(rng.choice([-1, 1])))
 
     return change
 
@@ -97,7 +98,7 @@ SORTS = (
     Sort("digits-swapped", (*LENGTHS, *ANGLES), _digits, EVERYWHERE),
     Sort("degree-slip", ANGLES, _angle((1.0, 10.0)), WITH_ANGLES),
     Sort("minute-slip", ANGLES, _angle((1 / 60, 10 / 60, 30 / 60)), WITH_ANGLES),
-    Sort("round-step", LENGTHS, _length((0.1, 0.5, 1.0, 10.0)), EVERYWHERE),
+    Sort("round-step", LENGTHS, _length((0.1, 0.5, 1.0, 10.0, 100.0)), EVERYWHERE),
     Sort("sign", ("rise", "elevation"), _sign, ("level", "space")),
     Sort("other-way", ("angle",), _other_way, ("traverse", "braced")),
     Sort("half-circle", CIRCLES, _half, WITH_ANGLES),
