@@ -8,9 +8,10 @@ forms it can take in this reading) and L_h the density of b,
     L_h = phi((b - c_h)/s) / s      L_0 = 1 / (2 |b| ln(b_max / s))      support_h = p_h L_h / (p_0 L_0 + sum p L)
 
 where L_0 spreads some other amount evenly over its orders of magnitude, from one s to b_max. A form that misses b by
-more than FARTHEST standard deviations is none. This is Bayes' rule for a closed list of explanations (Jeffreys 1961,
-chapter 5); whether the support deserves its name is measured (docs/measured.md): of the causes given with 0.9 about
-nine in ten are right.
+more than FARTHEST standard deviations is none. Where the suspect cannot be told from other readings, the texts of all
+of them are tried, each weighed with exp((w'^2 - w^2)/2) s'/s against it. This is Bayes' rule for a closed list of
+explanations (Jeffreys 1961, chapter 5); whether the support deserves its name is measured (docs/measured.md): of the
+causes given with 0.9 about nine in ten are right.
 """
 
 from __future__ import annotations
@@ -18,14 +19,16 @@ from __future__ import annotations
 import math
 import tomllib
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache
 from importlib.resources import files
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
+
 from adjust.book.raw_texts import RawText, raw_texts
 from adjust.judge import slips_of_place, slips_of_text
-from adjust.judge.slip_forms import Form, Slipped
+from adjust.judge.slip_forms import FARTHEST, Form, Slipped
 from adjust.kinds import KINDS
 from adjust.units import TURN, BadValue, wrap
 
@@ -33,15 +36,17 @@ if TYPE_CHECKING:
     from adjust.judge.assess import Judgement
     from adjust.judge.suspects import Suspect
 
-FARTHEST = 2.5
-"""Standard deviations by which a form may miss the blunder; 1 in 80 right ones misses by more."""
 APART = 0.01
 """Weight of a slip in one face that would leave the faces further apart than half of what they are."""
 LARGEST_M = 1e5
+ALIKE_MOST = 12
+"""Readings that a suspect cannot be told from whose texts are looked at as well."""
 SILENT_BELOW = 0.5
 AS_GOOD = 0.5
 """Other forms with at least this share of the best one's support are listed beside it."""
 LISTED = 3
+SIGHTS = {"distance": 1, "direction": 1, "zenith_angle": 1, "angle": 2}
+"""Station column of the target of the readings that a sight can have; the instrument stands at the first."""
 NOUNS = {"levelled": "rise", "direction": "pointing", "zenith_angle": "zenith angle", "control": "coordinate"}
 
 
@@ -79,37 +84,95 @@ def slipped(judgement: Judgement, suspect: Suspect) -> Slipped:
     raws = raw_texts(solution.job, block, i)
     if len(kind.parts) > 1:
         raws = tuple(r for r in raws if r.column == kind.parts[int(rows.part[suspect.row])])
+    others = tuple(r for r in found.rows if r != suspect.row) if suspect.row in found.rows else ()
+    ids = judgement.ids
+    named = frozenset(ids[s.row] for s in judgement.suspects)
     return Slipped(solution, found.model.state, block, i, raws, block.kind, NOUNS.get(block.kind, block.kind),
-                   kind.wraps, suspect.blunder, suspect.sd,
-                   frozenset(judgement.ids[s.row] for s in judgement.suspects))  # fmt: skip
+                   kind.wraps, suspect.blunder, suspect.sd, named, found.model, (suspect.row, *others),
+                   sight=_sight(judgement, suspect.row, ids))  # fmt: skip
+
+
+def _sight(judgement: Judgement, row: int, ids: list[str]) -> tuple[str, ...]:
+    """The other readings of a sight, if there are some and all that are checked fail.
+
+    They stand in one line of the book, or in other tables with the same set-up and target.
+    """
+    network = judgement.solution.network
+    rows = network.rows
+    block, i = network.blocks[rows.block[row]], int(rows.row[row])
+    if block.kind not in SIGHTS or not len(block.setup):
+        return ()
+    wanted = (block.stations[i, 0], block.stations[i, SIGHTS[block.kind]], block.setup[i])
+    beside: list[int] = []
+    for b, other in enumerate(network.blocks):
+        if other is block or other.kind not in SIGHTS or other.kind == block.kind or not len(other.setup):
+            continue
+        own = np.stack([other.stations[:, 0], other.stations[:, SIGHTS[other.kind]], other.setup], axis=1)
+        same = (own == wanted).all(axis=1) & ((other.line == block.line[i]) | (other.file != block.file))
+        beside += np.flatnonzero((rows.block == b) & same[np.where(rows.block == b, rows.row, 0)]).tolist()
+    beside = [r for r in beside if judgement.reliability.tested[r]]
+    blamed = {s.row for s in judgement.suspects if s.at_job_level}
+    return tuple(ids[r] for r in beside) if blamed >= set(beside) else ()
 
 
 def causes(judgement: Judgement, suspect: Suspect) -> tuple[Cause, ...]:
     """The likely causes of a suspect, the best first; none where none fits well enough."""
-    case = slipped(judgement, suspect)
-    weighed = _weighed(case)
-    if not weighed or sum(support for _, _, support in weighed) < SILENT_BELOW:
+    weighed = _weighed(*_possible(judgement, suspect))
+    if not weighed or sum(one.support for one in weighed) < SILENT_BELOW:
         return ()
-    best = weighed[0][2]
-    good = [w for w in weighed if w[2] >= AS_GOOD * best][:LISTED]
-    if best < SILENT_BELOW and sum(w[2] for w in good) < SILENT_BELOW:
+    best = weighed[0].support
+    good = [one for one in weighed if one.support >= AS_GOOD * best][:LISTED]
+    if best < SILENT_BELOW and sum(one.support for one in good) < SILENT_BELOW:
         return ()
-    return tuple(_cause(case, row, form, support) for row, form, support in good)
+    return tuple(_cause(one) for one in good)
 
 
-def _weighed(case: Slipped) -> list[tuple[dict[str, Any], Form, float]]:
-    """Forms of all slips with their support, the best first."""
+@dataclass(frozen=True)
+class Weighed:
+    """A form of a slip in one reading with its support."""
+
+    case: Slipped
+    row: dict[str, Any]
+    form: Form
+    support: float
+
+
+def _possible(judgement: Judgement, suspect: Suspect) -> list[Slipped]:
+    """The suspect, and the readings it cannot be told from, each as if it were the one in error."""
+    own = slipped(judgement, suspect)
+    cases, found = [own], judgement.blunders
+    if suspect.row not in found.rows:
+        return cases
+    size = suspect.statistic**2
+    scale = suspect.sd / math.sqrt(float(found.model.without(own.left_out).covariance[0, 0]))
+    for row, _, _ in judgement.confusable(suspect)[:ALIKE_MOST]:
+        rows = [row, *own.left_out[1:]]
+        without = found.model.without(rows)
+        sd = math.sqrt(float(without.covariance[0, 0])) * scale
+        b = float(without.blunder[0])
+        weight = math.exp(min((b / sd) ** 2 - size, 0.0) / 2) * sd / own.sd
+        one = slipped(judgement, replace(suspect, row=row, blunder=b, sd=sd, statistic=-b / sd))
+        cases.append(replace(one, weight=weight, instead=True, left_out=tuple(rows)))
+    return cases
+
+
+def _weighed(*cases: Slipped) -> list[Weighed]:
+    """Forms of all slips in the readings that may be in error, with their support, the best first."""
     other, rows = slips()
-    found = []
-    for row in rows:
-        forms = list(_different(_function(row["key"])(case)))
-        found += [
-            (row, form, row["prior"] / len(forms) * form.weight * _faces_agree(case, form) * _likelihood(case, form))
-            for form in forms
-        ]
-    total = other * _other(case) + sum(weight for _, _, weight in found)
-    near = [(row, form, weight / total) for row, form, weight in found if weight > 0]
-    return sorted(near, key=lambda one: -one[2])
+    found, total = [], sum(case.weight * other * _other(case) for case in cases)
+    for case in cases:
+        for row in rows:
+            forms = list(_different(_function(row["key"])(case)))
+            found += [Weighed(case, row, form, _weight(case, row, form, len(forms))) for form in forms]
+    total += sum(one.support for one in found)
+    near = [replace(one, support=one.support / total) for one in found if one.support > 0]
+    return sorted(near, key=lambda one: -one.support)
+
+
+def _weight(case: Slipped, row: dict[str, Any], form: Form, forms: int) -> float:
+    """p L of a form, one of so many."""
+    prior: float = case.weight * row["prior"] / forms * form.weight
+    return prior * _faces_agree(case, form) * _likelihood(case, form)
 
 
 def _different(forms: Iterator[Form]) -> Iterator[Form]:
@@ -143,8 +206,10 @@ def _apart(case: Slipped, mine: RawText, text: str, other: RawText) -> float:
 
 
 def _likelihood(case: Slipped, form: Form) -> float:
+    if form.any_amount:
+        return _other(case)
     miss = case.blunder - form.change
-    sd = math.hypot(case.sd, form.sd)
+    sd = form.miss_sd or math.hypot(case.sd, form.sd)
     t = (wrap(miss) if case.wraps else miss) / sd
     return math.exp(-t * t / 2) / (math.sqrt(TURN) * sd) if abs(t) <= FARTHEST else 0.0
 
@@ -155,9 +220,12 @@ def _other(case: Slipped) -> float:
     return 1 / (2 * abs(case.blunder) * math.log(max(largest / case.sd, 10.0)))
 
 
-def _cause(case: Slipped, row: dict[str, Any], form: Form, support: float) -> Cause:
+def _cause(one: Weighed) -> Cause:
+    case, form = one.case, one.form
     notation = case.raws[0].units.angle if case.raws else ""
-    pattern = row.get("gon", row["sentence"]) if notation in ("gon", "mil", "deg") else row["sentence"]
+    pattern = one.row.get("gon", one.row["sentence"]) if notation in ("gon", "mil", "deg") else one.row["sentence"]
     text = pattern.format(would=form.would, booked=form.booked, told=form.told)
+    if case.instead:
+        text = f"the reading in error may be {case.block.name(case.i)}: {text}"
     line = form.line or int(case.block.line[case.i])
-    return Cause(row["key"], text, form.would, support, f"{case.block.file}:{line}")
+    return Cause(one.row["key"], text, form.would, one.support, f"{case.block.file}:{line}")

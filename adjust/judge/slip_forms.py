@@ -3,11 +3,18 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 from adjust.book.raw_texts import RawText
 from adjust.network import Block
 from adjust.solver.design import State
 from adjust.solver.solution import Solution
+
+if TYPE_CHECKING:
+    from adjust.judge.leaving_out import Model
+
+FARTHEST = 2.5
+"""Standard deviations by which a form may miss the blunder; 1 in 80 right ones misses by more."""
 
 
 @dataclass(frozen=True)
@@ -28,6 +35,16 @@ class Slipped:
     sd: float
     suspects: frozenset[str] = frozenset()
     """Identifications of all suspects."""
+    model: Model | None = None
+    """All readings linearised at ``state``; None where a network has not been searched."""
+    left_out: tuple[int, ...] = ()
+    """Scalar rows without which the blunder was estimated, its own first."""
+    weight: float = 1.0
+    """Likelihood of its being the one in error against the suspect's, times the ratio of their standard deviations."""
+    instead: bool = False
+    """Whether it is not the suspect but a reading that cannot be told from it."""
+    sight: tuple[str, ...] = ()
+    """Identifications of the other readings of its sight, if all of them are suspects too."""
 
     @property
     def stations(self) -> tuple[str, ...]:
@@ -51,3 +68,7 @@ class Form:
     """Factor on the prior weight of this form, for what else speaks for or against it."""
     sd: float = 0.0
     """Standard deviation of ``change``, where it comes from another reading."""
+    miss_sd: float | None = None
+    """Standard deviation of the blunder minus ``change``, where the two hang together; None: they do not."""
+    any_amount: bool = False
+    """Whether the form explains every amount alike, as a sight to an unknown point does."""

@@ -25,8 +25,8 @@ MINUTES: dict[str, tuple[float, ...]] = {
     "mil": (1, 5),
 }
 """Steps of the next figure: minutes, tenths of a degree or gon, single mil."""
-STEPS = {"m": (0.1, 0.5, 1, 10), "ft": (0.1, 0.5, 1, 10, 100), "us-ft": (0.1, 0.5, 1, 10, 100)}
-"""Round steps of a tape, a staff or a display, in the table's unit."""
+STEPS = dict.fromkeys(("m", "ft", "us-ft"), (0.1, 0.5, 1.0, 10.0, 100.0))
+"""Round steps of a tape, a staff, a display or of typing, in the table's unit."""
 _QUADRANT = re.compile(r"([NSns])(\s*)(\d.*?)(\s*)([EWew])")
 
 

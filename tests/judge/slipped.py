@@ -1,13 +1,11 @@
-"""Jobs with one everyday slip in the book, for the study of likely causes.
+"""Jobs with everyday slips in the book, for the study of likely causes.
 
 The slip is made in the text of the table, independently of how the program looks for it: the cell is changed as a tired
-surveyor would change it, the job is read anew. Every planter returns the line it changed, or None where the row does
-not allow the slip.
+surveyor would change it, and the job is read anew. What was wrong by how much is told by the clean network alone.
 """
 
 from __future__ import annotations
 
-import csv
 import math
 import re
 from collections.abc import Callable
@@ -16,76 +14,28 @@ from pathlib import Path
 
 import numpy as np
 
+from tests.judge.slip_networks import SEC, Sheet, as_booked, dms, radians
 from tests.networks import random_job
 
-SEC = math.pi / 648000
+Rng = np.random.Generator
+LENGTHS = ("distance", "back_distance", "slope_distance", "rise", "back", "fore")
+DISTANCES = ("distance", "back_distance", "slope_distance")
+CIRCLES = ("direction", "angle", "horizontal_circle")
+ANGLES = (*CIRCLES, "zenith_angle", "elevation", "zenith_circle")
 
 
-@dataclass
-class Sheet:
-    """A table of a job as rows of text."""
-
-    path: Path
-    header: list[str]
-    rows: list[list[str]]
-
-    @classmethod
-    def of(cls, path: Path) -> Sheet:
-        """Read a table."""
-        rows = list(csv.reader(path.read_text("utf-8").splitlines()))
-        return cls(path, rows[0], rows[1:])
-
-    def get(self, i: int, column: str) -> str:
-        """A cell."""
-        return self.rows[i][self.header.index(column)]
-
-    def put(self, i: int, column: str, text: str) -> None:
-        """Change a cell and write the table."""
-        self.rows[i][self.header.index(column)] = text
-        with self.path.open("w", newline="", encoding="utf-8") as out:
-            csv.writer(out).writerows([self.header, *self.rows])
-
-
-def dms(radians: float) -> str:
-    """As booked: 123 45 56.7."""
-    tenths = round(radians / SEC * 10) % 12960000
-    return f"{tenths // 36000} {tenths // 600 % 60:02d} {tenths % 600 / 10:04.1f}"
-
-
-def radians(text: str) -> float:
-    """Of a booked angle."""
-    d, m, s = text.split()
-    return (int(d) * 3600 + int(m) * 60 + float(s)) * SEC
-
-
-def booked_job(rng: np.random.Generator, folder: Path, n: int, kinds: tuple[str, ...], control: str) -> Path:
+def booked_job(rng: Rng, folder: Path, n: int, kinds: tuple[str, ...], control: str) -> Path:
     """A random job with cells as a book has them: dms to 0.1 second, lengths to 0.1 mm."""
     random_job(rng, folder, n, kinds, control)
-    text = (folder / "job.toml").read_text().replace('angle = "deg"', 'angle = "dms"')
-    (folder / "job.toml").write_text(text)
-    for column, name in (("direction", "directions"), ("angle", "angles"), ("azimuth", "azimuths")):
-        if (folder / f"{name}.csv").exists():
-            sheet = Sheet.of(folder / f"{name}.csv")
-            for i in range(len(sheet.rows)):
-                sheet.rows[i][sheet.header.index(column)] = dms(math.radians(float(sheet.get(i, column))))
-            sheet.put(0, column, sheet.get(0, column))
-    for path in folder.glob("*.csv"):
-        sheet = Sheet.of(path)
-        for column in ("distance", "rise"):
-            if column in sheet.header:
-                at = sheet.header.index(column)
-                for row in sheet.rows:
-                    row[at] = f"{float(row[at]):.4f}"
-                sheet.put(0, column, sheet.get(0, column))
+    as_booked(folder)
     return folder
 
 
-Planter = Callable[[np.random.Generator, Sheet, int, str], "str | None"]
-"""Gives the wrong text of a cell."""
+Change = Callable[[Rng, str, str], "str | None"]
+"""The wrong text of a cell, from the column's name and the right text; None where it does not allow the slip."""
 
 
-def _digits(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str | None:
-    text = sheet.get(i, column)
+def _digits(rng: Rng, column: str, text: str) -> str | None:
     pairs = [m.start() for m in re.finditer(r"(?=\d\d)", text) if text[m.start()] != text[m.start() + 1]]
     if not pairs:
         return None
@@ -93,120 +43,212 @@ def _digits(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str 
     return text[:k] + text[k + 1] + text[k] + text[k + 2 :]
 
 
-def _angle(steps: tuple[float, ...]) -> Planter:
-    def plant(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str | None:
-        return dms(radians(sheet.get(i, column)) + float(rng.choice(steps)) * int(rng.choice([-1, 1])) * 3600 * SEC)
-
-    return plant
-
-
-def _step(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str | None:
-    return f"{float(sheet.get(i, column)) + float(rng.choice([0.1, 0.5, 1, 10])) * int(rng.choice([-1, 1])):.4f}"
+def _moved(column: str, text: str, by: float) -> str:
+    """The text with its value changed by radians or metres."""
+    if column in ANGLES:
+        return dms(radians(text) + by, column != "elevation")
+    return f"{float(text) + by:.4f}"
 
 
-def _sign(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str | None:
-    text = sheet.get(i, column)
+def _angle(steps: tuple[float, ...]) -> Change:
+    def change(rng: Rng, column: str, text: str) -> str | None:
+        return _moved(column, text, float(rng.choice(steps)) * int(rng.choice([-1, 1])) * 3600 * SEC)
+
+    return change
+
+
+def _length(steps: tuple[float, ...]) -> Change:
+    def change(rng: Rng, column: str, text: str) -> str | None:
+        possible = steps if column in DISTANCES else [step for step in steps if step <= 10]
+        return _moved(column, text, float(rng.choice(possible)) * int(rng.choice([-1, 1])))
+
+    return change
+
+
+def _sign(rng: Rng, column: str, text: str) -> str | None:
     return text[1:] if text.startswith("-") else "-" + text
 
 
-def _other_way(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str | None:
-    return dms(2 * math.pi - radians(sheet.get(i, column)))
+def _other_way(rng: Rng, column: str, text: str) -> str | None:
+    return dms(-radians(text))
 
 
-def _half(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str | None:
-    return dms(radians(sheet.get(i, column)) + math.pi)
+def _half(rng: Rng, column: str, text: str) -> str | None:
+    return dms(radians(text) + math.pi)
 
 
-def _constant(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str | None:
-    return f"{float(sheet.get(i, column)) + float(rng.choice([0.0175, 0.03, 0.0344])) * int(rng.choice([-1, 1])):.4f}"
-
-
-def _feet(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str | None:
-    return f"{float(sheet.get(i, column)) / 0.3048:.4f}"
+def _feet(rng: Rng, column: str, text: str) -> str | None:
+    return f"{float(text) / 0.3048:.4f}"
 
 
 @dataclass(frozen=True)
 class Sort:
-    """A slip: where it can happen and what it does."""
+    """A slip: where it can happen and what it does to a cell; None where it is more than a cell."""
 
     slip: str
     columns: tuple[str, ...]
-    plant: Planter | None
+    change: Change | None
+    shapes: tuple[str, ...]
+    """Shapes of networks it is planted in."""
 
 
+EVERYWHERE = ("traverse", "braced", "level", "space", "rounds", "staff")
+WITH_ANGLES = ("traverse", "braced", "space", "rounds")
 SORTS = (
-    Sort("digits-swapped", ("distance", "direction", "angle", "rise"), _digits),
-    Sort("degree-slip", ("direction", "angle"), _angle((1.0, 10.0))),
-    Sort("minute-slip", ("direction", "angle"), _angle((1 / 60, 10 / 60, 30 / 60))),
-    Sort("round-step", ("distance", "rise"), _step),
-    Sort("sign", ("rise",), _sign),
-    Sort("other-way", ("angle",), _other_way),
-    Sort("half-circle", ("direction", "angle"), _half),
-    Sort("wrong-station", ("distance", "direction", "angle", "rise"), None),
-    Sort("reflector-constant", ("distance",), _constant),
-    Sort("feet-for-metres", ("distance",), _feet),
-    Sort("pointings-swapped", ("direction",), None),
-    Sort("height-forgotten", ("zenith_angle",), None),
-    Sort("slope-for-horizontal", ("distance",), None),
+    Sort("digits-swapped", (*LENGTHS, *ANGLES), _digits, EVERYWHERE),
+    Sort("degree-slip", ANGLES, _angle((1.0, 10.0)), WITH_ANGLES),
+    Sort("minute-slip", ANGLES, _angle((1 / 60, 10 / 60, 30 / 60)), WITH_ANGLES),
+    Sort("round-step", LENGTHS, _length((0.1, 0.5, 1.0, 10.0, 100.0)), EVERYWHERE),
+    Sort("sign", ("rise", "elevation"), _sign, ("level", "space")),
+    Sort("other-way", ("angle",), _other_way, ("traverse", "braced")),
+    Sort("half-circle", CIRCLES, _half, WITH_ANGLES),
+    Sort("wrong-station", (*LENGTHS, *ANGLES), None, EVERYWHERE),
+    Sort("reflector-constant", DISTANCES, _length((0.0175, 0.03, 0.0344)), WITH_ANGLES),
+    Sort("feet-for-metres", DISTANCES, _feet, WITH_ANGLES),
+    Sort("pointings-swapped", ("direction", "horizontal_circle"), None, ("braced", "space", "rounds")),
+    Sort("height-forgotten", (), None, ("space", "rounds")),
+    Sort("slope-for-horizontal", ("distance",), None, ("space",)),
 )
-IN_SPACE = ("height-forgotten", "slope-for-horizontal")
-TABLE = {"distance": "distances", "direction": "directions", "angle": "angles"}
+SOME = Sort("some amount", (*LENGTHS, *ANGLES), None, EVERYWHERE)
+UNKNOWN = Sort("a point not in the job", ("horizontal_circle",), None, ("rounds",))
+"""A sight in both faces to a point that no table has: the slip is a wrong station."""
 
 
-def tables(folder: Path, column: str) -> list[Sheet]:
-    """The tables that have a column of readings."""
-    return [s for path in sorted(folder.glob("*.csv")) if column in (s := Sheet.of(path)).header]
+@dataclass(frozen=True)
+class Planted:
+    """One change of the book."""
+
+    file: str
+    row: int
+    column: str
+    right: str
+    """The text that was there."""
 
 
-def plant(rng: np.random.Generator, folder: Path, sort: Sort) -> list[tuple[str, int]] | None:
-    """Make the slip in one random row; places of the rows that are wrong now."""
-    if sort.slip in IN_SPACE:
-        return _in_space(rng, folder, sort)
-    choices = [(sheet, column) for column in sort.columns for sheet in tables(folder, column)]
+def tables(folder: Path) -> list[Sheet]:
+    """The tables with readings."""
+    return [Sheet.of(path) for path in sorted(folder.glob("*.csv")) if path.stem not in ("control", "stations")]
+
+
+def _cells(folder: Path, columns: tuple[str, ...]) -> list[tuple[Sheet, str]]:
+    """Columns of readings; ``back`` and ``fore`` are sights in a level book, elsewhere names."""
+    return [
+        (sheet, column)
+        for sheet in tables(folder)
+        for column in columns
+        if column in sheet.header and (column not in ("back", "fore") or "line" in sheet.header)
+    ]
+
+
+def plant(rng: Rng, folder: Path, sort: Sort) -> Planted | None:
+    """Make the slip in one random row; None where it does not allow the slip."""
+    if sort.slip == "slope-for-horizontal":
+        return _horizontal(rng, folder)
+    if sort.slip == "height-forgotten":
+        choices = [(s, "target_height") for s in tables(folder) if "target_height" in s.header]
+    else:
+        choices = _cells(folder, sort.columns)
     if not choices:
         return None
     sheet, column = choices[int(rng.integers(len(choices)))]
     i = int(rng.integers(len(sheet.rows)))
-    name = sheet.path.name
+    right = sheet.get(i, column)
+    if not right:
+        return None
+    found = Planted(sheet.path.name, i, column, right)
     if sort.slip == "wrong-station":
-        end = "to" if "to" in sheet.header else "second"
-        names = sorted({row[sheet.header.index(end)] for row in sheet.rows} - set(sheet.rows[i]))
-        if not names:
-            return None
-        sheet.put(i, end, str(rng.choice(names)))
-        return [(name, i + 2)]
+        return found if _wrong_station(rng, folder, sheet, i) else None
+    if sort is UNKNOWN:
+        by = (rng.uniform(0.01, 6), rng.uniform(0.01, 0.2), rng.uniform(5, 100))
+        for j in _pointing(sheet, i):
+            down = by[1] if sheet.get(j, "face") == "1" else -by[1]
+            for c, b in (("horizontal_circle", by[0]), ("zenith_circle", down), ("slope_distance", by[2])):
+                sheet.put(j, c, _moved(c, sheet.get(j, c), float(b)))
+        return found
     if sort.slip == "pointings-swapped":
-        same = [j for j in range(len(sheet.rows)) if j != i
-                and all(sheet.get(i, c) == sheet.get(j, c) for c in ("at", "set") if c in sheet.header)]  # fmt: skip
-        if not same:
-            return None
-        j = int(rng.choice(same))
-        one, other = sheet.get(i, column), sheet.get(j, column)
-        sheet.put(i, column, other)
-        sheet.put(j, column, one)
-        return [(name, i + 2), (name, j + 2)]
-    assert sort.plant is not None
-    wrong = sort.plant(rng, sheet, i, column)
-    if wrong is None or wrong == sheet.get(i, column):
+        return found if _swapped(rng, sheet, i, column) else None
+    if sort.slip == "height-forgotten":
+        for j in _pointing(sheet, i):
+            sheet.put(j, column, "0")
+        return found
+    assert sort.change is not None
+    wrong = sort.change(rng, column, right)
+    if wrong is None or wrong == right:
         return None
     sheet.put(i, column, wrong)
-    return [(name, i + 2)]
+    if sort.slip == "reflector-constant":  # the same reflector in both faces
+        for j in _pointing(sheet, i):
+            if j != i:
+                sheet.put(j, column, _moved(column, sheet.get(j, column), float(wrong) - float(right)))
+    return found
 
 
-def _in_space(rng: np.random.Generator, folder: Path, sort: Sort) -> list[tuple[str, int]] | None:
-    """The target's height left out of a zenith angle; the display's slope distance booked as the horizontal one."""
-    zeniths = Sheet.of(folder / "zenith_angle.csv")
-    if sort.slip == "height-forgotten":
-        i = int(rng.integers(len(zeniths.rows)))
-        zeniths.put(i, "target_height", "0")
-        return [("zenith_angle.csv", i + 2)]
+def amount(rng: Rng, folder: Path) -> Planted | None:
+    """A random cell for an error of any size; ``moved`` makes it."""
+    choices = _cells(folder, SOME.columns)
+    sheet, column = choices[int(rng.integers(len(choices)))]
+    i = int(rng.integers(len(sheet.rows)))
+    return Planted(sheet.path.name, i, column, sheet.get(i, column)) if sheet.get(i, column) else None
+
+
+def moved(folder: Path, at: Planted, by: float) -> None:
+    """Make the text of a cell that of its right value changed by metres or radians."""
+    Sheet.of(folder / at.file).put(at.row, at.column, _moved(at.column, at.right, by))
+
+
+def _pointing(sheet: Sheet, i: int) -> list[int]:
+    """Rows of one pointing: those of both faces in a raw book, else the row itself."""
+    if "face" not in sheet.header:
+        return [i]
+    same = ("at", "to", "set")
+    return [j for j in range(len(sheet.rows)) if all(sheet.get(j, c) == sheet.get(i, c) for c in same)]
+
+
+def _wrong_station(rng: Rng, folder: Path, sheet: Sheet, i: int) -> bool:
+    """Another name of the job at the far end; a mark's name at an end of a levelled line."""
+    marks = [Sheet.of(path) for path in (folder / "stations.csv", folder / "control.csv") if path.exists()]
+    names_in = marks if (folder / "stations.csv").exists() else [*marks, sheet]
+    everyone = {row[0] for one in names_in for row in one.rows}
+    columns = ("station",) if "line" in sheet.header else ("second", "to", "fore")
+    column = next(c for c in columns if c in sheet.header)
+    if column == "station" and sheet.get(i, "back") and sheet.get(i, "fore"):
+        return False  # a change point: its name is the line's own
+    set_of = [row for j, row in enumerate(sheet.rows) if "set" in sheet.header
+              and all(sheet.get(j, c) == sheet.get(i, c) for c in ("at", "set"))]  # fmt: skip
+    # the same target twice in a set would be seen while reading
+    names = sorted(everyone - {name for row in [sheet.rows[i], *set_of] for name in row})
+    if not names:
+        return False
+    other = str(rng.choice(names))
+    for j in _pointing(sheet, i):
+        sheet.put(j, column, other)
+    return True
+
+
+def _swapped(rng: Rng, sheet: Sheet, i: int, column: str) -> bool:
+    """Two readings of a set in each other's row; in a raw book those of one face, or of both."""
+    same = [j for j in range(len(sheet.rows)) if sheet.get(j, "to") != sheet.get(i, "to")
+            and all(sheet.get(i, c) == sheet.get(j, c) for c in ("at", "set", "face"))]  # fmt: skip
+    if not same:
+        return False
+    j = int(rng.choice(same))
+    pairs = [(i, j)]
+    if "face" in sheet.header and rng.random() < 0.5:
+        pairs = [(a, b) for a in _pointing(sheet, i) for b in _pointing(sheet, j)
+                 if sheet.get(a, "face") == sheet.get(b, "face")]  # fmt: skip
+    for a, b in pairs:
+        one, other = sheet.get(a, column), sheet.get(b, column)
+        sheet.put(a, column, other)
+        sheet.put(b, column, one)
+    return True
+
+
+def _horizontal(rng: Rng, folder: Path) -> Planted | None:
+    """The display's slope distance booked as the horizontal one."""
     if not (folder / "ground.csv").exists():
         return None
-    ground = Sheet.of(folder / "ground.csv")
+    ground, shown = Sheet.of(folder / "ground.csv"), (folder / "displayed.txt").read_text("utf-8").split()
     i = int(rng.integers(len(ground.rows)))
-    angle = {(row[0], row[1]): float(row[zeniths.header.index("zenith_angle")]) for row in zeniths.rows}
-    z = angle.get((ground.rows[i][0], ground.rows[i][1]))
-    if z is None:
-        return None
-    ground.put(i, "distance", f"{float(ground.get(i, 'distance')) / math.sin(math.radians(z)):.4f}")
-    return [("ground.csv", i + 2)]
+    found = Planted("ground.csv", i, "distance", ground.get(i, "distance"))
+    ground.put(i, "distance", shown[i])
+    return found
