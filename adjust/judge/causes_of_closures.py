@@ -18,8 +18,8 @@ closures at once beats two slips, and one that would break a met closure is out.
 with c^ the best amount and s_c its standard deviation, and support = S(r, h) / sum of all S over the readings of the
 closure (Bayes' rule for a closed list: Jeffreys 1961, chapter 5). A form counts that misses c^ by no more than FARTHEST
 standard deviations and leaves misclosures that chance leaves once in 1 / UNLIKELY. Said is what comes to a support of
-0.5, and only where the forms are not crowded: in [c^/2, 2 c^] those of the plausible readings may cover CROWDED at most,
-else an arbitrary amount would fit one of them.
+0.5, and only where the forms are not crowded: of [c^/2, 2 c^] those of the plausible readings may cover the share
+CROWDED at most, else an arbitrary amount would fit one of them.
 """
 
 from __future__ import annotations
@@ -120,7 +120,7 @@ class _Weighing:
                 for k, (one, _) in enumerate(self.found)]  # fmt: skip
 
     def _elsewhere(self, k: int) -> float:
-        one, made = self.found[k]
+        made = self.found[k][1]
         (w,), (cov,) = self._stacked([k], None)
         s = np.sqrt(np.diag(cov))
         out, plane = math.log(ELSEWHERE), []
@@ -265,4 +265,3 @@ def _crowd(changes: list[float], at: float, sd: float) -> float:
         if last > first:
             covered, end = covered + last - first, last
     return covered / (high - low) if high > low else 1.0
-

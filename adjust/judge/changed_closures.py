@@ -43,8 +43,8 @@ def _partials(forms: Iterable[Form], keys: list[Key]) -> Array:
     some = list(forms)
     out = np.zeros((len(some), len(keys)))
     for one, row in zip(some, out, strict=True):
-        for key, by in (*one.rows.items(), *one.marks.items()):
-            row[place[key]] = by
+        by: dict[Key, float] = {**one.rows, **one.marks}
+        row[[place[key] for key in by]] = list(by.values())
     return out
 
 

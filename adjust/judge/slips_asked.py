@@ -60,7 +60,10 @@ class Weighed:
 def asked(job: Job, block: Block, i: int) -> Asked:
     """Row ``i`` of a block with its texts."""
     kind = KINDS[block.kind]
-    raws = raw_texts(job, block, i) if len(kind.parts) <= 1 else ()
+    try:
+        raws = raw_texts(job, block, i) if len(kind.parts) <= 1 else ()
+    except OSError:  # the book was moved away since it was read
+        raws = ()
     return Asked(block, i, raws, block.kind, NOUNS.get(block.kind, block.kind), kind.wraps)
 
 

@@ -26,7 +26,7 @@ from adjust.judge.causes_of_refusals import start_causes
 from adjust.judge.naming import amount, called, together
 from adjust.judge.slips_asked import told as slip_words
 from adjust.kinds import KINDS
-from adjust.network import Block, Network
+from adjust.network import Block, Bools, Network
 from adjust.solver.solution import Solution
 from adjust.units import LENGTHS
 
@@ -130,12 +130,24 @@ class _Contradictions:
 
     def disagreeing(self) -> list[str]:
         """Readings that the failed start, as far as it goes, disagrees with."""
-        return [" ".join(t for t in (_doubtful(self.job, place, size), self._slips(place)) if t)
+        return [" ".join(t for t in (_doubtful(self.job, place, size), self._slips(*self._placed(place))) if t)
                 for place, size in self.start.doubtful[:MOST_NAMED]]  # fmt: skip
 
-    def _slips(self, place: Place) -> str:
+    def _slips(self, network: Network, place: Place) -> str:
         """'Likeliest slip: ... Look at FILE:LINE.' of a reading that the others can do without; '' where none fits."""
-        return slip_words(start_causes(self.job, place, _less(self.network, place)))
+        return slip_words(start_causes(replace(self.job, network=network), place, _less(network, place)))
+
+    def _placed(self, place: Place) -> tuple[Network, Place]:
+        """The network as far as the start goes, begun there, and where a reading stands in it."""
+        lost: Bools = np.isnan(self.start.positions[:, 0])
+        here, blocks = place, []
+        for b, block in enumerate(self.network.blocks):
+            away: Bools = np.asarray(lost[block.stations].reshape(len(block), -1).any(axis=1))
+            keep = ~away if KINDS[block.kind].says in ("length", "pointings") else np.ones(len(block), dtype=bool)
+            blocks.append(block.take(np.flatnonzero(keep)))
+            here = (b, int(keep[: place[1]].sum())) if b == place[0] else here
+        stations = replace(self.network.stations, start=self.start.positions)
+        return replace(self.network, blocks=tuple(blocks), stations=stations, clusters=()), here
 
     # ---- readings left out
 
@@ -144,7 +156,7 @@ class _Contradictions:
         trials = [t for t in (self._without(one) for one in self._candidates()[:TRIED]) if t is not None]
         fewest = min((left for left, _, _ in trials), default=0)
         best = [(words, place) for left, words, place in trials if left == fewest][:MOST_NAMED]
-        named = [(words, self._slips(place)) for words, place in best]
+        named = [(words, self._slips(self.network, place)) for words, place in best]
         return [f"{words}. {slips}" if slips else words for words, slips in named]
 
     def _candidates(self) -> list[Place]:
@@ -157,7 +169,7 @@ class _Contradictions:
         return [self._clues.sources[s] for s in sources] if len(sources) <= LARGE else []
 
     def _without(self, place: Place) -> tuple[int, str, Place] | None:
-        """(readings still doubtful, sentence, place) of a start without a reading; None where it fails or it fits it."""
+        """(readings still doubtful, sentence, place) of a start without a reading; None where it fails or fits it."""
         start = find_start(_less(self.network, place))
         size = None if start.failures else self._misfit(start, place)
         if size is None:
