@@ -38,7 +38,7 @@ from adjust.book.job import Job
 from adjust.judge.booked import Booked, Form
 from adjust.judge.causes import FARTHEST, LARGEST_M, Cause, slips
 from adjust.judge.changed_closures import Key, Made
-from adjust.judge.slips_asked import Weighed, cause, forms, listed, other, reading
+from adjust.judge.slips_asked import Books, Weighed, cause, forms, listed, other, reading
 from adjust.kinds import KINDS
 from adjust.network import Array, Ints
 from adjust.units import TURN, wrap
@@ -61,26 +61,35 @@ GRID = 72
 """Trial amounts round the circle for an angle of a walk, every 5 degrees; Newton's method finds the rest."""
 STEPS = 6
 MOST_FAILING, MOST_KEYS = 30, 600
-"""Failing closures, and readings in them and beside them, up to which they are weighed: many fail by no one slip."""
+"""Failing closures up to which they are weighed (many fail by no one slip), and readings in and beside those that
+share readings: a second's work."""
 
 
 def likely(job: Job, booked: Booked, found: Sequence[tuple[Closure, Made]]) -> list[tuple[Cause, ...]]:
     """Likely slips of each closure, the best first; none of those that are met, or where nothing fits."""
     failing = [k for k, (one, _) in enumerate(found) if one.verdict == NOT_MET]
-    nothing: list[tuple[Cause, ...]] = [()] * len(found)
-    if not failing or len(failing) > MOST_FAILING:
-        return nothing
-    touched = {key for k in failing for key in found[k][1].keys if isinstance(key, int)}
-    near = [k for k, (_, made) in enumerate(found) if k in failing or not touched.isdisjoint(made.keys)]
-    keys = list(dict.fromkeys(key for k in near for key in found[k][1].keys))
-    if len(keys) > MOST_KEYS:
-        return nothing
-    unit = [Form(0.0, {key: 1.0}) if isinstance(key, int) else Form(0.0, {}, {key: 1.0}) for key in keys]
-    weighing = _Weighing(job, keys, booked.covariance(unit), [found[k] for k in near])
-    for n, k in enumerate(near):
-        if k in failing:
-            nothing[k] = weighing.causes(n)
-    return nothing
+    out: list[tuple[Cause, ...]] = [()] * len(found)
+    for some in _together(failing, found) if len(failing) <= MOST_FAILING else []:
+        touched = {key for k in some for key in found[k][1].keys if isinstance(key, int)}
+        near = [*some, *(k for k, (_, made) in enumerate(found) if k not in failing and touched & set(made.keys))]
+        keys = list(dict.fromkeys(key for k in near for key in found[k][1].keys))
+        if len(keys) <= MOST_KEYS:
+            unit = [Form(0.0, {key: 1.0}) if isinstance(key, int) else Form(0.0, {}, {key: 1.0}) for key in keys]
+            weighing = _Weighing(job, keys, booked.covariance(unit), [found[k] for k in near])
+            for n, k in enumerate(some):
+                out[k] = weighing.causes(n)
+    return out
+
+
+def _together(failing: list[int], found: Sequence[tuple[Closure, Made]]) -> list[list[int]]:
+    """The failing closures in groups that share no reading with one another."""
+    groups: list[tuple[list[int], set[Key]]] = []
+    for k in failing:
+        keys: set[Key] = {key for key in found[k][1].keys if isinstance(key, int)}
+        mine = [one for one in groups if one[1] & keys]
+        groups = [one for one in groups if not one[1] & keys]
+        groups.append((sorted([k, *(n for some, _ in mine for n in some)]), set().union(keys, *(of for _, of in mine))))
+    return [some for some, _ in groups]
 
 
 @dataclass(frozen=True)
@@ -107,6 +116,10 @@ class _Weighing:
     @cached_property
     def _place(self) -> dict[Key, int]:
         return {key: n for n, key in enumerate(self.keys)}
+
+    @cached_property
+    def _books(self) -> Books:
+        return Books(self.job)
 
     @cached_property
     def _columns(self) -> list[Ints]:
@@ -212,7 +225,7 @@ class _Weighing:
         by_other = slips()[0] * other(self._kind(row), at, sd) * math.sqrt(TURN) * sd
         by_other *= math.exp(float(self._fits(some, w, cov)[1][0]) - base)
         block, i = self.job.network.blocks[rows.block[row]], int(rows.row[row])
-        weighed = forms(self.job, block, i)
+        weighed = forms(self._books, block, i)
         near = [one for one in weighed if abs(self._miss(row, one, at)) <= (FARTHEST + 1) * sd]
         found = []
         if near:

@@ -43,8 +43,8 @@ def _partials(forms: Iterable[Form], keys: list[Key]) -> Array:
     some = list(forms)
     out = np.zeros((len(some), len(keys)))
     for one, row in zip(some, out, strict=True):
-        by: dict[Key, float] = {**one.rows, **one.marks}
-        row[[place[key] for key in by]] = list(by.values())
+        for part in (one.rows, one.marks):
+            row[[place[key] for key in part]] = list(part.values())
     return out
 
 

@@ -10,10 +10,13 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from functools import cached_property
 from typing import Any
 
 from adjust.book.job import Job
 from adjust.book.raw_texts import RawText, raw_texts
+from adjust.book.settings import Table
+from adjust.errors import InputError
 from adjust.judge import slips_of_text
 from adjust.judge.causes import (
     AS_GOOD,
@@ -47,6 +50,31 @@ class Asked:
 
 
 @dataclass(frozen=True)
+class Books:
+    """The tables of a job, each read once: a closure asks for the texts of hundreds of readings."""
+
+    job: Job
+
+    @property
+    def tables(self) -> tuple[Table, ...]:
+        """Those of the job."""
+        return self.job.tables
+
+    @cached_property
+    def _read(self) -> dict[tuple[str, tuple[str, ...]], dict[int, tuple[str, ...]]]:
+        return {}
+
+    def booked(self, file: str, columns: tuple[str, ...] = ()) -> dict[int, tuple[str, ...]]:
+        """The cells of a table by line; none of a book that was moved away or changed since."""
+        if (file, columns) not in self._read:
+            try:
+                self._read[file, columns] = self.job.booked(file, columns)
+            except (OSError, InputError):
+                self._read[file, columns] = {}
+        return self._read[file, columns]
+
+
+@dataclass(frozen=True)
 class Weighed:
     """One form of a slip in a reading; ``prior`` is its share of the slip's weight."""
 
@@ -57,19 +85,17 @@ class Weighed:
     prior: float
 
 
-def asked(job: Job, block: Block, i: int) -> Asked:
+def asked(books: Books, block: Block, i: int) -> Asked:
     """Row ``i`` of a block with its texts."""
-    kind = KINDS[block.kind]
-    try:
-        raws = raw_texts(job, block, i) if len(kind.parts) <= 1 else ()
-    except OSError:  # the book was moved away since it was read
-        raws = ()
+    kind, line = KINDS[block.kind], int(block.line[i])
+    there = len(kind.parts) <= 1 and line in books.booked(block.file, block.booked or kind.value)
+    raws = raw_texts(books, block, i) if there else ()  # type: ignore[arg-type] # asks Books for what a Job has too
     return Asked(block, i, raws, block.kind, NOUNS.get(block.kind, block.kind), kind.wraps)
 
 
-def forms(job: Job, block: Block, i: int) -> list[Weighed]:
+def forms(books: Books, block: Block, i: int) -> list[Weighed]:
     """Every form that a slip of text can take in a reading."""
-    case = asked(job, block, i)
+    case = asked(books, block, i)
     out = []
     for slip in slips()[1]:
         function = getattr(slips_of_text, slip["key"].replace("-", "_"), None)
@@ -99,7 +125,7 @@ def of_amount(job: Job, block: Block, i: int, amount: float, sd: float) -> tuple
     """Likely slips of a reading that is ``amount`` larger than the others have it, known to ``sd``; the best first."""
     wraps = KINDS[block.kind].wraps
     found = []
-    for one in forms(job, block, i):
+    for one in forms(Books(job), block, i):
         miss = amount - one.form.change
         t = (wrap(miss) if wraps else miss) / sd
         if abs(t) <= FARTHEST:

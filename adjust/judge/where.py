@@ -366,6 +366,8 @@ def with_common(job: Job, closures: tuple[Closure, ...]) -> tuple[Closure, ...]:
             these = f"{what} {named[0]} is" if len(named) == 1 else f"{what}s {' and '.join(named[:MOST])}{rest} are"
             text = f"{these} common to all {len(failing)} that fail and in none that closes"
             for k in failing:
+                if len(named) == 1 and out[k].likely:  # the slip is in it, with text and place
+                    continue
                 out[k] = replace(out[k], sentence="; ".join(s for s in (text, out[k].sentence) if s))
     return tuple(out)
 
