@@ -2,9 +2,9 @@
 
     python -m tests.judge.refusing_study [COUNT]
 
-Networks of ``tests.networks`` (6 to 12 stations, 20 to 60 % of the readings kept, no starting coordinates) get one gross
-slip in the text of a random row. Of those that do not settle or have no start are counted: the wrong reading named, and
-its likeliest slip right, silent or wrong.
+Networks of ``tests.networks`` (6 to 12 stations, 20 to 60 % of the readings kept, no starting coordinates) get one
+gross slip in the text of a random row. Of those that do not settle or have no start are counted: the wrong reading
+named, and its likeliest slip right, silent or wrong.
 """
 
 from __future__ import annotations
@@ -28,7 +28,7 @@ from tests.judge.unsettled_study import Wrong
 SEED = 20261222
 MIXES = (("distances", "directions"), ("distances", "angles"), ("angles", "azimuths", "distances"),
          ("directions", "distances", "angles"))  # fmt: skip
-GROSS = ("digits-swapped", "degree-slip", "half-circle", "other-way", "feet-for-metres")
+GROSS = ("digits-swapped", "degree-slip", "other-way", "half-circle", "feet-for-metres")
 
 
 def refused_by(number: int, folder: Path) -> Wrong | None:
