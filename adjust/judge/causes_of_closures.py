@@ -39,6 +39,7 @@ from adjust.judge.booked import Booked, Form
 from adjust.judge.causes import FARTHEST, LARGEST_M, Cause, slips
 from adjust.judge.changed_closures import Key, Made
 from adjust.judge.slips_asked import Books, Weighed, cause, forms, listed, other, reading
+from adjust.judge.where import NOT_MET
 from adjust.kinds import KINDS
 from adjust.network import Array, Ints
 from adjust.units import TURN, wrap
@@ -46,7 +47,6 @@ from adjust.units import TURN, wrap
 if TYPE_CHECKING:
     from adjust.judge.closures import Closure
 
-NOT_MET = "not met"
 ELSEWHERE = 0.05
 """Weight of a slip elsewhere in a failing closure: of a few tens of readings one in a thousand is a slip."""
 UNLIKELY = 0.002

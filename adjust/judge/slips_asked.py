@@ -151,7 +151,7 @@ def cause(one: Weighed, reading: str, support: float) -> Cause:
 def reading(names: tuple[str, ...], block: Block, i: int) -> str:
     """'angle B to D at C', 'rise A to B', 'pointing A to B'."""
     ends = [names[s] for s in block.stations[i]]
-    where = " to ".join(ends) if len(ends) < 3 else f"{ends[1]} to {ends[2]} at {ends[0]}"
+    where = " to ".join(ends) if len(ends) < 3 else " at ".join([" to ".join(ends[1:]), ends[0]])
     return f"{NOUNS.get(block.kind, kind_word(block.kind))} {where}"
 
 

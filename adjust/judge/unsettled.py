@@ -78,16 +78,16 @@ def words(job: Job, stopped: NotSettled) -> list[str]:
 
 def _alone(job: Job, stopped: NotSettled, trial: _Trial) -> str:
     (row,), (size,) = trial.rows, trial.amounts
-    return (f"{_called(job, stopped, row)} disagrees with the others by about {_amount(job, stopped, row, size)}: "
-            f"without it the adjustment settles, with it it does not; check it in the book{_slips(job, stopped, trial)}"
-            )  # fmt: skip
+    text = (f"{_called(job, stopped, row)} disagrees with the others by about {_amount(job, stopped, row, size)}: "
+            "without it the adjustment settles, with it it does not; check it in the book")  # fmt: skip
+    return "".join([text, *_slips(job, stopped, trial)])
 
 
-def _slips(job: Job, stopped: NotSettled, trial: _Trial) -> str:
-    """'. Likeliest slip: ... Look at FILE:LINE.' of the readings of a trial; '' where nothing fits."""
+def _slips(job: Job, stopped: NotSettled, trial: _Trial) -> list[str]:
+    """'. Likeliest slip: ... Look at FILE:LINE.' of the readings of a trial, as far as some fit."""
     causes = unsettled_causes(job, stopped.iteration, trial.state, trial.rows)
-    told = [likeliest for likeliest in (slip_words(one) for one in causes) if likeliest]
-    return "".join(f"{'.' if n == 0 else ''} {one}" for n, one in enumerate(told))
+    told = [words for words in (slip_words(one) for one in causes) if words]
+    return [f". {words}" if n == 0 else f" {words}" for n, words in enumerate(told)]
 
 
 def _together(job: Job, stopped: NotSettled, trial: _Trial) -> str:
@@ -95,8 +95,9 @@ def _together(job: Job, stopped: NotSettled, trial: _Trial) -> str:
         return _alone(job, stopped, trial)
     who = together([_called(job, stopped, r) for r in trial.rows])
     by = together([_amount(job, stopped, r, a) for r, a in zip(trial.rows, trial.amounts, strict=True)])
-    return (f"without {who} together the adjustment settles, with them it does not: they differ from the others by "
-            f"about {by}; check them in the book{_slips(job, stopped, trial)}")  # fmt: skip
+    text = (f"without {who} together the adjustment settles, with them it does not: they differ from the others by "
+            f"about {by}; check them in the book")  # fmt: skip
+    return "".join([text, *_slips(job, stopped, trial)])
 
 
 def _thin(stopped: NotSettled) -> list[str]:
