@@ -4,6 +4,8 @@ tests/judge/closing_causes_study.py."""
 from __future__ import annotations
 
 import math
+import re
+import shutil
 from itertools import pairwise
 from pathlib import Path
 
@@ -167,6 +169,38 @@ def test_a_met_loop_clears_its_lines(tmp_path: Path) -> None:
     )
     assert bad.verdict == NOT_MET
     assert {cause.place for cause in bad.likely} == {"levelled.csv:3", "levelled.csv:4"}
+
+
+def test_one_face_of_a_pointing_explains_four_triangles(tmp_path: Path) -> None:
+    """Ten minutes in the first face are five in the mean; with the job's limits it would not even come to a mean."""
+    job = tmp_path / "job"
+    shutil.copytree(Path(__file__).parents[2] / "networks" / "spillway-pillars", job,
+                    ignore=shutil.ignore_patterns("record"))  # fmt: skip
+    toml = (job / "job.toml").read_text("utf-8")
+    assert "[rejection]" in toml
+    (job / "job.toml").write_text(re.sub(r"\[rejection\][^\n]*\n(?:[^\[\n].*\n|\n)*", "", toml), "utf-8")
+    text = (job / "rounds.csv").read_text("utf-8")
+    (job / "rounds.csv").write_text(text.replace("322 41 33.8", "322 51 33.8"), "utf-8")
+    bad = [one for one in closures(adjust.read(job)) if one.verdict == NOT_MET]
+    assert len(bad) == 4
+    told = "in the pointing K1 to S1 the minutes were misread, 322 51 33.8 for 322 41 33.8 (rounds.csv:7)"
+    assert {one.sentence for one in bad} == {f"likeliest slip: {told}"}
+
+
+def test_a_staff_of_a_raw_level_book(tmp_path: Path) -> None:
+    """A fore sight read a metre too large; nothing tells it from the other sights of the loop that could be so."""
+    folder = tmp_path / "staff"
+    folder.mkdir()
+    (folder / "job.toml").write_text(
+        '[units]\nlength = "m"\nangle = "dms"\n[instruments.level]\nlevelling = "1 mm*sqrt(km)"\n'
+    )
+    (folder / "control.csv").write_text("station,height\nA,50\n")
+    rows = ("L,A,1.4215,,40,", "L,B,1.2034,2.7317,35,40", "L,A,,0.8932,,35")  # true: 1.7317
+    head = "line,station,back,fore,back_length,fore_length\n"
+    (folder / "staff.csv").write_text(head + "\n".join(rows) + "\n")
+    (bad,) = [one for one in closures(adjust.read(folder)) if one.verdict == NOT_MET]
+    assert {cause.slip for cause in bad.likely} == {"round-step"}
+    assert "staff.csv:3" in {cause.place for cause in bad.likely}
 
 
 def test_crowded_forms_are_not_said(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
