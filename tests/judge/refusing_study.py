@@ -1,10 +1,11 @@
 """Study: weak networks with one slip in the text of the book that are refused, and whether reading and slip are named.
 
-    python -m tests.judge.refusing_study [COUNT]
+    python -m tests.judge.refusing_study [COUNT] [some]
 
 Networks of ``tests.networks`` (6 to 12 stations, 20 to 60 % of the readings kept, no starting coordinates) get one
 gross slip in the text of a random row. Of those that do not settle or have no start are counted: the wrong reading
-named, and its likeliest slip right, silent or wrong.
+named, and its likeliest slip right, silent or wrong. With ``some`` the error is any angle or 20 to 2,000 m: a slip
+named there is an accident.
 """
 
 from __future__ import annotations
@@ -21,7 +22,7 @@ import adjust
 from adjust.errors import BrasscapError, InputError, NotConverged, Unsolvable
 from adjust.network import NEW
 from tests.graph.starts_study import _thinned
-from tests.judge.slipped import SORTS, booked_job, plant, tables
+from tests.judge.slipped import SORTS, Sheet, Sort, booked_job, dms, plant, radians, tables
 from tests.judge.unsettled_study import Wrong
 
 SEED = 20261222
@@ -33,10 +34,21 @@ GROSS = {"digits-swapped": "two digits were swapped", "degree-slip": "the degree
 """Slips, and what their sentences say."""
 
 
-def refused_by(number: int, folder: Path) -> Wrong | None:
+def any_amount(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str:
+    """The text of a reading that is off by an arbitrary amount."""
+    text = sheet.get(i, column)
+    if column == "distance":
+        return f"{float(text) + float(rng.uniform(20, 2000)):.4f}"
+    return dms((radians(text) + float(rng.uniform(0.3, 2 * np.pi - 0.3))) % (2 * np.pi))
+
+
+SOME = Sort("some amount", ("distance", "direction", "angle"), any_amount)
+
+
+def refused_by(number: int, folder: Path, some: bool = False) -> Wrong | None:
     """The network of a number with its slip; None where none can be planted, or its reading was thinned out."""
     rng = np.random.default_rng([SEED, number])
-    sort = next(s for s in SORTS if s.slip == list(GROSS)[number % len(GROSS)])
+    sort = SOME if some else next(s for s in SORTS if s.slip == list(GROSS)[number % len(GROSS)])
     n, mix = int(rng.integers(6, 13)), MIXES[int(rng.integers(len(MIXES)))]
     job = booked_job(rng, folder / str(number), n, mix, str(rng.choice(["held", "free"])))
     here = replace(sort, columns=tuple(c for c in sort.columns if tables(job, c)))
@@ -57,9 +69,9 @@ def refused_by(number: int, folder: Path) -> Wrong | None:
     return Wrong(replace(read, network=network), (f"{file}:{line}",), sort.slip) if f"{file}:{line}" in names else None
 
 
-def outcome(number: int, folder: Path) -> str | None:
+def outcome(number: int, folder: Path, some: bool = False) -> str | None:
     """Verdict on a network; None where it is not refused."""
-    wrong = refused_by(number, folder)
+    wrong = refused_by(number, folder, some)
     if wrong is None:
         return None
     try:
@@ -74,19 +86,22 @@ def outcome(number: int, folder: Path) -> str | None:
         _, said, slip = about[0].partition("Likeliest slip")
         if not said:
             return f"{kind}, reading named, no slip"
-        return f"{kind}, reading named, " + (f"slip right: {wrong.what}" if GROSS[wrong.what] in slip else "slip wrong")
+        return f"{kind}, reading named, " + (
+            f"slip right: {wrong.what}" if GROSS.get(wrong.what, "none") in slip else "slip wrong")  # fmt: skip
     except BrasscapError:
         return None
+    except ZeroDivisionError:
+        return "an internal error while a start was looked for"
     return None
 
 
 def main() -> None:
     """Run the study and print its table."""
     tally: Counter[str] = Counter()
-    count = int(sys.argv[1]) if len(sys.argv) > 1 else 300
+    count, some = next((int(a) for a in sys.argv[1:] if a.isdigit()), 300), "some" in sys.argv
     for number in range(count):
         with tempfile.TemporaryDirectory() as folder:
-            what = outcome(number, Path(folder))
+            what = outcome(number, Path(folder), some)
         tally[what or "not refused, or nothing planted"] += 1
     print(f"{count} networks, seed {SEED}:")
     for what, n in tally.most_common():
