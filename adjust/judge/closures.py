@@ -22,6 +22,9 @@ from adjust.graph.runs import HEIGHT_LOOP, LOOP, Lines, Run, height_walks, level
 from adjust.graph.traverses import Traverse, find_traverses, find_triangles
 from adjust.judge import where
 from adjust.judge.booked import Booked, Form, total
+from adjust.judge.causes import Cause
+from adjust.judge.causes_of_closures import likely
+from adjust.judge.changed_closures import Made, Summed, Walk
 from adjust.judge.critical import job_level, normal_critical
 from adjust.judge.rises import Rise, rises
 from adjust.judge.traversed import Traversed, traversed
@@ -67,6 +70,8 @@ class Closure:
     """What of height, angle and linear is allowed by a rule of the job; the rest by its own standard deviation."""
     counted: str = "angles"
     """angles; legs of a traverse by bearings; set-ups; lines where set-ups were not booked."""
+    likely: tuple[Cause, ...] = ()
+    """Likely slips of one that is not met, the best first."""
 
 
 Rule = Callable[[Closure], tuple[dict[str, float], str]]
@@ -81,17 +86,38 @@ def closures(what: Job | Solution, rule: Rule | None = None) -> tuple[Closure, .
     """
     with one_thread():
         job = what if isinstance(what, Job) else what.job
-        found: list[tuple[Closure, where.Context]] = [*_levels(job)]
+        found = _levels(job)
         said = {KINDS[block.kind].says for block in job.network.blocks}
+        booked = _bare(job)
         if said & {"length", "pointings"}:
             booked = Booked.of(what)
             found += _heights(booked) if "zenith" in said else []
             computed = computed_traverses(booked)
-            found += [(_traverse(booked, one), where.Walked(booked, one)) for one in computed]
-            found += [(one, None) for one in _triangles(booked, [one.traverse for one in computed])]
-        tests = sum(key in one.misclosure for one, _ in found for key in TESTED)
+            found += [_Found(_traverse(booked, one), Walk.of(booked, one), where.Walked(booked, one))
+                      for one in computed]  # fmt: skip
+            found += _triangles(booked, [one.traverse for one in computed])
+        tests = sum(key in one.closure.misclosure for one in found for key in TESTED)
         judge = _Judge(job, rule, job_level(job.settings.tests.significance, tests))
-        return where.with_common(job, tuple(judge.judged(one, context) for one, context in found))
+        judged = [judge.judged(one.closure, one.context) for one in found]
+        causes = likely(job, booked, [(one, of.made) for one, of in zip(judged, found, strict=True)])
+        told = [where.told(job, replace(one, likely=slips), of.context)
+                for one, slips, of in zip(judged, causes, found, strict=True)]  # fmt: skip
+        return where.with_common(job, tuple(told))
+
+
+@dataclass(frozen=True)
+class _Found:
+    """A closure without verdict, what it is computed from, and what tells where to look."""
+
+    closure: Closure
+    made: Made
+    context: where.Context
+
+
+def _bare(job: Job) -> Booked:
+    """Readings without places, for levelled lines and marks."""
+    nowhere = np.full((len(job.network.stations), 3), np.nan)
+    return Booked(job, job.network, nowhere, np.zeros(len(job.network.groups)))
 
 
 def computed_traverses(booked: Booked) -> tuple[Traversed, ...]:
@@ -103,7 +129,7 @@ def computed_traverses(booked: Booked) -> tuple[Traversed, ...]:
     return tuple(traversed(booked, one) for one in find_traverses(booked.network, sights, lengths))
 
 
-def _levels(job: Job) -> list[tuple[Closure, where.Levels]]:
+def _levels(job: Job) -> list[_Found]:
     network = job.network
     lines = Lines.of(network)
     if not len(lines.row):
@@ -122,7 +148,8 @@ def _levels(job: Job) -> list[tuple[Closure, where.Levels]]:
         length = None if np.isnan(lengths).any() else math.fsum(lengths.tolist())
         one = Closure(run.kind, run.stations, tuple(rows), length, count, {"height": w}, None, {"height": sd},
                       counted=counted)  # fmt: skip
-        out.append((one, where.Levels(along)))
+        signed = Form(w, dict(zip(rows, signs(network, run).tolist(), strict=True)), _ends(run))
+        out.append(_Found(one, Summed.of(network, signed, False), where.Levels(along)))
     return out
 
 
@@ -132,18 +159,21 @@ def _known_difference(job: Job, run: Run) -> float:
     return 0.0 if run.kind == LOOP else float(known[run.stations[0]] - known[run.stations[-1]])
 
 
+def _ends(run: Run) -> dict[tuple[int, int], float]:
+    """Partials by the heights of the known ends."""
+    return {} if run.kind == LOOP else {(run.stations[0], 2): 1.0, (run.stations[-1], 2): -1.0}
+
+
 def _height_variance(job: Job, run: Run, rows: list[int], variances: list[float]) -> float:
     """b'Qb of the lines, and of marks that are not held without error."""
-    network = job.network
-    marks = {} if run.kind == LOOP else {(run.stations[0], 2): 1.0, (run.stations[-1], 2): -1.0}
+    network, marks = job.network, _ends(run)
     if network.clusters or any(network.stations.role[i, 2] != HELD for i, _ in marks):
         signed = dict(zip(rows, signs(network, run).tolist(), strict=True))
-        booked = Booked(job, network, np.full((len(network.stations), 3), np.nan), np.zeros(len(network.groups)))
-        return float(booked.covariance([Form(0.0, signed, marks)])[0, 0])
+        return float(_bare(job).covariance([Form(0.0, signed, marks)])[0, 0])
     return math.fsum(variances)
 
 
-def _heights(booked: Booked) -> list[tuple[Closure, where.Heights]]:
+def _heights(booked: Booked) -> list[_Found]:
     """Loops and runs with rises by zenith angles in them."""
     lines, by_angles = Lines.of(booked.network), rises(booked)
     if not by_angles:
@@ -163,7 +193,7 @@ def _plain_variance(booked: Booked, form: Form) -> float:
     return math.fsum(booked.variance[row] * by * by for row, by in form.rows.items())
 
 
-def _height(booked: Booked, walk: runs.Walk, legs: list[Rise]) -> tuple[Closure, where.Heights]:
+def _height(booked: Booked, walk: runs.Walk, legs: list[Rise]) -> _Found:
     """One loop or run: known height, rises, less the known height."""
     signed = [1.0 if leg.start == at else -1.0 for leg, at in zip(legs, walk.stations, strict=False)]
     first, last = walk.stations[0], walk.stations[-1]
@@ -173,7 +203,7 @@ def _height(booked: Booked, walk: runs.Walk, legs: list[Rise]) -> tuple[Closure,
     length = math.fsum(leg.length for leg in legs)
     one = Closure(walk.kind, walk.stations, tuple(sorted(w.rows)), None if math.isnan(length) else length, len(legs),
                   {"height": w.value}, None, {"height": sd}, counted="lines")  # fmt: skip
-    return one, where.Heights(tuple(legs), tuple(signed))
+    return _Found(one, Summed.of(booked.network, w, False), where.Heights(tuple(legs), tuple(signed)))
 
 
 def _traverse(booked: Booked, one: Traversed) -> Closure:
@@ -203,7 +233,7 @@ def _traverse(booked: Booked, one: Traversed) -> Closure:
                    counted="angles" if one.turned else "legs")  # fmt: skip
 
 
-def _triangles(booked: Booked, traverses: list[Traverse]) -> list[Closure]:
+def _triangles(booked: Booked, traverses: list[Traverse]) -> list[_Found]:
     """Sums of three angles, except of three-sided loop traverses, which have them already."""
     without = {frozenset(one.stations) for one in traverses if one.closed and not one.by_bearings and not one.missing}
     out = []
@@ -213,8 +243,9 @@ def _triangles(booked: Booked, traverses: list[Traverse]) -> list[Closure]:
         sum_of = total([form for form in forms if form])
         sd = math.sqrt(booked.covariance([sum_of])[0, 0])
         rows = tuple(sorted(sum_of.rows))
-        out.append(Closure(run.kind, run.stations, rows, None, 3, {"angle": wrap(sum_of.value - TURN / 2)}, None,
-                           {"angle": sd}))  # fmt: skip
+        sum_of = replace(sum_of, value=wrap(sum_of.value - TURN / 2))
+        one = Closure(run.kind, run.stations, rows, None, 3, {"angle": sum_of.value}, None, {"angle": sd})
+        out.append(_Found(one, Summed.of(booked.network, sum_of, True), None))
     return out
 
 
@@ -228,7 +259,7 @@ class _Judge:
     """Significance of one test."""
 
     def judged(self, one: Closure, context: where.Context) -> Closure:
-        """The closure with what is allowed, verdicts, and where to look."""
+        """The closure with what is allowed, and verdicts."""
         allowable, text = self.rule(one) if self.rule else ({}, "")
         declared = tuple(allowable)
         own, words = self._own(one)
@@ -242,10 +273,8 @@ class _Judge:
         if isinstance(context, where.Walked) and context.traversed.angle is None:
             verdicts["angle"] = UNTESTED
         verdict = next((v for v in (NOT_MET, UNTESTED) if v in verdicts.values()), MET if verdicts else UNTESTED)
-        one = replace(one, allowable=allowable, rule=text, verdict=verdict, verdicts=verdicts,
-                      declared=declared)  # fmt: skip
-        words = where.sentence(self.job, one, context)
-        return replace(one, sentence=words) if words else one
+        return replace(one, allowable=allowable, rule=text, verdict=verdict, verdicts=verdicts,
+                       declared=declared)  # fmt: skip
 
     def _own(self, one: Closure) -> tuple[dict[str, float], str]:
         times = normal_critical(self.level)

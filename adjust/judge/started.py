@@ -3,7 +3,8 @@
 Where the readings lead to no start, three things are looked for. Two lengths r, s to a station from two known ones a
 distance d apart meet only if the longest of r, s, d is no longer than the other two together. Readings that the start,
 as far as it goes, disagrees with are named. Else readings are left out one at a time, and those are named without which
-the rest leads to a start that they disagree with; at the most TRIED starts are made.
+the rest leads to a start that they disagree with; at the most TRIED starts are made. What is named gets its likely
+slips where the others can be adjusted without it (adjust.judge.causes_of_refusals).
 """
 
 from __future__ import annotations
@@ -21,9 +22,11 @@ from adjust.graph.agreement import AGREES
 from adjust.graph.clues import Clues
 from adjust.graph.misfit import Misfits
 from adjust.graph.starts import Start, find_start
+from adjust.judge.causes_of_refusals import start_causes
 from adjust.judge.naming import amount, called, together
+from adjust.judge.slips_asked import told as slip_words
 from adjust.kinds import KINDS
-from adjust.network import Block, Network
+from adjust.network import Block, Bools, Network
 from adjust.solver.solution import Solution
 from adjust.units import LENGTHS
 
@@ -127,15 +130,34 @@ class _Contradictions:
 
     def disagreeing(self) -> list[str]:
         """Readings that the failed start, as far as it goes, disagrees with."""
-        return [_doubtful(self.job, place, size) for place, size in self.start.doubtful[:MOST_NAMED]]
+        return [" ".join(t for t in (_doubtful(self.job, place, size), self._slips(*self._placed(place))) if t)
+                for place, size in self.start.doubtful[:MOST_NAMED]]  # fmt: skip
+
+    def _slips(self, network: Network, place: Place) -> str:
+        """'Likeliest slip: ... Look at FILE:LINE.' of a reading that the others can do without; '' where none fits."""
+        return slip_words(start_causes(replace(self.job, network=network), place, _less(network, place)))
+
+    def _placed(self, place: Place) -> tuple[Network, Place]:
+        """The network as far as the start goes, begun there, and where a reading stands in it."""
+        lost: Bools = np.isnan(self.start.positions[:, 0])
+        here, blocks = place, []
+        for b, block in enumerate(self.network.blocks):
+            away: Bools = np.asarray(lost[block.stations].reshape(len(block), -1).any(axis=1))
+            keep = ~away if KINDS[block.kind].says in ("length", "pointings") else np.ones(len(block), dtype=bool)
+            blocks.append(block.take(np.flatnonzero(keep)))
+            here = (b, int(keep[: place[1]].sum())) if b == place[0] else here
+        stations = replace(self.network.stations, start=self.start.positions)
+        return replace(self.network, blocks=tuple(blocks), stations=stations, clusters=()), here
 
     # ---- readings left out
 
     def left_out(self) -> list[str]:
         """Readings without which the others lead to a start that disagrees with them, and with the fewest others."""
         trials = [t for t in (self._without(one) for one in self._candidates()[:TRIED]) if t is not None]
-        fewest = min((left for left, _ in trials), default=0)
-        return [words for left, words in trials if left == fewest][:MOST_NAMED]
+        fewest = min((left for left, _, _ in trials), default=0)
+        best = [(words, place) for left, words, place in trials if left == fewest][:MOST_NAMED]
+        named = [(words, self._slips(self.network, place)) for words, place in best]
+        return [f"{words}. {slips}" if slips else words for words, slips in named]
 
     def _candidates(self) -> list[Place]:
         """Readings in the plane at the stations without a start, then the others; none in large jobs."""
@@ -146,15 +168,15 @@ class _Contradictions:
         sources = list(dict.fromkeys(s for _, _, s in order))
         return [self._clues.sources[s] for s in sources] if len(sources) <= LARGE else []
 
-    def _without(self, place: Place) -> tuple[int, str] | None:
-        """(readings still doubtful, sentence) of a start without a reading; None where it fails or it fits it."""
+    def _without(self, place: Place) -> tuple[int, str, Place] | None:
+        """(readings still doubtful, sentence, place) of a start without a reading; None where it fails or fits it."""
         start = find_start(_less(self.network, place))
         size = None if start.failures else self._misfit(start, place)
         if size is None:
             return None
         off = _off(self.job, self.network.blocks[place[0]], size)
         return len(start.doubtful), (f"without {self._called(place)} the other readings lead to starting coordinates, "
-                                     f"for which it is {off}: check it in the book")  # fmt: skip
+                                     f"for which it is {off}: check it in the book"), place  # fmt: skip
 
     def _misfit(self, start: Start, place: Place) -> float | None:
         """Computed minus observed of a reading, metres or radians, if it is grossly off; else None."""

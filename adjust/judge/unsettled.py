@@ -4,6 +4,7 @@ The readings that fit worst where it began and where it stopped are tried one by
 weight of one of them taken away, and if it settles, that reading is named with what it differs from the others. Where
 none mends it, or the rest still fits badly, those that a redescending estimate finds (adjust.judge.outvoted) are left
 out together, and if it settles, each is put back in turn: it is sound if it then fits, else it is named with the rest.
+What is named gets its likely slips where its amount fits some (adjust.judge.causes_of_refusals).
 At the most TRIED + 2 + MOST_TOGETHER iterations are run.
 """
 
@@ -15,8 +16,10 @@ import numpy as np
 
 from adjust.book.job import Job
 from adjust.errors import Unsolvable
+from adjust.judge.causes_of_refusals import unsettled_causes
 from adjust.judge.naming import amount, called, together
 from adjust.judge.outvoted import GROSS, outvoted
+from adjust.judge.slips_asked import told as slip_words
 from adjust.judge.unfixed import Figure
 from adjust.network import Array, Block, Ints
 from adjust.solver.defects import Freedom, thin_stations
@@ -34,7 +37,6 @@ WITHOUT = 1e5
 MOST_NAMED = 5
 AS_GOOD = 3.0
 """Others are named too if without them the weighted square sum is within this factor of the best."""
-
 
 MOST_TOGETHER = 6
 """Readings left out together: more gross errors than that are a mix-up of names or files."""
@@ -76,8 +78,16 @@ def words(job: Job, stopped: NotSettled) -> list[str]:
 
 def _alone(job: Job, stopped: NotSettled, trial: _Trial) -> str:
     (row,), (size,) = trial.rows, trial.amounts
-    return (f"{_called(job, stopped, row)} disagrees with the others by about {_amount(job, stopped, row, size)}: "
+    text = (f"{_called(job, stopped, row)} disagrees with the others by about {_amount(job, stopped, row, size)}: "
             "without it the adjustment settles, with it it does not; check it in the book")  # fmt: skip
+    return "".join([text, *_slips(job, stopped, trial)])
+
+
+def _slips(job: Job, stopped: NotSettled, trial: _Trial) -> list[str]:
+    """'. Likeliest slip: ... Look at FILE:LINE.' of the readings of a trial, as far as some fit."""
+    causes = unsettled_causes(job, stopped.iteration, trial.state, trial.rows)
+    told = [words for words in (slip_words(one) for one in causes) if words]
+    return [f". {words}" if n == 0 else f" {words}" for n, words in enumerate(told)]
 
 
 def _together(job: Job, stopped: NotSettled, trial: _Trial) -> str:
@@ -85,8 +95,9 @@ def _together(job: Job, stopped: NotSettled, trial: _Trial) -> str:
         return _alone(job, stopped, trial)
     who = together([_called(job, stopped, r) for r in trial.rows])
     by = together([_amount(job, stopped, r, a) for r, a in zip(trial.rows, trial.amounts, strict=True)])
-    return (f"without {who} together the adjustment settles, with them it does not: they differ from the others by "
+    text = (f"without {who} together the adjustment settles, with them it does not: they differ from the others by "
             f"about {by}; check them in the book")  # fmt: skip
+    return "".join([text, *_slips(job, stopped, trial)])
 
 
 def _thin(stopped: NotSettled) -> list[str]:

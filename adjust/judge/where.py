@@ -3,14 +3,15 @@
 A suggestion is made where the misclosure w fits what one slip would leave, to within `TIMES` standard deviations of
 what the other readings may add; what everything would fit equally well is not said. The marks of the trade:
 
+    slips      a reading with the text that it would have (adjust.judge.causes_of_closures): digits, minutes, signs,
+               the other way round, a metre of a staff. What is said of these without a reading is then left out.
     levels     w is a whole number of metres, decimetres (feet, tenths): a staff misread; tolerance up to a twentieth of
-               the step, else too much would fit by chance. w = 2 r of a line: its sign or its ends turned round.
+               the step, else too much would fit by chance.
                w = 2 (back - fore) of a row of a raw book: its sights in each other's column (once, at an end).
     heights    by zenith angles: whole metres and decimetres likewise. An instrument or target height v with the
                share f in w: w = f v counted twice, w = 2 f v its sign, and where none is booked, w = -f v of
                another that is.
-    angles     with t the angle booked, w = 2 t (modulo a circle): turned the other way, since t stands for -t;
-               w = t or -t: counted twice, or dropped; w = 180 degrees.
+    angles     with t the angle booked, w = t or -t: counted twice, or dropped; w = 180 degrees.
                The whole w put into one angle closes the traverse: forwards and backwards it meets at that station.
     no closing angle: the end E' was to be E; an error at P turns E' about P, so |PE'| = |PE|: P lies on the
                perpendicular bisector of the closing line EE'.
@@ -34,11 +35,13 @@ from adjust.book.job import Job
 from adjust.judge.book_rows import changes
 from adjust.judge.booked import Booked, Form, total
 from adjust.judge.rises import Rise
+from adjust.judge.slips_asked import texts_of
 from adjust.judge.traversed import Traversed, polar
 from adjust.network import Array
 from adjust.units import LENGTHS, TURN, format_angle, small_length, wrap
 
 if TYPE_CHECKING:
+    from adjust.judge.causes import Cause
     from adjust.judge.closures import Closure
 
 TIMES = 3.0
@@ -89,8 +92,14 @@ class Hint:
     sentence: str
 
 
+def told(job: Job, one: Closure, context: Context) -> Closure:
+    """The closure with its sentence: why something cannot be tested, and where to look if something is not met."""
+    words = sentence(job, one, context)
+    return replace(one, sentence=words) if words else one
+
+
 def sentence(job: Job, one: Closure, context: Context) -> str:
-    """Why something cannot be tested, and where to look if something is not met."""
+    """Why something cannot be tested, and where to look if something is not met: likely slips, then hints."""
     words = Words(job)
     why = context.traversed.why if isinstance(context, Walked) else ""
     hints: list[Hint] = []
@@ -101,9 +110,15 @@ def sentence(job: Job, one: Closure, context: Context) -> str:
             hints = _heights(words, one, context)
         elif isinstance(context, Walked):
             hints = _traverse(words, one, context)
-        else:
+        elif not one.likely:
             hints = half_circle(words, one.misclosure["angle"], TIMES * one.sd["angle"])
-    return "; ".join([*([why] if why else []), *(h.sentence for h in sorted(hints, key=lambda h: h.misfit))])
+    slips = [likeliest(one.likely)] if one.likely else []
+    return "; ".join([*([why] if why else []), *slips, *(h.sentence for h in sorted(hints, key=lambda h: h.misfit))])
+
+
+def likeliest(causes: tuple[Cause, ...]) -> str:
+    """'likeliest slip: in the angle B to D at C the minutes were misread, 43 for 33 (angles.csv:14)'."""
+    return f"likeliest slip{'s' if len(causes) > 1 else ''}: " + ", or ".join(texts_of(causes))
 
 
 @dataclass(frozen=True)
@@ -147,20 +162,14 @@ def _some(hints: Iterable[Hint], of: int) -> list[Hint]:
 def _levels(words: Words, one: Closure, levels: Levels) -> list[Hint]:
     w, tolerance = one.misclosure["height"], TIMES * one.sd["height"]
     within = f"(within {words.length(tolerance)})"
-    turned = []
-    for row, (i, j), rise in zip(one.rows, pairwise(one.stations), levels.rises.tolist(), strict=True):
-        away = abs(w - 2 * rise)
-        if away <= tolerance < abs(rise):
-            turned.append(Hint(away / tolerance, f"the misclosure is twice the rise of {words.line(i, j)} "
-                               f"({words.row(row)}): its sign or its ends may be turned round {within}"))  # fmt: skip
     exchanged = [
         Hint(abs(w - size) / tolerance, f"the misclosure is what the sights of {place} would leave in each other's "
              f"column {within}")
         for place, size in changes(words.job, one.rows, levels.rises) if abs(w - size) <= tolerance < abs(size)
     ]  # fmt: skip
     cause = "a staff misread by that, on any of its lines"
-    return [*_steps(words, w, tolerance, cause), *_some(turned, len(levels.rises)),
-            *_some(exchanged, len(levels.rises))]  # fmt: skip
+    steps = [] if one.likely else _steps(words, w, tolerance, cause)
+    return [*steps, *_some(exchanged, len(levels.rises))]
 
 
 def _heights(words: Words, one: Closure, heights: Heights) -> list[Hint]:
@@ -181,7 +190,7 @@ def _heights(words: Words, one: Closure, heights: Heights) -> list[Hint]:
                 found.append(Hint(away / (tolerance or 1.0), f"{at} {text}: that would leave {words.length(slip)} "
                                   f"({words.length(size)} is booked, within {words.length(tolerance)})"))  # fmt: skip
     cause = "a height of instrument or target, or a staff, wrong by that"
-    return [*_steps(words, w, tolerance, cause), *_some(found, tried)]
+    return [*([] if one.likely else _steps(words, w, tolerance, cause)), *_some(found, tried)]
 
 
 _Height = tuple[str, int, int]
@@ -225,7 +234,8 @@ def _traverse(words: Words, one: Closure, walked: Walked) -> list[Hint]:
     if one.verdicts.get("angle") == NOT_MET:
         assert done.angle is not None
         w, tolerance = done.angle.value, TIMES * one.sd["angle"]
-        return [*half_circle(words, w, tolerance), *_of_angles(words, done, w, tolerance), *_meeting(words, walked)]
+        backwards = [] if one.likely else half_circle(words, w, tolerance)
+        return [*backwards, *_of_angles(words, done, w, tolerance), *_meeting(words, walked)]
     hints = _along_legs(words, one, done)
     return hints if done.angle else [*hints, *_bisector(words, walked)]
 
@@ -240,19 +250,15 @@ def half_circle(words: Words, w: float, tolerance: float) -> list[Hint]:
 
 
 def _of_angles(words: Words, done: Traversed, w: float, tolerance: float) -> list[Hint]:
-    twice, once = [], []
+    once = []
     within = f"(within {words.angle(tolerance)})"
     for one in done.turned:
         t, at = one.form.value, words.name(one.at)
-        away = abs(wrap(w - 2 * t))
-        if away <= tolerance < abs(wrap(2 * t)):
-            twice.append(Hint(away / tolerance, f"the angles misclose by twice the angle at {at}: it may have been "
-                              f"turned the other way round {within}"))  # fmt: skip
         away = min(abs(wrap(w - t)), abs(wrap(w + t)))
         if away <= tolerance < abs(wrap(t)):
             once.append(Hint(away / tolerance, f"the angles misclose by the angle at {at}: it may have been dropped "
                              f"or counted twice {within}"))  # fmt: skip
-    return [*_some(twice, len(done.turned)), *_some(once, len(done.turned))]
+    return _some(once, len(done.turned))
 
 
 def _meeting(words: Words, walked: Walked) -> list[Hint]:
@@ -360,6 +366,8 @@ def with_common(job: Job, closures: tuple[Closure, ...]) -> tuple[Closure, ...]:
             these = f"{what} {named[0]} is" if len(named) == 1 else f"{what}s {' and '.join(named[:MOST])}{rest} are"
             text = f"{these} common to all {len(failing)} that fail and in none that closes"
             for k in failing:
+                if len(named) == 1 and out[k].likely:  # the slip is in it, with text and place
+                    continue
                 out[k] = replace(out[k], sentence="; ".join(s for s in (text, out[k].sentence) if s))
     return tuple(out)
 

@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from pathlib import Path
 
+import numpy as np
 import pytest
 
 import adjust
 from adjust.book.job import Job
 from adjust.errors import Unsolvable
-from adjust.judge.started import doubtful_sentences, start_words
+from adjust.judge.causes_of_refusals import start_causes
+from adjust.judge.started import _Contradictions, doubtful_sentences, start_words
 from adjust.solver.solve import solve
 from tests.judge.unsettled_study import case
 
@@ -103,6 +106,54 @@ def test_mirror_images_do_not_hide_a_reading_that_disagrees(tmp_path: Path) -> N
         "Already the starting coordinates disagree with distances.csv:5 (distance B to Q, 754.951 m): it is about "
         "500 m too long for where the other readings lead."
     ]
+
+
+def test_a_reading_that_disagrees_gets_its_slip(tmp_path: Path) -> None:
+    """The same with 254.951 m booked as 524.951 m; what the others leave open stays as begun."""
+    said = refused(job(tmp_path, "AB", {"A P": 0.0, "B P": 0.0, "P Q": 0.0, "B Q": 270.0, "A Q": 0.0}))
+    assert said == [
+        "Already the starting coordinates disagree with distances.csv:5 (distance B to Q, 524.951 m): it is about "
+        "270 m too long for where the other readings lead. Likeliest slip: two digits were swapped, 524.951 for "
+        "254.951. Look at distances.csv:5."
+    ]
+
+
+def test_a_reading_left_out_gets_its_slip(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Network 307 of the study with one of its errors mended: half a circle. (The error is in the value only, so the
+    text that is proposed is the value.)"""
+    wrong = case(307, 2, tmp_path)
+    blocks = list(wrong.job.network.blocks)
+    b, i = next((b, i) for b, one in enumerate(blocks) for i in range(len(one)) if one.name(i) == "azimuths.csv:7")
+    values = blocks[b].values.copy()
+    values[i, 0] = math.radians(float(wrong.job.booked("azimuths.csv")[7][0]))
+    blocks[b] = replace(blocks[b], values=values)
+    wanted = next((k, i) for k, one in enumerate(blocks) for i in range(len(one)) if one.name(i) == "angles.csv:23")
+    monkeypatch.setattr(_Contradictions, "_candidates", lambda self: [wanted])  # every other one takes a second
+    (said,) = refused(replace(wrong.job, network=replace(wrong.job.network, blocks=tuple(blocks))))
+    assert said.endswith(
+        "check it in the book. Likeliest slip: the reading is of the other face, half a circle off, 142.78286068127224 "
+        "for 322.78286068127227. Look at angles.csv:23."
+    )
+
+
+SOUND = {"A P": 0.0, "B P": 0.0, "C P": 0.0, "A Q": 0.0, "B Q": 0.0, "C Q": 0.0, "P Q": 0.0}
+
+
+@pytest.mark.parametrize(
+    ("key", "wrong", "slips"),
+    [("C P", 1.0, [("round-step", "250.000")]), ("B Q", 270.0, [("digits-swapped", "254.951")]), ("C P", 7.31, [])],
+    ids=["step", "swap", "odd"],
+)
+def test_the_amount_is_that_from_the_others_without_it(
+    key: str, wrong: float, slips: list[tuple[str, str]], tmp_path: Path
+) -> None:
+    one = job(tmp_path, "ABC", SOUND | {key: wrong})
+    network, i = one.network, list(SOUND).index(key)
+    (b,) = (b for b, block in enumerate(network.blocks) if block.kind == "distance")
+    less = network.blocks[b].take(np.delete(np.arange(len(SOUND)), i))
+    blocks = (*network.blocks[:b], less, *network.blocks[b + 1 :])
+    found = start_causes(one, (b, i), replace(network, blocks=blocks))
+    assert [(cause.slip, cause.would_read) for cause in found] == slips
 
 
 def test_what_is_refused_for_other_reasons_is_told_as_it_was(tmp_path: Path) -> None:

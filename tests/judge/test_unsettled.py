@@ -12,6 +12,7 @@ from adjust.judge import unsettled
 from adjust.judge.outvoted import GROSS, outvoted
 from adjust.solver.gauss import NotSettled
 from adjust.solver.solve import prepare
+from tests.judge.refusing_study import refused_by
 from tests.judge.unsettled_study import Wrong, case, grade, outcome
 
 
@@ -38,6 +39,20 @@ def test_two_gross_errors_are_named_together(two: tuple[Wrong, NotSettled]) -> N
         ") together the adjustment settles, with them it does not: they differ from the others by about 65 degrees "
         "and 100 m; check them in the book"
     )
+
+
+@pytest.mark.parametrize(("number", "slip"), [(8, "half-circle"), (192, "other-way")], ids=["half-circle", "other-way"])
+def test_a_reading_that_keeps_it_from_settling_gets_its_slip(number: int, slip: str, tmp_path: Path) -> None:
+    """Weak networks with a slip in the text of the book."""
+    wrong = refused_by(number, tmp_path)
+    assert wrong is not None
+    (only,) = unsettled.words(wrong.job, stopped_at_once(wrong))
+    file, line = wrong.names[0].split(":")
+    assert only.startswith(f"{file}:{line} (")
+    words = {"half-circle": "the reading is of the other face, half a circle off, ",
+             "other-way": "the angle was turned the other way round, "}[slip]  # fmt: skip
+    assert f"; check it in the book. Likeliest slip: {words}" in only
+    assert only.endswith(f". Look at {file}:{line}.")
 
 
 def test_three_gross_errors_are_named_where_the_iteration_does_not_settle(
