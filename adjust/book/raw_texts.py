@@ -9,14 +9,25 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Protocol
 
 from adjust.book.cells import cell_parser
-from adjust.book.job import Job
 from adjust.book.schema import columns_of
 from adjust.book.settings import Table, Units
 from adjust.kinds import KINDS
 from adjust.network import Block
 from adjust.units import BadValue
+
+
+class Tables(Protocol):
+    """What is asked of a job: its tables and their cells by line (adjust.book.job.Job)."""
+
+    @property
+    def tables(self) -> tuple[Table, ...]:
+        """Those of the job."""
+
+    def booked(self, file: str, columns: tuple[str, ...] = ()) -> dict[int, tuple[str, ...]]:
+        """The cells of a table by line."""
 
 
 @dataclass(frozen=True)
@@ -41,7 +52,7 @@ class RawText:
             return None
 
 
-def raw_texts(job: Job, block: Block, i: int) -> tuple[RawText, ...]:
+def raw_texts(job: Tables, block: Block, i: int) -> tuple[RawText, ...]:
     """The cells behind row ``i`` of a block; none for settings that are observations of their own."""
     table = next((t for t in job.tables if t.file == block.file), None)
     if table is None or not block.line[i]:
@@ -70,17 +81,17 @@ def _raw(table: Table, column: str, text: str, line: int, factor: float) -> RawT
     return RawText(text, column, line, factor, cell_parser(field, table.units), table.units, field.type)
 
 
-def _turned(job: Job, block: Block, i: int) -> float:
+def _turned(job: Tables, block: Block, i: int) -> float:
     """An angle turned to the left, or deflected to it, runs the other way."""
     (turn,) = job.booked(block.file, ("turn",))[int(block.line[i])]
     return -1.0 if turn.lower().endswith("left") else 1.0
 
 
-def _sights(job: Job, block: Block, found: list[tuple[str, str, int]]) -> list[float]:
+def _sights(job: Tables, block: Block, found: list[tuple[str, str, int]]) -> list[float]:
     return [1.0 if column == "back" else -1.0 for column, _, _ in found]
 
 
-def _faces(job: Job, block: Block, found: list[tuple[str, str, int]]) -> list[float]:
+def _faces(job: Tables, block: Block, found: list[tuple[str, str, int]]) -> list[float]:
     """A mean; the zenith circle of the second face runs the other way."""
     faces = job.booked(block.file, ("face",))
     turned = block.kind == "zenith_angle"

@@ -28,7 +28,7 @@ import numpy as np
 
 from adjust.book.raw_texts import RawText, raw_texts
 from adjust.judge import slips_of_place, slips_of_text
-from adjust.judge.slip_forms import FARTHEST, Form, Slipped
+from adjust.judge.slip_forms import FARTHEST, Form, Slipped, Written
 from adjust.kinds import KINDS
 from adjust.units import TURN, BadValue, wrap
 
@@ -162,7 +162,7 @@ def _weighed(*cases: Slipped) -> list[Weighed]:
     found, total = [], sum(case.weight * other * _other(case) for case in cases)
     for case in cases:
         for row in rows:
-            forms = list(_different(_function(row["key"])(case)))
+            forms = list(different(_function(row["key"])(case)))
             found += [Weighed(case, row, form, _weight(case, row, form, len(forms))) for form in forms]
     total += sum(one.support for one in found)
     near = [replace(one, support=one.support / total) for one in found if one.support > 0]
@@ -172,10 +172,10 @@ def _weighed(*cases: Slipped) -> list[Weighed]:
 def _weight(case: Slipped, row: dict[str, Any], form: Form, forms: int) -> float:
     """p L of a form, one of so many."""
     prior: float = case.weight * row["prior"] / forms * form.weight
-    return prior * _faces_agree(case, form) * _likelihood(case, form)
+    return prior * faces_agree(case, form) * _likelihood(case, form)
 
 
-def _different(forms: Iterator[Form]) -> Iterator[Form]:
+def different(forms: Iterator[Form]) -> Iterator[Form]:
     """Forms of one slip that come to the same text count once."""
     seen = set()
     for form in forms:
@@ -185,7 +185,7 @@ def _different(forms: Iterator[Form]) -> Iterator[Form]:
             yield form
 
 
-def _faces_agree(case: Slipped, form: Form) -> float:
+def faces_agree(case: Written, form: Form) -> float:
     """Weight of a form that changes one of two faces: little unless it brings them together."""
     if len(case.raws) != 2 or not form.booked or any(abs(abs(r.factor) - 0.5) > 1e-9 for r in case.raws):
         return 1.0
@@ -197,7 +197,7 @@ def _faces_agree(case: Slipped, form: Form) -> float:
     return 1.0 if now < was / 2 else APART
 
 
-def _apart(case: Slipped, mine: RawText, text: str, other: RawText) -> float:
+def _apart(case: Written, mine: RawText, text: str, other: RawText) -> float:
     """How far two faces are apart: half a circle between pointings, a whole one of both zenith circles together."""
     one, two = mine.parse(text), other.parse(other.text)
     if not case.wraps:

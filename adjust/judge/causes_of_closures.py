@@ -36,8 +36,9 @@ from scipy.special import chdtri
 
 from adjust.book.job import Job
 from adjust.judge.booked import Booked, Form
-from adjust.judge.causes import FARTHEST, LARGEST_M, Cause, slips
+from adjust.judge.causes import LARGEST_M, Cause, slips
 from adjust.judge.changed_closures import Key, Made
+from adjust.judge.slip_forms import FARTHEST
 from adjust.judge.slips_asked import Books, Weighed, cause, forms, listed, other, reading
 from adjust.judge.where import NOT_MET
 from adjust.kinds import KINDS

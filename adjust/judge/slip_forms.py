@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Protocol
 
 from adjust.book.raw_texts import RawText
 from adjust.network import Block
@@ -15,6 +15,26 @@ if TYPE_CHECKING:
 
 FARTHEST = 2.5
 """Standard deviations by which a form may miss the blunder; 1 in 80 right ones misses by more."""
+
+
+class Written(Protocol):
+    """What the slips of text ask of a reading."""
+
+    @property
+    def raws(self) -> tuple[RawText, ...]:
+        """The texts behind it."""
+
+    @property
+    def kind(self) -> str:
+        """Its kind."""
+
+    @property
+    def noun(self) -> str:
+        """What a surveyor calls it."""
+
+    @property
+    def wraps(self) -> bool:
+        """Whether it is of a circle."""
 
 
 @dataclass(frozen=True)

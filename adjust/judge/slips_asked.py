@@ -20,18 +20,17 @@ from adjust.errors import InputError
 from adjust.judge import slips_of_text
 from adjust.judge.causes import (
     AS_GOOD,
-    FARTHEST,
     LARGEST_M,
     LISTED,
     NOUNS,
     SILENT_BELOW,
     Cause,
-    _different,
-    _faces_agree,
+    different,
+    faces_agree,
     slips,
 )
 from adjust.judge.readings import kind_word
-from adjust.judge.slip_forms import Form
+from adjust.judge.slip_forms import FARTHEST, Form
 from adjust.kinds import KINDS
 from adjust.network import Block
 from adjust.units import TURN, wrap
@@ -39,7 +38,7 @@ from adjust.units import TURN, wrap
 
 @dataclass(frozen=True)
 class Asked:
-    """What the slips of text need of a reading; the same names as in adjust.judge.slip_forms.Slipped."""
+    """What the slips of text need of a reading; it is Written (adjust.judge.slip_forms)."""
 
     block: Block
     i: int
@@ -89,7 +88,7 @@ def asked(books: Books, block: Block, i: int) -> Asked:
     """Row ``i`` of a block with its texts."""
     kind, line = KINDS[block.kind], int(block.line[i])
     there = len(kind.parts) <= 1 and line in books.booked(block.file, block.booked or kind.value)
-    raws = raw_texts(books, block, i) if there else ()  # type: ignore[arg-type] # asks Books for what a Job has too
+    raws = raw_texts(books, block, i) if there else ()
     return Asked(block, i, raws, block.kind, NOUNS.get(block.kind, block.kind), kind.wraps)
 
 
@@ -101,9 +100,9 @@ def forms(books: Books, block: Block, i: int) -> list[Weighed]:
         function = getattr(slips_of_text, slip["key"].replace("-", "_"), None)
         if function is None or not case.raws:
             continue
-        here = list(_different(function(case)))
+        here = list(different(function(case)))
         for form in here:
-            agree = _faces_agree(case, form)  # type: ignore[arg-type] # asks only what Asked has too
+            agree = faces_agree(case, form)
             out.append(Weighed(case, slip, form, slip["prior"] / len(here) * form.weight * agree))
     return out
 

@@ -10,7 +10,7 @@ import re
 from collections.abc import Iterator
 
 from adjust.book.raw_texts import RawText
-from adjust.judge.slip_forms import Form, Slipped
+from adjust.judge.slip_forms import Form, Written
 from adjust.units import ANGLES, LENGTHS, TURN, US_FOOT, format_angle, parse_angle, parse_number, tidy, wrap
 
 DEGREES: dict[str, tuple[float, ...]] = {
@@ -30,7 +30,7 @@ STEPS = dict.fromkeys(("m", "ft", "us-ft"), (0.1, 0.5, 1.0, 10.0, 100.0))
 _QUADRANT = re.compile(r"([NSns])(\s*)(\d.*?)(\s*)([EWew])")
 
 
-def digits_swapped(case: Slipped) -> Iterator[Form]:
+def digits_swapped(case: Written) -> Iterator[Form]:
     """Two neighbouring digits of one figure exchanged, a decimal mark between them or not."""
     for raw in case.raws:
         text = raw.text
@@ -43,17 +43,17 @@ def digits_swapped(case: Slipped) -> Iterator[Form]:
                 yield from _form(case, raw, text[:at] + b + mark + a + text[at + 2 + len(mark) :])
 
 
-def degree_slip(case: Slipped) -> Iterator[Form]:
+def degree_slip(case: Written) -> Iterator[Form]:
     """Degrees off by a round number."""
     yield from _angle_steps(case, DEGREES, 1.0)
 
 
-def minute_slip(case: Slipped) -> Iterator[Form]:
+def minute_slip(case: Written) -> Iterator[Form]:
     """Minutes off by a round number."""
     yield from _angle_steps(case, MINUTES, 1 / 60)
 
 
-def round_step(case: Slipped) -> Iterator[Form]:
+def round_step(case: Written) -> Iterator[Form]:
     """A length off by a round number."""
     for raw in case.raws:
         if raw.field_type == "length":
@@ -63,7 +63,7 @@ def round_step(case: Slipped) -> Iterator[Form]:
                     yield from _form(case, raw, stepped(raw, sign * step * LENGTHS[unit]), f"{step:g} {unit}")
 
 
-def sign(case: Slipped) -> Iterator[Form]:
+def sign(case: Written) -> Iterator[Form]:
     """A sign left out or put in; the letter of a quadrant."""
     for raw in case.raws:
         text = tidy(raw.text)
@@ -80,7 +80,7 @@ def sign(case: Slipped) -> Iterator[Form]:
                 yield from _form(case, raw, other, "the letters of the quadrant are the wrong ones")
 
 
-def other_way(case: Slipped) -> Iterator[Form]:
+def other_way(case: Written) -> Iterator[Form]:
     """An angle turned counter-clockwise and booked as if clockwise."""
     if case.kind == "angle":
         for raw in case.raws:
@@ -89,7 +89,7 @@ def other_way(case: Slipped) -> Iterator[Form]:
                 yield from _form(case, raw, _written(raw, (TURN - value) % TURN))
 
 
-def half_circle(case: Slipped) -> Iterator[Form]:
+def half_circle(case: Written) -> Iterator[Form]:
     """Half a circle off: the wrong face, or a line read from its other end."""
     told = "the line was read from its other end, half a circle off" if case.kind == "azimuth" else (
         "the reading is of the other face, half a circle off")  # fmt: skip
@@ -99,7 +99,7 @@ def half_circle(case: Slipped) -> Iterator[Form]:
                 yield from _form(case, raw, _written(raw, (raw.parse(raw.text) + TURN / 2) % TURN), told)
 
 
-def feet_for_metres(case: Slipped) -> Iterator[Form]:
+def feet_for_metres(case: Written) -> Iterator[Form]:
     """A length in feet among metres, or the other way round."""
     for raw in case.raws:
         if raw.field_type != "length" or raw.units.length not in ("m", "ft", "us-ft"):
@@ -112,7 +112,7 @@ def feet_for_metres(case: Slipped) -> Iterator[Form]:
             yield Form(f"{would / LENGTHS[unit]:.4f}", raw.factor * (booked - would), told, raw.line)
 
 
-def _form(case: Slipped, raw: RawText, other: str | None, told: str = "") -> Iterator[Form]:
+def _form(case: Written, raw: RawText, other: str | None, told: str = "") -> Iterator[Form]:
     """The form with another text in a cell, if it can be read and changes the reading."""
     change = None if other is None else raw.change(other)
     if other is None or change is None:
@@ -123,7 +123,7 @@ def _form(case: Slipped, raw: RawText, other: str | None, told: str = "") -> Ite
         yield Form(other, change, told, raw.line, raw.text)
 
 
-def _angle_steps(case: Slipped, steps: dict[str, tuple[float, ...]], part: float) -> Iterator[Form]:
+def _angle_steps(case: Written, steps: dict[str, tuple[float, ...]], part: float) -> Iterator[Form]:
     for raw in case.raws:
         if raw.field_type in ("circle", "course", "bearing", "zenith", "elevation"):
             notation = raw.units.angle
