@@ -23,7 +23,8 @@ readings (above 500: fifty and one in a thousand) would have to go, blunders are
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from contextlib import suppress
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -213,15 +214,22 @@ def _in_order(model: Model, rows: Sequence[int]) -> tuple[int, ...]:
 
 def adjusted_without(solution: Solution, rows: Sequence[int]) -> Outcome | None:
     """The network without the rows; None where it does not settle."""
+    return next(_adjusted(solution, rows), None)
+
+
+def best_adjusted_without(solution: Solution, rows: Sequence[int]) -> Outcome | None:
+    """The same, the better of what the solution and the start lead to: gross errors in a whole set-up bend both."""
+    return min(_adjusted(solution, rows), key=lambda outcome: outcome.last.merit, default=None)
+
+
+def _adjusted(solution: Solution, rows: Sequence[int]) -> Iterator[Outcome]:
+    """The network without the rows, begun from the solution and from the start, where it settles."""
     factor = np.ones(len(solution.residuals))
     factor[list(rows)] = GONE
     iteration = solution.setting.iteration.reweighted(factor)
     for state in (State(solution.positions, solution.groups), solution.setting.begin):
-        try:
-            return iteration.run(state)
-        except (NotConverged, SingularPattern, Unsolvable, np.linalg.LinAlgError):
-            continue
-    return None
+        with suppress(NotConverged, SingularPattern, Unsolvable, np.linalg.LinAlgError):
+            yield iteration.run(state)
 
 
 def improved(model: Model, levels: Levels, begin: Sequence[int]) -> Path | None:

@@ -25,10 +25,11 @@ import numpy as np
 from adjust.book.distance_ledger import CONSTANT, NAMES, REFLECTOR
 from adjust.book.job import Job
 from adjust.errors import BrasscapError
-from adjust.judge.blunders import adjusted_without
+from adjust.graph.starts import find_start
+from adjust.judge.blunders import best_adjusted_without
 from adjust.judge.critical import chi_square
 from adjust.judge.effect_words import SIGNIFICANT, Systematic
-from adjust.judge.mix_up_rows import OCCUPIED, UNIT, RowsInCommon, Shared
+from adjust.judge.mix_up_rows import OCCUPIED, RowsInCommon, Shared
 from adjust.judge.reliability import Reliability
 from adjust.judge.rows import without_rows
 from adjust.kinds import KINDS
@@ -53,6 +54,9 @@ NEAR = 300.0
 tried: the places without them may be off by some, and wrong stations are thousands away."""
 EXPLAINED = 0.01
 """Share of the weighted square sum that may be left without the readings, where it is known with them."""
+ANEW, ANEW_ROWS = 8, 1000
+"""Changes for which the network without the readings is started anew, and the rows of a job up to which it is: a start
+among gross errors takes a second in a job of 300 rows."""
 LARGE = 20_000
 """Scalar rows above which nothing is tried: every trial takes long, and large jobs have their names from a list."""
 
@@ -80,13 +84,13 @@ def unit_mixed_up(solution: Solution, known: Reliability) -> MixUp | None:
     if not (np.abs(np.nan_to_num(known.statistic)) > GROSS).any():
         return None
     trials = _trials(solution, ())
-    return trials.first(_most_bent(solution, trials.common.units())) if trials else None
+    return trials.units(_most_bent(solution, trials.common.units())) if trials else None
 
 
 def name_mixed_up(solution: Solution, gross: Sequence[int]) -> MixUp | None:
     """The one wrong name that explains two of the gross rows of a solution, or more; None where none does."""
     trials = _trials(solution, gross) if len(gross) >= 2 else None
-    return trials.first([*trials.common.occupations(), *trials.common.sights()]) if trials else None
+    return trials.names() if trials else None
 
 
 def _trials(solution: Solution, gross: Sequence[int]) -> _Trials | None:
@@ -96,14 +100,14 @@ def _trials(solution: Solution, gross: Sequence[int]) -> _Trials | None:
     return _Trials(RowsInCommon(solution.job, frozenset(gross)), solution)
 
 
-def mix_up_of_refused(job: Job, doubtful: Sequence[int] = ()) -> MixUp | None:
-    """The one change with which a refused job can be adjusted and fits; ``doubtful``: scalar rows in doubt."""
+def mix_up_of_refused(job: Job) -> MixUp | None:
+    """The one change with which a refused job can be adjusted and fits; None where none is found."""
     if len(job.network.rows) > LARGE:
         return None
-    trials = _Trials(RowsInCommon(job, frozenset(doubtful)))
-    common = trials.common
-    units = sorted(common.units(), key=lambda one: len(one.rows))
-    return trials.first([*units, *common.occupations(), *common.sights()])
+    start = find_start(job.network, job.settings.frame.plane_height)
+    first = [job.network.rows.of_block(b, len(block)) for b, block in enumerate(job.network.blocks)]
+    trials = _Trials(RowsInCommon(job, frozenset(int(first[b][i]) for (b, i), _ in start.doubtful)))
+    return trials.units(sorted(trials.common.units(), key=lambda one: len(one.rows))) or trials.names()
 
 
 def _most_bent(solution: Solution, units: list[Shared]) -> list[Shared]:
@@ -145,17 +149,22 @@ class _Trials:
     def _job(self) -> Job:
         return self.common.job
 
-    def first(self, changes: Iterable[Shared]) -> MixUp | None:
-        """The first change that explains its rows."""
-        return next((found for one in changes if (found := self._tried(one))), None)
+    def units(self, changes: Iterable[Shared]) -> MixUp | None:
+        """The first change of a unit that explains its rows."""
+        return next((found for one in changes if (found := self._unit(one))), None)
 
-    def _tried(self, one: Shared) -> MixUp | None:
-        return self._unit(one) if one.what == UNIT else self._names(one)
+    def names(self) -> MixUp | None:
+        """The first change of a name that explains its rows: those that are quickly tried first."""
+        changes = [*self.common.occupations(), *self.common.sights()]
+        ways = [(one, self._without) for one in changes if self.as_booked]
+        if len(self._job.network.rows) <= ANEW_ROWS:
+            ways += [(one, self._anew_without) for one in changes[:ANEW]]
+        return next((found for one, without in ways if (found := self._name(one, without(one)))), None)
 
     # ---- units
 
     def _unit(self, one: Shared) -> MixUp | None:
-        solution = self._explains(one, self._scaled(one), self._without(one))
+        solution = self._explains(one, self._scaled(one), self._anew_without(one))
         if solution is None:
             return None
         says = KINDS[self._block(one.rows[0]).kind].says
@@ -177,9 +186,8 @@ class _Trials:
 
     # ---- names
 
-    def _names(self, one: Shared) -> MixUp | None:
-        """Another station in place of the one booked."""
-        rest = self._without(one)
+    def _name(self, one: Shared, rest: _Rest | None) -> MixUp | None:
+        """Another station in place of the one booked, by the network without the readings."""
         if rest is None:
             return None
         tried = [(s, self._explains(one, self._renamed(one, s), rest)) for s in self._nearest(one, rest)]
@@ -253,19 +261,21 @@ class _Trials:
         return solution if total.square_sum - rest.square_sum <= most else None
 
     def _without(self, one: Shared) -> _Rest | None:
-        """The network without the readings; None where it does not settle, or fits as badly."""
-        outcome = adjusted_without(self.as_booked, one.rows) if self.as_booked else None
-        most = EXPLAINED * self.as_booked.total.square_sum if self.as_booked else np.inf
-        if self.as_booked and outcome:
-            state, degrees = outcome.last.state, self.as_booked.total.degrees_of_freedom - len(one.rows)
-            rest = _Rest(state.positions, state.groups, self.as_booked.design, outcome.last.merit, degrees)
-        else:  # where wrong readings have bent the figure too far, the others begin anew
-            found = _solved(replace(self._job, network=without_rows(self._job.network, np.array(one.rows))))
-            if found is None:
-                return None
-            rest = _Rest(found.positions, found.groups, found.design, found.total.square_sum,
-                         found.total.degrees_of_freedom)  # fmt: skip
-        return rest if rest.square_sum <= most else None
+        """The network without the readings, from where it lies as booked; None where it then fits hardly better."""
+        assert self.as_booked is not None
+        outcome, total = best_adjusted_without(self.as_booked, one.rows), self.as_booked.total
+        if outcome is None or outcome.last.merit > EXPLAINED * total.square_sum:
+            return None
+        state, degrees = outcome.last.state, total.degrees_of_freedom - len(one.rows)
+        return _Rest(state.positions, state.groups, self.as_booked.design, outcome.last.merit, degrees)
+
+    def _anew_without(self, one: Shared) -> _Rest | None:
+        """The network without the readings from a start of its own, for they may have bent the figure too far."""
+        found = _solved(replace(self._job, network=without_rows(self._job.network, np.array(one.rows))))
+        if found is None:
+            return None
+        total = found.total
+        return _Rest(found.positions, found.groups, found.design, total.square_sum, total.degrees_of_freedom)
 
     def _block(self, row: int) -> Block:
         return self._job.network.blocks[self.common.at(row)[0]]

@@ -111,8 +111,9 @@ def feet_cause(ppm: float, sd_ppm: float) -> str:
     return f"{kind}, and {near[best] * 1e6:+.0f} ppm besides; check [units] of the control and of the distances"
 
 
-def scale_sentence(job: Job) -> str:
-    """A gross scale between the control of a job and its readings, told from the readings adjusted alone; '' if none.
+def scale_of(job: Job) -> ScaleFinding | None:
+    """A gross scale between the control of a job and its readings, told from the readings adjusted alone; None if they
+    have none, or do not fit among themselves.
 
     For a job that was refused or does not settle: control in one unit and distances in another bend a network until
     nothing fits.
@@ -125,22 +126,31 @@ def scale_sentence(job: Job) -> str:
     role = job.network.stations.role[:, :2]
     marks = ((role == HELD) | (role == WEIGHTED)).all(axis=1).nonzero()[0]
     if job.settings.datum_kind == "free" or len(marks) < 2:
-        return ""
+        return None
     names = tuple(job.network.stations.names[i] for i in marks)
     alone = replace(job, settings=replace(job.settings, datum_kind="free", datum_stations=names))
     try:
-        fit = fit_control(solve(alone), 1.0)
+        solution = solve(alone)
     except (Unsolvable, NotConverged):
-        return ""
-    if fit is None or fit.sd_scale_ppm is None or not math.isfinite(fit.scale_ppm):
-        return ""
+        return None
+    fit = fit_control(solution, 1.0)
+    if (
+        (solution.total.variance_factor or 0.0) > HOLDS_TOGETHER
+        or fit is None
+        or fit.sd_scale_ppm is None
+        or not math.isfinite(fit.scale_ppm)
+    ):
+        return None
     sd = fit.sd_scale_ppm * max(1.0, 1 + fit.scale_ppm * 1e-6)
     if abs(fit.scale_ppm) <= max(GROSS_PPM, 5 * sd):
-        return ""
-    _, words = recognise(fit.scale_ppm, sd)
-    return (f"the readings hold together by themselves, and the known coordinates differ from them by "
-            f"{size_words(fit.scale_ppm, sd)}: {words}")  # fmt: skip
+        return None
+    cause, words = recognise(fit.scale_ppm, sd)
+    return ScaleFinding(fit.scale_ppm, sd, cause, "the readings hold together by themselves, and the known coordinates "
+                        f"differ from them by {size_words(fit.scale_ppm, sd)}: {words}")  # fmt: skip
 
 
 GROSS_PPM = 10_000.0
 """Scale from which a job that does not settle is told of it; smaller ones bend a network too little to stop it."""
+HOLDS_TOGETHER = 100.0
+"""Variance factor of the readings alone up to which they are said to: standard deviations may be wrong by a factor of
+ten; a gross error that stops an adjustment makes thousands."""

@@ -23,7 +23,7 @@ def solve(job: Job) -> Solution:
         from adjust.judge import unfixed
 
         with one_thread():
-            raise Unsolvable(_by_scale(job) or unfixed.words(loose)) from None
+            raise Unsolvable(_by_one_cause(job) or unfixed.words(loose)) from None
     except Unsolvable as refused:
         from adjust.judge.started import start_words
 
@@ -33,15 +33,18 @@ def solve(job: Job) -> Solution:
         from adjust.judge import unsettled
 
         with one_thread():
-            raise NotConverged(_by_scale(job) or _by_mix_up(job) or unsettled.words(job, stopped)) from None
+            raise NotConverged(_by_one_cause(job) or unsettled.words(job, stopped)) from None
 
 
-def _by_scale(job: Job) -> list[str]:
-    """What a gross scale of the control against the readings has bent needs no other reason."""
-    from adjust.judge.scale_words import scale_sentence
+def _by_one_cause(job: Job) -> list[str]:
+    """What a gross scale of the control against the readings has bent, or one wrong unit or name, needs no other
+    reason; a scale that is none of the trade may come of such a name."""
+    from adjust.judge.scale_words import scale_of
 
-    sentence = scale_sentence(job)
-    return [sentence] if sentence else []
+    scale = scale_of(job)
+    if scale and scale.cause:
+        return [scale.sentence]
+    return _by_mix_up(job) or ([scale.sentence] if scale else [])
 
 
 def _by_mix_up(job: Job) -> list[str]:

@@ -14,7 +14,7 @@ import pytest
 import adjust
 from adjust.errors import NotConverged, Unsolvable
 from adjust.judge import consistent, control
-from adjust.judge.scale_words import FOOT, recognise, scale_finding, scale_sentence, size_words
+from adjust.judge.scale_words import FOOT, recognise, scale_finding, scale_of, size_words
 from adjust.judge.shifts import Shifts
 from adjust.units import US_FOOT
 from tests.helpers import close
@@ -232,9 +232,9 @@ def test_a_refusal_names_the_scale(tmp_path: Path) -> None:
 
 
 def test_no_scale_is_named_where_there_is_none(tmp_path: Path) -> None:
-    assert scale_sentence(plane_job(tmp_path / "sound", 8)) == ""
+    assert scale_of(plane_job(tmp_path / "sound", 8)) is None
     one_mark = plane_job(tmp_path / "one", 8, roles=dict.fromkeys(("M2", "M3", "M4"), "check"))
-    assert scale_sentence(one_mark) == ""
+    assert scale_of(one_mark) is None
 
 
 @pytest.mark.parametrize("errors", [{}, {"M3": (0.043, 0.0)}, {"M3": (0.03, 0.01), "M1": (-0.02, 0.025)}])
