@@ -14,6 +14,7 @@ from adjust.judge.balances import Balance
 from adjust.judge.closures import Closure
 from adjust.kinds import KINDS
 from adjust.record.numbers import angle, coordinate, number
+from adjust.record.observations import cause_entries
 
 _ANGLES = ("angle", "direction")
 """What of a closure is an angle; the rest are lengths."""
@@ -42,6 +43,7 @@ def _closure(judgement: Judgement, one: Closure) -> dict[str, Any]:
         "verdict": one.verdict,
         "verdicts": one.verdicts,
         "sentence": one.sentence,
+        "likely_causes": cause_entries(one.likely),
     }
 
 

@@ -60,8 +60,13 @@ JUDGED: dict[str, tuple[Field, ...]] = {
         ("height", "number?", "shift"),
     ),
     "effect": keys(
-        ("what", "text", "constant, scale, refraction, zenith index, staff scale, orientation"),
-        ("of", "text", "reflector, instrument, day or table"),
+        (
+            "what",
+            "text",
+            "constant, scale, refraction, zenith index, staff scale, orientation, instrument height, "
+            "target height; unit, station occupied, station sighted: slips that many readings share",
+        ),
+        ("of", "text", "reflector, instrument, day, table, station or sight"),
         ("readings", "integer", "how many it would be in"),
         ("dimension", "text", "length, ratio (1e-6 is 1 ppm), angle, number: of value and sd"),
         ("value", "number?", "its size; null where it cannot be told"),
@@ -69,7 +74,7 @@ JUDGED: dict[str, tuple[Field, ...]] = {
         ("statistic", "number?", "value over sd; from residuals Student's t"),
         ("critical", "number?", "limit at the level of one reading"),
         ("verdict", "text", "none seen, significant, cannot be told, explained by ..., rests on one reading, ..."),
-        ("cause", "text", "correction that the size is exactly that of; empty where none"),
+        ("cause", "text", "correction that the size is exactly that of, or the key of a slip; empty where none"),
         ("rests_on", "texts", "ids of the single readings that carry it"),
         ("sentence", "text", "the same in words"),
     ),

@@ -141,6 +141,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("verdict", "text", "the worst of verdicts: met, not met, cannot be tested"),
         ("verdicts", "object any", "by height, angle, linear"),
         ("sentence", "text", "why something cannot be tested, or where to look; empty where nothing is to say"),
+        ("likely_causes", "list cause", "everyday slips that would explain what is not met, the likeliest first"),
     ),
     "balance": keys(
         ("method", "text", "compass rule, transit rule, levels by length, by set-ups or by lines"),

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from typing import Any
 
 import numpy as np
 
 from adjust.book.job import Aside
 from adjust.judge.assess import Judgement
+from adjust.judge.causes import Cause
 from adjust.kinds import KINDS
 from adjust.network import PARTS, Block
 from adjust.record.numbers import angle, coordinate, number
@@ -95,6 +97,15 @@ def _effect(judgement: Judgement, r: int) -> dict[str, Any] | None:
             "value": number(judgement.effect[r])}  # fmt: skip
 
 
+def cause_entries(causes: Iterable[Cause]) -> list[dict[str, Any]]:
+    """Everyday slips, the likeliest first."""
+    return [
+        {"slip": c.slip, "sentence": c.sentence, "would_read": c.would_read or None, "support": round(c.support, 3),
+         "place": c.place}
+        for c in causes
+    ]  # fmt: skip
+
+
 def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
     """Suspects in order of blame."""
     ids = judgement.ids
@@ -105,16 +116,7 @@ def suspect_entries(judgement: Judgement) -> list[dict[str, Any]]:
             "sd": number(s.sd),
             "statistic": number(s.statistic),
             "at_job_level": s.at_job_level,
-            "likely_causes": [
-                {
-                    "slip": c.slip,
-                    "sentence": c.sentence,
-                    "would_read": c.would_read or None,
-                    "support": round(c.support, 3),
-                    "place": c.place,
-                }
-                for c in judgement.causes(s)
-            ],
+            "likely_causes": cause_entries(judgement.causes(s)),
             "cannot_be_told_from": [
                 {"observation": ids[r], "correlation": number(rho), "chance_of_wrong": number(wrong)}
                 for r, rho, wrong in judgement.confusable(s)
