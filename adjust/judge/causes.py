@@ -226,6 +226,6 @@ def _cause(one: Weighed) -> Cause:
     pattern = one.row.get("gon", one.row["sentence"]) if notation in ("gon", "mil", "deg") else one.row["sentence"]
     text = pattern.format(would=form.would, booked=form.booked, told=form.told)
     if case.instead:
-        text = f"the reading in error may be {case.block.name(case.i)}: {text}"
+        text = f"in {case.block.name(case.i)} {text}"
     line = form.line or int(case.block.line[case.i])
     return Cause(one.row["key"], text, form.would, one.support, f"{case.block.file}:{line}")

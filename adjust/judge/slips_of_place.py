@@ -30,6 +30,8 @@ NOT_IN_JOB = 0.1
 FORGOTTEN = 10.0
 """Weight of a blank height among booked ones against that of a height booked for a sight that had none, or had that of
 another sight: blanks are what is forgotten; common practice."""
+NO_INSTRUMENT = 0.1
+"""Weight of an instrument height booked where there was none: its other sights have it too; common practice."""
 WIDER, SPREAD_M = 1.5, 0.1
 """A forgotten height may lie outside those in use: this many times their spread, at least 0.1 m; common practice."""
 NEAREST = 50
@@ -237,7 +239,7 @@ def _another_height(case: Slipped, end: int, what: str, own: Array, heights: Arr
         told = f"the sight had no height of the {what}"
         if k:
             told = f"the height of the {what} is that of another sight ({_height(case, float(heights[k - 1]), 4)})"
-        yield Form("", change, told, 0, weight=1 / len(heights) if k else 1.0)
+        yield Form("", change, told, 0, weight=1 / len(heights) if k else (NO_INSTRUMENT, 1.0)[end])
 
 
 def _height(case: Slipped, height: float, places: int) -> str:

@@ -1,7 +1,8 @@
 """What matters most in a record, in sentences, the gravest first.
 
-The order: blunders, or a scatter that none explains; control; effects common to many readings; stated precision; what
-does not close; what nothing checks; what no test can tell apart. Where nothing stands out that is said.
+The order: blunders, or a scatter that none explains; control; effects common to many readings (these first where no
+single reading is blamed); stated precision; what does not close; what nothing checks; what no test can tell apart.
+Where nothing stands out that is said.
 """
 
 from __future__ import annotations
@@ -26,9 +27,14 @@ def findings(record: Entry) -> list[dict[str, str]]:
 
 def _all(record: Entry, shown: Shown) -> Iterator[tuple[str, str]]:
     yield from (("blunder", text) for text in _blunders(record, shown))
-    yield from (("scatter", text) for text in _scatter(record, shown))
-    yield from (("control", text) for text in _control(record))
-    yield from (("systematic", e["sentence"]) for e in record["systematic"] if e["verdict"] == "significant")
+    shared = [e["sentence"] for e in record["systematic"] if e["verdict"] == "significant"]
+    if record["suspects"] or not shared:
+        yield from (("scatter", text) for text in _scatter(record, shown))
+        yield from (("control", text) for text in _control(record))
+        yield from (("systematic", text) for text in shared)
+    else:  # what many readings share explains what fails, and bends what control is compared with
+        yield from (("systematic", text) for text in shared)
+        yield from (("control", text) for text in _control(record))
     yield from (("weights", c["sentence"]) for c in record["variance_components"] if _off(record, c))
     yield from (("closure", text) for text in _closures(record))
     yield from (("unchecked", text) for text in _unchecked(record))
@@ -57,8 +63,12 @@ def _blunders(record: Entry, shown: Shown) -> Iterator[str]:
 def _blunder(suspect: Entry, observation: Entry, shown: Shown) -> str:
     size = shown.too_much(suspect["estimated_blunder"], suspect["sd"], observation["kind"])
     times = shown.mark(format(abs(suspect["statistic"]), ".1f"))
-    text = f"{_capital(reading_in_words(observation))} {size} ({plain(suspect['observation'], 40)}; {times} times its "
-    text += "uncertainty)"
+    sure = (
+        f"{shown.uncertainty(suspect['sd'], observation['kind'])}, {times} times that"
+        if suspect["sd"]
+        else f"{times} times"
+    )
+    text = f"{_capital(reading_in_words(observation))} {size} ({sure}; {plain(suspect['observation'], 40)})"
     alike = [o["observation"] for o in suspect["cannot_be_told_from"]]
     text += f", or the error is in {_names(alike)}: no test here can tell." if alike else "."
     return f"{text} {likeliest(suspect)}".rstrip()
@@ -72,7 +82,8 @@ def likeliest(suspect: Entry) -> str:
     if len(causes) == 1:
         return f"Likeliest slip: {plain(causes[0]['sentence'], 160)}. Look at {plain(causes[0]['place'], 40)}."
     several = "; or ".join(plain(c["sentence"], 90) for c in causes)
-    return f"Likeliest slips: {several}. Look at {plain(causes[0]['place'], 40)}."
+    places = list(dict.fromkeys(plain(c["place"], 40) for c in causes))
+    return f"Likeliest slips: {several}. Look at {' and '.join(places)}."
 
 
 def _capital(text: str) -> str:

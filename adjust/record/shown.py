@@ -166,6 +166,14 @@ class Shown:
         size = self.amount(abs(value), sd, kind).removeprefix("+")
         return f"reads {size} too {'much' if value > 0 else 'little'}"
 
+    def uncertainty(self, sd: float, kind: str) -> str:
+        """'standard deviation 2.4 mm': of a blunder, metres or radians as the kind says."""
+        if kind in ANGLE_KINDS:
+            return f"standard deviation {self.mark(two_figures(self.in_small_angle(sd)))} {self.small_angle}"
+        if kind in NUMBER_KINDS:
+            return f"standard deviation {self.mark(two_figures(sd))}"
+        return f"standard deviation {self.small_sd(sd)} {self.small}"
+
     def _angle_amount(self, value: float, sd: float | None) -> str:
         small = self.in_small_angle(value)
         if abs(small) < 1000:

@@ -25,11 +25,12 @@ from adjust.errors import BrasscapError
 from adjust.judge.closures import NOT_MET, Closure, closures
 from tests.judge import closing
 from tests.judge.closing import CENTRING, SHAPES, TARGET, Made, computed, level_net, random_traverse
-from tests.judge.slipped import SORTS, Sheet, Sort, booked_job, dms, plant, radians, tables
+from tests.judge.slip_networks import dms, radians
+from tests.judge.slipped import SORTS, Sheet, Sort, booked_job, cells, plant
 
 SEED = 20261221
 LEAST = 2.0
-SOME, NOTHING = Sort("some amount", ("distance", "direction", "angle", "rise"), None), Sort("nothing", (), None)
+SOME, NOTHING = Sort("some amount", ("distance", "direction", "angle", "rise"), None, ()), Sort("nothing", (), None, ())
 OF_TEXT = ("digits-swapped", "degree-slip", "minute-slip", "round-step", "sign", "other-way", "half-circle",
            "feet-for-metres")  # fmt: skip
 ASKED = {
@@ -90,9 +91,9 @@ def triangles(rng: np.random.Generator, folder: Path) -> Path:
 MAKERS = {"traverse": traverse, "levels": levels, "triangles": triangles}
 
 
-def some_amount(rng: np.random.Generator, folder: Path, found: tuple[Closure, ...]) -> list[tuple[str, int]] | None:
+def some_amount(rng: np.random.Generator, folder: Path, found: tuple[Closure, ...]) -> tuple[str, int] | None:
     """An arbitrary error in a random row, by what the closures allow."""
-    choices = [(sheet, column) for column in SOME.columns for sheet in tables(folder, column)]
+    choices = cells(folder, SOME.columns)
     sheet, column = choices[int(rng.integers(len(choices)))]
     i = int(rng.integers(len(sheet.rows)))
     key = {"distance": "linear", "rise": "height"}.get(column, "angle")
@@ -102,7 +103,7 @@ def some_amount(rng: np.random.Generator, folder: Path, found: tuple[Closure, ..
     amount = float(rng.uniform(2, 50) * rng.choice([-1, 1]) * np.median(allowed))
     text = sheet.get(i, column)
     sheet.put(i, column, f"{float(text) + amount:.4f}" if key != "angle" else dms(radians(text) + amount))
-    return [(sheet.path.name, i + 2)]
+    return sheet.path.name, i + 2
 
 
 def fails(one: Closure) -> bool:
@@ -118,14 +119,14 @@ def outcome(what: str, sort: Sort, number: int, folder: Path) -> tuple[str, floa
         found = closures(adjust.read(job))
         return ("a cause" if any(one.likely for one in found) else "silent"), 0.0, False
     if sort is SOME:
-        places = some_amount(rng, folder, closures(adjust.read(job)))
+        place = some_amount(rng, folder, closures(adjust.read(job)))
     else:
         column = ("rise",) if what == "levels" else ("direction", "angle") if what == "triangles" else sort.columns
-        here = replace(sort, columns=tuple(c for c in sort.columns if c in column and tables(folder, c)))
-        places = plant(rng, folder, here)
-    if not places:
+        made = plant(rng, folder, replace(sort, columns=tuple(c for c in sort.columns if c in column)))
+        place = made and (made.file, made.row + 2)
+    if not place:
         return None
-    ((file, line),) = places
+    file, line = place
     try:
         read = adjust.read(job)
         found = closures(read)

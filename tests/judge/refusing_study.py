@@ -22,7 +22,8 @@ import adjust
 from adjust.errors import BrasscapError, InputError, NotConverged, Unsolvable
 from adjust.network import NEW
 from tests.graph.starts_study import _thinned
-from tests.judge.slipped import SORTS, Sheet, Sort, booked_job, dms, plant, radians, tables
+from tests.judge.slip_networks import dms, radians
+from tests.judge.slipped import SORTS, Sort, booked_job, plant
 from tests.judge.unsettled_study import Wrong
 
 SEED = 20261222
@@ -34,15 +35,14 @@ GROSS = {"digits-swapped": "two digits were swapped", "degree-slip": "the degree
 """Slips, and what their sentences say."""
 
 
-def any_amount(rng: np.random.Generator, sheet: Sheet, i: int, column: str) -> str:
+def any_amount(rng: np.random.Generator, column: str, text: str) -> str:
     """The text of a reading that is off by an arbitrary amount."""
-    text = sheet.get(i, column)
     if column == "distance":
         return f"{float(text) + float(rng.uniform(20, 2000)):.4f}"
     return dms((radians(text) + float(rng.uniform(0.3, 2 * np.pi - 0.3))) % (2 * np.pi))
 
 
-SOME = Sort("some amount", ("distance", "direction", "angle"), any_amount)
+SOME = Sort("some amount", ("distance", "direction", "angle"), any_amount, ())
 
 
 def refused_by(number: int, folder: Path, some: bool = False) -> Wrong | None:
@@ -51,11 +51,10 @@ def refused_by(number: int, folder: Path, some: bool = False) -> Wrong | None:
     sort = SOME if some else next(s for s in SORTS if s.slip == list(GROSS)[number % len(GROSS)])
     n, mix = int(rng.integers(6, 13)), MIXES[int(rng.integers(len(MIXES)))]
     job = booked_job(rng, folder / str(number), n, mix, str(rng.choice(["held", "free"])))
-    here = replace(sort, columns=tuple(c for c in sort.columns if tables(job, c)))
-    places = plant(rng, job, here) if here.columns else None
-    if not places:
+    made = plant(rng, job, sort)
+    if made is None:
         return None
-    ((file, line),) = places
+    file, line = made.file, made.row + 2
     try:
         read = adjust.read(job)
     except InputError:

@@ -130,7 +130,7 @@ def tables(folder: Path) -> list[Sheet]:
     return [Sheet.of(path) for path in sorted(folder.glob("*.csv")) if path.stem not in ("control", "stations")]
 
 
-def _cells(folder: Path, columns: tuple[str, ...]) -> list[tuple[Sheet, str]]:
+def cells(folder: Path, columns: tuple[str, ...]) -> list[tuple[Sheet, str]]:
     """Columns of readings; ``back`` and ``fore`` are sights in a level book, elsewhere names."""
     return [
         (sheet, column)
@@ -147,7 +147,7 @@ def plant(rng: Rng, folder: Path, sort: Sort) -> Planted | None:
     if sort.slip == "height-forgotten":
         choices = [(s, "target_height") for s in tables(folder) if "target_height" in s.header]
     else:
-        choices = _cells(folder, sort.columns)
+        choices = cells(folder, sort.columns)
     if not choices:
         return None
     sheet, column = choices[int(rng.integers(len(choices)))]
@@ -185,7 +185,7 @@ def plant(rng: Rng, folder: Path, sort: Sort) -> Planted | None:
 
 def amount(rng: Rng, folder: Path) -> Planted | None:
     """A random cell for an error of any size; ``moved`` makes it."""
-    choices = _cells(folder, SOME.columns)
+    choices = cells(folder, SOME.columns)
     sheet, column = choices[int(rng.integers(len(choices)))]
     i = int(rng.integers(len(sheet.rows)))
     return Planted(sheet.path.name, i, column, sheet.get(i, column)) if sheet.get(i, column) else None

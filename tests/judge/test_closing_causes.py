@@ -15,6 +15,7 @@ import pytest
 import adjust
 from adjust.judge import causes_of_closures
 from adjust.judge.booked import Booked, Form
+from adjust.judge.causes import slips
 from adjust.judge.changed_closures import Summed, Walk
 from adjust.judge.closures import NOT_MET, closures, computed_traverses
 from adjust.judge.slips_asked import Books, forms, other
@@ -145,7 +146,7 @@ def test_support_is_the_rule_of_bayes(tmp_path: Path) -> None:
         left = w - by * best
         if left @ inverse @ left > 12.429:  # chi-square at 0.002 with two degrees: 12.429
             continue
-        some = 0.15 * other("levelled", best, info**-0.5) * math.sqrt(2 * math.pi / info) * density(left) / base
+        some = slips()[0] * other("levelled", best, info**-0.5) * math.sqrt(2 * math.pi / info) * density(left) / base
         weights[r, "other"] = some
         for one in forms(Books(job), block, r):
             v = w - by * one.form.change

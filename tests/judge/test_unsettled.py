@@ -37,7 +37,8 @@ def test_two_gross_errors_are_named_together(two: tuple[Wrong, NotSettled]) -> N
     assert only.startswith("without directions.csv:9 (pointing Aa to Fa, 212.6393054539654) and distances.csv:9 (")
     assert only.endswith(
         ") together the adjustment settles, with them it does not: they differ from the others by about 65 degrees "
-        "and 100 m; check them in the book"
+        "and 100 m; check them in the book. Likeliest slip: a misreading by 100 m, 126.91746011732688 for "
+        "26.91746011732688. Look at distances.csv:9."
     )
 
 
