@@ -239,7 +239,7 @@ class Judgement:
             or any(one.verdict == NOT_MET for one in self.solution.job.reductions)
         )
 
-    @property
+    @cached_property
     def ids(self) -> list[str]:
         """Identification of the observation of each scalar row (R,)."""
         rows, blocks = self.solution.network.rows, self.solution.network.blocks
