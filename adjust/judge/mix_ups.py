@@ -3,7 +3,7 @@
 Each is a change of the job as booked, and is tried by truly adjusting the changed job. With O_w the weighted square sum
 without the k readings concerned and O_h that with them as changed, the change explains them if
 
-    O_h - O_w <= chi2(k, 0.999) max(1, s0^2)          s0^2 the variance factor without them
+    O_h - O_w <= chi2(k, 0.999) max(1, s0^2)          s0^2 the variance factor without them, FITS at the most
 
 (the k readings then scatter no more than others do; the test of nested adjustments, Koch 1999, section 4.2), while as
 booked they are grossly off, or the job could not be adjusted at all. Where the network needs them to hold together, so
@@ -257,7 +257,7 @@ class _Trials:
         total = solution.total
         if rest is None:
             return solution if total.square_sum <= FITS * max(total.degrees_of_freedom, 1) else None
-        most = chi_square(LEVEL, len(one.rows)) * max(1.0, rest.square_sum / max(rest.degrees, 1))
+        most = chi_square(LEVEL, len(one.rows)) * min(max(1.0, rest.square_sum / max(rest.degrees, 1)), FITS)
         return solution if total.square_sum - rest.square_sum <= most else None
 
     def _without(self, one: Shared) -> _Rest | None:
@@ -275,6 +275,8 @@ class _Trials:
         if found is None:
             return None
         total = found.total
+        if self.as_booked and total.square_sum > EXPLAINED * self.as_booked.total.square_sum:
+            return None
         return _Rest(found.positions, found.groups, found.design, total.square_sum, total.degrees_of_freedom)
 
     def _block(self, row: int) -> Block:

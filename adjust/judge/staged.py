@@ -55,6 +55,11 @@ def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
     mixed = mixed or name_mixed_up(solution, gross)
     if mixed:
         return _without_mix_up(solution, known, tests, mixed)
+    return _searched(solution, known, tests, gross)
+
+
+def _searched(solution: Solution, known: Reliability, tests: Tests, gross: list[int]) -> Searched:
+    """The same without a unit or a name mixed up."""
     held = _without(solution, gross)
     stages = [held, held.free] if held.free else [held]
     found = {id(s): findings(s, known if s is solution else reliability(s), tests) for s in stages}
@@ -81,7 +86,8 @@ def search(solution: Solution, known: Reliability, tests: Tests) -> Searched:
 
 def _without_mix_up(solution: Solution, known: Reliability, tests: Tests, mixed: MixUp) -> Searched:
     """The effects and the control as they are once a unit or a name is put right; single readings are judged then."""
-    besides = search(mixed.solution, reliability(mixed.solution), tests)
+    known_then = reliability(mixed.solution)
+    besides = _searched(mixed.solution, known_then, tests, gross_rows(mixed.solution, known_then, tests))
     return Searched(exactly(solution, known, ()), besides.cleaned, besides.report, (),
                     (mixed.as_effect, *besides.systematic), shared=True)  # fmt: skip
 
