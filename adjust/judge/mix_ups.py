@@ -3,7 +3,7 @@
 Each is a change of the job as booked, and is tried by truly adjusting the changed job. With O_w the weighted square sum
 without the k readings concerned and O_h that with them as changed, the change explains them if
 
-    O_h - O_w <= chi2(k, 0.999) max(1, s0^2)          s0^2 the variance factor without them, FITS at the most
+    O_h - O_w <= chi2(k, 0.999) max(1, s0^2)          s0^2 the variance factor without them, BESIDES at the most
 
 (the k readings then scatter no more than others do; the test of nested adjustments, Koch 1999, section 4.2), while as
 booked they are grossly off, or the job could not be adjusted at all. Where the network needs them to hold together, so
@@ -30,6 +30,7 @@ from adjust.judge.blunders import best_adjusted_without
 from adjust.judge.critical import chi_square
 from adjust.judge.effect_words import SIGNIFICANT, Systematic
 from adjust.judge.mix_up_rows import OCCUPIED, RowsInCommon, Shared
+from adjust.judge.naming import together
 from adjust.judge.reliability import Reliability
 from adjust.judge.rows import without_rows
 from adjust.kinds import KINDS
@@ -44,9 +45,13 @@ LEVEL = 0.999
 FITS = 10.0
 """Weighted square sum a reading to spare below which a job counts as fitting: stated precision is wrong by more than a
 factor 3 in few jobs, and a name or a unit mixed up gives thousands."""
+BESIDES = 1e4
+"""Variance factor that other blunders may leave: one of 500 standard deviations among 25 readings; a wrong name or unit
+that is left makes millions."""
 BENT = 0.05
 """Logarithm of the ratio of booked to adjusted lengths, its median in a table, from which a unit is asked after: one of
 two tables in another unit shows a good part of the factor 3.28, and single blunders do not move a median so far."""
+MOST_NAMED = 3
 NEAREST = 3
 """Stations adjusted for each occupation or sight."""
 NEAR = 300.0
@@ -72,11 +77,12 @@ class MixUp:
     slip: str
     """feet-for-metres, wrong-station."""
 
-    @property
-    def as_effect(self) -> Systematic:
-        """As an effect common to many readings."""
+    def as_effect(self, still: Sequence[str] = ()) -> Systematic:
+        """As an effect common to many readings; ``still``: identifications of those that fail once it is put right."""
+        few = together(list(still[:MOST_NAMED])) + (" and others" if len(still) > MOST_NAMED else "")
+        besides = f" Once that is put right, {few} still fail{'s' if len(still) == 1 else ''}." if still else ""
         return Systematic(self.shared.what, self.shared.of, "number", len(self.shared.rows), None, None, None, None,
-                          SIGNIFICANT, self.sentence, self.slip)  # fmt: skip
+                          SIGNIFICANT, self.sentence + besides, self.slip)  # fmt: skip
 
 
 def unit_mixed_up(solution: Solution, known: Reliability) -> MixUp | None:
@@ -257,7 +263,7 @@ class _Trials:
         total = solution.total
         if rest is None:
             return solution if total.square_sum <= FITS * max(total.degrees_of_freedom, 1) else None
-        most = chi_square(LEVEL, len(one.rows)) * min(max(1.0, rest.square_sum / max(rest.degrees, 1)), FITS)
+        most = chi_square(LEVEL, len(one.rows)) * min(max(1.0, rest.square_sum / max(rest.degrees, 1)), BESIDES)
         return solution if total.square_sum - rest.square_sum <= most else None
 
     def _without(self, one: Shared) -> _Rest | None:

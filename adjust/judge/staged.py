@@ -88,8 +88,10 @@ def _without_mix_up(solution: Solution, known: Reliability, tests: Tests, mixed:
     """The effects and the control as they are once a unit or a name is put right; single readings are judged then."""
     known_then = reliability(mixed.solution)
     besides = _searched(mixed.solution, known_then, tests, gross_rows(mixed.solution, known_then, tests))
+    rows, blocks = mixed.solution.network.rows, mixed.solution.network.blocks
+    still = [blocks[rows.block[r]].name(int(rows.row[r])) for r in besides.found.rows]
     return Searched(exactly(solution, known, ()), besides.cleaned, besides.report, (),
-                    (mixed.as_effect, *besides.systematic), shared=True)  # fmt: skip
+                    (mixed.as_effect(still), *besides.systematic), shared=True)  # fmt: skip
 
 
 def _of_control(solution: Solution, f: Finding) -> bool:

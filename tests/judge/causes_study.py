@@ -156,7 +156,10 @@ def judged(sort: Sort, one: Clean, folder: Path, rng: np.random.Generator) -> tu
         named = any(w in s for w in wrong for s in refusal.sentences)
         return replace(made, reading="refused by name" if named else "refused"), None
     if not suspects:
-        return replace(made, reading="none"), judgement
+        if not _one_sight(judgement, wrong):
+            return replace(made, reading="none"), judgement
+        cause = "right" if sort.slip == "wrong-station" else "wrong"
+        return replace(made, reading="first", cause=cause, said="wrong-station"), judgement
     first, ids = suspects[0], judgement.ids
     if ids[first.row] not in wrong:
         group = {ids[r] for r, _, _ in judgement.confusable(first)}
@@ -164,6 +167,15 @@ def judged(sort: Sort, one: Clean, folder: Path, rng: np.random.Generator) -> tu
     else:
         made = replace(made, reading="first")
     return _told(made, judgement, sort, at), judgement
+
+
+def _one_sight(judgement: Judgement, wrong: set[str]) -> bool:
+    """Whether all wrong readings are named together, as of one sight that was booked to another station."""
+    network, names = judgement.solution.network, judgement.solution.names
+    rows = [r for r, name in enumerate(judgement.ids) if name in wrong]
+    booked = [network.blocks[network.rows.block[r]].stations[network.rows.row[r]] for r in rows]
+    sights = [set(e.of.split(" to ")) for e in judgement.systematic if e.what == "station sighted"]
+    return any(all(sight <= {names[int(s)] for s in stations} for stations in booked) for sight in sights)
 
 
 def _told(made: Outcome, judgement: Judgement, sort: Sort, at: Planted) -> Outcome:
@@ -237,9 +249,12 @@ def _verdict_of_two(empty: Outcome, changed: Job, made: list[tuple[Sort, Planted
     for sort, _, wrong in made:
         mine = [s for s in suspects if ids[s.row] in wrong]
         beside = [s for s in suspects if wrong & {ids[r] for r, _, _ in judgement.confusable(s)}]
-        found += bool(mine or beside)
-        causes_right += any(c.slip == sort.slip for s in (mine or beside)[:1] for c in judgement.causes(s)[:1])
-    reading = ("none", "one of two", "first")[found] if suspects else "none"
+        together = _one_sight(judgement, wrong)
+        found += bool(mine or beside or together)
+        causes_right += (together and sort.slip == "wrong-station") or any(
+            c.slip == sort.slip for s in (mine or beside)[:1] for c in judgement.causes(s)[:1]
+        )
+    reading = ("none", "one of two", "first")[found]
     return replace(empty, reading=reading, cause=("neither", "one right", "both right")[causes_right])
 
 

@@ -21,7 +21,7 @@ from tests.judge.slipped import Sheet, booked_job
 
 
 @pytest.mark.parametrize(
-    ("what", "number"), [("feet", 3), ("occupied", 0), ("occupied", 3), ("sighted", 1), ("target", 2)]
+    ("what", "number"), [("feet", 60), ("occupied", 0), ("occupied", 3), ("sighted", 1), ("target", 2)]
 )
 def test_named_as_one_cause(tmp_path: Path, what: str, number: int) -> None:
     assert outcome(what, number, tmp_path) == "named"
@@ -38,6 +38,15 @@ def test_the_sentence_says_what_where_and_how_it_would_fit(tmp_path: Path) -> No
         "not. Look at distances.csv:10 and directions.csv:26 to 30."
     )
     assert judged.suspects == ()
+
+
+def test_a_blunder_besides_is_named_with_it(tmp_path: Path) -> None:
+    job, _ = SORTS["occupied"](np.random.default_rng([20261208, 0, len("occupied")]), 0, tmp_path)
+    sheet = Sheet.of(job / "distances.csv")
+    sheet.put(3, "distance", f"{float(sheet.get(3, 'distance')) + 0.5:.4f}")
+    first = adjust.assess(adjust.solve(adjust.read(job))).systematic[0]
+    assert first.what == "station occupied"
+    assert first.sentence.endswith("Once that is put right, distances.csv:5 still fails.")
 
 
 def _job(folder: Path, seed: int) -> Path:
