@@ -17,7 +17,7 @@ from typing import TYPE_CHECKING, Any
 
 from adjust.record import page_checks, page_close, page_cover, page_readings, page_results
 from adjust.record.json_text import json_bytes
-from adjust.record.page_blocks import FOLDER, Block, Part
+from adjust.record.page_blocks import FOLDER, Block, Grid, Part, slim
 from adjust.record.page_summary import summary
 from adjust.record.page_view import HASH_SHOWN, View, inputs_hash
 from adjust.record.page_words import glossary
@@ -55,7 +55,7 @@ def record_page(record: Entry) -> str:
 
     view = View.of(record)
     environment = _environment()
-    parts = [Part(key, n + 1, view.texts(f"parts.{key}"), tuple(make(view))) for n, (key, make) in enumerate(PARTS)]
+    parts = [Part(key, n + 1, view.texts(f"parts.{key}"), _blocks(make(view))) for n, (key, make) in enumerate(PARTS)]
     body = environment.get_template("body.j2").render(view=view, t=view.texts, parts=parts, summary=summary(view))
     script = "\n".join(path.read_text("utf-8") for path in sorted(FOLDER.glob("*.js")))
     digest = base64.b64encode(hashlib.sha256(script.encode()).digest()).decode()
@@ -73,6 +73,10 @@ def record_page(record: Entry) -> str:
         body=Markup(body),
         glossary=glossary(view.texts, body),
     )
+
+
+def _blocks(made: Iterator[Block]) -> tuple[Block, ...]:
+    return tuple(slim(one) if isinstance(one, Grid) else one for one in made)
 
 
 @cache

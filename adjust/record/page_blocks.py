@@ -8,7 +8,7 @@ from __future__ import annotations
 import re
 import tomllib
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cache
 from pathlib import Path
 from typing import Any, ClassVar
@@ -19,6 +19,8 @@ FOLDER = Path(__file__).parent / "page"
 """Templates, style, scripts and the catalogue of texts."""
 NAME_MOST, TEXT_MOST = 60, 400
 """Characters of a name, and of a cell's text, that a table shows; the files hold all."""
+WORD_MOST = 24
+"""Characters of a word that a column of a printed page has room for."""
 
 
 @dataclass(frozen=True)
@@ -33,6 +35,12 @@ class Cell:
     """Class of a verdict or role; its sign is drawn beside the text, so that colour is never alone."""
     link: str = ""
     """Fragment that the cell leads to."""
+
+    @property
+    def long(self) -> bool:
+        """Whether it may break anywhere: a word too long for a column, or words beside a figure."""
+        most = max(map(len, self.text.split()), default=0)
+        return most > WORD_MOST or (self.kind == "number" and len(self.text) > WORD_MOST)
 
 
 @dataclass(frozen=True)
@@ -180,6 +188,15 @@ def catalogue() -> Texts:
     return Texts(tomllib.loads((FOLDER / "texts.toml").read_text("utf-8")))
 
 
+def slim(grid: Grid) -> Grid:
+    """The table without columns in which every cell is empty; the first stays."""
+    kept = [k for k in range(len(grid.columns)) if not k or any(row.cells[k].text for row in grid.rows)]
+    if len(kept) == len(grid.columns):
+        return grid
+    rows = tuple(replace(row, cells=tuple(row.cells[k] for k in kept)) for row in grid.rows)
+    return replace(grid, columns=tuple(grid.columns[k] for k in kept), rows=rows)
+
+
 def name_cell(name: object, link: str = "") -> Cell:
     """A station or any other name."""
     return Cell(plain(name, NAME_MOST), kind="name", link=link)
@@ -199,7 +216,8 @@ def paragraphs(text: object) -> tuple[str, ...] | None:
     """A text of the surveyor by its blank lines, signs without a shape written out; None where there is none."""
     if text is None or not str(text).strip():
         return None
-    return tuple(plain(one.strip(), len(one) + 9 * len(one)) for one in re.split(r"\n\s*\n", str(text)) if one.strip())
+    parts = (" ".join(one.split()) for one in re.split(r"\n\s*\n", str(text)))
+    return tuple(plain(one, 10 * len(one)) for one in parts if one)
 
 
 def facts(rows: Iterable[tuple[str, object]]) -> Facts:

@@ -58,7 +58,10 @@ def _closure(view: View, i: int) -> Row:
     one = view.record["closures"][i]
     look = " ".join(
         [plain(one["sentence"], 300)]
-        + [t("closures.cause", cause=plain(c["sentence"], 160), place=plain(c["place"], 60)) for c in one["likely_causes"]]
+        + [
+            t("closures.cause", cause=plain(c["sentence"], 160), place=plain(c["place"], 60))
+            for c in one["likely_causes"]
+        ]
     )
     length = one["length"]
     cells = (
@@ -183,8 +186,8 @@ def _suspects(view: View) -> Iterator[Block]:
     chance = view.shown.mark(f"{record['expected_by_chance']:.2g}") if record["expected_by_chance"] is not None else "–"
     if record["suspects"]:
         rows = tuple(_suspect(view, one) for one in record["suspects"][:ROWS_MOST])
-        heads = [("reading", "", False), ("line", "", False), ("what", "", False), ("blunder", "", False),
-                 ("statistic", "", True), ("level", "", False), ("cause", "", False), ("confusable", "", False)]  # fmt: skip
+        keys = ("reading", "line", "what", "blunder", "statistic", "level", "cause", "confusable")
+        heads = [(key, "", key == "statistic") for key in keys]
         yield Grid("suspects", t("caption.suspects"), columns(t, "head", heads), rows, note=t("free.hint"))
         yield Words((t("free.chance", n=chance),))
     else:
@@ -212,7 +215,8 @@ def _search(view: View) -> Iterator[Block]:
     t, s, record = view.texts, view.shown, view.record
     without = record["without_suspects"]
     if without and without["variance_factor"] is not None:
-        yield Words((t("free.without", n=len(without["observations"]), factor=s.mark(f"{without['variance_factor']:.2f}"),
+        factor = s.mark(f"{without['variance_factor']:.2f}")
+        yield Words((t("free.without", n=len(without["observations"]), factor=factor,
                        verdict=t.word("verdict", without["overall_test"]["verdict"])),))  # fmt: skip
     if record["cleared"]:
         yield Words((t("free.cleared", names=some(one["observation"] for one in record["cleared"])),))
@@ -232,7 +236,8 @@ def _unchecked(view: View) -> Iterator[Block]:
     t, record = view.texts, view.record
     if record["unchecked"]:
         rows = tuple(
-            Row((view.reading_cell(one["observation"]), text_cell(one["why"]))) for one in record["unchecked"][:ROWS_MOST]
+            Row((view.reading_cell(one["observation"]), text_cell(one["why"])))
+            for one in record["unchecked"][:ROWS_MOST]
         )
         heads = tuple(Column(t(f"head.{h}")) for h in ("reading", "why"))
         yield Grid("unchecked", t("caption.unchecked"), heads, rows, note=t("free.unchecked_note"))

@@ -69,13 +69,17 @@ def instruments(view: View) -> Iterator[Block]:
     """Instruments, their error models, constants and weather; peg tests; corrections of distances."""
     t, settings = view.texts, view.record["settings"]
     yield supplied(view, ("instruments", "calibration"))
-    models: list[tuple[object, ...]] = [(name, t.word("model", key), text) for name, keys in settings["instruments"].items() for key, text in keys.items()]
+    models: list[tuple[object, ...]] = [
+        (name, t.word("model", key), text)
+        for name, keys in settings["instruments"].items()
+        for key, text in keys.items()
+    ]
     yield from table(view, "error-models", ("instrument", "reading", "error_model"), models)
     yield from _constants(view)
     yield from table(view, "tables-read", ("file", "table", "instrument", "sd_factor", "surface", "reflector", "made"),
                      [_book(view, one) for one in settings["books"]])  # fmt: skip
     tests = [one["sentence"] for one in view.record["reductions"] if one["what"] == "two-peg test" and one["sentence"]]
-    yield Items(tuple(plain(one, 300) for one in tests) or (t("page.not_supplied"),), t("instruments.peg_tests"))
+    yield Facts(((t("instruments.peg_tests"), tuple(plain(one, 300) for one in tests) or None),))
     yield from _ledger(view)
 
 
@@ -125,7 +129,13 @@ def _ledger(view: View) -> Iterator[Block]:
         for one in ledger[:LEDGER_MOST]
     )  # fmt: skip
     note = t("ledger.more", n=LEDGER_MOST, all=len(ledger)) if len(ledger) > LEDGER_MOST else ""
-    heads = [("reading", "", False), ("what", "", False), ("amount", "", True), ("how", "", False), ("source", "", False)]
+    heads = [
+        ("reading", "", False),
+        ("what", "", False),
+        ("amount", "", True),
+        ("how", "", False),
+        ("source", "", False),
+    ]
     yield Grid("ledger", t("ledger.caption"), columns(t, "head", heads), rows, note=note, folded=True)
 
 

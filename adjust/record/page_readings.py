@@ -57,10 +57,11 @@ def _observations(view: View) -> Grid:
 def _observation(view: View, i: int) -> Row:
     t, s = view.texts, view.shown
     one = view.record["observations"][i]
-    kind, sd = one["kind"], one["sd"]
+    kind, sd, place = one["kind"], one["sd"], place_of(one)
     first = one["suspect"] or one["id"] in view.suspects
     cells = (
-        name_cell(one["id"]), Cell(place_of(one), one["line"], "code"), Cell(reading_in_words(one), kind="name"),
+        name_cell(one["id"]), Cell("" if place == one["id"] else place, kind="code"),
+        Cell(reading_in_words(one), kind="name"),
         number_cell(plain(one["booked"], 60)), _corrections(view, one), reading_cell(s, kind, one["observed"], sd),
         amount_cell(s, kind, one["residual"], sd), reading_cell(s, kind, one["adjusted"], one["sd_adjusted"] or sd),
         sd_cell(s, kind, sd) if sd is not None else Cell(t("roles.held"), kind="number"),
@@ -77,7 +78,7 @@ def _corrections(view: View, one: Entry) -> Cell:
         return number_cell("")
     total = sum(c["value"] for c in amounts)
     names = ", ".join(dict.fromkeys(plain(c["name"], 40) for c in amounts))
-    return number_cell(f"{view.shown.amount(total, None, one['kind'])} ({names})", total)
+    return number_cell(f"{view.shown.amount(total, one['sd'], one['kind'])} ({names})", total)
 
 
 def _share(view: View, share: float | None) -> Cell:
@@ -100,12 +101,14 @@ def _asides(view: View, key: str, heads: tuple[str, ...]) -> Iterator[Block]:
         yield Words((t(f"none.{key}"),))
         return
     rows = tuple(
-        Row((name_cell(one["observation"]), Cell(t.word("kinds", one["kind"])), Cell(some(one["stations"]), kind="name"),
-             *((text_cell(one["reason"]),) if "reason" in one else ())))
+        Row((name_cell(one["observation"]), Cell(t.word("kinds", one["kind"])),
+             Cell(some(one["stations"]), kind="name"), *((text_cell(one["reason"]),) if "reason" in one else ())))
         for one in entries[:LEDGER_MOST]
     )  # fmt: skip
     note = t("ledger.more", n=LEDGER_MOST, all=len(entries)) if len(entries) > LEDGER_MOST else ""
-    yield Grid(key.replace("_", "-"), t(f"caption.{key}"), tuple(Column(t(f"head.{h}")) for h in heads), rows, note=note)
+    yield Grid(
+        key.replace("_", "-"), t(f"caption.{key}"), tuple(Column(t(f"head.{h}")) for h in heads), rows, note=note
+    )
 
 
 def _reductions(view: View) -> Iterator[Block]:

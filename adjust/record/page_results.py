@@ -5,13 +5,25 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from adjust.record.live_plan import plan_svg
-from adjust.record.page_blocks import Block, Cell, Figure, Grid, Heading, Items, Row, Words, columns, text_cell
+from adjust.record.page_blocks import (
+    Block,
+    Cell,
+    Figure,
+    Grid,
+    Heading,
+    Items,
+    Row,
+    Words,
+    columns,
+    number_cell,
+    text_cell,
+)
 from adjust.record.page_checks import figures, part_table
 from adjust.record.page_cover import table
 from adjust.record.page_view import ROWS_MOST, STATIONS_MOST, View
-from adjust.record.page_words import coordinate, number_cell, small, some
+from adjust.record.page_words import coordinate, small, some
 from adjust.record.pictures import pictures
-from adjust.record.shown import Entry, plain
+from adjust.record.shown import Entry, plain, two_figures
 
 
 def held(view: View) -> Iterator[Block]:
@@ -79,7 +91,7 @@ def _parameter(view: View, one: Entry) -> Cell:
 
 def _parameter_sd(view: View, one: Entry) -> str:
     s = view.shown
-    return s.mark(f"{one['sd']:.2g}" if one["what"] in NUMBERS else f"{s.in_small_angle(one['sd']):.2g}")
+    return s.mark(two_figures(one["sd"] if one["what"] in NUMBERS else s.in_small_angle(one["sd"])))
 
 
 def coordinates(view: View) -> Iterator[Block]:
@@ -107,7 +119,12 @@ def _stations(view: View) -> Grid:
     heads = [("station", "", False), ("role", "", False), *((axis, s.length, True) for axis in axes),
              *((f"sd_{axis}", s.small, True) for axis in axes)]  # fmt: skip
     if plane:
-        heads += [("major", s.small, True), ("minor", s.small, True), ("long_axis", "", True), ("circle", s.small, True)]
+        heads += [
+            ("major", s.small, True),
+            ("minor", s.small, True),
+            ("long_axis", "", True),
+            ("circle", s.small, True),
+        ]
     if high:
         heads.append(("interval_height", s.small, True))
     note = t("coordinates.note", confidence=view.confidence)
@@ -165,7 +182,11 @@ def _ellipse(view: View, e: Entry | None) -> list[Cell]:
     if not e or not e["semi_major"]:
         return [number_cell("")] * 3
     s = view.shown
-    return [small(s, e["semi_major"]), small(s, e["semi_minor"]), number_cell(s.rough_bearing(e["azimuth"]), e["azimuth"])]
+    return [
+        small(s, e["semi_major"]),
+        small(s, e["semi_minor"]),
+        number_cell(s.rough_bearing(e["azimuth"]), e["azimuth"]),
+    ]
 
 
 def _lines(view: View) -> Grid:
@@ -177,8 +198,8 @@ def _lines(view: View) -> Grid:
         order = sorted(order, key=lambda i: (-_line_size(entries[i]), i))[:ROWS_MOST]
     heads = [("from", "", False), ("to", "", False)]
     if plane:
-        heads += [("distance", s.length, True), ("sd", s.small, True), ("azimuth", "", True),
-                  ("sd", s.small_angle, True), ("major", s.small, True), ("minor", s.small, True),
+        heads += [("distance", s.length, True), ("sd_distance", s.small, True), ("azimuth", "", True),
+                  ("sd_azimuth", s.small_angle, True), ("major", s.small, True), ("minor", s.small, True),
                   ("long_axis", "", True)]  # fmt: skip
     if high:
         heads.append(("sd_rise", s.small, True))
@@ -207,7 +228,7 @@ def _line(view: View, i: int, plane: bool, high: bool) -> Row:
 def _angle_sd(view: View, sd: float | None) -> Cell:
     if not sd:
         return number_cell("")
-    return number_cell(view.shown.mark(f"{view.shown.in_small_angle(sd):.2g}"), sd)
+    return number_cell(view.shown.mark(two_figures(view.shown.in_small_angle(sd))), sd)
 
 
 def compliance(view: View) -> Iterator[Block]:

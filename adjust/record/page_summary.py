@@ -56,10 +56,10 @@ def _surveyed(view: View) -> Iterator[str]:
             readings=t.counted("summary.readings", record["solution"]["observations"]))  # fmt: skip
     if view.said("purpose"):
         yield t("summary.purpose", purpose=plain(view.said("purpose"), 300))
-    who = [t(f"summary.{key}", text=plain(text, 120)) for key, text in
-           (("place", view.said("place")), ("surveyed", job["surveyed"]), ("client", job["client"])) if text]  # fmt: skip
+    said = (("place", view.said("place")), ("surveyed", job["surveyed"]), ("client", job["client"]))
+    who = ", ".join(t(f"summary.{key}", text=plain(text, 120)) for key, text in said if text)
     if who:
-        yield ", ".join(who)[:1].upper() + ", ".join(who)[1:] + "."
+        yield f"{who[:1].upper()}{who[1:]}."
 
 
 def _sure(view: View) -> Iterator[str]:

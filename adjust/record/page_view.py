@@ -103,7 +103,7 @@ class View:
 
 
 def reading_order(record: Entry) -> tuple[int, ...]:
-    """Suspects in order of blame, then what nothing checks, then the book's order, or the worst where there are many."""
+    """Suspects in order of blame, then what nothing checks, then the book's order; the worst where there are many."""
     observations = record["observations"]
     blamed = {one["observation"]: k for k, one in enumerate(record["suspects"])}
     unchecked = {one["observation"] for one in record["unchecked"]}

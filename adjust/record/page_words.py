@@ -7,7 +7,7 @@ from collections.abc import Iterable, Mapping
 from typing import Any
 
 from adjust.record.page_blocks import NAME_MOST, Cell, Texts, number_cell
-from adjust.record.shown import ANGLE_KINDS, NUMBER_KINDS, Entry, Shown, fixed, plain, places_for, two_figures
+from adjust.record.shown import ANGLE_KINDS, NUMBER_KINDS, Entry, Shown, fixed, places_for, plain, two_figures
 from adjust.units import ANGLES, format_angle
 
 VERDICT_MARKS = {
@@ -103,9 +103,9 @@ def way(names: Iterable[str], most: int = 9) -> str:
 
 def some(names: Iterable[object], most: int = 8) -> str:
     """A list of names that stays short."""
-    names = [plain(name, NAME_MOST // 2) for name in names]
-    rest = len(names) - most
-    return ", ".join(names[:most]) + (f" (+{rest})" if rest > 0 else "")
+    listed = [plain(name, NAME_MOST // 2) for name in names]
+    rest = len(listed) - most
+    return ", ".join(listed[:most]) + (f" (+{rest})" if rest > 0 else "")
 
 
 def place_of(observation: Entry) -> str:
