@@ -18,6 +18,7 @@ from typing import TYPE_CHECKING, Any
 from adjust.record import page_checks, page_close, page_cover, page_readings, page_results
 from adjust.record.json_text import json_bytes
 from adjust.record.page_blocks import FOLDER, Block, Grid, Part, slim
+from adjust.record.page_rows import rows_markup
 from adjust.record.page_summary import summary
 from adjust.record.page_view import HASH_SHOWN, View, inputs_hash
 from adjust.record.page_words import glossary
@@ -83,9 +84,12 @@ def _blocks(made: Iterator[Block]) -> tuple[Block, ...]:
 def _environment() -> Environment:
     """The templates, loaded where a page is written and only there."""
     from jinja2 import Environment, FileSystemLoader, StrictUndefined
+    from markupsafe import Markup
 
-    return Environment(loader=FileSystemLoader(FOLDER), autoescape=True, undefined=StrictUndefined, trim_blocks=True,
+    made = Environment(loader=FileSystemLoader(FOLDER), autoescape=True, undefined=StrictUndefined, trim_blocks=True,
                        lstrip_blocks=True, keep_trailing_newline=True)  # fmt: skip
+    made.filters["rows"] = lambda grid: Markup(rows_markup(grid))
+    return made
 
 
 def _script_texts(view: View) -> dict[str, str]:

@@ -252,7 +252,7 @@ def compliance(view: View) -> Iterator[Block]:
 def plan(view: View) -> Iterator[Block]:
     """The plan, and pictures of where to look."""
     t = view.texts
-    svg = plan_svg(view.record)
+    svg = plan_svg(view.record, t.tree)
     yield Figure(svg, t("plan.title"), t("plan.words"), "plan-figure") if svg else Words((t("none.plan"),))
-    for one in pictures(view.record):
+    for one in pictures(view.record, t.tree):
         yield Figure(one.svg, one.title, one.words)

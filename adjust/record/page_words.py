@@ -115,6 +115,8 @@ def place_of(observation: Entry) -> str:
 
 def glossary(texts: Texts, body: str) -> list[tuple[str, str]]:
     """The terms that the page uses, with their meanings, by the alphabet."""
-    lowered = body.lower()
+    lowered = re.sub(
+        r"<tbody>.*?</tbody>", "", body, flags=re.S
+    ).lower()  # heads and captions say what a table is about
     terms = sorted(texts.branch("glossary").items())
     return [(term, meaning) for term, meaning in terms if re.search(rf"\b{re.escape(term)}", lowered)]

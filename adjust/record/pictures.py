@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Any
 
 from adjust.record.shown import Entry
 
@@ -17,6 +19,6 @@ class Picture:
     words: str
 
 
-def pictures(record: Entry) -> tuple[Picture, ...]:
+def pictures(record: Entry, texts: Mapping[str, Any] | None = None) -> tuple[Picture, ...]:
     """The pictures of a record; kinds with nothing to show are left out."""
     return ()
