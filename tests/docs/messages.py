@@ -34,9 +34,9 @@ OTHER_PAGES = {
     **dict.fromkeys(
         (
             f"adjust/record/page{part}.py"
-            for part in ("", "_checks", "_close", "_cover", "_readings", "_results", "_summary", "_words")
+            for part in ("", "_checks", "_close", "_cover", "_readings", "_results", "_rows", "_summary", "_words")
         ),
-        "words of the record that are looked up; what the page says itself is in adjust/record/page/texts.toml",
+        "markup, and words of the record that are looked up; what the page says itself is in adjust/record/page/texts.toml",
     ),
 }
 """Modules whose texts are no messages, with the reason."""
