@@ -36,7 +36,7 @@ OTHER_PAGES = {
             f"adjust/record/page{part}.py"
             for part in ("", "_checks", "_close", "_cover", "_readings", "_results", "_rows", "_summary", "_words")
         ),
-        "markup, and words of the record that are looked up; what the page says itself is in adjust/record/page/texts.toml",
+        "markup, and words of the record looked up; what the page says itself is in adjust/record/page/texts.toml",
     ),
 }
 """Modules whose texts are no messages, with the reason."""
