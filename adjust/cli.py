@@ -52,6 +52,7 @@ def parser() -> argparse.ArgumentParser:
         command.add_argument("--verbose", action="store_true", help="also print the time of each phase")
     adjust.add_argument("--json", action="store_true", help="print the record and write nothing unless --out is given")
     adjust.add_argument("--out", metavar="DIR", help="folder of the record (default JOB/record)")
+    adjust.add_argument("--open", action="store_true", help="open the record's page in the browser")
     adjust.add_argument("--without-suspects", action="store_true",
                         help="leave out the suspects at the level of the whole job, each with its reason")  # fmt: skip
     return top
@@ -142,6 +143,10 @@ def _adjust(given: argparse.Namespace) -> int:
 
     job = read(given.job)
     out = Path(given.out) if given.out else None if given.json else job.folder / "record"
+    if given.open and not out:
+        from adjust.errors import OutputError
+
+        raise OutputError(["--open has no page to open, because --json writes none: add --out DIR"])
     if out:
         from adjust.record.folder import check_out
 
@@ -179,6 +184,11 @@ def _deliver(given: argparse.Namespace, judgement: Any, out: Any) -> None:
 
         print("\n".join(summary_lines(record)))
         print(f"The record is in {out}")
+        print(f"Read it in a browser: {out / 'record.html'}")
+    if given.open and out:
+        import webbrowser
+
+        webbrowser.open((out / "record.html").resolve().as_uri())
 
 
 _COMMANDS = {"start": _start, "check": _check, "adjust": _adjust}

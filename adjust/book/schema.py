@@ -102,6 +102,32 @@ DRAWING = (
     Field("layers", "list", "what is drawn beside stations, title, scales and caution; left out: everything",
           choices=LAYERS),
 )  # fmt: skip
+RECORD = (
+    Field("edition", "text", 'edition of this record, and what it replaces: "2, replaces edition 1 of 3 June"'),
+    Field("issued", "date", "day on which it is handed over, written 2026-05-20 or as text"),
+    Field("place", "text", "where the work lies"),
+    Field("purpose", "text", "what the survey is for"),
+    Field("accuracy", "text", "the accuracy that is required, and between what"),
+    Field("rule", "text", "rule, contract or order that asks for it, with its edition; [tolerance] is what judges"),
+    Field("surveyor", "text", "the responsible surveyor"),
+    Field("licence", "text", "the surveyor's licence or registration"),
+    Field("crew", "text", "who measured, and on which days"),
+    Field("datum", "text", "datum of the coordinates and of the heights, and where they come from"),
+    Field("epoch", "text", "epoch of the coordinates"),
+    Field("projection", "text", "map projection, or how the local plane lies"),
+    Field("geoid", "text", "geoid or height model"),
+    Field("bearing_basis", "text", "what gives the bearings their north"),
+    Field("surface", "text", "grid or ground: where coordinates and printed distances lie, and the factor between"),
+    Field("instruments", "text", "instruments and their numbers"),
+    Field("calibration", "text", "when and how they were calibrated"),
+    Field("methods", "text", "how the measurements were made"),
+    Field("criteria", "text", "criteria of rejection that were set before the work"),
+    Field("control", "text", "where the control comes from; marks looked for and not found, or found and not used, and "
+          "why"),
+    Field("conclusions", "text", "the surveyor's conclusions"),
+    Field("limits", "text", "what the survey does not cover or say"),
+)  # fmt: skip
+"""What the surveyor says of the work: shown on the record's page, and used in no computation."""
 BOOK_UNITS = tuple(Field(f.name, f.type, f.meaning + " (in this table)", choices=f.choices) for f in UNITS[:3])
 BOOK = (
     Field("file", "text", "name of the table; left out: KIND.csv"),
@@ -164,6 +190,7 @@ SECTIONS: dict[str, tuple[Field, ...]] = {
     "rejection": REJECTION,
     "tolerance": TOLERANCE,
     "drawing": DRAWING,
+    "record": RECORD,
 }
 """Sections of job.toml; '' is the top, 'instruments.*' every instrument, 'reflectors.*' every reflector, 'book' every
 [[book]] block."""

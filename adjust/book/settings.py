@@ -124,6 +124,8 @@ class Settings:
     rules: tuple[str, ...] = ()
     """Rules that [tolerance] names, with their classes."""
     drawing: Drawing = Drawing()
+    particulars: dict[str, str] = field(default_factory=dict)
+    """What [record] says of the work, by key; a text of blanks says nothing."""
     lines: dict[str, int] = field(default_factory=dict)
     """Line of every key of job.toml by its dotted path."""
 
@@ -183,6 +185,7 @@ def read_settings(text: str, faults: Faults) -> Settings | None:
         rejection=_rejection(r, job.get("rejection", {})),
         rules=tolerance["rule"] or (),
         drawing=_drawing(r, job.get("drawing", {})),
+        particulars=_particulars(r, job.get("record", {})),
         lines=r.lines,
     )
 
@@ -222,6 +225,10 @@ def _drawing(r: Reader, given: object) -> Drawing:
             r.fault(f"drawing.{key}", values[key], str(bad))
     layers = schema.LAYERS if values["layers"] is None else tuple(values["layers"])
     return Drawing(values["paper"] or "", values["orientation"], layers=layers, **parsed)
+
+
+def _particulars(r: Reader, given: object) -> dict[str, str]:
+    return {key: text for key, text in r.section("record", given, schema.RECORD).items() if text and text.strip()}
 
 
 def _instruments(r: Reader, given: object) -> tuple[dict[str, dict[str, Precision]], dict[str, Meter]]:

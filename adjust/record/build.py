@@ -11,6 +11,7 @@ import scipy
 import adjust
 from adjust.atmosphere import Air
 from adjust.book.level_keys import LEVEL_KINDS
+from adjust.book.schema import RECORD as PARTICULARS
 from adjust.book.settings import Table
 from adjust.caution import CAUTION
 from adjust.graph.cycles import METHOD
@@ -63,6 +64,7 @@ def _sections(judgement: Judgement) -> dict[str, Any]:
         "caution": CAUTION,
         "complete": True,
         "job": _job(solution),
+        "particulars": {f.name: solution.job.settings.particulars.get(f.name) for f in PARTICULARS},
         "settings": _settings(solution),
         "units": _units(solution),
         "frame": _frame(solution),

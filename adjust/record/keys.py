@@ -6,6 +6,7 @@ means null where there is nothing to say. Lengths are metres, angles radians, wh
 
 from __future__ import annotations
 
+from adjust.book.schema import RECORD as PARTICULARS
 from adjust.fields import Field
 from adjust.record.judged_keys import JUDGED, keys
 
@@ -37,6 +38,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ),
         ("findings", "list finding", "what matters most, in sentences, the gravest first"),
         ("job", "object job", "the job and its input files"),
+        ("particulars", "object particulars", "what [record] of job.toml says of the work; no figure depends on it"),
         ("settings", "object settings", "levels of the tests, datum, instruments and tables as declared"),
         ("units", "object units", "the job's units; the record itself is in metres and radians"),
         ("frame", "object frame", "the frame of the coordinates"),
@@ -88,6 +90,7 @@ RECORD: dict[str, tuple[Field, ...]] = {
         ("surveyed", "text", "day of the fieldwork"),
         ("inputs", "list input", "job.toml and every table read"),
     ),
+    "particulars": tuple(Field(f.name, "text?", f.meaning, required=True) for f in PARTICULARS),
     "input": keys(("file", "text", "file name in the job folder"), ("sha256", "text", "SHA-256 of its bytes")),
     "settings": keys(
         ("confidence", "number", "of ellipses and intervals"),

@@ -69,6 +69,7 @@ def job_schema() -> dict[str, Any]:
         "rejection": sections["rejection"],
         "reflectors": {"type": "object", "additionalProperties": sections["reflectors.*"]},
         "drawing": sections["drawing"],
+        "record": sections["record"],
         "instruments": {"type": "object", "additionalProperties": sections["instruments.*"]},
         "book": {"type": "array", "items": sections["book"]},
     }

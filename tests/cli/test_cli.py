@@ -30,7 +30,7 @@ angle = "dms"
 [instruments.level-1]
 levelling = "1.2 mm*sqrt(km)"
 """
-FILES = {"record.json", "stations.csv", "observations.csv", "drawing.svg", "drawing.png", "drawing.pdf"}
+FILES = {"record.json", "record.html", "stations.csv", "observations.csv", "drawing.svg", "drawing.png", "drawing.pdf"}
 Captured = pytest.CaptureFixture[str]
 
 

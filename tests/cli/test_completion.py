@@ -95,7 +95,7 @@ def _bash(folder, *words):
         (["--c"], ["--completion"]),
         (["--completion", ""], ["bash", "fish", "zsh"]),
         (["check", "--"], ["--help", "--quiet", "--verbose"]),
-        (["adjust", "--o"], ["--out"]),
+        (["adjust", "--ou"], ["--out"]),
         (["adjust", "--quiet", "--j"], ["--json"]),
         (["adjust", ""], ["away", "weir", "weir two"]),
         (["adjust", "we"], ["weir", "weir two"]),
@@ -119,7 +119,7 @@ def test_bash_completes_a_job_in_the_home_folder(folders, monkeypatch):
     ("line", "offered"),
     [
         ("brasscap ", ["adjust", "check", "start"]),
-        ("brasscap adjust --o", ["--out"]),
+        ("brasscap adjust --ou", ["--out"]),
         ("brasscap check we", ["weir two/", "weir/"]),
     ],
 )

@@ -31,6 +31,13 @@ OTHER_PAGES = {
     "adjust/record/judged_keys.py": "meanings of the record's keys: docs/record.md",
     "adjust/record/format_pages.py": "the text of docs/formats.md itself",
     "adjust/record/schemas.py": "titles of the JSON Schemas",
+    **dict.fromkeys(
+        (
+            f"adjust/record/page{part}.py"
+            for part in ("", "_checks", "_close", "_cover", "_readings", "_results", "_rows", "_summary", "_words")
+        ),
+        "markup, and words of the record looked up; what the page says itself is in adjust/record/page/texts.toml",
+    ),
 }
 """Modules whose texts are no messages, with the reason."""
 
