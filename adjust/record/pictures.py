@@ -1,0 +1,4 @@
+"""Pictures."""
+from typing import Any
+def pictures(record: Any) -> tuple[Any, ...]:
+    return ()
