@@ -44,8 +44,13 @@
 
   /* ---- moving and enlarging: one transform a frame ---- */
 
+  /* Where the drawing lies on the screen: a = pixels to a unit, e and f its corner. The frame may be wider than it. */
+  function onScreen() {
+    return plan.getScreenCTM() ?? { a: 1, e: 0, f: 0 };
+  }
+
   function pixels() {
-    return Math.max(plan.getBoundingClientRect().width, 1) / box.width; // pixels to a unit
+    return onScreen().a || 1;
   }
 
   function ask() {
@@ -114,8 +119,8 @@
   }
 
   function unitsAt(event) {
-    const frame = plan.getBoundingClientRect();
-    return [((event.clientX - frame.left) / frame.width) * box.width, ((event.clientY - frame.top) / frame.height) * box.height];
+    const { a, e, f } = onScreen();
+    return [(event.clientX - e) / a, (event.clientY - f) / a];
   }
 
   /* ---- pointers: drag with one, pinch with two ---- */
@@ -293,10 +298,9 @@
 
   /* Where an element lies in units of the drawing, whatever its shape. */
   function placeOf(element) {
-    const frame = plan.getBoundingClientRect();
+    const { a, e, f } = onScreen();
     const own = element.getBoundingClientRect();
-    const per = box.width / frame.width;
-    return [(own.left + own.width / 2 - frame.left) * per, (own.top + own.height / 2 - frame.top) * per];
+    return [(own.left + own.width / 2 - e) / a, (own.top + own.height / 2 - f) / a];
   }
 
   /* Bring what was chosen into the frame, moving only when it is near the edge or outside. */
@@ -449,10 +453,10 @@
   }
 
   function boxesOfNames() {
-    const frame = plan.getBoundingClientRect();
+    const { e, f } = onScreen();
     return [...plan.querySelectorAll(".label > text")].map((one) => {
       const own = one.getBoundingClientRect();
-      return [own.left - frame.left, own.top - frame.top, own.right - frame.left, own.bottom - frame.top];
+      return [own.left - e, own.top - f, own.right - e, own.bottom - f];
     });
   }
 
