@@ -10,6 +10,7 @@
   const MOST = 60; // enlargement at which a pixel is less than anything measured
   const NAME_PX = 12.5; // height of names on the screen
   const MANY = 1500; // symbols above which sizes follow only when a movement ends
+  const AT_ONCE = 1000; // rows that get their buttons when the page opens
   const texts = pageTexts();
   const view = { s: 1, x: 0, y: 0 };
   const stations = [...plan.querySelectorAll(".station")];
@@ -241,6 +242,12 @@
     return stationMap;
   }
 
+  let markMap = null;
+  function byObservation() {
+    markMap ??= new Map([...plan.querySelectorAll("[data-observation]")].map((one) => [one.dataset.observation, one]));
+    return markMap;
+  }
+
   let lineMap = null;
   function byEnds() {
     if (!lineMap) {
@@ -354,9 +361,7 @@
 
   function elementOf(row) {
     if (row.dataset.station != null) return byStation().get(row.dataset.station) ?? null;
-    const own = row.dataset.observation;
-    const suspect = own != null ? plan.querySelector(`[data-observation="${CSS.escape(own)}"]`) : null;
-    return suspect ?? byEnds().get(sortedEnds(row.dataset.ends)) ?? null;
+    return byObservation().get(row.dataset.observation) ?? byEnds().get(sortedEnds(row.dataset.ends)) ?? null;
   }
 
   function addButton(row) {
@@ -368,10 +373,10 @@
     cell.append(button);
   }
 
-  /* Thousands of buttons at once would delay the page: a row gets its own when it comes near the window. */
+  /* Thousands of buttons at once would delay the page: with many rows each gets its own when it comes near the window. */
   function buttons() {
     const rows = document.querySelectorAll("tr[data-station], tr[data-ends]");
-    if (!("IntersectionObserver" in window)) return rows.forEach(addButton);
+    if (rows.length <= AT_ONCE || !("IntersectionObserver" in window)) return rows.forEach(addButton);
     const watch = new IntersectionObserver((entries) => {
       for (const entry of entries.filter((one) => one.isIntersecting)) {
         addButton(entry.target);
@@ -386,7 +391,8 @@
     const row = button?.closest("tr");
     const element = row && elementOf(row);
     if (!element) return;
-    for (let layer = element.closest("[data-layer].off"); layer; layer = null) toggle(layer.dataset.layer, true);
+    const away = element.closest("[data-layer].off");
+    if (away) toggle(away.dataset.layer, true); // what is asked for is shown
     mark(element);
     chosenRow?.classList.remove("chosen");
     chosenRow = row; // Enter goes back to the row one came from
@@ -454,7 +460,7 @@
 
   function boxesOfNames() {
     const { e, f } = onScreen();
-    return [...plan.querySelectorAll(".label > text")].map((one) => {
+    return [...plan.querySelectorAll(".label > text, .furniture > g")].map((one) => {
       const own = one.getBoundingClientRect();
       return [own.left - e, own.top - f, own.right - e, own.bottom - f];
     });
