@@ -52,7 +52,9 @@ class Placed:
     tried: int
 
 
-def place_names(scene: Scene, marks: list[tuple[Point, float]], boxes: list[tuple[float, float, float, float]]) -> Placed:
+def place_names(
+    scene: Scene, marks: list[tuple[Point, float]], boxes: list[tuple[float, float, float, float]]
+) -> Placed:
     """Place names off symbols, ``marks`` (place and reach) and ``boxes``, and where there is room off lines."""
     size = SIZE if scene.many <= SOME else SMALLER
     pen = _Pen(size)
@@ -129,7 +131,9 @@ def draw_names(scene: Scene, placed: Placed) -> str:
         at = scene.at[name]
         rows.append(f'<g class="label" data-of="{scene.index[name]}" transform="translate({number(at[0])} {number(at[1])})">'
                     f'<text x="{number(x - at[0])}" y="{number(y - at[1])}">{name_of(name)}</text></g>')  # fmt: skip
-    lines = "".join(f'<path d="M{number(a[0])} {number(a[1])} {number(b[0])} {number(b[1])}"/>' for a, b in placed.leaders)
+    lines = "".join(
+        f'<path d="M{number(a[0])} {number(a[1])} {number(b[0])} {number(b[1])}"/>' for a, b in placed.leaders
+    )
     leaders = f'<g class="leaders">{lines}</g>' if lines else ""
     small = " smaller" if placed.size < SIZE else ""
     return f'<g data-layer="names" class="names{small}">{leaders}{"".join(rows)}</g>'

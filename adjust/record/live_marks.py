@@ -191,6 +191,7 @@ def _closure_spot(scene: Scene, names: list[str], marks: Marks) -> Point:
         (x1, y1), (x2, y2) = places[k].tolist(), places[k + 1].tolist()
         long = math.hypot(x2 - x1, y2 - y1) or 1.0
         x, y = (x1 + x2) / 2 + 16 * (y2 - y1) / long, (y1 + y2) / 2 - 16 * (x2 - x1) / long
-    spots = [(x + r * math.cos(t), y + r * math.sin(t)) for r in (0.0, 22.0, 40.0) for t in np.linspace(0, 5.5, 8).tolist()]
+    spots = [
+        (x + r * math.cos(t), y + r * math.sin(t)) for r in (0.0, 22.0, 40.0) for t in np.linspace(0, 5.5, 8).tolist()
+    ]
     return next((at for at in spots if _clear(scene, marks, at)), spots[0])
-

@@ -147,7 +147,9 @@ def _kept(scene: Scene) -> list[tuple[float, float, float, float]]:
 def _furniture(scene: Scene, record: Entry, words: Texts) -> str:
     """Scale bars and north point: they stay where they are while the ground is moved."""
     if scene.metres is None:
-        return f'<g class="furniture"><g transform="translate(6 16)"><text>{_height_words(record, words)}</text></g></g>'
+        return (
+            f'<g class="furniture"><g transform="translate(6 16)"><text>{_height_words(record, words)}</text></g></g>'
+        )
     shown, y = Shown.of(record), scene.height
     unit = LENGTHS[shown.length]
     bars = _bar("plan-scale", y - 14, scene.metres / unit, shown.length, shown, 1.0, "")
@@ -196,7 +198,10 @@ def _legend(scene: Scene, record: Entry, words: Texts, marks: Marks, names: Plac
     if any(one.pair for one in scene.relative):
         rows.append(_key("relatives", '<path class="pair" d="M-17 0H17"/>', words("plan.pair")))
     rows += _mark_keys(marks, words)
-    notes = "".join(f"<li class=\"note\">{safe(note)}</li>" for note in _notes(scene, words, marks, names))
+    notes = "".join(f'<li class="note">{safe(note)}</li>' for note in _notes(scene, words, marks))
+    if len(names.starts) < scene.many:
+        nameless = words.safe("plan.note_names", count=scene.many - len(names.starts))
+        notes += f'<li class="note of-names">{nameless}</li>'
     return f'<ul id="plan-legend" aria-label="{words.safe("plan.legend")}">{"".join(rows)}{notes}</ul>'
 
 
@@ -227,7 +232,7 @@ def _times(magnification: float | None) -> str:
     return f"{magnification or 1:g}" if (magnification or 1) < 1e5 else f"{magnification:.0f}"
 
 
-def _notes(scene: Scene, words: Texts, marks: Marks, names: Placed) -> list[str]:
+def _notes(scene: Scene, words: Texts, marks: Marks) -> list[str]:
     """What is not drawn, in words."""
     found = []
     if scene.metres is None:
@@ -242,7 +247,4 @@ def _notes(scene: Scene, words: Texts, marks: Marks, names: Placed) -> list[str]
         found.append(words("plan.note_closures", count=marks.unmarked))
     if not scene.record.get("complete", True):
         found.append(words("plan.note_incomplete"))
-    if len(names.starts) < scene.many:
-        found.append(words("plan.note_names", count=scene.many - len(names.starts)))
     return found
-

@@ -247,4 +247,3 @@ def curve_point(one: Point, bend: Point, other: Point, t: float) -> Point:
     """(1 - t)² one + 2 t (1 - t) bend + t² other."""
     a, b, c = (1 - t) ** 2, 2 * t * (1 - t), t * t
     return a * one[0] + b * bend[0] + c * other[0], a * one[1] + b * bend[1] + c * other[1]
-

@@ -50,9 +50,14 @@ def closure_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
             texts("pictures.closures_words", drawn=len(rows), all=len(every), over=over, untested=untested))  # fmt: skip
 
 
-def _bar(canvas: Canvas, axes: Axes, top: float, share: float, one: Entry, what: str, shown: Shown, texts: Texts) -> None:
+def _bar(
+    canvas: Canvas, axes: Axes, top: float, share: float, one: Entry, what: str, shown: Shown, texts: Texts
+) -> None:
     """Words of the closure, its bar below them, hatched where it is over the limit."""
-    first, last = plain(one["stations"][0], 10), plain(one["stations"][-2 if one["stations"][0] == one["stations"][-1] else -1], 10)
+    first, last = (
+        plain(one["stations"][0], 10),
+        plain(one["stations"][-2 if one["stations"][0] == one["stations"][-1] else -1], 10),
+    )
     words = texts(f"pictures.closures_{what}", kind=one["kind"], first=first, last=last,
                   amount=amount(shown, one["misclosure"][what], what), limit=amount(shown, one["allowable"][what], what))  # fmt: skip
     x0, x1 = axes.at(0.0, 0)[0], axes.at(min(share, REACH), 0)[0]
@@ -91,7 +96,10 @@ def profile_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
     span = max(max(heights) - min(heights), 0.01)
     times = max(nearest_step(0.12 * span * unit / max(half)), 1.0)
     band = [h * times / unit for h in half]
-    low, high = min(h - b for h, b in zip(heights, band, strict=True)), max(h + b for h, b in zip(heights, band, strict=True))
+    low, high = (
+        min(h - b for h, b in zip(heights, band, strict=True)),
+        max(h + b for h, b in zip(heights, band, strict=True)),
+    )
     axes = Axes((64.0, 30.0, WIDTH - 24, 268.0), (0.0, len(run) - 1.0), (low, high))
     _heights(canvas, axes, low, high, shown)
     upper = [axes.at(i, h + b) for i, (h, b) in enumerate(zip(heights, band, strict=True))]

@@ -36,7 +36,9 @@ def residual_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
     canvas = Canvas(46.0 + 112.0 * min(len(kinds), MOST_KINDS))
     shown = Shown.of(record)
     for i, kind in enumerate(kinds[:MOST_KINDS]):
-        _histogram(canvas, 112.0 * i, kind, [float(one["statistic"]) for one in rows if one["kind"] == kind], law, shown, texts)
+        _histogram(
+            canvas, 112.0 * i, kind, [float(one["statistic"]) for one in rows if one["kind"] == kind], law, shown, texts
+        )
     canvas.text((WIDTH / 2, canvas.height - 6), texts("pictures.residuals_axis"), anchor="m")
     beyond = sum(bool(one["suspect"]) for one in rows)
     values = np.array([one["statistic"] for one in rows])
@@ -46,7 +48,9 @@ def residual_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
             texts("pictures.residuals_words", count=len(rows), rms=rms, beyond=beyond, law=law_name))  # fmt: skip
 
 
-def _histogram(canvas: Canvas, top: float, kind: str, values: list[float], law: Law, shown: Shown, texts: Texts) -> None:
+def _histogram(
+    canvas: Canvas, top: float, kind: str, values: list[float], law: Law, shown: Shown, texts: Texts
+) -> None:
     """One kind: its counts in steps of one half, the law's curve, and arrows for what lies beyond."""
     edges = np.arange(-REACH - BIN, REACH + BIN + 1e-9, BIN)
     counts = np.histogram(np.clip(values, edges[0] + 1e-9, edges[-1] - 1e-9), edges)[0]
@@ -152,4 +156,9 @@ def _numbered(canvas: Canvas, axes: Axes, record: Entry, most: float, shown: Sho
         if numbers.get(one["id"], NUMBERED + 1) <= NUMBERED:
             figure = f" ({shown.mark(f'{value:.1f}')})" if abs(value) > most else ""
             aside = x > WIDTH - 130
-            canvas.text((x + (-9 if aside else 9), y + 6 + 5 * down), f"{numbers[one['id']]}{figure}", "number", "e" if aside else "")
+            canvas.text(
+                (x + (-9 if aside else 9), y + 6 + 5 * down),
+                f"{numbers[one['id']]}{figure}",
+                "number",
+                "e" if aside else "",
+            )

@@ -1,6 +1,6 @@
 """A small page around the live plan, the pictures and plain tables of a record: for tests in a browser, and to look at.
 
-    python -m tests.record.live_page RECORD.json PAGE.html
+python -m tests.record.live_page RECORD.json PAGE.html
 """
 
 from __future__ import annotations
@@ -18,7 +18,7 @@ from adjust.record.pictures import pictures
 
 POLICY = "default-src 'none'; style-src 'unsafe-inline'; script-src 'unsafe-inline'; img-src data:"
 BODY = "body{font:16px/1.45 system-ui,sans-serif;margin:1rem auto;max-width:1100px;padding:0 .6rem}"
-TABLES = "table{border-collapse:collapse;display:block;overflow-x:auto}td,th{padding:.15rem .5rem;text-align:left}"
+TABLES = "table{content-visibility:auto;contain-intrinsic-size:auto 600px;border-collapse:collapse;display:block;overflow-x:auto}td,th{padding:.15rem .5rem;text-align:left}"
 
 
 def part(name: str) -> str:

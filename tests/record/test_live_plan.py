@@ -46,7 +46,11 @@ def stations(root: ET.Element) -> dict[int, ET.Element]:
 
 
 def lines(root: ET.Element) -> Counter[str]:
-    return Counter(one.get("data-ends", "") for one in root.iter(f"{SVG}path") if one.get("class") == "line" and one.get("data-ends"))
+    return Counter(
+        one.get("data-ends", "")
+        for one in root.iter(f"{SVG}path")
+        if one.get("class") == "line" and one.get("data-ends")
+    )
 
 
 def wanted_lines(record: dict[str, Any]) -> Counter[str]:
@@ -67,7 +71,9 @@ def test_a_line_that_is_missing_would_be_noticed() -> None:
     fewer = copy.deepcopy(record)
     del fewer["observations"][0]  # M1 - P1 by distance: its direction still draws it
     assert lines(tree(fewer)) == wanted_lines(record)
-    fewer["observations"] = [one for one in fewer["observations"] if {one["from"], one["to"], one["at"]} - {None} != {"M1", "P1"}]
+    fewer["observations"] = [
+        one for one in fewer["observations"] if {one["from"], one["to"], one["at"]} - {None} != {"M1", "P1"}
+    ]
     assert lines(tree(fewer)) != wanted_lines(record)
 
 
@@ -154,7 +160,21 @@ def test_names_never_become_markup(names: tuple[str, ...]) -> None:
     root = ET.fromstring(f'<figure xmlns="http://www.w3.org/2000/svg">{text.replace(chr(0), "")}</figure>')
     assert "\x00" not in text
     tags = {one.tag.removeprefix(SVG) for one in root.iter()}
-    assert tags <= {"figure", "svg", "defs", "g", "path", "circle", "ellipse", "use", "text", "title", "ul", "li", "span"}
+    assert tags <= {
+        "figure",
+        "svg",
+        "defs",
+        "g",
+        "path",
+        "circle",
+        "ellipse",
+        "use",
+        "text",
+        "title",
+        "ul",
+        "li",
+        "span",
+    }
     assert not any(key.lower().startswith("on") or key == "style" for one in root.iter() for key in one.attrib)
     assert len(text) < 40_000, "a name of 10,000 characters is cut"
     plain = {one.tag for one in tree(plane_record()).iter()}
@@ -196,7 +216,9 @@ def test_names_do_not_cover_each_other(make: Any) -> None:
     over = [(a, b) for i, a in enumerate(boxes) for b in boxes[:i]
             if a[0] < b[2] and b[0] < a[2] and a[1] < b[3] and b[1] < a[3]]  # fmt: skip
     assert not over
-    assert any(a[0] < b[2] + 60 and b[0] < a[2] + 60 for a in boxes for b in boxes if a is not b), "nothing near: no test"
+    assert any(a[0] < b[2] + 60 and b[0] < a[2] + 60 for a in boxes for b in boxes if a is not b), (
+        "nothing near: no test"
+    )
 
 
 def test_a_large_network_has_fewer_names_and_stays_small() -> None:
@@ -242,6 +264,15 @@ def test_every_text_is_used_and_every_text_used_is_there() -> None:
     made = set(re.findall(r'["`]((?:plan|pictures)\.\w+_)[{$]', code)) | {"pictures.kind_", "plan.layer_"}
     known = set(catalogue())
     assert asked - {"plan.js", "plan.css"} <= known
-    roles = {"plan.held", "plan.weighted", "plan.check", "plan.new", "plan.unchecked", "plan.met", "plan.not_met", "plan.untested"}
+    roles = {
+        "plan.held",
+        "plan.weighted",
+        "plan.check",
+        "plan.new",
+        "plan.unchecked",
+        "plan.met",
+        "plan.not_met",
+        "plan.untested",
+    }
     unused = {key for key in known - asked - roles if not key.startswith(tuple(made)) and not key.endswith("_title")}
     assert unused <= {key for key in known if re.match(r"plan\.(lines|schematic)_", key)}, unused

@@ -116,16 +116,27 @@ def test_a_line_is_as_well_checked_as_the_least_checked_of_its_readings() -> Non
     assert shares["M1", "P1"] == 0.05
     assert set(shares.values()) == {0.05, 0.7}
     one = by_key(record)["redundancy"]
-    drawn = {look: sum(data.count("M") for data in paths(one, f"share {look}")) - 1 for look in ("well", "hardly", "never")}
+    drawn = {
+        look: sum(data.count("M") for data in paths(one, f"share {look}")) - 1 for look in ("well", "hardly", "never")
+    }
     assert drawn == {"well": len(shares) - 1, "hardly": 1, "never": 0}  # one more of each in the legend
-    assert [look_of(s) for s in (1.0, 0.6, 0.59, 0.2, 0.01, 0.0)] == ["well", "well", "fairly", "weakly", "hardly", "never"]
+    assert [look_of(s) for s in (1.0, 0.6, 0.59, 0.2, 0.01, 0.0)] == [
+        "well",
+        "well",
+        "fairly",
+        "weakly",
+        "hardly",
+        "never",
+    ]
 
 
 def test_bars_are_as_long_as_misclosures_are_against_their_limit(levels: dict[str, Any]) -> None:
     rows = bars_of(levels)
     one = by_key(levels)["closures"]
     limit = points(paths(one, "limit-mark")[0])[0][0]
-    ends = [(float(m[1]), float(m[2])) for m in (re.match(r"M([\d.]+) [\d.]+H([\d.]+)", d) for d in paths(one, "bar")) if m]
+    ends = [
+        (float(m[1]), float(m[2])) for m in (re.match(r"M([\d.]+) [\d.]+H([\d.]+)", d) for d in paths(one, "bar")) if m
+    ]
     assert len(ends) == min(len(rows), 12)
     start = ends[0][0]
     close([(end - start) / (limit - start) for _, end in ends], [row[0] for row in rows[:12]], atol=0.004)

@@ -63,7 +63,8 @@
 
   function draw() {
     asked = false;
-    ground.setAttribute("transform", `translate(${view.x.toFixed(3)} ${view.y.toFixed(3)}) scale(${view.s.toFixed(5)})`);
+    // as a style: an attribute would have every line laid out again
+    ground.style.transform = `translate(${view.x.toFixed(3)}px, ${view.y.toFixed(3)}px) scale(${view.s.toFixed(5)})`;
     if (stations.length <= MANY) sizes();
     window.clearTimeout(resting);
     resting = window.setTimeout(rest, 160);
@@ -364,8 +365,11 @@
     return byObservation().get(row.dataset.observation) ?? byEnds().get(sortedEnds(row.dataset.ends)) ?? null;
   }
 
+  const dressed = new WeakSet(); // rows that have their button, or nothing to show
   function addButton(row) {
-    const element = row.querySelector("button.show") ? null : elementOf(row);
+    if (dressed.has(row)) return;
+    dressed.add(row);
+    const element = elementOf(row);
     const cell = row.cells[0];
     if (!element || !cell) return;
     const about = row.dataset.station != null ? titleOf(element) : describe(element);
@@ -373,17 +377,38 @@
     cell.append(button);
   }
 
-  /* Thousands of buttons at once would delay the page: with many rows each gets its own when it comes near the window. */
+  /* Thousands of buttons at once would delay the page, and watching thousands of rows every frame: with many rows those
+     get their buttons that come into the window, and the rows around them, whichever way the table is sorted. */
   function buttons() {
     const rows = document.querySelectorAll("tr[data-station], tr[data-ends]");
-    if (rows.length <= AT_ONCE || !("IntersectionObserver" in window)) return rows.forEach(addButton);
-    const watch = new IntersectionObserver((entries) => {
-      for (const entry of entries.filter((one) => one.isIntersecting)) {
-        addButton(entry.target);
-        watch.unobserve(entry.target);
+    if (rows.length <= AT_ONCE) return rows.forEach(addButton);
+    let waiting = 0;
+    const soon = () => {
+      window.clearTimeout(waiting);
+      waiting = window.setTimeout(inWindow, 60);
+    };
+    for (const kind of ["scroll", "resize"]) window.addEventListener(kind, soon, { passive: true });
+    for (const kind of ["toggle", "input", "click"]) document.addEventListener(kind, soon, true);
+    document.addEventListener("focusin", (event) => {
+      const table = event.target.closest?.("table") ?? event.target.closest?.(".filter")?.nextElementSibling?.closest("table");
+      if (table?.tBodies.length && event.target.closest("thead, .filter")) around(table.tBodies[0].rows[0]);
+    });
+    soon();
+  }
+
+  function inWindow() {
+    for (let y = 10; y < window.innerHeight; y += 120) {
+      for (const x of [30, window.innerWidth / 2]) around(document.elementFromPoint(x, y)?.closest("tbody tr"));
+    }
+  }
+
+  function around(row) {
+    for (const side of ["previousElementSibling", "nextElementSibling"]) {
+      for (let one = row, left = 30; one && left > 0; one = one[side]) {
+        addButton(one);
+        left -= !one.hidden;
       }
-    }, { rootMargin: "800px" });
-    rows.forEach((row) => watch.observe(row));
+    }
   }
 
   function shown(event) {
@@ -423,25 +448,47 @@
     }
   }
 
-  /* Names that found no place at first appear where enlarging has made room. They are placed on the screen, right or
-     left of their station, off each other and off the symbols in sight. */
-  const SIDES = [[1, -0.35], [1, 1.05], [-1, -0.35], [-1, 1.05], [1, 0.35], [-1, 0.35]];
+  /* Names keep the place that the drawing gave them where at this size it is free; the others, and those that found none
+     at first, are placed anew around their station as enlarging makes room: off each other, off the symbols in sight. */
+  const SIDES = [[1, 0.35], [-1, 0.35], [1, -0.5], [1, 1.2], [-1, -0.5], [-1, 1.2], [0, -0.8], [0, 1.7]];
+  const MOST_NAMED = 400; // stations in sight up to which all are tried
   const layer = plan.querySelector("[data-layer='names']");
-  const firstNames = new Set([...plan.querySelectorAll(".label")].map((one) => one.dataset.of));
+  const firstNames = new Map([...plan.querySelectorAll(".label")].map((one) => [one.dataset.of, one]));
   let added = null;
 
   function names() {
     added?.remove();
-    added = null;
-    if (!layer || firstNames.size >= stations.length) return;
+    if (!layer) return;
     const sight = inSight();
-    if (!sight.length || sight.length > 400) return;
+    const all = sight.length <= MOST_NAMED;
+    const taken = all ? sight.map((one) => [one.x - 5, one.y - 5, one.x + 5, one.y + 5]) : [];
+    taken.push(...boxes(".furniture > g"));
+    const homeless = new Set(covered(taken));
     added = document.createElementNS(SVG, "g");
-    const taken = [...sight.map((one) => [one.x - 6, one.y - 6, one.x + 6, one.y + 6]), ...boxesOfNames()];
-    for (const one of sight) {
-      if (!firstNames.has(one.station)) addName(one, taken);
+    for (const one of all ? sight : []) {
+      if (!firstNames.has(one.station) || homeless.has(one.station)) addName(one, taken);
     }
     layer.append(added);
+  }
+
+  /* First names that at this size cover something or leave the frame: they are put away, and their stations told. */
+  function covered(taken) {
+    for (const one of firstNames.values()) one.classList.remove("covered");
+    const own = boxes(".label > text"); // all are measured before any is changed: one layout
+    const found = [];
+    [...firstNames].forEach(([station, label], i) => {
+      if (fits(own[i], taken)) taken.push(own[i]);
+      else found.push(station);
+    });
+    for (const station of found) firstNames.get(station).classList.add("covered");
+    return found;
+  }
+
+  function fits(box_, taken) {
+    const [left, top, right, bottom] = box_;
+    const per = pixels();
+    if (left < 1 || top < 1 || right > box.width * per - 1 || bottom > box.height * per - 1) return false;
+    return !taken.some((t) => left < t[2] && right > t[0] && top < t[3] && bottom > t[1]);
   }
 
   /* Stations inside the frame with their place in pixels from its corner. */
@@ -458,36 +505,42 @@
     return found;
   }
 
-  function boxesOfNames() {
+  /* Boxes on the screen, in pixels from the drawing's corner, a little narrower than their type. */
+  function boxes(which) {
     const { e, f } = onScreen();
-    return [...plan.querySelectorAll(".label > text, .furniture > g")].map((one) => {
+    return [...plan.querySelectorAll(which)].map((one) => {
       const own = one.getBoundingClientRect();
-      return [own.left - e, own.top - f, own.right - e, own.bottom - f];
+      return [own.left - e + 1, own.top - f + 2, own.right - e - 1, own.bottom - f - 2];
     });
   }
 
   function addName(one, taken) {
     const name = one.name.length > 18 ? `${one.name.slice(0, 17)}…` : one.name;
-    const width = name.length * NAME_PX * 0.6;
+    const width = name.length * NAME_PX * 0.62;
     for (const [side, below] of SIDES) {
-      const left = side > 0 ? one.x + 8 : one.x - 8 - width;
+      const left = one.x + (side > 0 ? 8 : side < 0 ? -8 - width : -width / 2);
       const base = one.y + below * NAME_PX;
-      const own = [left, base - NAME_PX, left + width, base + 2];
-      if (taken.some((t) => own[0] < t[2] && own[2] > t[0] && own[1] < t[3] && own[3] > t[1])) continue;
-      taken.push(own);
-      const group = document.createElementNS(SVG, "g");
-      group.setAttribute("class", "label");
-      group.setAttribute("transform", `translate(${one.e} ${one.f})`);
-      const text = document.createElementNS(SVG, "text");
-      const unit = type / NAME_PX; // a pixel in units of the names
-      text.setAttribute("x", ((side > 0 ? 8 : -8) * unit).toFixed(1));
-      text.setAttribute("y", (below * NAME_PX * unit).toFixed(1));
-      if (side < 0) text.setAttribute("text-anchor", "end");
-      text.textContent = name;
-      group.append(text);
-      added.append(group);
-      return;
+      const own = [left, base - 0.8 * NAME_PX, left + width, base + 2];
+      if (fits(own, taken)) {
+        taken.push(own);
+        added.append(newName(one, name, side, below));
+        return;
+      }
     }
+  }
+
+  function newName(one, name, side, below) {
+    const group = document.createElementNS(SVG, "g");
+    group.setAttribute("class", "label");
+    group.setAttribute("transform", `translate(${one.e} ${one.f})`);
+    const text = document.createElementNS(SVG, "text");
+    const unit = type / NAME_PX; // a pixel in units of the names
+    text.setAttribute("x", (8 * side * unit).toFixed(1));
+    text.setAttribute("y", (below * NAME_PX * unit).toFixed(1));
+    if (side <= 0) text.setAttribute("text-anchor", side < 0 ? "end" : "middle");
+    text.textContent = name;
+    group.append(text);
+    return group;
   }
 
   /* ---- controls ---- */
@@ -595,6 +648,6 @@
   window.addEventListener("afterprint", ask);
   if ("ResizeObserver" in window) new ResizeObserver(() => { sized = 0; ask(); }).observe(plan);
   sizes();
-  scaleBars();
+  if (stations.length <= MANY) rest(); // else once the page is painted: the observer of its size asks for it
   buttons();
 })();
