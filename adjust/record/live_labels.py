@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from itertools import pairwise
 from typing import Any, cast
 
 from adjust.record.labels import Labels
@@ -86,8 +87,12 @@ def place_names(
     def down(at: Point) -> Point:
         return at[0] * UNITS, (tall - at[1]) * UNITS
 
-    return Placed(size, {name: down(at) for name, at in pen.texts.items()},
-                  [(down(a), down(b)) for a, b in pen.leaders], len(names))  # fmt: skip
+    return Placed(
+        size,
+        {name: down(at) for name, at in pen.texts.items()},
+        [(down(a), down(b)) for a, b in pen.leaders],
+        len(names),
+    )
 
 
 def _chords(scene: Scene) -> list[tuple[Point, Point]]:
@@ -99,7 +104,7 @@ def _chords(scene: Scene) -> list[tuple[Point, Point]]:
             made.append((a, b))
         else:
             points = [curve_point(a, bend, b, t / 8) for t in range(9)]
-            made += list(zip(points, points[1:], strict=False))
+            made += list(pairwise(points))
     return made
 
 
@@ -125,12 +130,14 @@ def _sample(scene: Scene) -> list[str]:
 
 
 def draw_names(scene: Scene, placed: Placed) -> str:
-    """The layer of names: each hangs on its station, so that it keeps its size and its side when the plan is enlarged."""
+    """The layer of names: each hangs on its station, to keep size and side when the plan is enlarged."""
     rows = []
     for name, (x, y) in placed.starts.items():
         at = scene.at[name]
-        rows.append(f'<g class="label" data-of="{scene.index[name]}" transform="translate({number(at[0])} {number(at[1])})">'
-                    f'<text x="{number(x - at[0])}" y="{number(y - at[1])}">{name_of(name)}</text></g>')  # fmt: skip
+        rows.append(
+            f'<g class="label" data-of="{scene.index[name]}" transform="translate({number(at[0])} {number(at[1])})">'
+            f'<text x="{number(x - at[0])}" y="{number(y - at[1])}">{name_of(name)}</text></g>'
+        )
     lines = "".join(
         f'<path d="M{number(a[0])} {number(a[1])} {number(b[0])} {number(b[1])}"/>' for a, b in placed.leaders
     )

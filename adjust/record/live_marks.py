@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
+from itertools import pairwise
 
 import numpy as np
 
@@ -86,14 +87,15 @@ def _suspects(scene: Scene, place: dict[str, int], texts: Texts, marks: Marks) -
             shape, spot = _suspect(scene, one, lines, marks)
             marks.taken.append((spot, 13.0))
             title = texts.safe("plan.suspect_title", number=i + 1, reading=reading_in_words(one))
-            rows.append(f'<g class="suspect" data-observation="{place[one["id"]]}" data-ends="{scene.ends(lines[-1])}">'
-                        f'<title>{title}</title><path d="{shape}"/>{_badge(spot, str(i + 1))}</g>')  # fmt: skip
+            rows.append(
+                f'<g class="suspect" data-observation="{place[one["id"]]}" data-ends="{scene.ends(lines[-1])}">'
+                f'<title>{title}</title><path d="{shape}"/>{_badge(spot, str(i + 1))}</g>'
+            )
     marks.suspects = "".join(rows)
 
 
 def _badge(at: Point, text: str) -> str:
-    return (f'<g class="badge" transform="translate({point(at)})"><g><circle r="11"/>'
-            f'<text y="5">{text}</text></g></g>')  # fmt: skip
+    return f'<g class="badge" transform="translate({point(at)})"><g><circle r="11"/><text y="5">{text}</text></g></g>'
 
 
 def _suspect(scene: Scene, one: Entry, lines: list[Names], marks: Marks) -> tuple[str, Point]:
@@ -129,8 +131,10 @@ def _unchecked(scene: Scene, record: Entry, place: dict[str, int], texts: Texts,
         spot = _free(scene, marks, lines[-1], 0.5)
         marks.taken.append((spot, 9.0))
         title = texts.safe("plan.unchecked_title", reading=reading_in_words(one), why=plain(entry["why"], 160))
-        rows.append(f'<g class="mark" data-observation="{k}" transform="translate({point(spot)})"><title>{title}</title>'
-                    '<use href="#p-diamond"/></g>')  # fmt: skip
+        rows.append(
+            f'<g class="mark" data-observation="{k}" transform="translate({point(spot)})"><title>{title}</title>'
+            '<use href="#p-diamond"/></g>'
+        )
     marks.unchecked = "".join(rows)
 
 
@@ -141,8 +145,10 @@ def _left_out(scene: Scene, texts: Texts, marks: Marks) -> None:
         spot = _free(scene, marks, line, 0.62)
         marks.taken.append((spot, 8.0))
         title = texts.safe("plan.left_out_title", one=plain(line[0], 40), other=plain(line[1], 40))
-        rows.append(f'<g data-ends="{scene.ends(line)}"><title>{title}</title><path d="{path_of(scene, line)}"/>'
-                    f'<g class="mark" transform="translate({point(spot)})"><use href="#p-cross"/></g></g>')  # fmt: skip
+        rows.append(
+            f'<g data-ends="{scene.ends(line)}"><title>{title}</title><path d="{path_of(scene, line)}"/>'
+            f'<g class="mark" transform="translate({point(spot)})"><use href="#p-cross"/></g></g>'
+        )
     marks.left_out = "".join(rows)
 
 
@@ -163,8 +169,10 @@ def _closures(scene: Scene, record: Entry, texts: Texts, marks: Marks) -> None:
             bands.append(f'<path class="band {kind}" d="{_route(scene, names)}"/>')
         spot = _closure_spot(scene, names, marks)
         marks.taken.append((spot, 12.0))
-        signs.append(f'<g class="mark closure {kind}" data-closure="{i}" transform="translate({point(spot)})">'
-                     f'<title>{title}</title><use href="#p-{kind}"/></g>')  # fmt: skip
+        signs.append(
+            f'<g class="mark closure {kind}" data-closure="{i}" transform="translate({point(spot)})">'
+            f'<title>{title}</title><use href="#p-{kind}"/></g>'
+        )
     marks.closures = "".join(bands + signs)
 
 
@@ -175,7 +183,7 @@ def _key(kind: str) -> str:
 def _route(scene: Scene, names: list[str]) -> str:
     """The walk as path data; legs that are drawn curved are followed."""
     parts = ["M" + point(scene.at[names[0]])]
-    for one, other in zip(names, names[1:], strict=False):
+    for one, other in pairwise(names):
         bend = scene.bends.get((one, other)) or scene.bends.get((other, one))
         parts.append(f"L{point(scene.at[other])}" if bend is None else f"Q{point(bend)} {point(scene.at[other])}")
     return "".join(parts)

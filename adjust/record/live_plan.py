@@ -50,14 +50,23 @@ def plan_svg(record: Entry, texts: Mapping[str, Any]) -> str:
         return ""
     marks = marks_of(scene, record, words)
     names = place_names(scene, marks.taken, _kept(scene))
-    ground = "".join([
-        _levels(scene, record), _layer("left-out", "left-out", marks.left_out), _layer("closures", "closures", marks.closures),
-        _lines(scene), _ovals(scene, words), _layer("suspects", "suspects", marks.suspects), _stations(scene, marks),
-        draw_names(scene, names),
-    ])  # fmt: skip
-    return f"{_open(scene, record, words)}<defs>{DEFS}</defs>" \
-           f'<g id="plan-ground">{ground}</g>{_furniture(scene, record, words)}</svg>' \
-           f"{_legend(scene, record, words, marks, names)}"  # fmt: skip
+    ground = "".join(
+        [
+            _levels(scene, record),
+            _layer("left-out", "left-out", marks.left_out),
+            _layer("closures", "closures", marks.closures),
+            _lines(scene),
+            _ovals(scene, words),
+            _layer("suspects", "suspects", marks.suspects),
+            _stations(scene, marks),
+            draw_names(scene, names),
+        ]
+    )
+    return (
+        f"{_open(scene, record, words)}<defs>{DEFS}</defs>"
+        f'<g id="plan-ground">{ground}</g>{_furniture(scene, record, words)}</svg>'
+        f"{_legend(scene, record, words, marks, names)}"
+    )
 
 
 def _open(scene: Scene, record: Entry, words: Texts) -> str:
@@ -71,8 +80,10 @@ def _open(scene: Scene, record: Entry, words: Texts) -> str:
         data += f' data-magnification="{scene.magnification:g}"'
     if scene.relative_magnification:
         data += f' data-relative="{scene.relative_magnification:g}"'
-    return (f'<svg id="plan" class="{size}" viewBox="0 0 {number(WIDTH)} {number(scene.height)}" tabindex="0" role="group" '
-            f'aria-label="{words.safe(what, stations=scene.many, lines=len(scene.looks))}" {data}>')  # fmt: skip
+    return (
+        f'<svg id="plan" class="{size}" viewBox="0 0 {number(WIDTH)} {number(scene.height)}" tabindex="0" role="group" '
+        f'aria-label="{words.safe(what, stations=scene.many, lines=len(scene.looks))}" {data}>'
+    )
 
 
 def _layer(key: str, look: str, inside: str) -> str:
@@ -95,19 +106,24 @@ def _lines(scene: Scene) -> str:
 
 
 def _ovals(scene: Scene, words: Texts) -> str:
-    pairs = "".join(f'<path class="pair" d="{path_of(scene, (one.names[0], one.names[1]))}"/>'
-                    for one in scene.relative if one.pair)  # fmt: skip
+    pairs = "".join(
+        f'<path class="pair" d="{path_of(scene, (one.names[0], one.names[1]))}"/>' for one in scene.relative if one.pair
+    )
     relative = pairs + "".join(_oval(one, "relative", scene) for one in scene.relative)
     own = "".join(_oval(one, "ellipse", scene) for one in scene.ellipses)
-    bars = "".join(f'<g transform="translate({point(scene.at[name])})"><path class="ellipse bar" '
-                   f'd="M0 {number(-half)}V{number(half)}M-5 {number(-half)}H5M-5 {number(half)}H5"/></g>'
-                   for name, half in scene.bars.items())  # fmt: skip
+    bars = "".join(
+        f'<g transform="translate({point(scene.at[name])})"><path class="ellipse bar" '
+        f'd="M0 {number(-half)}V{number(half)}M-5 {number(-half)}H5M-5 {number(half)}H5"/></g>'
+        for name, half in scene.bars.items()
+    )
     return _layer("relative", "relatives", relative) + _layer("ellipses", "ellipses", own + bars)
 
 
 def _oval(one: Oval, look: str, scene: Scene) -> str:
-    return (f'<g transform="translate({point(one.at)})rotate({number(one.turn, 1)})">'
-            f'<ellipse class="{look}" rx="{number(one.half[0])}" ry="{number(one.half[1])}"/></g>')  # fmt: skip
+    return (
+        f'<g transform="translate({point(one.at)})rotate({number(one.turn, 1)})">'
+        f'<ellipse class="{look}" rx="{number(one.half[0])}" ry="{number(one.half[1])}"/></g>'
+    )
 
 
 def _stations(scene: Scene, marks: Marks) -> str:
@@ -115,13 +131,17 @@ def _stations(scene: Scene, marks: Marks) -> str:
     rows: dict[str, list[str]] = {role: [] for role in ROLES}
     for name, role in scene.roles.items():
         kind = f"control {role}" if role in ("held", "weighted", "check") else role
-        rows[role].append(f'<g class="station {kind}" data-station="{scene.index[name]}" '
-                          f'transform="translate({point(scene.at[name])})"><title>{name_of(name, TITLE)}</title>'
-                          f'<use href="#p-{role}"/></g>')  # fmt: skip
+        rows[role].append(
+            f'<g class="station {kind}" data-station="{scene.index[name]}" '
+            f'transform="translate({point(scene.at[name])})"><title>{name_of(name, TITLE)}</title>'
+            f'<use href="#p-{role}"/></g>'
+        )
     control = "".join("".join(rows[role]) for role in ("check", "weighted", "held"))
-    return (_layer("stations", "stations", "".join(rows["new"]))
-            + _layer("unchecked", "stations", "".join(rows["unchecked"]) + marks.unchecked)
-            + _layer("control", "stations", control))  # fmt: skip
+    return (
+        _layer("stations", "stations", "".join(rows["new"]))
+        + _layer("unchecked", "stations", "".join(rows["unchecked"]) + marks.unchecked)
+        + _layer("control", "stations", control)
+    )
 
 
 def _levels(scene: Scene, record: Entry) -> str:
@@ -132,8 +152,10 @@ def _levels(scene: Scene, record: Entry) -> str:
     step = scene.levels[1][1] - scene.levels[0][1] if len(scene.levels) > 1 else 1.0
     places = max(0, -math.floor(math.log10(step) + 1e-9))
     lines = "".join(f'<path d="M0 {number(y)}H{number(WIDTH)}"/>' for y, _ in scene.levels)
-    texts = "".join(f'<g transform="translate(6 {number(y)})"><text y="-4">{shown.mark(f"{h:.{places}f}")}</text></g>'
-                    for y, h in scene.levels)  # fmt: skip
+    texts = "".join(
+        f'<g transform="translate(6 {number(y)})"><text y="-4">{shown.mark(f"{h:.{places}f}")}</text></g>'
+        for y, h in scene.levels
+    )
     return f'<g class="levels">{lines}{texts}</g>'
 
 
@@ -156,8 +178,10 @@ def _furniture(scene: Scene, record: Entry, words: Texts) -> str:
     if scene.magnification:
         small = scene.metres / scene.magnification * shown.in_small(1.0)
         bars += _bar("plan-ellipses", y - 38, small, shown.small, shown, 0.5, " own")
-    north = (f'<g class="north" transform="translate({number(WIDTH - 24)} 34)"><g><path d="M0-26 8 8 0 2-8 8Z"/>'
-             f'<text y="24">{words.safe("plan.north")}</text></g></g>')  # fmt: skip
+    north = (
+        f'<g class="north" transform="translate({number(WIDTH - 24)} 34)"><g><path d="M0-26 8 8 0 2-8 8Z"/>'
+        f'<text y="24">{words.safe("plan.north")}</text></g></g>'
+    )
     return f'<g class="furniture">{bars}{north}</g>'
 
 
@@ -170,31 +194,57 @@ def _bar(key: str, y: float, per_unit: float, unit: str, shown: Shown, share: fl
     length = round_step(BAR * share * WIDTH * per_unit)
     end = number(length / per_unit)
     words = f"{shown.mark(f'{length:g}')} {unit}"
-    return (f'<g id="{key}" class="bar{look}" data-per-unit="{per_unit!r}" data-share="{share:g}" data-of="{unit}" '
-            f'transform="translate(12 {number(y)})"><path d="M0-5V5M0 0H{end}M{end}-5V5"/>'
-            f'<g transform="translate({end} 0)"><text x="8" y="6">{safe(words)}</text></g></g>')  # fmt: skip
+    return (
+        f'<g id="{key}" class="bar{look}" data-per-unit="{per_unit!r}" data-share="{share:g}" data-of="{unit}" '
+        f'transform="translate(12 {number(y)})"><path d="M0-5V5M0 0H{end}M{end}-5V5"/>'
+        f'<g transform="translate({end} 0)"><text x="8" y="6">{safe(words)}</text></g></g>'
+    )
 
 
 def _legend(scene: Scene, record: Entry, words: Texts, marks: Marks, names: Placed) -> str:
     """What the shapes and dashes mean, each with its picture, and what is not drawn."""
     seen = {role: f'<use href="#p-{role}"/>' for role in ROLES if role in scene.roles.values()}
-    rows = [_key(f"station {'control ' if role in ('held', 'weighted', 'check') else ''}{role}", shape, words(f"plan.{role}"))
-            for role, shape in seen.items()]  # fmt: skip
+    rows = [
+        _key(
+            f"station {'control ' if role in ('held', 'weighted', 'check') else ''}{role}", shape, words(f"plan.{role}")
+        )
+        for role, shape in seen.items()
+    ]
     drawn = set(scene.looks.values())
     look_word = "plan.lines_{}" if scene.metres else "plan.schematic_{}"
-    rows += [_key(f"lines {look}", '<path class="line" d="M-17 0H17"/>', words(look_word.format(look)))
-             for look in LOOK_ORDER if look in drawn]  # fmt: skip
+    rows += [
+        _key(f"lines {look}", '<path class="line" d="M-17 0H17"/>', words(look_word.format(look)))
+        for look in LOOK_ORDER
+        if look in drawn
+    ]
     percent = f"{100 * record['settings']['confidence']:g}"
     if scene.ellipses:
-        rows.append(_key("ellipses", '<ellipse class="ellipse" rx="15" ry="7"/>', words("plan.ellipses", percent=percent,
-                    times=_times(scene.magnification)), "plan-ellipse-words"))  # fmt: skip
+        rows.append(
+            _key(
+                "ellipses",
+                '<ellipse class="ellipse" rx="15" ry="7"/>',
+                words("plan.ellipses", percent=percent, times=_times(scene.magnification)),
+                "plan-ellipse-words",
+            )
+        )
     if scene.bars:
-        rows.append(_key("ellipses", '<path class="ellipse bar" d="M0-8V8M-5-8H5M-5 8H5"/>', words(
-                    "plan.bars", percent=percent, times=_times(scene.magnification)), "plan-ellipse-words"))  # fmt: skip
+        rows.append(
+            _key(
+                "ellipses",
+                '<path class="ellipse bar" d="M0-8V8M-5-8H5M-5 8H5"/>',
+                words("plan.bars", percent=percent, times=_times(scene.magnification)),
+                "plan-ellipse-words",
+            )
+        )
     if scene.relative:
-        rows.append(_key("relatives", '<ellipse class="relative" rx="15" ry="7"/>', words(
-                    "plan.relative", percent=percent, times=_times(scene.relative_magnification)),
-                    "plan-relative-words"))  # fmt: skip
+        rows.append(
+            _key(
+                "relatives",
+                '<ellipse class="relative" rx="15" ry="7"/>',
+                words("plan.relative", percent=percent, times=_times(scene.relative_magnification)),
+                "plan-relative-words",
+            )
+        )
     if any(one.pair for one in scene.relative):
         rows.append(_key("relatives", '<path class="pair" d="M-17 0H17"/>', words("plan.pair")))
     rows += _mark_keys(marks, words)
@@ -208,7 +258,8 @@ def _legend(scene: Scene, record: Entry, words: Texts, marks: Marks, names: Plac
 def _mark_keys(marks: Marks, words: Texts) -> list[str]:
     rows = []
     if marks.suspects:
-        shape = '<g class="suspect"><path d="M-17 0H17"/><g class="badge"><g><circle r="9"/><text y="5">1</text></g></g></g>'
+        badge = '<g class="badge"><g><circle r="9"/><text y="5">1</text></g></g>'
+        shape = f'<g class="suspect"><path d="M-17 0H17"/>{badge}</g>'
         rows.append(_key("suspects", shape, words("plan.suspects")))
     if marks.unchecked:
         rows.append(_key("stations", '<g class="mark"><use href="#p-diamond"/></g>', words("plan.unchecked_reading")))
@@ -224,8 +275,10 @@ def _mark_keys(marks: Marks, words: Texts) -> list[str]:
 
 def _key(look: str, shape: str, text: str, mark: str = "") -> str:
     name = f' id="{mark}"' if mark else ""
-    return (f'<li><svg viewBox="-20 -12 40 24" aria-hidden="true" class="key"><g class="{look}">{shape}</g></svg>'
-            f"<span{name}>{safe(text)}</span></li>")  # fmt: skip
+    return (
+        f'<li><svg viewBox="-20 -12 40 24" aria-hidden="true" class="key"><g class="{look}">{shape}</g></svg>'
+        f"<span{name}>{safe(text)}</span></li>"
+    )
 
 
 def _times(magnification: float | None) -> str:

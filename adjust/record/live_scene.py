@@ -35,7 +35,7 @@ MOST_BENT = 60
 
 @dataclass(frozen=True)
 class Oval:
-    """An ellipse in drawing units, ``turn`` degrees clockwise of its long axis from the right; of a station or a pair."""
+    """An ellipse in drawing units, ``turn`` degrees clockwise of its long axis from the right."""
 
     at: Point
     half: Point
@@ -127,11 +127,18 @@ def _plane(record: Entry) -> Scene:
     every, pairs = len(plan.ellipses), len(plan.relative)
     plan.magnifications()
     scene = Scene(
-        layout.height * UNITS, {name: _flip(at, layout) for name, at in plan.at.items()}, _positions(record),
-        {one["station"]: plan.symbol(one) for one in plan.stations}, plan.looks, plan.left_out, record,
-        plan.ground.scale / 1000 / UNITS, missing=len(record["stations"]) - len(plan.stations),
-        ellipses_of=_with_ellipse(record, plan), relative_of=pairs,
-    )  # fmt: skip
+        layout.height * UNITS,
+        {name: _flip(at, layout) for name, at in plan.at.items()},
+        _positions(record),
+        {one["station"]: plan.symbol(one) for one in plan.stations},
+        plan.looks,
+        plan.left_out,
+        record,
+        plan.ground.scale / 1000 / UNITS,
+        missing=len(record["stations"]) - len(plan.stations),
+        ellipses_of=_with_ellipse(record, plan),
+        relative_of=pairs,
+    )
     scene.magnification, scene.relative_magnification = plan.view.magnification, plan.view.relative
     if scene.magnification and every:
         scene.ellipses = _ellipses(plan, scene, scene.magnification)
@@ -166,8 +173,10 @@ def _ellipses(plan: Plan, scene: Scene, magnification: float) -> list[Oval]:
 def _relative(plan: Plan, scene: Scene, magnification: float, layout: Layout) -> list[Oval]:
     k = magnification / cast(float, scene.metres)
     spots = plan.spots(plan.at, plan.relative)
-    return [Oval(_flip(spot, layout), (one.semi_major * k, one.semi_minor * k), _turn(one.azimuth), one.ends, one.pair)
-            for one, spot in zip(plan.relative, spots, strict=True)]  # fmt: skip
+    return [
+        Oval(_flip(spot, layout), (one.semi_major * k, one.semi_minor * k), _turn(one.azimuth), one.ends, one.pair)
+        for one, spot in zip(plan.relative, spots, strict=True)
+    ]
 
 
 def _levels(whole: Entry) -> Scene:
@@ -182,13 +191,26 @@ def _levels(whole: Entry) -> Scene:
     xs = np.linspace(110, WIDTH - 70, len(names)) if len(names) > 1 else np.array([WIDTH / 2])
     at = {name: (float(x), float(tall - 75 - (h - low) * k)) for name, x, h in zip(names, xs, heights, strict=True)}
     unchecked = unchecked_stations(record)
-    roles = {name: "unchecked" if name in unchecked and entries[name]["role_height"] == "new"
-             else str(entries[name]["role_height"]) for name in names}  # fmt: skip
+    roles = {
+        name: "unchecked"
+        if name in unchecked and entries[name]["role_height"] == "new"
+        else str(entries[name]["role_height"])
+        for name in names
+    }
     lines = {ordered(line) for one in height_readings(record) for line in pointed_lines(one) if at.keys() >= set(line)}
-    looks = {line: HEIGHT for line in sorted(lines, key=lambda line: (names.index(line[0]), names.index(line[1])))}
+    looks = dict.fromkeys(sorted(lines, key=lambda line: (names.index(line[0]), names.index(line[1]))), HEIGHT)
     left_out = [line for line in left_out_lines(record) if at.keys() >= set(line)]
-    scene = Scene(tall, at, _positions(whole), roles, looks, left_out, record, per_height=k,
-                  missing=len(whole["stations"]) - len(names))  # fmt: skip
+    scene = Scene(
+        tall,
+        at,
+        _positions(whole),
+        roles,
+        looks,
+        left_out,
+        record,
+        per_height=k,
+        missing=len(whole["stations"]) - len(names),
+    )
     scene.levels = _level_lines(low, span, k, tall, whole)
     scene.bends = _bends(scene)
     half = {name: multiplier(record) * entries[name]["sd_height"] * k for name in names if entries[name]["sd_height"]}

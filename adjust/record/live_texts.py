@@ -1,4 +1,4 @@
-"""Texts of the live plan and of the pictures, looked up in the page's catalogue; names and texts made safe for markup."""
+"""Texts of the live plan and of the pictures from the page's catalogue; names and texts made safe for markup."""
 
 from __future__ import annotations
 

@@ -1,4 +1,4 @@
-"""Pictures of what closes: bars of misclosures against their tolerance, and a levelled run with the band of its heights.
+"""Pictures of what closes: bars of misclosures against their tolerance, and a levelled run with the band of heights.
 
 A bar's length is |misclosure| over what is allowed; the band is the height ± multiplier · standard deviation, enlarged.
 """
@@ -46,8 +46,10 @@ def closure_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
     canvas.text((limit, canvas.height - 6), texts("pictures.closures_limit"), anchor="m")
     over = sum(1 for row in every if row[0] > 1)
     untested = sum(1 for one in record["closures"] if one["verdict"] == "cannot be tested")
-    return (canvas.svg(texts("pictures.closures_title"), "closure-bars"),
-            texts("pictures.closures_words", drawn=len(rows), all=len(every), over=over, untested=untested))  # fmt: skip
+    return (
+        canvas.svg(texts("pictures.closures_title"), "closure-bars"),
+        texts("pictures.closures_words", drawn=len(rows), all=len(every), over=over, untested=untested),
+    )
 
 
 def _bar(
@@ -58,8 +60,14 @@ def _bar(
         plain(one["stations"][0], 10),
         plain(one["stations"][-2 if one["stations"][0] == one["stations"][-1] else -1], 10),
     )
-    words = texts(f"pictures.closures_{what}", kind=one["kind"], first=first, last=last,
-                  amount=amount(shown, one["misclosure"][what], what), limit=amount(shown, one["allowable"][what], what))  # fmt: skip
+    words = texts(
+        f"pictures.closures_{what}",
+        kind=one["kind"],
+        first=first,
+        last=last,
+        amount=amount(shown, one["misclosure"][what], what),
+        limit=amount(shown, one["allowable"][what], what),
+    )
     x0, x1 = axes.at(0.0, 0)[0], axes.at(min(share, REACH), 0)[0]
     canvas.rect((x0, top + 24, max(x1, x0 + 1), top + 40), "bar over" if share > 1 else "bar", f"{share:.2f}")
     if share > REACH:
@@ -78,8 +86,13 @@ def amount(shown: Shown, value: float, what: str) -> str:
 def longest_run(record: Entry) -> list[Entry]:
     """Stations of the levelled walk with most stations, runs before loops; empty where there is none with heights."""
     heights = {one["station"]: one for one in record["stations"] if one["height"] is not None}
-    walks = [one for one in record["closures"] if one["kind"] in ("level run", "level loop")
-             and len(one["stations"]) > 2 and heights.keys() >= set(one["stations"])]  # fmt: skip
+    walks = [
+        one
+        for one in record["closures"]
+        if one["kind"] in ("level run", "level loop")
+        and len(one["stations"]) > 2
+        and heights.keys() >= set(one["stations"])
+    ]
     best = max(walks, key=lambda one: (one["kind"] == "level run", len(one["stations"])), default=None)
     return [heights[name] for name in best["stations"]] if best else []
 
@@ -113,8 +126,14 @@ def profile_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
     percent = f"{100 * record['settings']['confidence']:g}"
     canvas.text((WIDTH / 2, 342), texts("pictures.profile_band", percent=percent, times=f"{times:g}"), anchor="m")
     worst: Any = max(run, key=lambda one: one["sd_height"] or 0.0)
-    words = texts("pictures.profile_words", first=plain(run[0]["station"]), last=plain(run[-1]["station"]), count=len(run),
-                  worst=plain(worst["station"]), sd=f"{shown.small_sd(worst['sd_height'])} {shown.small}")  # fmt: skip
+    words = texts(
+        "pictures.profile_words",
+        first=plain(run[0]["station"]),
+        last=plain(run[-1]["station"]),
+        count=len(run),
+        worst=plain(worst["station"]),
+        sd=f"{shown.small_sd(worst['sd_height'])} {shown.small}",
+    )
     return canvas.svg(texts("pictures.profile_title"), "profile"), words
 
 

@@ -20,8 +20,8 @@ from adjust.record.sheet import nearest_step
 from adjust.record.shown import Entry, Shown, plain
 
 SHARES = ((0.6, "well"), (0.3, "fairly"), (0.1, "weakly"), (1e-6, "hardly"))
-"""Lower bounds of the checked share and the look of it; below the last nothing checks the line. 0.1 and 0.3: an error of
-ten and of five standard deviations is found with a power of 80 % (4.13 / sqrt(share) = 13, 7.5 at these bounds)."""
+"""Lower bounds of the checked share and the look of it; below the last, as in the record, nothing checks the line. At
+0.6, 0.3 and 0.1 the smallest error that is found is 5.3, 7.5 and 13 standard deviations: 4.13 / sqrt(share)."""
 NAMED = 40
 
 
@@ -51,8 +51,10 @@ def redundancy_picture(record: Entry, scene: Scene, texts: Texts) -> tuple[str, 
     canvas = Canvas(tall + 24.0 * math.ceil(len(looks) / 2) + 14)
     canvas.parts.append(f'<g transform="scale({number(k, 4)})">')
     for look in looks:
-        canvas.path("".join(path_of(scene, _drawn(scene, line)) for line, share in shares.items() if look_of(share) == look),
-                    f"share {look}")  # fmt: skip
+        canvas.path(
+            "".join(path_of(scene, _drawn(scene, line)) for line, share in shares.items() if look_of(share) == look),
+            f"share {look}",
+        )
     canvas.dots(scene.at.values(), "dots" if scene.many <= 300 else "dots small")
     canvas.parts.append("</g>")
     if scene.many <= NAMED:
@@ -63,8 +65,10 @@ def redundancy_picture(record: Entry, scene: Scene, texts: Texts) -> tuple[str, 
         canvas.text((x + 52, y), texts(f"pictures.share_{look}"))
     weak = sum(1 for share in shares.values() if share < SHARES[2][0])
     never = sum(1 for share in shares.values() if look_of(share) == "never")
-    return (canvas.svg(texts("pictures.redundancy_title"), "redundancy"),
-            texts("pictures.redundancy_words", count=len(shares), weak=weak, never=never))  # fmt: skip
+    return (
+        canvas.svg(texts("pictures.redundancy_title"), "redundancy"),
+        texts("pictures.redundancy_words", count=len(shares), weak=weak, never=never),
+    )
 
 
 def _drawn(scene: Scene, line: Names) -> Names:
@@ -82,8 +86,11 @@ def _names(canvas: Canvas, scene: Scene, k: float) -> None:
 
 def worst_traverse(record: Entry) -> Entry | None:
     """The traverse whose linear misclosure is largest against what is allowed, or against its standard deviation."""
-    found = [one for one in record["closures"] if one["misclosure"].get("linear") is not None and
-             one["misclosure"].get("east") is not None]  # fmt: skip
+    found = [
+        one
+        for one in record["closures"]
+        if one["misclosure"].get("linear") is not None and one["misclosure"].get("east") is not None
+    ]
     places = {one["station"] for one in record["stations"] if one["east"] is not None and one["north"] is not None}
     found = [one for one in found if places.issuperset(one["stations"])]
 
@@ -121,13 +128,23 @@ def traverse_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
 def _traverse_words(one: Entry, amount: str, texts: Texts) -> str:
     ratio = texts("pictures.traverse_ratio", ratio=f"{float(one['ratio']):.0f}") if one["ratio"] else ""
     verdict = {"met": "met", "not met": "not_met"}.get(one["verdicts"].get("linear", one["verdict"]), "untested")
-    return texts("pictures.traverse_words", kind=one["kind"], first=plain(one["stations"][0]), last=plain(one["stations"][-1]),
-                 amount=amount, ratio=ratio, verdict=texts(f"plan.{verdict}"))  # fmt: skip
+    return texts(
+        "pictures.traverse_words",
+        kind=one["kind"],
+        first=plain(one["stations"][0]),
+        last=plain(one["stations"][-1]),
+        amount=amount,
+        ratio=ratio,
+        verdict=texts(f"plan.{verdict}"),
+    )
 
 
 def _box(record: Entry, one: Entry) -> tuple[dict[str, Point], tuple[float, float, float, float]]:
-    every = {s["station"]: (float(s["east"]), float(s["north"])) for s in record["stations"]
-             if s["station"] in set(one["stations"])}  # fmt: skip
+    every = {
+        s["station"]: (float(s["east"]), float(s["north"]))
+        for s in record["stations"]
+        if s["station"] in set(one["stations"])
+    }
     east, north = [p[0] for p in every.values()], [p[1] for p in every.values()]
     return every, (min(east), min(north), max(east), max(north))
 

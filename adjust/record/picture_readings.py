@@ -44,8 +44,10 @@ def residual_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
     values = np.array([one["statistic"] for one in rows])
     rms = shown.mark(f"{math.sqrt(float(np.mean(values**2))):.2f}")
     law_name = texts("pictures.normal" if record["settings"]["variance_factor"] == "given" else "pictures.tau")
-    return (canvas.svg(texts("pictures.residuals_title"), "residuals"),
-            texts("pictures.residuals_words", count=len(rows), rms=rms, beyond=beyond, law=law_name))  # fmt: skip
+    return (
+        canvas.svg(texts("pictures.residuals_title"), "residuals"),
+        texts("pictures.residuals_words", count=len(rows), rms=rms, beyond=beyond, law=law_name),
+    )
 
 
 def _histogram(
@@ -70,8 +72,16 @@ def _histogram(
         canvas.text((axes.at(t, 0.0)[0], top + 109), f"{t}".replace("-", "−"), anchor="m")
     rms = shown.mark(f"{math.sqrt(sum(v * v for v in values) / len(values)):.2f}")
     largest = shown.mark(f"{max(map(abs, values)):.1f}")
-    canvas.text((16, top + 18), texts("pictures.residuals_kind", kind=texts(f"pictures.kind_{kind}") if f"pictures.kind_{kind}"
-                in texts.found else kind.replace("_", " "), count=len(values), rms=rms, largest=largest))  # fmt: skip
+    canvas.text(
+        (16, top + 18),
+        texts(
+            "pictures.residuals_kind",
+            kind=texts(f"pictures.kind_{kind}") if f"pictures.kind_{kind}" in texts.found else kind.replace("_", " "),
+            count=len(values),
+            rms=rms,
+            largest=largest,
+        ),
+    )
 
 
 def order_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
@@ -99,16 +109,23 @@ def order_picture(record: Entry, texts: Texts) -> tuple[str, str] | None:
     for k in sorted({1, *(int(v) for v in round_values(0, len(rows), 6) if v >= 0.06 * last)}):
         canvas.text((axes.at(k, 0)[0], 298), str(k), anchor="m")
     canvas.text((WIDTH / 2, 322), texts("pictures.order_axis"), anchor="m")
-    words = texts("pictures.order_words", count=len(rows), beyond=sum(bool(one["suspect"]) for one in rows),
-                  limit=shown.mark(f"{critical:.2f}") if critical else texts("pictures.no_limit"),
-                  idle=len(rows) - len(tested(record)))  # fmt: skip
+    words = texts(
+        "pictures.order_words",
+        count=len(rows),
+        beyond=sum(bool(one["suspect"]) for one in rows),
+        limit=shown.mark(f"{critical:.2f}") if critical else texts("pictures.no_limit"),
+        idle=len(rows) - len(tested(record)),
+    )
     return canvas.svg(texts("pictures.order_title"), "order"), words
 
 
 def _points(canvas: Canvas, axes: Axes, rows: Sequence[Entry], most: float) -> None:
     """Dots, or columns where dots would be one blot; a stroke on the zero line where nothing checks the reading."""
-    inside = [(i + 1.0, float(one["statistic"])) for i, one in enumerate(rows)
-              if one["statistic"] is not None and abs(one["statistic"]) <= most]  # fmt: skip
+    inside = [
+        (i + 1.0, float(one["statistic"]))
+        for i, one in enumerate(rows)
+        if one["statistic"] is not None and abs(one["statistic"]) <= most
+    ]
     if len(rows) > TOGETHER:
         canvas.path("".join(_columns(axes, inside)), "columns")
     else:

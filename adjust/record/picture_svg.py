@@ -10,13 +10,14 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
+from itertools import pairwise
 
 from adjust.record.live_texts import number, safe
 from adjust.record.paper import Box, Point
 from adjust.record.sheet import round_step
 
 WIDTH = 560.0
-"""Units across. Type is 16 units: 10 pixels high where the picture is 360 wide, 18 at the widest that the page allows."""
+"""Units across. Type is 16 units: 10 pixels high where the picture is 360 wide, 18 at the widest."""
 TYPE = 16.0
 
 
@@ -54,8 +55,10 @@ class Canvas:
 
     def svg(self, label: str, look: str) -> str:
         """The whole element."""
-        return (f'<svg class="chart {look}" viewBox="0 0 {number(WIDTH)} {number(self.height, 1)}" role="img" '
-                f'aria-label="{safe(label)}">{"".join(self.parts)}</svg>')  # fmt: skip
+        return (
+            f'<svg class="chart {look}" viewBox="0 0 {number(WIDTH)} {number(self.height, 1)}" role="img" '
+            f'aria-label="{safe(label)}">{"".join(self.parts)}</svg>'
+        )
 
 
 def place(at: Point) -> str:
@@ -92,5 +95,5 @@ def round_values(low: float, high: float, most: int) -> list[float]:
 
 def places_of(values: Sequence[float]) -> int:
     """Decimals that tell round values apart."""
-    step = min((b - a for a, b in zip(values, values[1:], strict=False)), default=1.0)
+    step = min((b - a for a, b in pairwise(values)), default=1.0)
     return max(0, -math.floor(math.log10(step) + 1e-9))

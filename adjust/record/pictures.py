@@ -28,10 +28,13 @@ def pictures(record: Entry, texts: Mapping[str, Any] | None = None) -> tuple[Pic
     """The pictures of a record in reading order; ``texts`` of the catalogue (``pictures.*``), English where missing."""
     words, scene = Texts(texts), scene_of(record)
     made = {
-        "closures": closure_picture(record, words), "traverse": traverse_picture(record, words),
-        "residuals": residual_picture(record, words), "order": order_picture(record, words),
-        "redundancy": _on_ground(record, scene, words), "profile": profile_picture(record, words),
-    }  # fmt: skip
+        "closures": closure_picture(record, words),
+        "traverse": traverse_picture(record, words),
+        "residuals": residual_picture(record, words),
+        "order": order_picture(record, words),
+        "redundancy": _on_ground(record, scene, words),
+        "profile": profile_picture(record, words),
+    }
     return tuple(Picture(key, words(f"pictures.{key}_title"), *one) for key, one in made.items() if one)
 
 

@@ -25,8 +25,10 @@ pytestmark = pytest.mark.skipif(CHROMIUM is None, reason="no Chromium is install
 def sample() -> dict[str, Any]:
     record = plane_record()
     ends = {frozenset(filter(None, (o["at"] or o["from"], o["to"]))) for o in record["observations"] if o["to"]}
-    record["lines"] = [{"from": a, "to": b, "distance": 100.0 + i, "ellipse_confidence": None}
-                       for i, (a, b) in enumerate(sorted(sorted(pair) for pair in ends))]  # fmt: skip
+    record["lines"] = [
+        {"from": a, "to": b, "distance": 100.0 + i, "ellipse_confidence": None}
+        for i, (a, b) in enumerate(sorted(sorted(pair) for pair in ends))
+    ]
     return record
 
 
@@ -90,8 +92,11 @@ def test_the_wheel_enlarges_about_the_pointer_and_a_drag_moves(opened: Any) -> N
     assert view(opened)[2] > 1.3
     at_rest(opened)
     after = opened.locator("[data-station='2'] use").bounding_box()
-    close([after["x"] + after["width"] / 2, after["y"] + after["height"] / 2],
-          [before["x"] + before["width"] / 2, before["y"] + before["height"] / 2], atol=1.0)  # fmt: skip
+    close(
+        [after["x"] + after["width"] / 2, after["y"] + after["height"] / 2],
+        [before["x"] + before["width"] / 2, before["y"] + before["height"] / 2],
+        atol=1.0,
+    )
     close(after["width"], before["width"], atol=1.0)  # symbols keep their size
     opened.mouse.move(x, y)
     opened.mouse.down()
@@ -230,7 +235,9 @@ def test_names_and_bars_keep_their_size_when_enlarged(opened: Any) -> None:
 def column(tab: Any, table: str, k: int) -> list[str]:
     found: list[str] = tab.evaluate(
         "([id, k]) => [...document.querySelectorAll(`#${id} tbody tr`)].filter(r => !r.hidden)"
-        ".map(r => r.cells[k].dataset.value ?? r.cells[k].firstChild?.textContent ?? '')", [table, k])  # fmt: skip
+        ".map(r => r.cells[k].dataset.value ?? r.cells[k].firstChild?.textContent ?? '')",
+        [table, k],
+    )
     return found
 
 
@@ -330,7 +337,9 @@ def test_more_names_come_when_a_large_plan_is_enlarged(browser: Any, tmp_path: P
     over = tab.evaluate(
         "(() => { const b = [...document.querySelectorAll('#plan .label text')].map(t => t.getBoundingClientRect());"
         "const inset = 2; return b.filter((a, i) => b.some((c, j) => j < i && a.left + inset < c.right - inset && "
-        "a.right - inset > c.left + inset && a.top + inset < c.bottom - inset && a.bottom - inset > c.top + inset)).length })()")  # fmt: skip
+        "a.right - inset > c.left + inset && a.top + inset < c.bottom - inset && "
+        "a.bottom - inset > c.top + inset)).length })()"
+    )
     assert over == 0, "names over each other"
     tab.close()
 
@@ -342,5 +351,6 @@ def named_in_sight(tab: Any) -> float:
         "const inside = (o) => { const b = o.getBoundingClientRect(); return b.left > f.left && b.right < f.right "
         "&& b.top > f.top && b.bottom < f.bottom };"
         "const count = (s) => [...document.querySelectorAll(s)].filter(inside).length;"
-        "return count('#plan .label') / count('#plan .station') })()")  # fmt: skip
+        "return count('#plan .label') / count('#plan .station') })()"
+    )
     return found

@@ -24,8 +24,18 @@ from tests.helpers import close
 from tests.record.samples import HOSTILE, bare_record, grid_record, hostile_record, level_record, plane_record, station
 
 SVG = "{http://www.w3.org/2000/svg}"
-BEYOND = ('"><img src=x onerror=alert(1)>', "</title></svg><script>alert(1)</script>", "]]><!--", "&lt;b&gt;", "\u202eesrever\u2066",
-          "👷🏽‍♀️ site", "N" * 10_000, "=cmd|' /C calc'!A0", "{name}", "\x00\x07\x1b[31m")  # fmt: skip
+BEYOND = (
+    '"><img src=x onerror=alert(1)>',
+    "</title></svg><script>alert(1)</script>",
+    "]]><!--",
+    "&lt;b&gt;",
+    "\u202eesrever\u2066",
+    "👷🏽‍♀️ site",
+    "N" * 10_000,
+    "=cmd|' /C calc'!A0",
+    "{name}",
+    "\x00\x07\x1b[31m",
+)
 
 
 def tree(record: dict[str, Any], texts: dict[str, Any] | None = None) -> ET.Element:
@@ -87,8 +97,11 @@ def test_the_plan_is_to_scale_and_north_is_up() -> None:
     first, origin = record["stations"][0], place(found[0])
     for i, one in enumerate(record["stations"]):
         x, y = place(found[i])
-        close([(x - origin[0]) * metres, -(y - origin[1]) * metres],
-              [one["east"] - first["east"], one["north"] - first["north"]], atol=0.02 * metres)  # fmt: skip
+        close(
+            [(x - origin[0]) * metres, -(y - origin[1]) * metres],
+            [one["east"] - first["east"], one["north"] - first["north"]],
+            atol=0.02 * metres,
+        )
     width, height = (float(v) for v in plan.get("viewBox", "").split()[2:])
     assert all(0 < x < width and 0 < y < height for x, y in map(place, found.values()))
     bar = next(one for one in root.iter() if one.get("id") == "plan-scale")
@@ -104,8 +117,10 @@ def test_ellipses_have_the_axes_of_the_record_at_the_stated_size() -> None:
     assert plan is not None
     k = float(plan.get("data-magnification", "")) / float(plan.get("data-metres", ""))
     drawn = [one for one in root.iter(f"{SVG}ellipse") if one.get("class") == "ellipse" and one.get("rx") != "15"]
-    wanted = sorted((one["ellipse_confidence"] for one in record["stations"] if one["ellipse_confidence"]["semi_major"]),
-                    key=lambda e: -e["semi_major"])  # fmt: skip
+    wanted = sorted(
+        (one["ellipse_confidence"] for one in record["stations"] if one["ellipse_confidence"]["semi_major"]),
+        key=lambda e: -e["semi_major"],
+    )
     assert len(drawn) == len(wanted) == 7
     close([float(one.get("rx", "")) for one in drawn], [e["semi_major"] * k for e in wanted], atol=0.006)
     close([float(one.get("ry", "")) for one in drawn], [e["semi_minor"] * k for e in wanted], atol=0.006)
@@ -190,11 +205,18 @@ def test_texts_of_a_catalogue_are_escaped_too() -> None:
 
 
 def test_same_bytes_with_another_hash_seed() -> None:
-    code = ("import sys; from tests.record.samples import plane_record, level_record; "
-            "from adjust.record.live_plan import plan_svg; "
-            "sys.stdout.buffer.write((plan_svg(plane_record(), {}) + plan_svg(level_record(), {})).encode())")  # fmt: skip
-    done = subprocess.run([sys.executable, "-c", code], capture_output=True, check=True, cwd=Path(__file__).parents[2],
-                          env=os.environ | {"PYTHONHASHSEED": "77"})  # fmt: skip
+    code = (
+        "import sys; from tests.record.samples import plane_record, level_record; "
+        "from adjust.record.live_plan import plan_svg; "
+        "sys.stdout.buffer.write((plan_svg(plane_record(), {}) + plan_svg(level_record(), {})).encode())"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", code],
+        capture_output=True,
+        check=True,
+        cwd=Path(__file__).parents[2],
+        env=os.environ | {"PYTHONHASHSEED": "77"},
+    )
     assert done.stdout.decode() == plan_svg(plane_record(), {}) + plan_svg(level_record(), {})
     assert plan_svg(plane_record(), {}) != plan_svg(hostile_record(), {})
 
@@ -213,8 +235,12 @@ def label_boxes(root: ET.Element) -> list[tuple[float, float, float, float]]:
 def test_names_do_not_cover_each_other(make: Any) -> None:
     boxes = label_boxes(tree(make()))
     assert len(boxes) > 5
-    over = [(a, b) for i, a in enumerate(boxes) for b in boxes[:i]
-            if a[0] < b[2] and b[0] < a[2] and a[1] < b[3] and b[1] < a[3]]  # fmt: skip
+    over = [
+        (a, b)
+        for i, a in enumerate(boxes)
+        for b in boxes[:i]
+        if a[0] < b[2] and b[0] < a[2] and a[1] < b[3] and b[1] < a[3]
+    ]
     assert not over
     assert any(a[0] < b[2] + 60 and b[0] < a[2] + 60 for a in boxes for b in boxes if a is not b), (
         "nothing near: no test"
@@ -246,8 +272,11 @@ def test_heights_of_a_schematic_are_to_scale() -> None:
     assert scene.per_height
     low = min(one["height"] for one in record["stations"])
     ground = max(y for _, y in scene.at.values())
-    close([(ground - scene.at[one["station"]][1]) / scene.per_height for one in record["stations"]],
-          [one["height"] - low for one in record["stations"]], atol=1e-6)  # fmt: skip
+    close(
+        [(ground - scene.at[one["station"]][1]) / scene.per_height for one in record["stations"]],
+        [one["height"] - low for one in record["stations"]],
+        atol=1e-6,
+    )
     assert all(0 < x < WIDTH for x, _ in scene.at.values())
 
 
@@ -258,8 +287,12 @@ def test_numbers_are_short() -> None:
 def test_every_text_is_used_and_every_text_used_is_there() -> None:
     """Keys of the catalogue against those that code and scripts ask for."""
     root = files("adjust.record")
-    code = "".join(one.read_text(encoding="utf-8") for folder in (root, root / "page") for one in folder.iterdir()
-                   if one.name.startswith(("live_", "picture")) and one.name.endswith(".py") or one.name.endswith(".js"))  # fmt: skip
+    code = "".join(
+        one.read_text(encoding="utf-8")
+        for folder in (root, root / "page")
+        for one in folder.iterdir()
+        if (one.name.startswith(("live_", "picture")) and one.name.endswith(".py")) or one.name.endswith(".js")
+    )
     asked = set(re.findall(r'["`]((?:plan|tables|pictures)\.\w+)["`]', code))
     made = set(re.findall(r'["`]((?:plan|pictures)\.\w+_)[{$]', code)) | {"pictures.kind_", "plan.layer_"}
     known = set(catalogue())

@@ -173,12 +173,23 @@ def test_the_profile_is_to_scale_with_its_band(levels: dict[str, Any]) -> None:
     band = points(paths(one, "band")[0])
     upper, lower = band[: len(run)], band[len(run) :][::-1]
     times = float(re.search(r"interval, ([\d.]+) times", one.svg)[1])  # type: ignore[index]
-    close([(low[1] - up[1]) / 2 for up, low in zip(upper, lower, strict=True)],
-          [1.959964 * s["sd_height"] * k * times for s in run], atol=0.12)  # fmt: skip
+    close(
+        [(low[1] - up[1]) / 2 for up, low in zip(upper, lower, strict=True)],
+        [1.959964 * s["sd_height"] * k * times for s in run],
+        atol=0.12,
+    )
 
 
-@pytest.mark.parametrize("make", [plane_record, level_record, hostile_record, lambda: grid_record(12),
-                                  lambda: hostile(("</text><script>", '"><img src=x onerror=alert(1)>', "N" * 10_000, "\u202ex"))])  # fmt: skip
+@pytest.mark.parametrize(
+    "make",
+    [
+        plane_record,
+        level_record,
+        hostile_record,
+        lambda: grid_record(12),
+        lambda: hostile(("</text><script>", '"><img src=x onerror=alert(1)>', "N" * 10_000, "\u202ex")),
+    ],
+)
 def test_markup_is_well_formed_and_plain(make: Any) -> None:
     made = pictures(make())
     assert made

@@ -68,9 +68,13 @@ def main() -> None:
             made = time.perf_counter() - begin
             place.write_text(page(record), encoding="utf-8")
             paint, ready, pan, zoom = measure(browser, place)
-            print(f"{side * side} stations, {len(record['observations'])} lines: plan {size / 1e6:.2f} MB in {made:.2f} s, "
-                  f"page {place.stat().st_size / 1e6:.1f} MB; first paint {paint:.0f} ms, ready {ready:.0f} ms, "
-                  f"pan {pan:.0f} ms, enlarge {zoom:.0f} ms", flush=True)  # fmt: skip
+            print(
+                f"{side * side} stations, {len(record['observations'])} lines: plan {size / 1e6:.2f} MB "
+                f"in {made:.2f} s, "
+                f"page {place.stat().st_size / 1e6:.1f} MB; first paint {paint:.0f} ms, ready {ready:.0f} ms, "
+                f"pan {pan:.0f} ms, enlarge {zoom:.0f} ms",
+                flush=True,
+            )
         browser.close()
 
 
