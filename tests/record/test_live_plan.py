@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import copy
+import math
 import os
 import re
 import subprocess
@@ -13,6 +14,7 @@ from importlib.resources import files
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pytest
 
 from adjust.record.live_labels import MOST, text_width
@@ -124,6 +126,18 @@ def test_ellipses_have_the_axes_of_the_record_at_the_stated_size() -> None:
     assert len(drawn) == len(wanted) == 7
     close([float(one.get("rx", "")) for one in drawn], [e["semi_major"] * k for e in wanted], atol=0.006)
     close([float(one.get("ry", "")) for one in drawn], [e["semi_minor"] * k for e in wanted], atol=0.006)
+    around = {child: parent for parent in root.iter() for child in parent}
+    turns = [
+        math.radians(float(re.search(r"rotate\(([-\d.]+)\)", around[one].get("transform", ""))[1])) for one in drawn
+    ]  # type: ignore[index]
+    close(
+        [
+            abs(math.cos(t) * math.sin(e["azimuth"]) - math.sin(t) * math.cos(e["azimuth"]))
+            for t, e in zip(turns, wanted, strict=True)
+        ],
+        np.ones(7),
+        atol=1e-5,
+    )  # x to the right is east, y down is south: long axes coincide
     words = next("".join(one.itertext()) for one in root.iter() if one.get("id") == "plan-ellipse-words")
     assert f"95 %, drawn {float(plan.get('data-magnification', '')):g} times" in words
 
