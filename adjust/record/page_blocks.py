@@ -184,12 +184,8 @@ class Texts:
 
 @cache
 def catalogue() -> Texts:
-    """The English texts; those of texts_*.toml are added table by table."""
-    tree: dict[str, Any] = {}
-    for path in sorted(FOLDER.glob("texts*.toml")):
-        for section, texts in tomllib.loads(path.read_text("utf-8")).items():
-            tree.setdefault(section, {}).update(texts)
-    return Texts(tree)
+    """The English texts."""
+    return Texts(tomllib.loads((FOLDER / "texts.toml").read_text("utf-8")))
 
 
 def slim(grid: Grid) -> Grid:
