@@ -33,8 +33,12 @@ OTHER_PAGES = {
     "adjust/record/schemas.py": "titles of the JSON Schemas",
     **dict.fromkeys(
         (
-            f"adjust/record/page{part}.py"
-            for part in ("", "_checks", "_close", "_cover", "_readings", "_results", "_rows", "_summary", "_words")
+            *(
+                f"adjust/record/page{part}.py"
+                for part in ("", "_checks", "_close", "_cover", "_readings", "_results", "_rows", "_summary", "_words")
+            ),
+            *(f"adjust/record/live_{part}.py" for part in ("labels", "marks", "plan", "scene", "texts")),
+            *(f"adjust/record/picture{part}.py" for part in ("s", "_svg", "_readings", "_network", "_closures")),
         ),
         "markup, and words of the record looked up; what the page says itself is in adjust/record/page/texts.toml",
     ),
