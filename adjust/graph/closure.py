@@ -196,6 +196,8 @@ def loosened(index: Index, group: Group, knot: list[int]) -> tuple[Group, list[i
 def close_knot(index: Index, group: Group, knot: list[int], bodies: list[Group]) -> list[Group]:
     """The groups with the stations of a knot in each of the solutions that fit all readings; empty if none does."""
     k = _knot(index, group, knot)
+    if not k.rows or not k.unknowns:
+        return []
     rng = np.random.default_rng([11, len(knot)])
     side = max(4, min(SIDE_BY_SIDE, NUMBERS_MOST // (k.rows * k.unknowns)))
     solutions: list[_Solution] = []

@@ -2,11 +2,17 @@
 
 from __future__ import annotations
 
-import numpy as np
+from pathlib import Path
 
+import numpy as np
+import pytest
+
+import adjust
+from adjust.errors import Unsolvable
 from adjust.graph.starts import find_start
 from tests.graph.sketch import Sketch
 from tests.helpers import close
+from tests.judge.unsettled_study import case
 
 PLACES = {
     "A": (1000.0, 2000.0), "B": (1210.0, 2035.0), "C": (1105.0, 2190.0), "X": (1060.0, 2080.0),
@@ -51,3 +57,10 @@ def test_sights_to_north_close_a_figure_without_any_length() -> None:
 def test_what_readings_do_not_fix_is_not_placed() -> None:
     one = Sketch(**PLACES).distances("X-Y", "Y-Z", "Z-X", "A-X", "B-Z")
     assert np.isnan(find_start(one.network("A B C")).positions[3:, :2]).all()
+
+
+def test_a_knot_that_no_reading_closes_is_left_to_the_refusal(tmp_path: Path) -> None:
+    """Number 37 of the study of jobs that do not settle: what holds the knot says nothing of its inside."""
+    wrong = case(37, 1, tmp_path)
+    with pytest.raises(Unsolvable, match="can flex between"):
+        adjust.solve(wrong.job)
