@@ -218,33 +218,17 @@ def _legend(scene: Scene, record: Entry, words: Texts, marks: Marks, names: Plac
         if look in drawn
     ]
     percent = f"{100 * record['settings']['confidence']:g}"
-    if scene.ellipses:
-        rows.append(
-            _key(
-                "ellipses",
-                '<ellipse class="ellipse" rx="15" ry="7"/>',
-                words("plan.ellipses", percent=percent, times=_times(scene.magnification)),
-                "plan-ellipse-words",
-            )
-        )
-    if scene.bars:
-        rows.append(
-            _key(
-                "ellipses",
-                '<path class="ellipse bar" d="M0-8V8M-5-8H5M-5 8H5"/>',
-                words("plan.bars", percent=percent, times=_times(scene.magnification)),
-                "plan-ellipse-words",
-            )
-        )
-    if scene.relative:
-        rows.append(
-            _key(
-                "relatives",
-                '<ellipse class="relative" rx="15" ry="7"/>',
-                words("plan.relative", percent=percent, times=_times(scene.relative_magnification)),
-                "plan-relative-words",
-            )
-        )
+    sized = (
+        (scene.ellipses, "ellipse", '<ellipse class="ellipse" rx="15" ry="7"/>', "plan.ellipses", scene.magnification),
+        (scene.bars, "ellipse", '<path class="ellipse bar" d="M0-8V8M-5-8H5M-5 8H5"/>', "plan.bars",
+         scene.magnification),
+        (scene.relative, "relative", '<ellipse class="relative" rx="15" ry="7"/>', "plan.relative",
+         scene.relative_magnification),
+    )  # fmt: skip
+    for there, what, shape, text, magnification in sized:
+        if there:
+            said = words(text, percent=percent, times=_times(magnification))
+            rows.append(_key(f"{what}s", shape, said, f"plan-{what}-words"))
     if any(one.pair for one in scene.relative):
         rows.append(_key("relatives", '<path class="pair" d="M-17 0H17"/>', words("plan.pair")))
     rows += _mark_keys(marks, words)

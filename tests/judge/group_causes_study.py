@@ -72,20 +72,19 @@ def feet(rng: np.random.Generator, number: int, folder: Path) -> tuple[Path, tup
 
 def height(rng: np.random.Generator, number: int, folder: Path) -> tuple[Path, tuple[str, str]]:
     """The instrument's height at one station wrong by 0.1 m in every sight from it."""
-    job = write(random_space(rng, n=int(rng.integers(6, 13))), folder)
-    at = str(rng.choice([row[0] for row in Sheet.of(job / "zenith_angle.csv").rows]))
-    off = 0.1 * int(rng.choice([-1, 1]))
-    _raise(job, "instrument_height", 0, at, off)
-    return job, ("instrument height", at)
+    return _one_height(rng, folder, "instrument", 0)
 
 
 def target(rng: np.random.Generator, number: int, folder: Path) -> tuple[Path, tuple[str, str]]:
     """The target's height at one station wrong by 0.1 m in every sight to it."""
+    return _one_height(rng, folder, "target", 1)
+
+
+def _one_height(rng: np.random.Generator, folder: Path, what: str, end: int) -> tuple[Path, tuple[str, str]]:
     job = write(random_space(rng, n=int(rng.integers(6, 13))), folder)
-    to = str(rng.choice([row[1] for row in Sheet.of(job / "zenith_angle.csv").rows]))
-    off = 0.1 * int(rng.choice([-1, 1]))
-    _raise(job, "target_height", 1, to, off)
-    return job, ("target height", to)
+    station = str(rng.choice([row[end] for row in Sheet.of(job / "zenith_angle.csv").rows]))
+    _raise(job, f"{what}_height", end, station, 0.1 * int(rng.choice([-1, 1])))
+    return job, (f"{what} height", station)
 
 
 def _raise(job: Path, column: str, end: int, station: str, off: float) -> None:

@@ -114,7 +114,7 @@ def page(record: dict[str, Any]) -> str:
         f'<figure id="plan-figure">{plan_svg(record, {})}<div id="plan-controls" hidden></div></figure>{drawn}'
         f"{tables(record)}</main>"
         f'<script type="application/json" id="page-texts">{inside(catalogue())}</script>'
-        f"<script>{part('plan.js')}\n{part('tables.js')}</script></body></html>"
+        f"<script>{part('page_texts.js')}\n{part('plan.js')}\n{part('tables.js')}</script></body></html>"
     )
 
 

@@ -21,21 +21,6 @@
   let chosen = null;
   let chosenRow = null;
 
-  /* Texts of the page's catalogue, whether it is flat or by table; a missing one shows its key. */
-  function pageTexts() {
-    const found = {};
-    const keep = (before, part) => {
-      for (const [key, value] of Object.entries(part)) {
-        if (value && typeof value === "object") keep(`${before}${key}.`, value);
-        else found[before + key] = String(value);
-      }
-    };
-    const source = document.getElementById("page-texts");
-    if (source) keep("", JSON.parse(source.textContent));
-    return (key, values = {}) =>
-      (found[key] ?? key).replace(/\{(\w+)\}/g, (whole, name) => (name in values ? String(values[name]) : whole));
-  }
-
   function make(tag, attributes = {}, text = "") {
     const made = document.createElement(tag);
     for (const [key, value] of Object.entries(attributes)) made.setAttribute(key, value);
