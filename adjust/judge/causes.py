@@ -117,7 +117,12 @@ def _sight(judgement: Judgement, row: int, ids: list[str]) -> tuple[str, ...]:
 
 def causes(judgement: Judgement, suspect: Suspect) -> tuple[Cause, ...]:
     """The likely causes of a suspect, the best first; none where none fits well enough."""
-    weighed = _weighed(*_possible(judgement, suspect))
+    return of_cases(*_possible(judgement, suspect))
+
+
+def of_cases(*cases: Slipped) -> tuple[Cause, ...]:
+    """The likely causes of one error that may be in any of some readings; none where none fits well enough."""
+    weighed = _weighed(*cases)
     if not weighed or sum(one.support for one in weighed) < SILENT_BELOW:
         return ()
     best = weighed[0].support

@@ -5,8 +5,8 @@ Where the others lead without some readings S they differ from them by b with th
     K = E_S'M E_S      b = K^-1 E_S'M l      (adjust.judge.leaving_out; M as in adjust.judge.influence)
 
 at the place to which the others alone were adjusted. The misclosures l there may hold an orientation turned by a wrong
-pointing of the set: M takes it out, as it is linear. Each b with its standard deviation is weighed against the slips of
-text (adjust.judge.slips_asked); there is no cause where the rest cannot be adjusted either.
+pointing of the set: M takes it out, as it is linear. Each b with its standard deviation is weighed as that of a suspect
+is (adjust.judge.causes), in the network of the others; there is no cause where that cannot be adjusted.
 """
 
 from __future__ import annotations
@@ -17,13 +17,16 @@ import numpy as np
 
 from adjust.book.job import Job
 from adjust.errors import BrasscapError
-from adjust.judge.causes import Cause
+from adjust.judge.causes import Cause, of_cases
 from adjust.judge.influence import Influence
-from adjust.judge.slips_asked import of_amount
-from adjust.network import Array, Network
+from adjust.judge.rows import rows_in, without_rows
+from adjust.judge.slip_forms import Slipped
+from adjust.judge.slips_asked import Books, asked
+from adjust.network import Array, Block, Network
 from adjust.solver.design import State
 from adjust.solver.engine import SingularPattern
 from adjust.solver.gauss import GaussNewton
+from adjust.solver.solution import Solution
 from adjust.solver.solve import prepare, solve
 
 UNCHECKED = 1e-6
@@ -55,21 +58,24 @@ def amounts(iteration: GaussNewton, state: State, rows: tuple[int, ...]) -> tupl
 def unsettled_causes(job: Job, iteration: GaussNewton, state: State, rows: tuple[int, ...]) -> list[tuple[Cause, ...]]:
     """Likely slips of each of the rows without which the iteration settled at a state."""
     found, network = amounts(iteration, state, rows), iteration.design.network
-    if found is None:
+    gone = rows_in(network, job.network)[list(rows)]
+    others = _adjusted(job, without_rows(job.network, gone)) if found is not None else None
+    if found is None or others is None:
         return [()] * len(rows)
     places = [(network.blocks[network.rows.block[r]], int(network.rows.row[r])) for r in rows]
-    return [of_amount(job, block, i, b, s)
+    return [_causes(job, others, block, i, b, s)
             for (block, i), b, s in zip(places, found[0].tolist(), found[1].tolist(), strict=True)]  # fmt: skip
 
 
 def start_causes(job: Job, place: tuple[int, int], less: Network) -> tuple[Cause, ...]:
     """Likely slips of a reading (block and row) without which (``less``) the others have a start."""
     b, i = place
-    network = job.network
+    network, others = job.network, _adjusted(job, less)
+    if others is None:
+        return ()
+    start = np.where(np.isnan(others.positions), network.stations.start, others.positions)
+    given = replace(network, stations=replace(network.stations, start=start))
     try:
-        positions = solve(replace(job, network=less)).positions
-        start = np.where(np.isnan(positions), network.stations.start, positions)
-        given = replace(network, stations=replace(network.stations, start=start))
         ready = prepare(replace(job, network=given))
     except (BrasscapError, SingularPattern, np.linalg.LinAlgError):
         return ()
@@ -78,6 +84,19 @@ def start_causes(job: Job, place: tuple[int, int], less: Network) -> tuple[Cause
     if at is None:  # a free datum sets control aside
         return ()
     row = int(used.rows.of_block(at, len(block))[i])
-    state = State(np.where(np.isnan(positions), ready.begin.positions, positions), ready.begin.groups)
+    state = State(np.where(np.isnan(others.positions), ready.begin.positions, others.positions), ready.begin.groups)
     found = amounts(ready.iteration, state, (row,)) if row >= 0 else None
-    return of_amount(job, block, i, float(found[0][0]), float(found[1][0])) if found else ()
+    return _causes(job, others, block, i, float(found[0][0]), float(found[1][0])) if found else ()
+
+
+def _adjusted(job: Job, others: Network) -> Solution | None:
+    try:
+        return solve(replace(job, network=others))
+    except (BrasscapError, SingularPattern, np.linalg.LinAlgError):
+        return None
+
+
+def _causes(job: Job, others: Solution, block: Block, i: int, amount: float, sd: float) -> tuple[Cause, ...]:
+    """Likely slips of a reading that is ``amount`` larger than the others have it, known to ``sd``."""
+    read, state = asked(Books(job), block, i), State(others.positions, others.groups)
+    return of_cases(Slipped(others, state, block, i, read.raws, read.kind, read.noun, read.wraps, amount, sd))

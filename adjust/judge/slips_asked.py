@@ -1,8 +1,7 @@
 """The forms of the slips of text in one reading, where no adjustment is there to ask: closures, starts, trials.
 
 What a slip changes is read off the book alone; slips of where and how (the wrong station, a constant, a height) need
-places and are not asked. A reading said to be off by an amount b, known to a standard deviation s, is weighed as the
-suspect of an adjustment is (adjust.judge.causes).
+places and are not asked.
 """
 
 from __future__ import annotations
@@ -30,10 +29,10 @@ from adjust.judge.causes import (
     slips,
 )
 from adjust.judge.readings import kind_word
-from adjust.judge.slip_forms import FARTHEST, Form
+from adjust.judge.slip_forms import Form
 from adjust.kinds import KINDS
 from adjust.network import Block
-from adjust.units import TURN, wrap
+from adjust.units import TURN
 
 
 @dataclass(frozen=True)
@@ -118,19 +117,6 @@ def listed(weights: list[tuple[Weighed, float]]) -> list[tuple[Weighed, float]]:
     order = sorted(weights, key=lambda one: -one[1])
     good = [one for one in order if one[1] >= AS_GOOD * order[0][1]][:LISTED]
     return good if sum(support for _, support in good) >= SILENT_BELOW else []
-
-
-def of_amount(job: Job, block: Block, i: int, amount: float, sd: float) -> tuple[Cause, ...]:
-    """Likely slips of a reading that is ``amount`` larger than the others have it, known to ``sd``; the best first."""
-    wraps = KINDS[block.kind].wraps
-    found = []
-    for one in forms(Books(job), block, i):
-        miss = amount - one.form.change
-        t = (wrap(miss) if wraps else miss) / sd
-        if abs(t) <= FARTHEST:
-            found.append((one, one.prior * math.exp(-t * t / 2) / (math.sqrt(TURN) * sd)))
-    total = slips()[0] * other(block.kind, amount, sd) + sum(weight for _, weight in found)
-    return tuple(cause(one, "", weight) for one, weight in listed([(one, w / total) for one, w in found]))
 
 
 def cause(one: Weighed, reading: str, support: float) -> Cause:
